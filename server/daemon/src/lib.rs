@@ -1,1 +1,30 @@
-//! The daemon.
+//! The daemon: the only room of the server that knows sockets, files and clocks.
+//!
+//! ```text
+//! gRPC ──► service ──► convert ──► scribe ──► engine (ratewright-control)
+//!             ▲                      │
+//!             │                      ├──► store   one transaction for each group of commands
+//!             └────── board ◄────────┘
+//! people ──► page ──────▲
+//! ```
+//!
+//! - [`scribe`]: the one thread that owns the engine and the store. A setting is on disk before
+//!   the board shows it.
+//! - [`board`]: what the rest of the daemon may see, without ever making the scribe wait.
+//! - `service`: the calls of `ratewright.v1`; they decide nothing.
+//! - `convert`: the one place where wire types and domain types meet.
+//!
+//! [`Daemon`] ties them together; the binary `ratewrightd` is a thin shell around it.
+#![allow(
+    clippy::disallowed_methods,
+    clippy::disallowed_types,
+    reason = "this is the shell: it reads clocks, opens files and sockets, and starts threads"
+)]
+
+pub mod board;
+pub mod config;
+pub mod house;
+pub mod metrics;
+pub mod page;
+pub mod readiness;
+pub mod sample;

@@ -1,0 +1,206 @@
+//! What the daemon shows: the newest views of clocks, crossings and settings.
+//!
+//! The scribe writes it, everybody else reads it; a reader never makes the scribe wait longer
+//! than a map look-up. A view tells the time it speaks of: what a command named is refreshed
+//! before the command is answered, everything else at least once a second, so that the interval
+//! of a clock in holdover is never older than that.
+//!
+//! Watchers are latest-wins: a watcher holds one number, the change it saw last, and asks for
+//! what is newer. No queue grows behind a slow one.
+
+use std::{
+    collections::{BTreeMap, BTreeSet},
+    ops::Bound,
+    sync::{Arc, PoisonError, RwLock, RwLockReadGuard},
+};
+
+use ratewright_control::{
+    ClockDeclaration, ClockEstimate, CrossingDeclaration, CrossingStatus, HouseNs, Id, Setting,
+};
+use tokio::sync::watch;
+
+/// A clock as of `as_of_ns`.
+#[derive(Clone, Debug)]
+pub struct ClockView {
+    /// What was declared.
+    pub declaration: ClockDeclaration,
+    /// What the readings say.
+    pub estimate: ClockEstimate,
+    /// House time this speaks of.
+    pub as_of_ns: HouseNs,
+}
+
+/// A crossing as of `as_of_ns`.
+#[derive(Clone, Debug)]
+pub struct CrossingView {
+    /// What was declared.
+    pub declaration: CrossingDeclaration,
+    /// How it fares, with its newest setting.
+    pub status: CrossingStatus,
+    /// House time this speaks of.
+    pub as_of_ns: HouseNs,
+}
+
+/// News for the board; what is not in it stays as it was.
+#[derive(Clone, Debug, Default)]
+pub struct News {
+    /// Clocks, new or renewed.
+    pub clocks: Vec<ClockView>,
+    /// Clocks that were deleted.
+    pub clocks_gone: Vec<Id>,
+    /// Crossings, new or renewed.
+    pub crossings: Vec<CrossingView>,
+    /// Crossings that were deleted.
+    pub crossings_gone: Vec<Id>,
+    /// Settings in the order they were made; only the newest of a crossing is kept.
+    pub settings: Vec<Setting>,
+}
+
+/// The board. Share it in an `Arc`.
+#[derive(Debug)]
+pub struct Board {
+    shown: RwLock<Shown>,
+    /// Number of the newest change; watchers wait on it.
+    changes: watch::Sender<u64>,
+}
+
+#[derive(Debug, Default)]
+struct Shown {
+    clocks: BTreeMap<Id, Arc<ClockView>>,
+    crossings: BTreeMap<Id, Arc<CrossingView>>,
+    /// Newest setting of each crossing, with the number of the change that brought it.
+    newest: BTreeMap<Id, (u64, Arc<Setting>)>,
+    /// The same, by number: what came after a change is a range of this map.
+    by_change: BTreeMap<u64, Id>,
+    last_change: u64,
+}
+
+/// Which crossings a watcher wants.
+#[derive(Clone, Debug)]
+pub enum Selection {
+    /// All, those declared later included.
+    All,
+    /// These.
+    Named(BTreeSet<Id>),
+}
+
+impl Selection {
+    fn wants(&self, crossing: &Id) -> bool {
+        match self {
+            Self::All => true,
+            Self::Named(names) => names.contains(crossing),
+        }
+    }
+}
+
+impl Board {
+    /// An empty board.
+    pub fn new() -> Self {
+        Self { shown: RwLock::default(), changes: watch::Sender::new(0) }
+    }
+
+    /// A clock.
+    pub fn clock(&self, id: &Id) -> Option<Arc<ClockView>> {
+        self.shown().clocks.get(id).cloned()
+    }
+
+    /// A crossing.
+    pub fn crossing(&self, id: &Id) -> Option<Arc<CrossingView>> {
+        self.shown().crossings.get(id).cloned()
+    }
+
+    /// At most `limit` clocks in the order of their ids, from the first one after `after`.
+    pub fn clocks(&self, after: Option<&Id>, limit: usize) -> Vec<Arc<ClockView>> {
+        page(&self.shown().clocks, after, limit)
+    }
+
+    /// At most `limit` crossings in the order of their ids, from the first one after `after`.
+    pub fn crossings(&self, after: Option<&Id>, limit: usize) -> Vec<Arc<CrossingView>> {
+        page(&self.shown().crossings, after, limit)
+    }
+
+    /// The newest setting of a crossing.
+    pub fn newest_setting(&self, crossing: &Id) -> Option<Arc<Setting>> {
+        self.shown().newest.get(crossing).map(|(_, setting)| Arc::clone(setting))
+    }
+
+    /// The newest setting of each selected crossing that changed after change `seen` (0 for
+    /// all), and the number to ask with next time.
+    pub fn settings_since(&self, seen: u64, selection: &Selection) -> (Vec<Arc<Setting>>, u64) {
+        let shown = self.shown();
+        let later = shown.by_change.range((Bound::Excluded(seen), Bound::Unbounded));
+        let news = later
+            .filter(|(_, crossing)| selection.wants(crossing))
+            .filter_map(|(_, crossing)| shown.newest.get(crossing))
+            .map(|(_, setting)| Arc::clone(setting))
+            .collect();
+        (news, shown.last_change)
+    }
+
+    /// Wakes when settings changed; the value is the number of the newest change.
+    pub fn changes(&self) -> watch::Receiver<u64> {
+        self.changes.subscribe()
+    }
+
+    /// Shows news. Whatever was shown of the same names is replaced.
+    pub fn publish(&self, news: News) {
+        let mut shown = self.shown.write().unwrap_or_else(PoisonError::into_inner);
+        for id in news.clocks_gone {
+            shown.clocks.remove(&id);
+        }
+        for id in news.crossings_gone {
+            shown.forget_crossing(&id);
+        }
+        for view in news.clocks {
+            shown.clocks.insert(view.declaration.id.clone(), Arc::new(view));
+        }
+        for view in news.crossings {
+            shown.crossings.insert(view.declaration.id.clone(), Arc::new(view));
+        }
+        let any_setting = !news.settings.is_empty();
+        for setting in news.settings {
+            shown.show_setting(setting);
+        }
+        let last_change = shown.last_change;
+        drop(shown);
+        if any_setting {
+            self.changes.send_replace(last_change);
+        }
+    }
+
+    fn shown(&self) -> RwLockReadGuard<'_, Shown> {
+        // A panic while writing leaves whole views behind: each is inserted in one step.
+        self.shown.read().unwrap_or_else(PoisonError::into_inner)
+    }
+}
+
+impl Default for Board {
+    fn default() -> Self {
+        Self::new()
+    }
+}
+
+impl Shown {
+    fn show_setting(&mut self, setting: Setting) {
+        self.last_change += 1;
+        let change = self.last_change;
+        let crossing = setting.crossing.clone();
+        let before = self.newest.insert(crossing.clone(), (change, Arc::new(setting)));
+        if let Some((old_change, _)) = before {
+            self.by_change.remove(&old_change);
+        }
+        self.by_change.insert(change, crossing);
+    }
+
+    fn forget_crossing(&mut self, id: &Id) {
+        self.crossings.remove(id);
+        if let Some((change, _)) = self.newest.remove(id) {
+            self.by_change.remove(&change);
+        }
+    }
+}
+
+fn page<V>(map: &BTreeMap<Id, Arc<V>>, after: Option<&Id>, limit: usize) -> Vec<Arc<V>> {
+    let start = after.map_or(Bound::Unbounded, Bound::Excluded);
+    map.range::<Id, _>((start, Bound::Unbounded)).take(limit).map(|(_, view)| Arc::clone(view)).collect()
+}
