@@ -1,0 +1,117 @@
+//! Best approximation of the first kind: the ratio with the least |target − L/M|.
+//!
+//! **Theorem.** In a down-closed set the nearest fraction is one of the two ends of the bracket
+//! ([`crate::bracket`]), because nothing lies between them. With target n/D and ends a/b, c/d, put
+//! e = n·b − a·D. The distances are e/(bD) and (D − e·d)/(dD), since bc − ad = 1; so a/b is strictly nearer
+//! iff 2·e·d < D, and there is a tie iff 2·e·d = D. On a tie the smaller M is taken, then the smaller L.
+//!
+//! **Cost.** The search plus four multiplications; no division in the choice.
+//!
+//! **Corner cases.** A sentinel is never an answer: a target below 1/`max_m` gives 1/`max_m`, one above
+//! `max_l` gives `max_l`/1. The first kind is not the second: the last convergent is often worse.
+//! Best for t and best for 1/t can differ (1/t magnifies the distance on one side); this serves t.
+
+use std::cmp::Ordering;
+
+use crate::bracket::{self, Bracket, Node};
+use crate::wide::Wide;
+use crate::{Bounds, Certificate, Exact, Fraction, Region, smooth};
+
+/// An answer with the proof that nothing allowed is nearer.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub struct Best {
+    /// The nearest ratio L/M, in lowest terms.
+    pub ratio: Fraction,
+    /// Why it is the nearest.
+    pub certificate: Certificate,
+}
+
+/// The nearest ratio to `target` within `bounds`; on a tie the smaller M, then the smaller L.
+///
+/// Certified as nearest, except with a largest prime factor when the nearest ratio of the whole box
+/// breaks that bound: then the answer is exact still, but uncertified.
+///
+/// # Examples
+/// ```
+/// use ratewright_ratio::{Bounds, Exact, Fraction, best};
+/// let bounds = Bounds::new(256, 256)?;
+/// assert_eq!(best(&Exact::new(48_000, 44_100), &bounds).ratio, Fraction::new(160, 147));
+/// // 2/1 and 1/1 are equally far from 3/2, and M is the same: the smaller L is taken.
+/// assert_eq!(best(&Exact::new(3, 2), &Bounds::new(10, 1)?).ratio, Fraction::new(1, 1));
+/// # Ok::<(), ratewright_ratio::BoundsError>(())
+/// ```
+pub fn best(target: &Exact, bounds: &Bounds) -> Best {
+    let bracket = bracket::find(target, bounds);
+    let ratio = nearer(&bracket, target);
+    if bounds.largest_prime().is_some() && !bounds.allow(&ratio) {
+        return smooth::best(target, bounds);
+    }
+    Best {
+        ratio,
+        certificate: Certificate::Nearest(bracket),
+    }
+}
+
+/// The nearest ratio to `target` in a region; on a tie the smaller M, then the smaller L.
+///
+/// # Examples
+/// ```
+/// use ratewright_ratio::{Exact, Fraction, Region, best_in};
+/// // Near 160/147, but with at most 1000 for L·M.
+/// let best = best_in(&Exact::new(160, 147), &Region::product(1_000)?);
+/// assert_eq!(best.ratio, Fraction::new(25, 23));
+/// # Ok::<(), ratewright_ratio::RegionError>(())
+/// ```
+pub fn best_in(target: &Exact, region: &Region) -> Best {
+    let bracket = bracket::find(target, region);
+    Best {
+        ratio: nearer(&bracket, target),
+        certificate: Certificate::Nearest(bracket),
+    }
+}
+
+/// The two neighbours of `target` in the box of `bounds`: `below ≤ target ≤ above`, nothing of the box
+/// between. A target in the box is one of the ends. Prime factors are not looked at.
+///
+/// # Examples
+/// ```
+/// use ratewright_ratio::{Bounds, Exact, Node, neighbours};
+/// let bracket = neighbours(&Exact::new(9_999, 10_000), &Bounds::new(8, 8)?);
+/// assert_eq!((bracket.below, bracket.above), (Node { l: 7, m: 8 }, Node { l: 1, m: 1 }));
+/// // Nothing is above the largest ratio but the sentinel 1/0.
+/// assert_eq!(neighbours(&Exact::new(9, 1), &Bounds::new(8, 8)?).above, Node::INFINITY);
+/// # Ok::<(), ratewright_ratio::BoundsError>(())
+/// ```
+pub fn neighbours(target: &Exact, bounds: &Bounds) -> Bracket {
+    bracket::find(target, bounds)
+}
+
+/// The end of a true bracket that is nearer to the target, ties to smaller M, then smaller L.
+pub(crate) fn nearer(bracket: &Bracket, target: &Exact) -> Fraction {
+    let (below, above) = (bracket.below, bracket.above);
+    let (Some(low), Some(high)) = (below.fraction(), above.fraction()) else {
+        return below
+            .fraction()
+            .or(above.fraction())
+            .expect("every region holds 1/1, so one end is a ratio");
+    };
+    match compare_distances(below, above, target) {
+        Ordering::Less => low,
+        Ordering::Greater => high,
+        Ordering::Equal if (below.m, below.l) < (above.m, above.l) => low,
+        Ordering::Equal => high,
+    }
+}
+
+/// Compares `target − below` with `above − target`, given `below ≤ target ≤ above` and finite ends whose
+/// determinant is 1 or whose parts are below 2^32 (so that no product needs more than 192 bits).
+pub(crate) fn compare_distances(below: Node, above: Node, target: &Exact) -> Ordering {
+    let (n, d) = (*target.numer(), *target.denom());
+    let from_below = Wide::product(n, below.m)
+        .minus(Wide::product(d, below.l))
+        .times(above.m);
+    let to_above = Wide::product(d, above.l)
+        .minus(Wide::product(n, above.m))
+        .times(below.m);
+    from_below.cmp(&to_above)
+}

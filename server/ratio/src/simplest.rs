@@ -1,0 +1,136 @@
+//! The simplest fraction in an interval: the one with the smallest M, which also has the smallest L.
+//!
+//! **Theorem.** A fraction f of an interval I is the simplest in I iff neither of its Stern–Brocot parents
+//! l, r (f = l + r by components, determinant 1) is in I.
+//!
+//! **Proof.** I is convex and holds f but not l < f < r, so it lies strictly between l and r, and every
+//! fraction there is i·l + j·r by components with i, j ≥ 1; the smallest is i = j = 1. Conversely a parent
+//! in I would be simpler. ∎
+//!
+//! **Method.** If an integer is inside, the smallest such integer; else take off the common integer part a
+//! of both ends, invert, and continue. Cost: one division a partial quotient of the lower end.
+//!
+//! **Corner cases.** An open end that is itself simple only bars that one fraction: in (1, 2) the answer is
+//! 3/2. An interval of one point gives the point.
+
+use std::cmp::Ordering;
+
+use crate::bounds::MAX_BOUND;
+use crate::bracket::{Magnitude, Node};
+use crate::wide::Wide;
+use crate::{Certificate, Fraction, Interval};
+use serde::{Deserialize, Serialize};
+
+/// The Stern–Brocot parents of a fraction: `left < f < right` and `f = left + right` by components.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
+pub struct Parents {
+    /// The parent below; may be the sentinel 0/1.
+    pub left: Node,
+    /// The parent above; may be the sentinel 1/0.
+    pub right: Node,
+}
+
+/// The simplest fraction of an interval, with its proof.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub struct Simplest {
+    /// The fraction, in lowest terms.
+    pub fraction: Fraction,
+    /// Its parents, as a [`Certificate::Simplest`].
+    pub certificate: Certificate,
+}
+
+/// The simplest fraction in the interval; `None` if even that needs a part above
+/// [`MAX_BOUND`](crate::MAX_BOUND), in which case the interval holds no fraction with smaller parts at all.
+///
+/// # Examples
+/// ```
+/// use ratewright_ratio::{Exact, Fraction, Interval, simplest};
+/// let simplest_of = |interval: &Interval| simplest(interval).map(|s| s.fraction);
+/// let (one, two) = (Exact::new(1, 1), Exact::new(2, 1));
+/// assert_eq!(simplest_of(&Interval::closed(one, two)?), Some(Fraction::new(1, 1)));
+/// assert_eq!(simplest_of(&Interval::open(one, two)?), Some(Fraction::new(3, 2)));
+/// # Ok::<(), ratewright_ratio::IntervalError>(())
+/// ```
+pub fn simplest(interval: &Interval) -> Option<Simplest> {
+    let (lo, hi) = (interval.lo(), interval.hi());
+    let parts = [*lo.numer(), *lo.denom(), *hi.numer(), *hi.denom()];
+    let [n1, d1, n2, d2] = parts;
+    let flags = (interval.ends().low_closed(), interval.ends().high_closed());
+    let parents = if parts.iter().all(|&part| part <= u128::from(u64::MAX)) {
+        search([n1 as u64, d1 as u64], [n2 as u64, d2 as u64], flags)?
+    } else {
+        search([n1, d1], [n2, d2], flags)?
+    };
+    let (left, right) = (parents.left, parents.right);
+    let fraction = Fraction::new_raw(left.l + right.l, left.m + right.m);
+    Some(Simplest {
+        fraction,
+        certificate: Certificate::Simplest(parents),
+    })
+}
+
+/// The comparison the search needs beside Euclid's arithmetic.
+trait Comparable: Magnitude {
+    fn compare_with_times(&self, j: u64, other: &Self) -> Ordering;
+}
+
+impl Comparable for u64 {
+    #[inline]
+    fn compare_with_times(&self, j: u64, other: &Self) -> Ordering {
+        u128::from(*self).cmp(&(u128::from(j) * u128::from(*other)))
+    }
+}
+
+impl Comparable for u128 {
+    fn compare_with_times(&self, j: u64, other: &Self) -> Ordering {
+        Wide::product(*self, 1).cmp(&Wide::product(*other, j))
+    }
+}
+
+/// The parents of the simplest fraction between `lo` = n/D and `hi`, ends in the interval as flagged.
+fn search<T: Comparable>(
+    [mut n1, mut d1]: [T; 2],
+    [mut n2, mut d2]: [T; 2],
+    (mut low_closed, mut high_closed): (bool, bool),
+) -> Option<Parents> {
+    let (mut old, mut new) = (Node::ZERO, Node::INFINITY);
+    let mut new_above = true;
+    loop {
+        let whole = n1.quotient(&d1);
+        let at_whole = n1.compare_with_times(whole, &d1) == Ordering::Equal;
+        let smallest = if low_closed && at_whole {
+            whole
+        } else {
+            whole.checked_add(1)?
+        };
+        // A zero d2 stands for an infinite upper end, which compares right by itself.
+        let order = n2.compare_with_times(smallest, &d2);
+        if order == Ordering::Greater || (order == Ordering::Equal && high_closed) {
+            let nearer = forward(old, new, smallest - 1)?;
+            let (left, right) = if new_above {
+                (nearer, new)
+            } else {
+                (new, nearer)
+            };
+            let in_range = left.l + right.l <= MAX_BOUND && left.m + right.m <= MAX_BOUND;
+            return in_range.then_some(Parents { left, right });
+        }
+        (old, new) = (new, forward(old, new, whole)?);
+        let (rest1, rest2) = (n1.minus_times(whole, &d1), n2.minus_times(whole, &d2));
+        ([n1, d1], [n2, d2]) = ([d2, rest2], [d1, rest1]);
+        (low_closed, high_closed) = (high_closed, low_closed);
+        new_above = !new_above;
+    }
+}
+
+/// `old + j·new` by components, `None` beyond [`MAX_BOUND`].
+#[inline]
+fn forward(old: Node, new: Node, j: u64) -> Option<Node> {
+    let l = u128::from(old.l) + u128::from(j) * u128::from(new.l);
+    let m = u128::from(old.m) + u128::from(j) * u128::from(new.m);
+    let bound = u128::from(MAX_BOUND);
+    (l <= bound && m <= bound).then_some(Node {
+        l: l as u64,
+        m: m as u64,
+    })
+}
