@@ -1,15 +1,29 @@
 //! Clock estimation: measurements in, drift with its interval out.
 
+mod acquire;
+mod bank;
+mod blocks;
 mod config;
+mod direction;
+mod drift_filter;
 mod erfcx_table;
 mod estimate;
+mod filter;
 mod forecast;
 mod growth;
+mod holdover;
+mod intake;
+mod learner;
 mod link;
+mod lock;
 mod measurement;
+mod mode;
+mod noise;
 mod normal;
 mod oscillator;
 mod outcome;
+mod predict;
+mod start;
 
 pub use config::{ConfigError, LinkConfig};
 pub use estimate::{Estimate, Reason, State, compose, exact};

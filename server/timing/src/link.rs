@@ -2,15 +2,69 @@
 
 use serde::{Deserialize, Serialize};
 
+use crate::blocks::Blocks;
 use crate::config::{ConfigError, LinkConfig};
-use crate::estimate::Estimate;
+use crate::drift_filter::DriftFilter;
+use crate::estimate::{Estimate, Reason, State, normal_half_width};
+use crate::filter::{Filter, Setup};
+use crate::forecast::{Forecast, Part};
+use crate::growth::Growth;
+use crate::intake::{Intake, Row, Values};
+use crate::lock::Lock;
 use crate::measurement::Measurement;
-use crate::outcome::{Outcome, Refusal};
+use crate::outcome::{Event, Outcome, Refusal};
+use crate::predict::{Prediction, WIDEN};
+use crate::start::{Start, StartRow};
 
 /// The estimator of one link: one clock, read against one reference by one probe.
+///
+/// Feed [`Link::observe`] in the order of reference time, ask [`Link::estimate`] at any time
+/// from the last reading on. Same calls, same bits, on any machine; the whole state can be
+/// saved and restored.
+///
+/// ```
+/// use num_rational::Ratio;
+/// use ratewright_timing::{Link, LinkConfig, Measurement, State};
+/// let mut link = Link::new(LinkConfig::new(Ratio::new(1_000_000, 1)))?;
+/// // A clock that runs 5 ppm fast, read every second: drift is positive.
+/// for i in 0..300_u64 {
+///     let count = i * 1_000_005;
+///     let reference_ns = i as i64 * 1_000_000_000;
+///     link.observe(i, &Measurement::Counter { count, bits: 64, reference_ns })?;
+/// }
+/// let estimate = link.estimate(299_000_000_000);
+/// assert_eq!(estimate.state, State::Locked);
+/// assert!(estimate.low < 5e-6 && 5e-6 < estimate.high);
+/// assert!((estimate.phase_ns - 5.0 * 299_000.0 / 1000.0 * 1000.0).abs() < 1000.0);
+/// # Ok::<(), Box<dyn std::error::Error>>(())
+/// ```
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Link {
     config: LinkConfig,
+    intake: Intake,
+    stage: Stage,
+    lock: Lock,
+    mean_interval_s: f64,
+    rows_used: u64,
+    outliers: u64,
+}
+
+/// How far the link is.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+#[allow(
+    clippy::large_enum_variant,
+    reason = "one lives as long as its link; a box would only add a hop"
+)]
+enum Stage {
+    /// Phase readings are gathered; nothing else is known.
+    Starting { start: Start, two_way: bool },
+    /// Phase readings are filtered.
+    Phase {
+        filter: Filter,
+        blocks: Option<Blocks>,
+    },
+    /// Drift readings are filtered.
+    Drift(DriftFilter),
 }
 
 impl Link {
@@ -20,7 +74,20 @@ impl Link {
     /// When a field of the declaration is out of its range.
     pub fn new(config: LinkConfig) -> Result<Link, ConfigError> {
         config.check()?;
-        Ok(Link { config })
+        let intake = Intake::new(config.nominal_hz);
+        let start = Start::new(variance(config.prior_deviation_ppm()));
+        Ok(Link {
+            config,
+            intake,
+            stage: Stage::Starting {
+                start,
+                two_way: false,
+            },
+            lock: Lock::default(),
+            mean_interval_s: 0.0,
+            rows_used: 0,
+            outliers: 0,
+        })
     }
 
     /// Takes one measurement.
@@ -31,12 +98,219 @@ impl Link {
     /// # Errors
     /// When the measurement is impossible; the link is then as it was.
     pub fn observe(&mut self, sequence: u64, m: &Measurement) -> Result<Outcome, Refusal> {
-        let _ = (sequence, m);
-        Ok(Outcome::Buffered)
+        let before_ns = self.intake.last_reference_ns();
+        let drift_ppm = self.drift_ppm();
+        let Some(row) = self.intake.admit(sequence, m, drift_ppm)? else {
+            return Ok(Outcome::Stale);
+        };
+        let interval_s = before_ns.map_or(0.0, |ns| row.t_s - self.intake.seconds(ns));
+        let in_gap = self.is_gap(interval_s);
+        let outcome = self.take(&row, in_gap);
+        self.keep_interval(interval_s, in_gap);
+        if outcome == Outcome::Outlier {
+            self.outliers += 1;
+        } else {
+            self.rows_used += 1;
+            self.intake.confirm();
+        }
+        let half_width = self.quick_half_width();
+        self.lock
+            .update(half_width, self.config.lock_half_width, self.rows_used);
+        Ok(outcome)
     }
 
     /// What is known at a reference time; earlier times than the last reading count as that.
     pub fn estimate(&self, at_reference_ns: i64) -> Estimate {
-        crate::estimate::exact(at_reference_ns)
+        let last_reading_ns = self.intake.last_reference_ns();
+        let as_of_ns = at_reference_ns.max(last_reading_ns.unwrap_or(i64::MIN));
+        let now_s = self.intake.seconds(as_of_ns);
+        let since_s = last_reading_ns.map_or(0.0, |ns| now_s - self.intake.seconds(ns));
+        let in_gap = self.is_gap(since_s);
+        let p = self.predict(now_s, in_gap);
+        let half_width = 1e-6 * p.half_width;
+        let (state, reason) = if last_reading_ns.is_none() {
+            (State::FreeRunning, Reason::NeverMeasured)
+        } else {
+            self.lock
+                .state(half_width, self.config.lock_half_width, in_gap)
+        };
+        let seeking = matches!(state, State::Acquiring | State::FreeRunning) && !in_gap;
+        Estimate {
+            state,
+            reason,
+            drift: 1e-6 * p.y,
+            deviation: 1e-6 * p.variance.sqrt(),
+            low: 1e-6 * p.y - half_width,
+            high: 1e-6 * p.y + half_width,
+            drift_rate_per_s: 1e-6 * p.slope,
+            phase_ns: 1e3 * p.x,
+            phase_deviation_ns: 1e3 * p.x_variance.sqrt(),
+            as_of_ns,
+            last_reading_ns,
+            rows_used: self.rows_used,
+            outliers: self.outliers,
+            lock_expected_in_s: if seeking {
+                self.lock_expected_in_s()
+            } else {
+                None
+            },
+            forecast: Forecast::of(self.forecast_part(&p, now_s)),
+        }
     }
+
+    /// No reading for longer than max(20 s, 6 usual intervals).
+    fn is_gap(&self, since_s: f64) -> bool {
+        self.rows_used > 1 && since_s > (6.0 * self.mean_interval_s).max(20.0)
+    }
+
+    fn keep_interval(&mut self, interval_s: f64, in_gap: bool) {
+        if in_gap || interval_s <= 0.0 {
+            return;
+        }
+        let gain = if self.mean_interval_s > 0.0 {
+            1.0 / 16.0
+        } else {
+            1.0
+        };
+        self.mean_interval_s += gain * (interval_s - self.mean_interval_s);
+    }
+
+    fn setup(&self) -> Setup {
+        Setup {
+            prior_var: variance(self.config.prior_deviation_ppm()),
+            scale: self.config.oscillator.wander_scale(),
+            // Uniform over a tick, its deviation is the tick over √12; half of that is certain.
+            least_sigma: 0.144 * self.intake.quantum_us(),
+        }
+    }
+
+    fn take(&mut self, row: &Row, in_gap: bool) -> Outcome {
+        match row.values {
+            Values::OneWay(z) => self.take_phase(
+                StartRow {
+                    t_s: row.t_s,
+                    z: [z; 2],
+                },
+                false,
+                in_gap,
+            ),
+            Values::TwoWay(z) => self.take_phase(StartRow { t_s: row.t_s, z }, true, in_gap),
+            Values::Drift(y, r) => self.take_drift(row.t_s, y, r, in_gap),
+        }
+    }
+
+    fn take_phase(&mut self, row: StartRow, is_two_way: bool, in_gap: bool) -> Outcome {
+        let setup = self.setup();
+        match &mut self.stage {
+            Stage::Starting { start, two_way } => {
+                *two_way = is_two_way;
+                if !start.push(row) {
+                    return Outcome::Buffered;
+                }
+                let filter = Filter::begin(start, is_two_way, &setup);
+                let blocks = is_two_way.then(|| Blocks::new(start.rows()));
+                self.stage = Stage::Phase { filter, blocks };
+                Outcome::Used
+            }
+            Stage::Phase { filter, blocks } => {
+                let outcome = match blocks {
+                    None => filter.take(&row, in_gap),
+                    Some(blocks) => blocks.take(filter, row, in_gap, &setup),
+                };
+                if !filter.lost() {
+                    return outcome;
+                }
+                let start = Start::new(setup.prior_var);
+                self.stage = Stage::Starting {
+                    start,
+                    two_way: is_two_way,
+                };
+                Outcome::Event(Event::Restart)
+            }
+            Stage::Drift(_) => Outcome::Buffered, // the intake refuses a change of kind
+        }
+    }
+
+    fn take_drift(&mut self, t_s: f64, y: f64, r: f64, in_gap: bool) -> Outcome {
+        let setup = self.setup();
+        if let Stage::Starting { .. } = self.stage {
+            self.stage = Stage::Drift(DriftFilter::new(t_s, &setup));
+        }
+        match &mut self.stage {
+            Stage::Drift(filter) => filter.take(t_s, y, r, in_gap),
+            _ => Outcome::Buffered, // the intake refuses a change of kind
+        }
+    }
+
+    fn drift_ppm(&self) -> f64 {
+        match &self.stage {
+            Stage::Starting { start, .. } => start.line(self.intake.quantum_us()).y,
+            Stage::Phase { filter, .. } => filter.bank.mixture().y,
+            Stage::Drift(filter) => filter.bank().mixture().y,
+        }
+    }
+
+    /// Half-width after a row, from the moments alone: what the lock goes by.
+    fn quick_half_width(&self) -> f64 {
+        let variance = match &self.stage {
+            Stage::Starting { start, .. } => start.line(self.intake.quantum_us()).yy,
+            Stage::Phase { filter, .. } => filter.bank.mixture().yy,
+            Stage::Drift(filter) => filter.bank().mixture().yy,
+        };
+        1e-6 * WIDEN * normal_half_width(variance.sqrt())
+    }
+
+    fn predict(&self, now_s: f64, in_gap: bool) -> Prediction {
+        match &self.stage {
+            Stage::Starting { start, .. } => {
+                let line = start.line(self.intake.quantum_us());
+                let scale = self.config.oscillator.wander_scale();
+                let growth = Growth {
+                    factors: [scale; 6],
+                    tail: scale,
+                    walk: 0.0,
+                };
+                let ahead = (now_s - line.t_s).max(0.0);
+                let variance = line.yy + if in_gap { growth.variance(ahead) } else { 0.0 };
+                Prediction {
+                    y: line.y,
+                    variance,
+                    half_width: normal_half_width(variance.sqrt()),
+                    slope: 0.0,
+                    x: line.x + ahead * line.y,
+                    x_variance: line.xx + ahead * ahead * variance,
+                    white_fm: 1e-6 * scale,
+                    growth,
+                }
+            }
+            Stage::Phase { filter, .. } => filter.predict((now_s - filter.t_s).max(0.0), in_gap),
+            Stage::Drift(filter) => filter.predict(now_s, in_gap),
+        }
+    }
+
+    fn forecast_part(&self, p: &Prediction, now_s: f64) -> Part {
+        let age_s = match &self.stage {
+            Stage::Starting { .. } => 0.0,
+            Stage::Phase { filter, .. } => (now_s - filter.t_s).max(0.0),
+            Stage::Drift(filter) => filter.age_s(now_s),
+        };
+        let drift_var = p.variance - p.growth.variance(age_s);
+        Part {
+            age_s,
+            drift_var,
+            white_fm: p.white_fm,
+            growth: p.growth,
+        }
+    }
+
+    fn lock_expected_in_s(&self) -> Option<f64> {
+        let Stage::Phase { filter, .. } = &self.stage else {
+            return None;
+        };
+        crate::acquire::lock_expected_in_s(filter, self.config.lock_half_width, self.rows_used)
+    }
+}
+
+fn variance(deviation: f64) -> f64 {
+    deviation * deviation
 }

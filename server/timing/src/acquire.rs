@@ -1,0 +1,66 @@
+//! When an estimate that is still too wide should lock.
+
+use crate::bank::{JUMP, MODES};
+use crate::filter::Filter;
+use crate::lock::{ENTER, LOCK_ROWS};
+use crate::mode::{Step, Walk, WalkNoise};
+use crate::normal::Z95;
+use crate::predict::WIDEN;
+
+/// Farther than this nothing is foreseen, s.
+const HORIZON_S: f64 = 86_400.0;
+
+/// Seconds until the half-width should be within the threshold, if rows go on as they do.
+///
+/// The covariance of an average mode is run forward in strides that grow by a tenth, each with
+/// the information that its rows would bring.
+pub(crate) fn lock_expected_in_s(filter: &Filter, lock_half_width: f64, rows: u64) -> Option<f64> {
+    let step_s = filter.mean_step_s;
+    if step_s <= 0.0 {
+        return None;
+    }
+    let wanted_ppm = 1e6 * lock_half_width * ENTER / (Z95 * WIDEN);
+    let per_row: f64 = filter
+        .measuring()
+        .map(|d| d.information / d.thinning())
+        .sum();
+    let (mut walk, noise) = average(filter);
+    let mut ahead = 0.0;
+    let mut stride = step_s;
+    while ahead < HORIZON_S {
+        if walk.yy <= wanted_ppm * wanted_ppm {
+            let rows_missing = LOCK_ROWS.saturating_sub(rows) as f64;
+            return Some(ahead.max(rows_missing * step_s));
+        }
+        walk.advance(&Step::new(stride, 0.0), noise);
+        let information = per_row * stride / step_s;
+        walk.correct(0.0, -information / (1.0 + information * walk.xx));
+        ahead += stride;
+        stride = stride.max(0.1 * ahead);
+    }
+    None
+}
+
+/// Covariance and process noise averaged over the modes.
+fn average(filter: &Filter) -> (Walk, WalkNoise) {
+    let m = filter.bank.mixture();
+    let mut noise = WalkNoise { q1: 0.0, q2: 0.0 };
+    let mut xy = 0.0;
+    for j in (0..MODES).filter(|&j| j != JUMP) {
+        let weight = filter.bank.weights()[j];
+        let own = filter.bank.noise(j).walk;
+        noise.q1 += weight * own.q1;
+        noise.q2 += weight * own.q2;
+        xy += weight * filter.bank.walk(j).xy;
+    }
+    (
+        Walk {
+            x: m.x,
+            y: m.y,
+            xx: m.xx,
+            xy,
+            yy: m.yy,
+        },
+        noise,
+    )
+}

@@ -1,0 +1,177 @@
+//! One direction of a path: its offset, its noise, and evidence of steps and route changes.
+
+use serde::{Deserialize, Serialize};
+
+use crate::learner::Learner;
+use crate::noise::{Detail, Noise};
+use crate::start::FirstGuess;
+
+/// One direction of a path. One-way links have one, two-way links two.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub(crate) struct Direction {
+    /// s in e = s(z − b − x): −1 when lateness makes z smaller, +1 when larger.
+    pub(crate) sign: f64,
+    /// b, µs.
+    pub(crate) offset: f64,
+    pub(crate) noise: Noise,
+    learner: Learner,
+    correlation: Correlation,
+    /// Average information of a row, 1/µs².
+    pub(crate) information: f64,
+    step: StepEvidence,
+    route: RouteEvidence,
+}
+
+/// What a row tells about events in its direction.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub(crate) enum Verdict {
+    /// An ordinary row.
+    Ordinary,
+    /// An outlier, not (yet) explained.
+    Outlier,
+    /// The fifth agreeing outlier: the phase of this direction has stepped.
+    Stepped,
+    /// So many late rows in a row that the least latency must have grown.
+    Rerouted,
+}
+
+/// Lag-one autocorrelation of the scores.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Serialize, Deserialize)]
+struct Correlation {
+    rows: u32,
+    mean: f64,
+    variance: f64,
+    lagged: f64,
+    last: f64,
+}
+
+#[derive(Clone, Copy, Debug, Default, PartialEq, Serialize, Deserialize)]
+struct StepEvidence {
+    count: u32,
+    mean: f64,
+}
+
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+struct RouteEvidence {
+    late: u32,
+    least: f64,
+    hit_rate: f64,
+}
+
+impl Correlation {
+    fn take(&mut self, first: f64) {
+        self.rows = self.rows.saturating_add(1);
+        let gain = (1.0 / self.rows as f64).max(1.0 / 256.0);
+        let deviation = first - self.mean;
+        self.mean += gain * deviation;
+        self.variance += gain * (deviation * deviation - self.variance);
+        self.lagged += gain * (deviation * self.last - self.lagged);
+        self.last = deviation;
+    }
+
+    /// λ = (1 + ρ)/(1 − ρ) within 1..20, once a hundred rows have spoken.
+    fn thinning(&self) -> f64 {
+        if self.rows < 100 || self.variance <= 0.0 {
+            return 1.0;
+        }
+        let rho = (self.lagged / self.variance - 0.08).clamp(0.0, 0.95);
+        ((1.0 + rho) / (1.0 - rho)).min(20.0)
+    }
+}
+
+impl Direction {
+    pub(crate) fn new(sign: f64, guess: &FirstGuess) -> Self {
+        Direction {
+            sign,
+            offset: guess.offset,
+            noise: guess.noise,
+            learner: Learner::new(&guess.noise),
+            correlation: Correlation::default(),
+            information: 1.0 / (guess.noise.sigma * guess.noise.sigma),
+            step: StepEvidence::default(),
+            route: RouteEvidence {
+                late: 0,
+                least: 0.0,
+                hit_rate: 0.5,
+            },
+        }
+    }
+
+    /// λ: the number of rows that speak as one, for they agree with each other.
+    pub(crate) fn thinning(&self) -> f64 {
+        self.correlation.thinning()
+    }
+
+    /// Learns from a row of error `e` seen at phase variance `p`. Where the offset must move
+    /// because the density now settles elsewhere, that is done, and the distance returned.
+    pub(crate) fn learn(&mut self, detail: &Detail, p: f64, least_sigma: f64) -> f64 {
+        self.correlation.take(detail.score.first);
+        let first = detail.score.first;
+        self.information += (first * first - self.information) / 64.0;
+        if !self.learner.learn(&self.noise, detail) {
+            return 0.0;
+        }
+        let learned = self.learner.refresh(least_sigma);
+        let moved = self.noise.displacement(&learned, p);
+        self.noise = learned;
+        self.offset += self.sign * moved;
+        moved
+    }
+
+    /// Weighs a row of error `e` as evidence, and moves the offset when an event is certain.
+    pub(crate) fn judge(&mut self, e: f64, detail: &Detail, p: f64) -> Verdict {
+        let wide = if e < 0.0 { detail.shares[3] } else { 0.0 };
+        if detail.shares[4] + wide > 0.5 {
+            return self.outlying(e, p);
+        }
+        self.step = StepEvidence::default();
+        self.late(e)
+    }
+
+    /// Distance within which outliers agree, µs.
+    pub(crate) fn agreement(&self, p: f64) -> f64 {
+        self.noise.reach() + 0.5 * p.sqrt()
+    }
+
+    fn outlying(&mut self, e: f64, p: f64) -> Verdict {
+        let step = &mut self.step;
+        if step.count > 0 && (e - step.mean).abs() <= self.noise.reach() + 0.5 * p.sqrt() {
+            step.count += 1;
+            step.mean += (e - step.mean) / step.count as f64;
+        } else {
+            *step = StepEvidence { count: 1, mean: e };
+        }
+        if step.count < 5 {
+            return Verdict::Outlier;
+        }
+        self.offset += self.sign * step.mean;
+        *step = StepEvidence::default();
+        self.route.late = 0;
+        Verdict::Stepped
+    }
+
+    /// Long runs of late rows: the least latency has grown by what the earliest of them shows.
+    fn late(&mut self, e: f64) -> Verdict {
+        let line = self.noise.sigma + 0.5 * self.noise.tau[0];
+        let route = &mut self.route;
+        let hit = e <= line;
+        route.hit_rate += ((hit as u8 as f64) - route.hit_rate) / 256.0;
+        if hit {
+            route.late = 0;
+            return Verdict::Ordinary;
+        }
+        route.least = if route.late == 0 {
+            e
+        } else {
+            route.least.min(e)
+        };
+        route.late += 1;
+        let enough = 14.0 * self.correlation.thinning() / route.hit_rate.max(0.02);
+        if route.late < 12 || (route.late as f64) <= enough {
+            return Verdict::Ordinary;
+        }
+        self.offset += self.sign * (route.least - self.noise.sigma);
+        route.late = 0;
+        Verdict::Rerouted
+    }
+}

@@ -1,0 +1,275 @@
+//! The filter of a phase link once it has begun: rows in, bank and noise moved on.
+
+use serde::{Deserialize, Serialize};
+
+use crate::bank::{Bank, JUMP, MODES, Mixture, PRIOR, Sight};
+use crate::direction::{Direction, Verdict};
+use crate::growth::Growth;
+use crate::holdover::{Belief, Structure};
+use crate::mode::{Step, Walk};
+use crate::outcome::{Event, Outcome};
+use crate::start::{Start, StartRow};
+
+/// Rows before a jump of the drift is believed.
+const JUMP_ROWS: u64 = 24;
+/// Memory of the average weights that a jump returns to, s.
+const WEIGHT_MEMORY_S: f64 = 900.0;
+/// A mode of next to no weight begins anew this often, s.
+const RESEED_S: f64 = 1200.0;
+
+/// What of the configuration the filter needs.
+#[derive(Clone, Copy, Debug)]
+pub(crate) struct Setup {
+    /// Variance of the drift before anything is measured, ppm².
+    pub(crate) prior_var: f64,
+    /// Factor of the oscillator on wander and temperature.
+    pub(crate) scale: f64,
+    /// Least deviation of the noise, µs.
+    pub(crate) least_sigma: f64,
+}
+
+/// Bank, noise of each direction and everything learned besides.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub(crate) struct Filter {
+    pub(crate) bank: Bank,
+    /// Time of the last row, s.
+    pub(crate) t_s: f64,
+    pub(crate) directions: [Direction; 2],
+    two_way: bool,
+    pub(crate) structure: Structure,
+    average_weights: [f64; MODES],
+    rows_since_event: u64,
+    outlier_share: f64,
+    since_reseed_s: f64,
+    pub(crate) mean_step_s: f64,
+    least_sigma: f64,
+}
+
+/// One-way readings are late, so z is too small; going out and coming back they err apart.
+const SIGNS: [f64; 2] = [-1.0, 1.0];
+
+impl Filter {
+    /// Begins from the rows gathered, and takes them one after another.
+    pub(crate) fn begin(start: &Start, two_way: bool, setup: &Setup) -> Self {
+        let signs = if two_way { SIGNS } else { [SIGNS[0]; 2] };
+        let guesses = start.guess(signs, setup.least_sigma);
+        let mut directions = [0, 1].map(|c| Direction::new(signs[c], &guesses[c]));
+        let middle = if two_way { 0.0 } else { directions[0].offset };
+        if !two_way {
+            directions[0].offset = 0.0;
+        }
+        let first = start.rows()[0];
+        let spread = directions[0].noise.sigma + directions[0].noise.tau[0];
+        let phase_var = (1e6 * spread * spread).min(1e10);
+        let x = if two_way {
+            0.5 * (first.z[0] + first.z[1])
+        } else {
+            middle
+        };
+        let mut filter = Filter {
+            bank: Bank::new(x, phase_var, setup.prior_var, setup.scale),
+            t_s: first.t_s,
+            directions,
+            two_way,
+            structure: Structure::new(setup.scale),
+            average_weights: PRIOR,
+            rows_since_event: 0,
+            outlier_share: 0.0,
+            since_reseed_s: 0.0,
+            mean_step_s: 0.0,
+            least_sigma: setup.least_sigma,
+        };
+        for row in start.rows() {
+            filter.take(row, false);
+        }
+        filter
+    }
+
+    /// Takes a row; `in_gap` says that it ends a gap.
+    pub(crate) fn take(&mut self, row: &StartRow, in_gap: bool) -> Outcome {
+        let dt = (row.t_s - self.t_s).max(0.0);
+        self.advance(dt, in_gap);
+        let count = if self.two_way { 2 } else { 1 };
+        let mut verdicts = [Verdict::Ordinary; 2];
+        let mut newton = [0.0; 2];
+        for c in 0..count {
+            (verdicts[c], newton[c]) = self.look(c, row.z[c]);
+        }
+        if self.two_way && verdicts == [Verdict::Ordinary; 2] {
+            self.split_offsets(newton);
+        }
+        self.rows_since_event += 1;
+        let outlying = verdicts[..count].contains(&Verdict::Outlier);
+        self.outlier_share += ((outlying as u8 as f64) - self.outlier_share) / 32.0;
+        let outcome = self.conclude(&verdicts[..count]);
+        self.watch_drift(dt);
+        if self.jumped() {
+            return Outcome::Event(Event::FrequencyJump);
+        }
+        outcome
+    }
+
+    /// Whether nothing fits any more and the link should begin anew.
+    pub(crate) fn lost(&self) -> bool {
+        self.outlier_share > 0.7
+    }
+
+    /// The directions that measure: one, or both of a two-way path.
+    pub(crate) fn measuring(&self) -> impl Iterator<Item = &Direction> {
+        self.directions[..if self.two_way { 2 } else { 1 }].iter()
+    }
+
+    /// D(h) as far as it is known.
+    pub(crate) fn growth(&self) -> Growth {
+        let walk = (0..MODES).map(|j| self.bank.weights()[j] * self.bank.noise(j).walk.q2);
+        self.structure.growth(walk.sum())
+    }
+
+    fn advance(&mut self, dt: f64, in_gap: bool) {
+        if dt <= 0.0 {
+            return;
+        }
+        let least_q2 = if in_gap {
+            self.growth().variance(dt) / dt
+        } else {
+            0.0
+        };
+        self.bank.advance(&Step::new(dt, least_q2));
+        self.t_s += dt;
+        if !in_gap {
+            self.mean_step_s +=
+                (dt - self.mean_step_s) * if self.mean_step_s > 0.0 { 0.06 } else { 1.0 };
+        }
+    }
+
+    /// Weighs one direction's value into the bank; its verdict and its Newton residual, µs.
+    fn look(&mut self, c: usize, z: f64) -> (Verdict, f64) {
+        let direction = &mut self.directions[c];
+        let mixture = self.bank.mixture();
+        let value = z - direction.offset;
+        let e = direction.sign * (value - mixture.x);
+        let detail = direction.noise.detail(e, mixture.xx);
+        let sight = Sight {
+            value,
+            sign: direction.sign,
+            noise: &direction.noise,
+            thinning: direction.thinning(),
+        };
+        self.bank.correct(&sight, &mixture, &detail);
+        let spread = 3.0 * detail.variance.sqrt();
+        let newton = (detail.score.first / direction.information).clamp(-spread, spread);
+        let residual = -direction.sign * newton;
+        let verdict = direction.judge(e, &detail, mixture.xx);
+        let moved = direction.learn(&detail, mixture.xx, self.least_sigma);
+        self.bank.loosen(0.1 * moved * moved, 0.0);
+        (verdict, residual)
+    }
+
+    /// The offsets of the directions are known only by their difference: it is learned from
+    /// the pair's residuals and shared so that the weighed mean of the offsets stays.
+    fn split_offsets(&mut self, residuals: [f64; 2]) {
+        let [out, back] = &mut self.directions;
+        let rows = self.rows_since_event as f64;
+        let gain = (1.0 / (rows + 16.0)).max(1.0 / 8192.0);
+        let difference = gain * (residuals[1] - residuals[0]);
+        let total = out.information + back.information;
+        let share = out.information / total;
+        back.offset += difference * share;
+        out.offset -= difference * (1.0 - share);
+    }
+
+    /// What the row's verdicts amount to; after a step of the clock itself the bank is loosened.
+    fn conclude(&mut self, verdicts: &[Verdict]) -> Outcome {
+        let all = |v: Verdict| verdicts.iter().all(|&verdict| verdict == v);
+        if all(Verdict::Stepped) {
+            let agreement = self.directions[0].agreement(self.bank.mixture().xx);
+            self.bank.loosen(0.25 * agreement * agreement, 0.05 * 0.05);
+            return Outcome::Event(Event::PhaseStep);
+        }
+        if verdicts
+            .iter()
+            .any(|v| matches!(v, Verdict::Stepped | Verdict::Rerouted))
+        {
+            return Outcome::Event(Event::RouteChange);
+        }
+        if verdicts.contains(&Verdict::Outlier) {
+            Outcome::Outlier
+        } else {
+            Outcome::Used
+        }
+    }
+
+    /// Upkeep that looks at the drift: structure function, average weights, dead modes.
+    fn watch_drift(&mut self, dt: f64) {
+        let mixture = self.bank.mixture();
+        let belief = Belief {
+            t_s: self.t_s,
+            y: mixture.y,
+            d: mixture.d,
+            yy: mixture.yy,
+        };
+        self.structure.take(belief);
+        let gain = (dt / WEIGHT_MEMORY_S).min(1.0);
+        for (average, weight) in self.average_weights.iter_mut().zip(self.bank.weights()) {
+            *average += gain * (weight - *average);
+        }
+        self.since_reseed_s += dt;
+        let idle = self.since_reseed_s >= RESEED_S;
+        if idle {
+            self.since_reseed_s = 0.0;
+        }
+        self.reseed(&mixture, idle);
+    }
+
+    /// A mode of no weight that has strayed, or has been idle long, begins from the mixture.
+    fn reseed(&mut self, mixture: &Mixture, idle: bool) {
+        for j in 0..MODES {
+            let weight = self.bank.weights()[j];
+            if j == JUMP || weight >= 1e-3 {
+                continue;
+            }
+            let walk = self.bank.walk(j);
+            let off = walk.y - mixture.y;
+            let strayed = off * off > 9.0 * (walk.yy + mixture.yy);
+            if strayed || (idle && weight < 3e-4) {
+                let xy = self.mixed_covariance(mixture);
+                let state = Walk {
+                    x: mixture.x,
+                    y: mixture.y,
+                    xx: mixture.xx,
+                    xy,
+                    yy: mixture.yy,
+                };
+                self.bank.reseed(j, state);
+            }
+        }
+    }
+
+    fn mixed_covariance(&self, m: &Mixture) -> f64 {
+        let mut total = 0.0;
+        let mut xy = 0.0;
+        for (j, &w) in self.bank.weights().iter().enumerate() {
+            let walk = self.bank.walk(j);
+            xy += w * (walk.xy + (walk.x - m.x) * (walk.y - m.y));
+            total += w;
+        }
+        xy / total
+    }
+
+    /// Follows a jump of the drift once the jump mode explains nearly everything.
+    fn jumped(&mut self) -> bool {
+        if self.rows_since_event < JUMP_ROWS || self.bank.weights()[JUMP] <= 0.9 {
+            return false;
+        }
+        let mut weights = PRIOR;
+        for (weight, average) in weights.iter_mut().zip(self.average_weights) {
+            *weight = 0.3 * *weight + 0.7 * average;
+        }
+        weights[JUMP] = PRIOR[JUMP];
+        self.bank.follow_jump(weights);
+        self.average_weights = weights;
+        self.structure.interrupt();
+        self.rows_since_event = 0;
+        true
+    }
+}

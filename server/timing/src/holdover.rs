@@ -1,0 +1,119 @@
+//! How far the drift strays from its own extrapolation: a structure function, measured.
+
+use serde::{Deserialize, Serialize};
+
+use crate::growth::{Growth, LAGS_S, prior};
+use crate::mode::slope_reach;
+
+const PRIOR_COUNT: f64 = 2.0;
+const MEMORY: f64 = 16.0;
+
+/// What the drift was thought to be at one time.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub(crate) struct Belief {
+    pub(crate) t_s: f64,
+    /// Drift, ppm, its slope, ppm/s, and the drift's variance, ppm².
+    pub(crate) y: f64,
+    pub(crate) d: f64,
+    pub(crate) yy: f64,
+}
+
+/// Mean square of the extrapolation error at each lag of [`LAGS_S`].
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub(crate) struct Structure {
+    scale: f64,
+    since: [Option<Belief>; 6],
+    means: [f64; 6],
+    counts: [f64; 6],
+}
+
+impl Structure {
+    /// Nothing measured; `scale` is the oscillator's factor on the prior.
+    pub(crate) fn new(scale: f64) -> Self {
+        Structure {
+            scale,
+            since: [None; 6],
+            means: [0.0; 6],
+            counts: [0.0; 6],
+        }
+    }
+
+    /// Takes what is believed now; compares it with what was believed a lag ago.
+    pub(crate) fn take(&mut self, now: Belief) {
+        for (k, lag) in LAGS_S.into_iter().enumerate() {
+            let Some(past) = self.since[k] else {
+                self.begin(k, now);
+                continue;
+            };
+            let elapsed = now.t_s - past.t_s;
+            if elapsed < lag {
+                continue;
+            }
+            if elapsed < 2.0 * lag {
+                let error = now.y - past.y - past.d * slope_reach(elapsed);
+                let square = (error * error - now.yy - past.yy).max(0.0);
+                let at_lag = square * prior(lag) / prior(elapsed);
+                self.counts[k] = (self.counts[k] + 1.0).min(MEMORY);
+                self.means[k] += (at_lag - self.means[k]) / self.counts[k];
+            }
+            self.since[k] = None;
+            self.begin(k, now);
+        }
+    }
+
+    /// Beliefs worse than what they are to measure would only measure themselves.
+    fn begin(&mut self, k: usize, now: Belief) {
+        if now.yy < 4.0 * self.scale * prior(LAGS_S[k]) {
+            self.since[k] = Some(now);
+        }
+    }
+
+    /// Forgets pending comparisons, as after a jump of the drift.
+    pub(crate) fn interrupt(&mut self) {
+        self.since = [None; 6];
+    }
+
+    /// Factor on the prior at lag `k`, measured and prior counts together.
+    fn factor(&self, k: usize) -> f64 {
+        let prior_part = PRIOR_COUNT * self.beyond();
+        (prior_part + self.counts[k] * self.means[k] / prior(LAGS_S[k]))
+            / (PRIOR_COUNT + self.counts[k])
+    }
+
+    /// Factor on the prior where nothing was measured: what the longest seen lag showed.
+    fn beyond(&self) -> f64 {
+        let Some(k) = (0..6).rev().find(|&k| self.counts[k] > 0.0) else {
+            return self.scale;
+        };
+        let n = self.counts[k];
+        let seen = self.means[k] / (self.scale * prior(LAGS_S[k]));
+        self.scale * ((PRIOR_COUNT + n * seen) / (PRIOR_COUNT + n)).clamp(0.25, 16.0)
+    }
+
+    /// D(h) as it stands; `walk` is the filter's own random walk, ppm²/s.
+    pub(crate) fn growth(&self, walk: f64) -> Growth {
+        let factors = core::array::from_fn(|k| {
+            let n = self.counts[k];
+            let few = if n > 0.0 {
+                1.0 + 2.0 / (PRIOR_COUNT + n)
+            } else {
+                1.0
+            };
+            self.factor(k) * few
+        });
+        Growth {
+            factors,
+            tail: self.beyond(),
+            walk,
+        }
+    }
+
+    /// Whether a lag near `lag_s` was seen at least three times.
+    pub(crate) fn knows(&self, lag_s: f64) -> bool {
+        let k = LAGS_S
+            .iter()
+            .position(|&lag| lag > 0.7 * lag_s)
+            .unwrap_or(5);
+        self.counts[k] >= 3.0
+    }
+}

@@ -1,0 +1,147 @@
+//! Linear motion of a mode's state: phase x (µs), drift y (ppm), and for some its slope d (ppm/s).
+
+use serde::{Deserialize, Serialize};
+
+use crate::growth::DAILY;
+
+/// Random walk of phase and drift: state and covariance.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub(crate) struct Walk {
+    pub(crate) x: f64,
+    pub(crate) y: f64,
+    pub(crate) xx: f64,
+    pub(crate) xy: f64,
+    pub(crate) yy: f64,
+}
+
+/// A walk whose drift has a slope that swings with the day and fades.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub(crate) struct Slope {
+    pub(crate) walk: Walk,
+    pub(crate) d: f64,
+    pub(crate) xd: f64,
+    pub(crate) yd: f64,
+    pub(crate) dd: f64,
+}
+
+/// Process noise of a walk: of phase in µs²/s, of drift in ppm²/s.
+#[derive(Clone, Copy, Debug)]
+pub(crate) struct WalkNoise {
+    pub(crate) q1: f64,
+    pub(crate) q2: f64,
+}
+
+/// Process noise of a slope: ppm²/s³, and the deviation it tends to, ppm/s.
+#[derive(Clone, Copy, Debug)]
+pub(crate) struct SlopeNoise {
+    pub(crate) walk: WalkNoise,
+    pub(crate) q3: f64,
+    pub(crate) d_deviation: f64,
+}
+
+/// One step of time.
+#[derive(Clone, Copy, Debug)]
+pub(crate) struct Step {
+    /// Its length Δ, s.
+    pub(crate) dt: f64,
+    /// What a slope adds to the drift over it: sin(ωΔ)/ω, none beyond 12 h.
+    pub(crate) reach: f64,
+    /// Least random walk of the drift over it, ppm²/s.
+    pub(crate) least_q2: f64,
+}
+
+/// sin(ωΔ)/ω with ω = 2π/day, nought beyond 12 h: the time over which a slope acts.
+pub(crate) fn slope_reach(dt: f64) -> f64 {
+    if dt > 43_200.0 {
+        return 0.0;
+    }
+    let a = DAILY * dt;
+    if a < 0.05 {
+        let a2 = a * a;
+        return dt * (1.0 - a2 / 6.0 * (1.0 - a2 / 20.0));
+    }
+    libm::sin(a) / DAILY
+}
+
+fn decay(a: f64) -> f64 {
+    if a < 1e-3 {
+        return 1.0 - a * (1.0 - a * (0.5 - a / 6.0));
+    }
+    libm::exp(-a)
+}
+
+impl Step {
+    pub(crate) fn new(dt: f64, least_q2: f64) -> Self {
+        Step {
+            dt,
+            reach: slope_reach(dt),
+            least_q2,
+        }
+    }
+}
+
+impl Walk {
+    /// Moves the state on by a step.
+    #[inline]
+    pub(crate) fn advance(&mut self, step: &Step, noise: WalkNoise) {
+        let dt = step.dt;
+        let q2 = noise.q2.max(step.least_q2);
+        self.x += dt * self.y;
+        self.xx += dt * (2.0 * self.xy + dt * self.yy) + dt * (noise.q1 + q2 * dt * dt / 3.0);
+        self.xy += dt * self.yy + 0.5 * q2 * dt * dt;
+        self.yy += q2 * dt;
+    }
+
+    /// Corrects by a phase score: `pull` = −s·ℓ′/λ and `curve` = ℓ″/λ, along P's x-column.
+    #[inline]
+    pub(crate) fn correct(&mut self, pull: f64, curve: f64) {
+        let c = curve.max(-1.0 / self.xx);
+        let (kx, ky) = (self.xx, self.xy);
+        self.x += kx * pull;
+        self.y += ky * pull;
+        self.xx = (kx + kx * kx * c).max(kx * 1e-12);
+        self.xy += kx * ky * c;
+        self.yy += ky * ky * c;
+    }
+}
+
+impl Slope {
+    /// Moves the state on by a step.
+    #[inline]
+    pub(crate) fn advance(&mut self, step: &Step, noise: SlopeNoise) {
+        let (a, c) = (step.dt, step.reach);
+        let b = 0.5 * a * c;
+        let settled = noise.d_deviation * noise.d_deviation;
+        let fade = decay(0.5 * noise.q3 * a / settled);
+        let q2 = noise.walk.q2.max(step.least_q2);
+        let w = &mut self.walk;
+        w.x += a * w.y + b * self.d;
+        w.y += c * self.d;
+        let rx0 = w.xx + a * w.xy + b * self.xd;
+        let rx1 = w.xy + a * w.yy + b * self.yd;
+        let rx2 = self.xd + a * self.yd + b * self.dd;
+        let ry1 = w.yy + c * self.yd;
+        let ry2 = self.yd + c * self.dd;
+        let q3 = if a < 3600.0 { noise.q3 } else { 0.0 };
+        let a2 = a * a;
+        w.xx = rx0 + a * rx1 + b * rx2 + a * (noise.walk.q1 + a2 * (q2 / 3.0 + q3 * a2 / 20.0));
+        w.xy = rx1 + c * rx2 + a2 * (0.5 * q2 + q3 * a2 / 8.0);
+        w.yy = ry1 + c * ry2 + a * (q2 + q3 * a2 / 3.0);
+        self.xd = fade * rx2 + 0.99 * q3 * a2 * a / 6.0;
+        self.yd = fade * ry2 + 0.99 * q3 * a2 / 2.0;
+        self.dd = fade * fade * self.dd + (1.0 - fade * fade) * settled;
+        self.d *= fade;
+    }
+
+    /// Corrects by a phase score, as [`Walk::correct`].
+    #[inline]
+    pub(crate) fn correct(&mut self, pull: f64, curve: f64) {
+        let c = curve.max(-1.0 / self.walk.xx);
+        let (kx, ky, kd) = (self.walk.xx, self.walk.xy, self.xd);
+        self.walk.correct(pull, c);
+        self.d += kd * pull;
+        self.xd += kx * kd * c;
+        self.yd += ky * kd * c;
+        self.dd += kd * kd * c;
+    }
+}

@@ -1,0 +1,247 @@
+//! Density of one direction's measurement error, and its scores.
+//!
+//! The error e has its tail to the right. With S² = σ² + P the variance of the normal part
+//! (P is the filter's own), the density is
+//! .98·[w₀N(0, S²) + w₁EMG(S, τ₁) + w₂EMG(S, τ₂)] + .02·(1 − w_F)·N(0, (4(σ + τ₁))² + P) + w_F·flat,
+//! flat meaning 1 over 2 s, and EMG the exponentially modified normal: normal plus exponential.
+//! With u = e/S − S/τ and h = φ(u)/Φ(u): ln g = −ln τ + S²/2τ² − e/τ + ln Φ(u),
+//! g′/g = h/S − 1/τ, (ln g)″ = −h(u + h)/S². Times in µs.
+
+use serde::{Deserialize, Serialize};
+
+use crate::normal::erfcx;
+
+const FRAC_1_SQRT_TAU: f64 = 0.398_942_280_401_432_7;
+const FRAC_1_SQRT_2: f64 = core::f64::consts::FRAC_1_SQRT_2;
+/// Density of the flat part: 1 over 2 s.
+const FLAT: f64 = 0.5e-6;
+/// Share of the normal and tailed parts against the wide one.
+const CORE: f64 = 0.98;
+
+/// Parameters of the error density of one direction.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub(crate) struct Noise {
+    /// Deviation of the normal part, µs.
+    pub(crate) sigma: f64,
+    /// Mean of the two exponential tails, µs.
+    pub(crate) tau: [f64; 2],
+    /// Weights of normal, first tail, second tail; with `flat` they sum to one.
+    pub(crate) weights: [f64; 3],
+    /// Weight of the flat part.
+    pub(crate) flat: f64,
+}
+
+/// Log density and its first two derivatives in e.
+#[derive(Clone, Copy, Debug)]
+pub(crate) struct Score {
+    pub(crate) log: f64,
+    pub(crate) first: f64,
+    pub(crate) second: f64,
+}
+
+/// Score with what each part had to do with it.
+#[derive(Clone, Copy, Debug)]
+pub(crate) struct Detail {
+    pub(crate) score: Score,
+    /// Responsibilities of normal, first and second tail, wide, flat.
+    pub(crate) shares: [f64; 5],
+    /// Expected exponential part of either tail, µs.
+    pub(crate) excess: [f64; 2],
+    /// Expected square of the normal part (noise and filter together), µs²: normal, tails.
+    pub(crate) normal_square: [f64; 3],
+    /// S², µs².
+    pub(crate) variance: f64,
+}
+
+/// One exponentially modified part: density over the common normal factor, h and u.
+#[derive(Clone, Copy)]
+struct Tail {
+    density: f64,
+    ratio: f64,
+    u: f64,
+}
+
+#[inline]
+fn tail(e: f64, s: f64, tau: f64, kernel: f64) -> Tail {
+    let u = e / s - s / tau;
+    if u < 0.0 {
+        let scaled = erfcx(-u * FRAC_1_SQRT_2);
+        let density = 0.5 / tau * kernel * scaled;
+        return Tail {
+            density,
+            ratio: 2.0 * FRAC_1_SQRT_TAU / scaled,
+            u,
+        };
+    }
+    let q = libm::exp(-0.5 * u * u);
+    let cdf = 1.0 - 0.5 * q * erfcx(u * FRAC_1_SQRT_2);
+    let exponential = if q > 1e-100 && kernel > 1e-100 {
+        kernel / q
+    } else {
+        libm::exp(0.5 * s * s / (tau * tau) - e / tau)
+    };
+    Tail {
+        density: exponential * cdf / tau,
+        ratio: FRAC_1_SQRT_TAU * q / cdf,
+        u,
+    }
+}
+
+impl Noise {
+    /// Scale beyond which an error is no longer ordinary, µs.
+    pub(crate) fn reach(&self) -> f64 {
+        4.0 * (self.sigma + self.tau[0])
+    }
+
+    /// Log density and derivatives of error `e` seen by a state of phase variance `p`.
+    #[inline]
+    pub(crate) fn score(&self, e: f64, p: f64) -> Score {
+        self.detail(e, p).score
+    }
+
+    /// The same with responsibilities and expectations.
+    #[inline]
+    pub(crate) fn detail(&self, e: f64, p: f64) -> Detail {
+        let variance = self.sigma * self.sigma + p;
+        let s = variance.sqrt();
+        let inverse = 1.0 / variance;
+        let kernel = libm::exp(-0.5 * e * e * inverse);
+        let reach = self.reach();
+        let wide_inverse = 1.0 / (reach * reach + p);
+        let wide_kernel = libm::exp(-0.5 * e * e * wide_inverse);
+        let tails = [
+            tail(e, s, self.tau[0], kernel),
+            tail(e, s, self.tau[1], kernel),
+        ];
+        let parts = [
+            CORE * self.weights[0] * FRAC_1_SQRT_TAU / s * kernel,
+            CORE * self.weights[1] * tails[0].density,
+            CORE * self.weights[2] * tails[1].density,
+            (1.0 - CORE) * (1.0 - self.flat) * FRAC_1_SQRT_TAU * wide_inverse.sqrt() * wide_kernel,
+            self.flat * FLAT,
+        ];
+        let total: f64 = parts.iter().sum();
+        let shares = parts.map(|part| part / total);
+        let slope = [
+            -e * inverse,
+            tails[0].ratio / s - 1.0 / self.tau[0],
+            tails[1].ratio / s - 1.0 / self.tau[1],
+            -e * wide_inverse,
+        ];
+        let curve = [
+            -inverse,
+            -tails[0].ratio * (tails[0].u + tails[0].ratio) * inverse,
+            -tails[1].ratio * (tails[1].u + tails[1].ratio) * inverse,
+            -wide_inverse,
+        ];
+        let (mut first, mut second) = (0.0, 0.0);
+        for k in 0..4 {
+            first += shares[k] * slope[k];
+            second += shares[k] * (curve[k] + slope[k] * slope[k]);
+        }
+        let excess = tails.map(|t| s * (t.u + t.ratio));
+        let square = |k: usize| {
+            let t = tails[k];
+            e * e - 2.0 * e * excess[k] + variance * (1.0 + t.u * t.u + t.u * t.ratio)
+        };
+        Detail {
+            score: Score {
+                log: libm::log(total),
+                first,
+                second: second - first * first,
+            },
+            shares,
+            excess,
+            normal_square: [e * e, square(0), square(1)],
+            variance,
+        }
+    }
+
+    /// Distance by which the location that scores of `self` settle at lies off, when errors
+    /// are distributed as `truth`: (E[ℓ′] − E[ℓ′ of truth]) / E[−ℓ″], by a 40-node
+    /// trapezoidal rule in v with e = σ sinh v.
+    pub(crate) fn displacement(&self, truth: &Noise, p: f64) -> f64 {
+        const NODES: usize = 40;
+        let reach = 8.0 * (truth.tau[1].max(self.tau[1]) + self.sigma);
+        let v_max = libm::asinh(reach / self.sigma);
+        let v_min = -libm::asinh(reach.min(12.0 * (truth.sigma + truth.tau[0])) / self.sigma);
+        let step = (v_max - v_min) / (NODES - 1) as f64;
+        let (mut own, mut reference, mut information) = (0.0, 0.0, 0.0);
+        for i in 0..NODES {
+            let v = v_min + step * i as f64;
+            let grown = libm::exp(v);
+            let (sinh, cosh) = (0.5 * (grown - 1.0 / grown), 0.5 * (grown + 1.0 / grown));
+            let e = self.sigma * sinh;
+            let old = self.score(e, p);
+            let new = truth.score(e, p);
+            let mass = libm::exp(new.log) * cosh;
+            own += mass * old.first;
+            reference += mass * new.first;
+            information -= mass * old.second;
+        }
+        if information > 0.0 {
+            (own - reference) / information
+        } else {
+            0.0
+        }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    const NOISE: Noise = Noise {
+        sigma: 6.0,
+        tau: [20.0, 110.0],
+        weights: [0.6, 0.25, 0.14],
+        flat: 0.01,
+    };
+
+    #[test]
+    fn derivatives_agree_with_differences_of_the_log_density() {
+        for p in [0.0, 3.0, 400.0] {
+            for i in -400..900 {
+                let e = i as f64 * 0.5;
+                let h = 1e-3;
+                let (a, b, c) = (
+                    NOISE.score(e - h, p),
+                    NOISE.score(e, p),
+                    NOISE.score(e + h, p),
+                );
+                let first = (c.log - a.log) / (2.0 * h);
+                let second = (c.first - a.first) / (2.0 * h);
+                assert!(
+                    (b.first - first).abs() < 1e-5,
+                    "e {e} p {p}: {} {first}",
+                    b.first
+                );
+                assert!(
+                    (b.second - second).abs() < 1e-5,
+                    "e {e} p {p}: {} {second}",
+                    b.second
+                );
+            }
+        }
+    }
+
+    #[test]
+    fn density_has_mass_one_without_its_flat_part() {
+        let mut mass = 0.0;
+        for i in -4000..40000 {
+            mass += libm::exp(NOISE.score(i as f64 * 0.1, 2.0).log) - NOISE.flat * FLAT;
+        }
+        assert!((mass * 0.1 - 0.99).abs() < 1e-3, "{}", mass * 0.1);
+    }
+
+    #[test]
+    fn displacement_is_nought_for_the_same_density() {
+        assert!(NOISE.displacement(&NOISE, 0.5).abs() < 1e-12);
+        let mut heavier = NOISE;
+        heavier.tau[0] = 40.0;
+        assert!(
+            NOISE.displacement(&heavier, 0.5) > 0.1,
+            "more tail settles later"
+        );
+    }
+}
