@@ -1,1 +1,31 @@
-//! rehearsal
+//! Rehearsals: seeded clocks, links, faults and whole facilities in simulated time, driving the very
+//! engine that serves real ones.
+//!
+//! A [`Plan`] says as plain data what there is: hosts, devices, crossings, and what goes wrong when.
+//! With a seed and an origin it becomes a [`Facility`], which hands out, in order of arrival, the readings
+//! that its reporters would have sent: to the engine directly with [`rehearse`], or to whoever carries
+//! them to a daemon. Same plan, seed and origin, same bytes.
+//!
+//! Every draw is addressed rather than taken in turn, so that a facility can be resumed in the middle of
+//! its life ([`Facility::skip_to`]) and nothing depends on how often it is asked.
+//!
+//! [`TrueClock`] and [`TruePhase`] tell the truth, which no reporter knows.
+
+mod clock;
+mod dice;
+mod drive;
+mod facility;
+mod link;
+mod phase;
+mod plan;
+mod probe;
+pub mod sample;
+mod ticks;
+
+pub use clock::{Fault, Oscillator, Truth};
+pub use drive::{Occasion, declare, rehearse};
+pub use facility::{Facility, TrueClock};
+pub use link::{Delay, Link, Outage};
+pub use phase::TruePhase;
+pub use plan::{Device, DeviceReading, Host, Plan, PlanError};
+pub use probe::Delivered;

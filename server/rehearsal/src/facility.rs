@@ -1,0 +1,299 @@
+//! A whole facility, played.
+
+use ratewright_control::{Event, HouseNs, Id};
+
+use crate::{
+    clock::{Oscillator, Truth, Walker},
+    dice::Dice,
+    plan::{Host, Plan, PlanError},
+    probe::{Delivered, Probe, walker},
+    ticks::ticks_within,
+};
+
+/// A facility whose life is a function of its plan, its seed and its origin alone.
+#[derive(Clone, Debug)]
+pub struct Facility {
+    plan: Plan,
+    dice: Dice,
+    origin_ns: HouseNs,
+    probes: Vec<Probe>,
+}
+
+impl Facility {
+    /// The facility of a plan. It begins at `origin_ns` of house time; every time in the plan counts
+    /// from there.
+    ///
+    /// # Errors
+    /// [`PlanError`] names the first field of the plan that can't be.
+    pub fn new(plan: Plan, seed: u64, origin_ns: HouseNs) -> Result<Self, PlanError> {
+        plan.check()?;
+        let dice = Dice::new(seed);
+        let host_of = |id: &Id| plan.hosts.iter().find(|host| host.clock.id == *id);
+        let of_host = |host: &Host| Probe::of_host(host, dice, origin_ns);
+        let mut probes: Vec<_> = plan.hosts.iter().map(of_host).collect();
+        for device in &plan.devices {
+            let host = host_of(&device.host).expect("the check found every device's host");
+            probes.push(Probe::of_device(device, host, dice, origin_ns));
+        }
+        Ok(Self {
+            plan,
+            dice,
+            origin_ns,
+            probes,
+        })
+    }
+
+    /// House time at which it began, ns.
+    pub fn origin_ns(&self) -> HouseNs {
+        self.origin_ns
+    }
+
+    /// The plan.
+    pub fn plan(&self) -> &Plan {
+        &self.plan
+    }
+
+    /// The declarations, clocks first.
+    pub fn declarations(&self) -> impl Iterator<Item = Event> {
+        let clocks = self.plan.clocks().cloned().map(Event::DeclareClock);
+        clocks.chain(
+            self.plan
+                .crossings
+                .iter()
+                .cloned()
+                .map(Event::DeclareCrossing),
+        )
+    }
+
+    /// What reached the house by `house_ns` and was not asked for before, in order of arrival.
+    /// Asking often or seldom gives the same readings in the same order.
+    pub fn until(&mut self, house_ns: HouseNs) -> Vec<Delivered> {
+        let mut delivered = Vec::new();
+        for probe in &mut self.probes {
+            probe.deliver(house_ns, &mut delivered);
+        }
+        // Stable: those that arrive in the same nanosecond keep the order of the plan.
+        delivered.sort_by_key(|delivered| delivered.at_ns);
+        delivered
+    }
+
+    /// Leaves out everything that was read before `house_ns`: the reporters were not running.
+    pub fn skip_to(&mut self, house_ns: HouseNs) {
+        for probe in &mut self.probes {
+            probe.skip_to(house_ns);
+        }
+    }
+
+    /// What a clock truly does; `None` if the plan has no such clock.
+    pub fn true_clock(&self, id: &Id) -> Option<TrueClock> {
+        let nominal_hz = self.plan.clocks().find(|clock| clock.id == *id)?.nominal_hz;
+        let hosts = self
+            .plan
+            .hosts
+            .iter()
+            .map(|host| (&host.clock.id, &host.oscillator));
+        let devices = self
+            .plan
+            .devices
+            .iter()
+            .map(|device| (&device.clock.id, &device.oscillator));
+        let oscillator = hosts.chain(devices).find(|(clock, _)| *clock == id);
+        let oscillator = oscillator.map_or(Oscillator::steady(0.0), |(_, found)| found.clone());
+        let walker = walker(id, &oscillator, self.dice);
+        Some(TrueClock {
+            nominal_hz,
+            origin_ns: self.origin_ns,
+            walker,
+        })
+    }
+}
+
+/// The truth about one clock, for checks. It is asked forwards: a question may go back at most to the
+/// beginning of the second of the latest one.
+#[derive(Clone, Debug)]
+pub struct TrueClock {
+    nominal_hz: num_rational::Ratio<u64>,
+    origin_ns: HouseNs,
+    walker: Walker,
+}
+
+impl TrueClock {
+    /// The clock at `house_ns`, not before the facility's origin.
+    pub fn at(&mut self, house_ns: HouseNs) -> Truth {
+        self.walker.at(house_ns - self.origin_ns)
+    }
+
+    /// Ticks that pass from `from_ns` to `until_ns` of house time.
+    pub(crate) fn ticks(&mut self, from_ns: HouseNs, until_ns: HouseNs) -> f64 {
+        let gained_ns = -self.at(from_ns).phase_ns + self.at(until_ns).phase_ns;
+        ticks_within(self.nominal_hz, until_ns - from_ns, gained_ns)
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use ratewright_timing::Measurement;
+
+    use super::*;
+    use crate::{
+        link::{Delay, Link},
+        plan::DeviceReading,
+        sample,
+    };
+
+    const S: HouseNs = 1_000_000_000;
+    const ORIGIN_NS: HouseNs = 1_700_000_000 * S + 123;
+
+    fn sample_facility(seed: u64) -> Facility {
+        Facility::new(sample::plan(), seed, ORIGIN_NS).unwrap()
+    }
+
+    fn bytes(delivered: &[Delivered]) -> Vec<u8> {
+        let readings: Vec<_> = delivered.iter().map(|d| (d.at_ns, &d.reading)).collect();
+        postcard::to_stdvec(&readings).unwrap()
+    }
+
+    #[test]
+    fn same_seed_same_bytes_however_often_it_is_asked() {
+        let whole = sample_facility(5).until(ORIGIN_NS + 700 * S);
+        let mut facility = sample_facility(5);
+        let mut parts = Vec::new();
+        for step in 1..=7_000 {
+            parts.extend(facility.until(ORIGIN_NS + step * S / 10));
+        }
+        assert!(whole.len() > 9_000, "{} readings", whole.len());
+        assert_eq!(bytes(&whole), bytes(&parts));
+        assert_ne!(
+            bytes(&whole),
+            bytes(&sample_facility(6).until(ORIGIN_NS + 700 * S))
+        );
+    }
+
+    #[test]
+    fn readings_arrive_in_order_and_none_before_it_is_asked_for() {
+        let mut facility = sample_facility(5);
+        let mut last_ns = ORIGIN_NS;
+        for step in 1..=900 {
+            let asked_ns = ORIGIN_NS + step * S;
+            for delivered in facility.until(asked_ns) {
+                assert!((last_ns..=asked_ns).contains(&delivered.at_ns));
+                last_ns = delivered.at_ns;
+            }
+        }
+    }
+
+    /// A daemon that comes back after ten minutes finds the facility as it would have been.
+    #[test]
+    fn skipping_leaves_the_rest_as_it_was() {
+        let (gap_ns, end_ns) = (ORIGIN_NS + 600 * S, ORIGIN_NS + 1_200 * S);
+        let mut resumed = sample_facility(5);
+        resumed.skip_to(gap_ns);
+        let rest = resumed.until(end_ns);
+        let mut whole = sample_facility(5).until(end_ns);
+        whole.retain(|d| rest.iter().any(|r| key(r) == key(d)));
+        assert!(rest.len() > 8_000, "{} readings", rest.len());
+        assert_eq!(bytes(&rest), bytes(&whole));
+    }
+
+    fn key(delivered: &Delivered) -> (&Id, u64) {
+        (&delivered.reading.clock, delivered.reading.sequence)
+    }
+
+    #[test]
+    fn nothing_comes_from_the_ferry_in_its_outage() {
+        let delivered = sample_facility(5).until(ORIGIN_NS + 700 * S);
+        let ferry = |d: &&Delivered| d.reading.probe == "host-ferry";
+        let (from_ns, until_ns) = (sample::FERRY_OUTAGE.from_ns, sample::FERRY_OUTAGE.until_ns);
+        let slack_ns = S / 10;
+        let outage = ORIGIN_NS + from_ns + slack_ns..ORIGIN_NS + until_ns;
+        assert!(
+            !delivered
+                .iter()
+                .filter(ferry)
+                .any(|d| outage.contains(&d.at_ns))
+        );
+        assert!(
+            delivered
+                .iter()
+                .filter(ferry)
+                .any(|d| d.at_ns > ORIGIN_NS + until_ns)
+        );
+    }
+
+    /// With a perfect host and no latch delay a counter shows ⌊f·(1+y)·t⌋ at its stamp, and a latch that
+    /// waits for the tick shows it within a nanosecond of the tick.
+    #[test]
+    fn counters_tell_the_truth() {
+        for (reading, edge) in [
+            (
+                DeviceReading::Counter {
+                    bits: 64,
+                    latch: Delay::calm(0, 0.0),
+                },
+                false,
+            ),
+            (
+                DeviceReading::TickEdge {
+                    bits: 64,
+                    latch: Delay::calm(0, 0.0),
+                },
+                true,
+            ),
+        ] {
+            let mut plan = sample::plan();
+            plan.devices
+                .retain(|device| device.clock.id.as_str() == "guest-pictures");
+            plan.hosts
+                .retain(|host| host.clock.id.as_str() == "host-cellar");
+            plan.hosts[0].oscillator = Oscillator::steady(0.0);
+            plan.hosts[0].ahead_ns = 0;
+            plan.hosts[0].link.outages.clear();
+            plan.devices[0].oscillator = Oscillator::steady(2e-5);
+            plan.devices[0].reading = reading;
+            let delivered = Facility::new(plan, 9, ORIGIN_NS)
+                .unwrap()
+                .until(ORIGIN_NS + 100 * S);
+            let mut first = None;
+            for d in &delivered {
+                let Measurement::Counter {
+                    count,
+                    reference_ns,
+                    ..
+                } = d.reading.measurement
+                else {
+                    continue;
+                };
+                let exact = (reference_ns - ORIGIN_NS) as f64 * 1e-9 * 30_000.0 / 1001.0 * 1.00002;
+                // The counter began anywhere; the first reading tells where.
+                let start = *first.get_or_insert(count as f64 - exact.floor());
+                let part = exact - (count as f64 - start);
+                assert!(
+                    (-1e-9..1.0).contains(&part),
+                    "{part} of a tick after the count"
+                );
+                assert!(!edge || part < 1e-7, "{part} of a tick after the edge");
+            }
+            assert!(first.is_some());
+        }
+    }
+
+    #[test]
+    fn a_plan_that_cannot_be_is_refused_by_name() {
+        let mut plan = sample::plan();
+        plan.devices[3].host = Id::new("host-nowhere").unwrap();
+        let error = Facility::new(plan, 1, 0).unwrap_err();
+        assert_eq!(
+            error.to_string(),
+            "devices[3].host is host-nowhere; accepted: the id of a host of the plan"
+        );
+        let mut plan = sample::plan();
+        plan.hosts[0].link = Link {
+            loss: 1.0,
+            ..plan.hosts[0].link.clone()
+        };
+        assert_eq!(
+            Facility::new(plan, 1, 0).unwrap_err().field,
+            "hosts[0].link.loss"
+        );
+    }
+}
