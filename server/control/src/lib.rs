@@ -1,1 +1,42 @@
-//! control
+//! The engine: clocks, crossings, their accounts of phase error, the policy, and settings.
+//!
+//! It is a value with one door, [`Engine::apply`]: events go in with the house time at which they
+//! happen, effects come out. The same events at the same times give the same bytes, in the state
+//! and in the effects. There is no clock, no randomness and no input or output here.
+//!
+//! **Order of use.** Declare clocks, declare crossings (a setting is there at once), feed
+//! readings; apply [`Event::Tick`] whenever [`Engine::next_due`] says so. House times must not go
+//! back; one that does counts as the latest seen. What [`Effects`] holds must be made durable
+//! before it is published.
+//!
+//! **Signs** are derived in [`signs`] and used from there everywhere.
+
+mod clocks;
+mod declaration;
+mod effects;
+mod engine;
+mod event;
+mod id;
+mod link;
+mod refusal;
+mod setting;
+pub mod signs;
+mod status;
+
+pub use declaration::{ClockDeclaration, CrossingDeclaration, Realisation};
+pub use effects::{Effects, Transition};
+pub use engine::Engine;
+pub use event::{Event, Reading, Reference};
+pub use id::{Id, IdError};
+pub use refusal::{Refusal, RefusalKind};
+pub use setting::{Evidence, Realised, Reason, Setting};
+pub use status::{ClockEstimate, CrossingState, CrossingStatus};
+
+/// House time, ns: the facility's one timescale, monotonic.
+pub type HouseNs = i64;
+
+/// Version of the engine: the same journal replays to the same bytes within one version only.
+pub const ENGINE_VERSION: u32 = 1;
+
+/// How far ahead a slip is forecast, seconds.
+pub const SLIP_HORIZON_S: f64 = 86_400.0;

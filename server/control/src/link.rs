@@ -1,0 +1,143 @@
+//! One link: a clock, read against one reference by one probe.
+
+use ratewright_timing::{Estimate, Event as TimingEvent, Link, Outcome};
+use serde::{Deserialize, Serialize};
+
+use crate::clocks::MAX_DEPTH;
+use crate::{ClockDeclaration, HouseNs, Reading, Reference, Refusal};
+
+/// A link that has been silent for so long gives up its place to a new probe, ns (a day).
+const ABANDONED_NS: i64 = 86_400_000_000_000;
+/// The least latency seen so far is forgotten at this rate, 1 ns in so many: the reference may
+/// run slower than house time, by less than 200 ppm.
+const FORGET_LATENCY: i64 = 5_000;
+
+/// A link's estimator with what the engine must know of its readings.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub(crate) struct LinkRecord {
+    pub(crate) reference: Reference,
+    pub(crate) probe: String,
+    link: Link,
+    /// Changes whenever the link's phase begins anew.
+    pub(crate) lineage: u32,
+    last_sequence: u64,
+    /// House time of the last reading's arrival.
+    pub(crate) arrived_ns: HouseNs,
+    /// Reference time minus house time, from the readings that were under way the least.
+    offset_ns: i64,
+}
+
+/// The links by which an estimate came, from house time outwards; phases may be compared only
+/// between estimates of the same lineage.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq, Serialize, Deserialize)]
+pub(crate) struct Lineage([u32; MAX_DEPTH]);
+
+impl Lineage {
+    pub(crate) fn of(link: u32) -> Self {
+        Lineage::default().then(link)
+    }
+
+    /// One link further out.
+    pub(crate) fn then(mut self, link: u32) -> Self {
+        if let Some(free) = self.0.iter_mut().find(|place| **place == 0) {
+            *free = link;
+        }
+        self
+    }
+}
+
+impl LinkRecord {
+    /// A new link with its first reading.
+    pub(crate) fn begin(
+        declaration: &ClockDeclaration,
+        reading: &Reading,
+        now: HouseNs,
+        lineage: u32,
+    ) -> Result<(Self, Outcome), Refusal> {
+        if reading.probe.is_empty() || reading.probe.len() > 63 {
+            let value = format!("{} bytes long", reading.probe.len());
+            return Err(Refusal::invalid("probe", value, "1 to 63 bytes"));
+        }
+        let config = declaration.link_config();
+        let mut record = LinkRecord {
+            reference: reading.reference.clone(),
+            probe: reading.probe.clone(),
+            link: Link::new(config).expect("the declaration was checked when it came in"),
+            lineage,
+            last_sequence: 0,
+            arrived_ns: now,
+            offset_ns: reading.measurement.reference_ns().saturating_sub(now),
+        };
+        let outcome = record.observe(reading, now, lineage)?;
+        Ok((record, outcome))
+    }
+
+    pub(crate) fn is_of(&self, reading: &Reading) -> bool {
+        self.reference == reading.reference && self.probe == reading.probe
+    }
+
+    pub(crate) fn is_abandoned(&self, now: HouseNs) -> bool {
+        now.saturating_sub(self.arrived_ns) > ABANDONED_NS
+    }
+
+    /// Takes a reading; `next_lineage` becomes the link's if its phase begins anew.
+    pub(crate) fn observe(
+        &mut self,
+        reading: &Reading,
+        now: HouseNs,
+        next_lineage: u32,
+    ) -> Result<Outcome, Refusal> {
+        let sequence = match reading.sequence {
+            0 => self.last_sequence.saturating_add(1),
+            own => own,
+        };
+        let outcome = self
+            .link
+            .observe(sequence, &reading.measurement)
+            .map_err(refusal)?;
+        if outcome == Outcome::Stale {
+            return Ok(outcome);
+        }
+        if outcome == Outcome::Event(TimingEvent::Restart) {
+            self.lineage = next_lineage;
+        }
+        self.last_sequence = sequence;
+        let arrived = reading.measurement.reference_ns().saturating_sub(now);
+        let forgotten = now.saturating_sub(self.arrived_ns) / FORGET_LATENCY;
+        self.offset_ns = arrived.max(self.offset_ns.saturating_sub(forgotten));
+        self.arrived_ns = now;
+        Ok(outcome)
+    }
+
+    /// The estimate at a house time, which is mapped to the reference's.
+    pub(crate) fn estimate(&self, now: HouseNs) -> Estimate {
+        self.link.estimate(now.saturating_add(self.offset_ns))
+    }
+}
+
+/// A refusal of the estimator, with the path of the field.
+fn refusal(refused: ratewright_timing::Refusal) -> Refusal {
+    use ratewright_timing::Refusal as Timing;
+    let path = |field: &str| format!("measurement.{field}");
+    match refused {
+        Timing::OutOfRange {
+            field,
+            value,
+            accepted,
+        } => Refusal::invalid(&path(field), value, accepted),
+        Timing::TimeWentBack { field, value, last } => Refusal::invalid(
+            &path(field),
+            value,
+            format!("a time after {last}, the last one taken"),
+        ),
+        Timing::KindChanged { value, accepted } => {
+            let accepted = format!("{accepted}, which this link began with");
+            Refusal::precondition(&path("kind"), value, accepted)
+        }
+        Timing::WidthChanged { value, accepted } => {
+            let accepted = format!("{accepted}, which this link began with");
+            Refusal::precondition(&path("bits"), value, accepted)
+        }
+        other => Refusal::invalid("measurement", "as sent", other),
+    }
+}
