@@ -327,7 +327,7 @@ fn check_ranges(m: &Measurement) -> Result<(), Refusal> {
         Measurement::Frequency {
             drift, deviation, ..
         } => {
-            if !(drift.abs() <= 0.5) {
+            if !(-0.5..=0.5).contains(&drift) {
                 return refuse(
                     "drift",
                     drift.to_string(),

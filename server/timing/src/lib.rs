@@ -23,6 +23,7 @@ mod normal;
 mod oscillator;
 mod outcome;
 mod predict;
+pub mod sim;
 mod start;
 
 pub use config::{ConfigError, LinkConfig};
