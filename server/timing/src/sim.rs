@@ -29,7 +29,7 @@ mod path;
 pub mod probe;
 mod random;
 
-pub use clock::{Clock, ClockModel, Daily, Disturbance, Upset, WarmUp};
+pub use clock::{Clock, ClockModel, Daily, Disturbance, Upset, WarmUp, Weather};
 pub use delay::Delay;
 pub use path::{Path, PathModel, Period};
 pub use random::Random;

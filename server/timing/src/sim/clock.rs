@@ -24,6 +24,8 @@ pub struct ClockModel {
     pub warm_up: Option<WarmUp>,
     /// Daily swing with temperature.
     pub daily: Option<Daily>,
+    /// Irregular swing with the temperature around.
+    pub weather: Option<Weather>,
     /// What happens to the clock, in any order.
     pub upsets: Vec<Upset>,
 }
@@ -46,6 +48,16 @@ pub struct Daily {
     pub angle: f64,
 }
 
+/// A drift that follows an irregular temperature: a first-order Gauss–Markov process of the
+/// given correlation time, smoothed by a lag of an eighth of it.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Weather {
+    /// Deviation of the process before it is smoothed.
+    pub deviation: f64,
+    /// Correlation time, s, above zero.
+    pub time_s: f64,
+}
+
 /// Something that happens to a clock at a true time.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Upset {
@@ -64,6 +76,12 @@ pub enum Disturbance {
     PhaseStep(f64),
 }
 
+impl Knot {
+    fn total_drift(&self) -> f64 {
+        self.drift + self.weather
+    }
+}
+
 impl ClockModel {
     /// A plain crystal on its frequency, with the noise of a common one (invented figures).
     pub fn crystal() -> Self {
@@ -74,6 +92,7 @@ impl ClockModel {
             ageing_per_s: 0.0,
             warm_up: None,
             daily: None,
+            weather: None,
             upsets: Vec::new(),
         }
     }
@@ -95,6 +114,8 @@ struct Knot {
     second: i64,
     phase_s: f64,
     drift: f64,
+    temperature: f64,
+    weather: f64,
 }
 
 const NS: i64 = 1_000_000_000;
@@ -141,7 +162,8 @@ impl Clock {
         self.advance(at_ns);
         let t = seconds(at_ns);
         let into = t - self.knot.second as f64;
-        let mut drift = self.knot.drift + into * (self.next.drift - self.knot.drift);
+        let (from, to) = (self.knot.total_drift(), self.next.total_drift());
+        let mut drift = from + into * (to - from);
         let m = &self.model;
         drift += m.drift + t * m.ageing_per_s;
         if let Some(w) = m.warm_up {
@@ -185,10 +207,26 @@ impl Clock {
         let walked = m.walk_fm.sqrt() * self.random.normal();
         let bend = (m.walk_fm / 12.0).sqrt() * self.random.normal();
         let white = m.white_fm.sqrt() * self.random.normal();
+        let (temperature, weather) = match m.weather {
+            None => (0.0, 0.0),
+            Some(w) => {
+                let keep = libm::exp(-1.0 / w.time_s);
+                let fresh = w.deviation * (1.0 - keep * keep).sqrt() * self.random.normal();
+                let temperature = keep * knot.temperature + fresh;
+                let lag = 1.0 - libm::exp(-8.0 / w.time_s);
+                (
+                    temperature,
+                    knot.weather + lag * (temperature - knot.weather),
+                )
+            }
+        };
+        let swung = 0.5 * (knot.weather + weather);
         Knot {
             second: knot.second + 1,
-            phase_s: knot.phase_s + knot.drift + 0.5 * walked + bend + white,
+            phase_s: knot.phase_s + knot.drift + 0.5 * walked + bend + white + swung,
             drift: knot.drift + walked,
+            temperature,
+            weather,
         }
     }
 }
