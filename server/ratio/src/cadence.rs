@@ -8,14 +8,9 @@
 //! **Sign.** The error e is *outputs made − outputs wanted*, counted in units of g/D output samples: a low
 //! block adds −y, a high block +x.
 //!
-//! **Theorem (block ends).** Serve the high ratio iff e < θ, θ = ⌊(y − x + 1)/2⌋. From e = 0 the error then
-//! stays in θ − y ≤ e ≤ θ + x − 1, so that max |e| = ⌊(x + y)/2⌋ units, which is at most 1/(2·min(b,d))
-//! output samples for neighbours, and no order of the blocks does better.
-//!
-//! **Proof.** If e < θ then e + x ≤ θ + x − 1; else e − y ≥ θ − y: the window of x + y integers maps to itself,
-//! and 0 is in it. The map is a rotation by x modulo x + y, which is coprime to x, so every integer of the
-//! window is visited, and θ centres the window on zero. Any order that repeats must change by multiples that
-//! visit all residues modulo x + y, so its values cannot all lie in a shorter window. ∎
+//! **Theorem (block ends).** By the balance rule ([`crate`], module `balance`) the high ratio is served iff
+//! e < θ, θ = ⌊(y − x + 1)/2⌋, and then max |e| = ⌊(x + y)/2⌋ units. For neighbours that is at most
+//! 1/(2·min(b,d)) output samples, because x·b + y·d = D; and no order of the blocks does better.
 //!
 //! **Cost.** One comparison and one addition a block.
 //!
@@ -27,19 +22,22 @@ use num_rational::Ratio;
 use serde::{Deserialize, Serialize};
 use thiserror::Error;
 
+use crate::balance::{Balance, MAX_STEP};
 use crate::bracket::{Bracket, Node};
 use crate::wide::Wide;
 use crate::{Bounds, Certificate, Claim, Exact, Fraction, Reason, neighbours, smooth};
+
+/// Errors of a block, in units of 1/D, stay below this, so that they fit 128 bits with a sign.
+const MAX_RAW: u128 = 1 << 125;
 
 /// Two ratios with the counts that give the wanted average.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
 #[serde(try_from = "Pair", into = "Pair")]
 pub struct Cadence {
     pair: Pair,
-    /// Low blocks in a period.
-    low_blocks: i64,
-    /// High blocks in a period.
-    high_blocks: i64,
+    /// A high block moves the error up by x, a low one down by y. The numbers of blocks in a period are
+    /// the same two: x low ones and y high ones.
+    balance: Balance,
     /// g of the module's text: the unit of error is g/D outputs.
     unit: u128,
 }
@@ -75,7 +73,7 @@ pub enum CadenceError {
     },
     /// The period has too many blocks to count.
     #[error(
-        "wanted {wanted} needs a period of more than 2^62 blocks; accepted are fractions with smaller parts"
+        "wanted {wanted} needs a period of more than 2^60 blocks; accepted are fractions with smaller parts"
     )]
     TooFine {
         /// The wanted fraction.
@@ -143,18 +141,14 @@ impl Cadence {
         let (Some(x), Some(y)) = (to_high.narrow(), from_low.narrow()) else {
             return Err(too_fine);
         };
+        if x >= MAX_RAW || y >= MAX_RAW {
+            return Err(too_fine);
+        }
         let unit = x.gcd(&y);
-        let count = |blocks: u128| {
-            i64::try_from(blocks / unit)
-                .ok()
-                .filter(|&b| b < 1 << 61)
-                .ok_or(too_fine)
-        };
-        let (low_blocks, high_blocks) = (count(x)?, count(y)?);
+        let balance = Balance::new(x / unit, y / unit).ok_or(too_fine)?;
         Ok(Self {
             pair: Pair { wanted, low, high },
-            low_blocks,
-            high_blocks,
+            balance,
             unit,
         })
     }
@@ -176,12 +170,12 @@ impl Cadence {
 
     /// Blocks of the lower ratio in a period: x.
     pub fn low_blocks(&self) -> u64 {
-        self.low_blocks.unsigned_abs()
+        self.balance.up.unsigned_abs()
     }
 
     /// Blocks of the upper ratio in a period: y.
     pub fn high_blocks(&self) -> u64 {
-        self.high_blocks.unsigned_abs()
+        self.balance.down.unsigned_abs()
     }
 
     /// Blocks in a period: x + y.
@@ -212,18 +206,49 @@ impl Cadence {
     /// # Ok::<(), Box<dyn std::error::Error>>(())
     /// ```
     pub fn error_bound(&self) -> Exact {
-        self.outputs(u128::from(self.period_blocks() / 2))
+        self.outputs(u128::from(self.balance.bound()))
     }
 
-    /// An error of `units` in output samples.
+    /// How often the ratio changes, per second, for a source rate in Hz: every block of the rarer ratio
+    /// stands alone, so 2·min(x, y) changes a period.
+    pub fn switches_per_second(&self, source_rate_hz: f64) -> f64 {
+        let rarer = self.low_blocks().min(self.high_blocks());
+        2.0 * rarer as f64 * source_rate_hz / self.period_inputs() as f64
+    }
+
+    /// An error of `units` in output samples, for units·g below 2^126.
     fn outputs(&self, units: u128) -> Exact {
-        // Divide before multiplying: unit and D share no factor with what the other side needs, and
-        // units·g stays below the error of a whole block, which fits.
         let common = self.unit.gcd(self.pair.wanted.denom());
         Exact::new(
             units * (self.unit / common),
             self.pair.wanted.denom() / common,
         )
+    }
+
+    /// The same with a sign.
+    pub(crate) fn signed_outputs(&self, units: i64) -> Ratio<i128> {
+        let size = self.outputs(u128::from(units.unsigned_abs()));
+        let part = |x: u128| {
+            i128::try_from(x)
+                .expect("units·g is below 2^126, and D below a period of 2^125 samples")
+        };
+        Ratio::new_raw(
+            i128::from(units.signum()) * part(*size.numer()),
+            part(*size.denom()),
+        )
+    }
+
+    /// ⌊headroom⌋ in units of error, for a headroom in output samples.
+    pub(crate) fn units_within(&self, headroom: &Exact) -> Option<i64> {
+        let scaled = headroom.numer().checked_mul(*self.pair.wanted.denom())?;
+        let units = scaled / headroom.denom().checked_mul(self.unit)?;
+        let largest = (MAX_RAW / self.unit).min(MAX_STEP as u128);
+        Some(units.min(largest) as i64)
+    }
+
+    /// The two steps of the error.
+    pub(crate) fn balance(&self) -> Balance {
+        self.balance
     }
 
     /// The proof that nothing allowed lies between the two ratios; none if prime factors were bounded and
@@ -259,15 +284,19 @@ impl Cadence {
     /// The sequence with an error carried over from what was served before, in output samples
     /// (made − wanted). It is rounded to the nearest unit of this cadence, at most half of one
     /// (1/(2D) output samples for neighbours), and is brought within the bound at the fastest rate the pair
-    /// allows. `None` if it is beyond 2^61 units.
+    /// allows. `None` if it is beyond 2^60 units, or the arithmetic beyond 128 bits.
     pub fn start_from(self, error: Ratio<i128>) -> Option<CadenceState> {
         let denominator = i128::try_from(*self.pair.wanted.denom()).ok()?;
-        let scaled = error.numer().checked_mul(denominator)?;
+        let twice = error.numer().checked_mul(2)?.checked_mul(denominator)?;
         let divisor = error.denom().checked_mul(i128::try_from(self.unit).ok()?)?;
-        let error =
-            i64::try_from((2 * scaled.checked_add(divisor / 2)? + 1).div_euclid(2 * divisor))
-                .ok()?;
-        (error.abs() < 1 << 61).then_some(CadenceState {
+        let units = twice
+            .checked_add(divisor)?
+            .div_euclid(divisor.checked_mul(2)?);
+        let largest = (MAX_RAW / self.unit).min(MAX_STEP as u128);
+        let error = i64::try_from(units)
+            .ok()
+            .filter(|&e| u128::from(e.unsigned_abs()) <= largest)?;
+        Some(CadenceState {
             cadence: self,
             error,
         })
@@ -290,6 +319,8 @@ impl Cadence {
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
 pub struct CadenceState {
     cadence: Cadence,
+    /// Outputs made − outputs wanted, in units of the cadence.
+    #[serde(deserialize_with = "crate::balance::saved_error")]
     error: i64,
 }
 
@@ -297,20 +328,10 @@ impl CadenceState {
     /// The ratio of the next block, to be called once at every block end (of M inputs, L outputs).
     #[inline]
     pub fn next_block(&mut self) -> Fraction {
-        let Cadence {
-            pair,
-            low_blocks,
-            high_blocks,
-            ..
-        } = &self.cadence;
-        let threshold = (high_blocks - low_blocks + 1).div_euclid(2);
-        if self.error < threshold {
-            self.error += low_blocks;
-            pair.high
-        } else {
-            self.error -= high_blocks;
-            pair.low
-        }
+        let Cadence { pair, balance, .. } = &self.cadence;
+        let up = balance.is_up(self.error);
+        self.error = balance.after(self.error, up);
+        if up { pair.high } else { pair.low }
     }
 
     /// The cadence that is being served.
@@ -320,11 +341,7 @@ impl CadenceState {
 
     /// Outputs made − outputs wanted so far, in output samples, exact.
     pub fn error_outputs(&self) -> Ratio<i128> {
-        let size = self.cadence.outputs(u128::from(self.error.unsigned_abs()));
-        // Below half a block's length, so far below 2^127; D may be larger only if it does not fit i128.
-        let sign = i128::from(self.error.signum());
-        let part = |x: u128| i128::try_from(x).unwrap_or(i128::MAX);
-        Ratio::new_raw(sign * part(*size.numer()), part(*size.denom()))
+        self.cadence.signed_outputs(self.error)
     }
 }
 

@@ -14,6 +14,7 @@
 use std::cmp::Ordering;
 
 use crate::bracket::{self, Bracket, Node};
+use crate::outward::beyond;
 use crate::wide::Wide;
 use crate::{Bounds, Certificate, Exact, Fraction, Region, smooth};
 
@@ -86,6 +87,67 @@ pub fn neighbours(target: &Exact, bounds: &Bounds) -> Bracket {
     bracket::find(target, bounds)
 }
 
+/// The largest ratio in `region` that is at most `target`; `None` if the target is below all of them.
+/// Its certificate proves it with [`Side::Below`](crate::Side::Below).
+pub fn best_below(target: &Exact, region: &Region) -> Option<Best> {
+    let bracket = bracket::find(target, region);
+    let exact = bracket.above.compare_target(target).is_eq();
+    one_sided(bracket, if exact { bracket.above } else { bracket.below })
+}
+
+/// The smallest ratio in `region` that is at least `target`; `None` if the target is above all of them.
+/// Its certificate proves it with [`Side::Above`](crate::Side::Above).
+///
+/// # Examples
+/// ```
+/// use ratewright_ratio::{Bounds, Claim, Exact, Fraction, Region, Side, best_above};
+/// let (target, region) = (Exact::new(10_000, 10_001), Region::from(&Bounds::new(64, 64)?));
+/// let answer = best_above(&target, &region).expect("1/1 is above it");
+/// assert_eq!(answer.ratio, Fraction::new(1, 1));
+/// let claim = Claim::Nearest { ratio: answer.ratio, target: &target, region, side: Side::Above };
+/// assert_eq!(answer.certificate.verify(&claim), Ok(()));
+/// # Ok::<(), ratewright_ratio::BoundsError>(())
+/// ```
+pub fn best_above(target: &Exact, region: &Region) -> Option<Best> {
+    let bracket = bracket::find(target, region);
+    let exact = bracket.below.compare_target(target).is_eq();
+    one_sided(bracket, if exact { bracket.below } else { bracket.above })
+}
+
+fn one_sided(bracket: Bracket, end: Node) -> Option<Best> {
+    end.fraction().map(|ratio| Best {
+        ratio,
+        certificate: Certificate::Nearest(bracket),
+    })
+}
+
+/// The two neighbours of a target that is in the region itself: the ratios next below and next above it,
+/// nothing of the region between either and the target. `None` if the target is not in the region;
+/// the ends may be sentinels.
+///
+/// # Examples
+/// ```
+/// use ratewright_ratio::{Bounds, Exact, Node, Region, around};
+/// let region = Region::from(&Bounds::new(8, 8)?);
+/// let sides = around(&Exact::new(2, 3), &region).expect("2/3 is in the box");
+/// assert_eq!((sides.below, sides.above), (Node { l: 5, m: 8 }, Node { l: 5, m: 7 }));
+/// # Ok::<(), ratewright_ratio::BoundsError>(())
+/// ```
+pub fn around(target: &Exact, region: &Region) -> Option<Bracket> {
+    let bracket = bracket::find(target, region);
+    let (below, above) = (bracket.below, bracket.above);
+    if above.compare_target(target).is_eq() {
+        return Some(Bracket {
+            below,
+            above: beyond(region, below, above),
+        });
+    }
+    below.compare_target(target).is_eq().then(|| Bracket {
+        below: beyond(region, above, below),
+        above,
+    })
+}
+
 /// The end of a true bracket that is nearer to the target, ties to smaller M, then smaller L.
 pub(crate) fn nearer(bracket: &Bracket, target: &Exact) -> Fraction {
     let (below, above) = (bracket.below, bracket.above);
@@ -103,8 +165,29 @@ pub(crate) fn nearer(bracket: &Bracket, target: &Exact) -> Fraction {
     }
 }
 
-/// Compares `target − below` with `above − target`, given `below ≤ target ≤ above` and finite ends whose
-/// determinant is 1 or whose parts are below 2^32 (so that no product needs more than 192 bits).
+/// The nearer of any two ratios, ties to smaller M, then smaller L.
+pub(crate) fn nearer_of(a: Fraction, b: Fraction, target: &Exact) -> Fraction {
+    let order = compare_errors(a, b, target);
+    let a_first = order.then((a.denom(), a.numer()).cmp(&(b.denom(), b.numer())));
+    if a_first.is_le() { a } else { b }
+}
+
+/// Compares |target − a| with |target − b|, exactly.
+pub(crate) fn compare_errors(a: Fraction, b: Fraction, target: &Exact) -> Ordering {
+    if a > b {
+        return compare_errors(b, a, target).reverse();
+    }
+    let (low, high) = (Node::from(&a), Node::from(&b));
+    if high.compare_target(target).is_ge() {
+        b.cmp(&a)
+    } else if low.compare_target(target).is_le() {
+        a.cmp(&b)
+    } else {
+        compare_distances(low, high, target)
+    }
+}
+
+/// Compares `target − below` with `above − target`, given `below ≤ target ≤ above` and finite ends.
 pub(crate) fn compare_distances(below: Node, above: Node, target: &Exact) -> Ordering {
     let (n, d) = (*target.numer(), *target.denom());
     let from_below = Wide::product(n, below.m)

@@ -164,8 +164,8 @@ pub(crate) trait DownClosed {
 impl DownClosed for Bounds {
     #[inline]
     fn longest_run(&self, p0: u64, q0: u64, p1: u64, q1: u64, limit: u64) -> u64 {
-        let steps =
-            |bound: u64, from: u64, step: u64| (bound - from).checked_div(step).unwrap_or(limit);
+        let room =
+            |bound: u64, from: u64, step: u64| (bound - from).checked_div(step).unwrap_or(u64::MAX);
         let fits = |bound: u64, from: u64, step: u64| {
             u128::from(limit) * u128::from(step) + u128::from(from) <= u128::from(bound)
         };
@@ -173,25 +173,23 @@ impl DownClosed for Bounds {
             return limit;
         }
         limit
-            .min(steps(self.max_m(), q0, q1))
-            .min(steps(self.max_l(), p0, p1))
+            .min(room(self.max_m(), q0, q1))
+            .min(room(self.max_l(), p0, p1))
     }
 }
 
 impl DownClosed for Region {
+    /// Gallops to the first power of two outside, then halves: O(log j) multiplications, no division.
     fn longest_run(&self, p0: u64, q0: u64, p1: u64, q1: u64, limit: u64) -> u64 {
         let inside = |j: u64| {
             let l = j.checked_mul(p1).and_then(|x| x.checked_add(p0));
             let m = j.checked_mul(q1).and_then(|x| x.checked_add(q0));
             matches!((l, m), (Some(l), Some(m)) if self.contains(l, m))
         };
-        // Gallop to the first power of two outside, then halve: O(log j) multiplications, no division.
+        // No region holds a part of 2^63, so doubling stops before it could overflow.
         let mut outside = 1;
         while outside <= limit && inside(outside) {
-            let Some(next) = outside.checked_mul(2) else {
-                break;
-            };
-            outside = next;
+            outside *= 2;
         }
         let (mut low, mut high) = (outside / 2, outside.min(limit.saturating_add(1)));
         while high - low > 1 {

@@ -1,12 +1,14 @@
-//! Products of a 128-bit and a 64-bit number, which need up to 192 bits.
+//! Products beyond 128 bits.
 //!
 //! Every comparison of a candidate L/M (64-bit parts) with a target n/D (128-bit parts) is a comparison
-//! of such products, so nothing in this crate overflows and nothing is rounded.
+//! of products of at most four 64-bit words, so nothing in this crate overflows and nothing is rounded.
 
-/// An unsigned number below 2^192, most significant part first so that the derived order is numeric.
+use std::cmp::Ordering;
+
+/// An unsigned number below 2^256, most significant part first so that the derived order is numeric.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord)]
 pub(crate) struct Wide {
-    high: u64,
+    high: u128,
     low: u128,
 }
 
@@ -17,7 +19,7 @@ impl Wide {
         let low = u128::from(a as u64) * u128::from(b);
         let middle = (a >> 64) * u128::from(b) + (low >> 64);
         Self {
-            high: (middle >> 64) as u64,
+            high: middle >> 64,
             low: (middle << 64) | u128::from(low as u64),
         }
     }
@@ -27,17 +29,17 @@ impl Wide {
     pub(crate) fn minus(self, other: Self) -> Self {
         let (low, borrow) = self.low.overflowing_sub(other.low);
         Self {
-            high: self.high - other.high - u64::from(borrow),
+            high: self.high - other.high - u128::from(borrow),
             low,
         }
     }
 
-    /// The exact product with `factor`; the caller knows it to be below 2^192.
+    /// The exact product with `factor`, for a number below 2^192.
     #[inline]
     pub(crate) fn times(self, factor: u64) -> Self {
         let low = Self::product(self.low, factor);
         Self {
-            high: low.high + self.high * factor,
+            high: low.high + self.high * u128::from(factor),
             low: low.low,
         }
     }
@@ -50,13 +52,16 @@ impl Wide {
 
     /// The nearest double, within one unit in the last place.
     pub(crate) fn to_f64(self) -> f64 {
-        // The top 128 bits, truncated, hold the value to 2^-64 or better; u128 -> f64 rounds to nearest.
-        let zeros = self.high.leading_zeros();
         if self.high == 0 {
             return self.low as f64;
         }
-        let shift = 64 - zeros;
-        let top = (u128::from(self.high) << (128 - shift)) | (self.low >> shift);
+        // The top 128 bits, truncated, hold the value to 2^-127, and the conversion rounds to nearest.
+        let shift = 128 - self.high.leading_zeros();
+        let top = if shift == 128 {
+            self.high
+        } else {
+            (self.high << (128 - shift)) | (self.low >> shift)
+        };
         let scale = f64::from_bits((1023 + u64::from(shift)) << 52);
         top as f64 * scale
     }
@@ -64,7 +69,7 @@ impl Wide {
 
 /// Compares `a/b` with `c/d` by cross products, `a` and `b` of 128 bits; `b` and `d` may be zero for 1/0.
 #[inline]
-pub(crate) fn compare(a: u128, b: u128, c: u64, d: u64) -> std::cmp::Ordering {
+pub(crate) fn compare(a: u128, b: u128, c: u64, d: u64) -> Ordering {
     match (u64::try_from(a), u64::try_from(b)) {
         (Ok(a), Ok(b)) => (u128::from(a) * u128::from(d)).cmp(&(u128::from(c) * u128::from(b))),
         _ => Wide::product(a, d).cmp(&Wide::product(b, c)),
@@ -81,7 +86,7 @@ mod tests {
     }
 
     #[test]
-    fn product_and_difference_agree_with_big_integers() {
+    fn arithmetic_agrees_with_big_integers() {
         let a_values = [
             0,
             1,
@@ -92,16 +97,18 @@ mod tests {
             1 << 127,
         ];
         let b_values = [0, 1, 3, u64::MAX, u64::MAX - 1, 1 << 63];
-        for a in a_values {
-            for b in b_values {
-                let product = Wide::product(a, b);
-                assert_eq!(big(product), BigUint::from(a) * b);
-                let smaller = Wide::product(a / 3, b);
-                assert_eq!(
-                    big(product.minus(smaller)),
-                    BigUint::from(a) * b - BigUint::from(a / 3) * b
-                );
-            }
+        for (a, b) in a_values.into_iter().flat_map(|a| b_values.map(|b| (a, b))) {
+            let product = Wide::product(a, b);
+            assert_eq!(big(product), BigUint::from(a) * b);
+            assert_eq!(
+                big(product.times(u64::MAX)),
+                BigUint::from(a) * b * u64::MAX
+            );
+            let smaller = Wide::product(a / 3, b);
+            assert_eq!(
+                big(product.minus(smaller)),
+                BigUint::from(a) * b - BigUint::from(a / 3) * b
+            );
         }
     }
 
@@ -110,10 +117,9 @@ mod tests {
         let w = Wide::product(u128::MAX, u64::MAX);
         let relative = w.to_f64() / (u128::MAX as f64 * u64::MAX as f64) - 1.0;
         assert!(relative.abs() <= f64::EPSILON, "{relative:e}");
-        assert_eq!(
-            Wide::product(1 << 127, 1 << 63).to_f64(),
-            (1u128 << 127) as f64 * (1u64 << 63) as f64
-        );
+        let power = Wide::product(1 << 127, 1 << 63);
+        assert_eq!(power.to_f64(), 2f64.powi(190));
+        assert_eq!(power.times(1 << 63).to_f64(), 2f64.powi(253));
         assert_eq!(Wide::product(5, 7).to_f64(), 35.0);
     }
 }

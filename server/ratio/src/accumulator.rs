@@ -1,0 +1,85 @@
+//! M fixed, or a power of two: phase accumulators, whose M is the modulus of a counter.
+//!
+//! **Theorem.** For a fixed M the nearest L is t·M rounded to the nearest integer (a half goes down, to the
+//! smaller L), held within 1 to `max_l`: the largest L with (2L − 1)·D < 2·n·M. For powers of two the grids
+//! nest, so only the finest grid on which that L is within the bound, and the next, can win.
+//!
+//! **Cost.** One division while n·M fits 64 bits; else a binary search with one product a step.
+//! **Check.** [`is_nearest_for_m`] needs two comparisons of products.
+
+use crate::nearest::nearer_of;
+use crate::wide::Wide;
+use crate::{Bounds, Exact, Fraction};
+
+/// The L from 1 to `max_l` that brings L/`m` nearest to `target`; a half goes to the smaller L.
+/// `m` and `max_l` are from 1 to [`MAX_BOUND`](crate::MAX_BOUND), and are held to that.
+///
+/// # Examples
+/// ```
+/// use ratewright_ratio::{Exact, best_for_m};
+/// assert_eq!(best_for_m(&Exact::new(160, 147), 1 << 16, 1 << 20), 71_332);
+/// // A tie between 1/1 and 2/1 goes to the smaller.
+/// assert_eq!(best_for_m(&Exact::new(3, 2), 1, 10), 1);
+/// ```
+pub fn best_for_m(target: &Exact, m: u64, max_l: u64) -> u64 {
+    let (m, max_l) = (
+        m.clamp(1, crate::MAX_BOUND),
+        max_l.clamp(1, crate::MAX_BOUND),
+    );
+    if let Some(l) = rounded(target, m) {
+        return l.clamp(1, max_l);
+    }
+    let (mut low, mut high) = (1, max_l + 1);
+    while high - low > 1 {
+        let middle = low + (high - low) / 2;
+        if is_past_midpoint(target, middle, m) {
+            low = middle
+        } else {
+            high = middle
+        }
+    }
+    low
+}
+
+/// True if `l` is what [`best_for_m`] answers; multiplications only. `m` ≤ [`MAX_BOUND`](crate::MAX_BOUND).
+pub fn is_nearest_for_m(l: u64, target: &Exact, m: u64, max_l: u64) -> bool {
+    (1..=max_l).contains(&l)
+        && (l == 1 || is_past_midpoint(target, l, m))
+        && (l == max_l || !is_past_midpoint(target, l + 1, m))
+}
+
+/// The nearest ratio to `target` whose M, before reduction, is a power of two within `bounds`.
+///
+/// # Examples
+/// ```
+/// use ratewright_ratio::{Bounds, Exact, Fraction, best_power_of_two};
+/// let bounds = Bounds::new(1 << 20, 65_535)?;
+/// assert_eq!(best_power_of_two(&Exact::new(160, 147), &bounds), Fraction::new(35_666, 32_768));
+/// # Ok::<(), ratewright_ratio::BoundsError>(())
+/// ```
+pub fn best_power_of_two(target: &Exact, bounds: &Bounds) -> Fraction {
+    let on_grid = |bit: u32| {
+        let m = 1 << bit;
+        Fraction::new(best_for_m(target, m, bounds.max_l()), m)
+    };
+    // Finer is never worse until L meets its bound: below that, the first grid where it does is the last.
+    let finest = bounds.max_m().ilog2();
+    let is_held = |bit: u32| is_past_midpoint(target, bounds.max_l() + 1, 1 << bit);
+    let first_held = (0..=finest).find(|&bit| is_held(bit)).unwrap_or(finest);
+    let coarser = on_grid(first_held.saturating_sub(1));
+    nearer_of(coarser, on_grid(first_held), target)
+}
+
+/// t·m rounded, halves down, if it can be done in 64 bits.
+#[inline]
+fn rounded(target: &Exact, m: u64) -> Option<u64> {
+    let scaled = u64::try_from(*target.numer()).ok()?.checked_mul(m)?;
+    let d = u64::try_from(*target.denom()).ok()?;
+    let (whole, rest) = (scaled.checked_div(d)?, scaled % d);
+    whole.checked_add(u64::from(rest > d - rest))
+}
+
+/// True if l − 1/2 < t·m, that is (2l − 1)·D < 2m·n.
+fn is_past_midpoint(target: &Exact, l: u64, m: u64) -> bool {
+    Wide::product(*target.denom(), 2 * l - 1) < Wide::product(*target.numer(), 2 * m)
+}
