@@ -1,0 +1,179 @@
+//! `[[clock]]` and `[[crossing]]`.
+
+use std::collections::BTreeSet;
+
+use num_rational::Ratio;
+use ratewright_control::{ClockDeclaration, CrossingDeclaration, Id, Realisation};
+use ratewright_ratio::{Bounds, parse_rate};
+use toml::de::DeValue;
+
+use super::section::{Section, integer, number, text};
+
+const MAX_TITLE: usize = 128;
+const LARGEST_NUMERATOR: u64 = 1_000_000_000_000;
+const LARGEST_DENOMINATOR: u64 = 1_000_000_000;
+const LARGEST_BOUND: i64 = 1 << 31;
+const NS_PER_S: f64 = 1e9;
+
+/// The declarations of a file. What has a fault is noted and left out.
+pub(super) fn read(root: &Section<'_>) -> (Vec<ClockDeclaration>, Vec<CrossingDeclaration>) {
+    let mut clock_ids = BTreeSet::new();
+    let clocks = root.each("clock", |section| clock(section, &mut clock_ids));
+    let mut crossing_ids = BTreeSet::new();
+    let crossings = root.each("crossing", |section| {
+        crossing(section, &mut crossing_ids, &clock_ids)
+    });
+    (
+        clocks.into_iter().flatten().collect(),
+        crossings.into_iter().flatten().collect(),
+    )
+}
+
+fn clock(section: &Section<'_>, taken: &mut BTreeSet<Id>) -> Option<ClockDeclaration> {
+    let id = new_id(section, taken);
+    let display_name = title(section);
+    let nominal_hz = section.need("rate", RATE, rate);
+    let (mut exact, mut tolerance_ppm) = (false, 0.0);
+    section.set("exact", "true or false", &mut exact, DeValue::as_bool);
+    section.set(
+        "tolerance_ppm",
+        "0 to 10000 ppm",
+        &mut tolerance_ppm,
+        |value| number(value, 0.0, 10_000.0),
+    );
+    Some(ClockDeclaration {
+        id: id?,
+        display_name,
+        nominal_hz: nominal_hz?,
+        exact,
+        tolerance_ppm,
+    })
+}
+
+fn crossing(
+    section: &Section<'_>,
+    taken: &mut BTreeSet<Id>,
+    clocks: &BTreeSet<Id>,
+) -> Option<CrossingDeclaration> {
+    let id = new_id(section, taken);
+    let display_name = title(section);
+    let source = end("source", section, clocks);
+    let sink = end("sink", section, clocks);
+    if source.is_some() && source == sink {
+        section.fault(
+            "sink",
+            "the source as well",
+            "another clock than the source",
+        );
+    }
+    let (mut max_l, mut max_m) = (1_024, 1_024);
+    let mut headroom_samples = 1.0;
+    let mut realisation = Realisation::Cadence;
+    let mut group = None;
+    let (mut lead_ns, mut review_horizon_ns) = (1_000_000_000, 86_400_000_000_000);
+    let bound = |value: &_| integer(value, 1, LARGEST_BOUND).map(i64::unsigned_abs);
+    section.set("max_l", "1 to 2147483648", &mut max_l, bound);
+    section.set("max_m", "1 to 2147483648", &mut max_m, bound);
+    section.set(
+        "headroom_samples",
+        "above 0 to 1000000000 sink samples",
+        &mut headroom_samples,
+        |value| number(value, f64::MIN_POSITIVE, 1e9),
+    );
+    section.set(
+        "realisation",
+        "\"single\" or \"cadence\"",
+        &mut realisation,
+        read_realisation,
+    );
+    section.set("group", Id::ACCEPTED, &mut group, |value| {
+        name(value).map(Some)
+    });
+    section.set("lead_s", "0.001 to 60 seconds", &mut lead_ns, |value| {
+        seconds(value, 0.001, 60.0)
+    });
+    section.set(
+        "review_horizon_s",
+        "10 to 2592000 seconds",
+        &mut review_horizon_ns,
+        |value| seconds(value, 10.0, 2_592_000.0),
+    );
+    Some(CrossingDeclaration {
+        id: id?,
+        display_name,
+        source: source?,
+        sink: sink?,
+        bounds: Bounds::new(max_l, max_m).ok()?,
+        headroom_samples,
+        realisation,
+        group,
+        lead_ns,
+        review_horizon_ns,
+    })
+}
+
+fn new_id(section: &Section<'_>, taken: &mut BTreeSet<Id>) -> Option<Id> {
+    let id = section.need("id", Id::ACCEPTED, name)?;
+    if taken.insert(id.clone()) {
+        return Some(id);
+    }
+    section.fault(
+        "id",
+        &format!("\"{id}\" a second time"),
+        "a name of its own",
+    );
+    None
+}
+
+fn end(key: &'static str, section: &Section<'_>, clocks: &BTreeSet<Id>) -> Option<Id> {
+    const ACCEPTED: &str = "the id of a [[clock]] of this file";
+    let id = section.need(key, ACCEPTED, name)?;
+    if !clocks.contains(&id) {
+        section.fault(key, &format!("\"{id}\""), ACCEPTED);
+    }
+    Some(id)
+}
+
+fn title(section: &Section<'_>) -> String {
+    let mut title = String::new();
+    section.set(
+        "title",
+        "a text of at most 128 bytes",
+        &mut title,
+        |value| {
+            text(value)
+                .filter(|title| title.len() <= MAX_TITLE)
+                .map(str::to_owned)
+        },
+    );
+    title
+}
+
+fn name(value: &DeValue<'_>) -> Option<Id> {
+    Id::new(text(value)?).ok()
+}
+
+const RATE: &str = "a rate in Hz above 0, such as 48000, \"44.1k\" or \"30000/1001\", whose parts are \
+                    at most 10^12 / 10^9";
+
+fn rate(value: &DeValue<'_>) -> Option<Ratio<u64>> {
+    let rate = match value {
+        DeValue::Integer(_) => Ratio::from_integer(integer(value, 1, i64::MAX)?.unsigned_abs()),
+        _ => parse_rate(text(value)?).ok()?,
+    };
+    let in_range =
+        (1..=LARGEST_NUMERATOR).contains(rate.numer()) && *rate.denom() <= LARGEST_DENOMINATOR;
+    in_range.then_some(rate)
+}
+
+fn read_realisation(value: &DeValue<'_>) -> Option<Realisation> {
+    match text(value)? {
+        "single" => Some(Realisation::Single),
+        "cadence" => Some(Realisation::Cadence),
+        _ => None,
+    }
+}
+
+fn seconds(value: &DeValue<'_>, low: f64, high: f64) -> Option<i64> {
+    number(value, low, high).map(|s| (s * NS_PER_S).round() as i64)
+}
