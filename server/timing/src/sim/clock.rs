@@ -252,6 +252,10 @@ mod tests {
                 amplitude: 1e-6,
                 angle: 1.0,
             }),
+            weather: Some(Weather {
+                deviation: 1e-7,
+                time_s: 3600.0,
+            }),
             upsets: vec![Upset {
                 at_ns: 1000 * NS,
                 what: Disturbance::DriftJump(3e-6),
