@@ -134,8 +134,9 @@ impl CrossingDeclaration {
         Ok(())
     }
 
-    /// Checks the ratio of the nominal rates.
+    /// Checks the ratio of the nominal rates; `field` is what to blame.
     pub(crate) fn check_rates(
+        field: &str,
         source: &ClockDeclaration,
         sink: &ClockDeclaration,
     ) -> Result<(), Refusal> {
@@ -143,9 +144,9 @@ impl CrossingDeclaration {
         if (1.0 / MAX_NOMINAL_RATIO..=MAX_NOMINAL_RATIO).contains(&ratio) {
             return Ok(());
         }
-        let accepted =
-            format!("a clock whose rate is within a factor {MAX_NOMINAL_RATIO} of the source's");
-        Err(Refusal::invalid("sink", &sink.id, accepted))
+        let value = format!("{} Hz for {} Hz", sink.nominal_hz, source.nominal_hz);
+        let accepted = format!("rates within a factor of {MAX_NOMINAL_RATIO} of each other");
+        Err(Refusal::invalid(field, value, accepted))
     }
 }
 

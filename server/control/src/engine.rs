@@ -1,19 +1,32 @@
 //! The engine and its one door.
 
+use std::collections::{BTreeMap, BTreeSet};
+
+use ratewright_timing::Outcome;
 use serde::{Deserialize, Serialize};
 
 use crate::clocks::Clocks;
-use crate::{
-    ClockDeclaration, ClockEstimate, CrossingDeclaration, CrossingStatus, Effects, Event, HouseNs,
-    Id, Refusal,
-};
+use crate::record::CrossingRecord;
+use crate::schedule::{Schedule, Subject};
+use crate::{Effects, Event, HouseNs, Id, Reading, Refusal};
+
+/// House times beyond ±2⁶² ns (146 years) count as that, so that differences fit 64 bits.
+const FARTHEST_NS: HouseNs = 1 << 62;
+/// Subjects that one event looks at; what is left is still due.
+const MOST_AT_ONCE: usize = 64;
 
 /// The whole state: save it, restore it, and it continues identically.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Engine {
-    epoch: u64,
-    now_ns: HouseNs,
-    clocks: Clocks,
+    pub(crate) epoch: u64,
+    pub(crate) now_ns: HouseNs,
+    /// Highest setting number of all crossings that were ever deleted: a crossing that is
+    /// declared later goes on from there, so that no number of its name is used twice.
+    pub(crate) numbers_gone: u64,
+    pub(crate) clocks: Clocks,
+    pub(crate) crossings: BTreeMap<Id, CrossingRecord>,
+    pub(crate) groups: BTreeMap<Id, BTreeSet<Id>>,
+    pub(crate) schedule: Schedule,
 }
 
 impl Engine {
@@ -21,52 +34,104 @@ impl Engine {
     pub fn new(epoch: u64) -> Self {
         Engine {
             epoch,
-            now_ns: HouseNs::MIN,
+            now_ns: -FARTHEST_NS,
+            numbers_gone: 0,
             clocks: Clocks::default(),
+            crossings: BTreeMap::new(),
+            groups: BTreeMap::new(),
+            schedule: Schedule::default(),
         }
     }
 
-    /// Applies an event that happens at house time `now`.
+    /// Applies an event that happens at house time `now`, and does what is due by then.
+    ///
+    /// House time does not go back: an earlier `now` than the latest seen counts as that one.
     ///
     /// # Errors
     /// [`Refusal`] names the field; the engine is then exactly as it was.
     pub fn apply(&mut self, event: &Event, now: HouseNs) -> Result<Effects, Refusal> {
-        let _ = (event, now);
-        Ok(Effects::default())
+        let now = now.clamp(self.now_ns, FARTHEST_NS);
+        let mut effects = Effects::default();
+        match event {
+            Event::DeclareClock(declaration) => {
+                self.declare_clock(declaration, now, &mut effects)?
+            }
+            Event::DeleteClock(id) => self.delete_clock(id)?,
+            Event::DeclareCrossing(declaration) => self.declare_crossing(declaration, now)?,
+            Event::DeleteCrossing(id) => self.delete_crossing(id)?,
+            Event::Reading(reading) => effects.outcome = Some(self.read(reading, now)?),
+            Event::Applied {
+                crossing,
+                epoch,
+                number,
+                house_ns,
+                ..
+            } => {
+                self.applied(crossing, (*epoch, *number), *house_ns, now)?;
+            }
+            Event::Occupancy {
+                crossing,
+                level_samples,
+                deviation_samples,
+                house_ns,
+            } => {
+                let level = (*level_samples, *deviation_samples);
+                self.occupied(crossing, level, *house_ns, now, &mut effects)?;
+            }
+            Event::Tick => {}
+            Event::OpenEpoch { epoch } => self.open_epoch(*epoch)?,
+        }
+        self.now_ns = now;
+        self.do_what_is_due(now, &mut effects);
+        Ok(effects)
     }
 
     /// House time at which [`Event::Tick`] is to be applied next; absent if nothing is due ever.
+    /// It may have passed already: one event does a bounded amount of work.
     pub fn next_due(&self) -> Option<HouseNs> {
-        None
+        self.schedule.next()
     }
 
-    /// All clocks, by name.
-    pub fn clocks(&self) -> impl Iterator<Item = &ClockDeclaration> {
-        self.clocks.iter().map(|record| &record.declaration)
+    fn do_what_is_due(&mut self, now: HouseNs, effects: &mut Effects) {
+        for _ in 0..MOST_AT_ONCE {
+            match self.schedule.take_due(now) {
+                Some(Subject::Clock(id)) => self.look_at_clock(&id, now, effects),
+                Some(Subject::Crossing(id)) => self.decide_alone(&id, now, effects),
+                Some(Subject::Group(id)) => self.decide_group(&id, now, effects),
+                None => break,
+            }
+        }
     }
 
-    /// A clock's declaration.
-    pub fn clock(&self, id: &Id) -> Option<&ClockDeclaration> {
-        self.clocks.get(id).map(|record| &record.declaration)
+    fn read(&mut self, reading: &Reading, now: HouseNs) -> Result<Outcome, Refusal> {
+        let (outcome, is_first) = self.clocks.observe(reading, now)?;
+        if is_first || matches!(outcome, Outcome::Event(_)) {
+            self.schedule
+                .set(Subject::Clock(reading.clock.clone()), now);
+            self.hurry_users(&reading.clock, now);
+        }
+        Ok(outcome)
     }
 
-    /// All crossings, by name.
-    pub fn crossings(&self) -> impl Iterator<Item = &CrossingDeclaration> {
-        std::iter::empty()
+    /// The crossings of a clock are due at once.
+    pub(crate) fn hurry_users(&mut self, clock: &Id, now: HouseNs) {
+        for crossing in self
+            .clocks
+            .get(clock)
+            .map_or(&BTreeSet::new(), |record| &record.crossings)
+        {
+            if let Some(record) = self.crossings.get(crossing) {
+                self.schedule.set(record.subject(), now);
+            }
+        }
     }
 
-    /// A crossing's declaration.
-    pub fn crossing(&self, _id: &Id) -> Option<&CrossingDeclaration> {
-        None
-    }
-
-    /// A clock's estimate against house time at `now`.
-    pub fn estimate(&self, id: &Id, now: HouseNs) -> Option<ClockEstimate> {
-        self.clocks.described(id, now)
-    }
-
-    /// How a crossing stands at `now`.
-    pub fn status(&self, _id: &Id, _now: HouseNs) -> Option<CrossingStatus> {
-        None
+    fn open_epoch(&mut self, epoch: u64) -> Result<(), Refusal> {
+        if epoch <= self.epoch {
+            let accepted = format!("above {}, the present one", self.epoch);
+            return Err(Refusal::precondition("epoch", epoch, accepted));
+        }
+        self.epoch = epoch;
+        Ok(())
     }
 }

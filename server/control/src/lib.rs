@@ -12,21 +12,35 @@
 //! **Signs** are derived in [`signs`] and used from there everywhere.
 
 mod clocks;
+mod decide;
 mod declaration;
+mod declare;
 mod effects;
 mod engine;
 mod event;
+mod explain;
 mod id;
+mod issue;
+mod ledger;
 mod link;
+mod passage;
+mod policy;
+mod query;
+mod record;
 mod refusal;
+mod report;
+mod schedule;
 mod setting;
 pub mod signs;
 mod status;
+mod target;
+mod timeline;
 
 pub use declaration::{ClockDeclaration, CrossingDeclaration, Realisation};
 pub use effects::{Effects, Transition};
 pub use engine::Engine;
 pub use event::{Event, Reading, Reference};
+pub use explain::explain;
 pub use id::{Id, IdError};
 pub use refusal::{Refusal, RefusalKind};
 pub use setting::{Evidence, Realised, Reason, Setting};

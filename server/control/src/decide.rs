@@ -1,0 +1,194 @@
+//! Decisions: what is done when a clock, a crossing or a group is due.
+
+use crate::engine::Engine;
+use crate::issue::Stamp;
+use crate::record::{Ends, Judgement};
+use crate::schedule::Subject;
+use crate::{CrossingState, Effects, HouseNs, Id, Reason, Transition};
+use ratewright_timing::State;
+
+/// A clock is looked at so often until it is locked, and afterwards, ns.
+const CLOCK_STEPS_NS: (i64, i64) = (1_000_000_000, 10_000_000_000);
+
+/// A member of what is decided together.
+#[derive(Debug)]
+struct Member {
+    id: Id,
+    ends: Ends,
+    judgement: Judgement,
+}
+
+impl Engine {
+    /// Tells a change of a clock's state, and chooses among its links.
+    pub(crate) fn look_at_clock(&mut self, id: &Id, now: HouseNs, effects: &mut Effects) {
+        self.clocks.choose_link(id, now);
+        let Some(traced) = self.clocks.estimate(id, now) else {
+            return;
+        };
+        let Some(record) = self.clocks.get_mut(id) else {
+            return;
+        };
+        let to = traced.estimate.state;
+        let from = std::mem::replace(&mut record.state, to);
+        if from != to {
+            let reason = traced.estimate.reason;
+            effects.transitions.push(Transition::Clock {
+                clock: id.clone(),
+                from,
+                to,
+                reason,
+            });
+        }
+        if record.links.is_empty() {
+            return;
+        }
+        let step_ns = match to {
+            State::Locked | State::Holdover => CLOCK_STEPS_NS.1,
+            State::FreeRunning | State::Acquiring => CLOCK_STEPS_NS.0,
+        };
+        self.schedule
+            .set(Subject::Clock(id.clone()), now.saturating_add(step_ns));
+    }
+
+    /// Decides a crossing that belongs to no group.
+    pub(crate) fn decide_alone(&mut self, id: &Id, now: HouseNs, effects: &mut Effects) {
+        let Some(record) = self.crossings.get(id) else {
+            return;
+        };
+        let lead_ns = record.declaration.lead_ns;
+        let Some(member) = self.look_at(id, now, lead_ns, effects) else {
+            return;
+        };
+        let step_ns = self.step_ns(&member);
+        self.settle(member, now, lead_ns, effects);
+        self.schedule
+            .set(Subject::Crossing(id.clone()), now.saturating_add(step_ns));
+    }
+
+    /// Decides the crossings of a group: if one changes, all get a setting with the same effect.
+    pub(crate) fn decide_group(&mut self, id: &Id, now: HouseNs, effects: &mut Effects) {
+        let Some(ids) = self.groups.get(id).cloned() else {
+            return;
+        };
+        let leads = ids
+            .iter()
+            .filter_map(|id| Some(self.crossings.get(id)?.declaration.lead_ns));
+        let lead_ns = leads.max().unwrap_or(0);
+        let looked = ids
+            .iter()
+            .filter_map(|id| self.look_at(id, now, lead_ns, effects));
+        let mut members: Vec<Member> = looked.collect();
+        let changes = |member: &Member| match member.judgement {
+            // A newcomer begins by itself.
+            Judgement::Change { reason, .. } => reason != Reason::First,
+            Judgement::Pending | Judgement::Stay { .. } => false,
+        };
+        if members.iter().any(changes) {
+            for member in &mut members {
+                self.change_along(member, now, lead_ns);
+            }
+        }
+        let step_ns = members.iter().map(|member| self.step_ns(member)).min();
+        for member in members {
+            self.settle(member, now, lead_ns, effects);
+        }
+        if let Some(step_ns) = step_ns {
+            self.schedule
+                .set(Subject::Group(id.clone()), now.saturating_add(step_ns));
+        }
+    }
+
+    /// A member that could have stayed changes with the others.
+    fn change_along(&self, member: &mut Member, now: HouseNs, lead_ns: i64) {
+        if matches!(member.judgement, Judgement::Change { .. }) {
+            return;
+        }
+        if let Some(record) = self.crossings.get(&member.id) {
+            let choice = record.choose_anew(now, &member.ends, seconds(lead_ns));
+            member.judgement = Judgement::Change {
+                choice: Box::new(choice),
+                reason: Reason::Group,
+            };
+        }
+    }
+
+    /// Brings a crossing's account up to now and judges it.
+    fn look_at(
+        &mut self,
+        id: &Id,
+        now: HouseNs,
+        lead_ns: i64,
+        effects: &mut Effects,
+    ) -> Option<Member> {
+        let ends = self.ends(id, now)?;
+        let record = self.crossings.get_mut(id)?;
+        effects.transitions.extend(record.advance(now, &ends));
+        let judgement = record.judge(now, &ends, seconds(lead_ns));
+        Some(Member {
+            id: id.clone(),
+            ends,
+            judgement,
+        })
+    }
+
+    fn step_ns(&self, member: &Member) -> i64 {
+        let record = self.crossings.get(&member.id);
+        record.map_or(i64::MAX, |record| {
+            (record.step_s(&member.ends) * 1e9) as i64
+        })
+    }
+
+    /// Does what was judged.
+    fn settle(&mut self, member: Member, now: HouseNs, lead_ns: i64, effects: &mut Effects) {
+        let stamp = Stamp {
+            epoch: self.epoch,
+            decided_ns: now,
+            effect_ns: now.saturating_add(lead_ns),
+        };
+        let Some(record) = self.crossings.get_mut(&member.id) else {
+            return;
+        };
+        let (state, reason) = match member.judgement {
+            Judgement::Pending => return,
+            Judgement::Stay { state, reason } => {
+                if let Some(due) = record
+                    .newest
+                    .clone()
+                    .filter(|newest| newest.review_ns <= now)
+                {
+                    effects
+                        .settings
+                        .push(record.renew(&due, stamp, &member.ends));
+                }
+                (state, reason)
+            }
+            Judgement::Change { choice, reason } => {
+                let standing = (choice.state, choice.reason.clone());
+                effects
+                    .settings
+                    .push(record.issue(*choice, reason, stamp, &member.ends));
+                standing
+            }
+        };
+        effects.transitions.extend(record.stand(state, reason));
+    }
+}
+
+impl crate::record::CrossingRecord {
+    /// Takes a state with its reason; tells if it is another one.
+    fn stand(&mut self, to: CrossingState, reason: String) -> Option<Transition> {
+        let from = std::mem::replace(&mut self.state, to);
+        self.reason.clone_from(&reason);
+        let crossing = self.id().clone();
+        (from != to).then_some(Transition::Crossing {
+            crossing,
+            from,
+            to,
+            reason,
+        })
+    }
+}
+
+fn seconds(ns: i64) -> f64 {
+    ns as f64 * 1e-9
+}

@@ -1,0 +1,121 @@
+//! Issuing settings: a choice becomes a numbered decision with its evidence.
+
+use ratewright_ratio::residual;
+
+use crate::policy::choose::Choice;
+use crate::policy::realise::{Way, error_of};
+use crate::policy::slip::seconds_to_slip;
+use crate::record::{CrossingRecord, Ends};
+use crate::timeline::{self, as_double};
+use crate::{Evidence, HouseNs, Reason, Setting};
+
+/// When a setting is decided and takes effect, and under which epoch it is numbered.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub(crate) struct Stamp {
+    pub(crate) epoch: u64,
+    pub(crate) decided_ns: HouseNs,
+    pub(crate) effect_ns: HouseNs,
+}
+
+impl CrossingRecord {
+    /// Makes a setting of a choice; its effect is not before that of the setting before it.
+    pub(crate) fn issue(
+        &mut self,
+        choice: Choice,
+        reason: Reason,
+        stamp: Stamp,
+        ends: &Ends,
+    ) -> Setting {
+        let earliest_ns = self
+            .ledger
+            .timeline
+            .last_effect_ns()
+            .unwrap_or(HouseNs::MIN);
+        let effect_ns = stamp.effect_ns.max(earliest_ns);
+        let review_ns = effect_ns.saturating_add(self.declaration.review_horizon_ns);
+        let mut setting = Setting {
+            crossing: self.id().clone(),
+            epoch: stamp.epoch,
+            number: self.last_number + 1,
+            wanted: choice.way.wanted,
+            realised: choice.way.realised,
+            residual: 0.0,
+            certificate: choice.way.certificate,
+            decided_ns: stamp.decided_ns,
+            effect_ns,
+            review_ns,
+            expiry_ns: review_ns.saturating_add(self.declaration.review_horizon_ns),
+            seconds_to_slip: None,
+            reason,
+            evidence: self.evidence(&choice, ends),
+        };
+        setting.residual = residual(&setting.average(), &ends.target.exact);
+        setting.seconds_to_slip = self.slip_under(&setting, stamp.decided_ns, ends);
+        self.take(setting.clone());
+        setting
+    }
+
+    /// Confirms the newest setting under a new number.
+    pub(crate) fn renew(&mut self, newest: &Setting, stamp: Stamp, ends: &Ends) -> Setting {
+        let confirmed = Choice {
+            way: Way {
+                wanted: newest.wanted,
+                realised: newest.realised,
+                certificate: newest.certificate,
+            },
+            allowed: (newest.evidence.allowed_low, newest.evidence.allowed_high),
+            hold_s: newest.evidence.expected_hold_s,
+            state: self.state,
+            reason: self.reason.clone(),
+            recovers: false,
+        };
+        self.issue(confirmed, Reason::Renewal, stamp, ends)
+    }
+
+    fn take(&mut self, setting: Setting) {
+        let before = self.newest.as_ref().map(Setting::average);
+        self.changes_made += u64::from(before.is_some_and(|before| before != setting.average()));
+        self.settings_made += 1;
+        self.last_number = setting.number;
+        self.forced = None;
+        self.ledger.set(timeline::Entry {
+            epoch: setting.epoch,
+            number: setting.number,
+            ratio: setting.average(),
+            decided_ns: setting.decided_ns,
+            effect_ns: setting.effect_ns,
+        });
+        self.newest = Some(setting);
+    }
+
+    fn evidence(&self, choice: &Choice, ends: &Ends) -> Evidence {
+        let outlook = self.outlook(ends);
+        let (source, sink) = (&ends.source.estimate, &ends.sink.estimate);
+        Evidence {
+            target: ends.target.value,
+            target_low: ends.target.low,
+            target_high: ends.target.high,
+            source_drift: source.drift,
+            source_deviation: source.deviation,
+            sink_drift: sink.drift,
+            sink_deviation: sink.deviation,
+            phase_error_samples: outlook.phase,
+            phase_deviation_samples: outlook.deviation(0.0),
+            allowed_low: choice.allowed.0,
+            allowed_high: choice.allowed.1,
+            expected_hold_s: choice.hold_s,
+        }
+    }
+
+    /// Seconds from a setting's effect (or from `now`, if that is later) to the slip it leads to.
+    pub(crate) fn slip_under(&self, setting: &Setting, now: HouseNs, ends: &Ends) -> Option<f64> {
+        let outlook = self.outlook(ends);
+        let delay_s = setting.effect_ns.saturating_sub(now).max(0) as f64 * 1e-9;
+        let until_then = self.ledger.timeline.ratio_at(now);
+        let velocity = until_then.map_or(0.0, |ratio| outlook.velocity(ratio));
+        let phase = outlook.extrapolate(outlook.phase, velocity, delay_s);
+        let room = self.declaration.headroom_samples - error_of(&setting.realised);
+        let velocity = outlook.velocity(as_double(&setting.average()));
+        seconds_to_slip(&outlook, room, (phase, velocity), delay_s)
+    }
+}

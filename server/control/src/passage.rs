@@ -1,0 +1,115 @@
+//! How much clock time a clock has gained on house time since a crossing was centred.
+//!
+//! Two accounts are at hand. The estimator's **phase** is measured: its increments are as good as
+//! the readings, however the drift wandered between them, but the first one hangs on how well the
+//! phase was known at the beginning. The present **drift run backwards**, ŷ·t − ḋ·t²/2, knows
+//! nothing of wander, but early on it is far better than what was known at the beginning. The
+//! account with the smaller variance is kept; changing from increments to the backward run
+//! revises the past.
+//!
+//! When the phase begins anew (another link, a restart), a leg is closed with its variance and
+//! another one opened.
+
+use ratewright_timing::Estimate;
+use serde::{Deserialize, Serialize};
+
+use crate::HouseNs;
+use crate::clocks::Traced;
+use crate::link::Lineage;
+
+/// The past is revised only for a real gain in certainty: each revision is a jump.
+const WORTH_REVISING: f64 = 0.9;
+/// Seconds in a nanosecond.
+const SECONDS: f64 = 1e-9;
+
+/// Time gained by one clock, in legs.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub(crate) struct Passage {
+    /// Variance of the legs that are closed, ns².
+    closed_variance_ns2: f64,
+    /// Beginning of the open leg.
+    from_ns: HouseNs,
+    /// Time gained in the open leg, ns.
+    gained_ns: f64,
+    /// Variance of the phase at the beginning of the open leg, ns².
+    entry_variance_ns2: f64,
+    /// Variance of the phase now, ns².
+    phase_variance_ns2: f64,
+    /// Phase at the last advance, and the links it came by; none while nothing is measured.
+    last: Option<(Lineage, f64)>,
+}
+
+impl Passage {
+    /// Nothing gained yet.
+    pub(crate) fn begin(from_ns: HouseNs) -> Self {
+        Passage {
+            closed_variance_ns2: 0.0,
+            from_ns,
+            gained_ns: 0.0,
+            entry_variance_ns2: 0.0,
+            phase_variance_ns2: 0.0,
+            last: None,
+        }
+    }
+
+    /// Goes on from `at_ns`, the last advance, to `now`, at which `clock` is the estimate.
+    /// Gives what the account gains, ns: the time gained since then, and revisions of the past.
+    pub(crate) fn advance(&mut self, at_ns: HouseNs, now: HouseNs, clock: &Traced) -> f64 {
+        if self
+            .last
+            .is_some_and(|(lineage, _)| !clock.measured || lineage != clock.lineage)
+        {
+            self.close_leg(at_ns);
+        }
+        let before_ns = self.gained_ns;
+        let estimate = &clock.estimate;
+        let span_s = (now - self.from_ns) as f64 * SECONDS;
+        let deviation_ns = if clock.measured {
+            estimate.phase_deviation_ns
+        } else {
+            0.0
+        };
+        self.phase_variance_ns2 = deviation_ns * deviation_ns;
+        let backward_variance = self.phase_variance_ns2 + drift_variance_ns2(estimate, span_s);
+        match self.last {
+            Some((_, phase_ns)) if backward_variance > WORTH_REVISING * self.entry_variance_ns2 => {
+                self.gained_ns += estimate.phase_ns - phase_ns;
+            }
+            _ => {
+                let mean_drift = estimate.drift - estimate.drift_rate_per_s * span_s / 2.0;
+                self.gained_ns = mean_drift * span_s / SECONDS;
+                self.entry_variance_ns2 = backward_variance;
+            }
+        }
+        self.last = clock.measured.then_some((clock.lineage, estimate.phase_ns));
+        self.gained_ns - before_ns
+    }
+
+    fn close_leg(&mut self, at_ns: HouseNs) {
+        *self = Passage {
+            closed_variance_ns2: self.variance_ns2(),
+            ..Passage::begin(at_ns)
+        };
+    }
+
+    /// Variance of the time gained since the beginning, ns².
+    pub(crate) fn variance_ns2(&self) -> f64 {
+        self.lasting_variance_ns2() + self.phase_variance_ns2
+    }
+
+    /// The part of the variance that later readings do not take away, ns².
+    pub(crate) fn lasting_variance_ns2(&self) -> f64 {
+        self.closed_variance_ns2 + self.entry_variance_ns2
+    }
+
+    /// Something else has made the account more certain: its lasting variance falls by a factor.
+    pub(crate) fn sharpen(&mut self, factor: f64) {
+        self.closed_variance_ns2 *= factor;
+        self.entry_variance_ns2 *= factor;
+    }
+}
+
+/// Variance of the clock time gained over a span, forwards or backwards, ns².
+fn drift_variance_ns2(estimate: &Estimate, span_s: f64) -> f64 {
+    estimate.predict_variance(span_s) / (SECONDS * SECONDS)
+}

@@ -1,0 +1,56 @@
+//! The policy: hold as long as the evidence allows, then the simplest ratio that holds longest.
+//!
+//! Two layers. The first picks a *virtual* rate, a fraction with a denominator up to 2³¹, from the
+//! interval of rates that keep the phase error's band in the tube longest ([`funnel`]); the second
+//! realises it within the crossing's bounds ([`realise`]).
+
+pub(crate) mod choose;
+pub(crate) mod funnel;
+pub(crate) mod keep;
+pub(crate) mod outlook;
+pub(crate) mod realise;
+pub(crate) mod slip;
+
+/// Standard deviations that planning and keeping leave room for. The two must be about equal:
+/// keeping by a smaller margin than planning chatters.
+pub(crate) const MARGIN_DEVIATIONS: f64 = 2.5;
+/// Standard deviations that keeping an inward-moving phase leaves room for.
+pub(crate) const INWARD_DEVIATIONS: f64 = 3.0;
+/// The tube: the share of the headroom that planning may use.
+pub(crate) const TUBE: f64 = 0.8;
+/// The share of the headroom within which a phase that moves inward is let be.
+pub(crate) const INWARD_TUBE: f64 = 0.9;
+/// Pitch change that recovery may cause: 20 ppm, far below what is heard.
+pub(crate) const PITCH_LIMIT: f64 = 20e-6;
+/// Recovery may take at least so long, seconds.
+pub(crate) const RECOVERY_S: f64 = 120.0;
+/// How far ahead a hold is planned, seconds.
+pub(crate) const PLAN_HORIZON_S: f64 = 40_000.0;
+/// Of the longest possible hold, the share that is planned for, to the gain of simplicity.
+pub(crate) const HOLD_SHARE: f64 = 0.95;
+/// Largest denominator of a virtual rate.
+pub(crate) const MAX_VIRTUAL: u64 = 1 << 31;
+/// Error in output samples that a change from one pair of ratios to another carries over.
+pub(crate) const CARRIED_SAMPLES: f64 = 0.0013;
+
+/// The limits of the phase error that planning and keeping go by, sink samples and samples/s.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub(crate) struct Limits {
+    /// The tube, less a cadence's own error.
+    pub(crate) tube: f64,
+    /// The wider tube for a phase that moves inward, less the same.
+    pub(crate) inward: f64,
+    /// Velocity that recovery may have.
+    pub(crate) pitch: f64,
+}
+
+impl Limits {
+    /// The limits under a headroom, with a cadence that errs by up to `cadence_error` samples.
+    pub(crate) fn new(headroom: f64, cadence_error: f64, sink_hz: f64) -> Self {
+        Limits {
+            tube: TUBE * headroom - cadence_error,
+            inward: INWARD_TUBE * headroom - cadence_error,
+            pitch: PITCH_LIMIT * sink_hz,
+        }
+    }
+}

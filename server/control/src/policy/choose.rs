@@ -1,0 +1,258 @@
+//! Choosing anew: the longest hold, then the simplest ratio, realised within the bounds.
+
+use ratewright_ratio::Fraction;
+
+use crate::policy::funnel::{Entry, Span, funnel};
+use crate::policy::outlook::Outlook;
+use crate::policy::realise::{Allowed, Way, allowed, cadence_error, nearest_virtual, realise};
+use crate::policy::{HOLD_SHARE, Limits, MARGIN_DEVIATIONS};
+use crate::{CrossingDeclaration, CrossingState, Realisation};
+
+/// What the policy looks at.
+#[derive(Clone, Copy, Debug)]
+pub(crate) struct View<'a> {
+    pub(crate) outlook: &'a Outlook<'a>,
+    pub(crate) declaration: &'a CrossingDeclaration,
+    /// Velocity of the phase error under the ratio in force, samples/s.
+    pub(crate) velocity: f64,
+    /// Seconds from a decision to its effect.
+    pub(crate) lead_s: f64,
+    /// Seconds to the next decision.
+    pub(crate) step_s: f64,
+}
+
+/// What was chosen, and how well it does.
+#[derive(Clone, Debug, PartialEq)]
+pub(crate) struct Choice {
+    pub(crate) way: Way,
+    /// The interval it was chosen from; twice the wanted ratio where there was none.
+    pub(crate) allowed: (Fraction, Fraction),
+    pub(crate) hold_s: f64,
+    pub(crate) state: CrossingState,
+    pub(crate) reason: String,
+    /// True if the phase error has to be brought back first.
+    pub(crate) recovers: bool,
+}
+
+/// The setting to have from the lead on.
+pub(crate) fn choose(view: &View<'_>) -> Choice {
+    if view.outlook.target.certain {
+        return choose_nominal(
+            view,
+            CrossingState::Holding,
+            "both clocks are exact".to_owned(),
+        );
+    }
+    let limits = view.limits(0.0);
+    let entry = Entry::new(view.outlook, &limits, view.lead_s, view.velocity);
+    let spans = funnel(view.outlook, &limits, entry, view.step_s);
+    if let Some((span, allowed)) = view.longest(&spans)
+        && let Some(way) = allowed.single(&view.declaration.bounds)
+    {
+        return view.held(way, &allowed, span, entry);
+    }
+    match view.declaration.realisation {
+        Realisation::Single => view.single(&spans, entry),
+        Realisation::Cadence => view.cadence(),
+    }
+}
+
+/// The ratio of the nominal rates, held until something is measured.
+pub(crate) fn choose_nominal(view: &View<'_>, state: CrossingState, reason: String) -> Choice {
+    let nominal = view.outlook.target.nominal;
+    let parts = (
+        u64::try_from(*nominal.numer()),
+        u64::try_from(*nominal.denom()),
+    );
+    let wanted = match parts {
+        (Ok(numer), Ok(denom)) => Fraction::new(numer, denom),
+        _ => nearest_virtual(view.outlook.target.value),
+    };
+    let way = realise(
+        wanted,
+        &view.declaration.bounds,
+        view.declaration.realisation,
+    );
+    Choice {
+        way,
+        allowed: (wanted, wanted),
+        hold_s: 0.0,
+        state,
+        reason,
+        recovers: false,
+    }
+}
+
+impl View<'_> {
+    fn limits(&self, cadence_error: f64) -> Limits {
+        Limits::new(
+            self.declaration.headroom_samples,
+            cadence_error,
+            self.outlook.sink_hz,
+        )
+    }
+
+    fn allowed(&self, span: &Span) -> Option<Allowed> {
+        allowed(self.outlook.ratio(span.low), self.outlook.ratio(span.high))
+    }
+
+    /// The first span that holds nearly as long as the longest, with its ratios.
+    fn longest(&self, spans: &[Span]) -> Option<(Span, Allowed)> {
+        let enough = HOLD_SHARE * spans.last()?.hold_s;
+        let span = *spans.iter().find(|span| span.hold_s >= enough)?;
+        Some((span, self.allowed(&span)?))
+    }
+
+    /// A choice out of a span of the funnel.
+    fn held(&self, way: Way, allowed: &Allowed, span: Span, entry: Entry) -> Choice {
+        let (state, reason) = self.standing(span.hold_s);
+        Choice {
+            way,
+            allowed: (allowed.low, allowed.high),
+            hold_s: span.hold_s,
+            state,
+            reason,
+            recovers: entry.excess > 0.0,
+        }
+    }
+
+    /// Holding, unless the phase error is out of the headroom by now.
+    pub(crate) fn standing(&self, hold_s: f64) -> (CrossingState, String) {
+        let (phase, headroom) = (self.outlook.phase, self.declaration.headroom_samples);
+        if phase.abs() <= headroom {
+            return (
+                CrossingState::Holding,
+                format!("should hold for {hold_s:.0} s"),
+            );
+        }
+        let reason = format!(
+            "the phase error of {phase:.3} samples is outside the headroom of {headroom} and on its way back"
+        );
+        (CrossingState::Degraded, reason)
+    }
+
+    /// One ratio at a time: the longest hold for which the bounds have a ratio.
+    fn single(&self, spans: &[Span], entry: Entry) -> Choice {
+        let bounds = &self.declaration.bounds;
+        let way_of = |span: &Span| {
+            let allowed = self.allowed(span)?;
+            Some((allowed.any_single(bounds)?, allowed))
+        };
+        // The spans are nested, so those with a ratio come first.
+        let with_ratio = spans.partition_point(|span| way_of(span).is_some());
+        let last = with_ratio.checked_sub(1).map(|i| spans[i]);
+        if let Some((span, (way, allowed))) = last.and_then(|span| Some((span, way_of(&span)?))) {
+            return self.held(way, &allowed, span, entry);
+        }
+        if spans.is_empty() {
+            return self.least_bad(self.limits(0.0));
+        }
+        let wanted = nearest_virtual(self.outlook.target.value);
+        let way = realise(wanted, bounds, Realisation::Single);
+        let (l, m) = (bounds.max_l(), bounds.max_m());
+        let reason = format!(
+            "no ratio with L up to {l} and M up to {m} comes near enough to the target {:.9}",
+            self.outlook.target.value
+        );
+        let state = CrossingState::OutOfBounds;
+        Choice {
+            way,
+            allowed: (wanted, wanted),
+            hold_s: 0.0,
+            state,
+            reason,
+            recovers: false,
+        }
+    }
+
+    /// A cadence around the wanted ratio, whose own error narrows the tube.
+    fn cadence(&self) -> Choice {
+        let bounds = &self.declaration.bounds;
+        let Some(error) = cadence_error(self.outlook.exact_target(), bounds) else {
+            return self.out_of_reach();
+        };
+        let limits = self.limits(error);
+        let entry = Entry::new(self.outlook, &limits, self.lead_s, self.velocity);
+        let spans = funnel(self.outlook, &limits, entry, self.step_s);
+        match self.longest(&spans) {
+            Some((span, allowed)) => {
+                let way = allowed.single(bounds);
+                let way =
+                    way.unwrap_or_else(|| realise(allowed.simplest, bounds, Realisation::Cadence));
+                self.held(way, &allowed, span, entry)
+            }
+            None => self.least_bad(limits),
+        }
+    }
+
+    /// The target lies beyond every ratio of the bounds.
+    fn out_of_reach(&self) -> Choice {
+        let wanted = nearest_virtual(self.outlook.target.value);
+        let way = realise(wanted, &self.declaration.bounds, Realisation::Single);
+        let state = CrossingState::OutOfBounds;
+        let reason = "the target is beyond every ratio within the bounds".to_owned();
+        Choice {
+            way,
+            allowed: (wanted, wanted),
+            hold_s: 0.0,
+            state,
+            reason,
+            recovers: false,
+        }
+    }
+
+    /// No ratio can be vouched for: the nearest to the target that also moves the phase back.
+    fn least_bad(&self, limits: Limits) -> Choice {
+        let entry = Entry::new(self.outlook, &limits, self.lead_s, self.velocity);
+        let velocity = self.velocity_back(&limits, entry.phase);
+        let wanted = nearest_virtual(self.outlook.ratio(velocity));
+        let way = realise(
+            wanted,
+            &self.declaration.bounds,
+            self.declaration.realisation,
+        );
+        let reason = self.why_not(&limits);
+        let state = CrossingState::Degraded;
+        Choice {
+            way,
+            allowed: (wanted, wanted),
+            hold_s: 0.0,
+            state,
+            reason,
+            recovers: true,
+        }
+    }
+
+    /// Velocity that brings a phase back in half a minute, as far as the pitch limit allows.
+    fn velocity_back(&self, limits: &Limits, phase: f64) -> f64 {
+        let back_s = (2.0 * self.step_s).max(30.0);
+        (-phase / back_s).clamp(-limits.pitch, limits.pitch)
+    }
+
+    /// True if the ratio in force is as good as a new one would be when nothing can be vouched
+    /// for: their velocities differ by less than half of what is uncertain about either.
+    pub(crate) fn is_as_good(&self, cadence_error: f64) -> bool {
+        let limits = self.limits(cadence_error);
+        let entry = Entry::new(self.outlook, &limits, self.lead_s, self.velocity);
+        let wanted = self.velocity_back(&limits, entry.phase);
+        (self.velocity - wanted).abs() < self.outlook.velocity_deviation() / 2.0
+    }
+
+    fn why_not(&self, limits: &Limits) -> String {
+        let headroom = self.declaration.headroom_samples;
+        let tube = self.limits(0.0).tube;
+        if limits.tube <= 0.0 {
+            let error = tube - limits.tube;
+            return format!(
+                "a cadence within the bounds errs by up to {error:.3} samples, \
+                 more than the {tube:.3} that the headroom of {headroom} leaves"
+            );
+        }
+        let margin = MARGIN_DEVIATIONS * self.outlook.deviation(self.lead_s);
+        format!(
+            "the phase error is uncertain by {margin:.3} samples ({MARGIN_DEVIATIONS} deviations) \
+             when a setting could take effect, and the tube is {:.3}",
+            limits.tube
+        )
+    }
+}

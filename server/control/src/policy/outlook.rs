@@ -1,0 +1,97 @@
+//! What is known of a crossing at an instant, and how it goes on from there.
+
+use ratewright_ratio::Exact;
+use ratewright_timing::Estimate;
+
+use crate::clocks::Traced;
+use crate::ledger::Ledger;
+use crate::signs;
+use crate::target::Target;
+
+/// Correlation of phase and drift in an estimate that white timestamp noise and a random walk of
+/// the drift have made: 1/√2 in the steady state of that Kalman filter. Estimates don't carry it.
+const PHASE_DRIFT_CORRELATION: f64 = core::f64::consts::FRAC_1_SQRT_2;
+
+/// Phase error, target and their uncertainty, from now on. Sink samples and seconds.
+#[derive(Clone, Debug)]
+pub(crate) struct Outlook<'a> {
+    pub(crate) target: Target,
+    /// True sink rate as estimated, Hz.
+    pub(crate) sink_hz: f64,
+    /// Phase error now.
+    pub(crate) phase: f64,
+    /// Its variance now.
+    pub(crate) phase_variance: f64,
+    /// Growth of the velocity, samples/s²: the target moves away under a held ratio.
+    pub(crate) acceleration: f64,
+    clocks: [&'a Estimate; 2],
+    /// Covariance of phase and velocity, samples²/s.
+    covariance: f64,
+}
+
+impl<'a> Outlook<'a> {
+    /// From an account that is advanced to now, and the estimates of now.
+    pub(crate) fn new(
+        ledger: &Ledger,
+        target: Target,
+        source: &'a Traced,
+        sink: &'a Traced,
+    ) -> Self {
+        let clocks = [&source.estimate, &sink.estimate];
+        let sink_hz = signs::true_rate(target.nominal_sink_hz, sink.estimate.drift);
+        let covariance = [source, sink]
+            .into_iter()
+            .filter(|clock| clock.measured)
+            .map(|Traced { estimate: e, .. }| {
+                PHASE_DRIFT_CORRELATION * e.deviation * e.phase_deviation_ns * 1e-9
+            })
+            .sum::<f64>();
+        Outlook {
+            sink_hz,
+            phase: ledger.phase_samples(),
+            phase_variance: ledger.variance(),
+            acceleration: -sink_hz * (clocks[1].drift_rate_per_s - clocks[0].drift_rate_per_s),
+            clocks,
+            covariance: covariance * sink_hz * sink_hz,
+            target,
+        }
+    }
+
+    /// Velocity of the phase error under a ratio, samples/s.
+    pub(crate) fn velocity(&self, ratio: f64) -> f64 {
+        self.sink_hz * signs::residual(ratio, self.target.value)
+    }
+
+    /// The ratio that gives the phase error a velocity, samples/s.
+    pub(crate) fn ratio(&self, velocity: f64) -> f64 {
+        self.target.value * (1.0 + velocity / self.sink_hz)
+    }
+
+    /// Phase error in `tau_s` seconds, if it has `phase` at first and the velocity `velocity`.
+    pub(crate) fn extrapolate(&self, phase: f64, velocity: f64, tau_s: f64) -> f64 {
+        phase + velocity * tau_s + self.acceleration * tau_s * tau_s / 2.0
+    }
+
+    /// Standard deviation of the phase error `tau_s` seconds from now, under any ratio that is
+    /// known by then.
+    pub(crate) fn deviation(&self, tau_s: f64) -> f64 {
+        let growth: f64 = self
+            .clocks
+            .iter()
+            .map(|clock| clock.predict_variance(tau_s))
+            .sum();
+        let of_drifts = self.sink_hz * self.sink_hz * growth;
+        (self.phase_variance + 2.0 * self.covariance * tau_s + of_drifts).sqrt()
+    }
+
+    /// Standard deviation of the velocity now, samples/s.
+    pub(crate) fn velocity_deviation(&self) -> f64 {
+        let variance: f64 = self.clocks.iter().map(|c| c.deviation * c.deviation).sum();
+        self.sink_hz * variance.sqrt()
+    }
+
+    /// The target, exactly.
+    pub(crate) fn exact_target(&self) -> &Exact {
+        &self.target.exact
+    }
+}

@@ -1,0 +1,268 @@
+//! A crossing as the engine keeps it.
+
+use num_rational::Ratio;
+use serde::{Deserialize, Serialize};
+
+use crate::clocks::Traced;
+use crate::ledger::Ledger;
+use crate::policy::choose::{Choice, View, choose, choose_nominal};
+use crate::policy::keep::may_stay;
+use crate::policy::outlook::Outlook;
+use crate::policy::realise::{block_inputs, error_of};
+use crate::policy::{Limits, PITCH_LIMIT};
+use crate::target::Target;
+use crate::{
+    ClockDeclaration, CrossingDeclaration, CrossingState, HouseNs, Id, Reason, Setting, Transition,
+};
+
+/// A phase error that would take longer than this to bring back, seconds, is not brought back:
+/// the buffer has long slipped, and its follower has centred it.
+const LONGEST_RECOVERY_S: f64 = 600.0;
+/// Seconds between decisions until the clocks are locked, and afterwards.
+const STEPS_S: (f64, f64) = (1.0, 10.0);
+/// A setting whose hold is shorter than this, seconds, is looked at as often as before the lock.
+const SHORT_HOLD_S: f64 = 100.0;
+
+/// A crossing with its account and its newest setting.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub(crate) struct CrossingRecord {
+    pub(crate) declaration: CrossingDeclaration,
+    pub(crate) ledger: Ledger,
+    pub(crate) newest: Option<Setting>,
+    pub(crate) last_number: u64,
+    pub(crate) settings_made: u64,
+    pub(crate) changes_made: u64,
+    pub(crate) state: CrossingState,
+    pub(crate) reason: String,
+    /// A reason to decide anew at the next opportunity.
+    pub(crate) forced: Option<Reason>,
+}
+
+/// The two clocks of a crossing at an instant.
+#[derive(Clone, Debug)]
+pub(crate) struct Ends {
+    pub(crate) source: Traced,
+    pub(crate) sink: Traced,
+    pub(crate) target: Target,
+}
+
+impl Ends {
+    /// From the nominal rates, Hz, and the estimates of now.
+    pub(crate) fn new(source: (Ratio<u64>, Traced), sink: (Ratio<u64>, Traced)) -> Self {
+        let target = Target::new((source.0, &source.1), (sink.0, &sink.1));
+        Ends {
+            source: source.1,
+            sink: sink.1,
+            target,
+        }
+    }
+}
+
+/// What a look at a crossing says.
+#[derive(Clone, Debug, PartialEq)]
+pub(crate) enum Judgement {
+    /// A setting is under way; there is nothing to decide.
+    Pending,
+    /// The setting in force stays.
+    Stay {
+        state: CrossingState,
+        reason: String,
+    },
+    /// Another one is due.
+    Change { choice: Box<Choice>, reason: Reason },
+}
+
+impl CrossingRecord {
+    /// A crossing that waits for its first setting; numbers go on from `last_number`.
+    pub(crate) fn new(
+        declaration: CrossingDeclaration,
+        source: &ClockDeclaration,
+        sink: &ClockDeclaration,
+        last_number: u64,
+    ) -> Self {
+        CrossingRecord {
+            declaration,
+            ledger: Ledger::new(source.hz(), sink.hz()),
+            newest: None,
+            last_number,
+            settings_made: 0,
+            changes_made: 0,
+            state: CrossingState::Waiting,
+            reason: "declared".to_owned(),
+            forced: Some(Reason::First),
+        }
+    }
+
+    pub(crate) fn id(&self) -> &Id {
+        &self.declaration.id
+    }
+
+    /// Brings the account up to `now`; tells if it had to be begun anew.
+    pub(crate) fn advance(&mut self, now: HouseNs, ends: &Ends) -> Option<Transition> {
+        self.ledger.advance(now, &ends.source, &ends.sink);
+        let recoverable = PITCH_LIMIT * ends.target.nominal_sink_hz * LONGEST_RECOVERY_S;
+        let limit = self.declaration.headroom_samples + recoverable;
+        let phase = self.ledger.phase_samples();
+        if phase.abs() - 2.0 * self.ledger.variance().sqrt() <= limit {
+            return None;
+        }
+        self.ledger.centre(now, 0.0, 0.0);
+        Some(Transition::Centred {
+            crossing: self.id().clone(),
+            phase_error_samples: 0.0,
+            reason: format!(
+                "the phase error would be {phase:.0} samples: the buffer must have slipped, \
+                 and counts as centred from now on"
+            ),
+        })
+    }
+
+    /// Seconds to the next decision.
+    pub(crate) fn step_s(&self, ends: &Ends) -> f64 {
+        use ratewright_timing::State::{Holdover, Locked};
+        let settled = |clock: &Traced| matches!(clock.estimate.state, Locked | Holdover);
+        let short = self
+            .newest
+            .as_ref()
+            .is_some_and(|s| s.evidence.expected_hold_s < SHORT_HOLD_S);
+        match self.state {
+            CrossingState::Waiting | CrossingState::OutOfBounds => STEPS_S.1,
+            CrossingState::Holding if ends.target.certain => STEPS_S.1,
+            CrossingState::Holding if short => STEPS_S.0,
+            _ if settled(&ends.source) && settled(&ends.sink) => STEPS_S.1,
+            _ => STEPS_S.0,
+        }
+    }
+
+    /// Looks at the crossing at `now`, to which its account is advanced. A setting would take
+    /// effect `lead_s` seconds later.
+    pub(crate) fn judge(&self, now: HouseNs, ends: &Ends, lead_s: f64) -> Judgement {
+        let pending = self
+            .ledger
+            .timeline
+            .last_effect_ns()
+            .is_some_and(|effect| effect > now);
+        if pending && self.forced.is_none() {
+            return Judgement::Pending;
+        }
+        let outlook = self.outlook(ends);
+        let view = self.view(now, &outlook, ends, lead_s);
+        if !(ends.source.measured && ends.sink.measured) {
+            return self.wait(&view, ends);
+        }
+        if self.forced.is_none()
+            && let Some((state, reason)) = self.stays(&view)
+        {
+            return Judgement::Stay { state, reason };
+        }
+        self.change_to(choose(&view))
+    }
+
+    /// Chooses anew whatever the setting in force is worth.
+    pub(crate) fn choose_anew(&self, now: HouseNs, ends: &Ends, lead_s: f64) -> Choice {
+        let outlook = self.outlook(ends);
+        let view = self.view(now, &outlook, ends, lead_s);
+        if ends.source.measured && ends.sink.measured {
+            choose(&view)
+        } else {
+            choose_nominal(
+                &view,
+                CrossingState::Waiting,
+                waiting_for(ends, &self.declaration),
+            )
+        }
+    }
+
+    pub(crate) fn outlook<'a>(&self, ends: &'a Ends) -> Outlook<'a> {
+        Outlook::new(&self.ledger, ends.target.clone(), &ends.source, &ends.sink)
+    }
+
+    fn view<'a>(
+        &'a self,
+        now: HouseNs,
+        outlook: &'a Outlook<'a>,
+        ends: &Ends,
+        lead_s: f64,
+    ) -> View<'a> {
+        let in_force = self.ledger.timeline.ratio_at(now);
+        View {
+            outlook,
+            declaration: &self.declaration,
+            velocity: in_force.map_or(0.0, |ratio| outlook.velocity(ratio)),
+            lead_s,
+            step_s: self.step_s(ends),
+        }
+    }
+
+    /// Until both clocks are measured the nominal ratio runs.
+    fn wait(&self, view: &View<'_>, ends: &Ends) -> Judgement {
+        let reason = waiting_for(ends, &self.declaration);
+        if self.forced.is_none() {
+            return Judgement::Stay {
+                state: CrossingState::Waiting,
+                reason,
+            };
+        }
+        self.change_to(choose_nominal(view, CrossingState::Waiting, reason))
+    }
+
+    /// The state in which the setting in force may stay, if it may.
+    fn stays(&self, view: &View<'_>) -> Option<(CrossingState, String)> {
+        let newest = self.newest.as_ref()?;
+        let error = error_of(&newest.realised);
+        let limits = Limits::new(
+            view.declaration.headroom_samples,
+            error,
+            view.outlook.sink_hz,
+        );
+        let block_s = block_inputs(&newest.realised) as f64 * view.outlook.target.value
+            / view.outlook.sink_hz;
+        if may_stay(
+            view.outlook,
+            &limits,
+            view.velocity,
+            view.step_s + view.lead_s + block_s,
+        ) {
+            return Some(view.standing(newest.evidence.expected_hold_s));
+        }
+        (self.state == CrossingState::Degraded && view.is_as_good(error))
+            .then(|| (self.state, self.reason.clone()))
+    }
+
+    fn change_to(&self, choice: Choice) -> Judgement {
+        if let Some(reason) = self.forced {
+            return Judgement::Change {
+                choice: Box::new(choice),
+                reason,
+            };
+        }
+        if self
+            .newest
+            .as_ref()
+            .is_some_and(|newest| newest.realised == choice.way.realised)
+        {
+            return Judgement::Stay {
+                state: choice.state,
+                reason: choice.reason,
+            };
+        }
+        let reason = if choice.recovers {
+            Reason::Recovery
+        } else {
+            Reason::Evidence
+        };
+        Judgement::Change {
+            choice: Box::new(choice),
+            reason,
+        }
+    }
+}
+
+fn waiting_for(ends: &Ends, declaration: &CrossingDeclaration) -> String {
+    let (id, role) = if ends.source.measured {
+        (&declaration.sink, "sink")
+    } else {
+        (&declaration.source, "source")
+    };
+    format!("the {role} {id} was never measured")
+}

@@ -1,0 +1,153 @@
+//! What was in force when: the ratios of a crossing with the instants of their effect.
+
+use num_rational::Ratio;
+use ratewright_ratio::Fraction;
+use serde::{Deserialize, Serialize};
+
+use crate::HouseNs;
+
+/// Settings kept; a report of an older one is refused.
+pub(crate) const KEPT: usize = 8;
+
+/// One setting's place in the timeline.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub(crate) struct Entry {
+    pub(crate) epoch: u64,
+    pub(crate) number: u64,
+    /// The average ratio it makes.
+    pub(crate) ratio: Fraction,
+    /// When it was decided: it cannot have taken effect before.
+    pub(crate) decided_ns: HouseNs,
+    /// When it takes effect: as planned, then as reported.
+    pub(crate) effect_ns: HouseNs,
+}
+
+/// A stretch of time under one ratio.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub(crate) struct Stretch {
+    pub(crate) ratio: f64,
+    pub(crate) from_ns: HouseNs,
+    pub(crate) to_ns: HouseNs,
+}
+
+/// The last settings, in the order of their effect; before the first nothing runs.
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
+pub(crate) struct Timeline {
+    entries: Vec<Entry>,
+}
+
+/// A correction of when a setting took effect: `after` instead of `before` between two instants.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub(crate) struct Correction {
+    /// Ratio assumed so far; none before the stream began.
+    pub(crate) assumed: Option<f64>,
+    /// Ratio that truly ran.
+    pub(crate) truly: Option<f64>,
+    pub(crate) from_ns: HouseNs,
+    pub(crate) to_ns: HouseNs,
+}
+
+/// A ratio as the nearest double.
+pub(crate) fn as_double(ratio: &Ratio<u64>) -> f64 {
+    *ratio.numer() as f64 / *ratio.denom() as f64
+}
+
+impl Timeline {
+    /// Adds a setting; its effect is not before that of the one before.
+    pub(crate) fn push(&mut self, entry: Entry) {
+        if self.entries.len() == KEPT {
+            self.entries.remove(0);
+        }
+        self.entries.push(entry);
+    }
+
+    /// Effect of the newest setting.
+    pub(crate) fn last_effect_ns(&self) -> Option<HouseNs> {
+        self.entries.last().map(|entry| entry.effect_ns)
+    }
+
+    /// When the stream began, as far back as is kept.
+    pub(crate) fn begins_ns(&self) -> Option<HouseNs> {
+        self.entries.first().map(|entry| entry.effect_ns)
+    }
+
+    /// The ratio in force at an instant; the first one before it began.
+    pub(crate) fn ratio_at(&self, at_ns: HouseNs) -> Option<f64> {
+        let in_force = self
+            .entries
+            .iter()
+            .rev()
+            .find(|entry| entry.effect_ns <= at_ns);
+        in_force
+            .or(self.entries.first())
+            .map(|entry| as_double(&entry.ratio))
+    }
+
+    /// The stretches between two instants.
+    pub(crate) fn stretches(
+        &self,
+        from_ns: HouseNs,
+        to_ns: HouseNs,
+    ) -> impl Iterator<Item = Stretch> {
+        let ends = self
+            .entries
+            .iter()
+            .skip(1)
+            .map(|next| next.effect_ns)
+            .chain([HouseNs::MAX]);
+        self.entries
+            .iter()
+            .zip(ends)
+            .filter_map(move |(entry, end_ns)| {
+                let (from_ns, to_ns) = (entry.effect_ns.max(from_ns), end_ns.min(to_ns));
+                (from_ns < to_ns).then(|| Stretch {
+                    ratio: as_double(&entry.ratio),
+                    from_ns,
+                    to_ns,
+                })
+            })
+    }
+
+    /// The setting with this number, if it is kept.
+    pub(crate) fn entry(&self, epoch: u64, number: u64) -> Option<&Entry> {
+        self.entries
+            .iter()
+            .find(|entry| entry.number == number && entry.epoch == epoch)
+    }
+
+    /// Moves the effect of a setting to where it truly was, but not past its neighbours'.
+    /// The correction concerns times up to `integrated_ns` only.
+    pub(crate) fn correct(
+        &mut self,
+        number: u64,
+        truly_ns: HouseNs,
+        integrated_ns: HouseNs,
+    ) -> Option<Correction> {
+        let index = self
+            .entries
+            .iter()
+            .position(|entry| entry.number == number)?;
+        let previous = index.checked_sub(1).map(|i| self.entries[i]);
+        let next_ns = self
+            .entries
+            .get(index + 1)
+            .map_or(HouseNs::MAX, |next| next.effect_ns);
+        let earliest_ns = previous.map_or(HouseNs::MIN, |entry| entry.effect_ns);
+        let truly_ns = truly_ns.clamp(earliest_ns, next_ns);
+        let entry = &mut self.entries[index];
+        let assumed_ns = std::mem::replace(&mut entry.effect_ns, truly_ns);
+        let own = Some(as_double(&entry.ratio));
+        let before = previous.map(|entry| as_double(&entry.ratio));
+        let (assumed, truly) = if truly_ns > assumed_ns {
+            (own, before)
+        } else {
+            (before, own)
+        };
+        Some(Correction {
+            assumed,
+            truly,
+            from_ns: truly_ns.min(assumed_ns).min(integrated_ns),
+            to_ns: truly_ns.max(assumed_ns).min(integrated_ns),
+        })
+    }
+}
