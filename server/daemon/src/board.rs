@@ -84,19 +84,13 @@ pub enum Selection {
     Named(BTreeSet<Id>),
 }
 
-impl Selection {
-    fn wants(&self, crossing: &Id) -> bool {
-        match self {
-            Self::All => true,
-            Self::Named(names) => names.contains(crossing),
-        }
-    }
-}
-
 impl Board {
     /// An empty board.
     pub fn new() -> Self {
-        Self { shown: RwLock::default(), changes: watch::Sender::new(0) }
+        Self {
+            shown: RwLock::default(),
+            changes: watch::Sender::new(0),
+        }
     }
 
     /// A clock.
@@ -121,20 +115,31 @@ impl Board {
 
     /// The newest setting of a crossing.
     pub fn newest_setting(&self, crossing: &Id) -> Option<Arc<Setting>> {
-        self.shown().newest.get(crossing).map(|(_, setting)| Arc::clone(setting))
+        self.shown()
+            .newest
+            .get(crossing)
+            .map(|(_, setting)| Arc::clone(setting))
     }
 
-    /// The newest setting of each selected crossing that changed after change `seen` (0 for
-    /// all), and the number to ask with next time.
-    pub fn settings_since(&self, seen: u64, selection: &Selection) -> (Vec<Arc<Setting>>, u64) {
+    /// The oldest of the changes after change `seen` (0 for all) that is selected and still the
+    /// newest of its crossing, with its number to ask with next time.
+    pub fn next_change(&self, seen: u64, selection: &Selection) -> Option<(u64, Arc<Setting>)> {
         let shown = self.shown();
-        let later = shown.by_change.range((Bound::Excluded(seen), Bound::Unbounded));
-        let news = later
-            .filter(|(_, crossing)| selection.wants(crossing))
-            .filter_map(|(_, crossing)| shown.newest.get(crossing))
-            .map(|(_, setting)| Arc::clone(setting))
-            .collect();
-        (news, shown.last_change)
+        let (change, setting) = match selection {
+            Selection::All => {
+                let mut later = shown
+                    .by_change
+                    .range((Bound::Excluded(seen), Bound::Unbounded));
+                shown.newest.get(later.next()?.1)?
+            }
+            Selection::Named(names) => {
+                let newest = names.iter().filter_map(|name| shown.newest.get(name));
+                newest
+                    .filter(|(change, _)| *change > seen)
+                    .min_by_key(|(change, _)| *change)?
+            }
+        };
+        Some((*change, Arc::clone(setting)))
     }
 
     /// Wakes when settings changed; the value is the number of the newest change.
@@ -152,10 +157,14 @@ impl Board {
             shown.forget_crossing(&id);
         }
         for view in news.clocks {
-            shown.clocks.insert(view.declaration.id.clone(), Arc::new(view));
+            shown
+                .clocks
+                .insert(view.declaration.id.clone(), Arc::new(view));
         }
         for view in news.crossings {
-            shown.crossings.insert(view.declaration.id.clone(), Arc::new(view));
+            shown
+                .crossings
+                .insert(view.declaration.id.clone(), Arc::new(view));
         }
         let any_setting = !news.settings.is_empty();
         for setting in news.settings {
@@ -185,7 +194,9 @@ impl Shown {
         self.last_change += 1;
         let change = self.last_change;
         let crossing = setting.crossing.clone();
-        let before = self.newest.insert(crossing.clone(), (change, Arc::new(setting)));
+        let before = self
+            .newest
+            .insert(crossing.clone(), (change, Arc::new(setting)));
         if let Some((old_change, _)) = before {
             self.by_change.remove(&old_change);
         }
@@ -202,5 +213,8 @@ impl Shown {
 
 fn page<V>(map: &BTreeMap<Id, Arc<V>>, after: Option<&Id>, limit: usize) -> Vec<Arc<V>> {
     let start = after.map_or(Bound::Unbounded, Bound::Excluded);
-    map.range::<Id, _>((start, Bound::Unbounded)).take(limit).map(|(_, view)| Arc::clone(view)).collect()
+    map.range::<Id, _>((start, Bound::Unbounded))
+        .take(limit)
+        .map(|(_, view)| Arc::clone(view))
+        .collect()
 }

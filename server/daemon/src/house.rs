@@ -34,14 +34,22 @@ impl HouseClock {
                 "the system clock is behind the last house time in the store; house time goes on from there"
             );
         }
-        Self { origin: Instant::now(), origin_ns: wall_ns.max(floor_ns + 1), pace }
+        Self {
+            origin: Instant::now(),
+            origin_ns: wall_ns.max(floor_ns + 1),
+            pace,
+        }
     }
 
     /// House time now.
     pub fn now(&self) -> HouseNs {
         let elapsed = self.origin.elapsed().as_nanos();
         // A plain integer at pace 1: 2^53 ns of a double would be only 104 days.
-        let house = if self.pace == 1.0 { elapsed as i64 } else { (elapsed as f64 * self.pace) as i64 };
+        let house = if self.pace == 1.0 {
+            elapsed as i64
+        } else {
+            (elapsed as f64 * self.pace) as i64
+        };
         self.origin_ns + house
     }
 
@@ -58,7 +66,9 @@ impl HouseClock {
 }
 
 fn system_utc_ns() -> i64 {
-    let since_epoch = SystemTime::now().duration_since(UNIX_EPOCH).unwrap_or_default();
+    let since_epoch = SystemTime::now()
+        .duration_since(UNIX_EPOCH)
+        .unwrap_or_default();
     since_epoch.as_nanos() as i64
 }
 

@@ -8,7 +8,7 @@
 //! people ──► page ──────▲
 //! ```
 //!
-//! - [`scribe`]: the one thread that owns the engine and the store. A setting is on disk before
+//! - `scribe`: the one thread that owns the engine and the store. A setting is on disk before
 //!   the board shows it.
 //! - [`board`]: what the rest of the daemon may see, without ever making the scribe wait.
 //! - `service`: the calls of `ratewright.v1`; they decide nothing.
@@ -23,8 +23,21 @@
 
 pub mod board;
 pub mod config;
+mod convert;
+mod daemon;
+mod digest;
+mod health;
 pub mod house;
 pub mod metrics;
 pub mod page;
 pub mod readiness;
+mod refused;
 pub mod sample;
+mod scribe;
+mod service;
+mod store;
+mod transport;
+
+pub use daemon::{Builder, Daemon, Failed, StartFault};
+pub use scribe::RecoverFault;
+pub use store::{Opening, StoreError};

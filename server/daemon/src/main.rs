@@ -1,2 +1,207 @@
-//! The daemon.
-fn main() {}
+//! `ratewrightd`: the daemon's command line.
+//!
+//! Exit codes: 0 after a clean drain, 69 if an address cannot be served, 74 if the store fails,
+//! 78 if the configuration is at fault.
+#![allow(
+    clippy::print_stderr,
+    clippy::print_stdout,
+    reason = "this is a command: what it has to say before the log begins goes to the terminal"
+)]
+
+use std::{path::PathBuf, process::ExitCode};
+
+use clap::{Parser, Subcommand};
+use ratewright_server::{
+    Daemon, Opening, RecoverFault, StartFault,
+    config::{self, Config, LogFormat},
+    sample,
+};
+use tokio::signal::unix::{SignalKind, signal};
+use tracing_subscriber::EnvFilter;
+
+const EX_UNAVAILABLE: u8 = 69;
+const EX_SOFTWARE: u8 = 70;
+const EX_IOERR: u8 = 74;
+const EX_CONFIG: u8 = 78;
+
+/// Keeps the sample rates of a facility's crossings right.
+#[derive(Parser)]
+#[command(name = "ratewrightd", version)]
+struct Arguments {
+    #[command(subcommand)]
+    command: Command,
+}
+
+#[derive(Subcommand)]
+enum Command {
+    /// Serve until told to stop (SIGTERM or SIGINT).
+    Run {
+        /// Configuration file (TOML); without one, every default.
+        config: Option<PathBuf>,
+        /// Begin a new epoch of setting numbers: once, after the store was restored from a
+        /// backup, or to leave behind the state of another engine version.
+        #[arg(long)]
+        new_epoch: bool,
+    },
+    /// Serve, and play an invented facility against the daemon.
+    Sample {
+        /// House seconds for a real second.
+        #[arg(long, default_value_t = 1.0, value_parser = pace)]
+        pace: f64,
+        /// Folder of the store; without one, a folder that is deleted at the end.
+        #[arg(long)]
+        store: Option<PathBuf>,
+    },
+    /// Check a configuration file and list every fault.
+    Check {
+        /// Configuration file (TOML).
+        config: PathBuf,
+    },
+}
+
+fn pace(text: &str) -> Result<f64, String> {
+    match text.parse() {
+        Ok(pace) if (1.0..=1_000.0).contains(&pace) => Ok(pace),
+        _ => Err("accepted is a number from 1 to 1000".into()),
+    }
+}
+
+fn main() -> ExitCode {
+    match Arguments::parse().command {
+        Command::Run { config, new_epoch } => {
+            let opening = if new_epoch {
+                Opening::NewEpoch
+            } else {
+                Opening::Continue
+            };
+            match config
+                .as_deref()
+                .map_or_else(|| Ok(Config::default()), config::load)
+            {
+                Ok(config) => in_runtime(run(config, opening)),
+                Err(faults) => at_fault(&faults),
+            }
+        }
+        Command::Sample { pace, store } => in_runtime(run_sample(pace, store)),
+        Command::Check { config } => match config::load(&config) {
+            Ok(_) => {
+                println!("{}: no fault", config.display());
+                ExitCode::SUCCESS
+            }
+            Err(faults) => at_fault(&faults),
+        },
+    }
+}
+
+fn at_fault(faults: &config::Faults) -> ExitCode {
+    eprintln!("{faults}");
+    ExitCode::from(EX_CONFIG)
+}
+
+fn in_runtime(work: impl Future<Output = ExitCode>) -> ExitCode {
+    match tokio::runtime::Builder::new_multi_thread()
+        .enable_all()
+        .build()
+    {
+        Ok(runtime) => runtime.block_on(work),
+        Err(fault) => {
+            eprintln!("no threads can be started: {fault}");
+            ExitCode::from(EX_SOFTWARE)
+        }
+    }
+}
+
+async fn run(config: Config, opening: Opening) -> ExitCode {
+    start_log(config.log);
+    match Daemon::builder(config).opening(opening).start().await {
+        Ok(daemon) => serve(daemon, std::future::pending()).await,
+        Err(fault) => not_started(&fault),
+    }
+}
+
+async fn run_sample(pace: f64, store: Option<PathBuf>) -> ExitCode {
+    let kept = store.is_some();
+    let folder = store.unwrap_or_else(|| {
+        std::env::temp_dir().join(format!("ratewright-sample-{}", std::process::id()))
+    });
+    let config = sample::config(folder.clone());
+    start_log(config.log);
+    let code = match Daemon::builder(config).pace(pace).start().await {
+        Ok(daemon) => {
+            let played = sample::run(daemon.grpc(), daemon.house());
+            serve(daemon, played).await
+        }
+        Err(fault) => not_started(&fault),
+    };
+    if !kept && let Err(fault) = std::fs::remove_dir_all(&folder) {
+        tracing::warn!(%fault, folder = %folder.display(), "the sample's store is still there");
+    }
+    code
+}
+
+/// Serves until a signal, a failure, or the end of what is played.
+async fn serve(
+    mut daemon: Daemon,
+    played: impl Future<Output = Result<(), sample::SampleError>>,
+) -> ExitCode {
+    let code = tokio::select! {
+        name = told_to_stop() => {
+            tracing::info!(signal = name, "told to stop");
+            ExitCode::SUCCESS
+        }
+        fault = daemon.failed() => {
+            tracing::error!(%fault, "the daemon failed");
+            ExitCode::from(EX_IOERR)
+        }
+        ended = played => match ended {
+            Ok(()) => ExitCode::SUCCESS,
+            Err(fault) => {
+                tracing::error!(%fault, "the sample facility failed");
+                ExitCode::from(EX_SOFTWARE)
+            }
+        },
+    };
+    match daemon.drain().await {
+        Ok(()) => code,
+        Err(fault) => {
+            tracing::error!(%fault, "the last snapshot was not written");
+            ExitCode::from(EX_IOERR)
+        }
+    }
+}
+
+async fn told_to_stop() -> &'static str {
+    let (Ok(mut terminate), Ok(mut interrupt)) = (
+        signal(SignalKind::terminate()),
+        signal(SignalKind::interrupt()),
+    ) else {
+        tracing::warn!("signals cannot be heard: the daemon can only be killed");
+        return std::future::pending().await;
+    };
+    tokio::select! {
+        _ = terminate.recv() => "SIGTERM",
+        _ = interrupt.recv() => "SIGINT",
+    }
+}
+
+fn not_started(fault: &StartFault) -> ExitCode {
+    tracing::error!(%fault, "not started");
+    ExitCode::from(match fault {
+        StartFault::Listen { .. } => EX_UNAVAILABLE,
+        StartFault::Recover(RecoverFault::Declaration { .. }) => EX_CONFIG,
+        StartFault::Recover(RecoverFault::Panicked) | StartFault::Reflection(_) => EX_SOFTWARE,
+        StartFault::Recover(_) => EX_IOERR,
+    })
+}
+
+/// The log goes to standard error; `RUST_LOG` chooses what is in it.
+fn start_log(format: LogFormat) {
+    let filter = EnvFilter::try_from_default_env().unwrap_or_else(|_| EnvFilter::new("info"));
+    let log = tracing_subscriber::fmt()
+        .with_env_filter(filter)
+        .with_writer(std::io::stderr);
+    match format {
+        LogFormat::Text => log.init(),
+        LogFormat::Json => log.json().init(),
+    }
+}

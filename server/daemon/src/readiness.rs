@@ -41,11 +41,16 @@ impl Readiness {
         });
     }
 
+    /// Waits for a phase, and tells which it was.
+    pub async fn wait_for(&self, wanted: impl Fn(Phase) -> bool) -> Phase {
+        let mut phases = self.0.subscribe();
+        let met = phases.wait_for(|phase| wanted(*phase)).await;
+        *met.expect("the sender lives in self")
+    }
+
     /// Waits until the daemon drains.
     pub async fn draining(&self) {
-        let mut phases = self.0.subscribe();
-        // The sender lives in `self`, so the wait cannot fail.
-        let _ = phases.wait_for(|phase| *phase == Phase::Draining).await;
+        self.wait_for(|phase| phase == Phase::Draining).await;
     }
 }
 

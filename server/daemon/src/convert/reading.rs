@@ -1,0 +1,314 @@
+//! Readings in, receipts out.
+
+use ratewright_control::{Reading, Refusal};
+use ratewright_proto::v1::{self, reading::Measurement as Sent};
+use ratewright_timing::Measurement;
+
+use super::{engine, names};
+use crate::refused::Violation;
+
+/// Readings a batch may hold.
+pub(crate) const MAX_BATCH: usize = 4096;
+
+/// How the engine knows a probe that gave no name.
+const UNNAMED_PROBE: &str = "unnamed";
+
+/// What of a batch can be given to the engine, and what was refused before.
+#[derive(Debug, Default)]
+pub(crate) struct Batch {
+    /// Readings with their index in the batch.
+    pub(crate) readings: Vec<(usize, Reading)>,
+    /// Refused ones.
+    pub(crate) refusals: Vec<v1::Refusal>,
+}
+
+/// Takes a batch apart. One that is empty or too long is refused whole.
+pub(crate) fn batch(sent: Vec<v1::Reading>) -> Batch {
+    if sent.is_empty() || sent.len() > MAX_BATCH {
+        let accepted = format!("1 to {MAX_BATCH} readings");
+        let whole = refusal_of_all(Violation::new("readings", sent.len(), accepted));
+        return Batch {
+            readings: Vec::new(),
+            refusals: vec![whole],
+        };
+    }
+    let mut batch = Batch::default();
+    for (index, sent) in sent.into_iter().enumerate() {
+        match reading(sent) {
+            Ok(reading) => batch.readings.push((index, reading)),
+            Err(violation) => {
+                batch
+                    .refusals
+                    .push(refusal(index as i32, violation.below(&at(index))));
+            }
+        }
+    }
+    batch
+}
+
+/// What the engine refused of reading `index`, as the reporter knows its fields.
+pub(crate) fn refusal_by_engine(index: usize, kind: &str, refused: Refusal) -> v1::Refusal {
+    let violation = engine::violation(refused, |field| match field.strip_prefix("measurement.") {
+        Some("kind") => "measurement".into(),
+        Some(inner) => format!("{kind}.{inner}"),
+        None => field.into(),
+    });
+    refusal(index as i32, violation.below(&at(index)))
+}
+
+/// A refusal of a whole batch.
+pub(crate) fn refusal_of_all(violation: Violation) -> v1::Refusal {
+    refusal(-1, violation)
+}
+
+fn refusal(
+    index: i32,
+    Violation {
+        field,
+        value,
+        accepted,
+    }: Violation,
+) -> v1::Refusal {
+    v1::Refusal {
+        index,
+        field,
+        value,
+        accepted,
+    }
+}
+
+fn at(index: usize) -> String {
+    format!("readings[{index}]")
+}
+
+/// Name of a measurement's field in the contract.
+pub(crate) fn kind(measurement: &Measurement) -> &'static str {
+    match measurement {
+        Measurement::Counter { .. } | Measurement::SenderReport { .. } => "counter",
+        Measurement::Exchange { .. } => "exchange",
+        Measurement::Frequency { .. } => "frequency",
+    }
+}
+
+fn reading(sent: v1::Reading) -> Result<Reading, Violation> {
+    let clock = names::parse_clock("clock", &sent.clock)?;
+    let reference = names::parse_reference("reference", &sent.reference)?;
+    let probe = if sent.probe.is_empty() {
+        UNNAMED_PROBE
+    } else {
+        &sent.probe
+    };
+    let probe = names::parse_id("probe", probe)?.to_string();
+    let measurement = match sent.measurement {
+        Some(Sent::Counter(counter)) => self::counter(counter)?,
+        Some(Sent::Exchange(exchange)) => self::exchange(exchange)?,
+        Some(Sent::Frequency(frequency)) => self::frequency(frequency)?,
+        None => {
+            let accepted = "counter, exchange or frequency";
+            return Err(Violation::new("measurement", "absent", accepted));
+        }
+    };
+    Ok(Reading {
+        clock,
+        reference,
+        probe,
+        sequence: sent.sequence,
+        measurement,
+    })
+}
+
+fn counter(sent: v1::CounterReading) -> Result<Measurement, Violation> {
+    let bits = if sent.bits == 0 { 64 } else { sent.bits };
+    if bits > 64 {
+        return Err(Violation::new("counter.bits", bits, "1 to 64, or 0 for 64"));
+    }
+    if bits < 64 && sent.count >> bits != 0 {
+        let accepted = format!("less than 2^{bits}, the width that counter.bits gives");
+        return Err(Violation::new("counter.count", sent.count, accepted));
+    }
+    let reference_ns = time("counter.reference_ns", sent.reference_ns)?;
+    Ok(Measurement::Counter {
+        count: sent.count,
+        bits,
+        reference_ns,
+    })
+}
+
+fn exchange(sent: v1::TwoWayExchange) -> Result<Measurement, Violation> {
+    let v1::TwoWayExchange {
+        t1_ns,
+        t2_ns,
+        t3_ns,
+        t4_ns,
+    } = sent;
+    if t3_ns < t2_ns {
+        let accepted = format!("at least exchange.t2_ns, {t2_ns}");
+        return Err(Violation::new("exchange.t3_ns", t3_ns, accepted));
+    }
+    if t4_ns < t1_ns {
+        let accepted = format!("at least exchange.t1_ns, {t1_ns}");
+        return Err(Violation::new("exchange.t4_ns", t4_ns, accepted));
+    }
+    for (field, sent) in [
+        ("t1_ns", t1_ns),
+        ("t2_ns", t2_ns),
+        ("t3_ns", t3_ns),
+        ("t4_ns", t4_ns),
+    ] {
+        time(&format!("exchange.{field}"), sent)?;
+    }
+    Ok(Measurement::Exchange {
+        t1_ns,
+        t2_ns,
+        t3_ns,
+        t4_ns,
+    })
+}
+
+fn frequency(sent: v1::FrequencyReading) -> Result<Measurement, Violation> {
+    let v1::FrequencyReading {
+        drift,
+        deviation,
+        reference_ns,
+    } = sent;
+    if !(-0.01..=0.01).contains(&drift) {
+        return Err(Violation::new(
+            "frequency.drift",
+            drift,
+            "-0.01 to 0.01, dimensionless",
+        ));
+    }
+    if !(deviation > 0.0 && deviation <= 0.01) {
+        let accepted = "above 0 to 0.01, dimensionless";
+        return Err(Violation::new("frequency.deviation", deviation, accepted));
+    }
+    let reference_ns = time("frequency.reference_ns", reference_ns)?;
+    Ok(Measurement::Frequency {
+        drift,
+        deviation,
+        reference_ns,
+    })
+}
+
+/// Times may count from any origin, but differences of two must fit 63 bits.
+fn time(field: &str, sent: i64) -> Result<i64, Violation> {
+    const LIMIT_NS: i64 = i64::MAX / 2;
+    if (-LIMIT_NS..=LIMIT_NS).contains(&sent) {
+        Ok(sent)
+    } else {
+        Err(Violation::new(
+            field,
+            sent,
+            format!("-{LIMIT_NS} to {LIMIT_NS} ns"),
+        ))
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    fn sent(measurement: Sent) -> v1::Reading {
+        v1::Reading {
+            clock: "clocks/desk".into(),
+            reference: "house".into(),
+            measurement: Some(measurement),
+            ..Default::default()
+        }
+    }
+
+    fn drift(drift: f64) -> v1::Reading {
+        sent(Sent::Frequency(v1::FrequencyReading {
+            drift,
+            deviation: 1e-8,
+            reference_ns: 5,
+        }))
+    }
+
+    #[test]
+    fn one_bad_reading_leaves_the_others() {
+        let batch = batch(vec![drift(1e-6), drift(f64::NAN), drift(2e-6)]);
+        let kept: Vec<usize> = batch.readings.iter().map(|(index, _)| *index).collect();
+        assert_eq!(kept, [0, 2]);
+        assert_eq!(
+            batch.refusals,
+            [v1::Refusal {
+                index: 1,
+                field: "readings[1].frequency.drift".into(),
+                value: "NaN".into(),
+                accepted: "-0.01 to 0.01, dimensionless".into(),
+            }]
+        );
+    }
+
+    #[test]
+    fn too_many_and_none_are_refused_whole() {
+        for count in [0, MAX_BATCH + 1] {
+            let batch = batch(vec![drift(0.0); count]);
+            assert!(batch.readings.is_empty());
+            assert_eq!(batch.refusals.len(), 1);
+            let refusal = &batch.refusals[0];
+            assert_eq!((refusal.index, refusal.field.as_str()), (-1, "readings"));
+            assert_eq!(refusal.value, count.to_string());
+        }
+        assert_eq!(batch(vec![drift(0.0); MAX_BATCH]).readings.len(), MAX_BATCH);
+    }
+
+    #[test]
+    fn each_field_is_named_in_its_place() {
+        let counter = |count, bits| {
+            sent(Sent::Counter(v1::CounterReading {
+                count,
+                bits,
+                reference_ns: 0,
+            }))
+        };
+        let exchange = |t1_ns, t2_ns, t3_ns, t4_ns| {
+            sent(Sent::Exchange(v1::TwoWayExchange {
+                t1_ns,
+                t2_ns,
+                t3_ns,
+                t4_ns,
+            }))
+        };
+        let cases = [
+            (counter(0, 65), "counter.bits"),
+            (counter(1 << 32, 32), "counter.count"),
+            (exchange(0, 5, 4, 9), "exchange.t3_ns"),
+            (exchange(10, 4, 5, 9), "exchange.t4_ns"),
+            (exchange(i64::MIN, 4, 5, 9), "exchange.t1_ns"),
+            (
+                v1::Reading {
+                    measurement: None,
+                    ..counter(0, 0)
+                },
+                "measurement",
+            ),
+            (
+                v1::Reading {
+                    clock: "desk".into(),
+                    ..counter(0, 0)
+                },
+                "clock",
+            ),
+            (
+                v1::Reading {
+                    reference: "mars".into(),
+                    ..counter(0, 0)
+                },
+                "reference",
+            ),
+            (
+                v1::Reading {
+                    probe: "No".into(),
+                    ..counter(0, 0)
+                },
+                "probe",
+            ),
+        ];
+        for (reading, field) in cases {
+            assert_eq!(super::reading(reading).unwrap_err().field, field);
+        }
+        assert!(reading(counter(u64::MAX, 0)).is_ok());
+    }
+}

@@ -1,0 +1,112 @@
+//! A group on its way: what its commands did, until it is on the disk.
+
+use ratewright_control::{Engine, Event, HouseNs, Refusal, Setting, Transition};
+use tokio::sync::oneshot;
+
+use super::{Command, Done, Promise, news::Touched};
+use crate::{metrics, refused::Refused, store};
+
+/// Events that one group holds, about: the group is closed by the command that reaches it.
+const FULL: usize = 8_192;
+
+/// What a group has gathered.
+#[derive(Debug, Default)]
+pub(super) struct Group {
+    pub(super) written: store::Group,
+    pub(super) touched: Touched,
+    answers: Vec<(oneshot::Sender<Result<Done, Refused>>, Done)>,
+}
+
+impl Group {
+    pub(super) fn is_full(&self) -> bool {
+        self.written.events.len() >= FULL
+    }
+
+    /// Applies a command. One that asked for no more than that is answered here.
+    pub(super) fn take(&mut self, engine: &mut Engine, command: Command, now: HouseNs) {
+        let Command {
+            decide,
+            promise,
+            answer,
+        } = command;
+        let events = match decide(engine) {
+            Ok(events) => events,
+            Err(refused) => {
+                // A caller that has gone does not need its answer; here and below.
+                let _ = answer.send(Err(refused));
+                return;
+            }
+        };
+        let outcomes = events
+            .into_iter()
+            .map(|event| self.apply(engine, event, now))
+            .collect();
+        let done = Done {
+            outcomes,
+            house_ns: now,
+        };
+        match promise {
+            Promise::Applied => drop(answer.send(Ok(done))),
+            Promise::Durable => self.answers.push((answer, done)),
+        }
+    }
+
+    /// Applies one event, and keeps it and what came out for the store.
+    pub(super) fn apply(
+        &mut self,
+        engine: &mut Engine,
+        event: Event,
+        now: HouseNs,
+    ) -> Result<(), Refusal> {
+        let effects = engine.apply(&event, now)?;
+        self.touched.note(engine, &event, &effects);
+        effects.transitions.iter().for_each(log_transition);
+        for setting in &effects.settings {
+            let explanation = explained(engine, setting);
+            self.written.settings.push((setting.clone(), explanation));
+        }
+        self.written.events.push((now, event));
+        Ok(())
+    }
+
+    /// Answers the commands that waited for the disk. Call after the news is on the board.
+    pub(super) fn answer(self) {
+        for (answer, done) in self.answers {
+            let _ = answer.send(Ok(done));
+        }
+    }
+}
+
+fn explained(engine: &Engine, setting: &Setting) -> Vec<String> {
+    let crossing = engine.crossing(&setting.crossing);
+    crossing.map_or_else(Vec::new, |_| Vec::new())
+}
+
+fn log_transition(transition: &Transition) {
+    metrics::transition(transition);
+    match transition {
+        Transition::Clock {
+            clock,
+            from,
+            to,
+            reason,
+        } => {
+            tracing::info!(%clock, ?from, ?to, ?reason, "clock changed its state");
+        }
+        Transition::Crossing {
+            crossing,
+            from,
+            to,
+            reason,
+        } => {
+            tracing::info!(%crossing, ?from, ?to, reason, "crossing changed its state");
+        }
+        Transition::Centred {
+            crossing,
+            phase_error_samples,
+            reason,
+        } => {
+            tracing::info!(%crossing, phase_error_samples, reason, "crossing was centred anew");
+        }
+    }
+}

@@ -1,0 +1,130 @@
+//! CrossingService.
+
+use ratewright_control::{CrossingDeclaration, Engine, Event, Id};
+use ratewright_proto::v1::{self, crossing_service_server::CrossingService};
+use tonic::{Request, Response, Status};
+
+use super::{Access, etag, mask, paging};
+use crate::{
+    convert::{crossing, engine, names},
+    refused::{Refused, Violation},
+};
+
+#[derive(Debug)]
+pub(super) struct Crossings(pub(super) Access);
+
+#[tonic::async_trait]
+impl CrossingService for Crossings {
+    async fn create_crossing(
+        &self,
+        request: Request<v1::CreateCrossingRequest>,
+    ) -> Result<Response<v1::Crossing>, Status> {
+        let declared = crossing::declaration("crossing", request.into_inner().crossing)?;
+        let id = declared.id.clone();
+        self.change(move |engine| match engine.crossing(&declared.id) {
+            Some(_) => Err(Refused::AlreadyExists(names::crossing(&declared.id))),
+            None => Ok(Event::DeclareCrossing(declared)),
+        })
+        .await?;
+        Ok(Response::new(self.shown(&id)?))
+    }
+
+    async fn get_crossing(
+        &self,
+        request: Request<v1::GetCrossingRequest>,
+    ) -> Result<Response<v1::Crossing>, Status> {
+        let id = names::parse_crossing("name", &request.get_ref().name)?;
+        Ok(Response::new(self.shown(&id)?))
+    }
+
+    async fn list_crossings(
+        &self,
+        request: Request<v1::ListCrossingsRequest>,
+    ) -> Result<Response<v1::ListCrossingsResponse>, Status> {
+        let v1::ListCrossingsRequest {
+            page_size,
+            page_token,
+        } = request.into_inner();
+        let page = paging::page("crossings", page_size, &page_token)?;
+        let after = page.after.and_then(|id| Id::new(&id).ok());
+        let mut views = self.0.board.crossings(after.as_ref(), page.size + 1);
+        let more = views.len() > page.size;
+        views.truncate(page.size);
+        let next_page_token = match views.last() {
+            Some(last) if more => paging::token("crossings", last.declaration.id.as_str()),
+            _ => String::new(),
+        };
+        let crossings = views
+            .iter()
+            .map(|view| crossing::view_to_wire(view))
+            .collect();
+        Ok(Response::new(v1::ListCrossingsResponse {
+            crossings,
+            next_page_token,
+        }))
+    }
+
+    async fn update_crossing(
+        &self,
+        request: Request<v1::UpdateCrossingRequest>,
+    ) -> Result<Response<v1::Crossing>, Status> {
+        let v1::UpdateCrossingRequest {
+            crossing: sent,
+            update_mask,
+        } = request.into_inner();
+        let sent = sent.ok_or_else(|| Violation::new("crossing", "absent", "a crossing"))?;
+        let id = names::parse_crossing("crossing.name", &sent.name)?;
+        let fields = mask::fields(update_mask, &crossing::FIELDS)?;
+        let found = id.clone();
+        self.change(move |engine| {
+            let current = current(engine, &found, &sent.etag)?;
+            let merged = crossing::overlay(crossing::declaration_to_wire(current), sent, &fields);
+            crossing::declaration("crossing", Some(merged)).map(Event::DeclareCrossing)
+        })
+        .await?;
+        Ok(Response::new(self.shown(&id)?))
+    }
+
+    async fn delete_crossing(
+        &self,
+        request: Request<v1::DeleteCrossingRequest>,
+    ) -> Result<Response<()>, Status> {
+        let v1::DeleteCrossingRequest { name, etag } = request.into_inner();
+        let id = names::parse_crossing("name", &name)?;
+        self.change(move |engine| {
+            current(engine, &id, &etag)?;
+            Ok(Event::DeleteCrossing(id))
+        })
+        .await?;
+        Ok(Response::new(()))
+    }
+}
+
+impl Crossings {
+    fn shown(&self, id: &Id) -> Result<v1::Crossing, Refused> {
+        let view = self.0.board.crossing(id);
+        view.map(|view| crossing::view_to_wire(&view))
+            .ok_or_else(|| Refused::not_found(names::crossing(id)))
+    }
+
+    async fn change(
+        &self,
+        decide: impl FnOnce(&Engine) -> Result<Event, Refused> + Send + 'static,
+    ) -> Result<(), Refused> {
+        let done = self.0.desk.decide(decide).await?;
+        done.sole()
+            .map_err(|refusal| engine::refused(refusal, crossing::path_of))
+    }
+}
+
+fn current<'a>(
+    engine: &'a Engine,
+    id: &Id,
+    sent_etag: &str,
+) -> Result<&'a CrossingDeclaration, Refused> {
+    let current = engine
+        .crossing(id)
+        .ok_or_else(|| Refused::not_found(names::crossing(id)))?;
+    etag::check(names::crossing(id), sent_etag, crossing::etag(current))?;
+    Ok(current)
+}

@@ -1,0 +1,215 @@
+//! Opening: tables, versions, snapshot and journal.
+
+use std::path::Path;
+
+use prost::Message;
+use ratewright_control::{ENGINE_VERSION, Event, HouseNs};
+use ratewright_proto::v1;
+use rusqlite::{Connection, OptionalExtension};
+
+use super::{Begin, History, Opened, Opening, Store, StoreError, database, lock::Lock};
+use crate::{convert, refused::Refused};
+
+/// Version of the tables below.
+const TABLES: i64 = 1;
+
+const CREATE: &str = "
+    CREATE TABLE snapshot (
+        id INTEGER PRIMARY KEY CHECK (id = 1),
+        epoch INTEGER NOT NULL,
+        engine_version INTEGER NOT NULL,
+        seq INTEGER NOT NULL,
+        house_ns INTEGER NOT NULL,
+        state BLOB NOT NULL
+    ) STRICT;
+    CREATE TABLE journal (
+        seq INTEGER PRIMARY KEY,
+        house_ns INTEGER NOT NULL,
+        event BLOB NOT NULL
+    ) STRICT;
+    CREATE TABLE settings (
+        crossing TEXT NOT NULL,
+        epoch INTEGER NOT NULL,
+        number INTEGER NOT NULL,
+        setting BLOB NOT NULL,
+        explanation TEXT NOT NULL,
+        PRIMARY KEY (crossing, epoch, number)
+    ) STRICT, WITHOUT ROWID;
+    CREATE TABLE declarations (
+        kind TEXT NOT NULL CHECK (kind IN ('clock', 'crossing')),
+        id TEXT NOT NULL,
+        declaration BLOB NOT NULL,
+        PRIMARY KEY (kind, id)
+    ) STRICT, WITHOUT ROWID;
+    PRAGMA user_version = 1;
+";
+
+/// The row of the snapshot, but for the state.
+struct Head {
+    epoch: u64,
+    engine_version: u32,
+    seq: i64,
+    house_ns: HouseNs,
+}
+
+impl Store {
+    /// Opens the store in `folder`, which is made if it is missing. `house_now_ns` is what house
+    /// time would be by the system clock; a new epoch is numbered after it.
+    ///
+    /// # Errors
+    /// See [`StoreError`]. Nothing has been changed then.
+    pub(crate) fn open(
+        folder: &Path,
+        opening: Opening,
+        house_now_ns: HouseNs,
+    ) -> Result<Opened, StoreError> {
+        let lock = Lock::take(folder)?;
+        let db = Connection::open(database(folder))?;
+        db.pragma_update(None, "journal_mode", "WAL")?;
+        db.pragma_update(None, "synchronous", "FULL")?;
+        create_tables(&db, folder)?;
+        let head = read_head(&db)?;
+        let journalled = newest_row(&db)?;
+        let begin = match &head {
+            None => Begin::Afresh {
+                epoch: 1,
+                declarations: Vec::new(),
+            },
+            Some(head) => {
+                let wanted = opening == Opening::NewEpoch;
+                let new_epoch = wanted.then(|| new_epoch(head.epoch, house_now_ns));
+                begin(&db, folder, head, new_epoch)?
+            }
+        };
+        let snapshot = head.as_ref().map_or(0, |head| head.seq);
+        let (newest, house_ns) = journalled.unwrap_or((0, 0));
+        let floor_ns = head.map_or(0, |head| head.house_ns).max(house_ns);
+        let trimmed = oldest_row(&db)?.map_or(snapshot, |oldest| oldest - 1);
+        let history = History::open(&database(folder))?;
+        let newest = newest.max(snapshot);
+        let store = Store {
+            db,
+            newest,
+            trimmed,
+            snapshot,
+            _lock: lock,
+        };
+        Ok(Opened {
+            store,
+            history,
+            floor_ns,
+            begin,
+        })
+    }
+}
+
+/// Greater than any before, and than any that a daemon opened from the same backup meanwhile: the
+/// seconds of house time cannot come twice.
+fn new_epoch(before: u64, house_now_ns: HouseNs) -> u64 {
+    let seconds = u64::try_from(house_now_ns / 1_000_000_000).unwrap_or(0);
+    seconds.max(before + 1)
+}
+
+fn create_tables(db: &Connection, folder: &Path) -> Result<(), StoreError> {
+    let found: i64 = db.pragma_query_value(None, "user_version", |row| row.get(0))?;
+    match found {
+        0 => Ok(db.execute_batch(&format!("BEGIN; {CREATE} COMMIT;"))?),
+        TABLES => Ok(()),
+        _ => Err(StoreError::Tables {
+            path: folder.to_path_buf(),
+            found,
+            known: TABLES,
+        }),
+    }
+}
+
+fn begin(
+    db: &Connection,
+    folder: &Path,
+    head: &Head,
+    new_epoch: Option<u64>,
+) -> Result<Begin, StoreError> {
+    if head.engine_version == ENGINE_VERSION {
+        return read_state(db, head, new_epoch);
+    }
+    match new_epoch {
+        Some(epoch) => Ok(Begin::Afresh {
+            epoch,
+            declarations: read_declarations(db)?,
+        }),
+        None => Err(StoreError::EngineVersion {
+            path: folder.to_path_buf(),
+            found: head.engine_version,
+            known: ENGINE_VERSION,
+        }),
+    }
+}
+
+fn read_head(db: &Connection) -> Result<Option<Head>, StoreError> {
+    let query = "SELECT epoch, engine_version, seq, house_ns FROM snapshot";
+    let head = db.query_row(query, [], |row| {
+        Ok(Head {
+            epoch: row.get(0)?,
+            engine_version: row.get(1)?,
+            seq: row.get(2)?,
+            house_ns: row.get(3)?,
+        })
+    });
+    Ok(head.optional()?)
+}
+
+fn newest_row(db: &Connection) -> Result<Option<(i64, HouseNs)>, StoreError> {
+    let query = "SELECT seq, house_ns FROM journal ORDER BY seq DESC LIMIT 1";
+    Ok(db
+        .query_row(query, [], |row| Ok((row.get(0)?, row.get(1)?)))
+        .optional()?)
+}
+
+fn oldest_row(db: &Connection) -> Result<Option<i64>, StoreError> {
+    Ok(db.query_row("SELECT min(seq) FROM journal", [], |row| row.get(0))?)
+}
+
+fn read_state(db: &Connection, head: &Head, new_epoch: Option<u64>) -> Result<Begin, StoreError> {
+    let state: Vec<u8> = db.query_row("SELECT state FROM snapshot", [], |row| row.get(0))?;
+    let engine = postcard::from_bytes(&state)
+        .map_err(|why| StoreError::Damaged("the engine's state", why.to_string()))?;
+    let mut rows = db.prepare("SELECT house_ns, event FROM journal WHERE seq > ? ORDER BY seq")?;
+    let rows = rows.query_map([head.seq], |row| Ok((row.get(0)?, row.get(1)?)))?;
+    let mut journal = Vec::new();
+    for row in rows {
+        let (house_ns, event): (HouseNs, Vec<u8>) = row?;
+        let event = postcard::from_bytes(&event)
+            .map_err(|why| StoreError::Damaged("an event of the journal", why.to_string()))?;
+        journal.push((house_ns, event));
+    }
+    Ok(Begin::Continue {
+        engine: Box::new(engine),
+        journal,
+        new_epoch,
+    })
+}
+
+/// Clocks first: a crossing can only be declared between clocks that are.
+fn read_declarations(db: &Connection) -> Result<Vec<Event>, StoreError> {
+    let mut rows = db.prepare("SELECT kind, declaration FROM declarations ORDER BY kind, id")?;
+    let rows = rows.query_map([], |row| Ok((row.get(0)?, row.get(1)?)))?;
+    let mut events = Vec::new();
+    for row in rows {
+        let (kind, declaration): (String, Vec<u8>) = row?;
+        events.push(read_declaration(&kind, &declaration)?);
+    }
+    Ok(events)
+}
+
+fn read_declaration(kind: &str, bytes: &[u8]) -> Result<Event, StoreError> {
+    let damaged = |why: String| StoreError::Damaged("a declaration", why);
+    let refused = |why: Refused| damaged(why.to_string());
+    if kind == "clock" {
+        let clock = v1::Clock::decode(bytes).map_err(|why| damaged(why.to_string()))?;
+        let clock = convert::clock::declaration("clock", Some(clock)).map_err(refused)?;
+        return Ok(Event::DeclareClock(clock));
+    }
+    let crossing = v1::Crossing::decode(bytes).map_err(|why| damaged(why.to_string()))?;
+    let crossing = convert::crossing::declaration("crossing", Some(crossing)).map_err(refused)?;
+    Ok(Event::DeclareCrossing(crossing))
+}

@@ -1,0 +1,309 @@
+//! The store as a daemon sees it across restarts.
+
+use num_rational::Ratio;
+use ratewright_control::{
+    ClockDeclaration, ENGINE_VERSION, Engine, Event, Evidence, Id, Realised, Reason, Setting,
+};
+use ratewright_ratio::{Bounds, Exact, Fraction, best};
+use tempfile::TempDir;
+
+use super::{Begin, Group, Opened, Opening, Store, StoreError};
+
+fn folder() -> TempDir {
+    tempfile::tempdir().unwrap()
+}
+
+fn open(folder: &TempDir) -> Opened {
+    Store::open(folder.path(), Opening::Continue, 0).unwrap()
+}
+
+/// A store that has begun, as a daemon's first start leaves it.
+fn begun(folder: &TempDir) -> Opened {
+    let mut opened = open(folder);
+    let Begin::Afresh { epoch, .. } = opened.begin else {
+        panic!("a new store begins afresh")
+    };
+    opened
+        .store
+        .begin_afresh(&Engine::new(epoch), epoch, 5, &Group::default())
+        .unwrap();
+    opened
+}
+
+fn clock(name: &str) -> Event {
+    Event::DeclareClock(ClockDeclaration {
+        id: Id::new(name).unwrap(),
+        display_name: String::new(),
+        nominal_hz: Ratio::from_integer(48_000),
+        exact: false,
+        tolerance_ppm: 0.0,
+    })
+}
+
+fn setting(number: u64) -> Setting {
+    let ratio = Fraction::new(160, 147);
+    let target = Exact::new(160, 147);
+    Setting {
+        crossing: Id::new("desk-to-stage").unwrap(),
+        epoch: 1,
+        number,
+        wanted: ratio,
+        realised: Realised::Single(ratio),
+        residual: 0.0,
+        certificate: best(&target, &Bounds::new(256, 256).unwrap()).certificate,
+        decided_ns: 10,
+        effect_ns: 20,
+        review_ns: 30,
+        expiry_ns: 40,
+        seconds_to_slip: None,
+        reason: Reason::First,
+        evidence: Evidence {
+            target: 160.0 / 147.0,
+            target_low: 1.0,
+            target_high: 1.1,
+            source_drift: 0.0,
+            source_deviation: 1e-5,
+            sink_drift: 0.0,
+            sink_deviation: 1e-5,
+            phase_error_samples: 0.0,
+            phase_deviation_samples: 0.0,
+            allowed_low: ratio,
+            allowed_high: ratio,
+            expected_hold_s: 60.0,
+        },
+    }
+}
+
+fn with_settings(numbers: std::ops::RangeInclusive<u64>) -> Group {
+    let why = |number| vec![format!("number {number}"), "because".to_string()];
+    let settings = numbers
+        .map(|number| (setting(number), why(number)))
+        .collect();
+    Group {
+        events: vec![(7, Event::Tick)],
+        settings,
+    }
+}
+
+fn journal(opened: &Opened) -> Vec<(i64, Event)> {
+    match &opened.begin {
+        Begin::Continue { journal, .. } => journal.clone(),
+        Begin::Afresh { .. } => panic!("a store that has begun goes on"),
+    }
+}
+
+#[test]
+fn two_daemons_cannot_share_a_store() {
+    let folder = folder();
+    let first = open(&folder);
+    let second = Store::open(folder.path(), Opening::Continue, 0);
+    assert!(matches!(second, Err(StoreError::InUse(_))), "{second:?}");
+    drop(first);
+    open(&folder);
+}
+
+#[test]
+fn what_was_committed_is_read_back_in_order() {
+    let folder = folder();
+    let mut opened = begun(&folder);
+    let events = vec![(10, clock("desk")), (10, Event::Tick), (25, clock("stage"))];
+    let group = Group {
+        events: events.clone(),
+        settings: Vec::new(),
+    };
+    opened.store.commit(&group).unwrap();
+    drop(opened);
+    let opened = open(&folder);
+    assert_eq!(journal(&opened), events);
+    assert_eq!(opened.floor_ns, 25);
+}
+
+#[test]
+fn a_snapshot_takes_the_place_of_the_journal_which_is_trimmed_in_steps() {
+    let folder = folder();
+    let mut opened = begun(&folder);
+    let ticks = (1..=5_000).map(|ns| (ns, Event::Tick)).collect();
+    opened
+        .store
+        .commit(&Group {
+            events: ticks,
+            settings: Vec::new(),
+        })
+        .unwrap();
+    opened.store.write_snapshot(&Engine::new(1), 5_000).unwrap();
+    let mut rows = Vec::new();
+    for ns in 5_001..=5_004 {
+        let group = Group {
+            events: vec![(ns, Event::Tick)],
+            settings: Vec::new(),
+        };
+        opened.store.commit(&group).unwrap();
+        let count = |row: &rusqlite::Row<'_>| row.get::<_, i64>(0);
+        rows.push(
+            opened
+                .store
+                .db
+                .query_row("SELECT count(*) FROM journal", [], count)
+                .unwrap(),
+        );
+    }
+    assert_eq!(rows, [3_001, 1_002, 3, 4]);
+    assert_eq!(opened.store.since_snapshot(), 4);
+    drop(opened);
+    let opened = open(&folder);
+    let times: Vec<i64> = journal(&opened).iter().map(|(ns, _)| *ns).collect();
+    assert_eq!(times, [5_001, 5_002, 5_003, 5_004]);
+}
+
+#[test]
+fn a_number_is_never_written_twice() {
+    let folder = folder();
+    let mut opened = begun(&folder);
+    opened.store.commit(&with_settings(1..=2)).unwrap();
+    let again = opened.store.commit(&with_settings(2..=3));
+    assert!(matches!(again, Err(StoreError::Database(_))), "{again:?}");
+    drop(opened);
+    assert_eq!(
+        journal(&open(&folder)).len(),
+        1,
+        "the refused group has left nothing behind"
+    );
+}
+
+#[tokio::test]
+async fn history_goes_back_page_by_page() {
+    let folder = folder();
+    let mut opened = begun(&folder);
+    opened.store.commit(&with_settings(1..=5)).unwrap();
+    let id = || Id::new("desk-to-stage").unwrap();
+    let page = |before| {
+        let found = opened.history.settings(id(), before, 2);
+        async {
+            found
+                .await
+                .unwrap()
+                .iter()
+                .map(|r| r.setting.number)
+                .collect::<Vec<_>>()
+        }
+    };
+    assert_eq!(page(None).await, [5, 4]);
+    assert_eq!(page(Some((1, 4))).await, [3, 2]);
+    assert_eq!(page(Some((1, 2))).await, [1]);
+    let newest = opened.history.setting(id(), None).await.unwrap().unwrap();
+    assert_eq!(newest.setting.name, "crossings/desk-to-stage/settings/1-5");
+    assert_eq!(newest.explanation, ["number 5", "because"]);
+    let third = opened
+        .history
+        .setting(id(), Some((1, 3)))
+        .await
+        .unwrap()
+        .unwrap();
+    assert_eq!(third.setting.number, 3);
+    assert_eq!(
+        opened.history.setting(id(), Some((2, 3))).await.unwrap(),
+        None
+    );
+}
+
+#[test]
+fn another_engine_version_is_refused_and_told_what_to_do() {
+    let folder = folder();
+    let mut opened = begun(&folder);
+    let events = vec![
+        (10, clock("desk")),
+        (11, clock("stage")),
+        (12, Event::DeleteClock(Id::new("stage").unwrap())),
+    ];
+    opened
+        .store
+        .commit(&Group {
+            events,
+            settings: Vec::new(),
+        })
+        .unwrap();
+    let newer = "UPDATE snapshot SET engine_version = engine_version + 1";
+    opened.store.db.execute(newer, []).unwrap();
+    drop(opened);
+    let refused = Store::open(folder.path(), Opening::Continue, 0).unwrap_err();
+    assert!(
+        matches!(refused, StoreError::EngineVersion { found, .. } if found == ENGINE_VERSION + 1)
+    );
+    assert!(refused.to_string().contains("--new-epoch"), "{refused}");
+    let opened = Store::open(folder.path(), Opening::NewEpoch, 0).unwrap();
+    let Begin::Afresh {
+        epoch,
+        declarations,
+    } = &opened.begin
+    else {
+        panic!("another engine's state cannot go on")
+    };
+    assert_eq!(
+        (*epoch, declarations.as_slice()),
+        (2, [clock("desk")].as_slice())
+    );
+}
+
+#[test]
+fn two_restores_of_one_backup_open_different_epochs() {
+    let folder = folder();
+    drop(begun(&folder));
+    let epoch_at = |house_s: i64| {
+        let opened = Store::open(folder.path(), Opening::NewEpoch, house_s * 1_000_000_000);
+        match opened.unwrap().begin {
+            Begin::Continue {
+                new_epoch: Some(epoch),
+                ..
+            } => epoch,
+            other => panic!("the state goes on in a new epoch: {other:?}"),
+        }
+    };
+    assert_eq!((epoch_at(1_000), epoch_at(1_007)), (1_000, 1_007));
+}
+
+#[test]
+fn an_opened_epoch_is_remembered() {
+    let folder = folder();
+    let mut opened = begun(&folder);
+    let events = vec![(10, Event::OpenEpoch { epoch: 900 })];
+    opened
+        .store
+        .commit(&Group {
+            events,
+            settings: Vec::new(),
+        })
+        .unwrap();
+    drop(opened);
+    let opened = Store::open(folder.path(), Opening::NewEpoch, 0).unwrap();
+    assert!(matches!(
+        opened.begin,
+        Begin::Continue {
+            new_epoch: Some(901),
+            ..
+        }
+    ));
+}
+
+#[test]
+fn tables_of_another_version_are_refused() {
+    let folder = folder();
+    let opened = begun(&folder);
+    opened
+        .store
+        .db
+        .pragma_update(None, "user_version", 9)
+        .unwrap();
+    drop(opened);
+    let refused = Store::open(folder.path(), Opening::NewEpoch, 0).unwrap_err();
+    assert!(
+        matches!(
+            refused,
+            StoreError::Tables {
+                found: 9,
+                known: 1,
+                ..
+            }
+        ),
+        "{refused}"
+    );
+}

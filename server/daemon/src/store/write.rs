@@ -1,0 +1,144 @@
+//! Writing: groups of events, snapshots, and the trimming of what a snapshot made needless.
+
+use prost::Message;
+use ratewright_control::{ENGINE_VERSION, Engine, Event, HouseNs};
+use rusqlite::{Transaction, params};
+
+use super::{Group, Store, StoreError};
+use crate::convert;
+
+/// Journal rows that one transaction trims at most: a large delete would hold up the group that
+/// waits behind it.
+const TRIM_STEP: i64 = 2_000;
+
+impl Store {
+    /// Writes a group in one transaction. When this returns, it is on the disk.
+    ///
+    /// # Errors
+    /// [`StoreError::Database`]; nothing of the group is written then.
+    pub(crate) fn commit(&mut self, group: &Group) -> Result<(), StoreError> {
+        let trim_to = self.snapshot.min(self.trimmed + TRIM_STEP);
+        let transaction = self.db.transaction()?;
+        write_group(&transaction, self.newest, group)?;
+        trim(&transaction, self.trimmed, trim_to)?;
+        transaction.commit()?;
+        self.newest += group.events.len() as i64;
+        self.trimmed = trim_to;
+        Ok(())
+    }
+
+    /// Begins with a fresh engine: the journal is emptied, and the group is its first.
+    ///
+    /// # Errors
+    /// [`StoreError::Database`]; the store is as it was then.
+    pub(crate) fn begin_afresh(
+        &mut self,
+        fresh: &Engine,
+        epoch: u64,
+        house_ns: HouseNs,
+        group: &Group,
+    ) -> Result<(), StoreError> {
+        let state = encode(fresh)?;
+        let transaction = self.db.transaction()?;
+        transaction.execute("DELETE FROM journal", [])?;
+        transaction.execute(
+            "INSERT OR REPLACE INTO snapshot VALUES (1, ?, ?, ?, ?, ?)",
+            params![epoch, ENGINE_VERSION, self.newest, house_ns, state],
+        )?;
+        write_group(&transaction, self.newest, group)?;
+        transaction.commit()?;
+        self.snapshot = self.newest;
+        self.trimmed = self.newest;
+        self.newest += group.events.len() as i64;
+        Ok(())
+    }
+
+    /// Writes the engine's state as of the newest event. The journal behind it is trimmed with the
+    /// commits that follow.
+    ///
+    /// # Errors
+    /// [`StoreError::Database`]; the snapshot before is still there then.
+    pub(crate) fn write_snapshot(
+        &mut self,
+        engine: &Engine,
+        house_ns: HouseNs,
+    ) -> Result<(), StoreError> {
+        let state = encode(engine)?;
+        self.db.execute(
+            "UPDATE snapshot SET engine_version = ?, seq = ?, house_ns = ?, state = ?",
+            params![ENGINE_VERSION, self.newest, house_ns, state],
+        )?;
+        self.snapshot = self.newest;
+        Ok(())
+    }
+
+    /// Events in the journal that the snapshot does not hold.
+    pub(crate) fn since_snapshot(&self) -> i64 {
+        self.newest - self.snapshot
+    }
+}
+
+fn encode<T: serde::Serialize>(value: &T) -> Result<Vec<u8>, StoreError> {
+    postcard::to_stdvec(value)
+        .map_err(|why| StoreError::Damaged("a value to be written", why.to_string()))
+}
+
+fn write_group(to: &Transaction<'_>, newest: i64, group: &Group) -> Result<(), StoreError> {
+    let mut journal = to.prepare_cached("INSERT INTO journal VALUES (?, ?, ?)")?;
+    for (seq, (house_ns, event)) in (newest + 1..).zip(&group.events) {
+        journal.execute(params![seq, house_ns, encode(event)?])?;
+        if let Event::OpenEpoch { epoch } = event {
+            to.execute("UPDATE snapshot SET epoch = ?", [epoch])?;
+        }
+        write_declaration(to, event)?;
+    }
+    // A plain insert: a number that was there already is an error, never overwritten.
+    let mut settings = to.prepare_cached("INSERT INTO settings VALUES (?, ?, ?, ?, ?)")?;
+    for (setting, explanation) in &group.settings {
+        let wire = convert::setting::setting_to_wire(setting).encode_to_vec();
+        let crossing = setting.crossing.to_string();
+        let row = params![
+            crossing,
+            setting.epoch,
+            setting.number,
+            wire,
+            explanation.join("\n")
+        ];
+        settings.execute(row)?;
+    }
+    Ok(())
+}
+
+fn write_declaration(to: &Transaction<'_>, event: &Event) -> Result<(), StoreError> {
+    let (kind, id, declaration) = match event {
+        Event::DeclareClock(clock) => {
+            let wire = convert::clock::declaration_to_wire(clock).encode_to_vec();
+            ("clock", &clock.id, Some(wire))
+        }
+        Event::DeclareCrossing(crossing) => {
+            let wire = convert::crossing::declaration_to_wire(crossing).encode_to_vec();
+            ("crossing", &crossing.id, Some(wire))
+        }
+        Event::DeleteClock(id) => ("clock", id, None),
+        Event::DeleteCrossing(id) => ("crossing", id, None),
+        _ => return Ok(()),
+    };
+    let id = id.to_string();
+    match declaration {
+        Some(wire) => to
+            .prepare_cached("INSERT OR REPLACE INTO declarations VALUES (?, ?, ?)")?
+            .execute(params![kind, id, wire])?,
+        None => to
+            .prepare_cached("DELETE FROM declarations WHERE kind = ? AND id = ?")?
+            .execute(params![kind, id])?,
+    };
+    Ok(())
+}
+
+fn trim(to: &Transaction<'_>, trimmed: i64, trim_to: i64) -> Result<(), StoreError> {
+    if trim_to > trimmed {
+        to.prepare_cached("DELETE FROM journal WHERE seq <= ?")?
+            .execute([trim_to])?;
+    }
+    Ok(())
+}
