@@ -247,20 +247,10 @@ impl Bank {
             let walk = self.walk_mut(j);
             let s2 = walk.yy + r;
             let u = (drift - walk.y) / s2.sqrt();
-            let (kx, ky) = (walk.xy, walk.yy);
             let pull = u.clamp(-clip, clip) / s2.sqrt();
-            walk.x += kx * pull;
-            walk.y += ky * pull;
-            walk.xx -= kx * kx / s2;
-            walk.xy -= kx * ky / s2;
-            walk.yy -= ky * ky / s2;
-            if let Some(k) = j.checked_sub(WALKS) {
-                let slope = &mut self.slopes[k];
-                let kd = slope.yd;
-                slope.d += kd * pull;
-                slope.xd -= kx * kd / s2;
-                slope.yd -= ky * kd / s2;
-                slope.dd -= kd * kd / s2;
+            match j.checked_sub(WALKS) {
+                None => self.walks[j].correct_drift(pull, r),
+                Some(k) => self.slopes[k].correct_drift(pull, r),
             }
             let loss = if u.abs() <= clip {
                 0.5 * u * u

@@ -334,11 +334,11 @@ fn check_ranges(m: &Measurement) -> Result<(), Refusal> {
                     "a finite number from -0.5 to 0.5",
                 );
             }
-            if !((1e-18..=1.0).contains(&deviation)) {
+            if !((1e-15..=1.0).contains(&deviation)) {
                 return refuse(
                     "deviation",
                     deviation.to_string(),
-                    "a finite number from 1e-18 to 1",
+                    "a finite number from 1e-15 to 1",
                 );
             }
         }

@@ -154,7 +154,7 @@ impl Link {
             } else {
                 None
             },
-            forecast: Forecast::of(self.forecast_part(&p, now_s)),
+            forecast: Forecast::of(self.forecast_part(&p, now_s, in_gap)),
         }
     }
 
@@ -288,13 +288,15 @@ impl Link {
         }
     }
 
-    fn forecast_part(&self, p: &Prediction, now_s: f64) -> Part {
+    /// In a gap growth has begun at the last row; otherwise it begins now.
+    fn forecast_part(&self, p: &Prediction, now_s: f64, in_gap: bool) -> Part {
         let age_s = match &self.stage {
+            _ if !in_gap => 0.0,
             Stage::Starting { .. } => 0.0,
             Stage::Phase { filter, .. } => (now_s - filter.t_s).max(0.0),
             Stage::Drift(filter) => filter.age_s(now_s),
         };
-        let drift_var = p.variance - p.growth.variance(age_s);
+        let drift_var = (p.variance - p.growth.variance(age_s)).max(0.0);
         Part {
             age_s,
             drift_var,

@@ -42,7 +42,7 @@ pub enum Measurement {
     Frequency {
         /// Fractional frequency offset from nominal; positive runs fast. Dimensionless, within ±0.5.
         drift: f64,
-        /// Standard deviation of `drift`, above zero.
+        /// Standard deviation of `drift`, from 1e-15 to 1.
         deviation: f64,
         /// Reference time the reading speaks of, ns.
         reference_ns: i64,

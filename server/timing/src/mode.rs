@@ -103,6 +103,19 @@ impl Walk {
         self.xy += kx * ky * c;
         self.yy += ky * ky * c;
     }
+
+    /// Corrects by a drift reading of variance `r`: `pull` is the innovation, clipped, over its
+    /// variance. What would cancel is multiplied instead, and the variances kept possible.
+    pub(crate) fn correct_drift(&mut self, pull: f64, r: f64) {
+        let s2 = self.yy + r;
+        let (kx, ky) = (self.xy, self.yy);
+        self.x += kx * pull;
+        self.y += ky * pull;
+        self.xy = kx * r / s2;
+        self.yy = ky * r / s2;
+        let least = 1.000_001 * self.xy * self.xy / self.yy;
+        self.xx = (self.xx - kx * kx / s2).max(least);
+    }
 }
 
 impl Slope {
@@ -143,5 +156,17 @@ impl Slope {
         self.xd += kx * kd * c;
         self.yd += ky * kd * c;
         self.dd += kd * kd * c;
+    }
+
+    /// Corrects by a drift reading, as [`Walk::correct_drift`].
+    pub(crate) fn correct_drift(&mut self, pull: f64, r: f64) {
+        let s2 = self.walk.yy + r;
+        let (kx, kd) = (self.walk.xy, self.yd);
+        self.walk.correct_drift(pull, r);
+        self.d += kd * pull;
+        self.yd = kd * r / s2;
+        self.xd -= kx * kd / s2;
+        let least = 1.000_001 * self.yd * self.yd / self.walk.yy;
+        self.dd = (self.dd - kd * kd / s2).max(least);
     }
 }
