@@ -24,6 +24,7 @@ mod oscillator;
 mod outcome;
 mod predict;
 pub mod sim;
+pub mod stability;
 mod start;
 
 pub use config::{ConfigError, LinkConfig};
