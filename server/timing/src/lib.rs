@@ -30,7 +30,7 @@ mod start;
 pub use config::{ConfigError, LinkConfig};
 pub use estimate::{Estimate, Reason, State, compose, exact};
 pub use forecast::Forecast;
-pub use link::Link;
+pub use link::{Link, hot_state_bytes};
 pub use measurement::Measurement;
 pub use oscillator::Oscillator;
 pub use outcome::{Event, Outcome, Refusal};

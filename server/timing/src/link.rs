@@ -313,6 +313,14 @@ impl Link {
     }
 }
 
+/// Bytes that every measurement touches, of a one-way and of a two-way link: the bank of modes
+/// and, for each direction, the noise and what is learned of it.
+pub fn hot_state_bytes() -> (usize, usize) {
+    let bank = size_of::<crate::bank::Bank>();
+    let direction = size_of::<crate::direction::Direction>();
+    (bank + direction, bank + 2 * direction)
+}
+
 fn variance(deviation: f64) -> f64 {
     deviation * deviation
 }
