@@ -2,7 +2,8 @@
 //!
 //! **Theorem.** For a fixed M the nearest L is t·M rounded to the nearest integer (a half goes down, to the
 //! smaller L), held within 1 to `max_l`: the largest L with (2L − 1)·D < 2·n·M. For powers of two the grids
-//! nest, so only the finest grid on which that L is within the bound, and the next, can win.
+//! nest, so the finest grid on which that L is within the bound holds the nearest, or the next one, where L is
+//! held at its bound; a tie's other side is on the grid before.
 //!
 //! **Cost.** One division while n·M fits 64 bits; else a binary search with one product a step.
 //! **Check.** [`is_nearest_for_m`] needs two comparisons of products.
@@ -65,9 +66,12 @@ pub fn best_power_of_two(target: &Exact, bounds: &Bounds) -> Fraction {
     // Finer is never worse until L meets its bound: below that, the first grid where it does is the last.
     let finest = bounds.max_m().ilog2();
     let is_held = |bit: u32| is_past_midpoint(target, bounds.max_l() + 1, 1 << bit);
-    let first_held = (0..=finest).find(|&bit| is_held(bit)).unwrap_or(finest);
-    let coarser = on_grid(first_held.saturating_sub(1));
-    nearer_of(coarser, on_grid(first_held), target)
+    let last = (0..=finest).find(|&bit| is_held(bit)).unwrap_or(finest);
+    // Of a tie on a grid, the ratio with the smaller M is rounded to on the grid before it.
+    let candidates = (last.saturating_sub(2)..last).map(on_grid);
+    candidates.fold(on_grid(last), |nearest, next| {
+        nearer_of(nearest, next, target)
+    })
 }
 
 /// t·m rounded, halves down, if it can be done in 64 bits.

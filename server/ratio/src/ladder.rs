@@ -15,8 +15,8 @@
 use serde::{Deserialize, Serialize};
 
 use crate::bracket::{Node, descend};
-use crate::nearest::{compare_distances, nearer};
-use crate::{Bounds, Exact, Fraction, residual, smooth};
+use crate::nearest::compare_distances;
+use crate::{Bounds, Exact, Fraction, front, residual};
 
 /// A run of ratios, each nearer to the target than all before it: `first + i·step` by components.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
@@ -47,6 +47,11 @@ impl Rung {
             .expect("a run has at least one ratio")
     }
 
+    /// A run of one ratio.
+    pub(crate) fn single(target: &Exact, ratio: Fraction) -> Self {
+        Self::new(target, ratio, Node { l: 0, m: 0 }, 1)
+    }
+
     fn new(target: &Exact, first: Fraction, step: Node, count: u64) -> Self {
         let mut rung = Self {
             first,
@@ -73,13 +78,11 @@ impl Rung {
 /// ```
 pub fn ladder(target: &Exact, bounds: &Bounds) -> Vec<Rung> {
     if bounds.largest_prime().is_some() {
-        smooth_ladder(target, bounds)
-    } else {
-        run_ladder(target, bounds)
+        // One run for each ratio; M as the cost.
+        return front(target, bounds, |_, m| m)
+            .map(|point| Rung::single(target, point.ratio))
+            .collect();
     }
-}
-
-fn run_ladder(target: &Exact, bounds: &Bounds) -> Vec<Rung> {
     let mut rungs = Vec::new();
     let mut new_below = false;
     descend(*target.numer(), *target.denom(), bounds, |run| {
@@ -117,21 +120,6 @@ fn run_ladder(target: &Exact, bounds: &Bounds) -> Vec<Rung> {
             rungs.push(Rung::new(target, first, step, run.taken - high + 1));
         }
         new_below = !new_below;
-    });
-    rungs
-}
-
-fn smooth_ladder(target: &Exact, bounds: &Bounds) -> Vec<Rung> {
-    let mut rungs: Vec<Rung> = Vec::new();
-    smooth::visit_flanks(target, bounds, |flanks| {
-        let ratio = nearer(&flanks, target).reduced();
-        let rung = Rung::new(target, ratio, Node { l: 0, m: 0 }, 1);
-        if rungs
-            .last()
-            .is_none_or(|last| rung.last_residual.abs() < last.last_residual.abs())
-        {
-            rungs.push(rung);
-        }
     });
     rungs
 }

@@ -4,8 +4,12 @@
 //! divisors, though, so reducing a fraction never leaves them, and the sorted lists of allowed L and of
 //! allowed M hold every answer.
 //!
-//! **Method.** Two pointers: M runs up its list while L follows target·M up its own. Cost: the length of
-//! both lists (at most 2^20 each), after a sieve of the larger bound.
+//! **Theorem.** A ratio above the target is beaten, in error and in both parts, unless its L is the smallest
+//! allowed for its M; one below unless its M is the smallest allowed for its L. So those two lists of
+//! candidates hold every nearest ratio, and the whole front for every cost.
+//!
+//! **Method.** Two pointers: M runs up its list while L follows target·M up its own, and the other way round.
+//! Cost: the length of both lists (at most 2^20 each), after a sieve of the larger bound.
 //!
 //! **Corner case.** 1/1 is always allowed, so there always is an answer.
 
@@ -25,50 +29,57 @@ pub(crate) fn best(target: &Exact, bounds: &Bounds) -> Best {
 
 /// The allowed ratios nearest to the target on either side (or sentinels); equal ones are both ends.
 pub(crate) fn neighbours(target: &Exact, bounds: &Bounds) -> Bracket {
-    let mut nearest = Bracket {
-        below: Node::ZERO,
-        above: Node::INFINITY,
-    };
-    visit_flanks(target, bounds, |flanks| {
-        if is_less(nearest.below, flanks.below) {
-            nearest.below = flanks.below;
-        }
-        if is_less(flanks.above, nearest.above) {
-            nearest.above = flanks.above;
-        }
-    });
-    nearest
+    let Candidates { below, above } = candidates(target, bounds);
+    let higher = |a: Node, b: Node| if is_less(a, b) { b } else { a };
+    let lower = |a: Node, b: Node| if is_less(b, a) { b } else { a };
+    Bracket {
+        below: below.into_iter().fold(Node::ZERO, higher),
+        above: above.into_iter().fold(Node::INFINITY, lower),
+    }
 }
 
-/// For every allowed M, ascending, the allowed L/M on either side of the target, reduced to lowest terms
-/// only by what the caller makes of it; L is 0 or M is 0 where there is none.
-pub(crate) fn visit_flanks(target: &Exact, bounds: &Bounds, mut visit: impl FnMut(Bracket)) {
+/// The ratios that may be nearest at their cost, as written, not reduced; those equal to the target are in
+/// both lists, the one in lowest terms first.
+#[derive(Debug)]
+pub(crate) struct Candidates {
+    /// For each allowed L the smallest allowed M with L/M ≤ target.
+    pub(crate) below: Vec<Node>,
+    /// For each allowed M the smallest allowed L with L/M ≥ target.
+    pub(crate) above: Vec<Node>,
+}
+
+pub(crate) fn candidates(target: &Exact, bounds: &Bounds) -> Candidates {
     let allowed_l = smooth_numbers(bounds.max_l(), bounds.largest_prime());
+    let allowed_m = smooth_numbers(bounds.max_m(), bounds.largest_prime());
+    let below = follow(&allowed_l, &allowed_m, |l, m| {
+        let node = Node { l, m };
+        node.compare_target(target).is_ge().then_some(node)
+    });
+    let above = follow(&allowed_m, &allowed_l, |m, l| {
+        let node = Node { l, m };
+        node.compare_target(target).is_le().then_some(node)
+    });
+    Candidates { below, above }
+}
+
+/// For each leader the first follower that fits; as leaders grow, followers never step back.
+fn follow(
+    leaders: &[u64],
+    followers: &[u64],
+    fits: impl Fn(u64, u64) -> Option<Node>,
+) -> Vec<Node> {
     let mut next = 0;
-    for m in smooth_numbers(bounds.max_m(), bounds.largest_prime()) {
-        while next < allowed_l.len()
-            && (Node {
-                l: allowed_l[next],
-                m,
-            })
-            .compare_target(target)
-            .is_gt()
-        {
+    let mut found = Vec::new();
+    for &leader in leaders {
+        while let Some(&follower) = followers.get(next) {
+            if let Some(node) = fits(leader, follower) {
+                found.push(node);
+                break;
+            }
             next += 1;
         }
-        // allowed_l[next] is the first with L/M ≥ target.
-        let above = allowed_l
-            .get(next)
-            .map_or(Node::INFINITY, |&l| Node { l, m });
-        let exact = above.m != 0 && above.compare_target(target).is_eq();
-        let below = if exact {
-            above
-        } else {
-            next.checked_sub(1)
-                .map_or(Node::ZERO, |i| Node { l: allowed_l[i], m })
-        };
-        visit(Bracket { below, above });
     }
+    found
 }
 
 /// The smallest and the largest ratio allowed.
