@@ -59,8 +59,8 @@ impl Engine {
         let Some(member) = self.look_at(id, now, lead_ns, effects) else {
             return;
         };
-        let step_ns = self.step_ns(&member);
-        self.settle(member, now, lead_ns, effects);
+        let ends = self.settle(member, now, lead_ns, effects);
+        let step_ns = self.step_ns(id, &ends);
         self.schedule
             .set(Subject::Crossing(id.clone()), now.saturating_add(step_ns));
     }
@@ -88,9 +88,12 @@ impl Engine {
                 self.change_along(member, now, lead_ns);
             }
         }
-        let step_ns = members.iter().map(|member| self.step_ns(member)).min();
+        let mut step_ns = None;
         for member in members {
-            self.settle(member, now, lead_ns, effects);
+            let id = member.id.clone();
+            let ends = self.settle(member, now, lead_ns, effects);
+            let own_ns = self.step_ns(&id, &ends);
+            step_ns = Some(step_ns.map_or(own_ns, |least_ns: i64| least_ns.min(own_ns)));
         }
         if let Some(step_ns) = step_ns {
             self.schedule
@@ -131,46 +134,32 @@ impl Engine {
         })
     }
 
-    fn step_ns(&self, member: &Member) -> i64 {
-        let record = self.crossings.get(&member.id);
-        record.map_or(i64::MAX, |record| {
-            (record.step_s(&member.ends) * 1e9) as i64
-        })
+    fn step_ns(&self, id: &Id, ends: &Ends) -> i64 {
+        let record = self.crossings.get(id);
+        record.map_or(i64::MAX, |record| (record.step_s(ends) * 1e9) as i64)
     }
 
     /// Does what was judged.
-    fn settle(&mut self, member: Member, now: HouseNs, lead_ns: i64, effects: &mut Effects) {
-        let stamp = Stamp {
-            epoch: self.epoch,
-            decided_ns: now,
-            effect_ns: now.saturating_add(lead_ns),
-        };
-        let Some(record) = self.crossings.get_mut(&member.id) else {
-            return;
-        };
-        let (state, reason) = match member.judgement {
-            Judgement::Pending => return,
+    fn settle(&mut self, member: Member, now: HouseNs, lead_ns: i64, effects: &mut Effects) -> Ends {
+        let Member { id, ends, judgement } = member;
+        let stamp = Stamp { epoch: self.epoch, decided_ns: now, effect_ns: now.saturating_add(lead_ns) };
+        let Some(record) = self.crossings.get_mut(&id) else { return ends };
+        let (state, reason) = match judgement {
+            Judgement::Pending => return ends,
             Judgement::Stay { state, reason } => {
-                if let Some(due) = record
-                    .newest
-                    .clone()
-                    .filter(|newest| newest.review_ns <= now)
-                {
-                    effects
-                        .settings
-                        .push(record.renew(&due, stamp, &member.ends));
+                if let Some(due) = record.newest.clone().filter(|newest| newest.review_ns <= now) {
+                    effects.settings.push(record.renew(&due, stamp, &ends));
                 }
                 (state, reason)
             }
             Judgement::Change { choice, reason } => {
                 let standing = (choice.state, choice.reason.clone());
-                effects
-                    .settings
-                    .push(record.issue(*choice, reason, stamp, &member.ends));
+                effects.settings.push(record.issue(*choice, reason, stamp, &ends));
                 standing
             }
         };
         effects.transitions.extend(record.stand(state, reason));
+        ends
     }
 }
 

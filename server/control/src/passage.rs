@@ -15,6 +15,7 @@ use serde::{Deserialize, Serialize};
 
 use crate::HouseNs;
 use crate::clocks::Traced;
+use crate::clocks::PHASE_DRIFT_CORRELATION;
 use crate::link::Lineage;
 
 /// The past is revised only for a real gain in certainty: each revision is a jump.
@@ -70,7 +71,7 @@ impl Passage {
             0.0
         };
         self.phase_variance_ns2 = deviation_ns * deviation_ns;
-        let backward_variance = self.phase_variance_ns2 + drift_variance_ns2(estimate, span_s);
+        let backward_variance = backward_variance_ns2(estimate, deviation_ns, span_s);
         match self.last {
             Some((_, phase_ns)) if backward_variance > WORTH_REVISING * self.entry_variance_ns2 => {
                 self.gained_ns += estimate.phase_ns - phase_ns;
@@ -109,7 +110,10 @@ impl Passage {
     }
 }
 
-/// Variance of the clock time gained over a span, forwards or backwards, ns².
-fn drift_variance_ns2(estimate: &Estimate, span_s: f64) -> f64 {
-    estimate.predict_variance(span_s) / (SECONDS * SECONDS)
+/// Variance of the phase at the beginning of a span, run backwards from now with the drift, ns².
+fn backward_variance_ns2(estimate: &Estimate, deviation_ns: f64, span_s: f64) -> f64 {
+    let by_drift_ns = estimate.deviation * span_s / SECONDS;
+    let covariance = PHASE_DRIFT_CORRELATION * deviation_ns * by_drift_ns;
+    let grown = estimate.predict_variance(span_s) / (SECONDS * SECONDS);
+    deviation_ns * deviation_ns - 2.0 * covariance + grown
 }

@@ -126,6 +126,7 @@ impl CrossingRecord {
             .as_ref()
             .is_some_and(|s| s.evidence.expected_hold_s < SHORT_HOLD_S);
         match self.state {
+            CrossingState::Waiting if ends.source.measured && ends.sink.measured => STEPS_S.0,
             CrossingState::Waiting | CrossingState::OutOfBounds => STEPS_S.1,
             CrossingState::Holding if ends.target.certain => STEPS_S.1,
             CrossingState::Holding if short => STEPS_S.0,

@@ -3,14 +3,10 @@
 use ratewright_ratio::Exact;
 use ratewright_timing::Estimate;
 
-use crate::clocks::Traced;
+use crate::clocks::{PHASE_DRIFT_CORRELATION, Traced};
 use crate::ledger::Ledger;
 use crate::signs;
 use crate::target::Target;
-
-/// Correlation of phase and drift in an estimate that white timestamp noise and a random walk of
-/// the drift have made: 1/√2 in the steady state of that Kalman filter. Estimates don't carry it.
-const PHASE_DRIFT_CORRELATION: f64 = core::f64::consts::FRAC_1_SQRT_2;
 
 /// Phase error, target and their uncertainty, from now on. Sink samples and seconds.
 #[derive(Clone, Debug)]
