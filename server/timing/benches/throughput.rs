@@ -110,7 +110,7 @@ fn plain_kalman(readings: &[Measurement]) {
 }
 
 fn main() {
-    let (one_way, two_way) = hot_state_bytes();
+    let ([one_way, two_way], evidence) = hot_state_bytes();
     println!("kind      measurements/s   plain Kalman/s   ratio   hot state");
     for (name, is_two_way, bytes) in [("one-way", false, one_way), ("two-way", true, two_way)] {
         let readings = readings(is_two_way);
@@ -121,5 +121,6 @@ fn main() {
             plain / own
         );
     }
+    println!("evidence  {evidence} bytes besides, for each direction");
     println!("link      {} bytes in all", size_of::<Link>());
 }

@@ -46,7 +46,7 @@ const JUMP_FLOOR: f64 = 1e-6;
 /// Time over which weights fade to their prior, s.
 const MEMORY_S: f64 = 14_400.0;
 /// Weights fade in steps of at least this, s.
-const FADE_STEP_S: f64 = 8.0;
+const FADE_STEP_S: f64 = 30.0;
 
 /// States and weights of all modes.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
@@ -60,7 +60,7 @@ pub(crate) struct Bank {
 }
 
 /// Mean and variance over the modes.
-#[derive(Clone, Copy, Debug)]
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
 pub(crate) struct Mixture {
     pub(crate) x: f64,
     pub(crate) y: f64,
@@ -265,7 +265,7 @@ impl Bank {
 
     fn weigh(&mut self, gains: &[f64; MODES]) {
         for (weight, &gain) in self.weights.iter_mut().zip(gains) {
-            *weight *= libm::exp(gain.clamp(-600.0, 600.0));
+            *weight *= exp_near_nought(gain);
         }
         self.normalise();
     }
@@ -298,6 +298,15 @@ impl Bank {
             (slope.d, slope.xd, slope.yd, slope.dd) = (0.0, 0.0, 0.0, settled);
         }
     }
+}
+
+/// exp(a), by its series where that is exact to 1e-11; a is kept within ±600.
+#[inline]
+fn exp_near_nought(a: f64) -> f64 {
+    if a.abs() < 0.02 {
+        return 1.0 + a * (1.0 + a * (0.5 + a * (1.0 / 6.0 + a * (1.0 / 24.0))));
+    }
+    libm::exp(a.clamp(-600.0, 600.0))
 }
 
 fn scaled_walk(noise: WalkNoise, scale: f64) -> WalkNoise {

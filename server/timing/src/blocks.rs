@@ -84,7 +84,7 @@ impl Blocks {
         if self.early.len() < BLOCK * START_ROWS {
             return outcome;
         }
-        *filter = self.begin_again(filter.bank.mixture().y, setup);
+        *filter = self.begin_again(filter.latest().y, setup);
         outcome
     }
 
@@ -100,7 +100,7 @@ impl Blocks {
     }
 
     fn gather(&mut self, filter: &mut Filter, row: StartRow, in_gap: bool) -> Outcome {
-        let drift = filter.bank.mixture().y;
+        let drift = filter.latest().y;
         let Some(block) = &mut self.block else {
             self.block = Some(Block::new(&row, drift, in_gap));
             return Outcome::Used;

@@ -12,6 +12,8 @@ use crate::start::{Start, StartRow};
 
 /// Rows before a jump of the drift is believed.
 const JUMP_ROWS: u64 = 24;
+/// Rows for which the jump mode must explain nearly everything.
+const JUMP_HOLD: u32 = 8;
 /// Memory of the average weights that a jump returns to, s.
 const WEIGHT_MEMORY_S: f64 = 900.0;
 /// A mode of next to no weight begins anew this often, s.
@@ -39,10 +41,13 @@ pub(crate) struct Filter {
     pub(crate) structure: Structure,
     average_weights: [f64; MODES],
     rows_since_event: u64,
+    jump_held: u32,
     outlier_share: f64,
     since_reseed_s: f64,
     pub(crate) mean_step_s: f64,
     least_sigma: f64,
+    /// The bank's mixture after the last row.
+    latest: Mixture,
 }
 
 /// One-way readings are late, so z is too small; going out and coming back they err apart.
@@ -66,14 +71,17 @@ impl Filter {
         } else {
             middle
         };
+        let bank = Bank::new(x, phase_var, setup.prior_var, setup.scale);
         let mut filter = Filter {
-            bank: Bank::new(x, phase_var, setup.prior_var, setup.scale),
+            latest: bank.mixture(),
+            bank,
             t_s: first.t_s,
             directions,
             two_way,
             structure: Structure::new(setup.scale),
             average_weights: PRIOR,
             rows_since_event: 0,
+            jump_held: 0,
             outlier_share: 0.0,
             since_reseed_s: 0.0,
             mean_step_s: 0.0,
@@ -102,11 +110,18 @@ impl Filter {
         let outlying = verdicts[..count].contains(&Verdict::Outlier);
         self.outlier_share += ((outlying as u8 as f64) - self.outlier_share) / 32.0;
         let outcome = self.conclude(&verdicts[..count]);
+        self.latest = self.bank.mixture();
         self.watch_drift(dt);
         if self.jumped() {
+            self.latest = self.bank.mixture();
             return Outcome::Event(Event::FrequencyJump);
         }
         outcome
+    }
+
+    /// Mean and variance over the modes after the last row.
+    pub(crate) fn latest(&self) -> &Mixture {
+        &self.latest
     }
 
     /// Whether nothing fits any more and the link should begin anew.
@@ -201,7 +216,7 @@ impl Filter {
 
     /// Upkeep that looks at the drift: structure function, average weights, dead modes.
     fn watch_drift(&mut self, dt: f64) {
-        let mixture = self.bank.mixture();
+        let mixture = self.latest;
         let belief = Belief {
             t_s: self.t_s,
             y: mixture.y,
@@ -259,8 +274,14 @@ impl Filter {
     /// Follows a jump of the drift once the jump mode explains nearly everything.
     fn jumped(&mut self) -> bool {
         if self.rows_since_event < JUMP_ROWS || self.bank.weights()[JUMP] <= 0.9 {
+            self.jump_held = 0;
             return false;
         }
+        self.jump_held += 1;
+        if self.jump_held < JUMP_HOLD {
+            return false;
+        }
+        self.jump_held = 0;
         let mut weights = PRIOR;
         for (weight, average) in weights.iter_mut().zip(self.average_weights) {
             *weight = 0.3 * *weight + 0.7 * average;

@@ -245,7 +245,7 @@ impl Link {
     fn drift_ppm(&self) -> f64 {
         match &self.stage {
             Stage::Starting { start, .. } => start.line(self.intake.quantum_us()).y,
-            Stage::Phase { filter, .. } => filter.bank.mixture().y,
+            Stage::Phase { filter, .. } => filter.latest().y,
             Stage::Drift(filter) => filter.bank().mixture().y,
         }
     }
@@ -254,7 +254,7 @@ impl Link {
     fn quick_half_width(&self) -> f64 {
         let variance = match &self.stage {
             Stage::Starting { start, .. } => start.line(self.intake.quantum_us()).yy,
-            Stage::Phase { filter, .. } => filter.bank.mixture().yy,
+            Stage::Phase { filter, .. } => filter.latest().yy,
             Stage::Drift(filter) => filter.bank().mixture().yy,
         };
         1e-6 * WIDEN * normal_half_width(variance.sqrt())
@@ -313,12 +313,17 @@ impl Link {
     }
 }
 
-/// Bytes that every measurement touches, of a one-way and of a two-way link: the bank of modes
-/// and, for each direction, the noise and what is learned of it.
-pub fn hot_state_bytes() -> (usize, usize) {
-    let bank = size_of::<crate::bank::Bank>();
-    let direction = size_of::<crate::direction::Direction>();
-    (bank + direction, bank + 2 * direction)
+/// Bytes of state of a one-way and of a two-way link that the arithmetic of every measurement
+/// goes through: modes, and noise and what is learned of it for each direction. Second, the
+/// bytes besides, for each direction, that gather evidence of events.
+pub fn hot_state_bytes() -> ([usize; 2], usize) {
+    use crate::{bank::Bank, direction::Direction, learner::Learner, noise::Noise};
+    let noise = size_of::<Noise>() + size_of::<Learner>();
+    let bank = size_of::<Bank>();
+    (
+        [bank + noise, bank + 2 * noise],
+        size_of::<Direction>() - noise,
+    )
 }
 
 fn variance(deviation: f64) -> f64 {

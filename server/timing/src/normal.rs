@@ -11,6 +11,7 @@ const TWO_OVER_SQRT_PI: f64 = core::f64::consts::FRAC_2_SQRT_PI;
 ///
 /// Taylor's series about the nearest multiple of 1/8: with y = erfcx, y′ = 2xy − 2/√π and
 /// y⁽ⁿ⁺¹⁾ = 2xy⁽ⁿ⁾ + 2ny⁽ⁿ⁻¹⁾. Beyond 12 the asymptotic series.
+#[inline]
 pub(crate) fn erfcx(x: f64) -> f64 {
     debug_assert!(x >= 0.0);
     if x >= 12.0 {
