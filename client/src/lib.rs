@@ -1,1 +1,75 @@
-//! client
+//! Client of a ratewright daemon: report readings, get, watch and follow settings, verify them.
+//!
+//! Everything starts at [`Client::connect`].
+//!
+//! | to | use |
+//! | --- | --- |
+//! | send measurements | [`Client::report`]: a [`Reporter`] for readings and its [`Receipts`] |
+//! | hear of settings | [`Client::watch`]: a [`Watch`] |
+//! | apply settings and say so | [`Client::follow`]: a [`Follow`] |
+//! | look once | [`Client::clock`], [`Client::crossing`], [`Client::setting`], [`Client::explain`] |
+//! | compare a clock with house time | [`Client::exchange_time`] |
+//!
+//! Streams reconnect by themselves with a jittered back-off. No setting is handed on whose
+//! certificate does not prove it, and none that is older than one handed on before.
+//!
+//! # Units and signs
+//! Times end in `_ns`; house time is the daemon's. Drifts and residuals are dimensionless, and a
+//! positive drift runs fast: true rate = nominal · (1 + drift).
+//!
+//! # Examples
+//! Hold a crossing at whatever the daemon decides:
+//! ```no_run
+//! use ratewright_client::{Client, Id, Update};
+//! # async fn example() -> Result<(), Box<dyn std::error::Error>> {
+//! let client = Client::connect("http://127.0.0.1:7420").await?;
+//! let mut watch = client.watch(&[Id::new("stage-to-truck")?]);
+//! loop {
+//!     match watch.next().await? {
+//!         Update::Setting(setting) => println!("{}: {}", setting.crossing, setting.wanted),
+//!         Update::Refused { name, error } => eprintln!("{name} is not to be run: {error}"),
+//!         Update::Lost(loss) => eprintln!("{loss}"),
+//!         _ => {}
+//!     }
+//! }
+//! # }
+//! ```
+#![allow(
+    clippy::disallowed_methods,
+    reason = "the client is a shell crate: it reads clocks and opens sockets"
+)]
+
+mod backoff;
+mod batch;
+mod client;
+mod error;
+mod facility;
+mod feed;
+mod follow;
+mod id;
+mod newest;
+mod reading;
+mod report;
+mod setting;
+mod transport;
+mod verify;
+mod watch;
+mod wire;
+
+pub use client::Client;
+pub use error::{CallError, Refusal, RefusalKind, Violation};
+pub use facility::{
+    Clock, ClockDeclaration, Crossing, CrossingDeclaration, CrossingState, CrossingStatus,
+    Estimate, EstimateState, Realisation,
+};
+pub use feed::{Freshness, Loss, Update};
+pub use follow::Follow;
+pub use id::{Id, IdError};
+pub use reading::{Exchange, Measurement, Reading, Reference};
+pub use report::{
+    Answer, Closed, Promise, Receipt, Receipts, RefusedReadings, ReportOptions, Reporter,
+};
+pub use setting::{Evidence, Proof, Realised, Reason, Setting, SettingNumber};
+pub use verify::VerifyError;
+pub use watch::Watch;
+pub use wire::WireError;

@@ -1,2 +1,70 @@
-//! cli
-fn main() {}
+//! The command line of ratewright.
+#![allow(
+    clippy::disallowed_methods,
+    clippy::disallowed_types,
+    reason = "a shell crate: it reads clocks, files and standard input"
+)]
+#![allow(
+    clippy::print_stdout,
+    clippy::print_stderr,
+    reason = "printing is what it is for"
+)]
+
+mod decimal;
+mod explain;
+mod failure;
+mod json;
+mod plan;
+mod probe;
+mod report;
+mod server;
+mod show;
+mod standing;
+mod watch;
+
+use std::process::ExitCode;
+
+use clap::{Parser, Subcommand};
+
+use crate::failure::Failure;
+
+/// Finds, hands out and explains exact resampling ratios for clocks that drift.
+///
+/// Exit status: 0 all went well; 1 something was refused or failed; 2 the command was not
+/// understood.
+#[derive(Debug, Parser)]
+#[command(name = "ratewright", version, max_term_width = 100)]
+struct Arguments {
+    #[command(subcommand)]
+    command: Command,
+}
+
+#[derive(Debug, Subcommand)]
+enum Command {
+    Plan(plan::Arguments),
+    Report(report::Arguments),
+    Standing(standing::Arguments),
+    Watch(watch::Arguments),
+    Explain(explain::Arguments),
+    Probe(probe::Arguments),
+}
+
+#[tokio::main]
+async fn main() -> ExitCode {
+    let done = match Arguments::parse().command {
+        Command::Plan(arguments) => plan::run(&arguments),
+        Command::Report(arguments) => report::run(&arguments).await,
+        Command::Standing(arguments) => standing::run(&arguments).await,
+        Command::Watch(arguments) => watch::run(&arguments).await,
+        Command::Explain(arguments) => explain::run(&arguments).await,
+        Command::Probe(arguments) => probe::run(&arguments).await,
+    };
+    match done {
+        Ok(()) => ExitCode::SUCCESS,
+        Err(Failure::Quiet) => ExitCode::from(1),
+        Err(failure) => {
+            eprintln!("ratewright: {failure}");
+            ExitCode::from(failure.status())
+        }
+    }
+}

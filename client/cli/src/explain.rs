@@ -1,0 +1,46 @@
+//! `ratewright explain`: why a ratio was chosen.
+
+use clap::Args;
+use serde_json::json;
+
+use crate::failure::Failure;
+use crate::server::{self, Server, SettingName};
+use crate::{json, show};
+
+/// Tells why a setting was chosen
+#[derive(Debug, Args)]
+pub(crate) struct Arguments {
+    /// A crossing, for its newest setting, or CROSSING/EPOCH-NUMBER
+    #[arg(value_name = "CROSSING|SETTING", value_parser = server::setting)]
+    setting: SettingName,
+    /// Print JSON for a machine
+    #[arg(long)]
+    json: bool,
+    #[command(flatten)]
+    server: Server,
+}
+
+/// Prints the daemon's explanation.
+pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
+    let client = arguments.server.connect().await?;
+    let SettingName { crossing, number } = &arguments.setting;
+    let (setting, lines) = client.explain(crossing, *number).await?;
+    if arguments.json {
+        println!(
+            "{:#}",
+            json!({ "setting": json::setting(&setting), "lines": lines })
+        );
+        return Ok(());
+    }
+    let runs = show::realised(&setting.realised);
+    println!(
+        "{} {}  {runs}  {}",
+        setting.crossing,
+        setting.number,
+        show::offset(setting.residual)
+    );
+    for line in lines {
+        println!("  {line}");
+    }
+    Ok(())
+}

@@ -1,0 +1,46 @@
+//! What ends a command early.
+
+use ratewright_client::{CallError, Closed};
+use thiserror::Error;
+
+/// Why a command failed.
+#[derive(Debug, Error)]
+pub(crate) enum Failure {
+    /// The command makes no sense as it was typed; the text says what would.
+    #[error("{0}")]
+    Usage(String),
+    /// Something outside could not be done.
+    #[error("{0}")]
+    Failed(String),
+    /// What went wrong was already said in the command's own output.
+    #[error("see above")]
+    Quiet,
+}
+
+impl Failure {
+    /// The exit status.
+    pub(crate) fn status(&self) -> u8 {
+        match self {
+            Self::Usage(_) => 2,
+            Self::Failed(_) | Self::Quiet => 1,
+        }
+    }
+}
+
+impl From<CallError> for Failure {
+    fn from(error: CallError) -> Self {
+        match error {
+            CallError::Unreachable { address, reason } => Self::Failed(format!(
+                "nobody answers at {address} ({reason}); start ratewrightd there, or name another \
+                 place with --server http://HOST:PORT"
+            )),
+            other => Self::Failed(other.to_string()),
+        }
+    }
+}
+
+impl From<Closed> for Failure {
+    fn from(closed: Closed) -> Self {
+        Self::Failed(closed.to_string())
+    }
+}

@@ -1,0 +1,228 @@
+//! `ratewright report`: sending recorded or piped readings.
+
+mod columns;
+mod declare;
+mod rows;
+mod summary;
+
+use std::fs::File;
+use std::io::Read;
+use std::path::{Path, PathBuf};
+
+use clap::{Args, ValueEnum};
+use num_rational::Ratio;
+use ratewright_client::{
+    Answer, Client, Id, Measurement, Promise, Reading, Receipts, Reference, ReportOptions,
+};
+use ratewright_ratio::parse_rate;
+use tokio::sync::mpsc;
+
+use crate::failure::Failure;
+use crate::server::{self, Server};
+use columns::Columns;
+pub(crate) use declare::ensure;
+use summary::Summary;
+
+/// Rows read ahead of what is sent.
+const ROWS: usize = 4096;
+
+/// Reports readings of a clock from a CSV file or from standard input
+///
+/// The first line names the columns, and they tell what was measured:
+///
+///   count,reference_ns               a tick counter read against the reference
+///   t1_ns,t2_ns,t3_ns,t4_ns          two-way exchanges: sent and received again on the clock (t1,
+///                                    t4), received and answered on the reference (t2, t3)
+///   drift_ppm,deviation_ppm,reference_ns
+///                                    drifts measured by other means, positive runs fast
+///
+/// A column `sequence` (growing from 1) is used if there is one; other columns are left alone.
+/// With --count-column, --reference-column and --reference-unit a record of another make is read
+/// as it stands. A record with a time base of its own is reported against a clock that stands for
+/// it: see --declare-reference.
+#[derive(Debug, Args)]
+#[command(verbatim_doc_comment)]
+pub(crate) struct Arguments {
+    /// The measured clock
+    #[arg(value_parser = server::clock)]
+    clock: Id,
+    /// CSV file; standard input if there is none, or for -
+    file: Option<PathBuf>,
+    /// What the clock was read against: house, or a clock
+    #[arg(long, value_name = "house|CLOCK", default_value = "house", value_parser = reference)]
+    reference: Reference,
+    /// Which probe measured, if there are several
+    #[arg(long, value_name = "ID")]
+    probe: Option<Id>,
+    /// Width at which the counter wraps
+    #[arg(long, value_name = "BITS", default_value_t = 64, value_parser = clap::value_parser!(u32).range(1..=64))]
+    bits: u32,
+    /// Column that holds the counter
+    #[arg(long, value_name = "COLUMN", default_value = "count")]
+    count_column: String,
+    /// Column that holds the reference's time
+    #[arg(long, value_name = "COLUMN", default_value = "reference_ns")]
+    reference_column: String,
+    /// Unit of the reference's time
+    #[arg(long, value_name = "UNIT", default_value = "ns")]
+    reference_unit: Unit,
+    /// Declare the clock first, with this nominal rate, unless it is declared already
+    #[arg(long, value_name = "RATE", value_parser = rate)]
+    declare: Option<Ratio<u64>>,
+    /// Declare the reference first, as an exact clock: the time base of a record
+    #[arg(long)]
+    declare_reference: bool,
+    /// What receipts must promise
+    #[arg(long, value_name = "PROMISE", default_value = "durable")]
+    receipt: Receipt,
+    /// Print JSON for a machine
+    #[arg(long)]
+    json: bool,
+    #[command(flatten)]
+    server: Server,
+}
+
+/// Units of time.
+#[derive(Clone, Copy, Debug, ValueEnum)]
+enum Unit {
+    Ns,
+    Us,
+    Ms,
+    S,
+}
+
+impl Unit {
+    fn ns(self) -> i128 {
+        match self {
+            Self::Ns => 1,
+            Self::Us => 1_000,
+            Self::Ms => 1_000_000,
+            Self::S => 1_000_000_000,
+        }
+    }
+}
+
+/// What a receipt promises.
+#[derive(Clone, Copy, Debug, ValueEnum)]
+enum Receipt {
+    /// The readings are on disk
+    Durable,
+    /// The readings have changed the estimates
+    Applied,
+}
+
+fn rate(text: &str) -> Result<Ratio<u64>, String> {
+    parse_rate(text).map_err(|error| error.to_string())
+}
+
+fn reference(text: &str) -> Result<Reference, String> {
+    match text {
+        "house" => Ok(Reference::House),
+        text => server::clock(text).map(Reference::Clock),
+    }
+}
+
+/// A row of the file: a measurement, or what is wrong with it.
+struct Row {
+    line: u64,
+    content: Result<(Option<u64>, Measurement), String>,
+}
+
+/// Sends the readings and prints what became of them.
+pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
+    let mut rows = open(arguments)?;
+    let client = arguments.server.connect().await?;
+    declare::declare(&client, arguments).await?;
+    let promise = match arguments.receipt {
+        Receipt::Durable => Promise::Durable,
+        Receipt::Applied => Promise::Applied,
+    };
+    let (mut reporter, receipts) = client.report(ReportOptions {
+        promise,
+        ..ReportOptions::default()
+    });
+    let receipts = tokio::spawn(take(receipts));
+
+    let mut summary = Summary::default();
+    while let Some(row) = rows.recv().await {
+        match row.content {
+            Ok((sequence, measurement)) => {
+                let reading = Reading {
+                    clock: arguments.clock.clone(),
+                    reference: arguments.reference.clone(),
+                    probe: arguments.probe.clone(),
+                    sequence,
+                    measurement,
+                };
+                if reporter.report(reading).await.is_err() {
+                    break; // The receipts say why.
+                }
+                summary.sent(row.line);
+            }
+            Err(reason) => summary.unreadable(row.line, reason),
+        }
+    }
+    drop(reporter);
+    for receipt in receipts
+        .await
+        .map_err(|error| Failure::Failed(error.to_string()))??
+    {
+        summary.receipt(receipt);
+    }
+    finish(&client, arguments, &summary).await
+}
+
+/// Takes receipts until the last; losses of contact are told as they happen.
+async fn take(mut receipts: Receipts) -> Result<Vec<ratewright_client::Receipt>, Failure> {
+    let mut taken = Vec::new();
+    while let Some(answer) = receipts.next().await? {
+        match answer {
+            Answer::Receipt(receipt) => taken.push(receipt),
+            Answer::Lost(loss) => eprintln!("ratewright: {loss}"),
+            Answer::Regained => eprintln!("ratewright: contact is back"),
+            _ => {}
+        }
+    }
+    Ok(taken)
+}
+
+async fn finish(client: &Client, arguments: &Arguments, summary: &Summary) -> Result<(), Failure> {
+    let clock = client.clock(&arguments.clock).await?;
+    if arguments.json {
+        println!("{:#}", summary.json(&clock));
+    } else {
+        print!("{}", summary.text(&clock));
+    }
+    if summary.is_clean() {
+        Ok(())
+    } else {
+        Err(Failure::Quiet)
+    }
+}
+
+/// Opens the file, reads its heading, and starts reading rows.
+fn open(arguments: &Arguments) -> Result<mpsc::Receiver<Row>, Failure> {
+    let name = arguments
+        .file
+        .as_deref()
+        .filter(|file| *file != Path::new("-"));
+    let input: Box<dyn Read + Send> = match name {
+        None => Box::new(std::io::stdin()),
+        Some(file) => Box::new(File::open(file).map_err(|error| {
+            Failure::Failed(format!("cannot open {}: {error}", file.display()))
+        })?),
+    };
+    let mut csv = csv::ReaderBuilder::new()
+        .flexible(true)
+        .trim(csv::Trim::All)
+        .comment(Some(b'#'))
+        .from_reader(input);
+    let header = csv
+        .headers()
+        .map_err(|error| Failure::Failed(error.to_string()))?;
+    let columns = Columns::find(header, arguments).map_err(Failure::Usage)?;
+    let (sender, rows) = mpsc::channel(ROWS);
+    // A thread of its own, because a read of standard input may never return.
+    std::thread::spawn(move || rows::read(csv, &columns, &sender));
+    Ok(rows)
+}

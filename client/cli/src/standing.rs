@@ -1,0 +1,96 @@
+//! `ratewright standing`: how every clock and crossing stands.
+
+use clap::Args;
+use ratewright_client::{Clock, Crossing};
+use serde_json::json;
+
+use crate::failure::Failure;
+use crate::server::Server;
+use crate::{json, show};
+
+/// Shows how every clock and every crossing stands
+#[derive(Debug, Args)]
+pub(crate) struct Arguments {
+    /// Print JSON for a machine
+    #[arg(long)]
+    json: bool,
+    #[command(flatten)]
+    server: Server,
+}
+
+/// Prints both tables.
+pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
+    let client = arguments.server.connect().await?;
+    let (clocks, crossings) = (client.clocks().await?, client.crossings().await?);
+    if arguments.json {
+        let document = json!({
+            "clocks": clocks.iter().map(json::clock).collect::<Vec<_>>(),
+            "crossings": crossings.iter().map(json::crossing).collect::<Vec<_>>(),
+        });
+        println!("{document:#}");
+        return Ok(());
+    }
+    let heading = |words: &[&str]| {
+        words
+            .iter()
+            .map(|&word| word.to_owned())
+            .collect::<Vec<_>>()
+    };
+    let mut rows = vec![heading(&["clock", "nominal", "drift (95 %)", "state"])];
+    rows.extend(clocks.iter().map(clock_row));
+    print!("{}", show::table(&rows));
+    println!();
+    let mut rows = vec![heading(&[
+        "crossing", "from", "to", "setting", "runs", "off by", "slips in", "state",
+    ])];
+    rows.extend(crossings.iter().map(crossing_row));
+    print!("{}", show::table(&rows));
+    Ok(())
+}
+
+fn clock_row(clock: &Clock) -> Vec<String> {
+    let (declaration, estimate) = (&clock.declaration, &clock.estimate);
+    let (drift, state) = if declaration.exact {
+        ("0, by definition".to_owned(), "exact".to_owned())
+    } else if estimate.last_reading_ns.is_none() {
+        (
+            "not measured".to_owned(),
+            show::state_word(estimate.state).to_owned(),
+        )
+    } else {
+        (
+            show::drift(estimate.drift, estimate.half_width()),
+            show::estimate_state(estimate),
+        )
+    };
+    vec![
+        declaration.id.to_string(),
+        show::rate(declaration.nominal_hz),
+        drift,
+        state,
+    ]
+}
+
+fn crossing_row(crossing: &Crossing) -> Vec<String> {
+    let (declaration, status) = (&crossing.declaration, &crossing.status);
+    let (number, runs, off) = match &status.setting {
+        Some(setting) => (
+            setting.number.to_string(),
+            show::realised(&setting.realised),
+            show::offset(setting.residual),
+        ),
+        None => ("none".to_owned(), String::new(), String::new()),
+    };
+    vec![
+        declaration.id.to_string(),
+        declaration.source.to_string(),
+        declaration.sink.to_string(),
+        number,
+        runs,
+        off,
+        status
+            .seconds_to_slip
+            .map_or("never".to_owned(), show::duration),
+        show::crossing_word(status.state).to_owned(),
+    ]
+}

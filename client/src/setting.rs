@@ -1,0 +1,136 @@
+//! A setting: one decision for a crossing.
+
+use std::fmt;
+
+use ratewright_ratio::{Bracket, Cadence, Fraction, Interval, Parents};
+
+use crate::Id;
+use crate::wire::setting_name;
+
+/// One decision for a crossing. Immutable: a change is a new setting with a higher number.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Setting {
+    /// The crossing it is for.
+    pub crossing: Id,
+    /// Its place among the settings of the crossing.
+    pub number: SettingNumber,
+    /// The ratio to hold on the long run, exact.
+    pub wanted: Fraction,
+    /// What to run.
+    pub realised: Realised,
+    /// wanted / target − 1 at the decision; positive fills the sink's buffer.
+    pub residual: f64,
+    /// What proves the choice.
+    pub proof: Proof,
+    /// House time of the decision, ns.
+    pub decided_ns: i64,
+    /// House time of the effect, ns: the first block end at or after it.
+    pub effect_ns: i64,
+    /// House time by which the daemon looks at it again at the latest, ns.
+    pub review_ns: i64,
+    /// House time after which a follower that heard nothing reports itself expired, ns. It goes
+    /// on holding the long-run average: expiry never stops a stream.
+    pub expiry_ns: i64,
+    /// Seconds from the decision until the 95 % band of the phase error leaves the headroom;
+    /// `None` if never.
+    pub seconds_to_slip: Option<f64>,
+    /// Why it was decided.
+    pub reason: Reason,
+    /// What it rested on.
+    pub evidence: Evidence,
+}
+
+impl Setting {
+    /// The name on the wire: `crossings/{id}/settings/{epoch}-{number}`.
+    pub fn name(&self) -> String {
+        setting_name(&self.crossing, Some(self.number))
+    }
+}
+
+/// The place of a setting among those of its crossing: a later epoch is newer whatever the number.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash)]
+pub struct SettingNumber {
+    /// Grows when a store was restored from a backup.
+    pub epoch: u64,
+    /// Grows by one with each setting within an epoch, from 1.
+    pub number: u64,
+}
+
+impl fmt::Display for SettingNumber {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        f.pad(&format!("{}-{}", self.epoch, self.number))
+    }
+}
+
+/// What a resampler is to run.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub enum Realised {
+    /// One ratio.
+    Single(Fraction),
+    /// Two ratios in turn at block ends.
+    Cadence(Cadence),
+}
+
+/// What proves a setting.
+#[derive(Clone, Debug, PartialEq)]
+pub enum Proof {
+    /// No ratio within the bounds is nearer to the target.
+    Nearest(Bracket),
+    /// No simpler fraction lies in the interval.
+    Simplest {
+        /// The interval, closed.
+        interval: Interval,
+        /// The parents of the fraction.
+        parents: Parents,
+    },
+    /// The two ratios of the cadence are neighbours within the bounds.
+    Neighbours(Bracket),
+    /// There is no proof, for this reason.
+    Uncertified(String),
+}
+
+/// Why a setting was decided.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Reason {
+    /// The crossing is new.
+    First,
+    /// The evidence no longer allowed the setting before.
+    Evidence,
+    /// The phase error has to be brought back.
+    Recovery,
+    /// The crossing or one of its clocks was declared anew.
+    Declaration,
+    /// Another crossing of the group changed.
+    Group,
+    /// Only expiry and review were moved on.
+    Renewal,
+}
+
+/// What a decision rested on.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Evidence {
+    /// Target ratio.
+    pub target: f64,
+    /// Lower end of its 95 % interval.
+    pub target_low: f64,
+    /// Upper end of its 95 % interval.
+    pub target_high: f64,
+    /// Drift of the source clock.
+    pub source_drift: f64,
+    /// Its standard deviation.
+    pub source_deviation: f64,
+    /// Drift of the sink clock.
+    pub sink_drift: f64,
+    /// Its standard deviation.
+    pub sink_deviation: f64,
+    /// Phase error at the decision, sink samples.
+    pub phase_error_samples: f64,
+    /// Its standard deviation, sink samples.
+    pub phase_deviation_samples: f64,
+    /// Lowest wanted ratio the policy would have taken, if it had a choice.
+    pub allowed_low: Option<Fraction>,
+    /// Highest wanted ratio the policy would have taken, if it had a choice.
+    pub allowed_high: Option<Fraction>,
+    /// Seconds the policy expects to hold the setting.
+    pub expected_hold_seconds: f64,
+}

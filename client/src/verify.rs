@@ -1,0 +1,150 @@
+//! Checking a setting before anyone runs it.
+//!
+//! Two things are checked, by a handful of multiplications: that what is to be run stays within
+//! the bounds of the crossing's filter bank and averages the wanted ratio, and that the
+//! certificate proves what it says. The theorems are in [`ratewright_ratio`].
+
+use ratewright_ratio::{
+    Bounds, Bracket, Cadence, Certificate, CertificateError, Claim, Exact, Fraction, Node, Side,
+    exact, target_from_f64,
+};
+use thiserror::Error;
+
+use crate::{Proof, Realised, Setting};
+
+/// Why a setting is not to be run.
+#[derive(Clone, Debug, PartialEq, Error)]
+pub enum VerifyError {
+    /// What is to be run is more than the filter bank holds.
+    #[error("{ratio} is outside the crossing's bounds of {max_l}/{max_m}")]
+    OutsideBounds {
+        /// The ratio.
+        ratio: Fraction,
+        /// Largest L.
+        max_l: u64,
+        /// Largest M.
+        max_m: u64,
+    },
+    /// One ratio that is not the wanted one.
+    #[error("it runs {run}, but {wanted} is wanted")]
+    NotWanted {
+        /// What would be run.
+        run: Fraction,
+        /// What is wanted.
+        wanted: Fraction,
+    },
+    /// The evidence's target is not a positive number.
+    #[error("the target of its evidence is {target}, which is not a positive number")]
+    Target {
+        /// The target.
+        target: f64,
+    },
+    /// The certificate does not prove the choice.
+    #[error("its certificate fails: {0}")]
+    Certificate(#[from] CertificateError),
+    /// The bounds to check it against are gone.
+    #[error("its crossing is no longer declared, so there are no bounds to check it against")]
+    NoBounds,
+    /// It could not even be read.
+    #[error("{0}")]
+    Malformed(#[from] crate::WireError),
+}
+
+impl Setting {
+    /// Checks what is to be run and its certificate, within the bounds of the crossing. A setting
+    /// that says it is uncertified passes if what is to be run is sound.
+    ///
+    /// # Errors
+    /// [`VerifyError`] says what does not hold.
+    pub fn verify(&self, bounds: &Bounds) -> Result<(), VerifyError> {
+        match &self.realised {
+            Realised::Single(ratio) => {
+                within(ratio, bounds)?;
+                if *ratio != self.wanted {
+                    return Err(VerifyError::NotWanted {
+                        run: *ratio,
+                        wanted: self.wanted,
+                    });
+                }
+            }
+            Realised::Cadence(cadence) => verify_pair(cadence, bounds)?,
+        }
+        self.verify_proof(bounds)
+    }
+
+    fn verify_proof(&self, bounds: &Bounds) -> Result<(), VerifyError> {
+        match &self.proof {
+            Proof::Nearest(bracket) => {
+                let claim = Claim::Nearest {
+                    ratio: self.wanted,
+                    target: &self.target()?,
+                    region: bounds.into(),
+                    side: Side::Either,
+                };
+                Certificate::Nearest(*bracket).verify(&claim)?;
+            }
+            Proof::Simplest { interval, parents } => {
+                let claim = Claim::Simplest {
+                    fraction: self.wanted,
+                    interval,
+                };
+                Certificate::Simplest(*parents).verify(&claim)?;
+            }
+            Proof::Neighbours(bracket) => {
+                // That the cadence's own ratios are neighbours was checked with the realisation.
+                let Realised::Cadence(cadence) = &self.realised else {
+                    return Err(CertificateError::WrongKind.into());
+                };
+                if *bracket != ends(cadence) {
+                    let claimed = Node::from(&cadence.low());
+                    return Err(CertificateError::OtherAnswer { claimed }.into());
+                }
+            }
+            Proof::Uncertified(_) => {}
+        }
+        Ok(())
+    }
+
+    /// The target that `wanted` is nearest to. A double cannot hold most nominal ratios, so a
+    /// residual of 0 stands for the wanted ratio itself.
+    fn target(&self) -> Result<Exact, VerifyError> {
+        if self.residual == 0.0 {
+            return Ok(exact(&self.wanted));
+        }
+        let target = self.evidence.target;
+        target_from_f64(target).map_err(|_| VerifyError::Target { target })
+    }
+}
+
+fn within(ratio: &Fraction, bounds: &Bounds) -> Result<(), VerifyError> {
+    if bounds.allow(ratio) {
+        return Ok(());
+    }
+    let (max_l, max_m) = (bounds.max_l(), bounds.max_m());
+    Err(VerifyError::OutsideBounds {
+        ratio: *ratio,
+        max_l,
+        max_m,
+    })
+}
+
+fn ends(cadence: &Cadence) -> Bracket {
+    Bracket {
+        below: Node::from(&cadence.low()),
+        above: Node::from(&cadence.high()),
+    }
+}
+
+/// Both ratios are in the bank, and nothing of the bank lies between them.
+fn verify_pair(cadence: &Cadence, bounds: &Bounds) -> Result<(), VerifyError> {
+    let (low, high) = (cadence.low(), cadence.high());
+    within(&low, bounds)?;
+    within(&high, bounds)?;
+    let claim = Claim::NeighbourPair {
+        low,
+        high,
+        target: cadence.wanted(),
+        region: bounds.into(),
+    };
+    Ok(Certificate::NeighbourPair(ends(cadence)).verify(&claim)?)
+}

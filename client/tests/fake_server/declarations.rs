@@ -1,0 +1,174 @@
+//! Clocks and crossings of the fake.
+
+use ratewright_proto::v1;
+use tonic::{Code, Request, Response, Status};
+use tonic_types::{ErrorDetails, StatusExt as _};
+use v1::clock_service_server::ClockService;
+use v1::crossing_service_server::CrossingService;
+
+use super::{Facility, HOUSE_NS};
+
+/// A crossing as the daemon would give it.
+pub(super) fn crossing(id: &str, max_l: u64, max_m: u64) -> v1::Crossing {
+    v1::Crossing {
+        name: format!("crossings/{id}"),
+        source_clock: "clocks/a".to_owned(),
+        sink_clock: "clocks/b".to_owned(),
+        max_l,
+        max_m,
+        headroom_samples: 1.0,
+        status: Some(v1::CrossingStatus {
+            state: v1::CrossingState::Holding.into(),
+            reason: "both clocks are measured".to_owned(),
+            as_of_ns: HOUSE_NS,
+            ..Default::default()
+        }),
+        ..Default::default()
+    }
+}
+
+fn estimate(clock: &v1::Clock) -> v1::Estimate {
+    v1::Estimate {
+        state: v1::EstimateState::Locked.into(),
+        drift: 12.5e-6,
+        deviation: 0.01e-6,
+        drift_low: 12.48e-6,
+        drift_high: 12.52e-6,
+        as_of_ns: HOUSE_NS,
+        last_reading_ns: if clock.exact { 0 } else { HOUSE_NS - 1 },
+        reference: "house".to_owned(),
+        ..Default::default()
+    }
+}
+
+fn not_found(name: &str) -> Status {
+    Status::not_found(format!("{name} was never declared"))
+}
+
+#[tonic::async_trait]
+impl ClockService for Facility {
+    async fn create_clock(
+        &self,
+        request: Request<v1::CreateClockRequest>,
+    ) -> Result<Response<v1::Clock>, Status> {
+        let mut clock = request.into_inner().clock.unwrap_or_default();
+        if clock.tolerance_ppm > 10_000.0 {
+            let details = ErrorDetails::with_bad_request_violation(
+                "clock.tolerance_ppm",
+                format!("{}: accepted are 0 to 10000", clock.tolerance_ppm),
+            );
+            return Err(Status::with_error_details(
+                Code::InvalidArgument,
+                "bad clock",
+                details,
+            ));
+        }
+        let mut known = self.known();
+        if known.clocks.contains_key(&clock.name) {
+            return Err(Status::already_exists(format!(
+                "{} is declared",
+                clock.name
+            )));
+        }
+        clock.estimate = Some(estimate(&clock));
+        known.clocks.insert(clock.name.clone(), clock.clone());
+        Ok(Response::new(clock))
+    }
+
+    async fn get_clock(
+        &self,
+        request: Request<v1::GetClockRequest>,
+    ) -> Result<Response<v1::Clock>, Status> {
+        let name = request.into_inner().name;
+        let clock = self.known().clocks.get(&name).cloned();
+        clock.map(Response::new).ok_or_else(|| not_found(&name))
+    }
+
+    /// Pages of one clock, so that a client that forgets to turn the page is found out.
+    async fn list_clocks(
+        &self,
+        request: Request<v1::ListClocksRequest>,
+    ) -> Result<Response<v1::ListClocksResponse>, Status> {
+        let after = request.into_inner().page_token;
+        let known = self.known();
+        let mut later = known.clocks.values().filter(|clock| clock.name > after);
+        let clocks: Vec<_> = later.next().cloned().into_iter().collect();
+        let more = later.next().is_some();
+        let last = clocks.last().map(|clock| clock.name.clone());
+        let next_page_token = last.filter(|_| more).unwrap_or_default();
+        Ok(Response::new(v1::ListClocksResponse {
+            clocks,
+            next_page_token,
+        }))
+    }
+
+    async fn update_clock(
+        &self,
+        _: Request<v1::UpdateClockRequest>,
+    ) -> Result<Response<v1::Clock>, Status> {
+        Err(Status::unimplemented("the fake changes no clocks"))
+    }
+
+    async fn delete_clock(
+        &self,
+        _: Request<v1::DeleteClockRequest>,
+    ) -> Result<Response<()>, Status> {
+        Err(Status::unimplemented("the fake deletes no clocks"))
+    }
+}
+
+#[tonic::async_trait]
+impl CrossingService for Facility {
+    async fn create_crossing(
+        &self,
+        request: Request<v1::CreateCrossingRequest>,
+    ) -> Result<Response<v1::Crossing>, Status> {
+        let wire = request.into_inner().crossing.unwrap_or_default();
+        let id = wire.name.trim_start_matches("crossings/");
+        self.declare_crossing(id, wire.max_l, wire.max_m);
+        Ok(Response::new(crossing(id, wire.max_l, wire.max_m)))
+    }
+
+    async fn get_crossing(
+        &self,
+        request: Request<v1::GetCrossingRequest>,
+    ) -> Result<Response<v1::Crossing>, Status> {
+        let name = request.into_inner().name;
+        let known = self.known();
+        let mut crossing = known
+            .crossings
+            .get(&name)
+            .cloned()
+            .ok_or_else(|| not_found(&name))?;
+        if let Some(status) = &mut crossing.status {
+            status.setting = known.settings.get(&name).cloned();
+        }
+        Ok(Response::new(crossing))
+    }
+
+    async fn list_crossings(
+        &self,
+        _: Request<v1::ListCrossingsRequest>,
+    ) -> Result<Response<v1::ListCrossingsResponse>, Status> {
+        let crossings = self.known().crossings.values().cloned().collect();
+        let next_page_token = String::new();
+        Ok(Response::new(v1::ListCrossingsResponse {
+            crossings,
+            next_page_token,
+        }))
+    }
+
+    async fn update_crossing(
+        &self,
+        _: Request<v1::UpdateCrossingRequest>,
+    ) -> Result<Response<v1::Crossing>, Status> {
+        Err(Status::unimplemented("the fake changes no crossings"))
+    }
+
+    async fn delete_crossing(
+        &self,
+        _: Request<v1::DeleteCrossingRequest>,
+    ) -> Result<Response<()>, Status> {
+        Err(Status::unimplemented("the fake deletes no crossings"))
+    }
+}
