@@ -110,9 +110,13 @@ impl CrossingRecord {
     /// Seconds from a setting's effect (or from `now`, if that is later) to the slip it leads to.
     pub(crate) fn slip_under(&self, setting: &Setting, now: HouseNs, ends: &Ends) -> Option<f64> {
         let outlook = self.outlook(ends);
-        let delay_s = setting.effect_ns.saturating_sub(now).max(0) as f64 * 1e-9;
-        let until_then = self.ledger.timeline.ratio_at(now);
-        let velocity = until_then.map_or(0.0, |ratio| outlook.velocity(ratio));
+        let timeline = &self.ledger.timeline;
+        // Before the stream begins nothing gains, and nothing becomes uncertain.
+        let runs = timeline.begins_ns().is_some_and(|begins_ns| begins_ns <= now);
+        let in_force = timeline.ratio_at(now).filter(|_| runs);
+        let velocity = in_force.map_or(0.0, |ratio| outlook.velocity(ratio));
+        let lead_ns = setting.effect_ns.saturating_sub(now).max(0);
+        let delay_s = if runs { lead_ns as f64 * 1e-9 } else { 0.0 };
         let phase = outlook.extrapolate(outlook.phase, velocity, delay_s);
         let room = self.declaration.headroom_samples - error_of(&setting.realised);
         let velocity = outlook.velocity(as_double(&setting.average()));

@@ -115,5 +115,8 @@ fn backward_variance_ns2(estimate: &Estimate, deviation_ns: f64, span_s: f64) ->
     let by_drift_ns = estimate.deviation * span_s / SECONDS;
     let covariance = PHASE_DRIFT_CORRELATION * deviation_ns * by_drift_ns;
     let grown = estimate.predict_variance(span_s) / (SECONDS * SECONDS);
-    deviation_ns * deviation_ns - 2.0 * covariance + grown
+    // In a gap the two are not of one piece; no drift could tell more than the correlation does.
+    let least = 1.0 - PHASE_DRIFT_CORRELATION * PHASE_DRIFT_CORRELATION;
+    let variance = deviation_ns * deviation_ns;
+    (variance - 2.0 * covariance + grown).max(least * variance)
 }

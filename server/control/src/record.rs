@@ -224,7 +224,7 @@ impl CrossingRecord {
             view.velocity,
             view.step_s + view.lead_s + block_s,
         ) {
-            return Some(view.standing(newest.evidence.expected_hold_s));
+            return Some(view.standing(view.velocity));
         }
         (self.state == CrossingState::Degraded && view.is_as_good(error))
             .then(|| (self.state, self.reason.clone()))

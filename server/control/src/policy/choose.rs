@@ -5,7 +5,8 @@ use ratewright_ratio::Fraction;
 use crate::policy::funnel::{Entry, Span, funnel};
 use crate::policy::outlook::Outlook;
 use crate::policy::realise::{Allowed, Way, allowed, cadence_error, nearest_virtual, realise};
-use crate::policy::{HOLD_SHARE, Limits, MARGIN_DEVIATIONS};
+use crate::policy::{HOLD_SHARE, Limits, MARGIN_DEVIATIONS, PLAN_HORIZON_S};
+use crate::timeline::as_double;
 use crate::{CrossingDeclaration, CrossingState, Realisation};
 
 /// What the policy looks at.
@@ -105,7 +106,8 @@ impl View<'_> {
 
     /// A choice out of a span of the funnel.
     fn held(&self, way: Way, allowed: &Allowed, span: Span, entry: Entry) -> Choice {
-        let (state, reason) = self.standing(span.hold_s);
+        let velocity = self.outlook.velocity(as_double(&way.wanted));
+        let (state, reason) = self.standing(velocity);
         Choice {
             way,
             allowed: (allowed.low, allowed.high),
@@ -116,19 +118,38 @@ impl View<'_> {
         }
     }
 
-    /// Holding, unless the phase error is out of the headroom by now.
-    pub(crate) fn standing(&self, hold_s: f64) -> (CrossingState, String) {
+    /// How a crossing stands under a ratio that may stay: holding, unless the phase error is out
+    /// of the headroom by now, or there is no way back when the hold ends.
+    pub(crate) fn standing(&self, velocity: f64) -> (CrossingState, String) {
         let (phase, headroom) = (self.outlook.phase, self.declaration.headroom_samples);
-        if phase.abs() <= headroom {
-            return (
-                CrossingState::Holding,
-                format!("should hold for {hold_s:.0} s"),
+        if phase.abs() > headroom {
+            let reason = format!(
+                "the phase error of {phase:.3} samples is outside the headroom of {headroom} \
+                 and on its way back"
             );
+            return (CrossingState::Degraded, reason);
         }
-        let reason = format!(
-            "the phase error of {phase:.3} samples is outside the headroom of {headroom} and on its way back"
-        );
-        (CrossingState::Degraded, reason)
+        if self.declaration.realisation == Realisation::Single && self.is_dead_end(velocity) {
+            let reason = format!(
+                "the phase error grows by {velocity:+.2e} samples a second, and no ratio within \
+                 the bounds leads back"
+            );
+            return (CrossingState::OutOfBounds, reason);
+        }
+        let reason = format!("the phase error stays within the headroom of {headroom} samples");
+        (CrossingState::Holding, reason)
+    }
+
+    /// True if no ratio of the bounds moves the phase error the other way, within the pitch
+    /// limit, and that will be needed within what is planned for.
+    fn is_dead_end(&self, velocity: f64) -> bool {
+        let limits = self.limits(0.0);
+        if velocity.abs() * PLAN_HORIZON_S < limits.tube {
+            return false;
+        }
+        let (low, high) = if velocity > 0.0 { (-limits.pitch, 0.0) } else { (0.0, limits.pitch) };
+        let other = allowed(self.outlook.ratio(low), self.outlook.ratio(high));
+        other.and_then(|other| other.any_single(&self.declaration.bounds)).is_none()
     }
 
     /// One ratio at a time: the longest hold for which the bounds have a ratio.

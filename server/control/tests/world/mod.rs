@@ -1,6 +1,11 @@
 //! A small simulated facility around the engine: seeded clocks are read, settings are followed,
 //! and the true phase error of every crossing is kept beside what the engine believes.
-#![allow(dead_code, reason = "each test file uses its part of the world")]
+#![allow(
+    dead_code,
+    unreachable_pub,
+    missing_debug_implementations,
+    reason = "each test file includes the world and uses its part of it"
+)]
 
 use std::collections::BTreeMap;
 
@@ -355,4 +360,11 @@ impl World {
 
 pub fn average(setting: &Setting) -> f64 {
     *setting.average().numer() as f64 / *setting.average().denom() as f64
+}
+
+impl World {
+    /// The true phase error as of the last event.
+    pub fn phase_of(&self, name: &str) -> f64 {
+        self.running[&id(name)].phase
+    }
 }
