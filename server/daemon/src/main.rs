@@ -8,7 +8,7 @@
     reason = "this is a command: what it has to say before the log begins goes to the terminal"
 )]
 
-use std::{path::PathBuf, process::ExitCode};
+use std::{io::IsTerminal as _, path::PathBuf, process::ExitCode};
 
 use clap::{Parser, Subcommand};
 use ratewright_server::{
@@ -128,7 +128,7 @@ async fn run_sample(pace: f64, store: Option<PathBuf>) -> ExitCode {
     start_log(config.log);
     let code = match Daemon::builder(config).pace(pace).start().await {
         Ok(daemon) => {
-            let played = sample::run(daemon.grpc(), daemon.house());
+            let played = sample::run(daemon.grpc(), daemon.people(), daemon.house());
             serve(daemon, played).await
         }
         Err(fault) => not_started(&fault),
@@ -199,6 +199,7 @@ fn start_log(format: LogFormat) {
     let filter = EnvFilter::try_from_default_env().unwrap_or_else(|_| EnvFilter::new("info"));
     let log = tracing_subscriber::fmt()
         .with_env_filter(filter)
+        .with_ansi(std::io::stderr().is_terminal())
         .with_writer(std::io::stderr);
     match format {
         LogFormat::Text => log.init(),

@@ -19,6 +19,8 @@ const STREAM_WINDOW: u32 = 1 << 20;
 const KEEPALIVE_INTERVAL: Duration = Duration::from_secs(10);
 /// … and is taken for dead if there is none within this.
 const KEEPALIVE_TIMEOUT: Duration = Duration::from_secs(5);
+/// Calls that one connection may have open besides as many streams as the daemon serves.
+const SHORT_CALLS: usize = 1_000;
 /// Pause after a failed accept, which mostly means that file descriptors have run out: without
 /// it the loop would spin.
 const ACCEPT_PAUSE: Duration = Duration::from_millis(100);
@@ -32,10 +34,12 @@ pub(crate) async fn serve(
     max_streams: usize,
     shutdown: impl Future<Output = ()>,
 ) -> Result<(), tonic::transport::Error> {
+    // A call beyond this would wait in silence: it must reach the daemon to be told why not.
+    let calls = max_streams.saturating_add(SHORT_CALLS);
     Server::builder()
         .initial_connection_window_size(CONNECTION_WINDOW)
         .initial_stream_window_size(STREAM_WINDOW)
-        .max_concurrent_streams(u32::try_from(max_streams).unwrap_or(u32::MAX))
+        .max_concurrent_streams(u32::try_from(calls).unwrap_or(u32::MAX))
         .http2_keepalive_interval(Some(KEEPALIVE_INTERVAL))
         .http2_keepalive_timeout(Some(KEEPALIVE_TIMEOUT))
         .add_routes(routes)

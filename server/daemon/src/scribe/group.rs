@@ -1,6 +1,6 @@
 //! A group on its way: what its commands did, until it is on the disk.
 
-use ratewright_control::{Engine, Event, HouseNs, Refusal, Setting, Transition};
+use ratewright_control::{Engine, Event, HouseNs, Refusal, Setting, Transition, explain};
 use tokio::sync::oneshot;
 
 use super::{Command, Done, Promise, news::Touched};
@@ -79,7 +79,7 @@ impl Group {
 
 fn explained(engine: &Engine, setting: &Setting) -> Vec<String> {
     let crossing = engine.crossing(&setting.crossing);
-    crossing.map_or_else(Vec::new, |_| Vec::new())
+    crossing.map_or_else(Vec::new, |crossing| explain(setting, crossing))
 }
 
 fn log_transition(transition: &Transition) {

@@ -7,7 +7,7 @@ use std::{
 
 use ratewright_control::{Engine, Event};
 use tokio::{
-    runtime::Handle,
+    runtime::{self, Runtime},
     sync::{mpsc, oneshot},
     time::timeout,
 };
@@ -56,7 +56,9 @@ impl Scribe {
         let (sender, messages) = mpsc::channel(QUEUE);
         let (ready, is_ready) = oneshot::channel();
         let (ended, has_ended) = oneshot::channel();
-        let runtime = Handle::current();
+        // The thread's own, so that it can wait with a time limit and outlive the daemon's.
+        let runtime = runtime::Builder::new_current_thread().enable_time().build();
+        let runtime = runtime.expect("a runtime that only knows the time needs nothing");
         std::thread::Builder::new()
             .name("scribe".into())
             .spawn(move || match self.recover() {
@@ -108,10 +110,11 @@ impl Room {
     fn work(
         mut self,
         mut messages: mpsc::Receiver<Message>,
-        runtime: &Handle,
+        runtime: &Runtime,
     ) -> Result<(), StoreError> {
         loop {
-            let first = runtime.block_on(timeout(self.longest_wait(), messages.recv()));
+            let wait = self.longest_wait();
+            let first = runtime.block_on(async { timeout(wait, messages.recv()).await });
             let goes_on = match first {
                 Ok(None | Some(Message::Stop)) => false,
                 Ok(Some(message)) => self.serve(Some(message), &mut messages)?,
