@@ -140,21 +140,43 @@ impl Engine {
     }
 
     /// Does what was judged.
-    fn settle(&mut self, member: Member, now: HouseNs, lead_ns: i64, effects: &mut Effects) -> Ends {
-        let Member { id, ends, judgement } = member;
-        let stamp = Stamp { epoch: self.epoch, decided_ns: now, effect_ns: now.saturating_add(lead_ns) };
-        let Some(record) = self.crossings.get_mut(&id) else { return ends };
+    fn settle(
+        &mut self,
+        member: Member,
+        now: HouseNs,
+        lead_ns: i64,
+        effects: &mut Effects,
+    ) -> Ends {
+        let Member {
+            id,
+            ends,
+            judgement,
+        } = member;
+        let stamp = Stamp {
+            epoch: self.epoch,
+            decided_ns: now,
+            effect_ns: now.saturating_add(lead_ns),
+        };
+        let Some(record) = self.crossings.get_mut(&id) else {
+            return ends;
+        };
         let (state, reason) = match judgement {
             Judgement::Pending => return ends,
             Judgement::Stay { state, reason } => {
-                if let Some(due) = record.newest.clone().filter(|newest| newest.review_ns <= now) {
+                if let Some(due) = record
+                    .newest
+                    .clone()
+                    .filter(|newest| newest.review_ns <= now)
+                {
                     effects.settings.push(record.renew(&due, stamp, &ends));
                 }
                 (state, reason)
             }
             Judgement::Change { choice, reason } => {
                 let standing = (choice.state, choice.reason.clone());
-                effects.settings.push(record.issue(*choice, reason, stamp, &ends));
+                effects
+                    .settings
+                    .push(record.issue(*choice, reason, stamp, &ends));
                 standing
             }
         };

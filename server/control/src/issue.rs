@@ -112,7 +112,9 @@ impl CrossingRecord {
         let outlook = self.outlook(ends);
         let timeline = &self.ledger.timeline;
         // Before the stream begins nothing gains, and nothing becomes uncertain.
-        let runs = timeline.begins_ns().is_some_and(|begins_ns| begins_ns <= now);
+        let runs = timeline
+            .begins_ns()
+            .is_some_and(|begins_ns| begins_ns <= now);
         let in_force = timeline.ratio_at(now).filter(|_| runs);
         let velocity = in_force.map_or(0.0, |ratio| outlook.velocity(ratio));
         let lead_ns = setting.effect_ns.saturating_sub(now).max(0);

@@ -213,3 +213,162 @@ impl Ledger {
         Levelled::Moved
     }
 }
+
+#[cfg(test)]
+mod tests {
+    use num_rational::Ratio;
+    use ratewright_timing::exact;
+
+    use super::*;
+    use crate::link::Lineage;
+
+    const SECOND: i64 = 1_000_000_000;
+
+    /// A measured clock of this drift and phase, with so much uncertainty of the phase.
+    fn clock(now: i64, drift: f64, phase_ns: f64, phase_deviation_ns: f64) -> Traced {
+        let estimate = ratewright_timing::Estimate {
+            drift,
+            phase_ns,
+            phase_deviation_ns,
+            ..exact(now)
+        };
+        Traced {
+            estimate,
+            lineage: Lineage::of(1),
+            measured: true,
+        }
+    }
+
+    fn still(now: i64) -> Traced {
+        Traced {
+            estimate: exact(now),
+            lineage: Lineage::default(),
+            measured: true,
+        }
+    }
+
+    fn entry(number: u64, ratio: Ratio<u64>, effect_ns: HouseNs) -> Entry {
+        Entry {
+            epoch: 1,
+            number,
+            ratio,
+            decided_ns: effect_ns,
+            effect_ns,
+        }
+    }
+
+    /// An account that began at 0 with 160/147, and got 320/293 at 10 s.
+    fn account() -> Ledger {
+        let mut ledger = Ledger::new(44_100.0, 48_000.0);
+        ledger.set(entry(1, Ratio::new(160, 147), 0));
+        ledger.set(entry(2, Ratio::new(320, 293), 10 * SECOND));
+        ledger
+    }
+
+    #[test]
+    fn the_account_is_the_exact_integral() {
+        let mut ledger = account();
+        // The source gains 10 ppm; looked at at odd times, one of them across the change.
+        for second in [0, 3, 4, 17, 25] {
+            let now = second * SECOND;
+            ledger.advance(
+                now,
+                &clock(now, 1e-5, 1e4 * second as f64, 0.0),
+                &still(now),
+            );
+        }
+        let came = |seconds: f64| 44_100.0 * seconds * (1.0 + 1e-5);
+        let made = came(10.0) * 160.0 / 147.0 + came(15.0) * 320.0 / 293.0;
+        let exactly = made - 48_000.0 * 25.0;
+        assert!(
+            (ledger.phase_samples() - exactly).abs() < 1e-6,
+            "{}",
+            ledger.phase_samples()
+        );
+    }
+
+    #[test]
+    fn nothing_is_counted_before_the_stream_begins() {
+        let mut ledger = Ledger::new(48_000.0, 48_000.0);
+        ledger.set(entry(1, Ratio::new(1, 1), 10 * SECOND));
+        for second in [5, 20] {
+            let now = second * SECOND;
+            ledger.advance(
+                now,
+                &clock(now, 1e-5, 1e4 * second as f64, 0.0),
+                &still(now),
+            );
+        }
+        assert!(
+            (ledger.phase_samples() - 0.48 * 10.0).abs() < 1e-6,
+            "{}",
+            ledger.phase_samples()
+        );
+    }
+
+    #[test]
+    fn a_report_moves_the_effect_to_where_it_was() {
+        let run = |reported_ns: HouseNs| {
+            let mut ledger = account();
+            let now = 25 * SECOND;
+            ledger.advance(now, &clock(now, 0.0, 0.0, 0.0), &still(now));
+            ledger.applied(2, reported_ns, &clock(now, 0.0, 0.0, 0.0), &still(now));
+            ledger.phase_samples()
+        };
+        let faster = 44_100.0 * (320.0 / 293.0 - 160.0 / 147.0);
+        assert!((run(10 * SECOND) - 15.0 * faster).abs() < 1e-6);
+        assert!(
+            (run(12 * SECOND) - 13.0 * faster).abs() < 1e-6,
+            "late: less of the new ratio"
+        );
+        assert!(
+            (run(8 * SECOND) - 17.0 * faster).abs() < 1e-6,
+            "early: more of it"
+        );
+    }
+
+    #[test]
+    fn occupancy_weighs_by_the_variances() {
+        let mut ledger = account();
+        let now = SECOND;
+        // 1 µs of 48 kHz are 0.048 samples: at the entry and now.
+        ledger.advance(now, &clock(now, 0.0, 0.0, 1000.0), &still(now));
+        let (phase, variance) = (ledger.phase_samples(), ledger.variance());
+        let lasting = variance - 0.048 * 0.048;
+        let noise = 0.01;
+        assert_eq!(
+            ledger.level(phase + 0.1, noise, 0.0, 0.0),
+            Levelled::Corrected
+        );
+        let gain = lasting / (variance + noise);
+        assert!((ledger.phase_samples() - phase - gain * 0.1).abs() < 1e-12);
+        let left = ledger.variance() - 0.048 * 0.048;
+        assert!((left - (1.0 - gain) * lasting).abs() < 1e-12);
+    }
+
+    #[test]
+    fn an_old_level_is_carried_on_to_now() {
+        let mut ledger = account();
+        ledger.advance(SECOND, &clock(SECOND, 0.0, 0.0, 1000.0), &still(SECOND));
+        let phase = ledger.phase_samples();
+        // Ten seconds ago, at 0.5 samples a second, it was five samples lower: no news.
+        ledger.level(phase - 5.0, 0.01, 10.0, 0.5);
+        assert!((ledger.phase_samples() - phase).abs() < 1e-12);
+    }
+
+    #[test]
+    fn three_levels_at_odds_mean_that_the_buffer_was_moved() {
+        let mut ledger = account();
+        ledger.advance(SECOND, &clock(SECOND, 0.0, 0.0, 1000.0), &still(SECOND));
+        assert_eq!(ledger.level(7.0, 0.01, 0.0, 0.0), Levelled::SetAside);
+        assert_eq!(
+            ledger.level(-7.0, 0.01, 0.0, 0.0),
+            Levelled::SetAside,
+            "another side"
+        );
+        assert_eq!(ledger.level(7.0, 0.01, 0.0, 0.0), Levelled::SetAside);
+        assert_eq!(ledger.level(7.0, 0.01, 0.0, 0.0), Levelled::SetAside);
+        assert_eq!(ledger.level(7.0, 0.01, 0.0, 0.0), Levelled::Moved);
+        assert!((ledger.phase_samples() - 7.0).abs() < 1e-12);
+    }
+}

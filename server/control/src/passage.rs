@@ -14,8 +14,8 @@ use ratewright_timing::Estimate;
 use serde::{Deserialize, Serialize};
 
 use crate::HouseNs;
-use crate::clocks::Traced;
 use crate::clocks::PHASE_DRIFT_CORRELATION;
+use crate::clocks::Traced;
 use crate::link::Lineage;
 
 /// The past is revised only for a real gain in certainty: each revision is a jump.
@@ -119,4 +119,60 @@ fn backward_variance_ns2(estimate: &Estimate, deviation_ns: f64, span_s: f64) ->
     let least = 1.0 - PHASE_DRIFT_CORRELATION * PHASE_DRIFT_CORRELATION;
     let variance = deviation_ns * deviation_ns;
     (variance - 2.0 * covariance + grown).max(least * variance)
+}
+
+#[cfg(test)]
+mod tests {
+    use ratewright_timing::exact;
+
+    use super::*;
+
+    const SECOND: i64 = 1_000_000_000;
+
+    fn clock(lineage: u32, drift: f64, phase_ns: f64, phase_deviation_ns: f64) -> Traced {
+        let estimate = Estimate {
+            drift,
+            phase_ns,
+            phase_deviation_ns,
+            ..exact(0)
+        };
+        Traced {
+            estimate,
+            lineage: Lineage::of(lineage),
+            measured: true,
+        }
+    }
+
+    #[test]
+    fn a_better_phase_revises_the_beginning() {
+        let mut passage = Passage::begin(0);
+        let mut gained = passage.advance(0, SECOND, &clock(1, 5e-6, 100.0, 900.0));
+        assert!(
+            (gained - 5_000.0).abs() < 1e-6,
+            "nothing is known but the drift"
+        );
+        // The drift was 8 ppm, as is now known far better.
+        gained += passage.advance(SECOND, 2 * SECOND, &clock(1, 8e-6, 9_000.0, 10.0));
+        assert!((gained - 16_000.0).abs() < 1e-6, "the past is revised");
+        // From a good beginning on, the phase alone counts.
+        gained += passage.advance(2 * SECOND, 3 * SECOND, &clock(1, 8e-6, 17_100.0, 10.0));
+        assert!(
+            (gained - 24_100.0).abs() < 1e-6,
+            "an increment of the phase"
+        );
+    }
+
+    #[test]
+    fn another_lineage_opens_another_leg_and_keeps_the_variance() {
+        let mut passage = Passage::begin(0);
+        passage.advance(0, SECOND, &clock(1, 5e-6, 0.0, 30.0));
+        passage.advance(SECOND, 2 * SECOND, &clock(1, 5e-6, 5_000.0, 30.0));
+        let before = passage.variance_ns2();
+        let gained = passage.advance(2 * SECOND, 3 * SECOND, &clock(2, 6e-6, 777_777.0, 40.0));
+        assert!(
+            (gained - 6_000.0).abs() < 1e-6,
+            "phases of different links have nothing in common"
+        );
+        assert!(passage.variance_ns2() >= before + 40.0 * 40.0);
+    }
 }

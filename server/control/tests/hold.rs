@@ -20,8 +20,15 @@ const HOURS: i64 = 6;
 fn run(case: &Case) -> World {
     let mut world = World::new();
     world.add_exact("house", 48_000);
-    let delay = Delay::Normal { deviation_s: case.noise_s };
-    world.add(clock("desk", case.source_hz), crystal(case.drift, 1e-10), delay, SECOND);
+    let delay = Delay::Normal {
+        deviation_s: case.noise_s,
+    };
+    world.add(
+        clock("desk", case.source_hz),
+        crystal(case.drift, 1e-10),
+        delay,
+        SECOND,
+    );
     world.cross(CrossingDeclaration {
         headroom_samples: case.headroom,
         ..crossing("x", "desk", "house")
@@ -35,17 +42,48 @@ fn run(case: &Case) -> World {
 fn check(case: &Case) {
     let world = run(case);
     let tally = world.tally("x");
-    let what = format!("{} Hz, {:+} ppm, headroom {}", case.source_hz, case.drift * 1e6, case.headroom);
-    assert!(tally.worst <= case.headroom, "{what}: worst {}", tally.worst);
-    let later = tally.settings.iter().filter(|s| s.decided_ns > HOUR).count();
+    let what = format!(
+        "{} Hz, {:+} ppm, headroom {}",
+        case.source_hz,
+        case.drift * 1e6,
+        case.headroom
+    );
+    assert!(
+        tally.worst <= case.headroom,
+        "{what}: worst {}",
+        tally.worst
+    );
+    let later = tally
+        .settings
+        .iter()
+        .filter(|s| s.decided_ns > HOUR)
+        .count();
     assert!(later <= case.most_settings, "{what}: {later} settings");
-    let status = world.engine.status(&id("x"), world.now).expect("it was declared");
-    assert_eq!(status.state, CrossingState::Holding, "{what}: {}", status.reason);
+    let status = world
+        .engine
+        .status(&id("x"), world.now)
+        .expect("it was declared");
+    assert_eq!(
+        status.state,
+        CrossingState::Holding,
+        "{what}: {}",
+        status.reason
+    );
     let five_deviations = 5.0 * status.phase_deviation_samples;
-    assert!(tally.worst_account <= five_deviations, "{what}: account off by {}", tally.worst_account);
-    let bounds = world.engine.crossing(&id("x")).expect("it was declared").bounds;
+    assert!(
+        tally.worst_account <= five_deviations,
+        "{what}: account off by {}",
+        tally.worst_account
+    );
+    let bounds = world
+        .engine
+        .crossing(&id("x"))
+        .expect("it was declared")
+        .bounds;
     for setting in &tally.settings {
-        setting.verify(&bounds).expect("every certificate proves its setting");
+        setting
+            .verify(&bounds)
+            .expect("every certificate proves its setting");
         assert!(setting.evidence.target_low <= setting.evidence.target_high);
     }
 }
@@ -53,38 +91,82 @@ fn check(case: &Case) {
 #[test]
 fn cd_rate_into_studio_rate_with_room_needs_a_setting_each_quarter_hour() {
     for drift in [37.3e-6, -37.3e-6, 2e-6] {
-        check(&Case { source_hz: 44_100, drift, headroom: 4.0, noise_s: 1e-6, most_settings: 25 });
+        check(&Case {
+            source_hz: 44_100,
+            drift,
+            headroom: 4.0,
+            noise_s: 1e-6,
+            most_settings: 25,
+        });
     }
 }
 
 #[test]
 fn cd_rate_into_studio_rate_holds_half_a_sample() {
     for drift in [2e-6, -37.3e-6] {
-        check(&Case { source_hz: 44_100, drift, headroom: 0.5, noise_s: 1e-6, most_settings: 50 });
+        check(&Case {
+            source_hz: 44_100,
+            drift,
+            headroom: 0.5,
+            noise_s: 1e-6,
+            most_settings: 50,
+        });
     }
 }
 
 #[test]
 fn equal_rates_are_held_by_a_cadence_around_one() {
-    let case = Case { source_hz: 48_000, drift: 37.3e-6, headroom: 4.0, noise_s: 5e-6, most_settings: 30 };
+    let case = Case {
+        source_hz: 48_000,
+        drift: 37.3e-6,
+        headroom: 4.0,
+        noise_s: 5e-6,
+        most_settings: 30,
+    };
     check(&case);
     let world = run(&case);
-    let newest = world.tally("x").settings.last().expect("settings were made");
-    let Realised::Cadence(cadence) = newest.realised else { panic!("1024/1024 cannot do it alone") };
+    let newest = world
+        .tally("x")
+        .settings
+        .last()
+        .expect("settings were made");
+    let Realised::Cadence(cadence) = newest.realised else {
+        panic!("1024/1024 cannot do it alone")
+    };
     // The source runs fast, so the target is below one.
-    assert_eq!((cadence.low().to_string(), cadence.high().to_string()), ("1023/1024".into(), "1".into()));
+    assert_eq!(
+        (cadence.low().to_string(), cadence.high().to_string()),
+        ("1023/1024".into(), "1".into())
+    );
 }
 
 #[test]
 fn equal_rates_within_half_a_sample_are_degraded_and_say_why() {
     let mut world = World::new();
     world.add_exact("house", 48_000);
-    world.add(clock("desk", 48_000), crystal(5e-6, 1e-10), Delay::Normal { deviation_s: 1e-6 }, SECOND);
-    world.cross(CrossingDeclaration { headroom_samples: 0.5, ..crossing("x", "desk", "house") });
+    world.add(
+        clock("desk", 48_000),
+        crystal(5e-6, 1e-10),
+        Delay::Normal { deviation_s: 1e-6 },
+        SECOND,
+    );
+    world.cross(CrossingDeclaration {
+        headroom_samples: 0.5,
+        ..crossing("x", "desk", "house")
+    });
     world.run_until(HOUR / 2);
-    let status = world.engine.status(&id("x"), world.now).expect("it was declared");
+    let status = world
+        .engine
+        .status(&id("x"), world.now)
+        .expect("it was declared");
     assert_eq!(status.state, CrossingState::Degraded);
-    assert!(status.reason.contains("a cadence within the bounds errs by up to 0.501"), "{}", status.reason);
+    assert!(
+        status
+            .reason
+            .contains("a cadence within the bounds errs by up to 0.501"),
+        "{}",
+        status.reason
+    );
     // The least bad: the average is right all the same.
     let newest = status.setting.expect("there is always a setting");
     assert!(newest.residual.abs() < 1e-6, "{}", newest.residual);
@@ -100,5 +182,9 @@ fn a_pair_of_drifting_clocks_is_held() {
     world.run_until(HOUR / 2);
     world.forget();
     world.run_until(4 * HOUR);
-    assert!(world.tally("x").worst <= 4.0, "worst {}", world.tally("x").worst);
+    assert!(
+        world.tally("x").worst <= 4.0,
+        "worst {}",
+        world.tally("x").worst
+    );
 }

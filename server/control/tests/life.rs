@@ -23,13 +23,21 @@ fn facility(model: ClockModel) -> World {
 fn a_setting_exists_at_once_and_the_crossing_waits() {
     let mut world = World::new();
     world.add_exact("house", 48_000);
-    world.add(clock("desk", 44_100), crystal(0.0, 0.0), Delay::None, i64::MAX);
+    world.add(
+        clock("desk", 44_100),
+        crystal(0.0, 0.0),
+        Delay::None,
+        i64::MAX,
+    );
     world.cross(crossing("x", "desk", "house"));
     let status = world.engine.status(&id("x"), 0).expect("it was declared");
     assert_eq!(status.state, CrossingState::Waiting);
     assert_eq!(status.reason, "the source desk was never measured");
     let first = status.setting.expect("it exists at once");
-    assert_eq!((first.number, first.reason, first.effect_ns), (1, Reason::First, SECOND));
+    assert_eq!(
+        (first.number, first.reason, first.effect_ns),
+        (1, Reason::First, SECOND)
+    );
     assert_eq!(first.average().to_string(), "160/147");
     // ±100 ppm is common practice for a clock of which nothing is declared.
     let half_width = first.evidence.target_high / first.evidence.target - 1.0;
@@ -38,7 +46,11 @@ fn a_setting_exists_at_once_and_the_crossing_waits() {
     let slip = first.seconds_to_slip.expect("it may slip");
     assert!((slip - 4.0 / 4.8).abs() < 0.05, "{slip}");
     world.run_until(3 * HOUR);
-    assert!(world.tally("x").settings[1..].iter().all(|s| s.reason == Reason::Renewal));
+    assert!(
+        world.tally("x").settings[1..]
+            .iter()
+            .all(|s| s.reason == Reason::Renewal)
+    );
 }
 
 #[test]
@@ -48,17 +60,34 @@ fn a_day_without_readings_is_bridged_and_the_ledger_knows_what_became_of_it() {
     world.silence("desk", 4 * HOUR, 4 * HOUR + DAY);
     world.run_until(4 * HOUR + DAY - SECOND);
     let lost = world.transitions.iter().any(|(at, t)| {
-        *at > 4 * HOUR && matches!(t, Transition::Clock { to: State::Holdover, .. })
+        *at > 4 * HOUR
+            && matches!(
+                t,
+                Transition::Clock {
+                    to: State::Holdover,
+                    ..
+                }
+            )
     });
     assert!(lost, "the clock goes to holdover");
-    let status = world.engine.status(&id("x"), world.now).expect("it was declared");
-    assert!(status.phase_deviation_samples > 4.0, "{}", status.phase_deviation_samples);
+    let status = world
+        .engine
+        .status(&id("x"), world.now)
+        .expect("it was declared");
+    assert!(
+        status.phase_deviation_samples > 4.0,
+        "{}",
+        status.phase_deviation_samples
+    );
     let off = (status.phase_error_samples - world.phase("x")).abs();
     assert!(off < 4.0 * status.phase_deviation_samples, "{off}");
     // Back again: the counter has counted on, so the ledger learns the true phase error, and the
     // policy brings it back.
     world.run_until(4 * HOUR + DAY + HOUR);
-    let status = world.engine.status(&id("x"), world.now).expect("it was declared");
+    let status = world
+        .engine
+        .status(&id("x"), world.now)
+        .expect("it was declared");
     let off = (status.phase_error_samples - world.phase("x")).abs();
     assert!(off < 0.5, "account off by {off}");
     assert_eq!(status.state, CrossingState::Holding, "{}", status.reason);
@@ -69,17 +98,34 @@ fn a_day_without_readings_is_bridged_and_the_ledger_knows_what_became_of_it() {
 
 #[test]
 fn a_jump_of_the_drift_is_followed_and_brought_back() {
-    let upsets = vec![Upset { at_ns: 2 * HOUR, what: Disturbance::DriftJump(3e-6) }];
-    let mut world = facility(ClockModel { upsets, ..crystal(8e-6, 1e-10) });
+    let upsets = vec![Upset {
+        at_ns: 2 * HOUR,
+        what: Disturbance::DriftJump(3e-6),
+    }];
+    let mut world = facility(ClockModel {
+        upsets,
+        ..crystal(8e-6, 1e-10)
+    });
     world.run_until(2 * HOUR);
     world.forget();
     world.run_until(2 * HOUR + HOUR / 2);
     // 3 ppm are 0.144 samples a second; what was missed until the jump was found comes back.
-    assert!(world.tally("x").worst < 12.0, "worst {}", world.tally("x").worst);
+    assert!(
+        world.tally("x").worst < 12.0,
+        "worst {}",
+        world.tally("x").worst
+    );
     world.forget();
     world.run_until(3 * HOUR);
-    assert!(world.tally("x").worst <= 4.0, "worst {}", world.tally("x").worst);
-    let status = world.engine.status(&id("x"), world.now).expect("it was declared");
+    assert!(
+        world.tally("x").worst <= 4.0,
+        "worst {}",
+        world.tally("x").worst
+    );
+    let status = world
+        .engine
+        .status(&id("x"), world.now)
+        .expect("it was declared");
     assert_eq!(status.state, CrossingState::Holding);
 }
 
@@ -89,11 +135,18 @@ fn a_late_follower_is_integrated_as_it_truly_was() {
         let mut world = facility(crystal(30e-6, 1e-10));
         world.follow_late("x", 2 * SECOND, reports);
         world.run_until(HOUR);
-        let status = world.engine.status(&id("x"), world.now).expect("it was declared");
+        let status = world
+            .engine
+            .status(&id("x"), world.now)
+            .expect("it was declared");
         (status.phase_error_samples - world.phase("x")).abs()
     };
     assert!(run(true) < 0.4, "reported: off by {}", run(true));
-    assert!(run(false) > 1.0, "unreported lateness goes unseen: {}", run(false));
+    assert!(
+        run(false) > 1.0,
+        "unreported lateness goes unseen: {}",
+        run(false)
+    );
 }
 
 #[test]
@@ -105,15 +158,27 @@ fn a_moved_buffer_is_found_by_its_occupancy() {
         world.run_until(world.now + 10 * SECOND);
         let level_samples = world.phase("x");
         let (crossing, house_ns) = (id("x"), world.now);
-        world.apply(Event::Occupancy { crossing, level_samples, deviation_samples: 0.2, house_ns });
+        world.apply(Event::Occupancy {
+            crossing,
+            level_samples,
+            deviation_samples: 0.2,
+            house_ns,
+        });
     }
     let moved = |t: &&(i64, Transition)| matches!(t.1, Transition::Centred { .. });
     assert_eq!(world.transitions.iter().filter(moved).count(), 1);
-    let status = world.engine.status(&id("x"), world.now).expect("it was declared");
+    let status = world
+        .engine
+        .status(&id("x"), world.now)
+        .expect("it was declared");
     assert!((status.phase_error_samples - world.phase("x")).abs() < 0.5);
     world.run_until(2 * HOUR);
     assert!(world.phase("x").abs() <= 4.0);
-    let recoveries = world.tally("x").settings.iter().filter(|s| s.reason == Reason::Recovery);
+    let recoveries = world
+        .tally("x")
+        .settings
+        .iter()
+        .filter(|s| s.reason == Reason::Recovery);
     assert!(recoveries.count() > 0);
 }
 
@@ -121,14 +186,25 @@ fn a_moved_buffer_is_found_by_its_occupancy() {
 fn small_occupancies_sharpen_the_account() {
     let mut world = facility(crystal(8e-6, 1e-10));
     world.run_until(HOUR);
-    let before = world.engine.status(&id("x"), world.now).expect("it was declared");
+    let before = world
+        .engine
+        .status(&id("x"), world.now)
+        .expect("it was declared");
     for _ in 0..50 {
         world.run_until(world.now + SECOND);
         let level_samples = world.phase("x");
         let (crossing, house_ns) = (id("x"), world.now);
-        world.apply(Event::Occupancy { crossing, level_samples, deviation_samples: 0.05, house_ns });
+        world.apply(Event::Occupancy {
+            crossing,
+            level_samples,
+            deviation_samples: 0.05,
+            house_ns,
+        });
     }
-    let after = world.engine.status(&id("x"), world.now).expect("it was declared");
+    let after = world
+        .engine
+        .status(&id("x"), world.now)
+        .expect("it was declared");
     assert!(after.phase_deviation_samples < 0.5 * before.phase_deviation_samples);
     let off = (after.phase_error_samples - world.phase("x")).abs();
     assert!(off < 4.0 * after.phase_deviation_samples, "{off}");
@@ -140,11 +216,20 @@ fn a_group_switches_together() {
     world.add_exact("house", 48_000);
     let names = ["left", "right", "back"];
     for (i, name) in names.into_iter().enumerate() {
-        world.add(clock(name, 44_100), crystal(5e-6 * i as f64, 1e-10), MICROSECOND, SECOND);
+        world.add(
+            clock(name, 44_100),
+            crystal(5e-6 * i as f64, 1e-10),
+            MICROSECOND,
+            SECOND,
+        );
         let group = Some(id("front"));
         let lead_ns = (1 + i as i64) * SECOND;
         let declaration = crossing(&format!("x-{name}"), name, "house");
-        world.cross(CrossingDeclaration { group, lead_ns, ..declaration });
+        world.cross(CrossingDeclaration {
+            group,
+            lead_ns,
+            ..declaration
+        });
     }
     world.run_until(3 * HOUR);
     let changes = |name: &str| -> Vec<(i64, i64)> {
@@ -156,7 +241,11 @@ fn a_group_switches_together() {
     assert_eq!(changes("left"), changes("right"));
     assert_eq!(changes("left"), changes("back"));
     // The longest lead counts for all.
-    assert!(changes("left").iter().all(|(decided, effect)| effect - decided == 3 * SECOND));
+    assert!(
+        changes("left")
+            .iter()
+            .all(|(decided, effect)| effect - decided == 3 * SECOND)
+    );
     let along = |s: &&Setting| s.reason == Reason::Group;
     assert!(world.tally("x-left").settings.iter().filter(along).count() > 0);
     for name in names {
@@ -169,11 +258,27 @@ fn another_rate_begins_anew() {
     let mut world = facility(crystal(8e-6, 1e-10));
     world.run_until(HOUR);
     world.apply(Event::DeclareClock(clock("desk", 32_000)));
-    let newest = world.tally("x").settings.last().expect("settings were made");
-    assert_eq!((newest.reason, newest.average().to_string()), (Reason::Declaration, "3/2".into()));
-    let status = world.engine.status(&id("x"), world.now).expect("it was declared");
-    assert_eq!((status.state, status.phase_error_samples), (CrossingState::Waiting, 0.0));
-    let estimate = world.engine.estimate(&id("desk"), world.now).expect("it was declared");
+    let newest = world
+        .tally("x")
+        .settings
+        .last()
+        .expect("settings were made");
+    assert_eq!(
+        (newest.reason, newest.average().to_string()),
+        (Reason::Declaration, "3/2".into())
+    );
+    let status = world
+        .engine
+        .status(&id("x"), world.now)
+        .expect("it was declared");
+    assert_eq!(
+        (status.state, status.phase_error_samples),
+        (CrossingState::Waiting, 0.0)
+    );
+    let estimate = world
+        .engine
+        .estimate(&id("desk"), world.now)
+        .expect("it was declared");
     assert!(!estimate.measured && estimate.estimate.state == State::FreeRunning);
 }
 
@@ -181,15 +286,24 @@ fn another_rate_begins_anew() {
 fn other_bounds_are_decided_at_once_and_a_name_changes_nothing() {
     let mut world = facility(crystal(8e-6, 1e-10));
     world.run_until(HOUR);
-    let declared = world.engine.crossing(&id("x")).expect("it was declared").clone();
+    let declared = world
+        .engine
+        .crossing(&id("x"))
+        .expect("it was declared")
+        .clone();
     let bounds = ratewright_ratio::Bounds::new(512, 512).expect("in range");
     let narrower = CrossingDeclaration { bounds, ..declared };
     let effects = world.apply(Event::DeclareCrossing(narrower.clone()));
     assert_eq!(effects.settings.len(), 1);
     assert_eq!(effects.settings[0].reason, Reason::Declaration);
-    effects.settings[0].verify(&bounds).expect("the proof is for the new bounds");
+    effects.settings[0]
+        .verify(&bounds)
+        .expect("the proof is for the new bounds");
     world.run_until(world.now + 5 * SECOND);
-    let renamed = CrossingDeclaration { display_name: "Desk to house".into(), ..narrower };
+    let renamed = CrossingDeclaration {
+        display_name: "Desk to house".into(),
+        ..narrower
+    };
     let effects = world.apply(Event::DeclareCrossing(renamed));
     assert!(effects.settings.is_empty());
 }
@@ -199,7 +313,11 @@ fn a_setting_explains_itself_in_words_and_numbers() {
     let mut world = facility(crystal(8e-6, 1e-10));
     world.run_until(HOUR);
     let declared = world.engine.crossing(&id("x")).expect("it was declared");
-    let newest = world.tally("x").settings.last().expect("settings were made");
+    let newest = world
+        .tally("x")
+        .settings
+        .last()
+        .expect("settings were made");
     let text = explain(newest, declared).join("\n");
     for part in [
         format!("Setting 1/{} of x:", newest.number),
@@ -217,8 +335,14 @@ fn a_setting_explains_itself_in_words_and_numbers() {
 fn a_device_is_composed_with_its_host() {
     // The host runs 20 ppm fast; the device, read against it, 5 ppm fast of the host.
     let mut engine = ratewright_control::Engine::new(1);
-    for declaration in [world::exact_clock("house", 48_000), clock("host", 1_000_000), clock("desk", 48_000)] {
-        engine.apply(&Event::DeclareClock(declaration), 0).expect("good");
+    for declaration in [
+        world::exact_clock("house", 48_000),
+        clock("host", 1_000_000),
+        clock("desk", 48_000),
+    ] {
+        engine
+            .apply(&Event::DeclareClock(declaration), 0)
+            .expect("good");
     }
     let read = |name: &str, reference, count, reference_ns, sequence| {
         Event::Reading(ratewright_control::Reading {
@@ -226,23 +350,46 @@ fn a_device_is_composed_with_its_host() {
             reference,
             probe: "rack".into(),
             sequence,
-            measurement: Measurement::Counter { count, bits: 64, reference_ns },
+            measurement: Measurement::Counter {
+                count,
+                bits: 64,
+                reference_ns,
+            },
         })
     };
     use ratewright_control::Reference::{Clock, House};
     for i in 1..=600_u64 {
         let now = i as i64 * SECOND;
         let host_ns = now + i as i64 * 20_000;
-        engine.apply(&read("host", House, i * 1_000_020, now, i), now).expect("good");
+        engine
+            .apply(&read("host", House, i * 1_000_020, now, i), now)
+            .expect("good");
         let count = (48_000.0 * host_ns as f64 * 1e-9 * (1.0 + 5e-6)).round() as u64;
-        engine.apply(&read("desk", Clock(id("host")), count, host_ns, i), now).expect("good");
+        engine
+            .apply(&read("desk", Clock(id("host")), count, host_ns, i), now)
+            .expect("good");
     }
-    let estimate = engine.estimate(&id("desk"), 600 * SECOND).expect("declared").estimate;
+    let estimate = engine
+        .estimate(&id("desk"), 600 * SECOND)
+        .expect("declared")
+        .estimate;
     let truth = (1.0 + 20e-6) * (1.0 + 5e-6) - 1.0;
     assert!((estimate.drift - truth).abs() < 2e-7, "{}", estimate.drift);
     assert!(estimate.low < truth && truth < estimate.high);
-    let refused = engine.apply(&read("host", Clock(id("desk")), 1, 1, 1), 601 * SECOND).expect_err("a cycle");
-    assert_eq!((refused.field.as_str(), refused.value.as_str()), ("reference", "desk"));
-    let refused = engine.apply(&Event::DeleteClock(id("host")), 601 * SECOND).expect_err("it is used");
-    assert!(refused.accepted.contains("clock desk is measured against it"), "{refused}");
+    let refused = engine
+        .apply(&read("host", Clock(id("desk")), 1, 1, 1), 601 * SECOND)
+        .expect_err("a cycle");
+    assert_eq!(
+        (refused.field.as_str(), refused.value.as_str()),
+        ("reference", "desk")
+    );
+    let refused = engine
+        .apply(&Event::DeleteClock(id("host")), 601 * SECOND)
+        .expect_err("it is used");
+    assert!(
+        refused
+            .accepted
+            .contains("clock desk is measured against it"),
+        "{refused}"
+    );
 }

@@ -12,7 +12,12 @@ fn desk_into_house(drift: f64, source_hz: u64, declaration: CrossingDeclaration)
     let mut world = World::new();
     world.add_exact("house", 48_000);
     let delay = Delay::Normal { deviation_s: 1e-6 };
-    world.add(clock("desk", source_hz), crystal(drift, 1e-10), delay, SECOND);
+    world.add(
+        clock("desk", source_hz),
+        crystal(drift, 1e-10),
+        delay,
+        SECOND,
+    );
     world.cross(declaration);
     world
 }
@@ -20,7 +25,12 @@ fn desk_into_house(drift: f64, source_hz: u64, declaration: CrossingDeclaration)
 fn single(max: u64, headroom_samples: f64) -> CrossingDeclaration {
     let bounds = Bounds::new(max, max).expect("in range");
     let realisation = Realisation::Single;
-    CrossingDeclaration { bounds, realisation, headroom_samples, ..crossing("x", "desk", "house") }
+    CrossingDeclaration {
+        bounds,
+        realisation,
+        headroom_samples,
+        ..crossing("x", "desk", "house")
+    }
 }
 
 #[test]
@@ -31,8 +41,17 @@ fn wide_bounds_hold_with_single_ratios() {
     world.run_until(3 * HOUR);
     let tally = world.tally("x");
     assert!(tally.worst <= 4.0, "worst {}", tally.worst);
-    assert!(tally.settings.iter().all(|s| matches!(s.realised, Realised::Single(_))));
-    assert!(tally.settings.len() < 60, "{} settings", tally.settings.len());
+    assert!(
+        tally
+            .settings
+            .iter()
+            .all(|s| matches!(s.realised, Realised::Single(_)))
+    );
+    assert!(
+        tally.settings.len() < 60,
+        "{} settings",
+        tally.settings.len()
+    );
 }
 
 #[test]
@@ -44,9 +63,13 @@ fn narrow_bounds_switch_lazily_between_ratios() {
     let (tally, bounds) = (world.tally("x"), Bounds::new(1024, 1024).expect("in range"));
     assert!(tally.worst <= 24.0, "worst {}", tally.worst);
     for setting in &tally.settings {
-        let Realised::Single(ratio) = setting.realised else { panic!("one ratio at a time") };
+        let Realised::Single(ratio) = setting.realised else {
+            panic!("one ratio at a time")
+        };
         assert!(bounds.allow(&ratio));
-        setting.verify(&bounds).expect("every certificate proves its setting");
+        setting
+            .verify(&bounds)
+            .expect("every certificate proves its setting");
     }
 }
 
@@ -54,20 +77,41 @@ fn narrow_bounds_switch_lazily_between_ratios() {
 fn a_gap_too_wide_for_single_ratios_is_out_of_bounds_and_forecast() {
     let mut world = desk_into_house(0.5e-6, 48_000, single(1024, 4.0));
     world.run_until(80 * SECOND);
-    let status = world.engine.status(&id("x"), world.now).expect("it was declared");
-    assert_eq!(status.state, CrossingState::OutOfBounds, "{}", status.reason);
+    let status = world
+        .engine
+        .status(&id("x"), world.now)
+        .expect("it was declared");
+    assert_eq!(
+        status.state,
+        CrossingState::OutOfBounds,
+        "{}",
+        status.reason
+    );
     let newest = status.setting.as_ref().expect("there is always a setting");
     assert_eq!(newest.realised, Realised::Single(Ratio::new(1, 1)));
     // 1/1 makes 0.5 ppm of 48,000 samples a second too much: 0.024/s.
-    assert!((status.target - 1.0 + 0.5e-6).abs() < 1e-7, "{}", status.target);
+    assert!(
+        (status.target - 1.0 + 0.5e-6).abs() < 1e-7,
+        "{}",
+        status.target
+    );
     let expected = (4.0 - world.phase("x")) / 0.024;
     let forecast = status.seconds_to_slip.expect("it slips soon");
-    assert!((forecast - expected).abs() < 0.3 * expected, "{forecast} for {expected}");
+    assert!(
+        (forecast - expected).abs() < 0.3 * expected,
+        "{forecast} for {expected}"
+    );
     // And it is right: the account says so when it happens.
     world.run_until(80 * SECOND + (1.5 * expected * 1e9) as i64);
-    let status = world.engine.status(&id("x"), world.now).expect("it was declared");
+    let status = world
+        .engine
+        .status(&id("x"), world.now)
+        .expect("it was declared");
     assert!(world.phase("x") > 4.0 && status.phase_error_samples > 4.0);
-    assert_eq!((status.state, status.seconds_to_slip), (CrossingState::OutOfBounds, Some(0.0)));
+    assert_eq!(
+        (status.state, status.seconds_to_slip),
+        (CrossingState::OutOfBounds, Some(0.0))
+    );
 }
 
 #[test]
@@ -75,16 +119,31 @@ fn exact_clocks_never_slip_and_are_only_confirmed() {
     let mut world = World::new();
     world.add_exact("disc", 44_100);
     world.add_exact("house", 48_000);
-    world.cross(CrossingDeclaration { source: id("disc"), ..single(256, 0.5) });
+    world.cross(CrossingDeclaration {
+        source: id("disc"),
+        ..single(256, 0.5)
+    });
     world.run_until(5 * HOUR);
     let tally = world.tally("x");
     let ratio = Ratio::new(160, 147);
     for setting in &tally.settings {
-        assert_eq!((setting.wanted, setting.realised), (ratio, Realised::Single(ratio)));
+        assert_eq!(
+            (setting.wanted, setting.realised),
+            (ratio, Realised::Single(ratio))
+        );
         assert_eq!((setting.residual, setting.seconds_to_slip), (0.0, None));
     }
     let reasons: Vec<Reason> = tally.settings.iter().map(|s| s.reason).collect();
-    assert_eq!(reasons, [Reason::First, Reason::Renewal, Reason::Renewal, Reason::Renewal, Reason::Renewal]);
+    assert_eq!(
+        reasons,
+        [
+            Reason::First,
+            Reason::Renewal,
+            Reason::Renewal,
+            Reason::Renewal,
+            Reason::Renewal
+        ]
+    );
     assert_eq!((tally.changes.len(), tally.worst < 1e-6), (1, true));
 }
 
@@ -95,7 +154,10 @@ fn exact_clocks_whose_ratio_the_bounds_cannot_make_get_its_cadence() {
     let mut pulled = world::exact_clock("house", 48_000);
     pulled.nominal_hz = Ratio::new(48_000_000, 1001);
     world.apply(ratewright_control::Event::DeclareClock(pulled));
-    let declaration = CrossingDeclaration { source: id("disc"), ..crossing("x", "desk", "house") };
+    let declaration = CrossingDeclaration {
+        source: id("disc"),
+        ..crossing("x", "desk", "house")
+    };
     let effects = world.apply(ratewright_control::Event::DeclareCrossing(declaration));
     let setting = &effects.settings[0];
     assert_eq!(setting.wanted, Ratio::new(160_000, 147_147));

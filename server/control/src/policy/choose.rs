@@ -147,9 +147,15 @@ impl View<'_> {
         if velocity.abs() * PLAN_HORIZON_S < limits.tube {
             return false;
         }
-        let (low, high) = if velocity > 0.0 { (-limits.pitch, 0.0) } else { (0.0, limits.pitch) };
+        let (low, high) = if velocity > 0.0 {
+            (-limits.pitch, 0.0)
+        } else {
+            (0.0, limits.pitch)
+        };
         let other = allowed(self.outlook.ratio(low), self.outlook.ratio(high));
-        other.and_then(|other| other.any_single(&self.declaration.bounds)).is_none()
+        other
+            .and_then(|other| other.any_single(&self.declaration.bounds))
+            .is_none()
     }
 
     /// One ratio at a time: the longest hold for which the bounds have a ratio.

@@ -11,8 +11,8 @@ use std::collections::BTreeMap;
 
 use num_rational::Ratio;
 use ratewright_control::{
-    ClockDeclaration, CrossingDeclaration, CrossingState, Effects, Engine, Event, Id, Reading, Realisation,
-    Realised, Reference, Setting, Transition,
+    ClockDeclaration, CrossingDeclaration, CrossingState, Effects, Engine, Event, Id, Reading,
+    Realisation, Realised, Reference, Setting, Transition,
 };
 use ratewright_ratio::Bounds;
 use ratewright_timing::Measurement;
@@ -37,7 +37,10 @@ pub fn clock(name: &str, hz: u64) -> ClockDeclaration {
 }
 
 pub fn exact_clock(name: &str, hz: u64) -> ClockDeclaration {
-    ClockDeclaration { exact: true, ..clock(name, hz) }
+    ClockDeclaration {
+        exact: true,
+        ..clock(name, hz)
+    }
 }
 
 pub fn crossing(name: &str, source: &str, sink: &str) -> CrossingDeclaration {
@@ -57,7 +60,11 @@ pub fn crossing(name: &str, source: &str, sink: &str) -> CrossingDeclaration {
 
 /// A crystal that is off by so much, with the wander of the two-layer table.
 pub fn crystal(drift: f64, walk_per_root_s: f64) -> ClockModel {
-    ClockModel { drift, walk_fm: walk_per_root_s * walk_per_root_s, ..ClockModel::crystal() }
+    ClockModel {
+        drift,
+        walk_fm: walk_per_root_s * walk_per_root_s,
+        ..ClockModel::crystal()
+    }
 }
 
 /// A clock with the path by which it is read.
@@ -82,7 +89,11 @@ impl Device {
         let count = shown.floor();
         let late_s = self.path.delay_s(now)? - (shown - count) / hz;
         let reference_ns = now + (late_s * 1e9).round() as i64;
-        Some(Measurement::Counter { count: count as u64, bits: 64, reference_ns })
+        Some(Measurement::Counter {
+            count: count as u64,
+            bits: 64,
+            reference_ns,
+        })
     }
 }
 
@@ -142,12 +153,22 @@ impl World {
 
     /// An exact clock: its truth has no drift, nobody reads it.
     pub fn add_exact(&mut self, name: &str, hz: u64) {
-        let still = ClockModel { white_fm: 0.0, walk_fm: 0.0, ..ClockModel::crystal() };
+        let still = ClockModel {
+            white_fm: 0.0,
+            walk_fm: 0.0,
+            ..ClockModel::crystal()
+        };
         self.add(exact_clock(name, hz), still, Delay::None, i64::MAX);
     }
 
     /// A clock that is read every `period_ns` with this noise.
-    pub fn add(&mut self, declaration: ClockDeclaration, model: ClockModel, delay: Delay, period_ns: i64) {
+    pub fn add(
+        &mut self,
+        declaration: ClockDeclaration,
+        model: ClockModel,
+        delay: Delay,
+        period_ns: i64,
+    ) {
         let seed = 1000 + 17 * self.devices.len() as u64;
         self.add_seeded(declaration, model, delay, period_ns, seed);
     }
@@ -162,7 +183,11 @@ impl World {
     ) {
         self.apply(Event::DeclareClock(declaration.clone()));
         self.devices.push(Device {
-            next_ns: if period_ns == i64::MAX { i64::MAX } else { self.now + period_ns / 2 },
+            next_ns: if period_ns == i64::MAX {
+                i64::MAX
+            } else {
+                self.now + period_ns / 2
+            },
             declaration,
             truth: Clock::new(model, seed),
             path: Path::new(PathModel::new(delay), seed + 1),
@@ -178,7 +203,10 @@ impl World {
     }
 
     fn device(&self, name: &str) -> usize {
-        let found = self.devices.iter().position(|d| d.declaration.id.as_str() == name);
+        let found = self
+            .devices
+            .iter()
+            .position(|d| d.declaration.id.as_str() == name);
         found.expect("the test has added it")
     }
 
@@ -197,19 +225,27 @@ impl World {
             phase: 0.0,
             tally: Tally::default(),
         };
-        self.running.entry(declaration.id.clone()).or_insert(running);
+        self.running
+            .entry(declaration.id.clone())
+            .or_insert(running);
         self.apply(Event::DeclareCrossing(declaration));
     }
 
     /// The follower of a crossing takes settings so late, and says so or not.
     pub fn follow_late(&mut self, name: &str, late_ns: i64, reports: bool) {
-        let running = self.running.get_mut(&id(name)).expect("the test has declared it");
+        let running = self
+            .running
+            .get_mut(&id(name))
+            .expect("the test has declared it");
         (running.late_ns, running.reports) = (late_ns, reports);
     }
 
     /// Somebody moves the buffer by so many samples.
     pub fn move_buffer(&mut self, name: &str, samples: f64) {
-        self.running.get_mut(&id(name)).expect("the test has declared it").phase += samples;
+        self.running
+            .get_mut(&id(name))
+            .expect("the test has declared it")
+            .phase += samples;
     }
 
     pub fn phase(&mut self, name: &str) -> f64 {
@@ -233,15 +269,22 @@ impl World {
         if let Some(journal) = &mut self.journal {
             journal.push((event.clone(), self.now));
         }
-        let effects = self.engine.apply(&event, self.now).expect("the world sends good events");
+        let effects = self
+            .engine
+            .apply(&event, self.now)
+            .expect("the world sends good events");
         for setting in &effects.settings {
-            let Some(running) = self.running.get_mut(&setting.crossing) else { continue };
+            let Some(running) = self.running.get_mut(&setting.crossing) else {
+                continue;
+            };
             let before = running.tally.settings.last().map(Setting::average);
             if before != Some(setting.average()) {
                 running.tally.changes.push((self.now, average(setting)));
             }
             running.tally.settings.push(setting.clone());
-            running.coming.push((setting.effect_ns + running.late_ns, setting.clone()));
+            running
+                .coming
+                .push((setting.effect_ns + running.late_ns, setting.clone()));
         }
         for transition in &effects.transitions {
             if let Transition::Crossing { crossing, to, .. } = transition
@@ -257,7 +300,12 @@ impl World {
     /// Lets time pass: readings come in, timers fire, settings take effect.
     pub fn run_until(&mut self, end_ns: i64) {
         loop {
-            let reading = self.devices.iter().map(|d| d.next_ns).min().unwrap_or(i64::MAX);
+            let reading = self
+                .devices
+                .iter()
+                .map(|d| d.next_ns)
+                .min()
+                .unwrap_or(i64::MAX);
             let due = self.engine.next_due().unwrap_or(i64::MAX).max(self.now);
             let next = reading.min(due).min(self.next_effect()).min(end_ns);
             self.now = next;
@@ -276,14 +324,21 @@ impl World {
     }
 
     fn next_effect(&self) -> i64 {
-        let coming = self.running.values().flat_map(|r| r.coming.first().map(|(at, _)| *at));
+        let coming = self
+            .running
+            .values()
+            .flat_map(|r| r.coming.first().map(|(at, _)| *at));
         coming.min().unwrap_or(i64::MAX)
     }
 
     fn take_effect(&mut self) {
         let mut reports = Vec::new();
         for running in self.running.values_mut() {
-            while running.coming.first().is_some_and(|(at, _)| *at <= self.now) {
+            while running
+                .coming
+                .first()
+                .is_some_and(|(at, _)| *at <= self.now)
+            {
                 let (house_ns, setting) = running.coming.remove(0);
                 running.ratio = Some(average(&setting));
                 running.cadence_error = match setting.realised {
@@ -294,8 +349,19 @@ impl World {
                     }
                 };
                 if running.reports {
-                    let Setting { crossing, epoch, number, .. } = setting;
-                    reports.push(Event::Applied { crossing, epoch, number, house_ns, sink_sample: 0 });
+                    let Setting {
+                        crossing,
+                        epoch,
+                        number,
+                        ..
+                    } = setting;
+                    reports.push(Event::Applied {
+                        crossing,
+                        epoch,
+                        number,
+                        house_ns,
+                        sink_sample: 0,
+                    });
                 }
             }
         }
@@ -311,7 +377,9 @@ impl World {
             device.sequence += 1;
             let silent = (device.silence.0..device.silence.1).contains(&now);
             let measured = device.measure(now);
-            let Some(measurement) = measured.filter(|_| !silent) else { continue };
+            let Some(measurement) = measured.filter(|_| !silent) else {
+                continue;
+            };
             readings.push(Event::Reading(Reading {
                 clock: device.declaration.id.clone(),
                 reference: Reference::House,
@@ -330,7 +398,9 @@ impl World {
         let now = self.now;
         for running in self.running.values_mut() {
             let from = std::mem::replace(&mut running.at_ns, now);
-            let Some(ratio) = running.ratio.filter(|_| from < now) else { continue };
+            let Some(ratio) = running.ratio.filter(|_| from < now) else {
+                continue;
+            };
             let mut gained = |device: usize| {
                 let device = &mut self.devices[device];
                 let hz = device.declaration.nominal_hz;
@@ -351,7 +421,9 @@ impl World {
         }
         self.next_compare_ns = self.now + 60 * SECOND;
         for (name, running) in &mut self.running {
-            let Some(status) = self.engine.status(name, self.now) else { continue };
+            let Some(status) = self.engine.status(name, self.now) else {
+                continue;
+            };
             let off = (status.phase_error_samples - running.phase).abs();
             running.tally.worst_account = running.tally.worst_account.max(off);
         }
