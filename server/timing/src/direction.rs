@@ -20,7 +20,13 @@ pub(crate) struct Direction {
     pub(crate) information: f64,
     step: StepEvidence,
     route: RouteEvidence,
+    /// Probability that the next row falls into a burst of queueing.
+    burst: f64,
 }
+
+/// Chance that a row begins a burst, and that a row ends one.
+const BURST_BEGINS: f64 = 1.0 / 500.0;
+const BURST_ENDS: f64 = 1.0 / 40.0;
 
 /// What a row tells about events in its direction.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -55,6 +61,7 @@ struct StepEvidence {
 struct RouteEvidence {
     late: u32,
     least: f64,
+    mean: f64,
     hit_rate: f64,
 }
 
@@ -92,9 +99,24 @@ impl Direction {
             route: RouteEvidence {
                 late: 0,
                 least: 0.0,
+                mean: 0.0,
                 hit_rate: 0.5,
             },
+            burst: BURST_BEGINS,
         }
+    }
+
+    /// The density to expect of the next row: queues come in bursts, in which late rows are no
+    /// evidence of anything else.
+    pub(crate) fn expected_noise(&self) -> Noise {
+        self.noise.in_burst(self.burst)
+    }
+
+    /// Two-state hidden Markov filter: calm, or a burst in which rows are of the second tail.
+    fn follow_burst(&mut self, detail: &Detail) {
+        let second = (1.0 - self.burst) * self.noise.weights[2] + self.burst;
+        let within = (detail.shares[2] * self.burst / second).clamp(0.0, 1.0);
+        self.burst = within * (1.0 - BURST_ENDS) + (1.0 - within) * BURST_BEGINS;
     }
 
     /// λ: the number of rows that speak as one, for they agree with each other.
@@ -106,6 +128,7 @@ impl Direction {
     /// because the density now settles elsewhere, that is done, and the distance returned.
     pub(crate) fn learn(&mut self, detail: &Detail, p: f64, least_sigma: f64) -> f64 {
         self.correlation.take(detail.score.first);
+        self.follow_burst(detail);
         let first = detail.score.first;
         self.information += (first * first - self.information) / 64.0;
         if !self.learner.learn(&self.noise, detail) {
@@ -160,13 +183,16 @@ impl Direction {
             route.late = 0;
             return Verdict::Ordinary;
         }
-        route.least = if route.late == 0 {
-            e
-        } else {
-            route.least.min(e)
-        };
+        if route.late == 0 {
+            (route.least, route.mean) = (e, e);
+        }
         route.late += 1;
-        let enough = 14.0 * self.correlation.thinning() / route.hit_rate.max(0.02);
+        route.least = route.least.min(e);
+        route.mean += (e - route.mean) / route.late as f64;
+        // A longer route is as steady as the old one; a congested one is not.
+        let unsteady = ((route.mean - route.least) / self.noise.mean_lateness()).max(1.0);
+        let thinning = self.correlation.thinning();
+        let enough = 14.0 * thinning.min(3.0) * unsteady.min(2.0) / route.hit_rate.max(0.02);
         if route.late < 12 || (route.late as f64) <= enough {
             return Verdict::Ordinary;
         }

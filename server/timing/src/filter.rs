@@ -163,11 +163,12 @@ impl Filter {
         let mixture = self.bank.mixture();
         let value = z - direction.offset;
         let e = direction.sign * (value - mixture.x);
-        let detail = direction.noise.detail(e, mixture.xx);
+        let noise = if self.two_way { direction.expected_noise() } else { direction.noise };
+        let detail = noise.detail(e, mixture.xx);
         let sight = Sight {
             value,
             sign: direction.sign,
-            noise: &direction.noise,
+            noise: &noise,
             thinning: direction.thinning(),
         };
         self.bank.correct(&sight, &mixture, &detail);

@@ -93,6 +93,19 @@ impl Noise {
         4.0 * (self.sigma + self.tau[0])
     }
 
+    /// Mean lateness beyond the least, µs: spread of the normal part and mean of the tails.
+    pub(crate) fn mean_lateness(&self) -> f64 {
+        self.sigma + self.weights[1] * self.tau[0] + self.weights[2] * self.tau[1]
+    }
+
+    /// The density while the path is in a burst with the given probability: what it moves from
+    /// the other parts to the second tail.
+    pub(crate) fn in_burst(&self, probability: f64) -> Noise {
+        let [normal, first, second] = self.weights.map(|w| w * (1.0 - probability));
+        let weights = [normal, first, second + probability * (1.0 - self.flat)];
+        Noise { weights, ..*self }
+    }
+
     /// Log density and derivatives of error `e` seen by a state of phase variance `p`.
     #[inline]
     pub(crate) fn score(&self, e: f64, p: f64) -> Score {
