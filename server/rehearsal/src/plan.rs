@@ -63,13 +63,6 @@ pub enum DeviceReading {
         /// From the latch to the reading of the host's clock.
         latch: Delay,
     },
-    /// The same, but the latch waits for a tick: for clocks that tick slowly, such as frames.
-    TickEdge {
-        /// Width of the counter, 1 to 64.
-        bits: u32,
-        /// From the tick to the reading of the host's clock.
-        latch: Delay,
-    },
     /// A frequency counter on house time.
     Frequency {
         /// Standard deviation of its result, dimensionless.
@@ -154,15 +147,11 @@ fn check_share(field: impl Fn() -> String, value: f64) -> Result<(), PlanError> 
 fn check_reading(i: usize, reading: DeviceReading) -> Result<(), PlanError> {
     let field = |name: &str| format!("devices[{i}].reading.{name}");
     match reading {
-        DeviceReading::Counter { bits, .. } | DeviceReading::TickEdge { bits, .. }
-            if !(1..=64).contains(&bits) =>
-        {
-            Err(PlanError {
-                field: field("bits"),
-                value: bits.to_string(),
-                accepted: "1 to 64",
-            })
-        }
+        DeviceReading::Counter { bits, .. } if !(1..=64).contains(&bits) => Err(PlanError {
+            field: field("bits"),
+            value: bits.to_string(),
+            accepted: "1 to 64",
+        }),
         DeviceReading::Frequency { deviation } if deviation.is_nan() || deviation <= 0.0 => {
             Err(PlanError {
                 field: field("deviation"),

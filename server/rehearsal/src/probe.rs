@@ -5,11 +5,11 @@ use ratewright_control::{HouseNs, Id, Reading, Reference};
 use ratewright_timing::Measurement;
 
 use crate::{
-    clock::{NS_PER_S, Oscillator, Truth, Walker},
+    clock::{Oscillator, Truth, Walker},
     dice::Dice,
     link::{Delay, Link},
     plan::{Device, DeviceReading, Host},
-    ticks::{hz, ticks},
+    ticks::ticks,
 };
 
 /// A reading, and when it reaches the house.
@@ -199,10 +199,6 @@ impl Probe {
     ) -> (i64, Reference, Measurement) {
         match reading {
             DeviceReading::Counter { bits, latch } => self.read_counter(index, at_ns, bits, latch),
-            DeviceReading::TickEdge { bits, latch } => {
-                let edge_ns = self.next_tick_ns(at_ns);
-                self.read_counter(index, edge_ns, bits, latch)
-            }
             DeviceReading::Frequency { deviation } => {
                 let error = deviation * self.dice.lane(4).normal(index);
                 let drift = self.walker.at(at_ns).drift + error;
@@ -228,7 +224,7 @@ impl Probe {
         latch: Delay,
     ) -> (i64, Reference, Measurement) {
         let Truth { phase_ns, .. } = self.walker.at(latched_ns);
-        let (ticks, _) = ticks(self.nominal_hz, latched_ns, phase_ns);
+        let ticks = ticks(self.nominal_hz, latched_ns, phase_ns);
         let delay_ns = latch.draw_ns(self.dice.lane(5), index);
         let stamped_ns = latched_ns + delay_ns.min(self.patience_ns());
         let measurement = Measurement::Counter {
@@ -247,14 +243,6 @@ impl Probe {
     fn first_count(&self, bits: u32) -> i128 {
         let span = (1_u64 << bits.min(40)) as f64;
         (self.dice.lane(6).uniform(0) * span) as i128
-    }
-
-    /// When the clock ticks next after `at_ns`: the first whole ns at which its counter shows it.
-    fn next_tick_ns(&mut self, at_ns: i64) -> i64 {
-        let Truth { phase_ns, drift } = self.walker.at(at_ns);
-        let (_, part) = ticks(self.nominal_hz, at_ns, phase_ns);
-        let wait_s = (1.0 - part) / (hz(self.nominal_hz) * (1.0 + drift));
-        at_ns + libm::ceil(wait_s * NS_PER_S) as i64
     }
 
     fn host_shows(&mut self, at_ns: i64) -> i64 {

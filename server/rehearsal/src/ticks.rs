@@ -7,26 +7,20 @@ use crate::clock::NS_PER_S;
 /// Fractions of a nanosecond are kept to 2^-20 ns, so that a tick is never lost to rounding.
 const FRACTION_BITS: u32 = 20;
 
-/// What a counter shows once `elapsed_ns` of house time have passed and the clock has gained
-/// `phase_ns` on it: whole ticks from the origin, and the part of the next one (0 to 1).
-pub(crate) fn ticks(nominal_hz: Ratio<u64>, elapsed_ns: i64, phase_ns: f64) -> (i128, f64) {
+/// What a counter shows, counted from the origin, once `elapsed_ns` of house time have passed and the
+/// clock has gained `phase_ns` on it.
+pub(crate) fn ticks(nominal_hz: Ratio<u64>, elapsed_ns: i64, phase_ns: f64) -> i128 {
     let one = 1_i128 << FRACTION_BITS;
     // |phase| < 2^53 ns (104 days gained), and 2^20 times that fits an i128 with room to spare.
     let local = i128::from(elapsed_ns) * one + (phase_ns * one as f64) as i128;
-    let scaled = local * i128::from(*nominal_hz.numer());
     let per_tick = i128::from(*nominal_hz.denom()) * NS_PER_S as i128 * one;
-    let whole = scaled.div_euclid(per_tick);
-    (whole, scaled.rem_euclid(per_tick) as f64 / per_tick as f64)
+    (local * i128::from(*nominal_hz.numer())).div_euclid(per_tick)
 }
 
 /// Ticks that pass in `elapsed_ns` of house time while the clock gains `gained_ns` on it.
 pub(crate) fn ticks_within(nominal_hz: Ratio<u64>, elapsed_ns: i64, gained_ns: f64) -> f64 {
-    hz(nominal_hz) * ((elapsed_ns as f64 + gained_ns) / NS_PER_S)
-}
-
-/// A rate in Hz, rounded.
-pub(crate) fn hz(nominal_hz: Ratio<u64>) -> f64 {
-    *nominal_hz.numer() as f64 / *nominal_hz.denom() as f64
+    let hz = *nominal_hz.numer() as f64 / *nominal_hz.denom() as f64;
+    hz * ((elapsed_ns as f64 + gained_ns) / NS_PER_S)
 }
 
 #[cfg(test)]
@@ -37,21 +31,21 @@ mod tests {
 
     #[test]
     fn a_second_of_48k_is_48000_ticks() {
-        assert_eq!(ticks(Ratio::from_integer(48_000), S, 0.0), (48_000, 0.0));
-        assert_eq!(ticks(Ratio::from_integer(48_000), S - 1, 0.0).0, 47_999);
+        assert_eq!(ticks(Ratio::from_integer(48_000), S, 0.0), 48_000);
+        assert_eq!(ticks(Ratio::from_integer(48_000), S - 1, 0.0), 47_999);
     }
 
     /// One part per million fast for a day of 29.97: 86,400·30000/1001·(1 + 1e-6) frames.
     #[test]
     fn gained_time_gains_ticks() {
-        let (whole, part) = ticks(Ratio::new(30_000, 1001), 86_400 * S, 86_400.0 * 1e3);
-        let exact = 86_400.0 * 30_000.0 / 1001.0 * (1.0 + 1e-6);
-        assert!((whole as f64 + part - exact).abs() < 1e-6, "{whole} {part}");
+        let whole = ticks(Ratio::new(30_000, 1001), 86_400 * S, 86_400.0 * 1e3);
+        let exact: f64 = 86_400.0 * 30_000.0 / 1001.0 * (1.0 + 1e-6);
+        assert_eq!(whole, exact.floor() as i128);
     }
 
     #[test]
     fn three_years_of_a_terahertz_do_not_overflow() {
-        let (whole, _) = ticks(Ratio::from_integer(1_000_000_000_000), 94_608_000 * S, 1e15);
+        let whole = ticks(Ratio::from_integer(1_000_000_000_000), 94_608_000 * S, 1e15);
         assert_eq!(
             whole,
             94_608_000_i128 * 1_000_000_000_000 + 1_000_000_000_000_000_000

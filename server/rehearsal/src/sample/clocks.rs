@@ -83,10 +83,6 @@ pub(super) fn devices() -> Vec<Device> {
         bits: 32,
         latch: LATCH,
     };
-    let edges = DeviceReading::TickEdge {
-        bits: 32,
-        latch: LATCH,
-    };
     let bench = DeviceReading::Frequency { deviation: 2e-8 };
     let mut gramophone = crystal(-38.2, 0.8);
     gramophone.faults.push(Fault::PhaseStep {
@@ -148,7 +144,7 @@ pub(super) fn devices() -> Vec<Device> {
             whole(25),
             oven(0.88),
             "host-cellar",
-            edges,
+            bench,
         ),
         device(
             "guest-pictures",
@@ -156,7 +152,7 @@ pub(super) fn devices() -> Vec<Device> {
             Ratio::new(30_000, 1001),
             crystal(-3.4, 0.2),
             "host-cellar",
-            edges,
+            bench,
         ),
         device(
             "gramophone",
@@ -247,7 +243,7 @@ fn device(
     reading: DeviceReading,
 ) -> Device {
     let every_ns = match reading {
-        DeviceReading::Frequency { .. } => 5 * S,
+        DeviceReading::Frequency { .. } => 2 * S,
         _ => S,
     };
     Device {
