@@ -1,64 +1,127 @@
-#![allow(missing_docs, clippy::print_stdout, reason = "probe")]
+//! Measures the policy over simulated days: settings a day, worst phase error, overshoot of the
+//! tube and slips, for headrooms, timestamp noises and wanders of the source clock.
+//!
+//! `cargo run --release -p ratewright-control --example hold_table -- [DAYS [SEEDS]]`
+#![allow(clippy::print_stdout, reason = "an example prints its table")]
+
 #[path = "../tests/world/mod.rs"]
 mod world;
-use ratewright_control::*;
-use ratewright_timing::sim::Delay;
-use world::*;
 
-fn main() {
-    let a: Vec<String> = std::env::args().collect();
-    let e: f64 = a[1].parse().unwrap();
-    let noise: f64 = a[2].parse().unwrap();
-    let walk: f64 = a[3].parse().unwrap();
-    let drift: f64 = a[4].parse().unwrap();
-    let src: u64 = a[5].parse().unwrap();
-    let hours: i64 = a[6].parse().unwrap();
-    let mut w = World::new();
-    w.add_exact("house", 48_000);
-    w.add(
-        clock("dev", src),
-        crystal(drift, walk),
-        Delay::Normal { deviation_s: noise },
-        SECOND,
-    );
-    w.cross(CrossingDeclaration {
-        headroom_samples: e,
-        ..crossing("x", "dev", "house")
-    });
-    let mut worst_after = 0f64;
-    for h in 0..hours {
-        for q in 0..4 {
-            w.run_until(h * HOUR + (q + 1) * HOUR / 4);
-            let s = w.engine.status(&id("x"), w.now).unwrap();
-            let est = w.engine.estimate(&id("dev"), w.now).unwrap();
-            let t = w.tally("x").clone();
-            let ph = w.phase("x");
-            if h < 3 || q == 3 {
-                println!(
-                    "{:6.2}h set {} chg {} worst {:.3} acct {:.4} phi {:+.4} (eng {:+.4} ± {:.4}) state {:?} {:?} hold {:.0} y {:.4e} d {:.2e} xd {:.1}ns slip {:?} {}",
-                    (h * 4 + q + 1) as f64 / 4.0,
-                    t.settings.len(),
-                    t.changes.len(),
-                    t.worst,
-                    t.worst_account,
-                    ph,
-                    s.phase_error_samples,
-                    s.phase_deviation_samples,
-                    s.state,
-                    est.estimate.state,
-                    s.setting.as_ref().unwrap().evidence.expected_hold_s,
-                    est.estimate.drift - drift,
-                    est.estimate.deviation,
-                    est.estimate.phase_deviation_ns,
-                    s.seconds_to_slip.map(|x| x.round()),
-                    s.reason
-                );
+use std::thread;
+
+use ratewright_control::{CrossingDeclaration, CrossingState};
+use ratewright_timing::sim::{ClockModel, Daily, Delay};
+use world::{DAY, HOUR, SECOND, World, clock, crossing, crystal, id};
+
+/// What is varied.
+#[derive(Clone, Copy, Debug)]
+struct Cell {
+    source_hz: u64,
+    headroom: f64,
+    noise_s: f64,
+    walk: f64,
+    drift: f64,
+}
+
+/// What one run gave.
+#[derive(Clone, Copy, Debug, Default)]
+struct Run {
+    settings_a_day: f64,
+    changes_a_day: f64,
+    worst: f64,
+    degraded_share: f64,
+    slipped: bool,
+}
+
+/// The first hour is the clock's warm-up: figures count from then on.
+const SETTLED: i64 = HOUR;
+
+fn run(cell: Cell, days: i64, seed: u64) -> Run {
+    let mut world = World::new();
+    world.add_exact("house", 48_000);
+    let daily = Some(Daily { amplitude: 1e-6, angle: seed as f64 });
+    let model = ClockModel { daily, ..crystal(cell.drift, cell.walk) };
+    let delay = Delay::Normal { deviation_s: cell.noise_s };
+    world.add_seeded(clock("desk", cell.source_hz), model, delay, SECOND, 7 * seed + 1);
+    let headroom_samples = cell.headroom;
+    world.cross(CrossingDeclaration { headroom_samples, review_horizon_ns: DAY, ..crossing("x", "desk", "house") });
+    world.run_until(SETTLED);
+    world.forget();
+    world.run_until(days * DAY);
+    let tally = world.tally("x");
+    let per_day = |count: usize| count as f64 * DAY as f64 / (days * DAY - SETTLED) as f64;
+    Run {
+        settings_a_day: per_day(tally.settings.iter().filter(|s| s.decided_ns > SETTLED).count()),
+        changes_a_day: per_day(tally.changes.iter().filter(|(at, _)| *at > SETTLED).count()),
+        worst: tally.worst,
+        degraded_share: not_holding(&tally.states, days * DAY),
+        slipped: tally.worst > cell.headroom,
+    }
+}
+
+/// Share of the settled time in another state than holding.
+fn not_holding(states: &[(i64, CrossingState)], end: i64) -> f64 {
+    let ends = states.iter().skip(1).map(|(at, _)| *at).chain([end]);
+    let out = states.iter().zip(ends).filter(|((_, state), _)| *state != CrossingState::Holding);
+    let ns: i64 = out.map(|((from, _), to)| (to.max(SETTLED) - (*from).max(SETTLED)).max(0)).sum();
+    ns as f64 / (end - SETTLED) as f64
+}
+
+fn cells() -> Vec<Cell> {
+    let mut cells = Vec::new();
+    for (source_hz, headroom) in [(44_100, 0.5), (44_100, 4.0), (48_000, 4.0)] {
+        for noise_s in [1e-6, 5e-6] {
+            for walk in [1e-10, 1e-9] {
+                for drift in [2e-6, 37.3e-6] {
+                    cells.push(Cell { source_hz, headroom, noise_s, walk, drift });
+                }
             }
-            if h >= 1 {
-                worst_after = worst_after.max(t.worst);
-            }
-            w.forget();
         }
     }
-    println!("worst after 1h {worst_after}");
+    cells
+}
+
+fn median(mut values: Vec<f64>) -> f64 {
+    values.sort_by(f64::total_cmp);
+    values[values.len() / 2]
+}
+
+fn report(cell: Cell, days: i64, seeds: u64) {
+    let runs: Vec<Run> = thread::scope(|scope| {
+        let halves = [0, 1].map(|half| {
+            scope.spawn(move || -> Vec<Run> {
+                (1..=seeds).filter(|seed| seed % 2 == half).map(|seed| run(cell, days, seed)).collect()
+            })
+        });
+        halves.into_iter().flat_map(|half| half.join().expect("a run does not panic")).collect()
+    });
+    let most = |of: fn(&Run) -> f64| runs.iter().map(of).fold(0.0, f64::max);
+    let settings: Vec<f64> = runs.iter().map(|r| r.changes_a_day).collect();
+    let worst = most(|r| r.worst);
+    println!(
+        "| {} | {} | {:.0} µs | {:.0e} | {:+.1} | {:.0} / {:.0} | {:.3} | {:+.1} % | {} | {:.2} % |",
+        cell.source_hz,
+        cell.headroom,
+        cell.noise_s * 1e6,
+        cell.walk,
+        cell.drift * 1e6,
+        median(settings),
+        most(|r| r.changes_a_day),
+        worst,
+        (worst / (0.8 * cell.headroom) - 1.0) * 100.0,
+        runs.iter().filter(|r| r.slipped).count(),
+        most(|r| r.degraded_share) * 100.0,
+    );
+}
+
+fn main() {
+    let mut arguments = std::env::args().skip(1).map(|a| a.parse::<i64>());
+    let days = arguments.next().and_then(Result::ok).unwrap_or(3);
+    let seeds = arguments.next().and_then(Result::ok).unwrap_or(4) as u64;
+    println!("{seeds} seeds of {days} days; median / most changes a day; the tube is 0.8 of the headroom");
+    println!("| source Hz | headroom | timestamps | walk /√s | drift ppm | changes a day | worst abs φ | tube overshoot | runs with slips | not holding, at most |");
+    println!("| --- | --- | --- | --- | --- | --- | --- | --- | --- | --- |");
+    for cell in cells() {
+        report(cell, days, seeds);
+    }
 }
