@@ -1,0 +1,62 @@
+//! What Prometheus is told. The names live in this folder and nowhere else.
+//!
+//! Base units; `_total` counts, `_seconds` are seconds, `_ratio` is dimensionless (1e-6 is one part per
+//! million), `_samples` are samples of the crossing's sink. What is counted goes through the `metrics`
+//! crate; what the board shows is written at each scrape, so that a deleted clock is gone at once.
+//!
+//! | metric | labels | meaning |
+//! | --- | --- | --- |
+//! | `ratewright_build_info` | `version` | always 1 |
+//! | `ratewright_house_time_seconds` | | house time: seconds since 1970-01-01 on a TAI-like scale |
+//! | `ratewright_clock_drift_ratio` | `clock` | drift against house time; positive runs fast |
+//! | `ratewright_clock_drift_deviation_ratio` | `clock` | standard deviation of the drift |
+//! | `ratewright_clock_drift_half_width_ratio` | `clock` | half-width of its 95 % interval |
+//! | `ratewright_clock_state` | `clock`, `state` | 1 for the state the estimate is in, else 0: `free_running`, `acquiring`, `locked`, `holdover` |
+//! | `ratewright_clock_reading_age_seconds` | `clock` | since the newest reading; absent without one |
+//! | `ratewright_clock_lock_expected_seconds` | `clock` | until it should lock; absent when locked or not foreseeable |
+//! | `ratewright_clock_readings_used_total` | `clock` | readings the estimate rests on |
+//! | `ratewright_clock_readings_set_aside_total` | `clock` | readings set aside as outliers |
+//! | `ratewright_crossing_state` | `crossing`, `state` | 1 for the state it is in, else 0: `waiting`, `holding`, `degraded`, `out_of_bounds` |
+//! | `ratewright_crossing_target_ratio` | `crossing` | true sink rate over true source rate |
+//! | `ratewright_crossing_residual_ratio` | `crossing` | what is set over the target of its decision, minus 1 |
+//! | `ratewright_crossing_phase_error_samples` | `crossing` | phase error; positive fills a buffer after the resampler |
+//! | `ratewright_crossing_phase_deviation_samples` | `crossing` | its standard deviation |
+//! | `ratewright_crossing_headroom_samples` | `crossing` | hard limit of the phase error, both ways |
+//! | `ratewright_crossing_slip_seconds` | `crossing` | until the 95 % band of the phase error leaves the headroom; +Inf if that is not in sight |
+//! | `ratewright_crossing_settings_total` | `crossing` | settings made since the crossing was declared |
+//! | `ratewright_readings_total` | `outcome` | readings answered since the start: `accepted`, `refused` |
+//! | `ratewright_settings_total` | `reason` | settings published since the start, by why they were made |
+//! | `ratewright_transitions_total` | `kind`, `to` | changes of state since the start, of a `clock` or a `crossing`; `centred` when an account of phase error began anew |
+//! | `ratewright_streams` | | open report, watch and follow streams |
+//! | `ratewright_journal_events_total` | | events written to the journal since the start |
+//! | `ratewright_commit_duration_seconds` | | histogram: one transaction of the store, sync to disk included |
+
+mod counted;
+mod shown;
+
+pub use self::{
+    counted::{commit, install, open_streams, readings, setting, transition},
+    shown::render,
+};
+
+/// The value of a state's label.
+fn clock_state(state: ratewright_timing::State) -> &'static str {
+    use ratewright_timing::State;
+    match state {
+        State::FreeRunning => "free_running",
+        State::Acquiring => "acquiring",
+        State::Locked => "locked",
+        State::Holdover => "holdover",
+    }
+}
+
+/// The value of a state's label.
+fn crossing_state(state: ratewright_control::CrossingState) -> &'static str {
+    use ratewright_control::CrossingState;
+    match state {
+        CrossingState::Waiting => "waiting",
+        CrossingState::Holding => "holding",
+        CrossingState::Degraded => "degraded",
+        CrossingState::OutOfBounds => "out_of_bounds",
+    }
+}
