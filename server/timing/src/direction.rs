@@ -20,10 +20,16 @@ pub(crate) struct Direction {
     pub(crate) information: f64,
     step: StepEvidence,
     route: RouteEvidence,
+    /// Rows since the offset was set anew.
+    age: u32,
+    /// Rows for which the offset is sought before the direction measures the clock again.
+    settling: u32,
     /// Probability that the next row falls into a burst of queueing.
     burst: f64,
 }
 
+/// Rows that find the offset of a changed route.
+const SETTLING_ROWS: u32 = 8;
 /// Chance that a row begins a burst, and that a row ends one.
 const BURST_BEGINS: f64 = 1.0 / 500.0;
 const BURST_ENDS: f64 = 1.0 / 40.0;
@@ -55,6 +61,7 @@ struct Correlation {
 struct StepEvidence {
     count: u32,
     mean: f64,
+    least: f64,
 }
 
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
@@ -102,6 +109,8 @@ impl Direction {
                 mean: 0.0,
                 hit_rate: 0.5,
             },
+            age: 0,
+            settling: 0,
             burst: BURST_BEGINS,
         }
     }
@@ -124,13 +133,54 @@ impl Direction {
         self.correlation.thinning()
     }
 
+    /// Distance to where the row would have the error's location, µs: a Newton step of its score.
+    pub(crate) fn newton_step(&self, detail: &Detail) -> f64 {
+        let spread = 3.0 * detail.variance.sqrt();
+        (-detail.score.first / self.information).clamp(-spread, spread)
+    }
+
+    /// The route of this direction alone has changed: its offset is to be found anew, from the
+    /// clock as the other direction sees it.
+    pub(crate) fn settle(&mut self) {
+        self.age = 0;
+        self.settling = SETTLING_ROWS;
+    }
+
+    /// Whether the offset is being sought.
+    pub(crate) fn is_settling(&self) -> bool {
+        self.settling > 0
+    }
+
+    /// It was the clock that stepped: the offset stands as it is.
+    pub(crate) fn stop_settling(&mut self) {
+        self.settling = 0;
+    }
+
+    /// Takes a row to find the offset by, while that is sought; true when it was.
+    pub(crate) fn seek_offset(&mut self, detail: &Detail) -> bool {
+        if self.settling == 0 {
+            return false;
+        }
+        self.settling -= 1;
+        self.age += 1;
+        self.offset += self.sign * self.newton_step(detail) / self.age as f64;
+        true
+    }
+
+    /// Gain of a correction to the offset, falling with its age.
+    pub(crate) fn offset_gain(&mut self) -> f64 {
+        self.age = self.age.saturating_add(1);
+        (1.0 / (self.age as f64 + 16.0)).max(1.0 / 8192.0)
+    }
+
     /// Learns from a row of error `e` seen at phase variance `p`. Where the offset must move
     /// because the density now settles elsewhere, that is done, and the distance returned.
     pub(crate) fn learn(&mut self, detail: &Detail, p: f64, least_sigma: f64) -> f64 {
         self.correlation.take(detail.score.first);
         self.follow_burst(detail);
-        let first = detail.score.first;
-        self.information += (first * first - self.information) / 64.0;
+        let least = 0.02 / detail.variance;
+        let curved = self.information + (-detail.score.second - self.information) / 64.0;
+        self.information = curved.max(least);
         if !self.learner.learn(&self.noise, detail) {
             return 0.0;
         }
@@ -161,13 +211,19 @@ impl Direction {
         if step.count > 0 && (e - step.mean).abs() <= self.noise.reach() + 0.5 * p.sqrt() {
             step.count += 1;
             step.mean += (e - step.mean) / step.count as f64;
+            step.least = step.least.min(e);
         } else {
-            *step = StepEvidence { count: 1, mean: e };
+            *step = StepEvidence {
+                count: 1,
+                mean: e,
+                least: e,
+            };
         }
         if step.count < 5 {
             return Verdict::Outlier;
         }
-        self.offset += self.sign * step.mean;
+        // The least late of the five is nearest to the error's location.
+        self.offset += self.sign * (step.least + 0.5 * self.noise.sigma);
         *step = StepEvidence::default();
         self.route.late = 0;
         Verdict::Stepped

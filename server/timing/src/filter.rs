@@ -99,12 +99,14 @@ impl Filter {
         self.advance(dt, in_gap);
         let count = if self.two_way { 2 } else { 1 };
         let mut verdicts = [Verdict::Ordinary; 2];
-        let mut newton = [0.0; 2];
+        let mut newton = [None; 2];
         for c in 0..count {
             (verdicts[c], newton[c]) = self.look(c, row.z[c]);
         }
-        if self.two_way && verdicts == [Verdict::Ordinary; 2] {
-            self.split_offsets(newton);
+        if let ([Verdict::Ordinary, Verdict::Ordinary], [Some(out), Some(back)]) =
+            (verdicts, newton)
+        {
+            self.split_offsets([out, back]);
         }
         self.rows_since_event += 1;
         let outlying = verdicts[..count].contains(&Verdict::Outlier);
@@ -157,14 +159,22 @@ impl Filter {
         }
     }
 
-    /// Weighs one direction's value into the bank; its verdict and its Newton residual, µs.
-    fn look(&mut self, c: usize, z: f64) -> (Verdict, f64) {
+    /// Weighs one direction's value into the bank; its verdict, and its Newton residual, µs,
+    /// unless it only sought its offset.
+    fn look(&mut self, c: usize, z: f64) -> (Verdict, Option<f64>) {
         let direction = &mut self.directions[c];
         let mixture = self.bank.mixture();
         let value = z - direction.offset;
         let e = direction.sign * (value - mixture.x);
-        let noise = if self.two_way { direction.expected_noise() } else { direction.noise };
+        let noise = if self.two_way {
+            direction.expected_noise()
+        } else {
+            direction.noise
+        };
         let detail = noise.detail(e, mixture.xx);
+        if direction.seek_offset(&detail) {
+            return (Verdict::Ordinary, None);
+        }
         let sight = Sight {
             value,
             sign: direction.sign,
@@ -172,32 +182,35 @@ impl Filter {
             thinning: direction.thinning(),
         };
         self.bank.correct(&sight, &mixture, &detail);
-        let spread = 3.0 * detail.variance.sqrt();
-        let newton = (detail.score.first / direction.information).clamp(-spread, spread);
-        let residual = -direction.sign * newton;
+        let residual = direction.sign * direction.newton_step(&detail);
         let verdict = direction.judge(e, &detail, mixture.xx);
         let moved = direction.learn(&detail, mixture.xx, self.least_sigma);
         self.bank.loosen(0.1 * moved * moved, 0.0);
-        (verdict, residual)
+        (verdict, Some(residual))
     }
 
     /// The offsets of the directions are known only by their difference: it is learned from
-    /// the pair's residuals and shared so that the weighed mean of the offsets stays.
+    /// the pair's residuals, the younger offset moving first, and otherwise shared so that the
+    /// weighed mean of the offsets stays.
     fn split_offsets(&mut self, residuals: [f64; 2]) {
         let [out, back] = &mut self.directions;
-        let rows = self.rows_since_event as f64;
-        let gain = (1.0 / (rows + 16.0)).max(1.0 / 8192.0);
-        let difference = gain * (residuals[1] - residuals[0]);
-        let total = out.information + back.information;
-        let share = out.information / total;
-        back.offset += difference * share;
-        out.offset -= difference * (1.0 - share);
+        let gains = [out.offset_gain(), back.offset_gain()];
+        let shares = [gains[0] / out.information, gains[1] / back.information];
+        let gain = gains[0].max(gains[1]);
+        let difference = gain * (residuals[1] - residuals[0]) / (shares[0] + shares[1]);
+        back.offset += difference * shares[1];
+        out.offset -= difference * shares[0];
     }
 
     /// What the row's verdicts amount to; after a step of the clock itself the bank is loosened.
     fn conclude(&mut self, verdicts: &[Verdict]) -> Outcome {
-        let all = |v: Verdict| verdicts.iter().all(|&verdict| verdict == v);
-        if all(Verdict::Stepped) {
+        // The two directions of a stepped clock may be found out a few rows apart.
+        let settling = self.two_way && self.directions.iter().any(Direction::is_settling);
+        let stepped = |v: &Verdict| *v == Verdict::Stepped;
+        if verdicts.iter().all(stepped) || (settling && verdicts.iter().any(stepped)) {
+            self.directions
+                .iter_mut()
+                .for_each(Direction::stop_settling);
             let agreement = self.directions[0].agreement(self.bank.mixture().xx);
             self.bank.loosen(0.25 * agreement * agreement, 0.05 * 0.05);
             return Outcome::Event(Event::PhaseStep);
