@@ -1,5 +1,9 @@
 //! Compiles the contract without a system protoc: protox parses it, and the same descriptor
 //! set serves reflection.
+#![allow(
+    clippy::disallowed_methods,
+    reason = "a build script reads its environment and writes its output"
+)]
 
 use prost::Message as _;
 use std::{env, error::Error, fs, path::PathBuf};

@@ -133,7 +133,10 @@ async fn run_sample(pace: f64, store: Option<PathBuf>) -> ExitCode {
         }
         Err(fault) => not_started(&fault),
     };
-    if !kept && let Err(fault) = std::fs::remove_dir_all(&folder) {
+    if !kept
+        && folder.exists()
+        && let Err(fault) = std::fs::remove_dir_all(&folder)
+    {
         tracing::warn!(%fault, folder = %folder.display(), "the sample's store is still there");
     }
     code

@@ -31,7 +31,7 @@ pub(crate) fn applied(sent: &v1::Applied) -> Result<Event, Violation> {
 pub(crate) fn occupancy(sent: &v1::Occupancy) -> Result<Event, Violation> {
     let crossing = names::parse_crossing("occupancy.crossing", &sent.crossing)?;
     let (level_samples, deviation_samples) = (sent.level_samples, sent.deviation_samples);
-    if !(level_samples.abs() <= 1e9) {
+    if !(-1e9..=1e9).contains(&level_samples) {
         let accepted = "-10^9 to 10^9 sink samples";
         return Err(Violation::new(
             "occupancy.level_samples",

@@ -209,6 +209,55 @@ async fn what_the_configuration_declares_is_there_at_once() {
 }
 
 #[tokio::test]
+async fn when_the_store_fails_nobody_hears_of_the_setting() {
+    let mut facility = Facility::start().await;
+    facility.clients.declare_pair().await;
+    let request = v1::WatchSettingsRequest::default();
+    let watch = facility
+        .clients
+        .ratios
+        .watch_settings(request)
+        .await
+        .unwrap();
+    let mut watch = watch.into_inner();
+    watch.message().await.unwrap().unwrap();
+
+    let database = rusqlite::Connection::open(facility.folder.path().join("ratewright.sqlite3"));
+    let database = database.unwrap();
+    let fail = "CREATE TRIGGER full BEFORE INSERT ON journal
+                BEGIN SELECT RAISE(ABORT, 'the disk is full'); END";
+    database.execute_batch(fail).unwrap();
+    let refused = facility
+        .clients
+        .declare_crossing("late", "stage", "desk")
+        .await
+        .unwrap_err();
+    assert_eq!(refused.code(), Code::Unavailable);
+    let fault = facility.daemon.failed().await;
+    assert!(fault.to_string().contains("the disk is full"), "{fault}");
+    database.execute_batch("DROP TRIGGER full").unwrap();
+
+    let mut facility = facility.restart(Opening::Continue).await;
+    let told = watch.message().await.unwrap_err();
+    assert_eq!(
+        told.code(),
+        Code::Unavailable,
+        "the end is told, and no setting before it"
+    );
+    let get = v1::GetCrossingRequest {
+        name: "crossings/late".into(),
+    };
+    let never = facility
+        .clients
+        .crossings
+        .get_crossing(get)
+        .await
+        .unwrap_err();
+    assert_eq!(never.code(), Code::NotFound);
+    assert_eq!(newest(&mut facility.clients).await.number, 1);
+}
+
+#[tokio::test]
 async fn a_store_in_use_is_refused() {
     let facility = Facility::start().await;
     let any = "127.0.0.1:0".parse().unwrap();
