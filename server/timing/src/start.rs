@@ -66,65 +66,72 @@ impl Start {
         self.rows.len() >= START_ROWS
     }
 
+    /// Directions that measure: one when both values of every row are the same.
+    fn directions(&self) -> usize {
+        if self.rows.iter().all(|row| row.z[0] == row.z[1]) { 1 } else { 2 }
+    }
+
     /// Least-squares line with the prior weighed in, its variance widened by Student's
-    /// quantile for the few rows.
+    /// quantile for the few rows. Each direction's slope counts by its own residuals.
     pub(crate) fn line(&self, least_noise_us: f64) -> Line {
         let n = self.rows.len();
         let last = self.rows.last().map_or(0.0, |row| row.t_s);
         let count = n.max(1) as f64;
         let mean_t = self.rows.iter().map(|row| row.t_s).sum::<f64>() / count;
         let mean_z = self.rows.iter().map(StartRow::mid).sum::<f64>() / count;
-        let prior = Line {
-            t_s: last,
-            x: mean_z,
-            xx: 1e10,
-            y: 0.0,
-            yy: self.prior_var,
-        };
         if n < 3 {
-            return prior;
+            return Line { t_s: last, x: mean_z, xx: 1e10, y: 0.0, yy: self.prior_var };
         }
-        let (mut tt, mut tz) = (0.0, 0.0);
-        for row in &self.rows {
-            let dt = row.t_s - mean_t;
-            tt += dt * dt;
-            tz += dt * (row.mid() - mean_z);
+        let widen = t975((n - 2) as f64) / Z95;
+        let (mut weight, mut weighed) = (1.0 / self.prior_var, 0.0);
+        let mut row_var = f64::INFINITY;
+        for c in 0..self.directions() {
+            let (slope, residual_var, spread) = self.fit(c, mean_t);
+            let own = residual_var.max(least_noise_us * least_noise_us) * widen * widen;
+            weight += spread / own;
+            weighed += spread / own * slope;
+            row_var = row_var.min(own);
         }
-        let slope = tz / tt;
-        let residual = |row: &StartRow| row.mid() - mean_z - slope * (row.t_s - mean_t);
-        let squares: f64 = self
-            .rows
-            .iter()
-            .map(|row| residual(row) * residual(row))
-            .sum();
-        let degrees = (n - 2) as f64;
-        let widen = t975(degrees) / Z95;
-        let row_var = (squares / degrees).max(least_noise_us * least_noise_us) * widen * widen;
-        let slope_var = row_var / tt;
-        let gain = self.prior_var / (self.prior_var + slope_var);
-        let y = gain * slope;
-        let yy = gain * slope_var;
+        let (y, yy) = (weighed / weight, 1.0 / weight);
         let ahead = last - mean_t;
-        Line {
-            t_s: last,
-            x: mean_z + y * ahead,
-            xx: row_var / count + yy * ahead * ahead,
-            y,
-            yy,
-        }
+        let xx = row_var / count + yy * ahead * ahead;
+        Line { t_s: last, x: mean_z + y * ahead, xx, y, yy }
     }
 
-    /// Slope by Theil and Sen: the median of the slopes of all pairs, ppm.
+    /// Least squares of direction `c`: slope, variance of the residuals, Σ(t − mean)².
+    fn fit(&self, c: usize, mean_t: f64) -> (f64, f64, f64) {
+        let n = self.rows.len() as f64;
+        let mean_z = self.rows.iter().map(|row| row.z[c]).sum::<f64>() / n;
+        let (mut tt, mut tz, mut zz) = (0.0, 0.0, 0.0);
+        for row in &self.rows {
+            let (dt, dz) = (row.t_s - mean_t, row.z[c] - mean_z);
+            tt += dt * dt;
+            tz += dt * dz;
+            zz += dz * dz;
+        }
+        (tz / tt, (zz - tz * tz / tt).max(0.0) / (n - 2.0), tt)
+    }
+
+    /// Slope by Theil and Sen, ppm: the median of the slopes of all pairs, of the direction
+    /// whose pairs agree best.
     fn median_slope(&self) -> f64 {
-        let mut slopes = [0.0; START_ROWS * (START_ROWS - 1) / 2];
-        let mut n = 0;
-        for (i, a) in self.rows.iter().enumerate() {
-            for b in &self.rows[..i] {
-                slopes[n] = (a.mid() - b.mid()) / (a.t_s - b.t_s);
-                n += 1;
+        let mut best = (0.0, f64::INFINITY);
+        for c in 0..self.directions() {
+            let mut slopes = [0.0; START_ROWS * (START_ROWS - 1) / 2];
+            let mut n = 0;
+            for (i, a) in self.rows.iter().enumerate() {
+                for b in &self.rows[..i] {
+                    slopes[n] = (a.z[c] - b.z[c]) / (a.t_s - b.t_s);
+                    n += 1;
+                }
+            }
+            let median = quantile(&mut slopes[..n], 0.5);
+            let spread = quantile(&mut slopes[..n], 0.75) - quantile(&mut slopes[..n], 0.25);
+            if spread < best.1 {
+                best = (median, spread);
             }
         }
-        quantile(&mut slopes[..n], 0.5)
+        best.0
     }
 
     /// First guess of either direction's noise, from the quantiles of the residuals.
