@@ -88,16 +88,19 @@ impl Bounds {
     }
 
     /// The largest L.
+    #[inline]
     pub fn max_l(&self) -> u64 {
         self.max_l
     }
 
     /// The largest M.
+    #[inline]
     pub fn max_m(&self) -> u64 {
         self.max_m
     }
 
     /// The largest prime factor allowed in L and M, if there is such a bound.
+    #[inline]
     pub fn largest_prime(&self) -> Option<u64> {
         self.largest_prime
     }

@@ -15,6 +15,7 @@
 //! one side. A target below every fraction has the sentinel 0/1 below it; one above all has 1/0 above it.
 
 use std::cmp::Ordering;
+use std::hint::select_unpredictable;
 
 use serde::{Deserialize, Serialize};
 
@@ -72,6 +73,14 @@ pub struct Bracket {
     pub above: Node,
 }
 
+impl Bracket {
+    /// True if `below ≤ target ≤ above`, compared exactly.
+    #[inline]
+    pub(crate) fn encloses(&self, target: &Exact) -> bool {
+        self.below.compare_target(target).is_ge() && self.above.compare_target(target).is_le()
+    }
+}
+
 /// The arithmetic Euclid needs. Quotients beyond 64 bits saturate: every bound is below 2^63, so a longer
 /// run is cut short all the same.
 pub(crate) trait Magnitude: Clone {
@@ -116,18 +125,16 @@ pub(crate) struct Ends<T> {
 }
 
 impl<T> Ends<T> {
+    #[inline]
     pub(crate) fn bracket(&self) -> Bracket {
         let (convergent, semiconvergent) = (self.convergent.0, self.semiconvergent.0);
-        if self.convergent_below {
-            Bracket {
-                below: convergent,
-                above: semiconvergent,
-            }
-        } else {
-            Bracket {
-                below: semiconvergent,
-                above: convergent,
-            }
+        let pick = |a: Node, b: Node| Node {
+            l: select_unpredictable(self.convergent_below, a.l, b.l),
+            m: select_unpredictable(self.convergent_below, a.m, b.m),
+        };
+        Bracket {
+            below: pick(convergent, semiconvergent),
+            above: pick(semiconvergent, convergent),
         }
     }
 }

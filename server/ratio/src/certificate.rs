@@ -7,6 +7,8 @@
 //! The theorems are those of [`crate::bracket`], [`crate::nearest`] and [`crate::simplest`].
 //! Cost: 4 to 8 multiplications; no division, no allocation.
 
+use std::hint::select_unpredictable;
+
 use serde::{Deserialize, Serialize};
 use thiserror::Error;
 
@@ -255,7 +257,57 @@ fn verify_bracket(
     Ok(())
 }
 
+#[inline]
 fn verify_nearest(
+    bracket: &Bracket,
+    ratio: Fraction,
+    target: &Exact,
+    region: &Region,
+    side: Side,
+) -> Result<(), CertificateError> {
+    if side == Side::Either && narrow_nearest(bracket, &ratio, target, region) {
+        return Ok(());
+    }
+    verify_nearest_in_full(bracket, ratio, target, region, side)
+}
+
+/// The common case in one machine word a product: parts below 2^31, a target of 64 bits, both ends finite.
+/// False decides nothing.
+#[inline]
+fn narrow_nearest(bracket: &Bracket, ratio: &Fraction, target: &Exact, region: &Region) -> bool {
+    let (a, b, c, d) = (
+        bracket.below.l,
+        bracket.below.m,
+        bracket.above.l,
+        bracket.above.m,
+    );
+    let (Ok(n), Ok(whole)) = (
+        u64::try_from(*target.numer()),
+        u64::try_from(*target.denom()),
+    ) else {
+        return false;
+    };
+    if (a | b | c | d) >= 1 << 31 || b * c != a * d + 1 || a == 0 || d == 0 {
+        return false;
+    }
+    let (from_below, to_above) = (
+        i128::from(n) * i128::from(b) - i128::from(whole) * i128::from(a),
+        i128::from(whole) * i128::from(c) - i128::from(n) * i128::from(d),
+    );
+    let is_bracket = (from_below >= 0) & (to_above >= 0) & region.separates((a, b), (c, d));
+    // Now from_below·d + to_above·b = D, so both products fit 64 bits.
+    let (low, high) = (
+        (from_below as u64).wrapping_mul(d),
+        (to_above as u64).wrapping_mul(b),
+    );
+    let low_is_nearer = (low < high) | ((low == high) & ((b, a) < (d, c)));
+    let l = select_unpredictable(low_is_nearer, a, c);
+    let m = select_unpredictable(low_is_nearer, b, d);
+    is_bracket & (*ratio.numer() == l) & (*ratio.denom() == m)
+}
+
+#[inline(never)]
+fn verify_nearest_in_full(
     bracket: &Bracket,
     ratio: Fraction,
     target: &Exact,

@@ -16,7 +16,7 @@ use std::cmp::Ordering;
 use crate::bracket::{self, Bracket, Node};
 use crate::outward::beyond;
 use crate::wide::Wide;
-use crate::{Bounds, Certificate, Exact, Fraction, Region, smooth};
+use crate::{Bounds, Certificate, Exact, Fraction, Region, narrow, smooth};
 
 /// An answer with the proof that nothing allowed is nearer.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
@@ -42,7 +42,21 @@ pub struct Best {
 /// # Ok::<(), ratewright_ratio::BoundsError>(())
 /// ```
 pub fn best(target: &Exact, bounds: &Bounds) -> Best {
-    let bracket = bracket::find(target, bounds);
+    if bounds.largest_prime().is_none()
+        && narrow::fits(bounds)
+        && let (Ok(n), Ok(d)) = (
+            u64::try_from(*target.numer()),
+            u64::try_from(*target.denom()),
+        )
+    {
+        return narrow::best(n, d, bounds);
+    }
+    best_of_any(target, bounds)
+}
+
+#[inline(never)]
+fn best_of_any(target: &Exact, bounds: &Bounds) -> Best {
+    let bracket = neighbours(target, bounds);
     let ratio = nearer(&bracket, target);
     if bounds.largest_prime().is_some() && !bounds.allow(&ratio) {
         return smooth::best(target, bounds);
@@ -84,7 +98,19 @@ pub fn best_in(target: &Exact, region: &Region) -> Best {
 /// # Ok::<(), ratewright_ratio::BoundsError>(())
 /// ```
 pub fn neighbours(target: &Exact, bounds: &Bounds) -> Bracket {
-    bracket::find(target, bounds)
+    if !narrow::fits(bounds) {
+        return bracket::find(target, bounds);
+    }
+    // The leading 64 bits of a wide target nearly always lead to the same bracket, which one exact look
+    // confirms: what makes a bracket does not depend on the target but that it lies between the ends.
+    let (n, d) = (*target.numer(), *target.denom());
+    let shift = 64u32.saturating_sub((n | d).leading_zeros());
+    let bracket = narrow::find((n >> shift) as u64, (d >> shift) as u64, bounds);
+    if shift == 0 || bracket.encloses(target) {
+        bracket
+    } else {
+        bracket::find(target, bounds)
+    }
 }
 
 /// The largest ratio in `region` that is at most `target`; `None` if the target is below all of them.
@@ -188,8 +214,16 @@ pub(crate) fn compare_errors(a: Fraction, b: Fraction, target: &Exact) -> Orderi
 }
 
 /// Compares `target − below` with `above − target`, given `below ≤ target ≤ above` and finite ends.
+#[inline]
 pub(crate) fn compare_distances(below: Node, above: Node, target: &Exact) -> Ordering {
     let (n, d) = (*target.numer(), *target.denom());
+    let all = below.l | below.m | above.l | above.m;
+    if (n | d) < 1 << 64 && all < 1 << 32 {
+        // Distances below 2^96, which 2^32 more do not bring beyond 128 bits.
+        let from_below = n * u128::from(below.m) - d * u128::from(below.l);
+        let to_above = d * u128::from(above.l) - n * u128::from(above.m);
+        return (from_below * u128::from(above.m)).cmp(&(to_above * u128::from(below.m)));
+    }
     let from_below = Wide::product(n, below.m)
         .minus(Wide::product(d, below.l))
         .times(above.m);

@@ -108,6 +108,22 @@ impl Region {
             }
         }
     }
+
+    /// True if both pairs are inside and their sum is not. For parts below 2^31.
+    #[inline]
+    pub(crate) fn separates(&self, low: (u64, u64), high: (u64, u64)) -> bool {
+        let (l, m) = (low.0 + high.0, low.1 + high.1);
+        match self.0 {
+            Shape::Box { max_l, max_m } => {
+                (low.0.max(high.0) <= max_l)
+                    & (low.1.max(high.1) <= max_m)
+                    & ((l > max_l) | (m > max_m))
+            }
+            _ => {
+                self.contains(low.0, low.1) && self.contains(high.0, high.1) && !self.contains(l, m)
+            }
+        }
+    }
 }
 
 fn check(field: &'static str, value: u64) -> Result<(), RegionError> {

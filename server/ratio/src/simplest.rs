@@ -13,11 +13,10 @@
 //! **Corner cases.** An open end that is itself simple only bars that one fraction: in (1, 2) the answer is
 //! 3/2. An interval of one point gives the point.
 
-use std::cmp::Ordering;
+use std::hint::select_unpredictable;
 
 use crate::bounds::MAX_BOUND;
-use crate::bracket::{Magnitude, Node};
-use crate::wide::Wide;
+use crate::bracket::Node;
 use crate::{Certificate, Fraction, Interval};
 use serde::{Deserialize, Serialize};
 
@@ -53,11 +52,11 @@ pub struct Simplest {
 /// ```
 pub fn simplest(interval: &Interval) -> Option<Simplest> {
     let (lo, hi) = (interval.lo(), interval.hi());
-    let parts = [*lo.numer(), *lo.denom(), *hi.numer(), *hi.denom()];
-    let [n1, d1, n2, d2] = parts;
+    let [n1, d1, n2, d2] = [*lo.numer(), *lo.denom(), *hi.numer(), *hi.denom()];
     let flags = (interval.ends().low_closed(), interval.ends().high_closed());
-    let parents = if parts.iter().all(|&part| part <= u128::from(u64::MAX)) {
-        search([n1 as u64, d1 as u64], [n2 as u64, d2 as u64], flags)?
+    let all = n1 | d1 | n2 | d2;
+    let parents = if all < 1 << 62 {
+        narrow_search([n1 as u64, d1 as u64], [n2 as u64, d2 as u64], flags)
     } else {
         search([n1, d1], [n2, d2], flags)?
     };
@@ -69,44 +68,68 @@ pub fn simplest(interval: &Interval) -> Option<Simplest> {
     })
 }
 
-/// The comparison the search needs beside Euclid's arithmetic.
-trait Comparable: Magnitude {
-    fn compare_with_times(&self, j: u64, other: &Self) -> Ordering;
-}
-
-impl Comparable for u64 {
-    #[inline]
-    fn compare_with_times(&self, j: u64, other: &Self) -> Ordering {
-        u128::from(*self).cmp(&(u128::from(j) * u128::from(*other)))
+/// The parents of the simplest fraction between n1/d1 and n2/d2, parts below 2^62, ends in the interval as
+/// flagged. Nothing overflows: no convergent on the way is larger than the answer, and the answer is at most
+/// the mediant of the ends.
+fn narrow_search(
+    [mut n1, mut d1]: [u64; 2],
+    [mut n2, mut d2]: [u64; 2],
+    (mut low_closed, mut high_closed): (bool, bool),
+) -> Parents {
+    let (mut old, mut new) = (Node::ZERO, Node::INFINITY);
+    let mut new_above = true;
+    loop {
+        let whole = n1 / d1;
+        let (rest1, rest2) = (n1 - whole * d1, n2 - whole * d2);
+        let takes_whole = low_closed & (rest1 == 0);
+        // The next integer is inside if it is below n2/d2; a zero d2 stands for an infinite end.
+        let takes_next = (rest2 > d2) | ((rest2 == d2) & high_closed);
+        if takes_whole | takes_next {
+            let steps = whole - u64::from(takes_whole);
+            let nearer = Node {
+                l: old.l + steps * new.l,
+                m: old.m + steps * new.m,
+            };
+            let pick = |a: u64, b: u64| select_unpredictable(new_above, a, b);
+            return Parents {
+                left: Node {
+                    l: pick(nearer.l, new.l),
+                    m: pick(nearer.m, new.m),
+                },
+                right: Node {
+                    l: pick(new.l, nearer.l),
+                    m: pick(new.m, nearer.m),
+                },
+            };
+        }
+        (old, new) = (
+            new,
+            Node {
+                l: old.l + whole * new.l,
+                m: old.m + whole * new.m,
+            },
+        );
+        ([n1, d1], [n2, d2]) = ([d2, rest2], [d1, rest1]);
+        (low_closed, high_closed) = (high_closed, low_closed);
+        new_above = !new_above;
     }
 }
 
-impl Comparable for u128 {
-    fn compare_with_times(&self, j: u64, other: &Self) -> Ordering {
-        Wide::product(*self, 1).cmp(&Wide::product(*other, j))
-    }
-}
-
-/// The parents of the simplest fraction between `lo` = n/D and `hi`, ends in the interval as flagged.
-fn search<T: Comparable>(
-    [mut n1, mut d1]: [T; 2],
-    [mut n2, mut d2]: [T; 2],
+/// The same for any parts; `None` if the answer has a part beyond [`MAX_BOUND`].
+fn search(
+    [mut n1, mut d1]: [u128; 2],
+    [mut n2, mut d2]: [u128; 2],
     (mut low_closed, mut high_closed): (bool, bool),
 ) -> Option<Parents> {
     let (mut old, mut new) = (Node::ZERO, Node::INFINITY);
     let mut new_above = true;
     loop {
-        let whole = n1.quotient(&d1);
-        let at_whole = n1.compare_with_times(whole, &d1) == Ordering::Equal;
-        let smallest = if low_closed && at_whole {
-            whole
-        } else {
-            whole.checked_add(1)?
-        };
-        // A zero d2 stands for an infinite upper end, which compares right by itself.
-        let order = n2.compare_with_times(smallest, &d2);
-        if order == Ordering::Greater || (order == Ordering::Equal && high_closed) {
-            let nearer = forward(old, new, smallest - 1)?;
+        let whole = n1 / d1;
+        let (rest1, rest2) = (n1 - whole * d1, n2 - whole * d2);
+        let whole = u64::try_from(whole).ok()?;
+        let takes_whole = low_closed && rest1 == 0;
+        if takes_whole || rest2 > d2 || (rest2 == d2 && high_closed) {
+            let nearer = forward(old, new, whole - u64::from(takes_whole))?;
             let (left, right) = if new_above {
                 (nearer, new)
             } else {
@@ -116,7 +139,6 @@ fn search<T: Comparable>(
             return in_range.then_some(Parents { left, right });
         }
         (old, new) = (new, forward(old, new, whole)?);
-        let (rest1, rest2) = (n1.minus_times(whole, &d1), n2.minus_times(whole, &d2));
         ([n1, d1], [n2, d2]) = ([d2, rest2], [d1, rest1]);
         (low_closed, high_closed) = (high_closed, low_closed);
         new_above = !new_above;

@@ -1,0 +1,97 @@
+//! What the crate is compared with.
+
+use std::io::Write;
+use std::process::{Command, Stdio};
+
+use num_rational::Ratio;
+use ratewright_ratio::{Bounds, Exact, Interval, neighbours, simplest};
+
+/// The chain of divisions of n/D, `steps` of them, and nothing else.
+#[inline(never)]
+pub(crate) fn division_chain(target: &Exact, steps: u32) -> u64 {
+    let (mut n, mut d) = (*target.numer() as u64, *target.denom() as u64);
+    let mut sum = 0u64;
+    for _ in 0..steps {
+        let quotient = n / d;
+        sum = sum.wrapping_add(quotient);
+        (n, d) = (d, n - quotient * d);
+    }
+    sum
+}
+
+/// Partial quotients the search looks at: those of the bracket's ends, and the one that is cut short.
+pub(crate) fn steps_of_search(targets: &[Exact], bounds: &Bounds) -> Vec<u32> {
+    let steps = |target: &Exact| {
+        let bracket = neighbours(target, bounds);
+        let (p, q) = (
+            bracket.below.l.min(bracket.above.l),
+            bracket.below.m.min(bracket.above.m),
+        );
+        // The smaller end is the last whole convergent.
+        partial_quotients(target, |l, m| (l, m) == (p, q)) + 1
+    };
+    targets.iter().map(steps).collect()
+}
+
+/// Partial quotients of the lower end that the simplest fraction needs.
+pub(crate) fn steps_of_simplest(intervals: &[Interval]) -> Vec<u32> {
+    let steps = |interval: &Interval| {
+        let fraction = simplest(interval).expect("within 63 bits").fraction;
+        let (p, q) = (*fraction.numer(), *fraction.denom());
+        // Every level of the search takes one quotient off both ends; as many as the answer has itself.
+        let exact = Exact::new(p.into(), q.into());
+        partial_quotients(&exact, |l, m| (l, m) == (p, q))
+    };
+    intervals.iter().map(steps).collect()
+}
+
+/// How many partial quotients there are until a convergent satisfies `is_last`.
+fn partial_quotients(target: &Exact, is_last: impl Fn(u64, u64) -> bool) -> u32 {
+    let (mut n, mut d) = (*target.numer(), *target.denom());
+    let (mut old, mut new) = ((0u64, 1u64), (1u64, 0u64));
+    let mut count = 0;
+    while d != 0 && !is_last(new.0, new.1) {
+        let quotient = (n / d) as u64;
+        (n, d) = (d, n % d);
+        (old, new) = (new, (old.0 + quotient * new.0, old.1 + quotient * new.1));
+        count += 1;
+    }
+    count
+}
+
+/// num-rational's own approximation, which takes no bound but the type's: u16 comes nearest to Q = 1024.
+pub(crate) fn num_rational(target: &Exact) -> u64 {
+    let value = *target.numer() as u64 as f64 / *target.denom() as u64 as f64;
+    Ratio::<u16>::approximate_float_unsigned(value).map_or(0, |ratio| u64::from(*ratio.numer()))
+}
+
+/// CPython's limit_denominator(1024) on the same targets, ns each; `None` without a python3.
+pub(crate) fn cpython(targets: &[Exact]) -> Option<f64> {
+    let program = "
+import sys, time
+from fractions import Fraction
+xs = [Fraction(int(n), int(d)) for n, d in (line.split('/') for line in sys.stdin)]
+rounds = []
+for _ in range(5):
+    start = time.perf_counter_ns()
+    for x in xs: x.limit_denominator(1024)
+    rounds.append((time.perf_counter_ns() - start) / len(xs))
+print(sorted(rounds)[2])
+";
+    let mut python = Command::new("python3")
+        .args(["-c", program])
+        .stdin(Stdio::piped())
+        .stdout(Stdio::piped())
+        .spawn()
+        .ok()?;
+    let lines: String = targets
+        .iter()
+        .map(|t| format!("{}/{}\n", t.numer(), t.denom()))
+        .collect();
+    python.stdin.take()?.write_all(lines.as_bytes()).ok()?;
+    String::from_utf8(python.wait_with_output().ok()?.stdout)
+        .ok()?
+        .trim()
+        .parse()
+        .ok()
+}

@@ -1,0 +1,106 @@
+//! The narrow path: targets of 64 bits and bounds below 2^31, which is nearly every call.
+//!
+//! The same search as in [`crate::bracket`], with every product in one machine word, and with the end of the
+//! search seen one division earlier.
+//!
+//! **Lemma.** With distances x, y of the last two convergents (p0, q0), (p1, q1) it is x·q1 + y·q0 = D, and
+//! x·p1 + y·p0 = n. So the next convergent has y·q ≤ D and y·p ≤ n, and is in the box for sure while
+//! y ≥ D/Q and y ≥ n/P. Those thresholds are known before the first step; only after them is the box asked.
+//!
+//! The choice between the two ends uses the distances the search has anyway: a/b with e_a = |n·b − a·D| is
+//! nearer than c/d iff e_a·d < e_c·b.
+
+use std::hint::select_unpredictable;
+
+use crate::bracket::{Bracket, Ends, Node};
+use crate::{Best, Bounds, Certificate, Fraction};
+
+/// Bounds up to this are narrow.
+const MAX_NARROW: u64 = (1 << 31) - 1;
+
+/// True if both bounds are narrow.
+#[inline]
+pub(crate) fn fits(bounds: &Bounds) -> bool {
+    (bounds.max_l() | bounds.max_m()) <= MAX_NARROW
+}
+
+/// The two ends around n/D within narrow bounds.
+#[inline]
+pub(crate) fn descend(n: u64, d: u64, bounds: &Bounds) -> Ends<u64> {
+    let (max_l, max_m) = (bounds.max_l(), bounds.max_m());
+    let (mut old, mut new) = (Node::ZERO, Node::INFINITY);
+    let (mut old_distance, mut new_distance) = (n, d);
+    let mut new_below = false;
+    while new_distance != 0 {
+        let quotient = old_distance / new_distance;
+        // One part of `new` is at least 1, so a quotient of 2^31 leaves the box whatever it is.
+        let run = quotient.min(MAX_NARROW + 1);
+        let reached = Node {
+            l: old.l + run * new.l,
+            m: old.m + run * new.m,
+        };
+        if (reached.l > max_l) | (reached.m > max_m) {
+            break;
+        }
+        let distance = old_distance - quotient * new_distance;
+        (old, new) = (new, reached);
+        (old_distance, new_distance) = (new_distance, distance);
+        new_below = !new_below;
+    }
+    let run = last_run(old, new, max_l, max_m);
+    let reached = Node {
+        l: old.l + run * new.l,
+        m: old.m + run * new.m,
+    };
+    Ends {
+        convergent: (new, new_distance),
+        semiconvergent: (reached, old_distance - run * new_distance),
+        convergent_below: new_below,
+    }
+}
+
+/// The largest run that stays in the box, however long the quotient is.
+#[inline]
+fn last_run(old: Node, new: Node, max_l: u64, max_m: u64) -> u64 {
+    let room = |bound: u64, from: u64, step: u64| u64::from((bound - from) as u32 / step as u32);
+    if new.m == 0 {
+        return room(max_l, old.l, new.l);
+    }
+    let run = room(max_m, old.m, new.m);
+    // Mostly M is what cuts short, and the second division is saved.
+    if old.l + run * new.l <= max_l {
+        run
+    } else {
+        room(max_l, old.l, new.l)
+    }
+}
+
+/// The nearer end, ties to smaller M, then smaller L.
+#[inline]
+fn nearer(ends: &Ends<u64>) -> Fraction {
+    let ((near, near_distance), (far, far_distance)) = (ends.convergent, ends.semiconvergent);
+    let near_error = u128::from(near_distance) * u128::from(far.m);
+    let far_error = u128::from(far_distance) * u128::from(near.m);
+    // No short cuts: each is a branch, and which end is nearer is as good as random.
+    let is_smaller = (near.m < far.m) | ((near.m == far.m) & (near.l < far.l));
+    let is_nearer = (near_error < far_error) | ((near_error == far_error) & is_smaller);
+    let is_near = (far.l == 0) | (is_nearer & (near.l != 0) & (near.m != 0));
+    let l = select_unpredictable(is_near, near.l, far.l);
+    let m = select_unpredictable(is_near, near.m, far.m);
+    Fraction::new_raw(l, m)
+}
+
+/// The nearest ratio to n/D within narrow bounds.
+#[inline]
+pub(crate) fn best(n: u64, d: u64, bounds: &Bounds) -> Best {
+    let ends = descend(n, d, bounds);
+    Best {
+        ratio: nearer(&ends),
+        certificate: Certificate::Nearest(ends.bracket()),
+    }
+}
+
+/// The bracket of n/D within narrow bounds.
+pub(crate) fn find(n: u64, d: u64, bounds: &Bounds) -> Bracket {
+    descend(n, d, bounds).bracket()
+}
