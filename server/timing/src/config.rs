@@ -16,9 +16,35 @@ pub struct LinkConfig {
     pub tolerance_ppm: Option<f64>,
     /// Kind of oscillator: sets the prior of drift and of its wander.
     pub oscillator: Oscillator,
+    /// Which way a one-way reading errs when it is not punctual.
+    pub latency_tail: LatencyTail,
+    /// True step of the counter, s, above zero and at most 1, where it is coarser than a tick
+    /// of `nominal_hz` (a counter in µs of a clock that ticks at 32768 Hz, say).
+    pub quantum_s: Option<f64>,
     /// Half-width of the 95 % interval at which the estimate counts as locked, dimensionless,
     /// above zero and at most 1e-5 (default 1e-7 = 0.1 ppm).
     pub lock_half_width: f64,
+}
+
+/// Which way a one-way reading errs when it is not punctual.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq, Serialize, Deserialize)]
+pub enum LatencyTail {
+    /// The reference is read late after the counter, or the report arrives late: what happens
+    /// when the counter is latched first.
+    #[default]
+    ReferenceLate,
+    /// The counter is read late after the reference.
+    CounterLate,
+}
+
+impl LatencyTail {
+    /// s in e = s(clock − reference − …): lateness is positive e.
+    pub(crate) fn sign(self) -> f64 {
+        match self {
+            LatencyTail::ReferenceLate => -1.0,
+            LatencyTail::CounterLate => 1.0,
+        }
+    }
 }
 
 /// A declaration that no link can be made of.
@@ -40,6 +66,8 @@ impl LinkConfig {
             nominal_hz,
             tolerance_ppm: None,
             oscillator: Oscillator::default(),
+            latency_tail: LatencyTail::default(),
+            quantum_s: None,
             lock_half_width: 1e-7,
         }
     }
@@ -89,10 +117,63 @@ impl LinkConfig {
                 "above 0, at most 100000",
             );
         }
+        if let Some(quantum) = self.quantum_s
+            && !(quantum > 0.0 && quantum <= 1.0)
+        {
+            return refuse("quantum_s", quantum.to_string(), "above 0, at most 1");
+        }
         if !(self.lock_half_width > 0.0 && self.lock_half_width <= 1e-5) {
             let value = self.lock_half_width.to_string();
             return refuse("lock_half_width", value, "above 0, at most 1e-5");
         }
         Ok(())
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn every_bad_field_is_named_with_its_value_and_what_would_do() {
+        let good = LinkConfig::new(Ratio::from_integer(48_000));
+        assert_eq!(good.check(), Ok(()));
+        let bad = [
+            (
+                "nominal_hz",
+                LinkConfig {
+                    nominal_hz: Ratio::from_integer(0),
+                    ..good.clone()
+                },
+            ),
+            (
+                "nominal_hz",
+                LinkConfig {
+                    nominal_hz: Ratio::new(1, 1_000_001),
+                    ..good.clone()
+                },
+            ),
+            ("tolerance_ppm", good.clone().with_tolerance_ppm(f64::NAN)),
+            ("tolerance_ppm", good.clone().with_tolerance_ppm(-1.0)),
+            (
+                "quantum_s",
+                LinkConfig {
+                    quantum_s: Some(0.0),
+                    ..good.clone()
+                },
+            ),
+            (
+                "lock_half_width",
+                LinkConfig {
+                    lock_half_width: f64::INFINITY,
+                    ..good.clone()
+                },
+            ),
+        ];
+        for (field, config) in bad {
+            let error = config.check().unwrap_err();
+            assert_eq!(error.field, field);
+            assert!(error.to_string().starts_with(field), "{error}");
+        }
     }
 }

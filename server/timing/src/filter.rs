@@ -28,6 +28,8 @@ pub(crate) struct Setup {
     pub(crate) scale: f64,
     /// Least deviation of the noise, µs.
     pub(crate) least_sigma: f64,
+    /// Sign of one-way errors.
+    pub(crate) one_way_sign: f64,
 }
 
 /// Bank, noise of each direction and everything learned besides.
@@ -50,13 +52,17 @@ pub(crate) struct Filter {
     latest: Mixture,
 }
 
-/// One-way readings are late, so z is too small; going out and coming back they err apart.
-const SIGNS: [f64; 2] = [-1.0, 1.0];
+/// Going out, lateness makes z smaller; coming back, larger.
+const TWO_WAY_SIGNS: [f64; 2] = [-1.0, 1.0];
 
 impl Filter {
     /// Begins from the rows gathered, and takes them one after another.
     pub(crate) fn begin(start: &Start, two_way: bool, setup: &Setup) -> Self {
-        let signs = if two_way { SIGNS } else { [SIGNS[0]; 2] };
+        let signs = if two_way {
+            TWO_WAY_SIGNS
+        } else {
+            [setup.one_way_sign; 2]
+        };
         let guesses = start.guess(signs, setup.least_sigma);
         let mut directions = [0, 1].map(|c| Direction::new(signs[c], &guesses[c]));
         let middle = if two_way { 0.0 } else { directions[0].offset };
@@ -215,16 +221,27 @@ impl Filter {
             self.bank.loosen(0.25 * agreement * agreement, 0.05 * 0.05);
             return Outcome::Event(Event::PhaseStep);
         }
-        if verdicts
-            .iter()
-            .any(|v| matches!(v, Verdict::Stepped | Verdict::Rerouted))
-        {
+        let changed = |v: &Verdict| matches!(v, Verdict::Stepped | Verdict::Rerouted);
+        if verdicts.iter().any(changed) {
+            self.settle_changed(verdicts.iter().map(changed));
             return Outcome::Event(Event::RouteChange);
         }
         if verdicts.contains(&Verdict::Outlier) {
             Outcome::Outlier
         } else {
             Outcome::Used
+        }
+    }
+
+    /// Where the other direction still measures the clock, the changed one finds its offset.
+    fn settle_changed(&mut self, changed: impl Iterator<Item = bool>) {
+        if self.two_way {
+            let lone = self
+                .directions
+                .iter_mut()
+                .zip(changed)
+                .filter(|(_, changed)| *changed);
+            lone.for_each(|(direction, _)| direction.settle());
         }
     }
 

@@ -96,7 +96,7 @@ impl Intake {
         (at_reference_ns as i128 - origin_ns as i128) as f64 * 1e-9
     }
 
-    /// Half a tick's deviation of the counter, µs: the least noise it can have.
+    /// Tick of the counter, or of the timestamps, µs.
     pub(crate) fn quantum_us(&self) -> f64 {
         match self.origin {
             Some(Origin::Counter { .. }) => {

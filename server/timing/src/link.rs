@@ -9,6 +9,7 @@ use crate::estimate::{Estimate, Reason, State, normal_half_width};
 use crate::filter::{Filter, Setup};
 use crate::forecast::{Forecast, Part};
 use crate::growth::Growth;
+use crate::history::History;
 use crate::intake::{Intake, Row, Values};
 use crate::lock::Lock;
 use crate::measurement::Measurement;
@@ -46,7 +47,10 @@ pub struct Link {
     lock: Lock,
     mean_interval_s: f64,
     rows_used: u64,
+    /// Rows since the link began, or began anew.
+    rows_since_start: u64,
     outliers: u64,
+    history: History,
 }
 
 /// How far the link is.
@@ -86,7 +90,9 @@ impl Link {
             lock: Lock::default(),
             mean_interval_s: 0.0,
             rows_used: 0,
+            rows_since_start: 0,
             outliers: 0,
+            history: History::default(),
         })
     }
 
@@ -107,16 +113,43 @@ impl Link {
         let in_gap = self.is_gap(interval_s);
         let outcome = self.take(&row, in_gap);
         self.keep_interval(interval_s, in_gap);
-        if outcome == Outcome::Outlier {
-            self.outliers += 1;
-        } else {
-            self.rows_used += 1;
-            self.intake.confirm();
+        match outcome {
+            Outcome::Outlier => self.outliers += 1,
+            _ => {
+                self.rows_used += 1;
+                self.rows_since_start += 1;
+                self.intake.confirm();
+            }
         }
-        let half_width = self.quick_half_width();
-        self.lock
-            .update(half_width, self.config.lock_half_width, self.rows_used);
+        if let Outcome::Event(event) = outcome {
+            self.history.note_event(event, m.reference_ns());
+        }
+        if outcome == Outcome::Event(Event::Restart) {
+            self.rows_since_start = 0;
+        }
+        self.watch_state(m.reference_ns(), before_ns, in_gap);
         Ok(outcome)
+    }
+
+    /// Moves the state by what the row has left, and notes every change of it.
+    fn watch_state(&mut self, at_ns: i64, before_ns: Option<i64>, in_gap: bool) {
+        let threshold = self.config.lock_half_width;
+        let half_width = self.quick_half_width();
+        if let (true, Some(before_ns)) = (in_gap, before_ns) {
+            let (state, reason) = self.lock.state(half_width, threshold, true);
+            self.history
+                .note_state(before_ns, state, reason, half_width, self.rows_used);
+        }
+        self.lock
+            .update(half_width, threshold, self.rows_since_start);
+        let (state, reason) = self.lock.state(half_width, threshold, false);
+        self.history
+            .note_state(at_ns, state, reason, half_width, self.rows_used);
+    }
+
+    /// What has happened so far: changes of state with their reasons, and events.
+    pub fn history(&self) -> &History {
+        &self.history
     }
 
     /// What is known at a reference time; earlier times than the last reading count as that.
@@ -175,12 +208,19 @@ impl Link {
         self.mean_interval_s += gain * (interval_s - self.mean_interval_s);
     }
 
+    /// Step of what the probe reads, µs.
+    fn quantum_us(&self) -> f64 {
+        let declared = self.config.quantum_s.map_or(0.0, |s| s * 1e6);
+        declared.max(self.intake.quantum_us())
+    }
+
     fn setup(&self) -> Setup {
         Setup {
             prior_var: variance(self.config.prior_deviation_ppm()),
             scale: self.config.oscillator.wander_scale(),
             // Uniform over a tick, its deviation is the tick over √12; half of that is certain.
-            least_sigma: 0.144 * self.intake.quantum_us(),
+            least_sigma: 0.144 * self.quantum_us(),
+            one_way_sign: self.config.latency_tail.sign(),
         }
     }
 
@@ -244,7 +284,7 @@ impl Link {
 
     fn drift_ppm(&self) -> f64 {
         match &self.stage {
-            Stage::Starting { start, .. } => start.line(self.intake.quantum_us()).y,
+            Stage::Starting { start, .. } => start.line(self.quantum_us()).y,
             Stage::Phase { filter, .. } => filter.latest().y,
             Stage::Drift(filter) => filter.bank().mixture().y,
         }
@@ -253,7 +293,7 @@ impl Link {
     /// Half-width after a row, from the moments alone: what the lock goes by.
     fn quick_half_width(&self) -> f64 {
         let variance = match &self.stage {
-            Stage::Starting { start, .. } => start.line(self.intake.quantum_us()).yy,
+            Stage::Starting { start, .. } => start.line(self.quantum_us()).yy,
             Stage::Phase { filter, .. } => filter.latest().yy,
             Stage::Drift(filter) => filter.bank().mixture().yy,
         };
@@ -263,7 +303,7 @@ impl Link {
     fn predict(&self, now_s: f64, in_gap: bool) -> Prediction {
         match &self.stage {
             Stage::Starting { start, .. } => {
-                let line = start.line(self.intake.quantum_us());
+                let line = start.line(self.quantum_us());
                 let scale = self.config.oscillator.wander_scale();
                 let growth = Growth {
                     factors: [scale; 6],

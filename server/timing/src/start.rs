@@ -68,7 +68,11 @@ impl Start {
 
     /// Directions that measure: one when both values of every row are the same.
     fn directions(&self) -> usize {
-        if self.rows.iter().all(|row| row.z[0] == row.z[1]) { 1 } else { 2 }
+        if self.rows.iter().all(|row| row.z[0] == row.z[1]) {
+            1
+        } else {
+            2
+        }
     }
 
     /// Least-squares line with the prior weighed in, its variance widened by Student's
@@ -80,7 +84,13 @@ impl Start {
         let mean_t = self.rows.iter().map(|row| row.t_s).sum::<f64>() / count;
         let mean_z = self.rows.iter().map(StartRow::mid).sum::<f64>() / count;
         if n < 3 {
-            return Line { t_s: last, x: mean_z, xx: 1e10, y: 0.0, yy: self.prior_var };
+            return Line {
+                t_s: last,
+                x: mean_z,
+                xx: 1e10,
+                y: 0.0,
+                yy: self.prior_var,
+            };
         }
         let widen = t975((n - 2) as f64) / Z95;
         let (mut weight, mut weighed) = (1.0 / self.prior_var, 0.0);
@@ -95,7 +105,13 @@ impl Start {
         let (y, yy) = (weighed / weight, 1.0 / weight);
         let ahead = last - mean_t;
         let xx = row_var / count + yy * ahead * ahead;
-        Line { t_s: last, x: mean_z + y * ahead, xx, y, yy }
+        Line {
+            t_s: last,
+            x: mean_z + y * ahead,
+            xx,
+            y,
+            yy,
+        }
     }
 
     /// Least squares of direction `c`: slope, variance of the residuals, Σ(t − mean)².

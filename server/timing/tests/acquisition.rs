@@ -168,6 +168,23 @@ fn a_gap_is_holdover_and_the_interval_only_grows() {
     });
     world.run(NS, 9300 * NS, |_, _| {});
     assert_eq!(world.link.estimate(world.at_ns).state, State::Locked);
+    let changes: Vec<_> = world
+        .link
+        .history()
+        .transitions()
+        .map(|t| (t.to, t.reason))
+        .collect();
+    assert_eq!(
+        changes[..2],
+        [
+            (State::Acquiring, Reason::Narrowing),
+            (State::Locked, Reason::WithinThreshold),
+        ]
+    );
+    assert!(
+        changes.contains(&(State::Holdover, Reason::ReadingsStopped)),
+        "{changes:?}"
+    );
 }
 
 #[test]
