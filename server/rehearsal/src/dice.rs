@@ -35,9 +35,14 @@ impl Dice {
             .fold(self, |dice, byte| dice.lane(u64::from(byte)))
     }
 
+    /// 64 random bits: a seed for something that draws by itself.
+    pub(crate) fn bits(self, index: u64) -> u64 {
+        mix(self.key.wrapping_add(index.wrapping_mul(GOLDEN)))
+    }
+
     /// Uniform over (0, 1), both ends left out, so that its logarithm is finite.
     pub(crate) fn uniform(self, index: u64) -> f64 {
-        let bits = mix(self.key.wrapping_add(index.wrapping_mul(GOLDEN))) >> 11;
+        let bits = self.bits(index) >> 11;
         (bits as f64 + 0.5) * (1.0 / (1_u64 << 53) as f64)
     }
 

@@ -1,12 +1,13 @@
 //! A whole facility, played.
 
+use num_rational::Ratio;
 use ratewright_control::{Event, HouseNs, Id};
+use ratewright_timing::sim::{Clock, ClockModel};
 
 use crate::{
-    clock::{Oscillator, Truth, Walker},
     dice::Dice,
     plan::{Host, Plan, PlanError},
-    probe::{Delivered, Probe, walker},
+    probe::{Delivered, Probe, true_clock},
     ticks::ticks_within,
 };
 
@@ -97,36 +98,58 @@ impl Facility {
             .devices
             .iter()
             .map(|device| (&device.clock.id, &device.oscillator));
-        let oscillator = hosts.chain(devices).find(|(clock, _)| *clock == id);
-        let oscillator = oscillator.map_or(Oscillator::steady(0.0), |(_, found)| found.clone());
-        let walker = walker(id, &oscillator, self.dice);
+        let found = hosts.chain(devices).find(|(clock, _)| *clock == id);
+        let model = found.map_or_else(steady, |(_, model)| model.clone());
+        let clock = true_clock(id, &model, self.dice);
         Some(TrueClock {
             nominal_hz,
             origin_ns: self.origin_ns,
-            walker,
+            clock,
         })
     }
+}
+
+/// A clock that keeps house time.
+fn steady() -> ClockModel {
+    ClockModel {
+        white_fm: 0.0,
+        walk_fm: 0.0,
+        ..ClockModel::crystal()
+    }
+}
+
+/// The true condition of a clock at an instant.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct Truth {
+    /// Clock time minus house time gained since the origin, s.
+    pub phase_s: f64,
+    /// Drift, dimensionless; positive runs fast.
+    pub drift: f64,
 }
 
 /// The truth about one clock, for checks. It is asked forwards: a question may go back at most to the
 /// beginning of the second of the latest one.
 #[derive(Clone, Debug)]
 pub struct TrueClock {
-    nominal_hz: num_rational::Ratio<u64>,
+    nominal_hz: Ratio<u64>,
     origin_ns: HouseNs,
-    walker: Walker,
+    clock: Clock,
 }
 
 impl TrueClock {
     /// The clock at `house_ns`, not before the facility's origin.
     pub fn at(&mut self, house_ns: HouseNs) -> Truth {
-        self.walker.at(house_ns - self.origin_ns)
+        let at_ns = house_ns - self.origin_ns;
+        Truth {
+            phase_s: self.clock.phase_s(at_ns),
+            drift: self.clock.drift(at_ns),
+        }
     }
 
     /// Ticks that pass from `from_ns` to `until_ns` of house time.
     pub(crate) fn ticks(&mut self, from_ns: HouseNs, until_ns: HouseNs) -> f64 {
-        let gained_ns = -self.at(from_ns).phase_ns + self.at(until_ns).phase_ns;
-        ticks_within(self.nominal_hz, until_ns - from_ns, gained_ns)
+        let gained_s = -self.at(from_ns).phase_s + self.at(until_ns).phase_s;
+        ticks_within(self.nominal_hz, until_ns - from_ns, gained_s)
     }
 }
 
@@ -203,7 +226,7 @@ mod tests {
     fn nothing_comes_from_the_ferry_in_its_outage() {
         let delivered = sample_facility(5).until(ORIGIN_NS + 700 * S);
         let ferry = |d: &&Delivered| d.reading.probe == "host-ferry";
-        let (from_ns, until_ns) = (sample::FERRY_OUTAGE.from_ns, sample::FERRY_OUTAGE.until_ns);
+        let (from_ns, until_ns) = (sample::FERRY_OUTAGE.from_ns, sample::FERRY_OUTAGE.to_ns);
         let slack_ns = S / 10;
         let outage = ORIGIN_NS + from_ns + slack_ns..ORIGIN_NS + until_ns;
         assert!(
@@ -228,9 +251,12 @@ mod tests {
             .retain(|device| device.clock.id.as_str() == "gramophone");
         plan.hosts
             .retain(|host| host.clock.id.as_str() == "host-attic");
-        plan.hosts[0].oscillator = Oscillator::steady(0.0);
+        plan.hosts[0].oscillator = steady();
         plan.hosts[0].ahead_ns = 0;
-        plan.devices[0].oscillator = Oscillator::steady(2e-5);
+        plan.devices[0].oscillator = ClockModel {
+            drift: 2e-5,
+            ..steady()
+        };
         plan.devices[0].reading = DeviceReading::Counter {
             bits: 64,
             latch: Delay::calm(0, 0.0),

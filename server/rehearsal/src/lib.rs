@@ -1,7 +1,8 @@
 //! Rehearsals: seeded clocks, links, faults and whole facilities in simulated time, driving the very
 //! engine that serves real ones.
 //!
-//! A [`Plan`] says as plain data what there is: hosts, devices, crossings, and what goes wrong when.
+//! A [`Plan`] says as plain data what there is: hosts, devices, crossings, and what goes wrong when. (The
+//! clocks are those of [`ratewright_timing::sim`].)
 //! With a seed and an origin it becomes a [`Facility`], which hands out, in order of arrival, the readings
 //! that its reporters would have sent: to the engine directly with [`rehearse`], or to whoever carries
 //! them to a daemon. Same plan, seed and origin, same bytes.
@@ -11,7 +12,6 @@
 //!
 //! [`TrueClock`] and [`TruePhase`] tell the truth, which no reporter knows.
 
-mod clock;
 mod dice;
 mod drive;
 mod facility;
@@ -22,10 +22,9 @@ mod probe;
 pub mod sample;
 mod ticks;
 
-pub use clock::{Fault, Oscillator, Truth};
 pub use drive::{Occasion, declare, rehearse};
-pub use facility::{Facility, TrueClock};
-pub use link::{Delay, Link, Outage};
+pub use facility::{Facility, TrueClock, Truth};
+pub use link::{Delay, Link};
 pub use phase::TruePhase;
 pub use plan::{Device, DeviceReading, Host, Plan, PlanError};
 pub use probe::Delivered;

@@ -1,5 +1,9 @@
 //! The network between a host and the house, and other things that take their time.
+//!
+//! Delays are drawn by index, not in turn as those of [`ratewright_timing::sim`] are: a facility that is
+//! resumed skips what was not read without drawing it.
 
+use ratewright_timing::sim::Period;
 use serde::{Deserialize, Serialize};
 
 use crate::dice::Dice;
@@ -49,26 +53,14 @@ pub struct Link {
     /// Share of the messages of exchanges that are lost, 0 to 1, each way. (Reports travel on a
     /// connection that sends again, so they are lost in an outage only.)
     pub loss: f64,
-    /// When nothing passes.
-    pub outages: Vec<Outage>,
-}
-
-/// A time without a network, ns since the facility's origin: `from_ns` included, `until_ns` not.
-#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
-pub struct Outage {
-    /// First instant at which nothing passes.
-    pub from_ns: i64,
-    /// First instant at which messages pass again.
-    pub until_ns: i64,
+    /// When nothing passes, ns since the facility's origin.
+    pub outages: Vec<Period>,
 }
 
 impl Link {
     /// True unless there is an outage.
     pub fn is_up(&self, at_ns: i64) -> bool {
-        !self
-            .outages
-            .iter()
-            .any(|outage| (outage.from_ns..outage.until_ns).contains(&at_ns))
+        !self.outages.iter().any(|outage| outage.holds(at_ns))
     }
 
     /// True if message `index`, sent at `at_ns`, arrives.
@@ -85,9 +77,9 @@ mod tests {
 
     #[test]
     fn nothing_passes_in_an_outage() {
-        let outages = vec![Outage {
+        let outages = vec![Period {
             from_ns: 1_000,
-            until_ns: 2_000,
+            to_ns: 2_000,
         }];
         let still = Delay::calm(0, 0.0);
         let link = Link {

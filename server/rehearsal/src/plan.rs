@@ -1,13 +1,11 @@
 //! A facility as plain data.
 
 use ratewright_control::{ClockDeclaration, CrossingDeclaration, Id};
+use ratewright_timing::sim::ClockModel;
 use serde::{Deserialize, Serialize};
 use thiserror::Error;
 
-use crate::{
-    clock::Oscillator,
-    link::{Delay, Link},
-};
+use crate::link::{Delay, Link};
 
 /// A facility that could exist. Together with a seed and an origin it becomes a [`Facility`](crate::Facility).
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
@@ -28,8 +26,8 @@ pub struct Plan {
 pub struct Host {
     /// The host's clock; it counts nanoseconds, so its nominal rate is 1 GHz.
     pub clock: ClockDeclaration,
-    /// What its oscillator truly does.
-    pub oscillator: Oscillator,
+    /// What it truly does; its time 0 is the facility's origin.
+    pub oscillator: ClockModel,
     /// What its clock shows at the origin, minus house time there, ns.
     pub ahead_ns: i64,
     /// The way to the house.
@@ -43,8 +41,8 @@ pub struct Host {
 pub struct Device {
     /// The device's clock.
     pub clock: ClockDeclaration,
-    /// What its oscillator truly does.
-    pub oscillator: Oscillator,
+    /// What it truly does; its time 0 is the facility's origin.
+    pub oscillator: ClockModel,
     /// Id of the host that reads it.
     pub host: Id,
     /// Time between readings, ns.

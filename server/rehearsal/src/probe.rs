@@ -2,10 +2,12 @@
 
 use num_rational::Ratio;
 use ratewright_control::{HouseNs, Id, Reading, Reference};
-use ratewright_timing::Measurement;
+use ratewright_timing::{
+    Measurement,
+    sim::{Clock, ClockModel},
+};
 
 use crate::{
-    clock::{Oscillator, Truth, Walker},
     dice::Dice,
     link::{Delay, Link},
     plan::{Device, DeviceReading, Host},
@@ -36,8 +38,7 @@ pub(crate) struct Probe {
     origin_ns: HouseNs,
     clock: Id,
     nominal_hz: Ratio<u64>,
-    oscillator: Oscillator,
-    walker: Walker,
+    truth: Clock,
     host: HostSide,
     every_ns: i64,
     means: Means,
@@ -52,7 +53,7 @@ pub(crate) struct Probe {
 #[derive(Clone, Debug)]
 struct HostSide {
     id: Id,
-    walker: Walker,
+    truth: Clock,
     ahead_ns: i64,
     link: Link,
 }
@@ -70,8 +71,7 @@ impl Probe {
             origin_ns,
             clock: host.clock.id.clone(),
             nominal_hz: host.clock.nominal_hz,
-            oscillator: host.oscillator.clone(),
-            walker: walker(&host.clock.id, &host.oscillator, dice),
+            truth: true_clock(&host.clock.id, &host.oscillator, dice),
             host: HostSide::new(host, dice),
             every_ns: host.exchange_every_ns,
             means: Means::Exchange,
@@ -87,8 +87,7 @@ impl Probe {
         Self {
             clock: device.clock.id.clone(),
             nominal_hz: device.clock.nominal_hz,
-            oscillator: device.oscillator.clone(),
-            walker: walker(&device.clock.id, &device.oscillator, dice),
+            truth: true_clock(&device.clock.id, &device.oscillator, dice),
             every_ns: device.every_ns,
             means: Means::Device(device.reading),
             dice: dice.named("probe").named(device.clock.id.as_str()),
@@ -138,9 +137,6 @@ impl Probe {
         self.next += 1;
         let dither = 2.0 * DITHER * self.dice.lane(1).uniform(index) * self.every_ns as f64;
         let at_ns = self.earliest_ns(index) + dither as i64;
-        if !self.oscillator.readable_at(at_ns) {
-            return None;
-        }
         let (done_ns, reference, measurement) = match self.means {
             Means::Exchange => self.exchange(index, at_ns)?,
             Means::Device(reading) => self.read_device(index, at_ns, reading),
@@ -201,7 +197,7 @@ impl Probe {
             DeviceReading::Counter { bits, latch } => self.read_counter(index, at_ns, bits, latch),
             DeviceReading::Frequency { deviation } => {
                 let error = deviation * self.dice.lane(4).normal(index);
-                let drift = self.walker.at(at_ns).drift + error;
+                let drift = self.truth.drift(at_ns) + error;
                 let reference_ns = self.origin_ns + at_ns;
                 (
                     at_ns,
@@ -223,8 +219,8 @@ impl Probe {
         bits: u32,
         latch: Delay,
     ) -> (i64, Reference, Measurement) {
-        let Truth { phase_ns, .. } = self.walker.at(latched_ns);
-        let ticks = ticks(self.nominal_hz, latched_ns, phase_ns);
+        let phase_s = self.truth.phase_s(latched_ns);
+        let ticks = ticks(self.nominal_hz, latched_ns, phase_s);
         let delay_ns = latch.draw_ns(self.dice.lane(5), index);
         let stamped_ns = latched_ns + delay_ns.min(self.patience_ns());
         let measurement = Measurement::Counter {
@@ -246,8 +242,7 @@ impl Probe {
     }
 
     fn host_shows(&mut self, at_ns: i64) -> i64 {
-        let gained_ns = self.host.walker.at(at_ns).phase_ns;
-        self.origin_ns + self.host.ahead_ns + at_ns + libm::round(gained_ns) as i64
+        self.origin_ns + self.host.ahead_ns + self.host.truth.reading_ns(at_ns)
     }
 }
 
@@ -255,16 +250,17 @@ impl HostSide {
     fn new(host: &Host, dice: Dice) -> Self {
         Self {
             id: host.clock.id.clone(),
-            walker: walker(&host.clock.id, &host.oscillator, dice),
+            truth: true_clock(&host.clock.id, &host.oscillator, dice),
             ahead_ns: host.ahead_ns,
             link: host.link.clone(),
         }
     }
 }
 
-/// The one path of a clock: whoever walks it draws from the same family.
-pub(crate) fn walker(id: &Id, oscillator: &Oscillator, dice: Dice) -> Walker {
-    Walker::new(oscillator.clone(), dice.named("clock").named(id.as_str()))
+/// The one life of a clock: whoever asks has one of the same seed, and asks it forwards.
+pub(crate) fn true_clock(id: &Id, model: &ClockModel, dice: Dice) -> Clock {
+    let seed = dice.named("clock").named(id.as_str()).bits(0);
+    Clock::new(model.clone(), seed)
 }
 
 fn wrap(count: i128, bits: u32) -> u64 {

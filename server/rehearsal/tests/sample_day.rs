@@ -155,14 +155,14 @@ fn the_outage_shows(diary: &Diary) {
             .entered(&id, State::Holdover, 0)
             .expect("the outage is noticed");
         assert!(
-            (outage.from_ns..outage.until_ns).contains(&lost),
+            (outage.from_ns..outage.to_ns).contains(&lost),
             "{name} after {} s",
             lost / S
         );
         let back = diary
             .entered(&id, State::Locked, lost)
             .expect("it locks again");
-        assert!(back >= outage.until_ns, "{name} after {} s", back / S);
+        assert!(back >= outage.to_ns, "{name} after {} s", back / S);
     }
     let others = diary
         .clocks
@@ -215,7 +215,7 @@ fn nothing_slips(facility: &Facility, engine: &Engine, diary: &Diary) {
 /// What the gramophone's step took from the phase error of its crossing, sink samples.
 fn lost_samples(crossing: &CrossingDeclaration, at_s: i64) -> f64 {
     if crossing.source.as_str() == "gramophone" && at_s * S >= sample::GRAMOPHONE_STEP_AT_NS {
-        sample::GRAMOPHONE_STEP_BY_NS * 1e-9 * 48_000.0
+        sample::GRAMOPHONE_STEP_BY_S * 48_000.0
     } else {
         0.0
     }

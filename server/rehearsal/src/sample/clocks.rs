@@ -1,12 +1,14 @@
 //! The clocks of the sample facility.
 
+use core::f64::consts::FRAC_PI_2;
+
 use num_rational::Ratio;
 use ratewright_control::ClockDeclaration;
+use ratewright_timing::sim::{ClockModel, Daily, Disturbance, Period, Upset};
 
-use super::{FERRY_OUTAGE, GRAMOPHONE_STEP_AT_NS, GRAMOPHONE_STEP_BY_NS, S, id};
+use super::{FERRY_OUTAGE, GRAMOPHONE_STEP_AT_NS, GRAMOPHONE_STEP_BY_S, S, id};
 use crate::{
-    clock::{Fault, Oscillator},
-    link::{Delay, Link, Outage},
+    link::{Delay, Link},
     plan::{Device, DeviceReading, Host},
 };
 
@@ -85,9 +87,9 @@ pub(super) fn devices() -> Vec<Device> {
     };
     let bench = DeviceReading::Frequency { deviation: 2e-8 };
     let mut gramophone = crystal(-38.2, 0.8);
-    gramophone.faults.push(Fault::PhaseStep {
+    gramophone.upsets.push(Upset {
         at_ns: GRAMOPHONE_STEP_AT_NS,
-        by_ns: GRAMOPHONE_STEP_BY_NS,
+        what: Disturbance::PhaseStep(GRAMOPHONE_STEP_BY_S),
     });
     vec![
         device(
@@ -189,28 +191,30 @@ pub(super) fn devices() -> Vec<Device> {
     ]
 }
 
-/// A plain crystal: `drift_ppm` off, with a daily swing each way of `swing_ppm`.
-fn crystal(drift_ppm: f64, swing_ppm: f64) -> Oscillator {
-    Oscillator {
+/// A plain crystal: `drift_ppm` off, with a daily swing each way of `swing_ppm`, fastest in the middle of
+/// the day that begins with the facility.
+fn crystal(drift_ppm: f64, swing_ppm: f64) -> ClockModel {
+    ClockModel {
         drift: drift_ppm * 1e-6,
-        walk_per_root_s: 3e-10,
-        daily_swing: swing_ppm * 1e-6,
-        // Warmest in the middle of the day that begins with the facility.
-        daily_peak_s: 43_200.0,
-        faults: Vec::new(),
+        walk_fm: 9e-20,
+        daily: Some(Daily {
+            amplitude: swing_ppm * 1e-6,
+            angle: -FRAC_PI_2,
+        }),
+        ..ClockModel::crystal()
     }
 }
 
 /// A crystal in an oven.
-fn oven(drift_ppm: f64) -> Oscillator {
-    Oscillator {
-        walk_per_root_s: 1e-11,
-        daily_swing: 5e-9,
-        ..crystal(drift_ppm, 0.0)
+fn oven(drift_ppm: f64) -> ClockModel {
+    ClockModel {
+        white_fm: 1e-20,
+        walk_fm: 1e-22,
+        ..crystal(drift_ppm, 0.005)
     }
 }
 
-fn link(delay: Delay, outages: Vec<Outage>) -> Link {
+fn link(delay: Delay, outages: Vec<Period>) -> Link {
     let back = Delay {
         least_ns: delay.least_ns + 7_000,
         ..delay
@@ -223,7 +227,7 @@ fn link(delay: Delay, outages: Vec<Outage>) -> Link {
     }
 }
 
-fn host(name: &str, title: &str, oscillator: Oscillator, ahead_ns: i64, link: Link) -> Host {
+fn host(name: &str, title: &str, oscillator: ClockModel, ahead_ns: i64, link: Link) -> Host {
     let clock = clock(name, title, Ratio::from_integer(1_000_000_000));
     Host {
         clock,
@@ -238,7 +242,7 @@ fn device(
     name: &str,
     title: &str,
     nominal_hz: Ratio<u64>,
-    oscillator: Oscillator,
+    oscillator: ClockModel,
     host: &str,
     reading: DeviceReading,
 ) -> Device {

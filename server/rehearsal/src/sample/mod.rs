@@ -8,7 +8,9 @@
 mod clocks;
 mod crossings;
 
-use crate::{link::Outage, plan::Plan};
+use ratewright_timing::sim::Period;
+
+use crate::plan::Plan;
 
 const S: i64 = 1_000_000_000;
 
@@ -16,16 +18,16 @@ const S: i64 = 1_000_000_000;
 pub const SEED: u64 = 0x1A47_E245_EA00_0001;
 
 /// When the ferry's link is down, since the origin.
-pub const FERRY_OUTAGE: Outage = Outage {
+pub const FERRY_OUTAGE: Period = Period {
     from_ns: 360 * S,
-    until_ns: 600 * S,
+    to_ns: 600 * S,
 };
 
 /// When the gramophone's clock steps, ns since the origin.
 pub const GRAMOPHONE_STEP_AT_NS: i64 = 840 * S;
 
-/// By how much it steps, ns.
-pub const GRAMOPHONE_STEP_BY_NS: f64 = -40e6;
+/// By how much it steps, s.
+pub const GRAMOPHONE_STEP_BY_S: f64 = -0.04;
 
 /// The plan of the sample facility.
 pub fn plan() -> Plan {
