@@ -48,7 +48,7 @@ pub(super) fn table(views: &[Arc<CrossingView>]) -> Markup {
                     th role="columnheader" scope="col" { "Runs" }
                     th role="columnheader" scope="col" .number { "Residual, ppb" }
                     th role="columnheader" scope="col" { "Phase error in its headroom" }
-                    th role="columnheader" scope="col" { "Slips" }
+                    th role="columnheader" scope="col" { "If left alone" }
                 }
             }
             tbody role="rowgroup" {
@@ -85,10 +85,10 @@ fn row(view: &CrossingView) -> Markup {
                     span .aside .inline { " of \u{b1}" (declaration.headroom_samples) }
                 }
             }
-            td role="cell" data-head="Slips" .span {
+            td role="cell" data-head="If left alone" .span {
                 @match status.seconds_to_slip {
-                    Some(seconds) => { "in " (words::span(seconds)) }
-                    None => "not in sight",
+                    Some(seconds) => { "slips in " (words::span(seconds)) }
+                    None => "no slip in sight",
                 }
             }
         }

@@ -52,7 +52,7 @@ impl Snapshot<'_> {
         let (head, off, phase) = ("crossing", "off, ppb", "phase error");
         writeln!(
             f,
-            "{head:16} {:13} {:34} {off:>9}  {phase:>18}  slip",
+            "{head:16} {:13} {:40} {off:>9}  {phase:>18}  slip if left alone",
             "state", "runs"
         )?;
         let mut crossings: Vec<_> = self.crossings.iter().collect();
@@ -74,7 +74,7 @@ impl Snapshot<'_> {
                 .map_or("not in sight".to_owned(), |s| format!("in {}", span(s)));
             writeln!(
                 f,
-                "{id:16} {state:13} {runs:34} {off:>9}  {phase:>18}  {slip}"
+                "{id:16} {state:13} {runs:40} {off:>9}  {phase:>18}  {slip}"
             )?;
         }
         Ok(())
