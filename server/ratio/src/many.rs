@@ -2,9 +2,10 @@
 //!
 //! **Why doubles are exact here.** Euclid on (x, 1) for a double x ≥ 1/2 below 2^53 only meets multiples of x's
 //! last binary digit, below 2^53 of them, so products and differences are exact. A rounded quotient may be one
-//! off its floor; the sign of the remainder tells, and it is put right. The parts of the answer are below 2^31.
+//! above its floor; a negative remainder tells. The parts of the answer are below 2^31.
 //! Only the last choice between the two ends multiplies numbers too long for a double: if the two
-//! products are within a few roundings of each other, or x is below 1/2, the exact search decides instead.
+//! products are within a few roundings of each other, as after a negative remainder or for an x below 1/2, the
+//! exact search decides instead.
 //!
 //! **Method.** All lanes step until each has met its bound; a lane that has stands still. No lane branches.
 //! Cost: a third and less of one by one, on processors with vectors of four doubles.
@@ -127,7 +128,7 @@ fn chunks(targets: &[f64], bounds: &Bounds, answers: &mut [Fraction]) {
         let found = nearest(&values, bounds.max_l() as f64, bounds.max_m() as f64);
         for (lane, (target, answer)) in targets.iter().zip(answers).enumerate() {
             *answer = if found.is_sure[lane] {
-                Fraction::new_raw(found.l[lane] as u64, found.m[lane] as u64)
+                Fraction::new_raw(found.l[lane], found.m[lane])
             } else {
                 exactly(*target, bounds)
             };
@@ -137,8 +138,8 @@ fn chunks(targets: &[f64], bounds: &Bounds, answers: &mut [Fraction]) {
 
 /// The answers of all lanes, and whether the doubles could tell.
 struct Found {
-    l: [f64; LANES],
-    m: [f64; LANES],
+    l: [u64; LANES],
+    m: [u64; LANES],
     is_sure: [bool; LANES],
 }
 
@@ -148,17 +149,16 @@ fn nearest(values: &[f64; LANES], max_l: f64, max_m: f64) -> Found {
     let (mut old_l, mut old_m) = ([0.0; LANES], [1.0; LANES]);
     let (mut new_l, mut new_m) = ([1.0; LANES], [0.0; LANES]);
     let (mut old_distance, mut new_distance) = (*values, [1.0; LANES]);
+    let mut least = [0.0; LANES];
     loop {
         let mut moving = 0;
         for i in 0..LANES {
-            let rounded = (old_distance[i] / new_distance[i]).floor();
-            let rest = old_distance[i] - rounded * new_distance[i];
-            let is_over = rest < 0.0;
-            let quotient = if is_over { rounded - 1.0 } else { rounded };
-            let distance = if is_over {
-                rest + new_distance[i]
+            let quotient = (old_distance[i] / new_distance[i]).floor();
+            let distance = old_distance[i] - quotient * new_distance[i];
+            least[i] = if distance < least[i] {
+                distance
             } else {
-                rest
+                least[i]
             };
             let l = old_l[i] + quotient * new_l[i];
             let m = old_m[i] + quotient * new_m[i];
@@ -178,8 +178,8 @@ fn nearest(values: &[f64; LANES], max_l: f64, max_m: f64) -> Found {
         }
     }
     let mut found = Found {
-        l: [0.0; LANES],
-        m: [0.0; LANES],
+        l: [0; LANES],
+        m: [0; LANES],
         is_sure: [false; LANES],
     };
     for i in 0..LANES {
@@ -194,11 +194,16 @@ fn nearest(values: &[f64; LANES], max_l: f64, max_m: f64) -> Found {
         let is_near_only = l == 0.0;
         let is_far = (is_far_only | (far < near)) & !is_near_only;
         let is_told = (far - near).abs() > (far + near) * 2f64.powi(-50);
-        found.l[i] = if is_far { l } else { new_l[i] };
-        found.m[i] = if is_far { m } else { new_m[i] };
-        found.is_sure[i] = (is_told | is_far_only | is_near_only)
-            & (values[i] >= 0.5)
-            & (values[i] < 2f64.powi(53));
+        found.l[i] = integer(if is_far { l } else { new_l[i] });
+        found.m[i] = integer(if is_far { m } else { new_m[i] });
+        let is_exact = (values[i] >= 0.5) & (values[i] < 2f64.powi(53)) & (least[i] == 0.0);
+        found.is_sure[i] = (is_told | is_far_only | is_near_only) & is_exact;
     }
     found
+}
+
+/// A whole double from 0 to below 2^52 as an integer: added to 2^52, its last digits are the number's.
+#[inline(always)]
+fn integer(x: f64) -> u64 {
+    (x + 2f64.powi(52)).to_bits() & ((1 << 52) - 1)
 }

@@ -12,6 +12,7 @@
 //! Best for t and best for 1/t can differ (1/t magnifies the distance on one side); this serves t.
 
 use std::cmp::Ordering;
+use std::hint::select_unpredictable;
 
 use crate::bracket::{self, Bracket, Node};
 use crate::outward::beyond;
@@ -177,18 +178,19 @@ pub fn around(target: &Exact, region: &Region) -> Option<Bracket> {
 /// The end of a true bracket that is nearer to the target, ties to smaller M, then smaller L.
 pub(crate) fn nearer(bracket: &Bracket, target: &Exact) -> Fraction {
     let (below, above) = (bracket.below, bracket.above);
-    let (Some(low), Some(high)) = (below.fraction(), above.fraction()) else {
+    if below.fraction().is_none() || above.fraction().is_none() {
         return below
             .fraction()
             .or(above.fraction())
             .expect("every region holds 1/1, so one end is a ratio");
-    };
-    match compare_distances(below, above, target) {
-        Ordering::Less => low,
-        Ordering::Greater => high,
-        Ordering::Equal if (below.m, below.l) < (above.m, above.l) => low,
-        Ordering::Equal => high,
     }
+    let order = compare_distances(below, above, target);
+    let is_smaller = (below.m < above.m) | ((below.m == above.m) & (below.l < above.l));
+    // Either end is as likely, so a branch would be mispredicted half of the time.
+    let takes_low = (order as i8) < i8::from(is_smaller);
+    let l = select_unpredictable(takes_low, below.l, above.l);
+    let m = select_unpredictable(takes_low, below.m, above.m);
+    Fraction::new_raw(l, m)
 }
 
 /// The nearer of any two ratios, ties to smaller M, then smaller L.

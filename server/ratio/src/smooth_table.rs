@@ -15,6 +15,9 @@ use crate::bracket::{Bracket, Node};
 use crate::nearest::nearer;
 use crate::{Best, Bounds, Certificate, Exact, Interval, Reason, smooth};
 
+/// Slices of the index for each ratio: most then hold one at most.
+const SLICES_PER_RATIO: usize = 4;
+
 /// Smooth ratios within bounds and near a band, ready for look-ups.
 #[derive(Clone, Debug)]
 pub struct SmoothTable {
@@ -42,9 +45,8 @@ impl SmoothTable {
     pub fn new(bounds: &Bounds, band: &Interval) -> Self {
         let mut ratios = in_band(bounds, band);
         ratios.sort_unstable_by(|a, b| order(*a, *b));
-        let value = |end: &Exact| *end.numer() as f64 / *end.denom() as f64;
         let (low, high) = (value(band.lo()), value(band.hi()));
-        let count = ratios.len().max(1);
+        let count = SLICES_PER_RATIO * ratios.len().max(1);
         let slices_per_one = count as f64 / (high - low).max(f64::MIN_POSITIVE);
         let mut table = Self {
             bounds: *bounds,
@@ -90,7 +92,7 @@ impl SmoothTable {
             }
         };
         let is_below = |i: usize| node(i).compare_target(target).is_gt();
-        let mut at = self.guess(*target.numer() as f64 / *target.denom() as f64);
+        let mut at = self.guess(value(target));
         // `at` becomes the first ratio that is not below the target.
         while at > 0 && !is_below(at - 1) {
             at -= 1;
@@ -123,22 +125,51 @@ impl SmoothTable {
     }
 }
 
+/// A target as a double, near enough for a guess.
+#[inline]
+fn value(target: &Exact) -> f64 {
+    match (
+        u64::try_from(*target.numer()),
+        u64::try_from(*target.denom()),
+    ) {
+        (Ok(n), Ok(d)) => n as f64 / d as f64,
+        _ => *target.numer() as f64 / *target.denom() as f64,
+    }
+}
+
 /// All reduced ratios of the band with allowed parts, in no order.
 fn in_band(bounds: &Bounds, band: &Interval) -> Vec<(u32, u32)> {
     let allowed_l = smooth::smooth_numbers(bounds.max_l(), bounds.largest_prime());
+    let sharing = |numbers: &[u64]| {
+        numbers
+            .iter()
+            .map(|&n| small_factors(n))
+            .collect::<Vec<_>>()
+    };
+    let factors_l = sharing(&allowed_l);
     let mut ratios = Vec::new();
     for m in smooth::smooth_numbers(bounds.max_m(), bounds.largest_prime()) {
+        let factors_m = small_factors(m);
         let first = allowed_l.partition_point(|&l| !band.is_above_low(l, m));
-        let inside = allowed_l[first..]
-            .iter()
-            .take_while(|&&l| band.is_below_high(l, m));
-        ratios.extend(
-            inside
-                .filter(|l| l.gcd(&m) == 1)
-                .map(|&l| (l as u32, m as u32)),
-        );
+        for (&l, &factors_l) in allowed_l[first..].iter().zip(&factors_l[first..]) {
+            if !band.is_below_high(l, m) {
+                break;
+            }
+            // A common small factor, which most have, spares the greatest common divisor.
+            if factors_l & factors_m == 0 && l.gcd(&m) == 1 {
+                ratios.push((l as u32, m as u32));
+            }
+        }
     }
     ratios
+}
+
+/// Which of the first primes divide `n`, as bits.
+fn small_factors(n: u64) -> u8 {
+    let primes = [2, 3, 5, 7, 11, 13, 17, 19];
+    (0..8).fold(0, |bits, i| {
+        bits | u8::from(n.is_multiple_of(primes[i])) << i
+    })
 }
 
 /// Orders fractions by value.
