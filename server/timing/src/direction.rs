@@ -146,6 +146,11 @@ impl Direction {
         self.settling = SETTLING_ROWS;
     }
 
+    /// Probability that the next row falls into a burst of queueing.
+    pub(crate) fn burst(&self) -> f64 {
+        self.burst
+    }
+
     /// Whether the offset is being sought.
     pub(crate) fn is_settling(&self) -> bool {
         self.settling > 0

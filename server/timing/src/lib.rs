@@ -3,7 +3,9 @@
 mod acquire;
 mod bank;
 mod blocks;
+mod combine;
 mod config;
+mod diagnosis;
 mod direction;
 mod drift_filter;
 mod erfcx_table;
@@ -28,7 +30,9 @@ pub mod sim;
 pub mod stability;
 mod start;
 
+pub use combine::combine;
 pub use config::{ConfigError, LatencyTail, LinkConfig};
+pub use diagnosis::{Diagnosis, DirectionDiagnosis, Wander};
 pub use estimate::{Estimate, Reason, State, compose, exact};
 pub use forecast::Forecast;
 pub use history::{EventCounts, History, Transition};

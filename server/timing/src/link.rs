@@ -4,6 +4,7 @@ use serde::{Deserialize, Serialize};
 
 use crate::blocks::Blocks;
 use crate::config::{ConfigError, LinkConfig};
+use crate::diagnosis::{Diagnosis, Wander};
 use crate::drift_filter::DriftFilter;
 use crate::estimate::{Estimate, Reason, State, normal_half_width};
 use crate::filter::{Filter, Setup};
@@ -150,6 +151,17 @@ impl Link {
     /// What has happened so far: changes of state with their reasons, and events.
     pub fn history(&self) -> &History {
         &self.history
+    }
+
+    /// What the link makes of its probe, for people.
+    pub fn diagnosis(&self) -> Diagnosis {
+        match &self.stage {
+            Stage::Phase { filter, .. } => filter.diagnosis(),
+            Stage::Starting { .. } | Stage::Drift(_) => Diagnosis {
+                directions: Vec::new(),
+                wander: Wander::default(),
+            },
+        }
     }
 
     /// What is known at a reference time; earlier times than the last reading count as that.

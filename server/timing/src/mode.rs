@@ -170,3 +170,119 @@ impl Slope {
         self.dd = (self.dd - kd * kd / s2).max(least);
     }
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    fn numbers(table: &'static str) -> impl Iterator<Item = Vec<f64>> {
+        table
+            .lines()
+            .skip(1)
+            .map(|line| line.split(',').map(|v| v.parse().unwrap()).collect())
+    }
+
+    fn assert_near(value: f64, expected: f64, relative: f64) {
+        assert!(
+            (value - expected).abs() <= relative * expected.abs(),
+            "{value} {expected}"
+        );
+    }
+
+    /// Steady states of the discrete Riccati equation: `tests/tables/README.md`.
+    #[test]
+    fn covariance_settles_where_the_riccati_equation_says() {
+        for row in numbers(include_str!("../tests/tables/riccati.csv")) {
+            let [q1, q2, r, tau, steady_xx, steady_xy, steady_yy] = row[..] else {
+                panic!("{row:?}")
+            };
+            // Begun near the steady state of continuous time, to be there soon.
+            let xy = (q2 * r * tau).sqrt();
+            let pace = (q1 + 2.0 * xy).sqrt();
+            let xx = 3.0 * (r * tau).sqrt() * pace;
+            let mut walk = Walk {
+                x: 0.0,
+                y: 0.0,
+                xx,
+                xy,
+                yy: 3.0 * q2.sqrt() * pace,
+            };
+            let step = Step::new(tau, 0.0);
+            for _ in 0..3_000_000 {
+                let before = walk;
+                walk.correct(0.0, -1.0 / (walk.xx + r));
+                walk.advance(&step, WalkNoise { q1, q2 });
+                if walk == before {
+                    break;
+                }
+            }
+            assert_near(walk.xx, steady_xx, 1e-9);
+            assert_near(walk.xy, steady_xy, 1e-9);
+            assert_near(walk.yy, steady_yy, 1e-9);
+        }
+    }
+
+    /// Cramér–Rao bound of a slope: `tests/tables/README.md`. The prior is as wide as keeps
+    /// twelve digits of the small numbers, hence the tolerance.
+    #[test]
+    fn without_wander_the_drift_is_as_good_as_the_cramer_rao_bound() {
+        for row in numbers(include_str!("../tests/tables/crlb.csv")) {
+            let [sigma, interval, readings, variance] = row[..] else {
+                panic!("{row:?}")
+            };
+            if readings > 100_000.0 {
+                continue;
+            }
+            let r = sigma * sigma;
+            let wide = 1e6 * r;
+            let mut walk = Walk {
+                x: 0.0,
+                y: 0.0,
+                xx: wide,
+                xy: 0.0,
+                yy: wide / (interval * interval),
+            };
+            let step = Step::new(interval, 0.0);
+            for i in 0..readings as u64 {
+                if i > 0 {
+                    walk.advance(&step, WalkNoise { q1: 0.0, q2: 0.0 });
+                }
+                walk.correct(0.0, -1.0 / (walk.xx + r));
+            }
+            assert_near(walk.yy, variance, 1e-4);
+        }
+    }
+
+    /// A slope mode without slope is a walk.
+    #[test]
+    fn a_slope_of_nought_is_a_walk() {
+        let walk = Walk {
+            x: 1.0,
+            y: 2.0,
+            xx: 3.0,
+            xy: 0.5,
+            yy: 4.0,
+        };
+        let mut slope = Slope {
+            walk,
+            d: 0.0,
+            xd: 0.0,
+            yd: 0.0,
+            dd: 0.0,
+        };
+        let noise = WalkNoise { q1: 0.1, q2: 0.01 };
+        let mut plain = walk;
+        let step = Step::new(7.0, 0.0);
+        plain.advance(&step, noise);
+        slope.advance(
+            &step,
+            SlopeNoise {
+                walk: noise,
+                q3: 0.0,
+                d_deviation: 1e-3,
+            },
+        );
+        assert_eq!((slope.walk.x, slope.walk.y), (plain.x, plain.y));
+        assert_near(slope.walk.xx, plain.xx, 1e-14);
+    }
+}
