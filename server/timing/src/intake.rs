@@ -429,4 +429,35 @@ mod tests {
         );
         assert_eq!(intake, before);
     }
+
+    /// Media-clock rates of pairs of reports, RFC 3550 section 6.4.1: nominal Hz, two
+    /// timestamps, seconds between, ppm (exact fractions).
+    #[test]
+    fn pairs_of_sender_reports_give_the_rate_across_the_wrap() {
+        for (hz, first, second, seconds, ppm) in [
+            (48_000, 1000, 241_006, 5, 25.0),
+            (48_000, 4_294_867_296, 379_981, 10, -39.583_333_333_333_336),
+            (90_000, 4_294_900_000, 5_333_244, 60, 100.0),
+            (44_100, 0, 44_100, 1, 0.0),
+        ] {
+            let mut intake = Intake::new(Ratio::from_integer(hz));
+            let report = |media_timestamp, second: i64| Measurement::SenderReport {
+                media_timestamp,
+                bits: 32,
+                reference_ns: second * 1_000_000_000,
+            };
+            intake.admit(0, &report(first, 0), 0.0).unwrap();
+            let row = intake
+                .admit(1, &report(second, seconds), 0.0)
+                .unwrap()
+                .unwrap();
+            let Values::OneWay(gained_us) = row.values else {
+                panic!("{row:?}")
+            };
+            assert!(
+                (gained_us / seconds as f64 - ppm).abs() < 1e-6,
+                "{gained_us} µs, {ppm} ppm"
+            );
+        }
+    }
 }
