@@ -11,7 +11,7 @@ use std::thread;
 
 use ratewright_control::{CrossingDeclaration, CrossingState};
 use ratewright_timing::sim::{ClockModel, Daily, Delay};
-use world::{DAY, HOUR, SECOND, World, clock, crossing, crystal, id};
+use world::{DAY, HOUR, SECOND, World, clock, crossing, crystal};
 
 /// What is varied.
 #[derive(Clone, Copy, Debug)]
@@ -26,7 +26,6 @@ struct Cell {
 /// What one run gave.
 #[derive(Clone, Copy, Debug, Default)]
 struct Run {
-    settings_a_day: f64,
     changes_a_day: f64,
     worst: f64,
     degraded_share: f64,
@@ -39,19 +38,36 @@ const SETTLED: i64 = HOUR;
 fn run(cell: Cell, days: i64, seed: u64) -> Run {
     let mut world = World::new();
     world.add_exact("house", 48_000);
-    let daily = Some(Daily { amplitude: 1e-6, angle: seed as f64 });
-    let model = ClockModel { daily, ..crystal(cell.drift, cell.walk) };
-    let delay = Delay::Normal { deviation_s: cell.noise_s };
-    world.add_seeded(clock("desk", cell.source_hz), model, delay, SECOND, 7 * seed + 1);
+    let daily = Some(Daily {
+        amplitude: 1e-6,
+        angle: seed as f64,
+    });
+    let model = ClockModel {
+        daily,
+        ..crystal(cell.drift, cell.walk)
+    };
+    let delay = Delay::Normal {
+        deviation_s: cell.noise_s,
+    };
+    world.add_seeded(
+        clock("desk", cell.source_hz),
+        model,
+        delay,
+        SECOND,
+        7 * seed + 1,
+    );
     let headroom_samples = cell.headroom;
-    world.cross(CrossingDeclaration { headroom_samples, review_horizon_ns: DAY, ..crossing("x", "desk", "house") });
+    world.cross(CrossingDeclaration {
+        headroom_samples,
+        review_horizon_ns: DAY,
+        ..crossing("x", "desk", "house")
+    });
     world.run_until(SETTLED);
     world.forget();
     world.run_until(days * DAY);
     let tally = world.tally("x");
     let per_day = |count: usize| count as f64 * DAY as f64 / (days * DAY - SETTLED) as f64;
     Run {
-        settings_a_day: per_day(tally.settings.iter().filter(|s| s.decided_ns > SETTLED).count()),
         changes_a_day: per_day(tally.changes.iter().filter(|(at, _)| *at > SETTLED).count()),
         worst: tally.worst,
         degraded_share: not_holding(&tally.states, days * DAY),
@@ -62,8 +78,13 @@ fn run(cell: Cell, days: i64, seed: u64) -> Run {
 /// Share of the settled time in another state than holding.
 fn not_holding(states: &[(i64, CrossingState)], end: i64) -> f64 {
     let ends = states.iter().skip(1).map(|(at, _)| *at).chain([end]);
-    let out = states.iter().zip(ends).filter(|((_, state), _)| *state != CrossingState::Holding);
-    let ns: i64 = out.map(|((from, _), to)| (to.max(SETTLED) - (*from).max(SETTLED)).max(0)).sum();
+    let out = states
+        .iter()
+        .zip(ends)
+        .filter(|((_, state), _)| *state != CrossingState::Holding);
+    let ns: i64 = out
+        .map(|((from, _), to)| (to.max(SETTLED) - (*from).max(SETTLED)).max(0))
+        .sum();
     ns as f64 / (end - SETTLED) as f64
 }
 
@@ -73,7 +94,13 @@ fn cells() -> Vec<Cell> {
         for noise_s in [1e-6, 5e-6] {
             for walk in [1e-10, 1e-9] {
                 for drift in [2e-6, 37.3e-6] {
-                    cells.push(Cell { source_hz, headroom, noise_s, walk, drift });
+                    cells.push(Cell {
+                        source_hz,
+                        headroom,
+                        noise_s,
+                        walk,
+                        drift,
+                    });
                 }
             }
         }
@@ -90,10 +117,16 @@ fn report(cell: Cell, days: i64, seeds: u64) {
     let runs: Vec<Run> = thread::scope(|scope| {
         let halves = [0, 1].map(|half| {
             scope.spawn(move || -> Vec<Run> {
-                (1..=seeds).filter(|seed| seed % 2 == half).map(|seed| run(cell, days, seed)).collect()
+                (1..=seeds)
+                    .filter(|seed| seed % 2 == half)
+                    .map(|seed| run(cell, days, seed))
+                    .collect()
             })
         });
-        halves.into_iter().flat_map(|half| half.join().expect("a run does not panic")).collect()
+        halves
+            .into_iter()
+            .flat_map(|half| half.join().expect("a run does not panic"))
+            .collect()
     });
     let most = |of: fn(&Run) -> f64| runs.iter().map(of).fold(0.0, f64::max);
     let settings: Vec<f64> = runs.iter().map(|r| r.changes_a_day).collect();
@@ -118,8 +151,12 @@ fn main() {
     let mut arguments = std::env::args().skip(1).map(|a| a.parse::<i64>());
     let days = arguments.next().and_then(Result::ok).unwrap_or(3);
     let seeds = arguments.next().and_then(Result::ok).unwrap_or(4) as u64;
-    println!("{seeds} seeds of {days} days; median / most changes a day; the tube is 0.8 of the headroom");
-    println!("| source Hz | headroom | timestamps | walk /√s | drift ppm | changes a day | worst abs φ | tube overshoot | runs with slips | not holding, at most |");
+    println!(
+        "{seeds} seeds of {days} days; median / most changes a day; the tube is 0.8 of the headroom"
+    );
+    println!(
+        "| source Hz | headroom | timestamps | walk /√s | drift ppm | changes a day | worst abs φ | tube overshoot | runs with slips | not holding, at most |"
+    );
     println!("| --- | --- | --- | --- | --- | --- | --- | --- | --- | --- |");
     for cell in cells() {
         report(cell, days, seeds);

@@ -60,7 +60,7 @@ impl Engine {
             return;
         };
         let ends = self.settle(member, now, lead_ns, effects);
-        let step_ns = self.step_ns(id, &ends);
+        let step_ns = self.step_ns(id, now, &ends);
         self.schedule
             .set(Subject::Crossing(id.clone()), now.saturating_add(step_ns));
     }
@@ -92,7 +92,7 @@ impl Engine {
         for member in members {
             let id = member.id.clone();
             let ends = self.settle(member, now, lead_ns, effects);
-            let own_ns = self.step_ns(&id, &ends);
+            let own_ns = self.step_ns(&id, now, &ends);
             step_ns = Some(step_ns.map_or(own_ns, |least_ns: i64| least_ns.min(own_ns)));
         }
         if let Some(step_ns) = step_ns {
@@ -134,9 +134,9 @@ impl Engine {
         })
     }
 
-    fn step_ns(&self, id: &Id, ends: &Ends) -> i64 {
+    fn step_ns(&self, id: &Id, now: HouseNs, ends: &Ends) -> i64 {
         let record = self.crossings.get(id);
-        record.map_or(i64::MAX, |record| (record.step_s(ends) * 1e9) as i64)
+        record.map_or(i64::MAX, |record| (record.step_s(now, ends) * 1e9) as i64)
     }
 
     /// Does what was judged.

@@ -11,11 +11,13 @@ pub(crate) mod outlook;
 pub(crate) mod realise;
 pub(crate) mod slip;
 
-/// Standard deviations that planning and keeping leave room for. The two must be about equal:
-/// keeping by a smaller margin than planning chatters.
-pub(crate) const MARGIN_DEVIATIONS: f64 = 2.5;
+/// Standard deviations that planning and keeping leave room for. The two must be equal: with a
+/// smaller margin for the growth than for what is uncertain now, the plan ends at an edge where
+/// keeping refuses at once (measured: twice the changes at half a sample of headroom). The tube's
+/// own reserve stands behind it, so more deviations only cost changes (`examples/hold_table`).
+pub(crate) const MARGIN_DEVIATIONS: f64 = 2.0;
 /// Standard deviations that keeping an inward-moving phase leaves room for.
-pub(crate) const INWARD_DEVIATIONS: f64 = 3.0;
+pub(crate) const INWARD_DEVIATIONS: f64 = 2.5;
 /// The tube: the share of the headroom that planning may use.
 pub(crate) const TUBE: f64 = 0.8;
 /// The share of the headroom within which a phase that moves inward is let be.
@@ -46,10 +48,16 @@ pub(crate) struct Limits {
 
 impl Limits {
     /// The limits under a headroom, with a cadence that errs by up to `cadence_error` samples.
+    /// An error that fills the tube cannot be planned away: then its average is kept to the tube.
     pub(crate) fn new(headroom: f64, cadence_error: f64, sink_hz: f64) -> Self {
+        let error = if cadence_error < TUBE * headroom {
+            cadence_error
+        } else {
+            0.0
+        };
         Limits {
-            tube: TUBE * headroom - cadence_error,
-            inward: INWARD_TUBE * headroom - cadence_error,
+            tube: TUBE * headroom - error,
+            inward: INWARD_TUBE * headroom - error,
             pitch: PITCH_LIMIT * sink_hz,
         }
     }

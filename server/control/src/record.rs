@@ -9,7 +9,7 @@ use crate::policy::choose::{Choice, View, choose, choose_nominal};
 use crate::policy::keep::may_stay;
 use crate::policy::outlook::Outlook;
 use crate::policy::realise::{block_inputs, error_of};
-use crate::policy::{Limits, PITCH_LIMIT};
+use crate::policy::{Limits, PITCH_LIMIT, TUBE};
 use crate::target::Target;
 use crate::{
     ClockDeclaration, CrossingDeclaration, CrossingState, HouseNs, Id, Reason, Setting, Transition,
@@ -20,7 +20,8 @@ use crate::{
 const LONGEST_RECOVERY_S: f64 = 600.0;
 /// Seconds between decisions until the clocks are locked, and afterwards.
 const STEPS_S: (f64, f64) = (1.0, 10.0);
-/// A setting whose hold is shorter than this, seconds, is looked at as often as before the lock.
+/// With less than this to go in the tube, seconds, a crossing is decided as often as before the
+/// lock.
 const SHORT_HOLD_S: f64 = 100.0;
 
 /// A crossing with its account and its newest setting.
@@ -118,21 +119,28 @@ impl CrossingRecord {
     }
 
     /// Seconds to the next decision.
-    pub(crate) fn step_s(&self, ends: &Ends) -> f64 {
+    pub(crate) fn step_s(&self, now: HouseNs, ends: &Ends) -> f64 {
         use ratewright_timing::State::{Holdover, Locked};
         let settled = |clock: &Traced| matches!(clock.estimate.state, Locked | Holdover);
-        let short = self
-            .newest
-            .as_ref()
-            .is_some_and(|s| s.evidence.expected_hold_s < SHORT_HOLD_S);
         match self.state {
             CrossingState::Waiting if ends.source.measured && ends.sink.measured => STEPS_S.0,
             CrossingState::Waiting | CrossingState::OutOfBounds => STEPS_S.1,
             CrossingState::Holding if ends.target.certain => STEPS_S.1,
-            CrossingState::Holding if short => STEPS_S.0,
+            CrossingState::Holding if self.tube_lasts_s(now, ends) < SHORT_HOLD_S => STEPS_S.0,
             _ if settled(&ends.source) && settled(&ends.sink) => STEPS_S.1,
             _ => STEPS_S.0,
         }
+    }
+
+    /// Seconds until the phase error leaves the tube under the ratio in force, as it seems now.
+    fn tube_lasts_s(&self, now: HouseNs, ends: &Ends) -> f64 {
+        let Some(ratio) = self.ledger.timeline.ratio_at(now) else {
+            return 0.0;
+        };
+        let velocity = self.ledger.velocity(ratio, &ends.source, &ends.sink);
+        let way = TUBE * self.declaration.headroom_samples
+            - velocity.signum() * self.ledger.phase_samples();
+        way.max(0.0) / velocity.abs()
     }
 
     /// Looks at the crossing at `now`, to which its account is advanced. A setting would take
@@ -191,7 +199,7 @@ impl CrossingRecord {
             declaration: &self.declaration,
             velocity: in_force.map_or(0.0, |ratio| outlook.velocity(ratio)),
             lead_s,
-            step_s: self.step_s(ends),
+            step_s: self.step_s(now, ends),
         }
     }
 
@@ -224,7 +232,7 @@ impl CrossingRecord {
             view.velocity,
             view.step_s + view.lead_s + block_s,
         ) {
-            return Some(view.standing(view.velocity));
+            return Some(view.standing(view.velocity, error));
         }
         (self.state == CrossingState::Degraded && view.is_as_good(error))
             .then(|| (self.state, self.reason.clone()))

@@ -167,9 +167,10 @@ fn equal_rates_within_half_a_sample_are_degraded_and_say_why() {
         "{}",
         status.reason
     );
-    // The least bad: the average is right all the same.
-    let newest = status.setting.expect("there is always a setting");
-    assert!(newest.residual.abs() < 1e-6, "{}", newest.residual);
+    // The least bad: the average is held all the same, and with few settings.
+    assert!(status.phase_error_samples.abs() < 0.4);
+    let settings = world.tally("x").settings.len();
+    assert!(settings < 60, "{settings} settings in half an hour");
 }
 
 #[test]

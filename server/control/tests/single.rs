@@ -87,6 +87,11 @@ fn a_gap_too_wide_for_single_ratios_is_out_of_bounds_and_forecast() {
         "{}",
         status.reason
     );
+    assert!(
+        status.reason.contains("that would take L up to"),
+        "{}",
+        status.reason
+    );
     let newest = status.setting.as_ref().expect("there is always a setting");
     assert_eq!(newest.realised, Realised::Single(Ratio::new(1, 1)));
     // 1/1 makes 0.5 ppm of 48,000 samples a second too much: 0.024/s.

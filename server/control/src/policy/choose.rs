@@ -4,7 +4,9 @@ use ratewright_ratio::Fraction;
 
 use crate::policy::funnel::{Entry, Span, funnel};
 use crate::policy::outlook::Outlook;
-use crate::policy::realise::{Allowed, Way, allowed, cadence_error, nearest_virtual, realise};
+use crate::policy::realise::{
+    Allowed, Way, allowed, cadence_error, error_of, nearest_virtual, realise,
+};
 use crate::policy::{HOLD_SHARE, Limits, MARGIN_DEVIATIONS, PLAN_HORIZON_S};
 use crate::timeline::as_double;
 use crate::{CrossingDeclaration, CrossingState, Realisation};
@@ -107,7 +109,7 @@ impl View<'_> {
     /// A choice out of a span of the funnel.
     fn held(&self, way: Way, allowed: &Allowed, span: Span, entry: Entry) -> Choice {
         let velocity = self.outlook.velocity(as_double(&way.wanted));
-        let (state, reason) = self.standing(velocity);
+        let (state, reason) = self.standing(velocity, error_of(&way.realised));
         Choice {
             way,
             allowed: (allowed.low, allowed.high),
@@ -118,9 +120,10 @@ impl View<'_> {
         }
     }
 
-    /// How a crossing stands under a ratio that may stay: holding, unless the phase error is out
-    /// of the headroom by now, or there is no way back when the hold ends.
-    pub(crate) fn standing(&self, velocity: f64) -> (CrossingState, String) {
+    /// How a crossing stands under a setting that may stay, which gives the phase error this
+    /// velocity and errs by up to so much itself: holding, unless the phase error is out of the
+    /// headroom by now, not known to be within, or has no way back when the hold ends.
+    pub(crate) fn standing(&self, velocity: f64, cadence_error: f64) -> (CrossingState, String) {
         let (phase, headroom) = (self.outlook.phase, self.declaration.headroom_samples);
         if phase.abs() > headroom {
             let reason = format!(
@@ -129,33 +132,53 @@ impl View<'_> {
             );
             return (CrossingState::Degraded, reason);
         }
-        if self.declaration.realisation == Realisation::Single && self.is_dead_end(velocity) {
+        let tube = self.limits(0.0).tube;
+        if cadence_error >= tube {
             let reason = format!(
-                "the phase error grows by {velocity:+.2e} samples a second, and no ratio within \
-                 the bounds leads back"
+                "a cadence within the bounds errs by up to {cadence_error:.3} samples, \
+                 more than the {tube:.3} that the headroom of {headroom} leaves"
             );
+            return (CrossingState::Degraded, reason);
+        }
+        let margin = MARGIN_DEVIATIONS * self.outlook.deviation(0.0);
+        if margin > tube {
+            let reason = format!(
+                "the phase error is uncertain by {margin:.3} samples ({MARGIN_DEVIATIONS} deviations), \
+                 and the tube is {tube:.3}"
+            );
+            return (CrossingState::Degraded, reason);
+        }
+        if let Some(reason) = self.dead_end(velocity) {
             return (CrossingState::OutOfBounds, reason);
         }
         let reason = format!("the phase error stays within the headroom of {headroom} samples");
         (CrossingState::Holding, reason)
     }
 
-    /// True if no ratio of the bounds moves the phase error the other way, within the pitch
-    /// limit, and that will be needed within what is planned for.
-    fn is_dead_end(&self, velocity: f64) -> bool {
+    /// For one ratio at a time: why there will be no way back, if so. No ratio of the bounds
+    /// moves the phase error the other way, within the pitch limit, and that will be needed
+    /// within what is planned for.
+    fn dead_end(&self, velocity: f64) -> Option<String> {
         let limits = self.limits(0.0);
-        if velocity.abs() * PLAN_HORIZON_S < limits.tube {
-            return false;
+        let lasts = velocity.abs() * PLAN_HORIZON_S < limits.tube;
+        if self.declaration.realisation != Realisation::Single || lasts {
+            return None;
         }
         let (low, high) = if velocity > 0.0 {
             (-limits.pitch, 0.0)
         } else {
             (0.0, limits.pitch)
         };
-        let other = allowed(self.outlook.ratio(low), self.outlook.ratio(high));
-        other
-            .and_then(|other| other.any_single(&self.declaration.bounds))
-            .is_none()
+        let other = allowed(self.outlook.ratio(low), self.outlook.ratio(high))?;
+        if other.any_single(&self.declaration.bounds).is_some() {
+            return None;
+        }
+        // The simplest fraction has the smallest parts of all that would do.
+        let (l, m) = (other.simplest.numer(), other.simplest.denom());
+        Some(format!(
+            "the phase error grows by {velocity:+.2e} samples a second, and no ratio within the bounds \
+             leads back: that would take L up to {l} and M up to {m}, or a cadence"
+        ))
     }
 
     /// One ratio at a time: the longest hold for which the bounds have a ratio.
@@ -174,14 +197,26 @@ impl View<'_> {
         if spans.is_empty() {
             return self.least_bad(self.limits(0.0));
         }
-        let wanted = nearest_virtual(self.outlook.target.value);
-        let way = realise(wanted, bounds, Realisation::Single);
-        let (l, m) = (bounds.max_l(), bounds.max_m());
-        let reason = format!(
-            "no ratio with L up to {l} and M up to {m} comes near enough to the target {:.9}",
-            self.outlook.target.value
+        let way = realise(
+            nearest_virtual(self.outlook.target.value),
+            bounds,
+            Realisation::Single,
         );
-        let state = CrossingState::OutOfBounds;
+        let needed = spans
+            .first()
+            .and_then(|span| self.allowed(span))
+            .map(|allowed| allowed.simplest);
+        let reason = needed.map_or_else(
+            || "no ratio within the bounds comes near enough to the target".to_owned(),
+            |needed| {
+                let (l, m) = (needed.numer(), needed.denom());
+                format!(
+                    "no ratio within the bounds comes near enough to the target: that would take \
+                     L up to {l} and M up to {m}, or a cadence"
+                )
+            },
+        );
+        let (state, wanted) = (CrossingState::OutOfBounds, way.wanted);
         Choice {
             way,
             allowed: (wanted, wanted),
@@ -266,15 +301,6 @@ impl View<'_> {
     }
 
     fn why_not(&self, limits: &Limits) -> String {
-        let headroom = self.declaration.headroom_samples;
-        let tube = self.limits(0.0).tube;
-        if limits.tube <= 0.0 {
-            let error = tube - limits.tube;
-            return format!(
-                "a cadence within the bounds errs by up to {error:.3} samples, \
-                 more than the {tube:.3} that the headroom of {headroom} leaves"
-            );
-        }
         let margin = MARGIN_DEVIATIONS * self.outlook.deviation(self.lead_s);
         format!(
             "the phase error is uncertain by {margin:.3} samples ({MARGIN_DEVIATIONS} deviations) \
