@@ -3,8 +3,8 @@
 use num_bigint::BigUint;
 use num_rational::Ratio;
 use ratewright_ratio::{
-    Bounds, Claim, Exact, MAX_BOUND, Region, Side, best, best_in, big, neighbours, residual,
-    target_from_f64,
+    BatchError, Bounds, Claim, Exact, MAX_BOUND, Region, Side, best, best_in, best_of_many, big,
+    neighbours, residual, target_from_f64,
 };
 
 use crate::random::Random;
@@ -118,4 +118,64 @@ fn doubles_agree_with_big_integers() {
     ];
     assert!(edges.iter().all(|&x| target_from_f64(x).is_err()));
     assert!(target_from_f64(2f64.powi(127)).is_ok() && target_from_f64(2f64.powi(-127)).is_ok());
+}
+
+#[test]
+fn many_at_once_give_the_same_as_one_by_one() {
+    let mut random = Random::new(9);
+    for round in 0..400 {
+        let bounds = match round % 4 {
+            0 => bounds(&mut random),
+            1 => random.bounds().with_largest_prime(5).expect("in range"),
+            _ => Bounds::new(random.range(1, 1 << 20), random.range(1, 2_048)).expect("in range"),
+        };
+        let mut values = Vec::new();
+        for _ in 0..random.range(0, 70) {
+            let unit = (random.next() >> 11) as f64 / (1u64 << 53) as f64;
+            values.push(match random.range(0, 5) {
+                0 => f64::from_bits(random.range(1, f64::INFINITY.to_bits() - 1)),
+                // Ratios of small numbers: within the bounds, and midpoints.
+                1 => random.range(1, 64) as f64 / random.range(1, 64) as f64,
+                2 => random.range(1, 99) as f64 / 64.0,
+                3 => 1.0 + (unit - 0.5) * 1e-4,
+                _ => 8.0 * unit + f64::MIN_POSITIVE,
+            });
+        }
+        let mut answers = vec![Ratio::new(1, 1); values.len()];
+        best_of_many(&values, &bounds, &mut answers).expect("positive values");
+        for (&x, &answer) in values.iter().zip(&answers) {
+            let wanted = match (target_from_f64(x), bounds.largest_prime()) {
+                (Ok(target), _) => best(&target, &bounds).ratio,
+                (Err(_), None) => {
+                    let target = big::target_from_f64(x).expect("positive");
+                    big::best_in(&target, &Region::from(&bounds)).ratio
+                }
+                (Err(_), Some(_)) => continue,
+            };
+            assert_eq!(answer, wanted, "{x:e} {bounds:?}");
+        }
+    }
+}
+
+#[test]
+fn a_refused_batch_names_the_value_and_leaves_the_answers() {
+    let bounds = Bounds::new(16, 16).expect("in range");
+    let untouched = [Ratio::new(5, 7); 2];
+    let mut answers = untouched;
+    for bad in [f64::NAN, f64::INFINITY, 0.0, -1.0] {
+        let refused = best_of_many(&[1.0, bad], &bounds, &mut answers);
+        assert!(
+            matches!(refused, Err(BatchError::Target { index: 1, .. })),
+            "{refused:?}"
+        );
+    }
+    let refused = best_of_many(&[1.0], &bounds, &mut answers);
+    assert_eq!(
+        refused,
+        Err(BatchError::Length {
+            targets: 1,
+            answers: 2
+        })
+    );
+    assert_eq!(answers, untouched);
 }

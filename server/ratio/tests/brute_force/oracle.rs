@@ -34,6 +34,23 @@ pub(crate) fn nearest(target: &Exact, ratios: &[Fraction]) -> Fraction {
     *ratios.iter().min_by(order).expect("1/1 is allowed")
 }
 
+/// The nearest with parts up to the bounds: for each M the two L on either side of target·M.
+pub(crate) fn nearest_over_all_denominators(target: &Exact, max_l: u64, max_m: u64) -> Fraction {
+    let mut nearest = Fraction::new_raw(1, 1);
+    for m in 1..=max_m {
+        let floor = *target.numer() * u128::from(m) / *target.denom();
+        for l in [floor, floor + 1] {
+            let l = l.clamp(1, u128::from(max_l)) as u64;
+            let candidate = Fraction::new_raw(l, m);
+            // M ascends, and L within an M, so a tie keeps the earlier: the smaller.
+            if compare(target, &candidate, &nearest).is_lt() {
+                nearest = candidate;
+            }
+        }
+    }
+    nearest
+}
+
 /// Compares a ratio with the target.
 pub(crate) fn side(ratio: &Fraction, target: &Exact) -> Ordering {
     let made = *target.denom() * u128::from(*ratio.numer());
