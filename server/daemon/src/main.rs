@@ -16,7 +16,7 @@ use ratewright_server::{
     config::{self, Config, LogFormat},
     sample,
 };
-use tokio::signal::unix::{SignalKind, signal};
+use tokio::signal::unix::{Signal, SignalKind, signal};
 use tracing_subscriber::EnvFilter;
 
 const EX_UNAVAILABLE: u8 = 69;
@@ -78,11 +78,11 @@ fn main() -> ExitCode {
                 .as_deref()
                 .map_or_else(|| Ok(Config::default()), config::load)
             {
-                Ok(config) => in_runtime(run(config, opening)),
+                Ok(config) => in_runtime(|signals| run(config, opening, signals)),
                 Err(faults) => at_fault(&faults),
             }
         }
-        Command::Sample { pace, store } => in_runtime(run_sample(pace, store)),
+        Command::Sample { pace, store } => in_runtime(|signals| run_sample(pace, store, signals)),
         Command::Check { config } => match config::load(&config) {
             Ok(_) => {
                 println!("{}: no fault", config.display());
@@ -98,28 +98,32 @@ fn at_fault(faults: &config::Faults) -> ExitCode {
     ExitCode::from(EX_CONFIG)
 }
 
-fn in_runtime(work: impl Future<Output = ExitCode>) -> ExitCode {
-    match tokio::runtime::Builder::new_multi_thread()
+fn in_runtime<W: Future<Output = ExitCode>>(work: impl FnOnce(Signals) -> W) -> ExitCode {
+    let runtime = tokio::runtime::Builder::new_multi_thread()
         .enable_all()
-        .build()
-    {
-        Ok(runtime) => runtime.block_on(work),
+        .build();
+    let prepared = runtime.and_then(|runtime| {
+        let signals = runtime.block_on(async { Signals::catch() })?;
+        Ok((runtime, signals))
+    });
+    match prepared {
+        Ok((runtime, signals)) => runtime.block_on(work(signals)),
         Err(fault) => {
-            eprintln!("no threads can be started: {fault}");
+            eprintln!("the system gives no threads or no signals: {fault}");
             ExitCode::from(EX_SOFTWARE)
         }
     }
 }
 
-async fn run(config: Config, opening: Opening) -> ExitCode {
+async fn run(config: Config, opening: Opening, signals: Signals) -> ExitCode {
     start_log(config.log);
     match Daemon::builder(config).opening(opening).start().await {
-        Ok(daemon) => serve(daemon, std::future::pending()).await,
+        Ok(daemon) => serve(daemon, signals, std::future::pending()).await,
         Err(fault) => not_started(&fault),
     }
 }
 
-async fn run_sample(pace: f64, store: Option<PathBuf>) -> ExitCode {
+async fn run_sample(pace: f64, store: Option<PathBuf>, signals: Signals) -> ExitCode {
     let kept = store.is_some();
     let folder = store.unwrap_or_else(|| {
         std::env::temp_dir().join(format!("ratewright-sample-{}", std::process::id()))
@@ -129,7 +133,7 @@ async fn run_sample(pace: f64, store: Option<PathBuf>) -> ExitCode {
     let code = match Daemon::builder(config).pace(pace).start().await {
         Ok(daemon) => {
             let played = sample::run(daemon.grpc(), daemon.people(), daemon.house());
-            serve(daemon, played).await
+            serve(daemon, signals, played).await
         }
         Err(fault) => not_started(&fault),
     };
@@ -145,10 +149,11 @@ async fn run_sample(pace: f64, store: Option<PathBuf>) -> ExitCode {
 /// Serves until a signal, a failure, or the end of what is played.
 async fn serve(
     mut daemon: Daemon,
+    mut signals: Signals,
     played: impl Future<Output = Result<(), sample::SampleError>>,
 ) -> ExitCode {
     let code = tokio::select! {
-        name = told_to_stop() => {
+        name = signals.heard() => {
             tracing::info!(signal = name, "told to stop");
             ExitCode::SUCCESS
         }
@@ -173,17 +178,28 @@ async fn serve(
     }
 }
 
-async fn told_to_stop() -> &'static str {
-    let (Ok(mut terminate), Ok(mut interrupt)) = (
-        signal(SignalKind::terminate()),
-        signal(SignalKind::interrupt()),
-    ) else {
-        tracing::warn!("signals cannot be heard: the daemon can only be killed");
-        return std::future::pending().await;
-    };
-    tokio::select! {
-        _ = terminate.recv() => "SIGTERM",
-        _ = interrupt.recv() => "SIGINT",
+/// The signals that ask for a drain. They are caught from here on: one that comes while the daemon
+/// starts is heeded once it serves.
+struct Signals {
+    terminate: Signal,
+    interrupt: Signal,
+}
+
+impl Signals {
+    /// Must be called within the runtime.
+    fn catch() -> std::io::Result<Self> {
+        let terminate = signal(SignalKind::terminate())?;
+        Ok(Self {
+            terminate,
+            interrupt: signal(SignalKind::interrupt())?,
+        })
+    }
+
+    async fn heard(&mut self) -> &'static str {
+        tokio::select! {
+            _ = self.terminate.recv() => "SIGTERM",
+            _ = self.interrupt.recv() => "SIGINT",
+        }
     }
 }
 
