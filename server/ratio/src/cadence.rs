@@ -8,7 +8,7 @@
 //! **Sign.** The error e is *outputs made − outputs wanted*, counted in units of g/D output samples: a low
 //! block adds −y, a high block +x.
 //!
-//! **Theorem (block ends).** By the balance rule ([`crate`], module `balance`) the high ratio is served iff
+//! **Theorem (block ends).** By the balance rule ([`crate::balance`]) the high ratio is served iff
 //! e < θ, θ = ⌊(y − x + 1)/2⌋, and then max |e| = ⌊(x + y)/2⌋ units. For neighbours that is at most
 //! 1/(2·min(b,d)) output samples, because x·b + y·d = D; and no order of the blocks does better.
 //!

@@ -4,7 +4,7 @@
 //! checker from what it knows itself (its own bounds, the target it was told). Nothing of the statement is
 //! read from the certificate, so a certificate for other bounds proves nothing.
 //!
-//! The theorems are those of [`crate::bracket`], [`crate::nearest`] and [`crate::simplest`].
+//! The theorems are those of [`crate::bracket`], [`crate::nearest`] and [`mod@crate::simplest`].
 //! Cost: 4 to 8 multiplications; no division, no allocation.
 
 use std::hint::select_unpredictable;

@@ -1,11 +1,11 @@
 //! The front: every ratio that is not beaten in both error and cost, for a cost of one's own.
 //!
-//! The [`ladder`](crate::ladder) is the front for every cost at once. With one cost only (M, L + M, L·M, the
+//! The [ladder](mod@crate::ladder) is the front for every cost at once. With one cost only (M, L + M, L·M, the
 //! coefficients of the filter) some rungs fall out: those as dear as a nearer one.
 //!
 //! **Theorem.** For every cost that does not fall as L or M grows, the front is part of the ladder, because off
 //! the ladder a ratio is beaten by one with smaller or equal parts. With a bound on prime factors the same
-//! holds of the two lists of candidates of module `smooth`; sorted by cost, those that come nearer than all
+//! holds of the two lists of candidates of [`crate::smooth`]; sorted by cost, those that come nearer than all
 //! before remain.
 //!
 //! **Cost.** A step of the iterator without a bound on prime factors; one sort with it.

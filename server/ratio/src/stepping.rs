@@ -1,7 +1,7 @@
 //! Stepping: one filter table of L phases, and at every output an advance of A phases or of A + 1.
 //!
 //! One output is wanted every L/t phases. With t = n/D and A = ⌊L·D/n⌋, an advance of A is short by
-//! r = L·D − A·n and one of A + 1 long by n − r, in units of 1/n phase, so the balance rule (module `balance`)
+//! r = L·D − A·n and one of A + 1 long by n − r, in units of 1/n phase, so the balance rule ([`crate::balance`])
 //! gives the best sequence.
 //!
 //! **Sign.** The error is *outputs made − outputs wanted*. A longer advance takes more input for the same
