@@ -73,7 +73,8 @@ pub(super) fn rate(hz: Ratio<u64>) -> String {
 
 /// What a resampler runs.
 pub(super) fn runs(realised: &Realised) -> String {
-    let blocks = |blocks: u64, ratio: Fraction| format!("{blocks}\u{a0}\u{d7}\u{a0}{}", fraction(ratio));
+    let blocks =
+        |blocks: u64, ratio: Fraction| format!("{blocks}\u{a0}\u{d7}\u{a0}{}", fraction(ratio));
     match realised {
         Realised::Single(ratio) => fraction(*ratio),
         Realised::Cadence(cadence) => format!(

@@ -65,3 +65,6 @@ pub async fn run(
         ended = tell::forever(&client, house, origin_ns, &page) => ended,
     }
 }
+
+#[cfg(test)]
+mod tests;

@@ -18,6 +18,8 @@ use crate::house::HouseClock;
 
 /// Real time between looks.
 const LOOK: Duration = Duration::from_secs(1);
+/// Real time before the first summary: after a restart the first readings have to come in.
+const FIRST: Duration = Duration::from_secs(5);
 /// Real time between summaries.
 const SUMMARY: Duration = Duration::from_secs(60);
 const NS_PER_S: f64 = 1e9;
@@ -31,6 +33,7 @@ pub(super) async fn forever(
     let mut looks = interval(LOOK);
     looks.set_missed_tick_behavior(MissedTickBehavior::Delay);
     let mut news = News::default();
+    let began = Instant::now();
     let mut last_summary: Option<Instant> = None;
     say(&format!(
         "Radio Lanternsea reports to this daemon: an invented facility with real arithmetic.\n\
@@ -49,7 +52,7 @@ pub(super) async fn forever(
         let changes = news.changes(&snapshot);
         let due = match last_summary {
             Some(at) => at.elapsed() >= SUMMARY,
-            None => snapshot.settled(),
+            None => began.elapsed() >= FIRST && snapshot.settled(),
         };
         if last_summary.is_some() {
             say(&changes)?;
