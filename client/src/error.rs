@@ -50,9 +50,9 @@ pub struct Refusal {
 impl fmt::Display for Refusal {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         f.write_str(&self.message)?;
+        // The daemon's own words name the field as a rule; saying it twice helps nobody.
         for violation in &self.violations {
-            // Most daemons' messages repeat a lone violation; saying it twice helps nobody.
-            if !self.message.contains(&violation.description) {
+            if self.kind == RefusalKind::Invalid && !self.message.contains(&violation.field) {
                 write!(f, "; {violation}")?;
             }
         }

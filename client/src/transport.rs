@@ -25,6 +25,9 @@ const KEEPALIVE_TIMEOUT: Duration = Duration::from_secs(5);
 /// a follower that pauses would lose its connection.
 const CONNECTION_WINDOW_BYTES: u32 = 32 << 20;
 
+/// How the gRPC library begins to say that an answer was plain HTTP.
+const NO_GRPC: &str = "grpc-status header missing";
+
 /// Opens a connection and waits until it is up.
 pub(crate) async fn connect(address: &str) -> Result<Channel, CallError> {
     let unreachable = |error: tonic::transport::Error| CallError::Unreachable {
@@ -53,6 +56,14 @@ fn with_scheme(address: &str) -> String {
 
 /// What a status means to the caller: contact lost, or a refusal.
 pub(crate) fn call_error(address: &str, status: &Status) -> CallError {
+    if status.message().starts_with(NO_GRPC) {
+        let reason =
+            "whoever listens there does not speak gRPC; is it the port for people?".to_owned();
+        return CallError::Unreachable {
+            address: address.to_owned(),
+            reason,
+        };
+    }
     if is_loss_of_contact(status) {
         let reason = match status.source() {
             Some(source) => innermost(source),

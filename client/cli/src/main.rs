@@ -11,6 +11,7 @@
 )]
 
 mod decimal;
+mod declare;
 mod explain;
 mod failure;
 mod json;
@@ -21,6 +22,10 @@ mod server;
 mod show;
 mod standing;
 mod watch;
+
+#[cfg(test)]
+#[path = "../../tests/fake_server/mod.rs"]
+mod fake_server;
 
 use std::process::ExitCode;
 

@@ -1,11 +1,14 @@
 //! Numbers as people read them.
 
 use num_rational::Ratio;
-use ratewright_client::{CrossingState, Estimate, EstimateState, Realised, Reason};
+use ratewright_client::{Clock, CrossingState, Estimate, EstimateState, Realised, Reason};
 
 /// A dimensionless offset with its sign: `+12.3 ppb`, `-1.25 ppm`, `+0.14 %`.
 pub(crate) fn offset(fraction: f64) -> String {
     let size = fraction.abs();
+    if size != 0.0 && size < 1e-12 {
+        return "below 0.001 ppb".to_owned();
+    }
     let (scale, unit) = match size {
         _ if size < 1e-6 => (1e9, "ppb"),
         _ if size < 1e-3 => (1e6, "ppm"),
@@ -15,13 +18,14 @@ pub(crate) fn offset(fraction: f64) -> String {
 }
 
 /// A drift in ppm with its half-width: `+12.345 ± 0.021 ppm`.
-pub(crate) fn drift(drift: f64, half_width: f64) -> String {
+fn drift(drift: f64, half_width: f64) -> String {
     format!("{:+.3} ± {:.3} ppm", drift * 1e6, half_width * 1e6)
 }
 
-/// A length of time: `340 ms`, `12.5 s`, `28 min`, `3.2 h`, `4.1 days`, `12 years`.
+/// A length of time: `256 µs`, `340 ms`, `12.5 s`, `28 min`, `3.2 h`, `4.1 days`, `12 years`.
 pub(crate) fn duration(seconds: f64) -> String {
-    const STEPS: [(f64, f64, &str); 6] = [
+    const STEPS: [(f64, f64, &str); 7] = [
+        (1e-3, 1e-6, "µs"),
         (1.0, 1e-3, "ms"),
         (120.0, 1.0, "s"),
         (7_200.0, 60.0, "min"),
@@ -29,6 +33,9 @@ pub(crate) fn duration(seconds: f64) -> String {
         (63_072_000.0, 86_400.0, "days"),
         (f64::INFINITY, 31_536_000.0, "years"),
     ];
+    if seconds == 0.0 {
+        return "0 s".to_owned();
+    }
     for (below, unit, name) in STEPS {
         if seconds.abs() < below {
             return format!("{} {name}", Significant(seconds / unit));
@@ -66,8 +73,26 @@ pub(crate) fn realised(realised: &Realised) -> String {
     }
 }
 
+/// What is known of a clock: its drift, and how good that is.
+pub(crate) fn clock(clock: &Clock) -> (String, String) {
+    let estimate = &clock.estimate;
+    if clock.declaration.exact {
+        ("0 by definition".to_owned(), "exact".to_owned())
+    } else if estimate.readings_used == 0 {
+        (
+            "not measured".to_owned(),
+            state_word(estimate.state).to_owned(),
+        )
+    } else {
+        (
+            drift(estimate.drift, estimate.half_width()),
+            estimate_state(estimate),
+        )
+    }
+}
+
 /// How good an estimate is: `locked`, `acquiring, locks in about 2 min`.
-pub(crate) fn estimate_state(estimate: &Estimate) -> String {
+fn estimate_state(estimate: &Estimate) -> String {
     let state = state_word(estimate.state);
     match estimate.lock_expected_seconds {
         Some(seconds) => format!("{state}, locks in about {}", duration(seconds)),
@@ -107,7 +132,7 @@ pub(crate) fn reason_word(reason: Reason) -> &'static str {
     }
 }
 
-/// A number with three significant digits, without an exponent where it can be helped.
+/// A number with three significant digits, and at most three places.
 struct Significant(f64);
 
 impl std::fmt::Display for Significant {
@@ -117,8 +142,7 @@ impl std::fmt::Display for Significant {
             _ if size == 0.0 || size >= 100.0 => 0,
             _ if size >= 10.0 => 1,
             _ if size >= 1.0 => 2,
-            _ if size >= 0.001 => 3,
-            _ => return write!(f, "{:.1e}", self.0),
+            _ => 3,
         };
         if f.sign_plus() && self.0 >= 0.0 {
             f.write_str("+")?;
@@ -163,6 +187,8 @@ mod tests {
         assert_eq!(offset(-1.25e-6), "-1.25 ppm");
         assert_eq!(offset(-0.0014), "-0.140 %");
         assert_eq!(offset(0.0), "+0 ppb");
+        assert_eq!(offset(-6.7e-17), "below 0.001 ppb");
+        assert_eq!(duration(0.000_256), "256 µs");
         assert_eq!(duration(0.34), "340 ms");
         assert_eq!(duration(90.0), "90.0 s");
         assert_eq!(duration(11_520.0), "3.20 h");

@@ -49,20 +49,8 @@ pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
 }
 
 fn clock_row(clock: &Clock) -> Vec<String> {
-    let (declaration, estimate) = (&clock.declaration, &clock.estimate);
-    let (drift, state) = if declaration.exact {
-        ("0, by definition".to_owned(), "exact".to_owned())
-    } else if estimate.last_reading_ns.is_none() {
-        (
-            "not measured".to_owned(),
-            show::state_word(estimate.state).to_owned(),
-        )
-    } else {
-        (
-            show::drift(estimate.drift, estimate.half_width()),
-            show::estimate_state(estimate),
-        )
-    };
+    let declaration = &clock.declaration;
+    let (drift, state) = show::clock(clock);
     vec![
         declaration.id.to_string(),
         show::rate(declaration.nominal_hz),

@@ -65,7 +65,7 @@ fn line(setting: &Setting, now_ns: i64) -> String {
         None => "never slips".to_owned(),
     };
     format!(
-        "{:<24} {:>7}  {:<28} {:>12}  effect {effect}, {slip} ({})",
+        "{:<20} {:>6}  {:<36} {:>15}  effect {effect}, {slip} ({})",
         setting.crossing,
         setting.number,
         show::realised(&setting.realised),

@@ -37,6 +37,7 @@ fn estimate(clock: &v1::Clock) -> v1::Estimate {
         as_of_ns: HOUSE_NS,
         last_reading_ns: if clock.exact { 0 } else { HOUSE_NS - 1 },
         reference: "house".to_owned(),
+        readings_used: u64::from(!clock.exact),
         ..Default::default()
     }
 }
@@ -134,23 +135,20 @@ impl CrossingService for Facility {
         request: Request<v1::GetCrossingRequest>,
     ) -> Result<Response<v1::Crossing>, Status> {
         let name = request.into_inner().name;
-        let known = self.known();
-        let mut crossing = known
-            .crossings
-            .get(&name)
-            .cloned()
-            .ok_or_else(|| not_found(&name))?;
-        if let Some(status) = &mut crossing.status {
-            status.setting = known.settings.get(&name).cloned();
-        }
-        Ok(Response::new(crossing))
+        let crossing = self.known().crossing(&name);
+        crossing.map(Response::new).ok_or_else(|| not_found(&name))
     }
 
     async fn list_crossings(
         &self,
         _: Request<v1::ListCrossingsRequest>,
     ) -> Result<Response<v1::ListCrossingsResponse>, Status> {
-        let crossings = self.known().crossings.values().cloned().collect();
+        let known = self.known();
+        let crossings = known
+            .crossings
+            .keys()
+            .filter_map(|name| known.crossing(name))
+            .collect();
         let next_page_token = String::new();
         Ok(Response::new(v1::ListCrossingsResponse {
             crossings,

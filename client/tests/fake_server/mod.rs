@@ -2,6 +2,10 @@
 //!
 //! It runs on a runtime of its own, so that [`FakeServer::crash`] takes its connections along as
 //! the end of a process does.
+#![allow(
+    clippy::disallowed_methods,
+    reason = "a server of its own needs threads and a clock to give up by"
+)]
 #![allow(dead_code, unused_imports, reason = "each test file uses its own part")]
 
 mod declarations;
@@ -41,6 +45,17 @@ pub(crate) struct Known {
     pub(crate) follower_said: Vec<v1::follow_settings_request::Message>,
     /// Streams opened so far, of any kind.
     pub(crate) streams: usize,
+}
+
+impl Known {
+    /// A crossing with its setting in its status.
+    pub(crate) fn crossing(&self, name: &str) -> Option<v1::Crossing> {
+        let mut crossing = self.crossings.get(name)?.clone();
+        if let Some(status) = &mut crossing.status {
+            status.setting = self.settings.get(name).cloned();
+        }
+        Some(crossing)
+    }
 }
 
 /// What the services share.
@@ -124,7 +139,9 @@ impl FakeServer {
     /// Ends it at once; what it knew stays.
     pub(crate) fn crash(&mut self) {
         if let Some(runtime) = self.runtime.take() {
-            runtime.shutdown_background();
+            // On a thread of its own: a runtime must not end within a test's.
+            let ending = std::thread::spawn(|| runtime.shutdown_timeout(Duration::from_secs(5)));
+            ending.join().expect("it does not panic");
         }
     }
 

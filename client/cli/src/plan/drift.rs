@@ -59,9 +59,13 @@ impl Drift {
     }
 }
 
+/// What stands behind a rate: nothing, or `, +12.5 ± 0.3 ppm`.
 impl std::fmt::Display for Drift {
     fn fmt(&self, f: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
-        write!(f, "{:+}", self.centre_ppm.to_f64())?;
+        if self.centre_ppm.digits == 0 && !self.has_width() {
+            return Ok(());
+        }
+        write!(f, ", {:+}", self.centre_ppm.to_f64())?;
         if self.has_width() {
             write!(f, " ± {}", self.half_width_ppm.to_f64())?;
         }

@@ -30,9 +30,16 @@ fn line(out: &mut String, label: &str, text: &str) {
 
 fn head(out: &mut String, question: &Question, plan: &Plan) {
     if let Some((from, to)) = question.rates {
-        let with = |rate, drift: &dyn std::fmt::Display| format!("{} {drift}", show::rate(rate));
-        line(out, "source", &with(from, &question.from_drift));
-        line(out, "sink", &with(to, &question.to_drift));
+        line(
+            out,
+            "source",
+            &format!("{}{}", show::rate(from), question.from_drift),
+        );
+        line(
+            out,
+            "sink",
+            &format!("{}{}", show::rate(to), question.to_drift),
+        );
     }
     let value = *plan.target.numer() as f64 / *plan.target.denom() as f64;
     line(
@@ -65,7 +72,10 @@ fn best(out: &mut String, question: &Question, best: &Candidate) {
         "best",
         &format!("{ratio}, {}: {makes}", show::offset(best.residual)),
     );
-    let headroom = question.query.headroom_samples;
+    let headroom = match question.query.headroom_samples {
+        1.0 => "1 sink sample".to_owned(),
+        samples => format!("{samples} sink samples"),
+    };
     let lasts = match best.seconds_to_slip {
         Some(seconds) => format!("a headroom of {headroom} lasts {}", show::duration(seconds)),
         None => "give --from and --to to learn how long the headroom lasts".to_owned(),

@@ -5,10 +5,10 @@ use std::time::Duration;
 use clap::Args;
 use ratewright_client::Id;
 
+use super::kernel::Discipline;
 use crate::server::{self, Server};
 
-/// Measures this machine's oscillator against its system clock, and its system clock against
-/// house time
+/// Measures this machine's oscillator against its system clock, and that against house time
 ///
 /// Two clocks of 1 GHz (ticks of 1 ns) are declared unless they are there already:
 ///
@@ -27,18 +27,18 @@ use crate::server::{self, Server};
 pub(crate) struct Arguments {
     /// Name of this machine's system clock
     #[arg(value_name = "NAME", value_parser = server::clock)]
-    name: Id,
+    pub(super) name: Id,
     /// Seconds between readings
     #[arg(long, value_name = "SECONDS", default_value = "1", value_parser = seconds)]
-    every: Duration,
+    pub(super) every: Duration,
     /// Seconds to measure; without it until interrupted
     #[arg(long, value_name = "SECONDS", value_parser = seconds)]
-    duration: Option<Duration>,
+    pub(super) duration: Option<Duration>,
     /// Print JSON for a machine
     #[arg(long)]
-    json: bool,
+    pub(super) json: bool,
     #[command(flatten)]
-    server: Server,
+    pub(super) server: Server,
 }
 
 fn seconds(text: &str) -> Result<Duration, String> {
@@ -48,207 +48,58 @@ fn seconds(text: &str) -> Result<Duration, String> {
     }
 }
 
-/// Other kernels name and steer their clocks differently.
-#[cfg(not(target_os = "linux"))]
-pub(crate) async fn run(_: &Arguments) -> Result<(), crate::failure::Failure> {
-    Err(crate::failure::Failure::Failed(
-        "probe host reads the clocks of a Linux kernel; there is none here".into(),
-    ))
+/// What can be measured here with meaning.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub(super) enum Worth {
+    /// The oscillator against the system clock, and that against house time.
+    Both,
+    /// The same, with a word of doubt.
+    BothInDoubt(String),
+    /// The system clock against house time only, for this reason.
+    SystemOnly(String),
+    /// Nothing, for this reason.
+    Nothing(String),
 }
 
-#[cfg(target_os = "linux")]
-pub(crate) use measure::run;
-
-#[cfg(target_os = "linux")]
-mod measure {
-    use num_rational::Ratio;
-    use ratewright_client::{
-        Answer, Client, Id, Measurement, Reading, Receipts, Reference, Reporter,
-    };
-    use serde_json::json;
-    use tokio::time::{Instant, MissedTickBehavior};
-
-    use super::Arguments;
-    use crate::failure::Failure;
-    use crate::probe::kernel::{self, Discipline};
-    use crate::report::ensure;
-    use crate::{json, show};
-
-    /// Ticks of both clocks: they are read in ns.
-    const TICKS_HZ: u64 = 1_000_000_000;
-
-    /// What is measured.
-    struct Clocks {
-        system: Id,
-        /// `None` if the oscillator cannot be told from the system clock.
-        raw: Option<Id>,
-        /// Carries CLOCK_MONOTONIC onto the epoch of CLOCK_REALTIME, so that it grows over a restart
-        /// of the machine.
-        epoch_ns: i64,
+/// Decides what is worth measuring.
+pub(super) fn worth(discipline: &Discipline, daemon_is_here: bool) -> Worth {
+    match discipline {
+        Discipline::Steered => Worth::Both,
+        Discipline::Unknown(reason) => Worth::BothInDoubt(format!(
+            "the kernel does not say whether its clock is disciplined ({reason}); if nobody \
+             disciplines it, a drift of 0 below says nothing of the oscillator"
+        )),
+        Discipline::Nobody if daemon_is_here => Worth::Nothing(
+            "nobody disciplines the system clock of this machine, so its oscillator and its system \
+             clock are one and the same, and the daemon here keeps house time by it too: any drift \
+             between them would be a meaningless zero. Start a time service on this machine, or \
+             name a daemon on another with --server http://HOST:PORT"
+                .to_owned(),
+        ),
+        Discipline::Nobody => Worth::SystemOnly(
+            "nobody disciplines the system clock of this machine, so its oscillator is not measured \
+             against it: the zero would be meaningless. Only the system clock is measured, against \
+             house time"
+                .to_owned(),
+        ),
     }
+}
 
-    /// Declares the clocks, measures, and prints what was found.
-    pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
-        let raw = raw_clock(arguments)?;
-        let client = arguments.server.connect().await?;
-        let epoch_ns = kernel::system_epoch_ns();
-        let clocks = Clocks {
-            system: arguments.name.clone(),
-            raw,
-            epoch_ns,
-        };
-        for id in std::iter::once(&clocks.system).chain(&clocks.raw) {
-            ensure(&client, id, Ratio::from_integer(TICKS_HZ), false).await?;
-        }
-        let (reporter, receipts) = client.report(Default::default());
-        let receipts = tokio::spawn(take(receipts));
-        measure(&client, arguments, &clocks, reporter).await?;
-        let refused = receipts
-            .await
-            .map_err(|error| Failure::Failed(error.to_string()))??;
-        print(&client, arguments, &clocks).await?;
-        if refused == 0 {
-            Ok(())
-        } else {
-            Err(Failure::Quiet)
-        }
-    }
+#[cfg(test)]
+mod tests {
+    use super::*;
 
-    /// The clock for the oscillator, or `None` with a word why.
-    fn raw_clock(arguments: &Arguments) -> Result<Option<Id>, Failure> {
-        let raw = || {
-            Id::new(&format!("{}-raw", arguments.name))
-                .map(Some)
-                .map_err(|error| Failure::Usage(format!("{error}; type a shorter NAME")))
-        };
-        match kernel::discipline() {
-            Discipline::Steered => raw(),
-            Discipline::Unknown(reason) => {
-                eprintln!(
-                    "ratewright: the kernel does not say whether its clock is disciplined ({reason}); if \
-                     nobody disciplines it, a drift of 0 below says nothing of the oscillator"
-                );
-                raw()
-            }
-            Discipline::Nobody if arguments.server.is_local() => Err(Failure::Failed(
-                "nobody disciplines the system clock of this machine, so its oscillator and its system \
-                 clock are one and the same, and the daemon here keeps house time by it too: any drift \
-                 between them would be a meaningless zero. Start a time service on this machine, or \
-                 name a daemon on another with --server http://HOST:PORT"
-                    .to_owned(),
-            )),
-            Discipline::Nobody => {
-                eprintln!(
-                    "ratewright: nobody disciplines the system clock of this machine, so its oscillator is \
-                     not measured against it: the zero would be meaningless. Measuring {} against \
-                     house time only",
-                    arguments.name
-                );
-                Ok(None)
-            }
-        }
-    }
-
-    async fn measure(
-        client: &Client,
-        arguments: &Arguments,
-        clocks: &Clocks,
-        mut reporter: Reporter,
-    ) -> Result<(), Failure> {
-        let end = arguments.duration.map(|duration| Instant::now() + duration);
-        let mut ticks = tokio::time::interval(arguments.every);
-        ticks.set_missed_tick_behavior(MissedTickBehavior::Delay);
-        loop {
-            tokio::select! {
-                now = ticks.tick() => if end.is_some_and(|end| now >= end) { return Ok(()) },
-                interrupted = tokio::signal::ctrl_c() => {
-                    return interrupted.map_err(|error| Failure::Failed(error.to_string()));
-                }
-            }
-            let epoch_ns = clocks.epoch_ns;
-            if let Some(raw) = &clocks.raw {
-                let look = kernel::look();
-                let counter = Measurement::Counter {
-                    count: look.raw_ns.unsigned_abs(),
-                    bits: 64,
-                    reference_ns: look.system_ns + epoch_ns,
-                };
-                reporter
-                    .report(reading(
-                        raw,
-                        Reference::Clock(clocks.system.clone()),
-                        counter,
-                    ))
-                    .await?;
-            }
-            // An exchange that fails is a reading less: contact comes back or the receipts say why.
-            if let Ok(exchange) = client
-                .exchange_time(|| kernel::system_ns() + epoch_ns)
-                .await
-            {
-                let exchange = Measurement::Exchange(exchange);
-                reporter
-                    .report(reading(&clocks.system, Reference::House, exchange))
-                    .await?;
-            }
-        }
-    }
-
-    fn reading(clock: &Id, reference: Reference, measurement: Measurement) -> Reading {
-        Reading {
-            clock: clock.clone(),
-            reference,
-            probe: None,
-            sequence: None,
-            measurement,
-        }
-    }
-
-    /// Takes receipts until the last; returns how many readings were refused.
-    async fn take(mut receipts: Receipts) -> Result<u64, Failure> {
-        let mut refused = 0;
-        while let Some(answer) = receipts.next().await? {
-            match answer {
-                Answer::Receipt(receipt) => {
-                    for refusal in receipt.refused {
-                        refused += refusal.readings.end - refusal.readings.start;
-                        let ratewright_client::RefusedReadings {
-                            field,
-                            value,
-                            accepted,
-                            ..
-                        } = refusal;
-                        eprintln!("ratewright: refused: {field} is {value}; accepted: {accepted}");
-                    }
-                }
-                Answer::Lost(loss) => eprintln!("ratewright: {loss}"),
-                Answer::Regained => eprintln!("ratewright: contact is back"),
-                _ => {}
-            }
-        }
-        Ok(refused)
-    }
-
-    async fn print(client: &Client, arguments: &Arguments, clocks: &Clocks) -> Result<(), Failure> {
-        let system = client.clock(&clocks.system).await?;
-        let raw = match &clocks.raw {
-            Some(raw) => Some(client.clock(raw).await?),
-            None => None,
-        };
-        if arguments.json {
-            let document =
-                json!({ "system": json::clock(&system), "raw": raw.as_ref().map(json::clock) });
-            println!("{document:#}");
-            return Ok(());
-        }
-        for clock in std::iter::once(&system).chain(&raw) {
-            let (id, estimate) = (&clock.declaration.id, &clock.estimate);
-            let drift = show::drift(estimate.drift, estimate.half_width());
-            println!(
-                "{id}  drift {drift} (95 %), {}",
-                show::estimate_state(estimate)
-            );
-        }
-        Ok(())
+    #[test]
+    fn a_meaningless_zero_is_never_measured() {
+        assert_eq!(worth(&Discipline::Steered, true), Worth::Both);
+        let here = worth(&Discipline::Nobody, true);
+        assert!(
+            matches!(&here, Worth::Nothing(why) if why.contains("meaningless")),
+            "{here:?}"
+        );
+        let there = worth(&Discipline::Nobody, false);
+        assert!(matches!(&there, Worth::SystemOnly(why) if why.contains("not measured")));
+        let doubt = worth(&Discipline::Unknown("denied".to_owned()), true);
+        assert!(matches!(&doubt, Worth::BothInDoubt(why) if why.contains("denied")));
     }
 }

@@ -31,7 +31,7 @@ mod linux {
 
     /// The kernel's tick when nobody changed it, µs (at 100 ticks a second, which is what the
     /// kernel reports whatever its own tick).
-    const NOMINAL_TICK_US: i64 = 10_000;
+    const NOMINAL_TICK_US: libc::c_long = 10_000;
 
     fn ns(time: Timespec) -> i64 {
         time.tv_sec * 1_000_000_000 + time.tv_nsec
@@ -73,7 +73,7 @@ mod linux {
             return Discipline::Unknown(std::io::Error::last_os_error().to_string());
         }
         let unsynchronised = state.status & libc::STA_UNSYNC != 0;
-        if unsynchronised && state.freq == 0 && i64::from(state.tick) == NOMINAL_TICK_US {
+        if unsynchronised && state.freq == 0 && state.tick == NOMINAL_TICK_US {
             Discipline::Nobody
         } else {
             Discipline::Steered

@@ -2,6 +2,8 @@
 
 mod host;
 mod kernel;
+#[cfg(target_os = "linux")]
+mod measure;
 
 use clap::{Args, Subcommand};
 
@@ -22,6 +24,11 @@ enum What {
 /// Measures until it is done or interrupted.
 pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
     match &arguments.what {
-        What::Host(arguments) => host::run(arguments).await,
+        #[cfg(target_os = "linux")]
+        What::Host(arguments) => measure::run(arguments).await,
+        #[cfg(not(target_os = "linux"))]
+        What::Host(_) => Err(Failure::Failed(
+            "probe host reads the clocks of a Linux kernel, and this is another".to_owned(),
+        )),
     }
 }

@@ -147,6 +147,9 @@ impl Columns {
 }
 
 fn no_kind(header: &StringRecord, arguments: &Arguments) -> String {
+    if header.is_empty() {
+        return "there is no first line that names the columns".to_owned();
+    }
     let found: Vec<&str> = header.iter().collect();
     let (count, reference) = (&arguments.count_column, &arguments.reference_column);
     format!(

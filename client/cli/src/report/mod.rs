@@ -1,7 +1,6 @@
 //! `ratewright report`: sending recorded or piped readings.
 
 mod columns;
-mod declare;
 mod rows;
 mod summary;
 
@@ -17,11 +16,14 @@ use ratewright_client::{
 use ratewright_ratio::parse_rate;
 use tokio::sync::mpsc;
 
+use crate::declare;
 use crate::failure::Failure;
 use crate::server::{self, Server};
 use columns::Columns;
-pub(crate) use declare::ensure;
 use summary::Summary;
+
+/// Ticks of a record's time base: it is read in ns.
+const TIME_BASE_HZ: u64 = 1_000_000_000;
 
 /// Rows read ahead of what is sent.
 const ROWS: usize = 4096;
@@ -132,7 +134,7 @@ struct Row {
 pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
     let mut rows = open(arguments)?;
     let client = arguments.server.connect().await?;
-    declare::declare(&client, arguments).await?;
+    declare_clocks(&client, arguments).await?;
     let promise = match arguments.receipt {
         Receipt::Durable => Promise::Durable,
         Receipt::Applied => Promise::Applied,
@@ -170,6 +172,34 @@ pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
         summary.receipt(receipt);
     }
     finish(&client, arguments, &summary).await
+}
+
+/// Declares what was asked for, and makes sure that the rest is there.
+async fn declare_clocks(client: &Client, arguments: &Arguments) -> Result<(), Failure> {
+    match (&arguments.reference, arguments.declare_reference) {
+        (Reference::Clock(id), true) => {
+            declare::ensure(client, id, Ratio::from_integer(TIME_BASE_HZ), true).await?;
+        }
+        (Reference::Clock(id), false) => {
+            let advice = "if it is the time base of a record, add --declare-reference";
+            declare::expect(client, id, advice).await?;
+        }
+        (Reference::House, true) => {
+            return Err(Failure::Usage(
+                "--declare-reference declares a clock, but the reference is house; name the record's \
+                 time base, such as --reference gps"
+                    .to_owned(),
+            ));
+        }
+        (Reference::House, false) => {}
+    }
+    match arguments.declare {
+        Some(nominal_hz) => declare::ensure(client, &arguments.clock, nominal_hz, false).await,
+        None => {
+            let advice = "add --declare RATE, such as --declare 48k";
+            declare::expect(client, &arguments.clock, advice).await
+        }
+    }
 }
 
 /// Takes receipts until the last; losses of contact are told as they happen.

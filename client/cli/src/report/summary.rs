@@ -62,16 +62,13 @@ impl Summary {
     pub(super) fn text(&self, clock: &Clock) -> String {
         let mut text = String::new();
         let promise = match self.promise {
-            Promise::Durable => "safely on disk",
-            Promise::Applied => "applied",
+            _ if self.accepted == 0 => "",
+            Promise::Durable => " (safely on disk)",
+            Promise::Applied => " (applied)",
         };
+        let (sent, accepted) = (self.lines.len(), self.accepted);
         // Writing to a String cannot fail.
-        let _ = writeln!(
-            text,
-            "readings  {} sent, {} taken in ({promise})",
-            self.lines.len(),
-            self.accepted
-        );
+        let _ = writeln!(text, "readings  {sent} sent, {accepted} taken in{promise}");
         for (line, reason) in self.refusals.iter().take(PRINTED) {
             let _ = writeln!(text, "refused   line {line}: {reason}");
         }
@@ -79,14 +76,8 @@ impl Summary {
             let more = self.refusals.len() - PRINTED;
             let _ = writeln!(text, "          and {more} more; --json lists them all");
         }
-        let estimate = &clock.estimate;
-        let drift = show::drift(estimate.drift, estimate.half_width());
-        let state = show::estimate_state(estimate);
-        let _ = writeln!(
-            text,
-            "{}  drift {drift} (95 %), {state}",
-            clock.declaration.id
-        );
+        let (drift, state) = show::clock(clock);
+        let _ = writeln!(text, "{}: drift {drift}, {state}", clock.declaration.id);
         text
     }
 
