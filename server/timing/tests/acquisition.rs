@@ -32,8 +32,8 @@ impl World {
         }
     }
 
-    /// Reads every `interval_ns` until a time; gives each estimate with the true drift.
-    fn run(&mut self, interval_ns: i64, until_ns: i64, mut see: impl FnMut(&Estimate, f64)) {
+    /// Reads every `interval_ns` until a time.
+    fn feed(&mut self, interval_ns: i64, until_ns: i64) {
         while self.at_ns < until_ns {
             self.at_ns += interval_ns;
             let reading = probe::counter(
@@ -47,6 +47,13 @@ impl World {
                 self.link.observe(self.sequence, &reading).unwrap();
                 self.sequence += 1;
             }
+        }
+    }
+
+    /// The same; gives each estimate with the true drift.
+    fn run(&mut self, interval_ns: i64, until_ns: i64, mut see: impl FnMut(&Estimate, f64)) {
+        while self.at_ns < until_ns {
+            self.feed(interval_ns, self.at_ns + interval_ns);
             let e = self.link.estimate(self.at_ns);
             see(&e, self.clock.drift(self.at_ns));
         }
@@ -146,7 +153,7 @@ fn a_gap_is_holdover_and_the_interval_only_grows() {
         ..jitter(20e-6)
     };
     let mut world = World::new(3, path);
-    world.run(NS, 1799 * NS, |_, _| {});
+    world.feed(NS, 1799 * NS);
     let before = world.link.estimate(world.at_ns);
     assert_eq!(
         (before.state, before.reason),
@@ -166,7 +173,7 @@ fn a_gap_is_holdover_and_the_interval_only_grows() {
         assert!(e.low <= truth && truth <= e.high);
         width = e.half_width();
     });
-    world.run(NS, 9300 * NS, |_, _| {});
+    world.feed(NS, 9300 * NS);
     assert_eq!(world.link.estimate(world.at_ns).state, State::Locked);
     let changes: Vec<_> = world
         .link
@@ -185,6 +192,27 @@ fn a_gap_is_holdover_and_the_interval_only_grows() {
         changes.contains(&(State::Holdover, Reason::ReadingsStopped)),
         "{changes:?}"
     );
+}
+
+#[test]
+fn states_do_not_flutter() {
+    for (seed, jitter_s) in [
+        (1, 5e-6),
+        (2, 20e-6),
+        (3, 50e-6),
+        (4, 100e-6),
+        (5, 150e-6),
+        (6, 200e-6),
+    ] {
+        let mut world = World::new(seed, jitter(jitter_s));
+        world.feed(NS, 2 * 3600 * NS);
+        let changes: Vec<_> = world.link.history().transitions().collect();
+        assert!(changes.len() <= 4, "jitter {jitter_s}: {changes:?}");
+        for change in changes {
+            let enters = change.to == State::Locked;
+            assert!(!enters || (change.half_width <= 1e-7 / 1.3 && change.rows_used >= 64));
+        }
+    }
 }
 
 #[test]
@@ -208,7 +236,7 @@ fn phase_strays_from_the_forecast_no_more_than_it_says() {
         let mut within = 0;
         for seed in 0..seeds {
             let mut world = World::new(seed, jitter(20e-6));
-            world.run(NS, 600 * NS, |_, _| {});
+            world.feed(NS, 600 * NS);
             let e = world.link.estimate(world.at_ns);
             let before_s = world.clock.phase_s(world.at_ns);
             let after_s = world.clock.phase_s(world.at_ns + tau_s * NS);
@@ -225,7 +253,7 @@ fn phase_strays_from_the_forecast_no_more_than_it_says() {
 #[test]
 fn duplicates_and_late_comers_are_stale() {
     let mut world = World::new(5, jitter(20e-6));
-    world.run(NS, 100 * NS, |_, _| {});
+    world.feed(NS, 100 * NS);
     let before = world.link.clone();
     let old = probe::counter(
         &mut world.clock,
