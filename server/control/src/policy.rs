@@ -10,6 +10,7 @@ pub(crate) mod keep;
 pub(crate) mod outlook;
 pub(crate) mod realise;
 pub(crate) mod slip;
+pub(crate) mod standing;
 
 /// Standard deviations that planning and keeping leave room for. The two must be equal: with a
 /// smaller margin for the growth than for what is uncertain now, the plan ends at an edge where

@@ -7,7 +7,7 @@ use crate::policy::outlook::Outlook;
 use crate::policy::realise::{
     Allowed, Way, allowed, cadence_error, error_of, nearest_virtual, realise,
 };
-use crate::policy::{HOLD_SHARE, Limits, MARGIN_DEVIATIONS, PLAN_HORIZON_S};
+use crate::policy::{HOLD_SHARE, Limits, MARGIN_DEVIATIONS};
 use crate::timeline::as_double;
 use crate::{CrossingDeclaration, CrossingState, Realisation};
 
@@ -35,6 +35,21 @@ pub(crate) struct Choice {
     pub(crate) reason: String,
     /// True if the phase error has to be brought back first.
     pub(crate) recovers: bool,
+}
+
+impl Choice {
+    /// A choice without an interval to choose from.
+    fn without_room(way: Way, state: CrossingState, reason: String) -> Self {
+        let allowed = (way.wanted, way.wanted);
+        Choice {
+            way,
+            allowed,
+            hold_s: 0.0,
+            state,
+            reason,
+            recovers: false,
+        }
+    }
 }
 
 /// The setting to have from the lead on.
@@ -71,23 +86,13 @@ pub(crate) fn choose_nominal(view: &View<'_>, state: CrossingState, reason: Stri
         (Ok(numer), Ok(denom)) => Fraction::new(numer, denom),
         _ => nearest_virtual(view.outlook.target.value),
     };
-    let way = realise(
-        wanted,
-        &view.declaration.bounds,
-        view.declaration.realisation,
-    );
-    Choice {
-        way,
-        allowed: (wanted, wanted),
-        hold_s: 0.0,
-        state,
-        reason,
-        recovers: false,
-    }
+    let View { declaration, .. } = view;
+    let way = realise(wanted, &declaration.bounds, declaration.realisation);
+    Choice::without_room(way, state, reason)
 }
 
 impl View<'_> {
-    fn limits(&self, cadence_error: f64) -> Limits {
+    pub(crate) fn limits(&self, cadence_error: f64) -> Limits {
         Limits::new(
             self.declaration.headroom_samples,
             cadence_error,
@@ -120,67 +125,6 @@ impl View<'_> {
         }
     }
 
-    /// How a crossing stands under a setting that may stay, which gives the phase error this
-    /// velocity and errs by up to so much itself: holding, unless the phase error is out of the
-    /// headroom by now, not known to be within, or has no way back when the hold ends.
-    pub(crate) fn standing(&self, velocity: f64, cadence_error: f64) -> (CrossingState, String) {
-        let (phase, headroom) = (self.outlook.phase, self.declaration.headroom_samples);
-        if phase.abs() > headroom {
-            let reason = format!(
-                "the phase error of {phase:.3} samples is outside the headroom of {headroom} \
-                 and on its way back"
-            );
-            return (CrossingState::Degraded, reason);
-        }
-        let tube = self.limits(0.0).tube;
-        if cadence_error >= tube {
-            let reason = format!(
-                "a cadence within the bounds errs by up to {cadence_error:.3} samples, \
-                 more than the {tube:.3} that the headroom of {headroom} leaves"
-            );
-            return (CrossingState::Degraded, reason);
-        }
-        let margin = MARGIN_DEVIATIONS * self.outlook.deviation(0.0);
-        if margin > tube {
-            let reason = format!(
-                "the phase error is uncertain by {margin:.3} samples ({MARGIN_DEVIATIONS} deviations), \
-                 and the tube is {tube:.3}"
-            );
-            return (CrossingState::Degraded, reason);
-        }
-        if let Some(reason) = self.dead_end(velocity) {
-            return (CrossingState::OutOfBounds, reason);
-        }
-        let reason = format!("the phase error stays within the headroom of {headroom} samples");
-        (CrossingState::Holding, reason)
-    }
-
-    /// For one ratio at a time: why there will be no way back, if so. No ratio of the bounds
-    /// moves the phase error the other way, within the pitch limit, and that will be needed
-    /// within what is planned for.
-    fn dead_end(&self, velocity: f64) -> Option<String> {
-        let limits = self.limits(0.0);
-        let lasts = velocity.abs() * PLAN_HORIZON_S < limits.tube;
-        if self.declaration.realisation != Realisation::Single || lasts {
-            return None;
-        }
-        let (low, high) = if velocity > 0.0 {
-            (-limits.pitch, 0.0)
-        } else {
-            (0.0, limits.pitch)
-        };
-        let other = allowed(self.outlook.ratio(low), self.outlook.ratio(high))?;
-        if other.any_single(&self.declaration.bounds).is_some() {
-            return None;
-        }
-        // The simplest fraction has the smallest parts of all that would do.
-        let (l, m) = (other.simplest.numer(), other.simplest.denom());
-        Some(format!(
-            "the phase error grows by {velocity:+.2e} samples a second, and no ratio within the bounds \
-             leads back: that would take L up to {l} and M up to {m}, or a cadence"
-        ))
-    }
-
     /// One ratio at a time: the longest hold for which the bounds have a ratio.
     fn single(&self, spans: &[Span], entry: Entry) -> Choice {
         let bounds = &self.declaration.bounds;
@@ -197,41 +141,29 @@ impl View<'_> {
         if spans.is_empty() {
             return self.least_bad(self.limits(0.0));
         }
-        let way = realise(
-            nearest_virtual(self.outlook.target.value),
-            bounds,
-            Realisation::Single,
-        );
-        let needed = spans
-            .first()
-            .and_then(|span| self.allowed(span))
-            .map(|allowed| allowed.simplest);
-        let reason = needed.map_or_else(
-            || "no ratio within the bounds comes near enough to the target".to_owned(),
-            |needed| {
-                let (l, m) = (needed.numer(), needed.denom());
-                format!(
-                    "no ratio within the bounds comes near enough to the target: that would take \
-                     L up to {l} and M up to {m}, or a cadence"
-                )
-            },
-        );
-        let (state, wanted) = (CrossingState::OutOfBounds, way.wanted);
-        Choice {
-            way,
-            allowed: (wanted, wanted),
-            hold_s: 0.0,
-            state,
-            reason,
-            recovers: false,
-        }
+        let needed = spans.first().and_then(|span| self.allowed(span));
+        let cure = needed.map_or_else(String::new, |needed| {
+            let (l, m) = (needed.simplest.numer(), needed.simplest.denom());
+            format!(": that would take L up to {l} and M up to {m}, or a cadence")
+        });
+        self.nearest(format!(
+            "no ratio within the bounds comes near enough to the target{cure}"
+        ))
+    }
+
+    /// The single ratio nearest to the target, which does not hold.
+    fn nearest(&self, reason: String) -> Choice {
+        let wanted = nearest_virtual(self.outlook.target.value);
+        let way = realise(wanted, &self.declaration.bounds, Realisation::Single);
+        Choice::without_room(way, CrossingState::OutOfBounds, reason)
     }
 
     /// A cadence around the wanted ratio, whose own error narrows the tube.
     fn cadence(&self) -> Choice {
         let bounds = &self.declaration.bounds;
         let Some(error) = cadence_error(self.outlook.exact_target(), bounds) else {
-            return self.out_of_reach();
+            let reason = "the target is beyond every ratio within the bounds";
+            return self.nearest(reason.to_owned());
         };
         let limits = self.limits(error);
         let entry = Entry::new(self.outlook, &limits, self.lead_s, self.velocity);
@@ -247,41 +179,17 @@ impl View<'_> {
         }
     }
 
-    /// The target lies beyond every ratio of the bounds.
-    fn out_of_reach(&self) -> Choice {
-        let wanted = nearest_virtual(self.outlook.target.value);
-        let way = realise(wanted, &self.declaration.bounds, Realisation::Single);
-        let state = CrossingState::OutOfBounds;
-        let reason = "the target is beyond every ratio within the bounds".to_owned();
-        Choice {
-            way,
-            allowed: (wanted, wanted),
-            hold_s: 0.0,
-            state,
-            reason,
-            recovers: false,
-        }
-    }
-
     /// No ratio can be vouched for: the nearest to the target that also moves the phase back.
     fn least_bad(&self, limits: Limits) -> Choice {
         let entry = Entry::new(self.outlook, &limits, self.lead_s, self.velocity);
         let velocity = self.velocity_back(&limits, entry.phase);
         let wanted = nearest_virtual(self.outlook.ratio(velocity));
-        let way = realise(
-            wanted,
-            &self.declaration.bounds,
-            self.declaration.realisation,
-        );
-        let reason = self.why_not(&limits);
-        let state = CrossingState::Degraded;
+        let View { declaration, .. } = self;
+        let way = realise(wanted, &declaration.bounds, declaration.realisation);
+        let choice = Choice::without_room(way, CrossingState::Degraded, self.why_not(&limits));
         Choice {
-            way,
-            allowed: (wanted, wanted),
-            hold_s: 0.0,
-            state,
-            reason,
             recovers: true,
+            ..choice
         }
     }
 

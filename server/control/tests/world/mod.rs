@@ -439,4 +439,10 @@ impl World {
     pub fn phase_of(&self, name: &str) -> f64 {
         self.running[&id(name)].phase
     }
+
+    /// Clock time that a clock has truly gained on house time, s.
+    pub fn gained_s(&mut self, name: &str) -> f64 {
+        let device = self.device(name);
+        self.devices[device].truth.phase_s(self.now)
+    }
 }

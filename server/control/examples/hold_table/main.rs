@@ -1,17 +1,22 @@
-//! Measures the policy over simulated days: settings a day, worst phase error, overshoot of the
-//! tube and slips, for headrooms, timestamp noises and wanders of the source clock.
+//! Measures the policy over simulated days: changes of ratio a day, worst phase error, overshoot
+//! of the tube and slips, for headrooms, timestamp noises and wanders of the source clock. Beside
+//! it the changes that always taking the nearest ratio would make (which bounds nothing), and the
+//! fewest that somebody who knew the truth beforehand could have made.
 //!
 //! `cargo run --release -p ratewright-control --example hold_table -- [DAYS [SEEDS]]`
 #![allow(clippy::print_stdout, reason = "an example prints its table")]
 
-#[path = "../tests/world/mod.rs"]
+mod floor;
+#[path = "../../tests/world/mod.rs"]
 mod world;
 
 use std::thread;
 
+use floor::least_changes;
 use ratewright_control::{CrossingDeclaration, CrossingState};
+use ratewright_ratio::{Bounds, best, target_from_f64};
 use ratewright_timing::sim::{ClockModel, Daily, Delay};
-use world::{DAY, HOUR, SECOND, World, clock, crossing, crystal};
+use world::{DAY, HOUR, SECOND, World, clock, crossing, crystal, id};
 
 /// What is varied.
 #[derive(Clone, Copy, Debug)]
@@ -27,6 +32,10 @@ struct Cell {
 #[derive(Clone, Copy, Debug, Default)]
 struct Run {
     changes_a_day: f64,
+    /// The same for always taking the ratio nearest to the target.
+    nearest_a_day: f64,
+    /// The fewest that could have been.
+    least_a_day: f64,
     worst: f64,
     degraded_share: f64,
     slipped: bool,
@@ -64,11 +73,25 @@ fn run(cell: Cell, days: i64, seed: u64) -> Run {
     });
     world.run_until(SETTLED);
     world.forget();
-    world.run_until(days * DAY);
+    let (mut nearest, mut nearest_changes, mut curve) = (None, 0, Vec::new());
+    while world.now < days * DAY {
+        world.run_until(world.now + 10 * SECOND);
+        let target = world
+            .engine
+            .status(&id("x"), world.now)
+            .expect("it was declared")
+            .target;
+        let target = target_from_f64(target).expect("a target is positive");
+        let best = best(&target, &Bounds::new(65_535, 65_535).expect("in range")).ratio;
+        nearest_changes += usize::from(nearest.replace(best) != Some(best));
+        curve.push(48_000.0 * world.gained_s("desk"));
+    }
     let tally = world.tally("x");
     let per_day = |count: usize| count as f64 * DAY as f64 / (days * DAY - SETTLED) as f64;
     Run {
         changes_a_day: per_day(tally.changes.iter().filter(|(at, _)| *at > SETTLED).count()),
+        nearest_a_day: per_day(nearest_changes),
+        least_a_day: per_day(least_changes(&curve, cell.headroom)),
         worst: tally.worst,
         degraded_share: not_holding(&tally.states, days * DAY),
         slipped: tally.worst > cell.headroom,
@@ -132,7 +155,7 @@ fn report(cell: Cell, days: i64, seeds: u64) {
     let settings: Vec<f64> = runs.iter().map(|r| r.changes_a_day).collect();
     let worst = most(|r| r.worst);
     println!(
-        "| {} | {} | {:.0} µs | {:.0e} | {:+.1} | {:.0} / {:.0} | {:.3} | {:+.1} % | {} | {:.2} % |",
+        "| {} | {} | {:.0} µs | {:.0e} | {:+.1} | {:.0} / {:.0} | {:.0} | {:.0} | {:.3} | {:+.1} % | {} | {:.2} % |",
         cell.source_hz,
         cell.headroom,
         cell.noise_s * 1e6,
@@ -140,6 +163,8 @@ fn report(cell: Cell, days: i64, seeds: u64) {
         cell.drift * 1e6,
         median(settings),
         most(|r| r.changes_a_day),
+        median(runs.iter().map(|r| r.least_a_day).collect()),
+        median(runs.iter().map(|r| r.nearest_a_day).collect()),
         worst,
         (worst / (0.8 * cell.headroom) - 1.0) * 100.0,
         runs.iter().filter(|r| r.slipped).count(),
@@ -155,9 +180,9 @@ fn main() {
         "{seeds} seeds of {days} days; median / most changes a day; the tube is 0.8 of the headroom"
     );
     println!(
-        "| source Hz | headroom | timestamps | walk /√s | drift ppm | changes a day | worst abs φ | tube overshoot | runs with slips | not holding, at most |"
+        "| source Hz | headroom | timestamps | walk /√s | drift ppm | changes a day, median / most | offline floor | always nearest to 65535 | worst abs φ | tube overshoot | runs with slips | not holding, at most |"
     );
-    println!("| --- | --- | --- | --- | --- | --- | --- | --- | --- | --- |");
+    println!("| --- | --- | --- | --- | --- | --- | --- | --- | --- | --- | --- | --- |");
     for cell in cells() {
         report(cell, days, seeds);
     }
