@@ -124,7 +124,9 @@ impl Cadence {
     /// # Errors
     /// [`CadenceError::NotBetween`] or [`CadenceError::TooFine`].
     pub fn of_pair(wanted: &Exact, low: Fraction, high: Fraction) -> Result<Self, CadenceError> {
-        let between = Node::from(&low).compare_target(wanted).is_gt()
+        let between = low.numer() > &0
+            && high.denom() > &0
+            && Node::from(&low).compare_target(wanted).is_gt()
             && Node::from(&high).compare_target(wanted).is_lt();
         if !between {
             return Err(CadenceError::NotBetween {

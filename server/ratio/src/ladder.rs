@@ -16,7 +16,8 @@ use serde::{Deserialize, Serialize};
 
 use crate::bracket::{Node, descend};
 use crate::nearest::compare_distances;
-use crate::{Bounds, Exact, Fraction, front, residual};
+use crate::region::DownClosed;
+use crate::{Bounds, Exact, Fraction, Region, front, residual};
 
 /// A run of ratios, each nearer to the target than all before it: `first + i·step` by components.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
@@ -83,9 +84,27 @@ pub fn ladder(target: &Exact, bounds: &Bounds) -> Vec<Rung> {
             .map(|point| Rung::single(target, point.ratio))
             .collect();
     }
+    runs(target, bounds)
+}
+
+/// The ladder of `target` within a region, from the simplest ratio to the nearest.
+///
+/// # Examples
+/// ```
+/// use ratewright_ratio::{Exact, Region, best_in, ladder_in};
+/// let (target, region) = (Exact::new(160, 147), Region::product(1_000)?);
+/// let last = ladder_in(&target, &region).last().map(|rung| rung.last());
+/// assert_eq!(last, Some(best_in(&target, &region).ratio));
+/// # Ok::<(), ratewright_ratio::RegionError>(())
+/// ```
+pub fn ladder_in(target: &Exact, region: &Region) -> Vec<Rung> {
+    runs(target, region)
+}
+
+fn runs(target: &Exact, set: &impl DownClosed) -> Vec<Rung> {
     let mut rungs = Vec::new();
     let mut new_below = false;
-    descend(*target.numer(), *target.denom(), bounds, |run| {
+    descend(*target.numer(), *target.denom(), set, |run| {
         let (from, step) = (run.from.0, run.step.0);
         let at = |j: u64| Node {
             l: from.l + j * step.l,

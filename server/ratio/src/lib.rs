@@ -54,7 +54,7 @@
 //! 2. **What is allowed.** [`bounds`]: the box, prime factors. [`region`]: products, weighted sums.
 //! 3. **The best ratio.** [`bracket`]: the theorem everything rests on, and the search. [`nearest`]: the answer,
 //!    on either side or one. [`many`]: many targets at once. [`multiple`], [`accumulator`], [`smooth`],
-//!    [`smooth_table`], [`outward`]: L or M a multiple, M fixed or a power of two, prime factors, anything else.
+//!    [`smooth_table`], [`outward`](mod@outward): L or M a multiple, M fixed or a power of two, prime factors, anything else.
 //! 4. **The simplest ratio.** [`interval`], [`simplest`](mod@simplest).
 //! 5. **The trade-off.** [`ladder`](mod@ladder): error against size, in runs. [`front`](mod@front): against a cost.
 //! 6. **Proof.** [`certificate`]: what a receiver checks.
@@ -117,7 +117,7 @@ pub use exact::{
 pub use frames::{FrameCadence, FrameError, FrameOrder};
 pub use front::{Front, FrontPoint, filter_coefficients, front};
 pub use interval::{Ends, Interval, IntervalError};
-pub use ladder::{Rung, ladder};
+pub use ladder::{Rung, ladder, ladder_in};
 pub use lazy::{Lazy, LazyError};
 pub use many::{BatchError, best_of_many};
 pub use multiple::{Multiple, MultipleBest, MultipleError, best_multiple};

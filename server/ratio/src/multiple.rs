@@ -4,6 +4,8 @@
 //! l/M to t/k with l ≤ ⌊`max_l`/k⌋; and with M = k·m it is the nearest L/m to t·k, with m ≤ ⌊`max_m`/k⌋,
 //! divided by k. The certificate is that of the smaller problem, which the answer carries.
 //!
+//! The same scaling turns the [ladder](mod@crate::ladder) of the smaller problem into that of the multiples.
+//!
 //! **Corner case.** L/M need not be in lowest terms then: 320/294 is an answer for multiples of 320.
 //! Ties go to the smaller M, then the smaller L.
 

@@ -5,6 +5,22 @@
 //! determinant 1 against a/b on that side have that form, and the one with the largest parts is the nearest.
 //!
 //! **Cost.** Two divisions a step; a predicate of density ρ is met after about 1/ρ steps.
+//! The whole front under a predicate is what is cheaper than all before it on the walk:
+//! ```
+//! use ratewright_ratio::{Bounds, Exact, Fraction, outward};
+//! let mut cheapest = u64::MAX;
+//! let odd = outward(&Exact::new(160, 147), &Bounds::new(64, 64)?).filter(|ratio| ratio.numer() % 2 == 1);
+//! let front: Vec<Fraction> = odd
+//!     .filter(|ratio| {
+//!         let cost = ratio.numer() + ratio.denom();
+//!         let is_cheaper = cost < cheapest;
+//!         cheapest = cheapest.min(cost);
+//!         is_cheaper
+//!     })
+//!     .collect();
+//! assert_eq!(front.last(), Some(&Fraction::new(1, 1)));
+//! # Ok::<(), ratewright_ratio::BoundsError>(())
+//! ```
 //! Answers found this way are nearest by construction, and uncertified:
 //! [`Reason::Predicate`](crate::Reason::Predicate).
 

@@ -39,7 +39,7 @@ pub struct Simplest {
 }
 
 /// The simplest fraction in the interval; `None` if even that needs a part above
-/// [`MAX_BOUND`](crate::MAX_BOUND), in which case the interval holds no fraction with smaller parts at all.
+/// [`MAX_BOUND`], in which case the interval holds no fraction with smaller parts at all.
 ///
 /// # Examples
 /// ```

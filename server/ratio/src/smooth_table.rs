@@ -13,7 +13,7 @@ use num_integer::Integer;
 
 use crate::bracket::{Bracket, Node};
 use crate::nearest::nearer;
-use crate::{Best, Bounds, Certificate, Exact, Interval, Reason, smooth};
+use crate::{Best, Bounds, Certificate, Exact, Interval, Reason, best, smooth};
 
 /// Slices of the index for each ratio: most then hold one at most.
 const SLICES_PER_RATIO: usize = 4;
@@ -31,8 +31,8 @@ pub struct SmoothTable {
 }
 
 impl SmoothTable {
-    /// The table of all ratios in `band` within `bounds`, which should have a largest prime factor (without
-    /// one the table holds every ratio of the band).
+    /// The table of all ratios in `band` within `bounds`. Without a largest prime factor there is nothing to
+    /// hold: the table stays empty, and look-ups search.
     ///
     /// # Examples
     /// ```
@@ -43,7 +43,10 @@ impl SmoothTable {
     /// # Ok::<(), Box<dyn std::error::Error>>(())
     /// ```
     pub fn new(bounds: &Bounds, band: &Interval) -> Self {
-        let mut ratios = in_band(bounds, band);
+        let mut ratios = match bounds.largest_prime() {
+            Some(_) => in_band(bounds, band),
+            None => Vec::new(),
+        };
         ratios.sort_unstable_by(|a, b| order(*a, *b));
         let (low, high) = (value(band.lo()), value(band.hi()));
         let count = SLICES_PER_RATIO * ratios.len().max(1);
@@ -72,7 +75,7 @@ impl SmoothTable {
     /// The nearest ratio to `target` within the bounds; on a tie the smaller M, then the smaller L.
     pub fn best(&self, target: &Exact) -> Best {
         let Some(bracket) = self.bracket(target) else {
-            return smooth::best(target, &self.bounds);
+            return best(target, &self.bounds);
         };
         let ratio = nearer(&bracket, target);
         Best {

@@ -3,7 +3,7 @@
 use ratewright_ratio::{
     Bounds, Claim, Ends, Exact, Fraction, Interval, Multiple, Node, Region, Side, SmoothTable,
     around, best, best_above, best_below, best_for_m, best_in, best_multiple, best_power_of_two,
-    front, is_nearest_for_m, ladder, neighbours, outward, residual, simplest,
+    front, is_nearest_for_m, ladder, ladder_in, neighbours, outward, residual, simplest,
 };
 
 use crate::oracle;
@@ -295,6 +295,11 @@ fn ladder_is_the_front(random: &mut Random) -> Result<(), String> {
         .collect();
     wanted.sort_by_key(|ratio| ratio.numer() + ratio.denom());
     let rungs = ladder(&target, &bounds);
+    check(
+        &ladder_in(&target, &Region::from(&bounds)),
+        &rungs,
+        &(target, bounds),
+    )?;
     let shown = rungs
         .iter()
         .flat_map(|rung| (0..rung.count).filter_map(|i| rung.ratio(i)));
