@@ -20,6 +20,7 @@ mod engine;
 mod event;
 mod explain;
 mod id;
+mod intake;
 mod issue;
 mod ledger;
 mod link;
