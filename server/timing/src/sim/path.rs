@@ -16,7 +16,7 @@ pub struct PathModel {
     pub loss: f64,
     /// Times when nothing comes through.
     pub outages: Vec<Period>,
-    /// Times when queues are longer by a factor.
+    /// Times when queues are longer by a factor; where they overlap, the largest counts.
     pub congestions: Vec<(Period, f64)>,
     /// From these times on (ns) the least delay is longer by so many seconds.
     pub route_changes: Vec<(i64, f64)>,
@@ -77,11 +77,12 @@ impl Path {
         if lost || self.model.outages.iter().any(|outage| outage.holds(at_ns)) {
             return None;
         }
-        for (period, factor) in &self.model.congestions {
-            if period.holds(at_ns) {
-                beyond *= factor;
-            }
-        }
+        let congestions = self
+            .model
+            .congestions
+            .iter()
+            .filter(|(period, _)| period.holds(at_ns));
+        beyond *= congestions.fold(1.0, |worst: f64, (_, factor)| worst.max(*factor));
         let routes = self
             .model
             .route_changes
