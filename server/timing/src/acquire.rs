@@ -6,9 +6,34 @@ use crate::lock::{ENTER, LOCK_ROWS};
 use crate::mode::{Step, Walk, WalkNoise};
 use crate::normal::Z95;
 use crate::predict::WIDEN;
+use crate::start::{Line, Start};
 
 /// Farther than this nothing is foreseen, s.
 const HORIZON_S: f64 = 86_400.0;
+
+/// Deviation at which the lock's threshold is entered, ppm.
+fn wanted_ppm(lock_half_width: f64) -> f64 {
+    1e6 * lock_half_width * ENTER / (Z95 * WIDEN)
+}
+
+/// The same from the first rows alone: white noise narrows the drift's variance as T⁻³.
+pub(crate) fn lock_expected_from_start(
+    start: &Start,
+    line: &Line,
+    lock_half_width: f64,
+) -> Option<f64> {
+    let rows = start.rows();
+    if rows.len() < 3 {
+        return None;
+    }
+    let since_s = line.t_s - rows[0].t_s;
+    let wanted = wanted_ppm(lock_half_width);
+    let whole_s = since_s * libm::cbrt(line.yy / (wanted * wanted));
+    let step_s = since_s / (rows.len() - 1) as f64;
+    let rows_missing = LOCK_ROWS.saturating_sub(rows.len() as u64) as f64;
+    let expected_s = (whole_s - since_s).max(rows_missing * step_s);
+    (expected_s < HORIZON_S).then_some(expected_s)
+}
 
 /// Seconds until the half-width should be within the threshold, if rows go on as they do.
 ///
@@ -19,7 +44,7 @@ pub(crate) fn lock_expected_in_s(filter: &Filter, lock_half_width: f64, rows: u6
     if step_s <= 0.0 {
         return None;
     }
-    let wanted_ppm = 1e6 * lock_half_width * ENTER / (Z95 * WIDEN);
+    let wanted = wanted_ppm(lock_half_width);
     let per_row: f64 = filter
         .measuring()
         .map(|d| d.information / d.thinning())
@@ -28,7 +53,7 @@ pub(crate) fn lock_expected_in_s(filter: &Filter, lock_half_width: f64, rows: u6
     let mut ahead = 0.0;
     let mut stride = step_s;
     while ahead < HORIZON_S {
-        if walk.yy <= wanted_ppm * wanted_ppm {
+        if walk.yy <= wanted * wanted {
             let rows_missing = LOCK_ROWS.saturating_sub(rows) as f64;
             return Some(ahead.max(rows_missing * step_s));
         }

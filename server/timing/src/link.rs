@@ -2,6 +2,7 @@
 
 use serde::{Deserialize, Serialize};
 
+use crate::acquire::{lock_expected_from_start, lock_expected_in_s};
 use crate::blocks::Blocks;
 use crate::config::{ConfigError, LinkConfig};
 use crate::diagnosis::{Diagnosis, Wander};
@@ -358,10 +359,16 @@ impl Link {
     }
 
     fn lock_expected_in_s(&self) -> Option<f64> {
-        let Stage::Phase { filter, .. } = &self.stage else {
-            return None;
-        };
-        crate::acquire::lock_expected_in_s(filter, self.config.lock_half_width, self.rows_used)
+        let wanted = self.config.lock_half_width;
+        match &self.stage {
+            Stage::Starting { start, .. } => {
+                lock_expected_from_start(start, &start.line(self.quantum_us()), wanted)
+            }
+            Stage::Phase { filter, .. } => {
+                lock_expected_in_s(filter, wanted, self.rows_since_start)
+            }
+            Stage::Drift(_) => None,
+        }
     }
 }
 

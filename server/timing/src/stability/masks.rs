@@ -46,7 +46,7 @@ const fn segment(
 }
 
 /// The masks known here. The Recommendations themselves were not re-read: the figures are
-/// those of two published tools' transcriptions.
+/// those of a published transcription.
 pub const MASKS: [Mask; 3] = [
     Mask {
         name: "EEC option 1, MTIE wander generation at constant temperature",
