@@ -28,6 +28,8 @@ pub(crate) struct Direction {
     burst: f64,
 }
 
+/// Agreeing outliers that are a step.
+const STEP_ROWS: u32 = 5;
 /// Rows that find the offset of a changed route.
 const SETTLING_ROWS: u32 = 8;
 /// Chance that a row begins a burst, and that a row ends one.
@@ -41,7 +43,7 @@ pub(crate) enum Verdict {
     Ordinary,
     /// An outlier, not (yet) explained.
     Outlier,
-    /// The fifth agreeing outlier: the phase of this direction has stepped.
+    /// The fifth agreeing outlier, or one more: the phase of this direction has stepped.
     Stepped,
     /// So many late rows in a row that the least latency must have grown.
     Rerouted,
@@ -224,14 +226,24 @@ impl Direction {
                 least: e,
             };
         }
-        if step.count < 5 {
-            return Verdict::Outlier;
+        if step.count < STEP_ROWS {
+            Verdict::Outlier
+        } else {
+            Verdict::Stepped
         }
-        // The least late of the five is nearest to the error's location.
-        self.offset += self.sign * (step.least + 0.5 * self.noise.sigma);
-        *step = StepEvidence::default();
+    }
+
+    /// Whether a step is near to being certain, so that the other direction may wait for it.
+    pub(crate) fn suspects_step(&self) -> bool {
+        (STEP_ROWS - 2..STEP_ROWS).contains(&self.step.count)
+    }
+
+    /// Moves the offset by the step that the outliers agree on: the least late of them is
+    /// nearest to the error's location.
+    pub(crate) fn follow_step(&mut self) {
+        self.offset += self.sign * (self.step.least + 0.5 * self.noise.sigma);
+        self.step = StepEvidence::default();
         self.route.late = 0;
-        Verdict::Stepped
     }
 
     /// Long runs of late rows: the least latency has grown by what the earliest of them shows.

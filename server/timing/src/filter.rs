@@ -210,9 +210,20 @@ impl Filter {
 
     /// What the row's verdicts amount to; after a step of the clock itself the bank is loosened.
     fn conclude(&mut self, verdicts: &[Verdict]) -> Outcome {
-        // The two directions of a stepped clock may be found out a few rows apart.
-        let settling = self.two_way && self.directions.iter().any(Direction::is_settling);
         let stepped = |v: &Verdict| *v == Verdict::Stepped;
+        // The two directions of a stepped clock may be found out a row or a few apart.
+        if verdicts.iter().any(stepped) {
+            if self.two_way && self.directions.iter().any(Direction::suspects_step) {
+                return Outcome::Outlier;
+            }
+            let found = self
+                .directions
+                .iter_mut()
+                .zip(verdicts)
+                .filter(|(_, v)| stepped(v));
+            found.for_each(|(direction, _)| direction.follow_step());
+        }
+        let settling = self.two_way && self.directions.iter().any(Direction::is_settling);
         if verdicts.iter().all(stepped) || (settling && verdicts.iter().any(stepped)) {
             self.directions
                 .iter_mut()

@@ -188,6 +188,45 @@ fn a_longer_route_one_way_moves_no_clock() {
 }
 
 #[test]
+fn a_step_of_a_clock_read_both_ways_is_no_route_change() {
+    for (seed, by_s) in [(0, 25e-3), (1, -25e-3), (2, 4e-3), (3, -4e-3)] {
+        let delay = Delay::Gamma {
+            shape: 2.0,
+            scale_s: 40e-6,
+            deviation_s: 2e-6,
+        };
+        let steady = PathModel {
+            least_s: 3e-3,
+            ..PathModel::new(delay)
+        };
+        let upset = Upset {
+            at_ns: 3601 * NS + seed as i64 * NS,
+            what: Disturbance::PhaseStep(by_s),
+        };
+        let model = ClockModel {
+            drift: 30e-6,
+            upsets: vec![upset],
+            ..ClockModel::crystal()
+        };
+        let mut clock = Clock::new(model, seed);
+        let mut out = Path::new(steady.clone(), seed + 1);
+        let mut back = Path::new(steady, seed + 2);
+        let mut link = Link::new(LinkConfig::new(Ratio::from_integer(HZ))).unwrap();
+        for i in 1..5400 {
+            let reading = probe::exchange(&mut clock, &mut out, &mut back, i * NS).unwrap();
+            link.observe(i as u64, &reading).unwrap();
+        }
+        let events = link.history().events;
+        assert_eq!(
+            (events.phase_steps, events.route_changes),
+            (1, 0),
+            "{by_s} s"
+        );
+        assert_covers(&link, &mut clock, 5399 * NS);
+    }
+}
+
+#[test]
 fn calm_hours_call_no_events() {
     let calls: usize = (0..8)
         .map(|seed| counter_hour(Vec::new(), seed).0.len())
