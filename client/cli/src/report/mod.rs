@@ -165,12 +165,11 @@ pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
         }
     }
     drop(reporter);
-    for receipt in receipts
-        .await
-        .map_err(|error| Failure::Failed(error.to_string()))??
-    {
-        summary.receipt(receipt);
-    }
+    summary.receipts(
+        receipts
+            .await
+            .map_err(|error| Failure::Failed(error.to_string()))??,
+    );
     finish(&client, arguments, &summary).await
 }
 

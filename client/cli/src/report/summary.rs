@@ -30,8 +30,15 @@ impl Summary {
         self.refusals.push((line, reason));
     }
 
-    /// A receipt came.
-    pub(super) fn receipt(&mut self, receipt: Receipt) {
+    /// These are all the receipts that came.
+    pub(super) fn receipts(&mut self, receipts: Vec<Receipt>) {
+        for receipt in receipts {
+            self.receipt(receipt);
+        }
+        self.refusals.sort_by_key(|(line, _)| *line);
+    }
+
+    fn receipt(&mut self, receipt: Receipt) {
         self.accepted += receipt.accepted;
         self.promise = receipt.promise;
         for refused in receipt.refused {
@@ -50,7 +57,6 @@ impl Summary {
                     .push((line.copied().unwrap_or(0), reason.clone()));
             }
         }
-        self.refusals.sort_by_key(|(line, _)| *line);
     }
 
     /// True if every line was taken in.
