@@ -23,10 +23,7 @@ use crate::{Bounds, Exact, Fraction};
 /// assert_eq!(best_for_m(&Exact::new(3, 2), 1, 10), 1);
 /// ```
 pub fn best_for_m(target: &Exact, m: u64, max_l: u64) -> u64 {
-    let (m, max_l) = (
-        m.clamp(1, crate::MAX_BOUND),
-        max_l.clamp(1, crate::MAX_BOUND),
-    );
+    let (m, max_l) = held(m, max_l);
     if let Some(l) = rounded(target, m) {
         return l.clamp(1, max_l);
     }
@@ -42,8 +39,9 @@ pub fn best_for_m(target: &Exact, m: u64, max_l: u64) -> u64 {
     low
 }
 
-/// True if `l` is what [`best_for_m`] answers; multiplications only. `m` ≤ [`MAX_BOUND`](crate::MAX_BOUND).
+/// True if `l` is what [`best_for_m`] answers; multiplications only.
 pub fn is_nearest_for_m(l: u64, target: &Exact, m: u64, max_l: u64) -> bool {
+    let (m, max_l) = held(m, max_l);
     (1..=max_l).contains(&l)
         && (l == 1 || is_past_midpoint(target, l, m))
         && (l == max_l || !is_past_midpoint(target, l + 1, m))
@@ -74,6 +72,14 @@ pub fn best_power_of_two(target: &Exact, bounds: &Bounds) -> Fraction {
     })
 }
 
+/// Both held to what the arithmetic takes.
+fn held(m: u64, max_l: u64) -> (u64, u64) {
+    (
+        m.clamp(1, crate::MAX_BOUND),
+        max_l.clamp(1, crate::MAX_BOUND),
+    )
+}
+
 /// t·m rounded, halves down, if it can be done in 64 bits.
 #[inline]
 fn rounded(target: &Exact, m: u64) -> Option<u64> {
@@ -83,7 +89,7 @@ fn rounded(target: &Exact, m: u64) -> Option<u64> {
     whole.checked_add(u64::from(rest > d - rest))
 }
 
-/// True if l − 1/2 < t·m, that is (2l − 1)·D < 2m·n.
+/// True if l − 1/2 < t·m, that is (2l − 1)·D < 2m·n, for l up to 2^63 and m below.
 fn is_past_midpoint(target: &Exact, l: u64, m: u64) -> bool {
-    Wide::product(*target.denom(), 2 * l - 1) < Wide::product(*target.numer(), 2 * m)
+    Wide::product(*target.denom(), l + (l - 1)) < Wide::product(*target.numer(), 2 * m)
 }

@@ -161,15 +161,15 @@ fn one_sided(bracket: Bracket, end: Node) -> Option<Best> {
 /// # Ok::<(), ratewright_ratio::BoundsError>(())
 /// ```
 pub fn around(target: &Exact, region: &Region) -> Option<Bracket> {
-    let bracket = bracket::find(target, region);
-    let (below, above) = (bracket.below, bracket.above);
-    if above.compare_target(target).is_eq() {
+    let Bracket { below, above } = bracket::find(target, region);
+    let is_target = |end: Node| end.fraction().is_some() && end.compare_target(target).is_eq();
+    if is_target(above) {
         return Some(Bracket {
             below,
             above: beyond(region, below, above),
         });
     }
-    below.compare_target(target).is_eq().then(|| Bracket {
+    is_target(below).then(|| Bracket {
         below: beyond(region, above, below),
         above,
     })
