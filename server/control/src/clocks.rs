@@ -5,7 +5,7 @@ use std::collections::{BTreeMap, BTreeSet};
 use ratewright_timing::{Estimate, State, compose, exact};
 use serde::{Deserialize, Serialize};
 
-use crate::link::{Lineage, LinkRecord};
+use crate::link::{Lineage, LinkRecord, Restart};
 use crate::{ClockDeclaration, ClockEstimate, HouseNs, Id, Reference};
 
 /// Longest chain of links from a clock to house time.
@@ -51,6 +51,8 @@ pub(crate) struct Traced {
     pub(crate) estimate: Estimate,
     pub(crate) lineage: Lineage,
     pub(crate) measured: bool,
+    /// How the last of the links that did began anew.
+    pub(crate) restart: Option<Restart>,
 }
 
 impl ClockRecord {
@@ -170,6 +172,7 @@ impl Clocks {
                 estimate: exact(now),
                 lineage: Lineage::default(),
                 measured: true,
+                restart: None,
             });
         }
         let by_chosen = record
@@ -180,6 +183,7 @@ impl Clocks {
             estimate: record.prior(now),
             lineage: Lineage::default(),
             measured: false,
+            restart: None,
         }))
     }
 
@@ -191,6 +195,7 @@ impl Clocks {
                 estimate: own,
                 lineage: Lineage::of(link.lineage),
                 measured: true,
+                restart: link.restart,
             });
         };
         let host = self.chained(host, now, depth.checked_sub(1)?)?;
@@ -198,6 +203,7 @@ impl Clocks {
             estimate: compose(&own, &host.estimate),
             lineage: host.lineage.then(link.lineage),
             measured: host.measured,
+            restart: host.restart.max(link.restart),
         })
     }
 

@@ -236,6 +236,7 @@ mod tests {
             estimate,
             lineage: Lineage::of(1),
             measured: true,
+            restart: None,
         }
     }
 
@@ -244,6 +245,7 @@ mod tests {
             estimate: exact(now),
             lineage: Lineage::default(),
             measured: true,
+            restart: None,
         }
     }
 

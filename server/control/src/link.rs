@@ -20,11 +20,24 @@ pub(crate) struct LinkRecord {
     link: Link,
     /// Changes whenever the link's phase begins anew.
     pub(crate) lineage: u32,
+    /// How the phase began anew, if it did.
+    pub(crate) restart: Option<Restart>,
+    /// House time of the last reading that fitted.
+    fitted_ns: HouseNs,
+    /// House time of the first one after it that did not.
+    unfit_ns: Option<HouseNs>,
     last_sequence: u64,
     /// House time of the last reading's arrival.
     pub(crate) arrived_ns: HouseNs,
     /// Reference time minus house time, from the readings that were under way the least.
     offset_ns: i64,
+}
+
+/// A link's phase began anew: readings fitted up to one house time, and did not from another on.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Serialize, Deserialize)]
+pub(crate) struct Restart {
+    pub(crate) fitted_ns: HouseNs,
+    pub(crate) unfit_ns: HouseNs,
 }
 
 /// The links by which an estimate came, from house time outwards; phases may be compared only
@@ -64,6 +77,9 @@ impl LinkRecord {
             probe: reading.probe.clone(),
             link: Link::new(config).expect("the declaration was checked when it came in"),
             lineage,
+            restart: None,
+            fitted_ns: now,
+            unfit_ns: None,
             last_sequence: 0,
             arrived_ns: now,
             offset_ns: reading.measurement.reference_ns().saturating_sub(now),
@@ -100,6 +116,16 @@ impl LinkRecord {
         }
         if outcome == Outcome::Event(TimingEvent::Restart) {
             self.lineage = next_lineage;
+            let unfit_ns = self.unfit_ns.unwrap_or(now);
+            self.restart = Some(Restart {
+                fitted_ns: self.fitted_ns,
+                unfit_ns,
+            });
+        }
+        if outcome == Outcome::Outlier {
+            self.unfit_ns = self.unfit_ns.or(Some(now));
+        } else {
+            (self.fitted_ns, self.unfit_ns) = (now, None);
         }
         self.last_sequence = sequence;
         let arrived = reading.measurement.reference_ns().saturating_sub(now);

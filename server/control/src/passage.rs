@@ -16,10 +16,12 @@ use serde::{Deserialize, Serialize};
 use crate::HouseNs;
 use crate::clocks::PHASE_DRIFT_CORRELATION;
 use crate::clocks::Traced;
-use crate::link::Lineage;
+use crate::link::{Lineage, Restart};
 
 /// The past is revised only for a real gain in certainty: each revision is a jump.
 const WORTH_REVISING: f64 = 0.9;
+/// A restart is found within minutes; one longer ago is that of a link not looked at then, ns.
+const LONGEST_DOUBT_NS: i64 = 600_000_000_000;
 /// Seconds in a nanosecond.
 const SECONDS: f64 = 1e-9;
 
@@ -38,6 +40,17 @@ pub(crate) struct Passage {
     phase_variance_ns2: f64,
     /// Phase at the last advance, and the links it came by; none while nothing is measured.
     last: Option<(Lineage, f64)>,
+    /// Drift at the last advance.
+    drift: f64,
+    /// What is not known of the beginning of the open leg.
+    doubt: Option<Doubt>,
+}
+
+/// The drift changed somewhere within a span, from this one to that of the open leg.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+struct Doubt {
+    drift: f64,
+    span_ns: f64,
 }
 
 impl Passage {
@@ -50,19 +63,20 @@ impl Passage {
             entry_variance_ns2: 0.0,
             phase_variance_ns2: 0.0,
             last: None,
+            drift: 0.0,
+            doubt: None,
         }
     }
 
     /// Goes on from `at_ns`, the last advance, to `now`, at which `clock` is the estimate.
     /// Gives what the account gains, ns: the time gained since then, and revisions of the past.
     pub(crate) fn advance(&mut self, at_ns: HouseNs, now: HouseNs, clock: &Traced) -> f64 {
-        if self
-            .last
-            .is_some_and(|(lineage, _)| !clock.measured || lineage != clock.lineage)
-        {
-            self.close_leg(at_ns);
-        }
-        let before_ns = self.gained_ns;
+        let begins_anew = |(lineage, _)| !clock.measured || lineage != clock.lineage;
+        let before_ns = if self.last.is_some_and(begins_anew) {
+            self.close_leg(at_ns, clock.restart)
+        } else {
+            self.gained_ns
+        };
         let estimate = &clock.estimate;
         let span_s = (now - self.from_ns) as f64 * SECONDS;
         let deviation_ns = if clock.measured {
@@ -82,15 +96,38 @@ impl Passage {
                 self.entry_variance_ns2 = backward_variance;
             }
         }
+        self.drift = estimate.drift;
         self.last = clock.measured.then_some((clock.lineage, estimate.phase_ns));
         self.gained_ns - before_ns
     }
 
-    fn close_leg(&mut self, at_ns: HouseNs) {
+    /// Closes the leg at the last advance, or where readings fitted last if they have made the
+    /// estimator begin anew since: what it foretold from there on was wrong, as is known now.
+    /// Gives how much of the account is taken back, ns.
+    fn close_leg(&mut self, at_ns: HouseNs, restart: Option<Restart>) -> f64 {
+        let restart = restart.filter(|restart| {
+            let ago_ns = at_ns - restart.fitted_ns;
+            restart.fitted_ns >= self.from_ns && (0..LONGEST_DOUBT_NS).contains(&ago_ns)
+        });
+        let end_ns = restart.map_or(at_ns, |restart| restart.fitted_ns);
+        let taken_back_ns = self.drift * (at_ns - end_ns) as f64;
         *self = Passage {
             closed_variance_ns2: self.variance_ns2(),
-            ..Passage::begin(at_ns)
+            doubt: restart.map(|restart| Doubt {
+                drift: self.drift,
+                span_ns: (restart.unfit_ns - restart.fitted_ns) as f64,
+            }),
+            ..Passage::begin(end_ns)
         };
+        taken_back_ns
+    }
+
+    /// Variance of a change of drift at an unknown instant within a span: uniform, ns².
+    fn doubt_variance_ns2(&self) -> f64 {
+        self.doubt.map_or(0.0, |doubt| {
+            let most_ns = (self.drift - doubt.drift) * doubt.span_ns;
+            most_ns * most_ns / 3.0
+        })
     }
 
     /// Variance of the time gained since the beginning, ns².
@@ -100,13 +137,16 @@ impl Passage {
 
     /// The part of the variance that later readings do not take away, ns².
     pub(crate) fn lasting_variance_ns2(&self) -> f64 {
-        self.closed_variance_ns2 + self.entry_variance_ns2
+        self.closed_variance_ns2 + self.entry_variance_ns2 + self.doubt_variance_ns2()
     }
 
     /// Something else has made the account more certain: its lasting variance falls by a factor.
     pub(crate) fn sharpen(&mut self, factor: f64) {
         self.closed_variance_ns2 *= factor;
         self.entry_variance_ns2 *= factor;
+        if let Some(doubt) = &mut self.doubt {
+            doubt.span_ns *= factor.sqrt();
+        }
     }
 }
 
@@ -140,6 +180,7 @@ mod tests {
             estimate,
             lineage: Lineage::of(lineage),
             measured: true,
+            restart: None,
         }
     }
 

@@ -234,8 +234,8 @@ impl CrossingRecord {
         ) {
             return Some(view.standing(view.velocity, error));
         }
-        (self.state == CrossingState::Degraded && view.is_as_good(error))
-            .then(|| (self.state, self.reason.clone()))
+        view.is_as_good(error)
+            .then(|| view.standing(view.velocity, error))
     }
 
     fn change_to(&self, choice: Choice) -> Judgement {

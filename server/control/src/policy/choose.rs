@@ -62,6 +62,9 @@ pub(crate) fn choose(view: &View<'_>) -> Choice {
         );
     }
     let limits = view.limits(0.0);
+    if view.is_blind(&limits) {
+        return view.least_bad(limits);
+    }
     let entry = Entry::new(view.outlook, &limits, view.lead_s, view.velocity);
     let spans = funnel(view.outlook, &limits, entry, view.step_s);
     if let Some((span, allowed)) = view.longest(&spans)
@@ -193,19 +196,37 @@ impl View<'_> {
         }
     }
 
-    /// Velocity that brings a phase back in half a minute, as far as the pitch limit allows.
+    /// Velocity that brings a phase back in half a minute, as far as the pitch limit allows; none
+    /// while it may as well be in the tube.
     fn velocity_back(&self, limits: &Limits, phase: f64) -> f64 {
+        if !self.is_surely_out(limits) {
+            return 0.0;
+        }
         let back_s = (2.0 * self.step_s).max(30.0);
         (-phase / back_s).clamp(-limits.pitch, limits.pitch)
     }
 
-    /// True if the ratio in force is as good as a new one would be when nothing can be vouched
-    /// for: their velocities differ by less than half of what is uncertain about either.
+    /// True if uncertainty alone fills the tube: there is nothing to plan with.
+    fn is_blind(&self, limits: &Limits) -> bool {
+        MARGIN_DEVIATIONS * self.outlook.deviation(0.0) > limits.tube
+    }
+
+    fn is_surely_out(&self, limits: &Limits) -> bool {
+        self.outlook.phase.abs() > MARGIN_DEVIATIONS * self.outlook.deviation(0.0) + limits.tube
+    }
+
+    /// True if nothing can be vouched for, as uncertainty alone fills the tube, and nothing says
+    /// either that another ratio would be better: a phase that is surely out moves inward, and
+    /// another one has no velocity beyond what is uncertain of it.
     pub(crate) fn is_as_good(&self, cadence_error: f64) -> bool {
         let limits = self.limits(cadence_error);
-        let entry = Entry::new(self.outlook, &limits, self.lead_s, self.velocity);
-        let wanted = self.velocity_back(&limits, entry.phase);
-        (self.velocity - wanted).abs() < self.outlook.velocity_deviation() / 2.0
+        if !self.is_blind(&limits) {
+            return false;
+        }
+        if self.is_surely_out(&limits) {
+            return self.outlook.phase * self.velocity < 0.0;
+        }
+        self.velocity.abs() < self.outlook.velocity_deviation()
     }
 
     fn why_not(&self, limits: &Limits) -> String {
