@@ -228,11 +228,9 @@ impl Daemon {
         let mut routes = RoutesBuilder::default();
         service::add_to(&mut routes, access);
         health::serve(&mut routes, self.readiness.clone()).await;
-        let reflection = tonic_reflection::server::Builder::configure()
-            .register_encoded_file_descriptor_set(ratewright_proto::DESCRIPTORS)
-            .register_encoded_file_descriptor_set(tonic_health::pb::FILE_DESCRIPTOR_SET)
-            .build_v1()?;
-        routes.add_service(reflection);
+        routes.add_service(reflection().build_v1()?);
+        // Many tools still ask by the older name.
+        routes.add_service(reflection().build_v1alpha()?);
         let readiness = self.readiness.clone();
         self.servers.spawn(async move {
             let drained = async move { readiness.draining().await };
@@ -269,4 +267,11 @@ fn address(listener: &TcpListener, asked: SocketAddr) -> Result<SocketAddr, Star
         address: asked,
         source,
     })
+}
+
+/// Reflection of the contract and of health.
+fn reflection() -> tonic_reflection::server::Builder<'static> {
+    tonic_reflection::server::Builder::configure()
+        .register_encoded_file_descriptor_set(ratewright_proto::DESCRIPTORS)
+        .register_encoded_file_descriptor_set(tonic_health::pb::FILE_DESCRIPTOR_SET)
 }

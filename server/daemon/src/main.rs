@@ -116,7 +116,7 @@ fn in_runtime<W: Future<Output = ExitCode>>(work: impl FnOnce(Signals) -> W) -> 
 }
 
 async fn run(config: Config, opening: Opening, signals: Signals) -> ExitCode {
-    start_log(config.log);
+    start_log(config.log, "info");
     match Daemon::builder(config).opening(opening).start().await {
         Ok(daemon) => serve(daemon, signals, std::future::pending()).await,
         Err(fault) => not_started(&fault),
@@ -129,7 +129,8 @@ async fn run_sample(pace: f64, store: Option<PathBuf>, signals: Signals) -> Exit
         std::env::temp_dir().join(format!("ratewright-sample-{}", std::process::id()))
     });
     let config = sample::config(folder.clone());
-    start_log(config.log);
+    // The summaries have the terminal to themselves, unless something is wrong.
+    start_log(config.log, "warn");
     let code = match Daemon::builder(config).pace(pace).start().await {
         Ok(daemon) => {
             let played = sample::run(daemon.grpc(), daemon.people(), daemon.house());
@@ -213,9 +214,9 @@ fn not_started(fault: &StartFault) -> ExitCode {
     })
 }
 
-/// The log goes to standard error; `RUST_LOG` chooses what is in it.
-fn start_log(format: LogFormat) {
-    let filter = EnvFilter::try_from_default_env().unwrap_or_else(|_| EnvFilter::new("info"));
+/// The log goes to standard error; `RUST_LOG` chooses what is in it, `least` if it is not set.
+fn start_log(format: LogFormat, least: &str) {
+    let filter = EnvFilter::try_from_default_env().unwrap_or_else(|_| EnvFilter::new(least));
     let log = tracing_subscriber::fmt()
         .with_env_filter(filter)
         .with_ansi(std::io::stderr().is_terminal())

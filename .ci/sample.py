@@ -1,0 +1,125 @@
+"""Runs the README's main job as a user would, and holds it to what the README says of it.
+
+Usage: sample.py COMMAND
+
+Within 60 s of the daemon's start every clock that is measured must be past free-running and
+every crossing must have a setting; the summary must have been printed and the page must say
+the same. Then the daemon is killed without warning and started again on the same store: no
+number may be lost or used twice, and settings must be served within a second. At last it must
+end by itself when told to.
+"""
+
+import json
+import os
+import shlex
+import signal
+import subprocess
+import sys
+import tempfile
+import time
+import urllib.request
+
+CLI = "target/release/ratewright"
+PAGE = "http://127.0.0.1:7421/"
+
+
+def standing():
+    """What the daemon says of its clocks and crossings; None while it does not serve."""
+    run = subprocess.run([CLI, "standing", "--json"], capture_output=True, text=True, check=False)
+    return json.loads(run.stdout) if run.returncode == 0 else None
+
+
+def until(deadline, what, ask):
+    """Asks again and again until the answer is good; fails at the deadline."""
+    while True:
+        answer = ask()
+        if answer:
+            return answer
+        if time.monotonic() > deadline:
+            sys.exit(f"not in time: {what}")
+        time.sleep(0.1)
+
+
+def settled():
+    now = standing()
+    if not now or not now["crossings"]:
+        return None
+    clocks = [clock for clock in now["clocks"] if not clock["exact"]]
+    measured = all(clock["estimate"]["state"] != "free-running" for clock in clocks)
+    return now if measured and all(c["setting"] for c in now["crossings"]) else None
+
+
+def numbers(now):
+    """(epoch, number) of the newest setting of each crossing."""
+    return {
+        c["crossing"]: (c["setting"]["epoch"], c["setting"]["number"])
+        for c in now["crossings"]
+        if c["setting"]
+    }
+
+
+def daemon(command, store, printed):
+    """Starts the daemon in a group of its own. Its binary is built, so cargo adds little."""
+    return subprocess.Popen(
+        [*shlex.split(command), "--store", store],
+        stdout=printed,
+        stderr=subprocess.STDOUT,
+        start_new_session=True,
+    )
+
+
+def main():
+    store = tempfile.mkdtemp()
+    with tempfile.TemporaryFile("w+") as printed:
+        began = time.monotonic()
+        first = daemon(sys.argv[1], store, printed)
+        until(began + 60, "the sample facility measured, with a setting everywhere", settled)
+        print(f"sample: every clock measured, every crossing set after {time.monotonic() - began:.1f} s")
+
+        def summary():
+            printed.seek(0)
+            text = printed.read()
+            return text if "crossings have a setting" in text else None
+
+        print(until(began + 60, "the printed summary", summary))
+        with urllib.request.urlopen(PAGE, timeout=5) as page:
+            html = page.read().decode()
+        for word in ("house-word", "acquiring"):
+            if word not in html:
+                sys.exit(f"the page does not show: {word}")
+
+        before = numbers(standing())
+        os.killpg(first.pid, signal.SIGKILL)
+        first.wait()
+
+        began = time.monotonic()
+        second = daemon(sys.argv[1], store, printed)
+        after = numbers(until(began + 20, "settings after the restart", settled_or_set))
+        print(f"sample: settings served {time.monotonic() - began:.2f} s after the restart")
+        for crossing, number in before.items():
+            if after[crossing] < number:
+                sys.exit(f"{crossing} went back from {number} to {after[crossing]}")
+        history(before)
+        os.killpg(second.pid, signal.SIGTERM)
+        if second.wait(timeout=30) != 0:
+            sys.exit(f"the daemon ended with {second.returncode}")
+    print("sample: ended by itself when told to")
+
+
+def settled_or_set():
+    now = standing()
+    return now if now and now["crossings"] and all(c["setting"] for c in now["crossings"]) else None
+
+
+def history(before):
+    """Each setting that was served before the kill is still there under its number."""
+    for crossing, (epoch, number) in before.items():
+        for n in range(1, number + 1):
+            name = f"crossings/{crossing}/settings/{epoch}-{n}"
+            run = subprocess.run([CLI, "explain", name], capture_output=True, check=False)
+            if run.returncode != 0:
+                sys.exit(f"{name} was lost: {run.stderr.decode()}")
+    print(f"sample: {sum(n for _, n in before.values())} settings, none lost")
+
+
+main()
