@@ -173,8 +173,7 @@ impl Certificate {
     /// # Ok::<(), ratewright_ratio::BoundsError>(())
     /// ```
     pub fn verify(&self, claim: &Claim<'_>) -> Result<(), CertificateError> {
-        match (*self, *claim) {
-            (Self::Uncertified(reason), _) => Err(CertificateError::Uncertified(reason)),
+        match (self, claim) {
             (
                 Self::Nearest(bracket),
                 Claim::Nearest {
@@ -183,9 +182,9 @@ impl Certificate {
                     region,
                     side,
                 },
-            ) => verify_nearest(&bracket, ratio, target, &region, side),
+            ) => verify_nearest(bracket, ratio, target, region, *side),
             (Self::Simplest(parents), Claim::Simplest { fraction, interval }) => {
-                verify_simplest(&parents, fraction, interval)
+                verify_simplest(parents, fraction, interval)
             }
             (
                 Self::NeighbourPair(bracket),
@@ -196,21 +195,21 @@ impl Certificate {
                     region,
                 },
             ) => {
-                for (claimed, shown) in [(low, bracket.below), (high, bracket.above)] {
-                    agree(claimed, shown)?;
-                }
-                verify_bracket(&bracket, target, &region)
+                agree(low, bracket.below)?;
+                agree(high, bracket.above)?;
+                verify_bracket(bracket, target, region)
             }
             (Self::SteppingPair(shown), Claim::SteppingPair { pair, target }) => {
-                verify_stepping(shown, pair, target)
+                verify_stepping(*shown, *pair, target)
             }
+            (Self::Uncertified(reason), _) => Err(CertificateError::Uncertified(*reason)),
             _ => Err(CertificateError::WrongKind),
         }
     }
 }
 
-fn agree(claimed: Fraction, shown: Node) -> Result<(), CertificateError> {
-    let claimed = Node::from(&claimed);
+fn agree(claimed: &Fraction, shown: Node) -> Result<(), CertificateError> {
+    let claimed = Node::from(claimed);
     if claimed == shown {
         Ok(())
     } else {
@@ -260,12 +259,12 @@ fn verify_bracket(
 #[inline]
 fn verify_nearest(
     bracket: &Bracket,
-    ratio: Fraction,
+    ratio: &Fraction,
     target: &Exact,
     region: &Region,
     side: Side,
 ) -> Result<(), CertificateError> {
-    if side == Side::Either && narrow_nearest(bracket, &ratio, target, region) {
+    if side == Side::Either && narrow_nearest(bracket, ratio, target, region) {
         return Ok(());
     }
     verify_nearest_in_full(bracket, ratio, target, region, side)
@@ -275,12 +274,7 @@ fn verify_nearest(
 /// False decides nothing.
 #[inline]
 fn narrow_nearest(bracket: &Bracket, ratio: &Fraction, target: &Exact, region: &Region) -> bool {
-    let (a, b, c, d) = (
-        bracket.below.l,
-        bracket.below.m,
-        bracket.above.l,
-        bracket.above.m,
-    );
+    let (Node { l: a, m: b }, Node { l: c, m: d }) = (bracket.below, bracket.above);
     let (Ok(n), Ok(whole)) = (
         u64::try_from(*target.numer()),
         u64::try_from(*target.denom()),
@@ -290,16 +284,13 @@ fn narrow_nearest(bracket: &Bracket, ratio: &Fraction, target: &Exact, region: &
     if (a | b | c | d) >= 1 << 31 || b * c != a * d + 1 || a == 0 || d == 0 {
         return false;
     }
-    let (from_below, to_above) = (
-        i128::from(n) * i128::from(b) - i128::from(whole) * i128::from(a),
-        i128::from(whole) * i128::from(c) - i128::from(n) * i128::from(d),
-    );
+    let product = |x: u64, y: u64| i128::from(x) * i128::from(y);
+    let from_below = product(n, b) - product(whole, a);
+    let to_above = product(whole, c) - product(n, d);
     let is_bracket = (from_below >= 0) & (to_above >= 0) & region.separates((a, b), (c, d));
-    // Now from_below·d + to_above·b = D, so both products fit 64 bits.
-    let (low, high) = (
-        (from_below as u64).wrapping_mul(d),
-        (to_above as u64).wrapping_mul(b),
-    );
+    // Then from_below·d + to_above·b = D, so both fit 64 bits.
+    let low = (from_below as u64).wrapping_mul(d);
+    let high = (to_above as u64).wrapping_mul(b);
     let low_is_nearer = (low < high) | ((low == high) & ((b, a) < (d, c)));
     let l = select_unpredictable(low_is_nearer, a, c);
     let m = select_unpredictable(low_is_nearer, b, d);
@@ -309,7 +300,7 @@ fn narrow_nearest(bracket: &Bracket, ratio: &Fraction, target: &Exact, region: &
 #[inline(never)]
 fn verify_nearest_in_full(
     bracket: &Bracket,
-    ratio: Fraction,
+    ratio: &Fraction,
     target: &Exact,
     region: &Region,
     side: Side,
@@ -325,7 +316,7 @@ fn verify_nearest_in_full(
     };
     if proved.fraction().is_none() {
         return Err(CertificateError::OtherAnswer {
-            claimed: Node::from(&ratio),
+            claimed: Node::from(ratio),
         });
     }
     agree(ratio, proved)
@@ -333,17 +324,17 @@ fn verify_nearest_in_full(
 
 fn verify_simplest(
     parents: &Parents,
-    fraction: Fraction,
+    fraction: &Fraction,
     interval: &Interval,
 ) -> Result<(), CertificateError> {
-    let claimed = Node::from(&fraction);
+    let claimed = Node::from(fraction);
     let (left, right) = (parents.left, parents.right);
     verify_neighbours(left, right)?;
     let sum = (left.l.checked_add(right.l), left.m.checked_add(right.m));
     if sum != (Some(claimed.l), Some(claimed.m)) {
         return Err(CertificateError::OtherAnswer { claimed });
     }
-    if !interval.contains(&fraction) {
+    if !interval.contains(fraction) {
         return Err(CertificateError::NotInInterval(claimed));
     }
     match [left, right]

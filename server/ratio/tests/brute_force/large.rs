@@ -3,8 +3,8 @@
 use num_bigint::BigUint;
 use num_rational::Ratio;
 use ratewright_ratio::{
-    BatchError, Bounds, Claim, Exact, MAX_BOUND, Region, Side, best, best_in, best_of_many, big,
-    neighbours, residual, target_from_f64,
+    BatchError, Bounds, Claim, Exact, MAX_BOUND, Region, Side, around, best, best_in, best_of_many,
+    best_power_of_two, big, is_nearest_for_m, neighbours, residual, target_from_f64,
 };
 
 use crate::random::Random;
@@ -178,4 +178,20 @@ fn a_refused_batch_names_the_value_and_leaves_the_answers() {
         })
     );
     assert_eq!(answers, untouched);
+}
+
+/// Both were met by the fuzzer.
+#[test]
+fn edges_of_the_bounds() {
+    let widest = Bounds::new(MAX_BOUND, MAX_BOUND).expect("in range");
+    let huge = Exact::from_integer(u128::MAX);
+    assert_eq!(
+        best_power_of_two(&huge, &widest),
+        Ratio::from_integer(MAX_BOUND)
+    );
+    assert!(is_nearest_for_m(MAX_BOUND, &huge, u64::MAX, u64::MAX));
+    assert_eq!(
+        around(&Exact::from_integer(0), &Region::from(&widest)),
+        None
+    );
 }
