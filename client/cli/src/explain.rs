@@ -4,6 +4,7 @@ use clap::Args;
 use serde_json::json;
 
 use crate::failure::Failure;
+use crate::out::say;
 use crate::server::{self, Server, SettingName};
 use crate::{json, show};
 
@@ -26,21 +27,21 @@ pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
     let SettingName { crossing, number } = &arguments.setting;
     let (setting, lines) = client.explain(crossing, *number).await?;
     if arguments.json {
-        println!(
+        say!(
             "{:#}",
             json!({ "setting": json::setting(&setting), "lines": lines })
-        );
+        )?;
         return Ok(());
     }
     let runs = show::realised(&setting.realised);
-    println!(
+    say!(
         "{} {}  {runs}  {}",
         setting.crossing,
         setting.number,
         show::offset(setting.residual)
-    );
+    )?;
     for line in lines {
-        println!("  {line}");
+        say!("  {line}")?;
     }
     Ok(())
 }

@@ -15,6 +15,9 @@ pub(crate) enum Failure {
     /// What went wrong was already said in the command's own output.
     #[error("see above")]
     Quiet,
+    /// Who read standard output has seen enough.
+    #[error("standard output was closed")]
+    ReaderGone,
 }
 
 impl Failure {
@@ -23,6 +26,7 @@ impl Failure {
         match self {
             Self::Usage(_) => 2,
             Self::Failed(_) | Self::Quiet => 1,
+            Self::ReaderGone => 0,
         }
     }
 }

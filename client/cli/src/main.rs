@@ -5,9 +5,8 @@
     reason = "a shell crate: it reads clocks, files and standard input"
 )]
 #![allow(
-    clippy::print_stdout,
     clippy::print_stderr,
-    reason = "printing is what it is for"
+    reason = "errors and losses go to standard error"
 )]
 
 mod decimal;
@@ -15,6 +14,7 @@ mod declare;
 mod explain;
 mod failure;
 mod json;
+mod out;
 mod plan;
 mod probe;
 mod report;
@@ -65,7 +65,7 @@ async fn main() -> ExitCode {
         Command::Probe(arguments) => probe::run(&arguments).await,
     };
     match done {
-        Ok(()) => ExitCode::SUCCESS,
+        Ok(()) | Err(Failure::ReaderGone) => ExitCode::SUCCESS,
         Err(Failure::Quiet) => ExitCode::from(1),
         Err(failure) => {
             eprintln!("ratewright: {failure}");

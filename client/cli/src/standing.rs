@@ -5,6 +5,8 @@ use ratewright_client::{Clock, Crossing};
 use serde_json::json;
 
 use crate::failure::Failure;
+use crate::out;
+use crate::out::say;
 use crate::server::Server;
 use crate::{json, show};
 
@@ -27,7 +29,7 @@ pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
             "clocks": clocks.iter().map(json::clock).collect::<Vec<_>>(),
             "crossings": crossings.iter().map(json::crossing).collect::<Vec<_>>(),
         });
-        println!("{document:#}");
+        say!("{document:#}")?;
         return Ok(());
     }
     let heading = |words: &[&str]| {
@@ -38,13 +40,13 @@ pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
     };
     let mut rows = vec![heading(&["clock", "nominal", "drift (95 %)", "state"])];
     rows.extend(clocks.iter().map(clock_row));
-    print!("{}", show::table(&rows));
-    println!();
+    out::text(format_args!("{}", show::table(&rows)))?;
+    say!("")?;
     let mut rows = vec![heading(&[
         "crossing", "from", "to", "setting", "runs", "off by", "slips in", "state",
     ])];
     rows.extend(crossings.iter().map(crossing_row));
-    print!("{}", show::table(&rows));
+    out::text(format_args!("{}", show::table(&rows)))?;
     Ok(())
 }
 

@@ -5,6 +5,7 @@ use ratewright_client::{Id, Setting, Update};
 use serde_json::json;
 
 use crate::failure::Failure;
+use crate::out::say;
 use crate::server::{self, Server};
 use crate::{json, show};
 
@@ -30,21 +31,21 @@ pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
     loop {
         match watch.next().await? {
             Update::Setting(setting) if arguments.json => {
-                println!("{}", json::setting(&setting));
+                say!("{}", json::setting(&setting))?;
             }
             Update::Setting(setting) => {
-                println!(
+                say!(
                     "{}",
                     line(&setting, watch.house_now_ns().unwrap_or(setting.decided_ns))
-                );
+                )?;
             }
             Update::Refused { name, error } if arguments.json => {
-                println!(
+                say!(
                     "{}",
                     json!({ "setting": name, "refused": error.to_string() })
-                );
+                )?;
             }
-            Update::Refused { name, error } => println!("{name} must not be run: {error}"),
+            Update::Refused { name, error } => say!("{name} must not be run: {error}")?,
             Update::Lost(loss) => eprintln!("ratewright: {loss}; settings stay in force"),
             Update::Regained => eprintln!("ratewright: contact is back"),
             _ => {}

@@ -12,6 +12,8 @@ use num_rational::Ratio;
 use ratewright_ratio::{Exact, parse_rate, parse_target, plan};
 
 use crate::failure::Failure;
+use crate::out;
+use crate::out::say;
 use drift::Drift;
 use question::Question;
 
@@ -75,9 +77,12 @@ pub(crate) fn run(arguments: &Arguments) -> Result<(), Failure> {
     let plan = plan::plan(&question.query);
     let width = question.width(&plan);
     if arguments.json {
-        println!("{:#}", document::document(&question, &plan, width.as_ref()));
+        say!("{:#}", document::document(&question, &plan, width.as_ref()))?;
     } else {
-        print!("{}", text::text(&question, &plan, width.as_ref()));
+        out::text(format_args!(
+            "{}",
+            text::text(&question, &plan, width.as_ref())
+        ))?;
     }
     Ok(())
 }

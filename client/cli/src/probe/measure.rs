@@ -10,6 +10,7 @@ use tokio::time::{Instant, MissedTickBehavior};
 use super::host::{Arguments, Worth, worth};
 use super::kernel;
 use crate::failure::Failure;
+use crate::out::say;
 use crate::{declare, json, show};
 
 /// Ticks of both clocks: they are read in ns.
@@ -166,15 +167,15 @@ async fn print(client: &Client, arguments: &Arguments, clocks: &Clocks) -> Resul
     };
     if arguments.json {
         let raw = raw.as_ref().map(json::clock);
-        println!(
+        say!(
             "{:#}",
             json!({ "system": json::clock(&system), "raw": raw })
-        );
+        )?;
         return Ok(());
     }
     for clock in std::iter::once(&system).chain(&raw) {
         let (drift, state) = show::clock(clock);
-        println!("{}: drift {drift}, {state}", clock.declaration.id);
+        say!("{}: drift {drift}, {state}", clock.declaration.id)?;
     }
     Ok(())
 }

@@ -18,6 +18,8 @@ use tokio::sync::mpsc;
 
 use crate::declare;
 use crate::failure::Failure;
+use crate::out;
+use crate::out::say;
 use crate::server::{self, Server};
 use columns::Columns;
 use summary::Summary;
@@ -218,9 +220,9 @@ async fn take(mut receipts: Receipts) -> Result<Vec<ratewright_client::Receipt>,
 async fn finish(client: &Client, arguments: &Arguments, summary: &Summary) -> Result<(), Failure> {
     let clock = client.clock(&arguments.clock).await?;
     if arguments.json {
-        println!("{:#}", summary.json(&clock));
+        say!("{:#}", summary.json(&clock))?;
     } else {
-        print!("{}", summary.text(&clock));
+        out::text(format_args!("{}", summary.text(&clock)))?;
     }
     if summary.is_clean() {
         Ok(())
