@@ -210,10 +210,18 @@ impl Clocks {
     /// The same for people: with the reference and the probe it rests on.
     pub(crate) fn described(&self, id: &Id, now: HouseNs) -> Option<ClockEstimate> {
         let Traced {
-            estimate, measured, ..
+            mut estimate,
+            measured,
+            ..
         } = self.estimate(id, now)?;
         let record = self.records.get(id)?;
         let link = record.links.get(record.chosen);
+        if let Some(link) = link {
+            // People ask when and how often this clock was read, not its reference.
+            let own = link.estimate(now);
+            estimate.last_reading_ns = Some(link.arrived_ns);
+            (estimate.rows_used, estimate.outliers) = (own.rows_used, own.outliers);
+        }
         Some(ClockEstimate {
             estimate,
             reference: link.map(|link| link.reference.clone()),

@@ -54,6 +54,10 @@ impl Engine {
             target: ends.target.value,
             target_low: ends.target.low,
             target_high: ends.target.high,
+            residual: record
+                .newest
+                .as_ref()
+                .map(|newest| newest.wanted_ratio() / ends.target.value - 1.0),
             phase_error_samples: outlook.phase,
             phase_deviation_samples: outlook.deviation(0.0),
             seconds_to_slip: slip,
