@@ -1,6 +1,6 @@
 //! When an estimate that is still too wide should lock.
 
-use crate::bank::{JUMP, MODES};
+use crate::bank::JUMP;
 use crate::filter::Filter;
 use crate::lock::{ENTER, LOCK_ROWS};
 use crate::mode::{Step, Walk, WalkNoise};
@@ -30,7 +30,7 @@ pub(crate) fn lock_expected_from_start(
     let wanted = wanted_ppm(lock_half_width);
     let whole_s = since_s * libm::cbrt(line.yy / (wanted * wanted));
     let step_s = since_s / (rows.len() - 1) as f64;
-    let rows_missing = LOCK_ROWS.saturating_sub(rows.len() as u64) as f64;
+    let rows_missing = (usize::from(LOCK_ROWS).saturating_sub(rows.len())) as f64;
     let expected_s = (whole_s - since_s).max(rows_missing * step_s);
     (expected_s < HORIZON_S).then_some(expected_s)
 }
@@ -39,22 +39,22 @@ pub(crate) fn lock_expected_from_start(
 ///
 /// The covariance of an average mode is run forward in strides that grow by a tenth, each with
 /// the information that its rows would bring.
-pub(crate) fn lock_expected_in_s(filter: &Filter, lock_half_width: f64, rows: u64) -> Option<f64> {
-    let step_s = filter.mean_step_s;
+pub(crate) fn lock_expected_in_s(filter: &Filter, lock_half_width: f64, rows: u16) -> Option<f64> {
+    let step_s = filter.mean_step_s();
     if step_s <= 0.0 {
         return None;
     }
     let wanted = wanted_ppm(lock_half_width);
     let per_row: f64 = filter
         .measuring()
-        .map(|d| d.information / d.thinning())
+        .map(|d| d.information() / d.thinning())
         .sum();
     let (mut walk, noise) = average(filter);
     let mut ahead = 0.0;
     let mut stride = step_s;
     while ahead < HORIZON_S {
         if walk.yy <= wanted * wanted {
-            let rows_missing = LOCK_ROWS.saturating_sub(rows) as f64;
+            let rows_missing = f64::from(LOCK_ROWS.saturating_sub(rows));
             return Some(ahead.max(rows_missing * step_s));
         }
         walk.advance(&Step::new(stride, 0.0), noise);
@@ -71,8 +71,8 @@ fn average(filter: &Filter) -> (Walk, WalkNoise) {
     let m = filter.bank.mixture();
     let mut noise = WalkNoise { q1: 0.0, q2: 0.0 };
     let mut xy = 0.0;
-    for j in (0..MODES).filter(|&j| j != JUMP) {
-        let weight = filter.bank.weights()[j];
+    let weights = filter.bank.weights().into_iter().enumerate();
+    for (j, weight) in weights.filter(|&(j, _)| j != JUMP) {
         let own = filter.bank.noise(j).walk;
         noise.q1 += weight * own.q1;
         noise.q2 += weight * own.q2;

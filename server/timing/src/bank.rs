@@ -3,11 +3,12 @@
 
 use serde::{Deserialize, Serialize};
 
+use crate::exponential::exp;
 use crate::mode::{Slope, SlopeNoise, Step, Walk, WalkNoise};
 use crate::noise::{Detail, Noise, Score};
 
 /// Number of random walks, the jump mode last.
-pub(crate) const WALKS: usize = 5;
+pub(crate) const WALKS: usize = 4;
 /// Number of modes with a slope.
 pub(crate) const SLOPES: usize = 3;
 /// Number of modes.
@@ -16,9 +17,8 @@ pub(crate) const MODES: usize = WALKS + SLOPES;
 pub(crate) const JUMP: usize = WALKS - 1;
 
 const WALK_NOISE: [WalkNoise; WALKS] = [
-    WalkNoise { q1: 1e-7, q2: 1e-9 },
-    WalkNoise { q1: 1e-6, q2: 1e-8 },
-    WalkNoise { q1: 1e-6, q2: 1e-7 },
+    WalkNoise { q1: 1e-7, q2: 3e-9 },
+    WalkNoise { q1: 1e-6, q2: 5e-8 },
     WalkNoise { q1: 1e-6, q2: 1e-6 },
     WalkNoise { q1: 1e-6, q2: 1e-2 },
 ];
@@ -40,23 +40,23 @@ const SLOPE_NOISE: [SlopeNoise; SLOPES] = [
     },
 ];
 /// Weights before any evidence: walks, jump, slopes.
-pub(crate) const PRIOR: [f64; MODES] = [0.12, 0.20, 0.17, 0.09, 1e-6, 0.10, 0.08, 0.24];
+pub(crate) const PRIOR: [f64; MODES] = [0.20, 0.25, 0.13, 1e-6, 0.10, 0.08, 0.24];
 const FLOOR: f64 = 1e-4;
 const JUMP_FLOOR: f64 = 1e-6;
 /// Time over which weights fade to their prior, s.
 const MEMORY_S: f64 = 14_400.0;
 /// Weights fade in steps of at least this, s.
-const FADE_STEP_S: f64 = 30.0;
+const FADE_STEP_S: f32 = 30.0;
 
 /// States and weights of all modes.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub(crate) struct Bank {
     walks: [Walk; WALKS],
     slopes: [Slope; SLOPES],
-    weights: [f64; MODES],
-    faded_s: f64,
+    weights: [f32; MODES],
+    faded_s: f32,
     /// Factor on the wander of every mode but the jump.
-    scale: f64,
+    scale: f32,
 }
 
 /// Mean and variance over the modes.
@@ -102,15 +102,19 @@ impl Bank {
         Bank {
             walks: [walk; WALKS],
             slopes: SLOPE_NOISE.each_ref().map(slope),
-            weights: PRIOR,
+            weights: PRIOR.map(|w| w as f32),
             faded_s: 0.0,
-            scale,
+            scale: scale as f32,
         }
     }
 
     /// Weights of the modes, in the order of [`PRIOR`].
-    pub(crate) fn weights(&self) -> &[f64; MODES] {
-        &self.weights
+    pub(crate) fn weights(&self) -> [f64; MODES] {
+        self.weights.map(f64::from)
+    }
+
+    fn scale(&self) -> f64 {
+        f64::from(self.scale)
     }
 
     /// Phase and drift part of mode `j`.
@@ -138,7 +142,7 @@ impl Bank {
     /// Process noise of mode `j`: phase, drift and slope.
     pub(crate) fn noise(&self, j: usize) -> SlopeNoise {
         match j.checked_sub(WALKS) {
-            Some(k) => scaled_slope(SLOPE_NOISE[k], self.scale),
+            Some(k) => scaled_slope(SLOPE_NOISE[k], self.scale()),
             None => SlopeNoise {
                 walk: self.walk_noise(j),
                 q3: 0.0,
@@ -151,20 +155,21 @@ impl Bank {
         if j == JUMP {
             WALK_NOISE[j]
         } else {
-            scaled_walk(WALK_NOISE[j], self.scale)
+            scaled_walk(WALK_NOISE[j], self.scale())
         }
     }
 
     /// Moves all modes on by a step.
     pub(crate) fn advance(&mut self, step: &Step) {
+        let scale = self.scale();
         for j in 0..WALKS {
             let noise = self.walk_noise(j);
             self.walks[j].advance(step, noise);
         }
         for (slope, noise) in self.slopes.iter_mut().zip(SLOPE_NOISE) {
-            slope.advance(step, scaled_slope(noise, self.scale));
+            slope.advance(step, scaled_slope(noise, scale));
         }
-        self.faded_s += step.dt;
+        self.faded_s += step.dt as f32;
         if self.faded_s >= FADE_STEP_S {
             self.fade();
         }
@@ -172,19 +177,21 @@ impl Bank {
 
     /// ln w ← α ln w + (1 − α) ln π with α = exp(−Δ/memory).
     fn fade(&mut self) {
-        let keep = libm::exp(-self.faded_s / MEMORY_S);
+        let keep = exp(-f64::from(self.faded_s) / MEMORY_S);
         self.faded_s = 0.0;
-        for (weight, prior) in self.weights.iter_mut().zip(PRIOR) {
-            *weight *= libm::exp((1.0 - keep) * (libm::log(prior) - libm::log(*weight)));
+        let mut weights = self.weights();
+        for (weight, prior) in weights.iter_mut().zip(PRIOR) {
+            *weight *= exp((1.0 - keep) * (libm::log(prior) - libm::log(*weight)));
         }
-        self.normalise();
+        self.set_weights(&weights);
     }
 
-    fn normalise(&mut self) {
-        let total: f64 = self.weights.iter().sum();
-        for (j, weight) in self.weights.iter_mut().enumerate() {
+    /// Takes weights that need not sum to one.
+    fn set_weights(&mut self, weights: &[f64; MODES]) {
+        let share = 1.0 / weights.iter().sum::<f64>();
+        for (j, weight) in weights.iter().enumerate() {
             let floor = if j == JUMP { JUMP_FLOOR } else { FLOOR };
-            *weight = (*weight / total).max(floor);
+            self.weights[j] = (weight * share).max(floor) as f32;
         }
     }
 
@@ -197,31 +204,29 @@ impl Bank {
             xx: 0.0,
             yy: 0.0,
         };
-        let mut total = 0.0;
-        for (j, &w) in self.weights.iter().enumerate() {
+        let mut shares = self.weights();
+        let whole = 1.0 / shares.iter().sum::<f64>();
+        for (j, share) in shares.iter_mut().enumerate() {
+            *share *= whole;
             let walk = self.walk(j);
-            m.x += w * walk.x;
-            m.y += w * walk.y;
-            total += w;
+            m.x += *share * walk.x;
+            m.y += *share * walk.y;
         }
-        m.x /= total;
-        m.y /= total;
-        for (j, &w) in self.weights.iter().enumerate() {
+        for (j, share) in shares.iter().enumerate() {
             let walk = self.walk(j);
             let (dx, dy) = (walk.x - m.x, walk.y - m.y);
-            m.xx += w * (walk.xx + dx * dx);
-            m.yy += w * (walk.yy + dy * dy);
+            m.xx += share * (walk.xx + dx * dx);
+            m.yy += share * (walk.yy + dy * dy);
         }
-        m.xx /= total;
-        m.yy /= total;
-        for (slope, w) in self.slopes.iter().zip(&self.weights[WALKS..]) {
-            m.d += w * slope.d / total;
+        for (slope, share) in self.slopes.iter().zip(&shares[WALKS..]) {
+            m.d += share * slope.d;
         }
         m
     }
 
     /// Corrects all modes by one sight; `centre` is its detail at the mixture's mean.
     pub(crate) fn correct(&mut self, sight: &Sight, mixture: &Mixture, centre: &Detail) {
+        let share = 1.0 / sight.thinning;
         let centre_error = sight.sign * (sight.value - mixture.x);
         let mut gains = [0.0; MODES];
         for (j, gain) in gains.iter_mut().enumerate() {
@@ -229,13 +234,13 @@ impl Bank {
             let e = sight.sign * (sight.value - walk.x);
             let score = near(sight.noise, centre, e - centre_error, walk.xx - mixture.xx)
                 .unwrap_or_else(|| sight.noise.score(e, walk.xx));
-            let pull = -sight.sign * score.first / sight.thinning;
-            let curve = score.second / sight.thinning;
+            let pull = -sight.sign * score.first * share;
+            let curve = score.second * share;
             match j.checked_sub(WALKS) {
                 None => self.walks[j].correct(pull, curve),
                 Some(k) => self.slopes[k].correct(pull, curve),
             }
-            *gain = (score.log - centre.score.log) / sight.thinning;
+            *gain = (score.log - centre.score.log) * share;
         }
         self.weigh(&gains);
     }
@@ -264,10 +269,11 @@ impl Bank {
     }
 
     fn weigh(&mut self, gains: &[f64; MODES]) {
-        for (weight, &gain) in self.weights.iter_mut().zip(gains) {
+        let mut weights = self.weights();
+        for (weight, &gain) in weights.iter_mut().zip(gains) {
             *weight *= exp_near_nought(gain);
         }
-        self.normalise();
+        self.set_weights(&weights);
     }
 
     /// After a step of the phase: every mode less sure of phase and drift.
@@ -285,15 +291,14 @@ impl Bank {
         for j in 0..MODES {
             self.reseed(j, jump);
         }
-        self.weights = weights;
-        self.normalise();
+        self.set_weights(&weights);
     }
 
     /// Begins mode `j` anew from the given state, its slope unknown.
     pub(crate) fn reseed(&mut self, j: usize, state: Walk) {
         *self.walk_mut(j) = state;
         if let Some(k) = j.checked_sub(WALKS) {
-            let settled = SLOPE_NOISE[k].d_deviation * SLOPE_NOISE[k].d_deviation * self.scale;
+            let settled = SLOPE_NOISE[k].d_deviation * SLOPE_NOISE[k].d_deviation * self.scale();
             let slope = &mut self.slopes[k];
             (slope.d, slope.xd, slope.yd, slope.dd) = (0.0, 0.0, 0.0, settled);
         }
@@ -306,7 +311,7 @@ fn exp_near_nought(a: f64) -> f64 {
     if a.abs() < 0.02 {
         return 1.0 + a * (1.0 + a * (0.5 + a * (1.0 / 6.0 + a * (1.0 / 24.0))));
     }
-    libm::exp(a.clamp(-600.0, 600.0))
+    exp(a.clamp(-600.0, 600.0))
 }
 
 fn scaled_walk(noise: WalkNoise, scale: f64) -> WalkNoise {

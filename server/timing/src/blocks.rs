@@ -19,43 +19,38 @@ pub(crate) struct Blocks {
     block: Option<Block>,
 }
 
-/// A block under way, its values detrended to the time of its first row.
+/// A block under way, its best values referred to the time of its last row.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
-struct Block {
-    rows: usize,
-    since_s: f64,
-    drift: f64,
+pub(crate) struct Block {
     best: [f64; 2],
     last_s: f64,
+    rows: u8,
     in_gap: bool,
 }
 
 impl Block {
-    fn new(row: &StartRow, drift: f64, in_gap: bool) -> Self {
+    fn new(row: &StartRow, in_gap: bool) -> Self {
         Block {
-            rows: 1,
-            since_s: row.t_s,
-            drift,
             best: row.z,
             last_s: row.t_s,
+            rows: 1,
             in_gap,
         }
     }
 
     /// Going out, delay makes z smaller; coming back, larger.
-    fn add(&mut self, row: &StartRow) {
-        let trend = self.drift * (row.t_s - self.since_s);
-        self.best[0] = self.best[0].max(row.z[0] - trend);
-        self.best[1] = self.best[1].min(row.z[1] - trend);
+    fn add(&mut self, row: &StartRow, drift: f64) {
+        let trend = drift * (row.t_s - self.last_s);
+        self.best[0] = (self.best[0] + trend).max(row.z[0]);
+        self.best[1] = (self.best[1] + trend).min(row.z[1]);
         self.last_s = row.t_s;
         self.rows += 1;
     }
 
     fn row(&self) -> StartRow {
-        let trend = self.drift * (self.last_s - self.since_s);
         StartRow {
             t_s: self.last_s,
-            z: self.best.map(|best| best + trend),
+            z: self.best,
         }
     }
 }
@@ -84,15 +79,15 @@ impl Blocks {
         if self.early.len() < BLOCK * START_ROWS {
             return outcome;
         }
-        *filter = self.begin_again(filter.latest().y, setup);
+        *filter = self.begin_again(filter.latest.y, setup);
         outcome
     }
 
     fn begin_again(&mut self, drift: f64, setup: &Setup) -> Filter {
         let mut start = Start::new(setup.prior_var);
         for rows in self.early.chunks(BLOCK) {
-            let mut block = Block::new(&rows[0], drift, false);
-            rows[1..].iter().for_each(|row| block.add(row));
+            let mut block = Block::new(&rows[0], false);
+            rows[1..].iter().for_each(|row| block.add(row, drift));
             start.push(block.row());
         }
         self.early = Vec::new();
@@ -100,18 +95,18 @@ impl Blocks {
     }
 
     fn gather(&mut self, filter: &mut Filter, row: StartRow, in_gap: bool) -> Outcome {
-        let drift = filter.latest().y;
+        let drift = filter.latest.y;
         let Some(block) = &mut self.block else {
-            self.block = Some(Block::new(&row, drift, in_gap));
+            self.block = Some(Block::new(&row, in_gap));
             return Outcome::Used;
         };
         if in_gap {
             let done = *block;
-            *block = Block::new(&row, drift, true);
+            *block = Block::new(&row, true);
             return filter.take(&done.row(), done.in_gap);
         }
-        block.add(&row);
-        if block.rows < BLOCK {
+        block.add(&row, drift);
+        if usize::from(block.rows) < BLOCK {
             return Outcome::Used;
         }
         let done = *block;

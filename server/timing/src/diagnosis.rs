@@ -1,6 +1,6 @@
 //! What the link makes of its probe, for people.
 
-use crate::bank::{JUMP, MODES, WALKS};
+use crate::bank::{JUMP, WALKS};
 use crate::direction::Direction;
 use crate::filter::Filter;
 
@@ -37,7 +37,7 @@ pub struct DirectionDiagnosis {
 #[derive(Clone, Copy, Debug, Default, PartialEq)]
 pub struct Wander {
     /// Drift walks at random, from calm to restless.
-    pub walks: [f64; 4],
+    pub walks: [f64; 3],
     /// Drift follows a slope, as with temperature or warm-up, from slow to fast.
     pub slopes: [f64; 3],
     /// Drift has just jumped.
@@ -47,9 +47,10 @@ pub struct Wander {
 impl Filter {
     pub(crate) fn diagnosis(&self) -> Diagnosis {
         let mut wander = Wander::default();
-        let total: f64 = self.bank.weights().iter().sum();
-        for j in 0..MODES {
-            let share = self.bank.weights()[j] / total;
+        let weights = self.bank.weights();
+        let total: f64 = weights.iter().sum();
+        for (j, weight) in weights.into_iter().enumerate() {
+            let share = weight / total;
             match j {
                 JUMP => wander.jump = share,
                 _ if j < WALKS => wander.walks[j] = share,
@@ -65,14 +66,14 @@ impl Filter {
 
 impl Direction {
     fn diagnosis(&self) -> DirectionDiagnosis {
-        let noise = &self.noise;
+        let noise = self.noise();
         DirectionDiagnosis {
             deviation_s: 1e-6 * noise.sigma,
             shares: noise.weights,
             tails_s: noise.tau.map(|tau| 1e-6 * tau),
             useless: noise.flat,
             alike: self.thinning(),
-            worth_s: 1e-6 * (self.thinning() / self.information).sqrt(),
+            worth_s: 1e-6 * (self.thinning() / self.information()).sqrt(),
             burst: self.burst(),
         }
     }

@@ -3,35 +3,35 @@
 use serde::{Deserialize, Serialize};
 
 use crate::learner::Learner;
-use crate::noise::{Detail, Noise};
+use crate::noise::{Detail, Noise, PackedNoise};
 use crate::start::FirstGuess;
 
 /// One direction of a path. One-way links have one, two-way links two.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub(crate) struct Direction {
     /// s in e = s(z − b − x): −1 when lateness makes z smaller, +1 when larger.
-    pub(crate) sign: f64,
+    sign: i8,
+    /// Rows for which the offset is sought before the direction measures the clock again.
+    settling: u8,
+    /// Rows since the offset was set anew.
+    age: u16,
+    /// Average information of a row, 1/µs².
+    information: f32,
     /// b, µs.
     pub(crate) offset: f64,
-    pub(crate) noise: Noise,
+    noise: PackedNoise,
     learner: Learner,
     correlation: Correlation,
-    /// Average information of a row, 1/µs².
-    pub(crate) information: f64,
     step: StepEvidence,
     route: RouteEvidence,
-    /// Rows since the offset was set anew.
-    age: u32,
-    /// Rows for which the offset is sought before the direction measures the clock again.
-    settling: u32,
     /// Probability that the next row falls into a burst of queueing.
-    burst: f64,
+    burst: f32,
 }
 
 /// Agreeing outliers that are a step.
-const STEP_ROWS: u32 = 5;
+const STEP_ROWS: u16 = 5;
 /// Rows that find the offset of a changed route.
-const SETTLING_ROWS: u32 = 8;
+const SETTLING_ROWS: u8 = 8;
 /// Chance that a row begins a burst, and that a row ends one.
 const BURST_BEGINS: f64 = 1.0 / 500.0;
 const BURST_ENDS: f64 = 1.0 / 40.0;
@@ -52,33 +52,32 @@ pub(crate) enum Verdict {
 /// Lag-one autocorrelation of the scores.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Serialize, Deserialize)]
 struct Correlation {
-    rows: u32,
-    mean: f64,
-    variance: f64,
-    lagged: f64,
-    last: f64,
+    mean: f32,
+    variance: f32,
+    lagged: f32,
+    last: f32,
 }
 
 #[derive(Clone, Copy, Debug, Default, PartialEq, Serialize, Deserialize)]
 struct StepEvidence {
-    count: u32,
-    mean: f64,
-    least: f64,
+    mean: f32,
+    least: f32,
+    count: u16,
 }
 
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
 struct RouteEvidence {
-    late: u32,
-    least: f64,
-    mean: f64,
-    hit_rate: f64,
+    late: u16,
+    least: f32,
+    mean: f32,
+    hit_rate: f32,
 }
 
 impl Correlation {
-    fn take(&mut self, first: f64) {
-        self.rows = self.rows.saturating_add(1);
-        let gain = (1.0 / self.rows as f64).max(1.0 / 256.0);
-        let deviation = first - self.mean;
+    /// Takes the score of row number `row`.
+    fn take(&mut self, first: f64, row: u16) {
+        let gain = (1.0 / f32::from(row)).max(1.0 / 256.0);
+        let deviation = first as f32 - self.mean;
         self.mean += gain * deviation;
         self.variance += gain * (deviation * deviation - self.variance);
         self.lagged += gain * (deviation * self.last - self.lagged);
@@ -86,11 +85,11 @@ impl Correlation {
     }
 
     /// λ = (1 + ρ)/(1 − ρ) within 1..20, once a hundred rows have spoken.
-    fn thinning(&self) -> f64 {
-        if self.rows < 100 || self.variance <= 0.0 {
+    fn thinning(&self, rows: u16) -> f64 {
+        if rows < 100 || self.variance <= 0.0 {
             return 1.0;
         }
-        let rho = (self.lagged / self.variance - 0.08).clamp(0.0, 0.95);
+        let rho = (f64::from(self.lagged / self.variance) - 0.08).clamp(0.0, 0.95);
         ((1.0 + rho) / (1.0 - rho)).min(20.0)
     }
 }
@@ -98,12 +97,12 @@ impl Correlation {
 impl Direction {
     pub(crate) fn new(sign: f64, guess: &FirstGuess) -> Self {
         Direction {
-            sign,
+            sign: if sign < 0.0 { -1 } else { 1 },
             offset: guess.offset,
-            noise: guess.noise,
+            noise: PackedNoise::from(&guess.noise),
             learner: Learner::new(&guess.noise),
             correlation: Correlation::default(),
-            information: 1.0 / (guess.noise.sigma * guess.noise.sigma),
+            information: (1.0 / (guess.noise.sigma * guess.noise.sigma)) as f32,
             step: StepEvidence::default(),
             route: RouteEvidence {
                 late: 0,
@@ -113,32 +112,49 @@ impl Direction {
             },
             age: 0,
             settling: 0,
-            burst: BURST_BEGINS,
+            burst: BURST_BEGINS as f32,
         }
+    }
+
+    /// s, −1 or +1.
+    pub(crate) fn sign(&self) -> f64 {
+        f64::from(self.sign)
+    }
+
+    /// The density of the error, on average.
+    pub(crate) fn noise(&self) -> Noise {
+        self.noise.unpacked()
     }
 
     /// The density to expect of the next row: queues come in bursts, in which late rows are no
     /// evidence of anything else.
     pub(crate) fn expected_noise(&self) -> Noise {
-        self.noise.in_burst(self.burst)
+        self.noise().in_burst(self.burst())
+    }
+
+    /// Average information of a row, 1/µs².
+    pub(crate) fn information(&self) -> f64 {
+        f64::from(self.information)
     }
 
     /// Two-state hidden Markov filter: calm, or a burst in which rows are of the second tail.
-    fn follow_burst(&mut self, detail: &Detail) {
-        let second = (1.0 - self.burst) * self.noise.weights[2] + self.burst;
-        let within = (detail.shares[2] * self.burst / second).clamp(0.0, 1.0);
-        self.burst = within * (1.0 - BURST_ENDS) + (1.0 - within) * BURST_BEGINS;
+    fn follow_burst(&mut self, noise: &Noise, detail: &Detail) {
+        let burst = self.burst();
+        let second = (1.0 - burst) * noise.weights[2] + burst;
+        let within = (detail.shares[2] * burst / second).clamp(0.0, 1.0);
+        let next = within * (1.0 - BURST_ENDS) + (1.0 - within) * BURST_BEGINS;
+        self.burst = next as f32;
     }
 
     /// λ: the number of rows that speak as one, for they agree with each other.
     pub(crate) fn thinning(&self) -> f64 {
-        self.correlation.thinning()
+        self.correlation.thinning(self.learner.rows())
     }
 
     /// Distance to where the row would have the error's location, µs: a Newton step of its score.
     pub(crate) fn newton_step(&self, detail: &Detail) -> f64 {
         let spread = 3.0 * detail.variance.sqrt();
-        (-detail.score.first / self.information).clamp(-spread, spread)
+        (-detail.score.first / self.information()).clamp(-spread, spread)
     }
 
     /// The route of this direction alone has changed: its offset is to be found anew, from the
@@ -150,7 +166,7 @@ impl Direction {
 
     /// Probability that the next row falls into a burst of queueing.
     pub(crate) fn burst(&self) -> f64 {
-        self.burst
+        f64::from(self.burst)
     }
 
     /// Whether the offset is being sought.
@@ -170,31 +186,34 @@ impl Direction {
         }
         self.settling -= 1;
         self.age += 1;
-        self.offset += self.sign * self.newton_step(detail) / self.age as f64;
+        self.offset += self.sign() * self.newton_step(detail) / f64::from(self.age);
         true
     }
 
     /// Gain of a correction to the offset, falling with its age.
     pub(crate) fn offset_gain(&mut self) -> f64 {
         self.age = self.age.saturating_add(1);
-        (1.0 / (self.age as f64 + 16.0)).max(1.0 / 8192.0)
+        (1.0 / (f64::from(self.age) + 16.0)).max(1.0 / 8192.0)
     }
 
     /// Learns from a row of error `e` seen at phase variance `p`. Where the offset must move
     /// because the density now settles elsewhere, that is done, and the distance returned.
     pub(crate) fn learn(&mut self, detail: &Detail, p: f64, least_sigma: f64) -> f64 {
-        self.correlation.take(detail.score.first);
-        self.follow_burst(detail);
+        let noise = self.noise();
+        let row = self.learner.rows().saturating_add(1);
+        self.correlation.take(detail.score.first, row);
+        self.follow_burst(&noise, detail);
         let least = 0.02 / detail.variance;
-        let curved = self.information + (-detail.score.second - self.information) / 64.0;
-        self.information = curved.max(least);
-        if !self.learner.learn(&self.noise, detail) {
+        let old = self.information();
+        let curved = old + (-detail.score.second - old) / 64.0;
+        self.information = curved.max(least) as f32;
+        if !self.learner.learn(&noise, detail) {
             return 0.0;
         }
         let learned = self.learner.refresh(least_sigma);
-        let moved = self.noise.displacement(&learned, p);
-        self.noise = learned;
-        self.offset += self.sign * moved;
+        let moved = noise.displacement(&learned, p);
+        self.noise = PackedNoise::from(&learned);
+        self.offset += self.sign() * moved;
         moved
     }
 
@@ -210,20 +229,21 @@ impl Direction {
 
     /// Distance within which outliers agree, µs.
     pub(crate) fn agreement(&self, p: f64) -> f64 {
-        self.noise.reach() + 0.5 * p.sqrt()
+        self.noise().reach() + 0.5 * p.sqrt()
     }
 
     fn outlying(&mut self, e: f64, p: f64) -> Verdict {
+        let agreement = self.agreement(p);
         let step = &mut self.step;
-        if step.count > 0 && (e - step.mean).abs() <= self.noise.reach() + 0.5 * p.sqrt() {
-            step.count += 1;
-            step.mean += (e - step.mean) / step.count as f64;
-            step.least = step.least.min(e);
+        if step.count > 0 && (e - f64::from(step.mean)).abs() <= agreement {
+            step.count = step.count.saturating_add(1);
+            step.mean += (e as f32 - step.mean) / f32::from(step.count);
+            step.least = step.least.min(e as f32);
         } else {
             *step = StepEvidence {
                 count: 1,
-                mean: e,
-                least: e,
+                mean: e as f32,
+                least: e as f32,
             };
         }
         if step.count < STEP_ROWS {
@@ -241,36 +261,40 @@ impl Direction {
     /// Moves the offset by the step that the outliers agree on: the least late of them is
     /// nearest to the error's location.
     pub(crate) fn follow_step(&mut self) {
-        self.offset += self.sign * (self.step.least + 0.5 * self.noise.sigma);
+        self.offset += self.sign() * (f64::from(self.step.least) + 0.5 * self.noise().sigma);
         self.step = StepEvidence::default();
         self.route.late = 0;
     }
 
     /// Long runs of late rows: the least latency has grown by what the earliest of them shows.
     fn late(&mut self, e: f64) -> Verdict {
-        let line = self.noise.sigma + 0.5 * self.noise.tau[0];
+        let noise = self.noise();
+        let thinning = self.thinning();
+        let line = noise.sigma + 0.5 * noise.tau[0];
         let route = &mut self.route;
         let hit = e <= line;
-        route.hit_rate += ((hit as u8 as f64) - route.hit_rate) / 256.0;
+        route.hit_rate += (f32::from(u8::from(hit)) - route.hit_rate) / 256.0;
         if hit {
             route.late = 0;
             return Verdict::Ordinary;
         }
         if route.late == 0 {
-            (route.least, route.mean) = (e, e);
+            (route.least, route.mean) = (e as f32, e as f32);
         }
-        route.late += 1;
-        route.least = route.least.min(e);
-        route.mean += (e - route.mean) / route.late as f64;
+        route.late = route.late.saturating_add(1);
+        route.least = route.least.min(e as f32);
+        route.mean += (e as f32 - route.mean) / f32::from(route.late);
         // A longer route is as steady as the old one; a congested one is not.
-        let unsteady = ((route.mean - route.least) / self.noise.mean_lateness()).max(1.0);
-        let thinning = self.correlation.thinning();
-        let enough = 14.0 * thinning.min(3.0) * unsteady.min(2.0) / route.hit_rate.max(0.02);
-        if route.late < 12 || (route.late as f64) <= enough {
+        let unsteady = f64::from(route.mean - route.least) / noise.mean_lateness();
+        let unsteady = unsteady.clamp(1.0, 2.0);
+        let hit_rate = f64::from(route.hit_rate).max(0.02);
+        let enough = 14.0 * thinning.min(3.0) * unsteady / hit_rate;
+        if route.late < 12 || f64::from(route.late) <= enough {
             return Verdict::Ordinary;
         }
-        self.offset += self.sign * (route.least - self.noise.sigma);
-        route.late = 0;
+        let least = f64::from(route.least);
+        self.offset += self.sign() * (least - noise.sigma);
+        self.route.late = 0;
         Verdict::Rerouted
     }
 }

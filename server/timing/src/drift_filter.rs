@@ -85,7 +85,7 @@ impl DriftFilter {
     }
 
     fn growth(&self) -> crate::growth::Growth {
-        let walk = self.bank.weights().iter().enumerate();
+        let walk = self.bank.weights().into_iter().enumerate();
         self.structure
             .growth(walk.map(|(j, w)| w * self.bank.noise(j).walk.q2).sum())
     }

@@ -11,13 +11,15 @@ use crate::outcome::{Event, Outcome};
 use crate::start::{Start, StartRow};
 
 /// Rows before a jump of the drift is believed.
-const JUMP_ROWS: u64 = 24;
+const JUMP_ROWS: u16 = 24;
 /// Rows for which the jump mode must explain nearly everything.
-const JUMP_HOLD: u32 = 8;
+const JUMP_HOLD: u8 = 8;
 /// Memory of the average weights that a jump returns to, s.
-const WEIGHT_MEMORY_S: f64 = 900.0;
+const WEIGHT_MEMORY_S: f32 = 900.0;
+/// Weights are averaged in steps of at least this, s.
+const AVERAGE_STEP_S: f32 = 30.0;
 /// A mode of next to no weight begins anew this often, s.
-const RESEED_S: f64 = 1200.0;
+const RESEED_S: f32 = 1200.0;
 
 /// What of the configuration the filter needs.
 #[derive(Clone, Copy, Debug)]
@@ -36,26 +38,44 @@ pub(crate) struct Setup {
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub(crate) struct Filter {
     pub(crate) bank: Bank,
-    /// Time of the last row, s.
-    pub(crate) t_s: f64,
     pub(crate) directions: [Direction; 2],
-    two_way: bool,
+    pub(crate) latest: Latest,
+    pace: Pace,
     pub(crate) structure: Structure,
-    average_weights: [f64; MODES],
-    rows_since_event: u64,
-    jump_held: u32,
-    outlier_share: f64,
-    since_reseed_s: f64,
-    pub(crate) mean_step_s: f64,
-    least_sigma: f64,
-    /// The bank's mixture after the last row.
-    latest: Mixture,
+    average_weights: [f32; MODES],
+}
+
+/// The filter after its last row.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub(crate) struct Latest {
+    /// Time of the row, s.
+    pub(crate) t_s: f64,
+    /// Drift, ppm, and its variance, ppm².
+    pub(crate) y: f64,
+    pub(crate) yy: f64,
+}
+
+/// What is counted from row to row.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+struct Pace {
+    mean_step_s: f32,
+    least_sigma: f32,
+    outlier_share: f32,
+    since_average_s: f32,
+    since_reseed_s: f32,
+    rows_since_event: u16,
+    jump_held: u8,
+    two_way: bool,
 }
 
 /// Going out, lateness makes z smaller; coming back, larger.
 const TWO_WAY_SIGNS: [f64; 2] = [-1.0, 1.0];
 
 impl Filter {
+    /// Bytes besides bank and directions that every row reads or writes: also the time at
+    /// which the structure function has something to do again.
+    pub(crate) const PACE_BYTES: usize = size_of::<Latest>() + size_of::<Pace>() + size_of::<f64>();
+
     /// Begins from the rows gathered, and takes them one after another.
     pub(crate) fn begin(start: &Start, two_way: bool, setup: &Setup) -> Self {
         let signs = if two_way {
@@ -70,7 +90,7 @@ impl Filter {
             directions[0].offset = 0.0;
         }
         let first = start.rows()[0];
-        let spread = directions[0].noise.sigma + directions[0].noise.tau[0];
+        let spread = guesses[0].noise.sigma + guesses[0].noise.tau[0];
         let phase_var = (1e6 * spread * spread).min(1e10);
         let x = if two_way {
             0.5 * (first.z[0] + first.z[1])
@@ -79,19 +99,25 @@ impl Filter {
         };
         let bank = Bank::new(x, phase_var, setup.prior_var, setup.scale);
         let mut filter = Filter {
-            latest: bank.mixture(),
             bank,
-            t_s: first.t_s,
             directions,
-            two_way,
+            latest: Latest {
+                t_s: first.t_s,
+                y: 0.0,
+                yy: setup.prior_var,
+            },
+            pace: Pace {
+                mean_step_s: 0.0,
+                least_sigma: setup.least_sigma as f32,
+                outlier_share: 0.0,
+                since_average_s: 0.0,
+                since_reseed_s: 0.0,
+                rows_since_event: 0,
+                jump_held: 0,
+                two_way,
+            },
             structure: Structure::new(setup.scale),
-            average_weights: PRIOR,
-            rows_since_event: 0,
-            jump_held: 0,
-            outlier_share: 0.0,
-            since_reseed_s: 0.0,
-            mean_step_s: 0.0,
-            least_sigma: setup.least_sigma,
+            average_weights: PRIOR.map(|w| w as f32),
         };
         for row in start.rows() {
             filter.take(row, false);
@@ -101,9 +127,9 @@ impl Filter {
 
     /// Takes a row; `in_gap` says that it ends a gap.
     pub(crate) fn take(&mut self, row: &StartRow, in_gap: bool) -> Outcome {
-        let dt = (row.t_s - self.t_s).max(0.0);
+        let dt = (row.t_s - self.latest.t_s).max(0.0);
         self.advance(dt, in_gap);
-        let count = if self.two_way { 2 } else { 1 };
+        let count = if self.pace.two_way { 2 } else { 1 };
         let mut verdicts = [Verdict::Ordinary; 2];
         let mut newton = [None; 2];
         for c in 0..count {
@@ -114,37 +140,45 @@ impl Filter {
         {
             self.split_offsets([out, back]);
         }
-        self.rows_since_event += 1;
+        let pace = &mut self.pace;
+        pace.rows_since_event = pace.rows_since_event.saturating_add(1);
         let outlying = verdicts[..count].contains(&Verdict::Outlier);
-        self.outlier_share += ((outlying as u8 as f64) - self.outlier_share) / 32.0;
+        pace.outlier_share += (f32::from(u8::from(outlying)) - pace.outlier_share) / 32.0;
         let outcome = self.conclude(&verdicts[..count]);
-        self.latest = self.bank.mixture();
-        self.watch_drift(dt);
+        let mixture = self.note_latest();
+        self.watch_drift(&mixture, dt);
         if self.jumped() {
-            self.latest = self.bank.mixture();
+            self.note_latest();
             return Outcome::Event(Event::FrequencyJump);
         }
         outcome
     }
 
-    /// Mean and variance over the modes after the last row.
-    pub(crate) fn latest(&self) -> &Mixture {
-        &self.latest
+    fn note_latest(&mut self) -> Mixture {
+        let mixture = self.bank.mixture();
+        (self.latest.y, self.latest.yy) = (mixture.y, mixture.yy);
+        mixture
+    }
+
+    /// Usual step from row to row, s; nought before there is one.
+    pub(crate) fn mean_step_s(&self) -> f64 {
+        f64::from(self.pace.mean_step_s)
     }
 
     /// Whether nothing fits any more and the link should begin anew.
     pub(crate) fn lost(&self) -> bool {
-        self.outlier_share > 0.7
+        self.pace.outlier_share > 0.7
     }
 
     /// The directions that measure: one, or both of a two-way path.
     pub(crate) fn measuring(&self) -> impl Iterator<Item = &Direction> {
-        self.directions[..if self.two_way { 2 } else { 1 }].iter()
+        self.directions[..if self.pace.two_way { 2 } else { 1 }].iter()
     }
 
     /// D(h) as far as it is known.
     pub(crate) fn growth(&self) -> Growth {
-        let walk = (0..MODES).map(|j| self.bank.weights()[j] * self.bank.noise(j).walk.q2);
+        let walk = self.bank.weights().into_iter().enumerate();
+        let walk = walk.map(|(j, w)| w * self.bank.noise(j).walk.q2);
         self.structure.growth(walk.sum())
     }
 
@@ -158,10 +192,10 @@ impl Filter {
             0.0
         };
         self.bank.advance(&Step::new(dt, least_q2));
-        self.t_s += dt;
+        self.latest.t_s += dt;
         if !in_gap {
-            self.mean_step_s +=
-                (dt - self.mean_step_s) * if self.mean_step_s > 0.0 { 0.06 } else { 1.0 };
+            let mean = &mut self.pace.mean_step_s;
+            *mean += (dt as f32 - *mean) * if *mean > 0.0 { 0.06 } else { 1.0 };
         }
     }
 
@@ -171,11 +205,11 @@ impl Filter {
         let direction = &mut self.directions[c];
         let mixture = self.bank.mixture();
         let value = z - direction.offset;
-        let e = direction.sign * (value - mixture.x);
-        let noise = if self.two_way {
+        let e = direction.sign() * (value - mixture.x);
+        let noise = if self.pace.two_way {
             direction.expected_noise()
         } else {
-            direction.noise
+            direction.noise()
         };
         let detail = noise.detail(e, mixture.xx);
         if direction.seek_offset(&detail) {
@@ -183,14 +217,14 @@ impl Filter {
         }
         let sight = Sight {
             value,
-            sign: direction.sign,
+            sign: direction.sign(),
             noise: &noise,
             thinning: direction.thinning(),
         };
         self.bank.correct(&sight, &mixture, &detail);
-        let residual = direction.sign * direction.newton_step(&detail);
+        let residual = direction.sign() * direction.newton_step(&detail);
         let verdict = direction.judge(e, &detail, mixture.xx);
-        let moved = direction.learn(&detail, mixture.xx, self.least_sigma);
+        let moved = direction.learn(&detail, mixture.xx, f64::from(self.pace.least_sigma));
         self.bank.loosen(0.1 * moved * moved, 0.0);
         (verdict, Some(residual))
     }
@@ -201,7 +235,7 @@ impl Filter {
     fn split_offsets(&mut self, residuals: [f64; 2]) {
         let [out, back] = &mut self.directions;
         let gains = [out.offset_gain(), back.offset_gain()];
-        let shares = [gains[0] / out.information, gains[1] / back.information];
+        let shares = [gains[0] / out.information(), gains[1] / back.information()];
         let gain = gains[0].max(gains[1]);
         let difference = gain * (residuals[1] - residuals[0]) / (shares[0] + shares[1]);
         back.offset += difference * shares[1];
@@ -213,7 +247,7 @@ impl Filter {
         let stepped = |v: &Verdict| *v == Verdict::Stepped;
         // The two directions of a stepped clock may be found out a row or a few apart.
         if verdicts.iter().any(stepped) {
-            if self.two_way && self.directions.iter().any(Direction::suspects_step) {
+            if self.pace.two_way && self.directions.iter().any(Direction::suspects_step) {
                 return Outcome::Outlier;
             }
             let found = self
@@ -223,7 +257,7 @@ impl Filter {
                 .filter(|(_, v)| stepped(v));
             found.for_each(|(direction, _)| direction.follow_step());
         }
-        let settling = self.two_way && self.directions.iter().any(Direction::is_settling);
+        let settling = self.pace.two_way && self.directions.iter().any(Direction::is_settling);
         if verdicts.iter().all(stepped) || (settling && verdicts.iter().any(stepped)) {
             self.directions
                 .iter_mut()
@@ -246,7 +280,7 @@ impl Filter {
 
     /// Where the other direction still measures the clock, the changed one finds its offset.
     fn settle_changed(&mut self, changed: impl Iterator<Item = bool>) {
-        if self.two_way {
+        if self.pace.two_way {
             let lone = self
                 .directions
                 .iter_mut()
@@ -257,31 +291,37 @@ impl Filter {
     }
 
     /// Upkeep that looks at the drift: structure function, average weights, dead modes.
-    fn watch_drift(&mut self, dt: f64) {
-        let mixture = self.latest;
+    fn watch_drift(&mut self, mixture: &Mixture, dt: f64) {
         let belief = Belief {
-            t_s: self.t_s,
+            t_s: self.latest.t_s,
             y: mixture.y,
             d: mixture.d,
             yy: mixture.yy,
         };
         self.structure.take(belief);
-        let gain = (dt / WEIGHT_MEMORY_S).min(1.0);
-        for (average, weight) in self.average_weights.iter_mut().zip(self.bank.weights()) {
-            *average += gain * (weight - *average);
+        self.pace.since_average_s += dt as f32;
+        if self.pace.since_average_s >= AVERAGE_STEP_S {
+            self.average_weights();
         }
-        self.since_reseed_s += dt;
-        let idle = self.since_reseed_s >= RESEED_S;
+        self.pace.since_reseed_s += dt as f32;
+        let idle = self.pace.since_reseed_s >= RESEED_S;
         if idle {
-            self.since_reseed_s = 0.0;
+            self.pace.since_reseed_s = 0.0;
         }
-        self.reseed(&mixture, idle);
+        self.reseed(mixture, idle);
+    }
+
+    fn average_weights(&mut self) {
+        let gain = (self.pace.since_average_s / WEIGHT_MEMORY_S).min(1.0);
+        self.pace.since_average_s = 0.0;
+        for (average, weight) in self.average_weights.iter_mut().zip(self.bank.weights()) {
+            *average += gain * (weight as f32 - *average);
+        }
     }
 
     /// A mode of no weight that has strayed, or has been idle long, begins from the mixture.
     fn reseed(&mut self, mixture: &Mixture, idle: bool) {
-        for j in 0..MODES {
-            let weight = self.bank.weights()[j];
+        for (j, weight) in self.bank.weights().into_iter().enumerate() {
             if j == JUMP || weight >= 1e-3 {
                 continue;
             }
@@ -305,7 +345,7 @@ impl Filter {
     fn mixed_covariance(&self, m: &Mixture) -> f64 {
         let mut total = 0.0;
         let mut xy = 0.0;
-        for (j, &w) in self.bank.weights().iter().enumerate() {
+        for (j, w) in self.bank.weights().into_iter().enumerate() {
             let walk = self.bank.walk(j);
             xy += w * (walk.xy + (walk.x - m.x) * (walk.y - m.y));
             total += w;
@@ -315,24 +355,24 @@ impl Filter {
 
     /// Follows a jump of the drift once the jump mode explains nearly everything.
     fn jumped(&mut self) -> bool {
-        if self.rows_since_event < JUMP_ROWS || self.bank.weights()[JUMP] <= 0.9 {
-            self.jump_held = 0;
+        if self.pace.rows_since_event < JUMP_ROWS || self.bank.weights()[JUMP] <= 0.9 {
+            self.pace.jump_held = 0;
             return false;
         }
-        self.jump_held += 1;
-        if self.jump_held < JUMP_HOLD {
+        self.pace.jump_held += 1;
+        if self.pace.jump_held < JUMP_HOLD {
             return false;
         }
-        self.jump_held = 0;
+        self.pace.jump_held = 0;
         let mut weights = PRIOR;
         for (weight, average) in weights.iter_mut().zip(self.average_weights) {
-            *weight = 0.3 * *weight + 0.7 * average;
+            *weight = 0.3 * *weight + 0.7 * f64::from(average);
         }
         weights[JUMP] = PRIOR[JUMP];
         self.bank.follow_jump(weights);
-        self.average_weights = weights;
+        self.average_weights = weights.map(|w| w as f32);
         self.structure.interrupt();
-        self.rows_since_event = 0;
+        self.pace.rows_since_event = 0;
         true
     }
 }

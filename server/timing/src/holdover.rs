@@ -21,6 +21,8 @@ pub(crate) struct Belief {
 /// Mean square of the extrapolation error at each lag of [`LAGS_S`].
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub(crate) struct Structure {
+    /// When there is something to do again, s; nought as long as a comparison is to begin.
+    due_s: f64,
     scale: f64,
     since: [Option<Belief>; 6],
     means: [f64; 6],
@@ -31,6 +33,7 @@ impl Structure {
     /// Nothing measured; `scale` is the oscillator's factor on the prior.
     pub(crate) fn new(scale: f64) -> Self {
         Structure {
+            due_s: 0.0,
             scale,
             since: [None; 6],
             means: [0.0; 6],
@@ -40,6 +43,9 @@ impl Structure {
 
     /// Takes what is believed now; compares it with what was believed a lag ago.
     pub(crate) fn take(&mut self, now: Belief) {
+        if now.t_s < self.due_s {
+            return;
+        }
         for (k, lag) in LAGS_S.into_iter().enumerate() {
             let Some(past) = self.since[k] else {
                 self.begin(k, now);
@@ -59,6 +65,16 @@ impl Structure {
             self.since[k] = None;
             self.begin(k, now);
         }
+        self.due_s = self.next_due();
+    }
+
+    fn next_due(&self) -> f64 {
+        let due = self
+            .since
+            .iter()
+            .zip(LAGS_S)
+            .map(|(since, lag)| since.as_ref().map_or(0.0, |past| past.t_s + lag));
+        due.fold(f64::INFINITY, f64::min)
     }
 
     /// Beliefs worse than what they are to measure would only measure themselves.
@@ -71,6 +87,7 @@ impl Structure {
     /// Forgets pending comparisons, as after a jump of the drift.
     pub(crate) fn interrupt(&mut self) {
         self.since = [None; 6];
+        self.due_s = 0.0;
     }
 
     /// Factor on the prior at lag `k`, measured and prior counts together.

@@ -93,7 +93,7 @@ impl Intake {
                 | Origin::Frequency { reference_ns },
             ) => reference_ns,
         };
-        (at_reference_ns as i128 - origin_ns as i128) as f64 * 1e-9
+        to_f64(at_reference_ns as i128 - origin_ns as i128) * 1e-9
     }
 
     /// Tick of the counter, or of the timestamps, µs.
@@ -240,21 +240,21 @@ impl Intake {
         );
         let elapsed_ns = reference_ns as i128 - anchor.reference_ns as i128;
         let foretold =
-            elapsed_ns as f64 * 1e-9 * (numer as f64 / denom as f64) * (1.0 + drift * 1e-6);
+            to_f64(elapsed_ns) * 1e-9 * (numer as f64 / denom as f64) * (1.0 + drift * 1e-6);
         let modulus = 1_i128 << bits;
-        let gained = (count as i128 - anchor.count as i128).rem_euclid(modulus);
-        let wraps = (foretold as i128 - gained + modulus / 2).div_euclid(modulus);
-        let ticks = anchor.ticks + gained + wraps * modulus;
+        let gained = (count as i128 - anchor.count as i128) & (modulus - 1);
+        let wraps = (foretold as i128 - gained + modulus / 2) >> bits;
+        let ticks = anchor.ticks + gained + (wraps << bits);
         *latest = Anchor {
             count,
             ticks,
             reference_ns,
         };
-        let scaled = ticks * denom;
-        let (seconds, rest) = (scaled.div_euclid(numer), scaled.rem_euclid(numer));
-        let clock_ps = seconds * 1_000_000_000_000 + rest * 1_000_000_000_000 / numer;
+        let (seconds, rest) = divided(ticks * denom, numer);
+        let (picoseconds, _) = divided(rest * 1_000_000_000_000, numer);
+        let clock_ps = seconds * 1_000_000_000_000 + picoseconds;
         let reference_ps = (reference_ns as i128 - *first_ns as i128) * 1000;
-        (clock_ps - reference_ps) as f64 * 1e-6
+        to_f64(clock_ps - reference_ps) * 1e-6
     }
 
     /// Clock minus reference going out and coming back, µs, both referred to t3.
@@ -275,10 +275,26 @@ impl Intake {
         let difference = |clock: i64, reference: i64| {
             let clock = clock as i128 - clock_ns;
             let reference = reference as i128 - reference_ns as i128;
-            (clock - reference) as f64 * 1e-3
+            to_f64(clock - reference) * 1e-3
         };
-        let held_s = (t3 as i128 - t2 as i128) as f64 * 1e-9;
+        let held_s = to_f64(t3 as i128 - t2 as i128) * 1e-9;
         [difference(t1, t2) + drift * held_s, difference(t4, t3)]
+    }
+}
+
+/// The same number, by the processor's own instruction where 64 bits are enough.
+fn to_f64(value: i128) -> f64 {
+    match i64::try_from(value) {
+        Ok(small) => small as f64,
+        Err(_) => value as f64,
+    }
+}
+
+/// Euclidean quotient and rest, by the processor's own division where 64 bits are enough.
+fn divided(value: i128, by: i128) -> (i128, i128) {
+    match (i64::try_from(value), i64::try_from(by)) {
+        (Ok(value), Ok(by)) => (value.div_euclid(by).into(), value.rem_euclid(by).into()),
+        _ => (value.div_euclid(by), value.rem_euclid(by)),
     }
 }
 

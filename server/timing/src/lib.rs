@@ -74,6 +74,7 @@ mod direction;
 mod drift_filter;
 mod erfcx_table;
 mod estimate;
+mod exponential;
 mod filter;
 mod forecast;
 mod growth;

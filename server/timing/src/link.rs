@@ -47,10 +47,10 @@ pub struct Link {
     intake: Intake,
     stage: Stage,
     lock: Lock,
-    mean_interval_s: f64,
+    mean_interval_s: f32,
     rows_used: u64,
     /// Rows since the link began, or began anew.
-    rows_since_start: u64,
+    rows_since_start: u16,
     outliers: u64,
     history: History,
 }
@@ -119,7 +119,7 @@ impl Link {
             Outcome::Outlier => self.outliers += 1,
             _ => {
                 self.rows_used += 1;
-                self.rows_since_start += 1;
+                self.rows_since_start = self.rows_since_start.saturating_add(1);
                 self.intake.confirm();
             }
         }
@@ -206,7 +206,7 @@ impl Link {
 
     /// No reading for longer than max(20 s, 6 usual intervals).
     fn is_gap(&self, since_s: f64) -> bool {
-        self.rows_used > 1 && since_s > (6.0 * self.mean_interval_s).max(20.0)
+        self.rows_used > 1 && since_s > (6.0 * f64::from(self.mean_interval_s)).max(20.0)
     }
 
     fn keep_interval(&mut self, interval_s: f64, in_gap: bool) {
@@ -218,7 +218,7 @@ impl Link {
         } else {
             1.0
         };
-        self.mean_interval_s += gain * (interval_s - self.mean_interval_s);
+        self.mean_interval_s += gain * (interval_s as f32 - self.mean_interval_s);
     }
 
     /// Step of what the probe reads, µs.
@@ -298,7 +298,7 @@ impl Link {
     fn drift_ppm(&self) -> f64 {
         match &self.stage {
             Stage::Starting { start, .. } => start.line(self.quantum_us()).y,
-            Stage::Phase { filter, .. } => filter.latest().y,
+            Stage::Phase { filter, .. } => filter.latest.y,
             Stage::Drift(filter) => filter.bank().mixture().y,
         }
     }
@@ -307,7 +307,7 @@ impl Link {
     fn quick_half_width(&self) -> f64 {
         let variance = match &self.stage {
             Stage::Starting { start, .. } => start.line(self.quantum_us()).yy,
-            Stage::Phase { filter, .. } => filter.latest().yy,
+            Stage::Phase { filter, .. } => filter.latest.yy,
             Stage::Drift(filter) => filter.bank().mixture().yy,
         };
         1e-6 * WIDEN * normal_half_width(variance.sqrt())
@@ -336,7 +336,9 @@ impl Link {
                     growth,
                 }
             }
-            Stage::Phase { filter, .. } => filter.predict((now_s - filter.t_s).max(0.0), in_gap),
+            Stage::Phase { filter, .. } => {
+                filter.predict((now_s - filter.latest.t_s).max(0.0), in_gap)
+            }
             Stage::Drift(filter) => filter.predict(now_s, in_gap),
         }
     }
@@ -346,7 +348,7 @@ impl Link {
         let age_s = match &self.stage {
             _ if !in_gap => 0.0,
             Stage::Starting { .. } => 0.0,
-            Stage::Phase { filter, .. } => (now_s - filter.t_s).max(0.0),
+            Stage::Phase { filter, .. } => (now_s - filter.latest.t_s).max(0.0),
             Stage::Drift(filter) => filter.age_s(now_s),
         };
         let drift_var = (p.variance - p.growth.variance(age_s)).max(0.0);
@@ -372,17 +374,17 @@ impl Link {
     }
 }
 
-/// Bytes of state of a one-way and of a two-way link that the arithmetic of every measurement
-/// goes through: modes, and noise and what is learned of it for each direction. Second, the
-/// bytes besides, for each direction, that gather evidence of events.
+/// Bytes of state that every measurement of a one-way and of a two-way link reads or writes:
+/// modes, noise with what is learned of it, evidence of events, the block under way, counters
+/// and states. Second, the bytes by which exact integers are checked and unwrapped besides.
 pub fn hot_state_bytes() -> ([usize; 2], usize) {
-    use crate::{bank::Bank, direction::Direction, learner::Learner, noise::Noise};
-    let noise = size_of::<Noise>() + size_of::<Learner>();
-    let bank = size_of::<Bank>();
-    (
-        [bank + noise, bank + 2 * noise],
-        size_of::<Direction>() - noise,
-    )
+    use crate::{bank::Bank, blocks::Block, direction::Direction};
+    let counters = size_of::<f32>() + size_of::<u64>() + size_of::<u16>();
+    let states = size_of::<Lock>() + size_of::<State>();
+    let filter = size_of::<Bank>() + size_of::<Direction>() + Filter::PACE_BYTES;
+    let one_way = filter + counters + states;
+    let two_way = one_way + size_of::<Direction>() + size_of::<Option<Block>>();
+    ([one_way, two_way], size_of::<Intake>())
 }
 
 fn variance(deviation: f64) -> f64 {

@@ -7,7 +7,7 @@ use crate::estimate::{Reason, State};
 /// Half-width within which a clock is no longer free-running, dimensionless.
 pub(crate) const ACQUIRE_HALF_WIDTH: f64 = 1e-5;
 /// Rows before a lock can be.
-pub(crate) const LOCK_ROWS: u64 = 64;
+pub(crate) const LOCK_ROWS: u16 = 64;
 /// A threshold is entered at this fraction of itself…
 pub(crate) const ENTER: f64 = 1.0 / 1.3;
 /// …held for this many rows, because "first crossed" claims are optimistic…
@@ -51,7 +51,7 @@ impl Gate {
 
 impl Lock {
     /// Takes the half-width after a row.
-    pub(crate) fn update(&mut self, half_width: f64, threshold: f64, rows: u64) {
+    pub(crate) fn update(&mut self, half_width: f64, threshold: f64, rows: u16) {
         self.acquired
             .update(half_width, ACQUIRE_HALF_WIDTH.max(threshold), true);
         let was_locked = self.locked.inside;

@@ -63,6 +63,14 @@ pub(crate) fn slope_reach(dt: f64) -> f64 {
     libm::sin(a) / DAILY
 }
 
+const THIRD: f64 = 1.0 / 3.0;
+
+/// Curvature of a score as far as it leaves a variance `xx` above nought.
+#[inline]
+fn possible(curve: f64, xx: f64) -> f64 {
+    if curve * xx < -1.0 { -1.0 / xx } else { curve }
+}
+
 fn decay(a: f64) -> f64 {
     if a < 1e-3 {
         return 1.0 - a * (1.0 - a * (0.5 - a / 6.0));
@@ -87,7 +95,7 @@ impl Walk {
         let dt = step.dt;
         let q2 = noise.q2.max(step.least_q2);
         self.x += dt * self.y;
-        self.xx += dt * (2.0 * self.xy + dt * self.yy) + dt * (noise.q1 + q2 * dt * dt / 3.0);
+        self.xx += dt * (2.0 * self.xy + dt * self.yy) + dt * (noise.q1 + THIRD * q2 * dt * dt);
         self.xy += dt * self.yy + 0.5 * q2 * dt * dt;
         self.yy += q2 * dt;
     }
@@ -95,7 +103,7 @@ impl Walk {
     /// Corrects by a phase score: `pull` = −s·ℓ′/λ and `curve` = ℓ″/λ, along P's x-column.
     #[inline]
     pub(crate) fn correct(&mut self, pull: f64, curve: f64) {
-        let c = curve.max(-1.0 / self.xx);
+        let c = possible(curve, self.xx);
         let (kx, ky) = (self.xx, self.xy);
         self.x += kx * pull;
         self.y += ky * pull;
@@ -137,11 +145,11 @@ impl Slope {
         let ry2 = self.yd + c * self.dd;
         let q3 = if a < 3600.0 { noise.q3 } else { 0.0 };
         let a2 = a * a;
-        w.xx = rx0 + a * rx1 + b * rx2 + a * (noise.walk.q1 + a2 * (q2 / 3.0 + q3 * a2 / 20.0));
+        w.xx = rx0 + a * rx1 + b * rx2 + a * (noise.walk.q1 + a2 * (THIRD * q2 + 0.05 * q3 * a2));
         w.xy = rx1 + c * rx2 + a2 * (0.5 * q2 + q3 * a2 / 8.0);
-        w.yy = ry1 + c * ry2 + a * (q2 + q3 * a2 / 3.0);
-        self.xd = fade * rx2 + 0.99 * q3 * a2 * a / 6.0;
-        self.yd = fade * ry2 + 0.99 * q3 * a2 / 2.0;
+        w.yy = ry1 + c * ry2 + a * (q2 + THIRD * q3 * a2);
+        self.xd = fade * rx2 + 0.165 * q3 * a2 * a;
+        self.yd = fade * ry2 + 0.495 * q3 * a2;
         self.dd = fade * fade * self.dd + (1.0 - fade * fade) * settled;
         self.d *= fade;
     }
@@ -149,7 +157,7 @@ impl Slope {
     /// Corrects by a phase score, as [`Walk::correct`].
     #[inline]
     pub(crate) fn correct(&mut self, pull: f64, curve: f64) {
-        let c = curve.max(-1.0 / self.walk.xx);
+        let c = possible(curve, self.walk.xx);
         let (kx, ky, kd) = (self.walk.xx, self.walk.xy, self.xd);
         self.walk.correct(pull, c);
         self.d += kd * pull;

@@ -9,6 +9,7 @@
 
 use serde::{Deserialize, Serialize};
 
+use crate::exponential::exp;
 use crate::normal::erfcx;
 
 const FRAC_1_SQRT_TAU: f64 = 0.398_942_280_401_432_7;
@@ -19,7 +20,7 @@ const FLAT: f64 = 0.5e-6;
 const CORE: f64 = 0.98;
 
 /// Parameters of the error density of one direction.
-#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+#[derive(Clone, Copy, Debug)]
 pub(crate) struct Noise {
     /// Deviation of the normal part, µs.
     pub(crate) sigma: f64,
@@ -29,6 +30,31 @@ pub(crate) struct Noise {
     pub(crate) weights: [f64; 3],
     /// Weight of the flat part.
     pub(crate) flat: f64,
+}
+
+/// A density as it is kept between rows: σ, both τ, the weights of tails and flat part; that of
+/// the normal part is what they leave.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub(crate) struct PackedNoise([f32; 6]);
+
+impl From<&Noise> for PackedNoise {
+    fn from(n: &Noise) -> Self {
+        let [_, first, second] = n.weights;
+        let figures = [n.sigma, n.tau[0], n.tau[1], first, second, n.flat];
+        PackedNoise(figures.map(|figure| figure as f32))
+    }
+}
+
+impl PackedNoise {
+    pub(crate) fn unpacked(&self) -> Noise {
+        let [sigma, short, long, first, second, flat] = self.0.map(f64::from);
+        Noise {
+            sigma,
+            tau: [short, long],
+            weights: [1.0 - first - second - flat, first, second],
+            flat,
+        }
+    }
 }
 
 /// Log density and its first two derivatives in e.
@@ -63,25 +89,26 @@ struct Tail {
 
 #[inline]
 fn tail(e: f64, s: f64, tau: f64, kernel: f64) -> Tail {
-    let u = e / s - s / tau;
+    let rate = 1.0 / tau;
+    let u = e / s - s * rate;
     if u < 0.0 {
         let scaled = erfcx(-u * FRAC_1_SQRT_2);
-        let density = 0.5 / tau * kernel * scaled;
+        let density = 0.5 * rate * kernel * scaled;
         return Tail {
             density,
             ratio: 2.0 * FRAC_1_SQRT_TAU / scaled,
             u,
         };
     }
-    let q = libm::exp(-0.5 * u * u);
+    let q = exp(-0.5 * u * u);
     let cdf = 1.0 - 0.5 * q * erfcx(u * FRAC_1_SQRT_2);
     let exponential = if q > 1e-100 && kernel > 1e-100 {
         kernel / q
     } else {
-        libm::exp(0.5 * s * s / (tau * tau) - e / tau)
+        exp((0.5 * s * s * rate - e) * rate)
     };
     Tail {
-        density: exponential * cdf / tau,
+        density: exponential * cdf * rate,
         ratio: FRAC_1_SQRT_TAU * q / cdf,
         u,
     }
@@ -118,10 +145,10 @@ impl Noise {
         let variance = self.sigma * self.sigma + p;
         let s = variance.sqrt();
         let inverse = 1.0 / variance;
-        let kernel = libm::exp(-0.5 * e * e * inverse);
+        let kernel = exp(-0.5 * e * e * inverse);
         let reach = self.reach();
         let wide_inverse = 1.0 / (reach * reach + p);
-        let wide_kernel = libm::exp(-0.5 * e * e * wide_inverse);
+        let wide_kernel = exp(-0.5 * e * e * wide_inverse);
         let tails = [
             tail(e, s, self.tau[0], kernel),
             tail(e, s, self.tau[1], kernel),
@@ -134,7 +161,8 @@ impl Noise {
             self.flat * FLAT,
         ];
         let total: f64 = parts.iter().sum();
-        let shares = parts.map(|part| part / total);
+        let whole = 1.0 / total;
+        let shares = parts.map(|part| part * whole);
         let slope = [
             -e * inverse,
             tails[0].ratio / s - 1.0 / self.tau[0],
@@ -182,12 +210,12 @@ impl Noise {
         let (mut own, mut reference, mut information) = (0.0, 0.0, 0.0);
         for i in 0..NODES {
             let v = v_min + step * i as f64;
-            let grown = libm::exp(v);
+            let grown = exp(v);
             let (sinh, cosh) = (0.5 * (grown - 1.0 / grown), 0.5 * (grown + 1.0 / grown));
             let e = self.sigma * sinh;
             let old = self.score(e, p);
             let new = truth.score(e, p);
-            let mass = libm::exp(new.log) * cosh;
+            let mass = exp(new.log) * cosh;
             own += mass * old.first;
             reference += mass * new.first;
             information -= mass * old.second;

@@ -1,6 +1,7 @@
 //! From the filter's state to an interval of the drift at any later time.
 
 use crate::bank::MODES;
+use crate::exponential::exp;
 use crate::filter::Filter;
 use crate::growth::Growth;
 use crate::mode::slope_reach;
@@ -53,8 +54,7 @@ impl Filter {
         };
         let mut xs = [(0.0, 0.0); MODES];
         let mut total = 0.0;
-        for j in 0..MODES {
-            let weight = self.bank.weights()[j];
+        for (j, weight) in self.bank.weights().into_iter().enumerate() {
             if weight < LEAST_WEIGHT {
                 continue;
             }
@@ -144,7 +144,7 @@ fn held_within(parts: &[Component], mean: f64, h: f64) -> (f64, f64) {
 }
 
 fn density_of(u: f64) -> f64 {
-    0.398_942_280_401_432_7 * libm::exp(-0.5 * u * u)
+    0.398_942_280_401_432_7 * exp(-0.5 * u * u)
 }
 
 #[cfg(test)]
