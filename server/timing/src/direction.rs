@@ -13,6 +13,8 @@ pub(crate) struct Direction {
     sign: i8,
     /// Rows for which the offset is sought before the direction measures the clock again.
     settling: u8,
+    /// Outliers in a row that agree with each other.
+    agreeing: u8,
     /// Rows since the offset was set anew.
     age: u16,
     /// Average information of a row, 1/µs².
@@ -22,14 +24,15 @@ pub(crate) struct Direction {
     noise: PackedNoise,
     learner: Learner,
     correlation: Correlation,
-    step: StepEvidence,
+    /// The least of the agreeing outliers, µs: after a reset as large as a counter's range.
+    least_outlier: f64,
     route: RouteEvidence,
     /// Probability that the next row falls into a burst of queueing.
     burst: f32,
 }
 
 /// Agreeing outliers that are a step.
-const STEP_ROWS: u16 = 5;
+const STEP_ROWS: u8 = 5;
 /// Rows that find the offset of a changed route.
 const SETTLING_ROWS: u8 = 8;
 /// Chance that a row begins a burst, and that a row ends one.
@@ -56,13 +59,6 @@ struct Correlation {
     variance: f32,
     lagged: f32,
     last: f32,
-}
-
-#[derive(Clone, Copy, Debug, Default, PartialEq, Serialize, Deserialize)]
-struct StepEvidence {
-    mean: f32,
-    least: f32,
-    count: u16,
 }
 
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
@@ -103,7 +99,8 @@ impl Direction {
             learner: Learner::new(&guess.noise),
             correlation: Correlation::default(),
             information: (1.0 / (guess.noise.sigma * guess.noise.sigma)) as f32,
-            step: StepEvidence::default(),
+            agreeing: 0,
+            least_outlier: 0.0,
             route: RouteEvidence {
                 late: 0,
                 least: 0.0,
@@ -223,7 +220,7 @@ impl Direction {
         if detail.shares[4] + wide > 0.5 {
             return self.outlying(e, p);
         }
-        self.step = StepEvidence::default();
+        self.agreeing = 0;
         self.late(e)
     }
 
@@ -234,19 +231,13 @@ impl Direction {
 
     fn outlying(&mut self, e: f64, p: f64) -> Verdict {
         let agreement = self.agreement(p);
-        let step = &mut self.step;
-        if step.count > 0 && (e - f64::from(step.mean)).abs() <= agreement {
-            step.count = step.count.saturating_add(1);
-            step.mean += (e as f32 - step.mean) / f32::from(step.count);
-            step.least = step.least.min(e as f32);
+        if self.agreeing > 0 && (e - self.least_outlier).abs() <= agreement {
+            self.agreeing = self.agreeing.saturating_add(1);
+            self.least_outlier = self.least_outlier.min(e);
         } else {
-            *step = StepEvidence {
-                count: 1,
-                mean: e as f32,
-                least: e as f32,
-            };
+            (self.agreeing, self.least_outlier) = (1, e);
         }
-        if step.count < STEP_ROWS {
+        if self.agreeing < STEP_ROWS {
             Verdict::Outlier
         } else {
             Verdict::Stepped
@@ -255,14 +246,14 @@ impl Direction {
 
     /// Whether a step is near to being certain, so that the other direction may wait for it.
     pub(crate) fn suspects_step(&self) -> bool {
-        (STEP_ROWS - 2..STEP_ROWS).contains(&self.step.count)
+        (STEP_ROWS - 2..STEP_ROWS).contains(&self.agreeing)
     }
 
     /// Moves the offset by the step that the outliers agree on: the least late of them is
     /// nearest to the error's location.
     pub(crate) fn follow_step(&mut self) {
-        self.offset += self.sign() * (f64::from(self.step.least) + 0.5 * self.noise().sigma);
-        self.step = StepEvidence::default();
+        self.offset += self.sign() * (self.least_outlier + 0.5 * self.noise().sigma);
+        self.agreeing = 0;
         self.route.late = 0;
     }
 
