@@ -160,4 +160,7 @@ pub struct CrossingStatus {
     pub setting: Option<Setting>,
     /// Settings made so far.
     pub settings_made: u64,
+    /// What the newest setting is off by now: its average over the target, minus 1; positive
+    /// fills the sink's buffer; 0 if there is none.
+    pub residual: f64,
 }

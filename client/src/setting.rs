@@ -14,11 +14,12 @@ pub struct Setting {
     pub crossing: Id,
     /// Its place among the settings of the crossing.
     pub number: SettingNumber,
-    /// The ratio to hold on the long run, exact.
+    /// The ratio to hold on the long run, exact. A resampler that runs one ratio only may have to
+    /// make do with the nearest to it.
     pub wanted: Fraction,
     /// What to run.
     pub realised: Realised,
-    /// wanted / target − 1 at the decision; positive fills the sink's buffer.
+    /// What is run over the target, minus 1, at the decision; positive fills the sink's buffer.
     pub residual: f64,
     /// What proves the choice.
     pub proof: Proof,

@@ -1,12 +1,12 @@
 //! Checking a setting before anyone runs it.
 //!
 //! Two things are checked, by a handful of multiplications: that what is to be run stays within
-//! the bounds of the crossing's filter bank and averages the wanted ratio, and that the
-//! certificate proves what it says. The theorems are in [`ratewright_ratio`].
+//! the bounds of the crossing's filter bank and averages the wanted ratio, or comes as near to it
+//! as one ratio can, and that the certificate proves what it says. The theorems are in
+//! [`ratewright_ratio`].
 
 use ratewright_ratio::{
-    Bounds, Bracket, Cadence, Certificate, CertificateError, Claim, Exact, Fraction, Node, Side,
-    exact, target_from_f64,
+    Bounds, Bracket, Cadence, Certificate, CertificateError, Claim, Fraction, Node, Side, exact,
 };
 use thiserror::Error;
 
@@ -25,19 +25,13 @@ pub enum VerifyError {
         /// Largest M.
         max_m: u64,
     },
-    /// One ratio that is not the wanted one.
+    /// One ratio that is not the wanted one, without the proof that it is the nearest.
     #[error("it runs {run}, but {wanted} is wanted")]
     NotWanted {
         /// What would be run.
         run: Fraction,
         /// What is wanted.
         wanted: Fraction,
-    },
-    /// The evidence's target is not a positive number.
-    #[error("the target of its evidence is {target}, which is not a positive number")]
-    Target {
-        /// The target.
-        target: f64,
     },
     /// The certificate does not prove the choice.
     #[error("its certificate fails: {0}")]
@@ -60,59 +54,54 @@ impl Setting {
         match &self.realised {
             Realised::Single(ratio) => {
                 within(ratio, bounds)?;
-                if *ratio != self.wanted {
-                    return Err(VerifyError::NotWanted {
-                        run: *ratio,
-                        wanted: self.wanted,
-                    });
-                }
+                self.verify_single(*ratio, bounds)
             }
-            Realised::Cadence(cadence) => verify_pair(cadence, bounds)?,
+            Realised::Cadence(cadence) => {
+                verify_pair(cadence, bounds)?;
+                self.verify_shown_pair(cadence)
+            }
         }
-        self.verify_proof(bounds)
     }
 
-    fn verify_proof(&self, bounds: &Bounds) -> Result<(), VerifyError> {
+    fn verify_single(&self, run: Fraction, bounds: &Bounds) -> Result<(), VerifyError> {
         match &self.proof {
             Proof::Nearest(bracket) => {
                 let claim = Claim::Nearest {
-                    ratio: self.wanted,
-                    target: &self.target()?,
+                    ratio: run,
+                    target: &exact(&self.wanted),
                     region: bounds.into(),
                     side: Side::Either,
                 };
-                Certificate::Nearest(*bracket).verify(&claim)?;
+                return Ok(Certificate::Nearest(*bracket).verify(&claim)?);
             }
             Proof::Simplest { interval, parents } => {
-                let claim = Claim::Simplest {
-                    fraction: self.wanted,
-                    interval,
-                };
+                let fraction = self.wanted;
+                let claim = Claim::Simplest { fraction, interval };
                 Certificate::Simplest(*parents).verify(&claim)?;
             }
-            Proof::Neighbours(bracket) => {
-                // That the cadence's own ratios are neighbours was checked with the realisation.
-                let Realised::Cadence(cadence) = &self.realised else {
-                    return Err(CertificateError::WrongKind.into());
-                };
-                if *bracket != ends(cadence) {
-                    let claimed = Node::from(&cadence.low());
-                    return Err(CertificateError::OtherAnswer { claimed }.into());
-                }
-            }
+            Proof::Neighbours(_) => return Err(CertificateError::WrongKind.into()),
             Proof::Uncertified(_) => {}
         }
-        Ok(())
+        let wanted = self.wanted;
+        if run == wanted {
+            Ok(())
+        } else {
+            Err(VerifyError::NotWanted { run, wanted })
+        }
     }
 
-    /// The target that `wanted` is nearest to. A double cannot hold most nominal ratios, so a
-    /// residual of 0 stands for the wanted ratio itself.
-    fn target(&self) -> Result<Exact, VerifyError> {
-        if self.residual == 0.0 {
-            return Ok(exact(&self.wanted));
+    /// That the cadence's own ratios are neighbours was checked already; here, that the
+    /// certificate speaks of them.
+    fn verify_shown_pair(&self, cadence: &Cadence) -> Result<(), VerifyError> {
+        match &self.proof {
+            Proof::Neighbours(bracket) if *bracket == ends(cadence) => Ok(()),
+            Proof::Neighbours(_) => {
+                let claimed = Node::from(&cadence.low());
+                Err(CertificateError::OtherAnswer { claimed }.into())
+            }
+            Proof::Nearest(_) | Proof::Simplest { .. } => Err(CertificateError::WrongKind.into()),
+            Proof::Uncertified(_) => Ok(()),
         }
-        let target = self.evidence.target;
-        target_from_f64(target).map_err(|_| VerifyError::Target { target })
     }
 }
 

@@ -93,18 +93,16 @@ async fn a_setting_whose_certificate_fails_is_refused_and_the_next_good_one_come
     // The bracket of another target.
     let mut other_proof = good((1, 2), 1.0884);
     other_proof.certificate = good((1, 2), 0.5001).certificate;
-    // A ratio that is good, but not the nearest.
+    // A ratio that is good, but not the nearest to what is wanted.
     let mut not_nearest = good((1, 3), 1.0884);
-    not_nearest.wanted = Some(v1::Fraction {
-        numerator: "12".into(),
-        denominator: "11".into(),
-    });
     not_nearest.realisation = Some(Realisation::Single(v1::Ratio { l: 12, m: 11 }));
     // Nearest within wider bounds than the crossing's: the bank does not hold it.
     let wide = nearest_setting("hall-to-van", (1, 4), 1.088_443_7, (2048, 2048));
-    // Runs something else than is wanted.
+    // Runs something else than is wanted, without a proof that nothing is nearer.
     let mut runs_other = good((1, 5), 1.0884);
-    runs_other.realisation = Some(Realisation::Single(v1::Ratio { l: 1, m: 1 }));
+    runs_other.certificate = Some(v1::Certificate {
+        proof: Some(Proof::Uncertified("no reason".into())),
+    });
     // A cadence whose counts do not average what is wanted.
     let wanted = Fraction::new(100_001, 100_000);
     let mut miscounted = cadence_setting("hall-to-van", (1, 6), wanted, BOUNDS);

@@ -55,6 +55,7 @@ pub(crate) fn crossing(crossing: &Crossing) -> Value {
         "target": status.target,
         "target_low": status.target_low,
         "target_high": status.target_high,
+        "residual_ppb": status.residual * 1e9,
         "phase_error_samples": status.phase_error_samples,
         "phase_deviation_samples": status.phase_deviation_samples,
         "seconds_to_slip": status.seconds_to_slip,

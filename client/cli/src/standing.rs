@@ -67,7 +67,7 @@ fn crossing_row(crossing: &Crossing) -> Vec<String> {
         Some(setting) => (
             setting.number.to_string(),
             show::realised(&setting.realised),
-            show::offset(setting.residual),
+            show::offset(status.residual),
         ),
         None => ("none".to_owned(), String::new(), String::new()),
     };

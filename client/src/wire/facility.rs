@@ -160,6 +160,7 @@ impl TryFrom<v1::CrossingStatus> for CrossingStatus {
             seconds_to_slip: wire.seconds_to_slip,
             setting: wire.setting.map(TryInto::try_into).transpose()?,
             settings_made: wire.settings_made,
+            residual: wire.residual,
         })
     }
 }

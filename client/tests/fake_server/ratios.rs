@@ -4,7 +4,8 @@ use std::pin::Pin;
 
 use ratewright_proto::v1;
 use ratewright_ratio::{
-    Bounds, Bracket, Cadence, Certificate, Exact, Fraction, best, exact, residual, target_from_f64,
+    Bounds, Bracket, Cadence, Certificate, Exact, Fraction, MAX_BOUND, best, exact, residual,
+    target_from_f64,
 };
 use tokio::sync::broadcast::error::RecvError;
 use tokio::sync::mpsc;
@@ -73,7 +74,7 @@ fn setting(
     }
 }
 
-/// A good setting: the nearest ratio to `target` within `max_l`/`max_m`.
+/// A good setting: the nearest ratio within `max_l`/`max_m` to a wanted one, which is finer.
 pub(crate) fn nearest_setting(
     crossing: &str,
     number: (u64, u64),
@@ -82,7 +83,9 @@ pub(crate) fn nearest_setting(
 ) -> v1::Setting {
     let bounds = Bounds::new(max_l, max_m).expect("bounds");
     let exact_target = target_from_f64(target).expect("a target");
-    let answer = best(&exact_target, &bounds);
+    let fine = Bounds::new(MAX_BOUND, MAX_BOUND).expect("the largest");
+    let wanted = best(&exact_target, &fine).ratio;
+    let answer = best(&exact(&wanted), &bounds);
     let Certificate::Nearest(bracket) = answer.certificate else {
         panic!("plain bounds are certified by a bracket");
     };
@@ -92,7 +95,7 @@ pub(crate) fn nearest_setting(
         certificate: Some(v1::Certificate {
             proof: Some(Proof::Nearest(ends(&bracket))),
         }),
-        ..setting(crossing, number, &answer.ratio, target, off)
+        ..setting(crossing, number, &wanted, target, off)
     }
 }
 

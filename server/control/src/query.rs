@@ -1,6 +1,7 @@
 //! Questions to the engine: they change nothing.
 
 use crate::engine::Engine;
+use crate::timeline::as_double;
 use crate::{ClockDeclaration, ClockEstimate, CrossingDeclaration, CrossingStatus, HouseNs, Id};
 
 impl Engine {
@@ -57,7 +58,7 @@ impl Engine {
             residual: record
                 .newest
                 .as_ref()
-                .map(|newest| newest.wanted_ratio() / ends.target.value - 1.0),
+                .map(|newest| as_double(&newest.average()) / ends.target.value - 1.0),
             phase_error_samples: outlook.phase,
             phase_deviation_samples: outlook.deviation(0.0),
             seconds_to_slip: slip,

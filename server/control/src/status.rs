@@ -31,7 +31,8 @@ pub struct CrossingStatus {
     pub target_low: f64,
     /// Upper end of the target's 95 % interval.
     pub target_high: f64,
-    /// What the newest setting is off by now: wanted / target − 1; positive fills the sink's
+    /// What the newest setting is off by now: its average over the target,
+    /// minus 1; positive fills the sink's
     /// buffer. ([`Setting::residual`] is what it was off by when it was decided.)
     pub residual: Option<f64>,
     /// Phase error, sink samples.

@@ -203,6 +203,7 @@ fn status_to_wire(view: &CrossingView) -> v1::CrossingStatus {
         seconds_to_slip: status.seconds_to_slip,
         setting: status.setting.as_ref().map(setting::setting_to_wire),
         settings_made: status.settings_made,
+        residual: status.residual.unwrap_or(0.0),
     }
 }
 

@@ -18,7 +18,7 @@
 //! | `ratewright_clock_readings_set_aside_total` | `clock` | readings set aside as outliers |
 //! | `ratewright_crossing_state` | `crossing`, `state` | 1 for the state it is in, else 0: `waiting`, `holding`, `degraded`, `out_of_bounds` |
 //! | `ratewright_crossing_target_ratio` | `crossing` | true sink rate over true source rate |
-//! | `ratewright_crossing_residual_ratio` | `crossing` | what is set over the target of its decision, minus 1 |
+//! | `ratewright_crossing_residual_ratio` | `crossing` | what is set over the target, minus 1 |
 //! | `ratewright_crossing_phase_error_samples` | `crossing` | phase error; positive fills a buffer after the resampler |
 //! | `ratewright_crossing_phase_deviation_samples` | `crossing` | its standard deviation |
 //! | `ratewright_crossing_headroom_samples` | `crossing` | hard limit of the phase error, both ways |

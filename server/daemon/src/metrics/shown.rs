@@ -152,8 +152,8 @@ fn crossings(page: &mut Page, views: &[Arc<CrossingView>]) {
     );
     each(
         "ratewright_crossing_residual_ratio",
-        "What is set over the target of its decision, minus 1.",
-        &|v| v.status.setting.as_ref().map(|setting| setting.residual),
+        "What is set over the target, minus 1.",
+        &|v| v.status.residual,
     );
     each(
         "ratewright_crossing_phase_error_samples",

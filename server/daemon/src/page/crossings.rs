@@ -73,8 +73,8 @@ fn row(view: &CrossingView) -> Markup {
             }
             td role="cell" data-head="Runs" { (setting(status.setting.as_ref())) }
             td role="cell" data-head="Residual, ppb" .number {
-                @match &status.setting {
-                    Some(setting) => (words::ppb(setting.residual)),
+                @match status.residual {
+                    Some(residual) => (words::ppb(residual)),
                     None => "\u{2014}",
                 }
             }

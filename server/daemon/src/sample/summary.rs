@@ -63,7 +63,7 @@ impl Snapshot<'_> {
             let (runs, off) = match &status.setting {
                 Some(setting) => (
                     runs(&setting.realised),
-                    format!("{:+.1}", setting.residual * 1e9),
+                    format!("{:+.1}", status.residual * 1e9),
                 ),
                 None => ("nothing yet".to_owned(), String::new()),
             };
