@@ -4,7 +4,7 @@ use std::io::Write;
 use std::process::{Command, Stdio};
 
 use num_rational::Ratio;
-use ratewright_ratio::{Bounds, Exact, Interval, neighbours, simplest};
+use ratewright_ratio::{Bounds, Exact, Interval, simplest};
 
 /// The chain of divisions of n/D, `steps` of them, and nothing else.
 #[inline(never)]
@@ -19,16 +19,30 @@ pub(crate) fn division_chain(target: &Exact, steps: u32) -> u64 {
     sum
 }
 
-/// Partial quotients the search looks at: those of the bracket's ends, and the one that is cut short.
+/// The same chain when nobody tells how long it is: it ends where the remainder is at most D/Q. Its last branch
+/// depends on the last division, so the processor mispredicts it and cannot hide that, as it can above.
+#[inline(never)]
+pub(crate) fn chain_with_end(target: &Exact, bounds: &Bounds) -> u64 {
+    let (mut n, mut d) = (*target.numer() as u64, *target.denom() as u64);
+    let last = d / bounds.max_m();
+    let mut sum = 0u64;
+    while d > last {
+        sum = sum.wrapping_add(n / d);
+        (n, d) = (d, n % d);
+    }
+    sum.wrapping_add(d)
+}
+
+/// Partial quotients a search has to look at: those of all convergents within bounds, and the one that leaves
+/// them, if there is one.
 pub(crate) fn steps_of_search(targets: &[Exact], bounds: &Bounds) -> Vec<u32> {
     let steps = |target: &Exact| {
-        let bracket = neighbours(target, bounds);
-        let (p, q) = (
-            bracket.below.l.min(bracket.above.l),
-            bracket.below.m.min(bracket.above.m),
-        );
-        // The smaller end is the last whole convergent.
-        partial_quotients(target, |l, m| (l, m) == (p, q)) + 1
+        let mut leaves = false;
+        partial_quotients(target, |l, m| {
+            // The step that leaves the bounds still counts; what follows does not.
+            leaves |= l > bounds.max_l() || m > bounds.max_m();
+            leaves
+        })
     };
     targets.iter().map(steps).collect()
 }
@@ -46,7 +60,7 @@ pub(crate) fn steps_of_simplest(intervals: &[Interval]) -> Vec<u32> {
 }
 
 /// How many partial quotients there are until a convergent satisfies `is_last`.
-fn partial_quotients(target: &Exact, is_last: impl Fn(u64, u64) -> bool) -> u32 {
+fn partial_quotients(target: &Exact, mut is_last: impl FnMut(u64, u64) -> bool) -> u32 {
     let (mut n, mut d) = (*target.numer(), *target.denom());
     let (mut old, mut new) = ((0u64, 1u64), (1u64, 0u64));
     let mut count = 0;

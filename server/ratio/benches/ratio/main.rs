@@ -43,6 +43,9 @@ fn nearest() {
                 Timing::new("floor: bare divisions", count, |i| {
                     baselines::division_chain(&targets[i], steps[i])
                 }),
+                Timing::new("divisions that find their own end", count, |i| {
+                    baselines::chain_with_end(&targets[i], black_box(&bounds))
+                }),
                 Timing::new("best, Q = 1024", count, |i| {
                     *best(&targets[i], black_box(&bounds)).ratio.numer()
                 }),
@@ -54,7 +57,7 @@ fn nearest() {
         match baselines::cpython(&targets) {
             Some(ns) => println!(
                 "    CPython limit_denominator(1024): {ns:.0} ns, {:.0} x best\n",
-                ns / times[1]
+                ns / times[2]
             ),
             None => println!("    CPython limit_denominator: no python3 here, not measured\n"),
         }
