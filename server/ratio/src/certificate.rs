@@ -291,7 +291,9 @@ fn narrow_nearest(bracket: &Bracket, ratio: &Fraction, target: &Exact, region: &
     // Then from_below·d + to_above·b = D, so both fit 64 bits.
     let low = (from_below as u64).wrapping_mul(d);
     let high = (to_above as u64).wrapping_mul(b);
-    let low_is_nearer = (low < high) | ((low == high) & ((b, a) < (d, c)));
+    // No short cuts: which end is nearer is as good as random.
+    let is_smaller = (b < d) | ((b == d) & (a < c));
+    let low_is_nearer = (low < high) | ((low == high) & is_smaller);
     let l = select_unpredictable(low_is_nearer, a, c);
     let m = select_unpredictable(low_is_nearer, b, d);
     is_bracket & (*ratio.numer() == l) & (*ratio.denom() == m)
