@@ -80,6 +80,53 @@ fn texts_are_as_approved() {
 }
 
 #[test]
+fn limits_of_other_kinds_are_as_approved() {
+    let rates = ["plan", "--from", "44.1k", "--to", "48k"];
+    let with = |more: &[&'static str]| [&rates[..], more].concat();
+    check("product.txt", &with(&["--max-product", "1000"]));
+    check(
+        "weighted.txt",
+        &with(&[
+            "--max-cost",
+            "300",
+            "--weight-m",
+            "3",
+            "--to-drift",
+            "10±1",
+            "--json",
+        ]),
+    );
+    check("multiple-of-l.txt", &with(&["--l-multiple-of", "320"]));
+    check(
+        "multiple-of-m.txt",
+        &with(&["--m-multiple-of", "48", "--json"]),
+    );
+    check("fixed-m.txt", &with(&["--fixed-m", "65536"]));
+    check(
+        "power-of-two.txt",
+        &with(&["--power-of-two-m", "--max-m", "65536"]),
+    );
+}
+
+#[test]
+fn wishes_are_as_approved() {
+    let rates = ["plan", "--from", "192k", "--to", "44.1k"];
+    let filter = ["--passband", "20k", "--attenuation", "120"];
+    check("stages.txt", &[&rates[..], &filter].concat());
+    let short = ["plan", "--from", "44.1k", "--to", "29.4k", "--json"];
+    let filter = ["--passband", "12.5k", "--attenuation", "90"];
+    check("stages-document.txt", &[&short[..], &filter].concat());
+    let target = ["plan", "--target", "1.0000373", "--max-m", "64"];
+    check(
+        "stepping.txt",
+        &[&target[..], &["--phases", "256"]].concat(),
+    );
+    let broadcast = ["plan", "--from", "44.1k", "--to", "48k"];
+    let ntsc = ["--frames", "30000/1001"];
+    check("frames.txt", &[&broadcast[..], &ntsc].concat());
+}
+
+#[test]
 fn mistakes_say_what_to_type_instead() {
     check("no-sink.txt", &["plan", "--from", "44.1k"]);
     check("bad-rate.txt", &["plan", "--from", "fast", "--to", "48k"]);
@@ -95,6 +142,36 @@ fn mistakes_say_what_to_type_instead() {
     check(
         "two-questions.txt",
         &["plan", "--target", "1", "--from", "44.1k", "--to", "48k"],
+    );
+    let one = |more: &[&'static str]| [&["plan", "--target", "1"], more].concat();
+    check(
+        "two-limits.txt",
+        &one(&["--fixed-m", "64", "--max-product", "1000"]),
+    );
+    check(
+        "replaced-bound.txt",
+        &one(&["--max-product", "1000", "--max-l", "32"]),
+    );
+    check(
+        "prime-and-multiple.txt",
+        &one(&["--l-multiple-of", "6", "--largest-prime", "7"]),
+    );
+    check("bad-multiple.txt", &one(&["--m-multiple-of", "2000"]));
+    check("bad-cost.txt", &one(&["--max-cost", "1"]));
+    check(
+        "no-rates.txt",
+        &one(&["--passband", "20k", "--attenuation", "100"]),
+    );
+    check("bad-phases.txt", &one(&["--phases", "0"]));
+    let rates = ["plan", "--from", "44.1k", "--to", "48k"];
+    let with = |more: &[&'static str]| [&rates[..], more].concat();
+    check(
+        "bad-passband.txt",
+        &with(&["--passband", "22.05k", "--attenuation", "100"]),
+    );
+    check(
+        "bad-attenuation.txt",
+        &with(&["--passband", "20k", "--attenuation", "20.9"]),
     );
 }
 
@@ -185,4 +262,105 @@ fn an_interval_gives_its_ends_and_its_simplest_ratio() {
         plan["interval"]["seconds_to_slip_at_worst"].is_null(),
         "no sink rate is known"
     );
+}
+
+/// What a limit allows is nearest among all it allows, and a cadence of it averages the target.
+#[test]
+fn limits_hold_and_their_nearest_is_the_nearest() {
+    type Kind = (&'static [&'static str], fn(u64, u64) -> bool);
+    let kinds: [Kind; 6] = [
+        (&["--max-product", "3000"], |l, m| l * m <= 3_000),
+        (
+            &["--max-cost", "200", "--weight-l", "2", "--weight-m", "1"],
+            |l, m| 2 * l + m <= 200,
+        ),
+        (
+            &["--l-multiple-of", "6", "--max-l", "90", "--max-m", "99"],
+            |l, m| l % 6 == 0 && l <= 90 && m <= 99,
+        ),
+        (
+            &["--m-multiple-of", "8", "--max-l", "90", "--max-m", "99"],
+            |l, m| m % 8 == 0 && l <= 90 && m <= 99,
+        ),
+        (&["--fixed-m", "77"], |_, m| m == 77),
+        (&["--power-of-two-m", "--max-m", "70"], |_, m| {
+            m.is_power_of_two() && m <= 70
+        }),
+    ];
+    // A prime numerator beyond every limit, so that nothing is exact.
+    let (n, d) = (10_007_u64, 9_000_u64);
+    for (limit, is_allowed) in kinds {
+        let plan = document(&[&["--target", "10007/9000"], limit].concat());
+        let whole = |value: &Value| value.as_u64().expect("a count");
+        let error = |l: u64, m: u64| (l * d).abs_diff(m * n) as f64 / m as f64;
+        let (l, m) = (whole(&plan["best"]["l"]), whole(&plan["best"]["m"]));
+        assert!(is_allowed(l, m), "{limit:?}: {l}/{m}");
+        for (other_l, other_m) in (1..1_600).flat_map(|l| (1..1_600).map(move |m| (l, m))) {
+            let is_nearer = error(other_l, other_m) < error(l, m) * (1.0 - 1e-12);
+            assert!(
+                !(is_nearer && is_allowed(other_l, other_m)),
+                "{limit:?}: {other_l}/{other_m} is nearer than {l}/{m}"
+            );
+        }
+        let last = plan["ladder"].as_array().and_then(|ladder| ladder.last());
+        let last = last.expect("a rung");
+        assert_eq!(
+            (&last["l"], &last["m"]),
+            (&l.into(), &m.into()),
+            "{limit:?}"
+        );
+        let pair = [&plan["cadence"]["low"], &plan["cadence"]["high"]];
+        let sum = |part: &str| -> u64 {
+            let blocks = pair.iter();
+            blocks
+                .map(|block| whole(&block["count"]) * whole(&block[part]))
+                .sum()
+        };
+        assert_eq!(sum("l") * d, sum("m") * n, "{limit:?}");
+        for block in pair {
+            assert!(
+                is_allowed(whole(&block["l"]), whole(&block["m"])),
+                "{limit:?}"
+            );
+        }
+    }
+}
+
+/// Every chain multiplies to the best ratio, costs what its stages cost, and none beats another.
+#[test]
+fn chains_of_stages_make_the_best_ratio() {
+    let rates = ["--from", "96k", "--to", "44.1k"];
+    let filter = ["--passband", "20k", "--attenuation", "100"];
+    let plan = document(&[rates, filter].concat());
+    let chains = plan["stages"]["chains"].as_array().expect("chains");
+    assert!(chains.len() > 3, "{chains:?}");
+    let mut costs = Vec::new();
+    for chain in chains {
+        let stages = chain["stages"].as_array().expect("stages");
+        let product =
+            |part: &str| -> u64 { stages.iter().filter_map(|s| s[part].as_u64()).product() };
+        assert_eq!((product("l"), product("m")), (147, 320));
+        let held = |stage: &Value| Some(stage["l"].as_u64()? * stage["taps_per_phase"].as_u64()?);
+        let coefficients: u64 = stages.iter().filter_map(held).sum();
+        assert_eq!(chain["coefficients"], coefficients);
+        let of = |cost: &str| chain[cost].as_f64().expect("a number");
+        costs.push(["multiply_adds", "coefficients", "delay_seconds"].map(of));
+    }
+    let beats = |a: &[f64; 3], b: &[f64; 3]| a != b && a.iter().zip(b).all(|(a, b)| a <= b);
+    assert!(costs.iter().all(|b| !costs.iter().any(|a| beats(a, b))));
+}
+
+/// The samples of a period's frames are the samples of the period, at rates of any kind.
+#[test]
+fn frames_of_a_period_add_up() {
+    for rate in ["24", "25", "24000/1001", "30000/1001", "60000/1001"] {
+        let plan = document(&["--from", "44.1k", "--to", "48k*1000/1001", "--frames", rate]);
+        for end in ["source", "sink"] {
+            let frames = &plan["frames"][end];
+            let samples = frames["samples"].as_array().expect("frames");
+            assert_eq!(frames["period_frames"], samples.len());
+            let sum: u64 = samples.iter().filter_map(Value::as_u64).sum();
+            assert_eq!(frames["period_samples"], sum, "{end} at {rate}");
+        }
+    }
 }

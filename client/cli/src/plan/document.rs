@@ -1,87 +1,146 @@
 //! A plan as JSON.
 
-use ratewright_ratio::plan::{Candidate, Plan, seconds_to_slip};
-use ratewright_ratio::{Cadence, Certificate, Fraction, Rung};
+use ratewright_ratio::stages::Chain;
+use ratewright_ratio::{
+    Bounds, Cadence, Certificate, Fraction, FrameCadence, MAX_BOUND, Multiple, Rung, Stepping,
+};
 use serde_json::{Value, json};
 
 use super::Parts;
-use super::question::{Question, Width};
+use super::allowed::{Allowed, Answer, Proof, ROUNDED};
+use super::filter::{self, Filter};
+use super::findings::{Findings, Width};
+use super::frames::{self, Frames, LISTED_FRAMES};
+use super::question::Question;
 
 /// The document. Ratios are numbers `l` and `m`; exact fractions of any size are texts `n/d`.
-pub(crate) fn document(question: &Question, plan: &Plan, width: Option<&Width>) -> Value {
-    let query = &question.query;
+pub(crate) fn document(question: &Question, findings: &Findings) -> Value {
+    let answer = &findings.answer;
+    let stages = question.filter.as_ref().zip(findings.chains.as_ref());
     json!({
-        "target": Parts::from(&plan.target).to_string(),
-        "bounds": {
-            "max_l": query.bounds.max_l(),
-            "max_m": query.bounds.max_m(),
-            "largest_prime": query.bounds.largest_prime(),
-        },
-        "headroom_samples": query.headroom_samples,
-        "sink_hz": query.sink_rate_hz.map(|rate| Parts::from(&rate).to_string()),
-        "best": best(&plan.best),
-        "interval": width.map(|width| json!({
-            "low": Parts::from(&width.low).to_string(),
-            "high": Parts::from(&width.high).to_string(),
-            "simplest": width.simplest.as_ref().map(ratio),
-            "seconds_to_slip_at_worst": width.seconds_to_slip_at_worst,
-        })),
-        "ladder": plan.ladder.iter().map(|rung| step(question, rung)).collect::<Vec<_>>(),
-        "cadence": plan.cadence.as_ref().map(cadence),
+        "target": Parts::from(&answer.target).to_string(),
+        "bounds": bounds(&question.allowed),
+        "headroom_samples": question.headroom_samples,
+        "sink_hz": question.sink_rate_hz.map(|rate| Parts::from(&rate).to_string()),
+        "best": best(question, answer),
+        "interval": findings.width.as_ref().map(interval),
+        "ladder": answer.ladder.iter().map(|rung| step(question, rung)).collect::<Vec<_>>(),
+        "cadence": answer.cadence.as_ref().map(cadence),
+        "stepping": findings.stepping.as_ref().map(stepping),
+        "stages": stages.map(|(filter, chains)| stage_plan(filter, chains)),
+        "frames": findings.frames.as_ref().map(frame_plan),
     })
+}
+
+/// The limits; null where there is none of that kind.
+fn bounds(allowed: &Allowed) -> Value {
+    let limit = |bound: u64| (bound < MAX_BOUND).then_some(bound);
+    let of = |bounds: &Bounds| [limit(bounds.max_l()), limit(bounds.max_m())];
+    let ([max_l, max_m], prime, kind) = match allowed {
+        Allowed::Bounded(bounds) => (of(bounds), bounds.largest_prime(), Value::Null),
+        Allowed::Product { max_product } => {
+            ([None, None], None, json!({ "max_product": max_product }))
+        }
+        Allowed::Cost {
+            weight_l,
+            weight_m,
+            max_cost,
+        } => {
+            let cost = json!({ "max_cost": max_cost, "weight_l": weight_l, "weight_m": weight_m });
+            ([None, None], None, cost)
+        }
+        Allowed::Multiple(Multiple::OfL(k), bounds) => {
+            (of(bounds), None, json!({ "l_multiple_of": k }))
+        }
+        Allowed::Multiple(Multiple::OfM(k), bounds) => {
+            (of(bounds), None, json!({ "m_multiple_of": k }))
+        }
+        Allowed::FixedM { m, max_l } => ([limit(*max_l), None], None, json!({ "fixed_m": m })),
+        Allowed::PowerOfTwoM(bounds) => (of(bounds), None, json!({ "power_of_two_m": true })),
+    };
+    json!({ "max_l": max_l, "max_m": max_m, "largest_prime": prime, "limit": kind })
 }
 
 fn ratio(ratio: &Fraction) -> Value {
     json!({ "l": ratio.numer(), "m": ratio.denom() })
 }
 
-fn best(best: &Candidate) -> Value {
+fn best(question: &Question, answer: &Answer) -> Value {
     json!({
-        "l": best.ratio.numer(),
-        "m": best.ratio.denom(),
-        "exact": best.residual == 0.0,
-        "residual_ppb": best.residual * 1e9,
-        "seconds_to_slip": best.seconds_to_slip,
-        "certificate": certificate(&best.certificate),
+        "l": answer.best.numer(),
+        "m": answer.best.denom(),
+        "exact": answer.residual == 0.0,
+        "residual_ppb": answer.residual * 1e9,
+        "seconds_to_slip": question.seconds_to_slip(answer.residual),
+        "certificate": proof(&answer.proof),
     })
 }
 
 /// The ends of the bracket that proves the choice; `0/1` and `1/0` where nothing allowed is beyond.
+/// With a multiple they prove the choice of `reduced`, from which the multiple is divided out.
+fn proof(proof: &Proof) -> Value {
+    match proof {
+        Proof::Direct(direct) => certificate(direct),
+        Proof::Reduced(_, found) => {
+            let mut document = certificate(&found.reduced.certificate);
+            document["reduced"] = json!({
+                "l": found.reduced.ratio.numer(),
+                "m": found.reduced.ratio.denom(),
+                "target": Parts::from(&found.target).to_string(),
+                "max_l": found.bounds.max_l(),
+                "max_m": found.bounds.max_m(),
+            });
+            document
+        }
+        Proof::Rounded => uncertified(ROUNDED),
+    }
+}
+
 fn certificate(certificate: &Certificate) -> Value {
     match certificate {
         Certificate::Nearest(bracket) | Certificate::NeighbourPair(bracket) => json!({
             "below": bracket.below.to_string(),
             "above": bracket.above.to_string(),
         }),
-        Certificate::Uncertified(reason) => {
-            json!({ "below": null, "above": null, "uncertified": reason.to_string() })
-        }
-        other => json!({ "below": null, "above": null, "uncertified": format!("{other:?}") }),
+        Certificate::Uncertified(reason) => uncertified(&reason.to_string()),
+        other => uncertified(&format!("{other:?}")),
     }
+}
+
+fn uncertified(why: &str) -> Value {
+    json!({ "below": null, "above": null, "uncertified": why })
+}
+
+fn interval(width: &Width) -> Value {
+    json!({
+        "low": Parts::from(&width.low).to_string(),
+        "high": Parts::from(&width.high).to_string(),
+        "simplest": width.simplest.as_ref().map(ratio),
+        "seconds_to_slip_at_worst": width.seconds_to_slip_at_worst,
+    })
 }
 
 /// The nearest ratio of a run, and the run that leads to it: `first`, then `step` added to both
 /// parts each time.
 fn step(question: &Question, rung: &Rung) -> Value {
-    let (last, query) = (rung.last(), &question.query);
-    let slip = seconds_to_slip(
-        rung.last_residual,
-        query.headroom_samples,
-        query.sink_rate_hz,
-    );
-    json!({
+    let last = rung.last();
+    let mut document = json!({
         "l": last.numer(),
         "m": last.denom(),
         "exact": rung.last_residual == 0.0,
         "residual_ppb": rung.last_residual * 1e9,
-        "seconds_to_slip": slip,
+        "seconds_to_slip": question.seconds_to_slip(rung.last_residual),
         "run": {
             "first": ratio(&rung.first),
             "first_residual_ppb": rung.first_residual * 1e9,
             "step": { "l": rung.step.l, "m": rung.step.m },
             "count": rung.count,
         },
-    })
+    });
+    if let Some(filter) = &question.filter {
+        document["coefficients"] = filter.coefficients(&last).into();
+    }
+    document
 }
 
 fn cadence(cadence: &Cadence) -> Value {
@@ -91,5 +150,56 @@ fn cadence(cadence: &Cadence) -> Value {
         "low": block(cadence.low(), cadence.low_blocks()),
         "high": block(cadence.high(), cadence.high_blocks()),
         "error_bound_samples": *bound.numer() as f64 / *bound.denom() as f64,
+    })
+}
+
+/// The two advances are equal if one is exact.
+fn stepping(stepping: &Stepping) -> Value {
+    let (advance, longer_advance) = stepping.advances();
+    let bound = stepping.error_bound();
+    json!({
+        "phases": stepping.phases(),
+        "advance": advance,
+        "longer_advance": longer_advance,
+        "error_bound_samples": *bound.numer() as f64 / *bound.denom() as f64,
+    })
+}
+
+fn stage_plan(filter: &Filter, chains: &[Chain]) -> Value {
+    json!({
+        "passband_hz": filter.spec.passband_hz,
+        "attenuation_db": filter.spec.stopband_db,
+        "estimate": filter::ESTIMATE,
+        "chains": chains.iter().map(chain).collect::<Vec<_>>(),
+    })
+}
+
+fn chain(chain: &Chain) -> Value {
+    let stages = chain
+        .stages
+        .iter()
+        .map(|stage| json!({ "l": stage.l, "m": stage.m, "taps_per_phase": stage.taps_per_phase }));
+    json!({
+        "stages": stages.collect::<Vec<_>>(),
+        "multiply_adds": chain.cost.multiply_adds,
+        "coefficients": chain.cost.coefficients,
+        "delay_seconds": chain.cost.delay_s,
+    })
+}
+
+fn frame_plan(frames: &Frames) -> Value {
+    json!({
+        "rate_hz": Parts::from(&frames.rate).to_string(),
+        "source": frame_samples(&frames.source),
+        "sink": frame_samples(&frames.sink),
+    })
+}
+
+/// `samples` has the frames of a period in order, or its first 4096.
+fn frame_samples(cadence: &FrameCadence) -> Value {
+    json!({
+        "period_frames": cadence.period_frames(),
+        "period_samples": cadence.period_samples(),
+        "samples": frames::listed(cadence, LISTED_FRAMES).collect::<Vec<_>>(),
     })
 }

@@ -1,7 +1,12 @@
 //! `ratewright plan`: choosing a ratio without a daemon.
 
+mod allowed;
 mod document;
 mod drift;
+mod filter;
+mod findings;
+mod frames;
+mod limits;
 mod question;
 mod text;
 
@@ -9,12 +14,15 @@ use std::fmt;
 
 use clap::Args;
 use num_rational::Ratio;
-use ratewright_ratio::{Exact, parse_rate, parse_target, plan};
+use ratewright_ratio::{Exact, parse_rate, parse_target};
 
 use crate::failure::Failure;
 use crate::out;
 use crate::out::say;
 use drift::Drift;
+use filter::FilterWish;
+use findings::Findings;
+use limits::Limits;
 use question::Question;
 
 /// Plans the ratio between two rates, without a daemon
@@ -31,15 +39,6 @@ pub(crate) struct Arguments {
     /// Sink rate over source rate, in place of --from and --to
     #[arg(long, value_name = "N/D|DECIMAL", value_parser = target, conflicts_with_all = ["from", "to"])]
     target: Option<Exact>,
-    /// Largest L the filter bank holds (output samples of a block)
-    #[arg(long, value_name = "COUNT", default_value_t = 1024)]
-    max_l: u64,
-    /// Largest M the filter bank holds (input samples of a block)
-    #[arg(long, value_name = "COUNT", default_value_t = 1024)]
-    max_m: u64,
-    /// Largest prime factor of L and of M
-    #[arg(long, value_name = "PRIME")]
-    largest_prime: Option<u64>,
     /// Drift of the source from its rate, positive runs fast: 12.5, 12.5±0.3 or 12.5+-0.3
     #[arg(long, value_name = "PPM", allow_hyphen_values = true, value_parser = Drift::parse, default_value = "0")]
     from_drift: Drift,
@@ -49,9 +48,19 @@ pub(crate) struct Arguments {
     /// Room for phase error either way, in sink samples
     #[arg(long, value_name = "SAMPLES", default_value_t = 1.0, value_parser = headroom)]
     headroom: f64,
+    /// Phases of the table, for a resampler that steps through one at every output
+    #[arg(long, value_name = "COUNT")]
+    phases: Option<u64>,
+    /// Video frame rate, such as 25 or 30000/1001: shows how many samples each frame takes
+    #[arg(long, value_name = "RATE", value_parser = rate)]
+    frames: Option<Ratio<u64>>,
     /// Print JSON for a machine
     #[arg(long)]
     json: bool,
+    #[command(flatten)]
+    limits: Box<Limits>,
+    #[command(flatten)]
+    filter: FilterWish,
 }
 
 fn rate(text: &str) -> Result<Ratio<u64>, String> {
@@ -74,15 +83,11 @@ fn headroom(text: &str) -> Result<f64, String> {
 /// Prints the plan.
 pub(crate) fn run(arguments: &Arguments) -> Result<(), Failure> {
     let question = Question::new(arguments)?;
-    let plan = plan::plan(&question.query);
-    let width = question.width(&plan);
+    let findings = Findings::new(&question)?;
     if arguments.json {
-        say!("{:#}", document::document(&question, &plan, width.as_ref()))?;
+        say!("{:#}", document::document(&question, &findings))?;
     } else {
-        out::text(format_args!(
-            "{}",
-            text::text(&question, &plan, width.as_ref())
-        ))?;
+        out::text(format_args!("{}", text::text(&question, &findings)))?;
     }
     Ok(())
 }

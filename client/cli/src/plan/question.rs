@@ -1,45 +1,38 @@
 //! From what was typed to what is asked of the ratio crate.
 
 use num_rational::Ratio;
-use ratewright_ratio::plan::{Plan, Query, seconds_to_slip};
-use ratewright_ratio::{Bounds, Exact, Fraction, Interval, residual, simplest, target_from_rates};
+use ratewright_ratio::{Exact, Interval, target_from_rates};
 
 use super::Arguments;
+use super::allowed::Allowed;
 use super::drift::Drift;
+use super::filter::Filter;
 use crate::failure::Failure;
 
 /// A question, as the ratio crate takes it and as it was put.
 #[derive(Debug)]
 pub(crate) struct Question {
-    pub(crate) query: Query,
+    pub(crate) target: Exact,
+    pub(crate) allowed: Allowed,
+    pub(crate) headroom_samples: f64,
+    /// The sink's true rate, Hz, if it is known.
+    pub(crate) sink_rate_hz: Option<Ratio<u64>>,
     /// Source and sink rate, if the question was put by rates.
     pub(crate) rates: Option<(Ratio<u64>, Ratio<u64>)>,
     pub(crate) from_drift: Drift,
     pub(crate) to_drift: Drift,
     /// The targets at the ends of the drifts' intervals, if they have any.
-    interval: Option<Interval>,
-}
-
-/// What the intervals of the drifts mean for the plan.
-#[derive(Debug)]
-pub(crate) struct Width {
-    pub(crate) low: Exact,
-    pub(crate) high: Exact,
-    /// The simplest ratio inside.
-    pub(crate) simplest: Option<Fraction>,
-    /// Seconds to slip of the best ratio at the end where it fares worst.
-    pub(crate) seconds_to_slip_at_worst: Option<f64>,
+    pub(crate) interval: Option<Interval>,
+    pub(crate) filter: Option<Filter>,
+    /// Phases of a resampler that steps.
+    pub(crate) phases: Option<u64>,
+    pub(crate) frame_rate: Option<Ratio<u64>>,
 }
 
 impl Question {
     pub(crate) fn new(arguments: &Arguments) -> Result<Self, Failure> {
         let usage = |error: &dyn std::fmt::Display| Failure::Usage(error.to_string());
-        let mut bounds = Bounds::new(arguments.max_l, arguments.max_m)
-            .map_err(|error| usage(&with_dashes(&error.to_string())))?;
-        if let Some(prime) = arguments.largest_prime {
-            let bounded = bounds.with_largest_prime(prime);
-            bounds = bounded.map_err(|error| usage(&with_dashes(&error.to_string())))?;
-        }
+        let allowed = arguments.limits.allowed()?;
         let rates = arguments.from.zip(arguments.to);
         let nominal = match (rates, arguments.target) {
             (Some((from, to)), _) => target_from_rates(from, to).map_err(|error| usage(&error))?,
@@ -50,6 +43,10 @@ impl Question {
                 ));
             }
         };
+        if rates.is_none() {
+            needs_rates("--passband", arguments.filter.passband)?;
+            needs_rates("--frames", arguments.frames)?;
+        }
         let (from_drift, to_drift) = (arguments.from_drift, arguments.to_drift);
         let at = |from_side: i128, to_side: i128| {
             target_at(
@@ -67,49 +64,29 @@ impl Question {
             None
         };
         let sink_rate_hz = rates.map(|(_, to)| true_rate(to, to_drift)).transpose()?;
-        let headroom_samples = arguments.headroom;
-        let query = Query {
-            target,
-            bounds,
-            headroom_samples,
-            sink_rate_hz,
-            filter: None,
-        };
         Ok(Self {
-            query,
+            target,
+            allowed,
+            headroom_samples: arguments.headroom,
+            sink_rate_hz,
             rates,
             from_drift,
             to_drift,
             interval,
-        })
-    }
-
-    /// What the intervals mean for this plan; `None` if there are none.
-    pub(crate) fn width(&self, plan: &Plan) -> Option<Width> {
-        let interval = self.interval.as_ref()?;
-        let (low, high) = (*interval.lo(), *interval.hi());
-        let residuals = [low, high].map(|end| residual(&plan.best.ratio, &end).abs());
-        let worst = residuals[0].max(residuals[1]);
-        Some(Width {
-            low,
-            high,
-            simplest: simplest(interval).map(|answer| answer.fraction),
-            seconds_to_slip_at_worst: seconds_to_slip(
-                worst,
-                self.query.headroom_samples,
-                self.query.sink_rate_hz,
-            ),
+            filter: arguments.filter.filter(rates),
+            phases: arguments.phases,
+            frame_rate: arguments.frames,
         })
     }
 }
 
-/// Field names as options are typed.
-fn with_dashes(text: &str) -> String {
-    ["max_l", "max_m", "largest_prime"]
-        .iter()
-        .fold(text.to_owned(), |text, field| {
-            text.replace(field, &format!("--{}", field.replace('_', "-")))
-        })
+fn needs_rates(name: &str, value: Option<Ratio<u64>>) -> Result<(), Failure> {
+    match value {
+        Some(hz) => Err(Failure::Usage(format!(
+            "{name} is {hz} Hz; accepted is none beside --target: give --from and --to"
+        ))),
+        None => Ok(()),
+    }
 }
 
 fn too_many_digits() -> Failure {

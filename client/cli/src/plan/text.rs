@@ -2,24 +2,43 @@
 
 use std::fmt::Write as _;
 
-use ratewright_ratio::plan::{Candidate, Plan, seconds_to_slip};
-use ratewright_ratio::{Certificate, Node, Rung};
+use ratewright_ratio::stages::{Chain, Cost, Stage};
+use ratewright_ratio::{
+    Bounds, Certificate, Exact, FrameCadence, MAX_BOUND, Multiple, Node, Rung, Stepping,
+};
 
 use super::Parts;
-use super::question::{Question, Width};
+use super::allowed::{Allowed, Answer, Proof, ROUNDED, multiplied};
+use super::filter::{self, Filter};
+use super::findings::{Findings, Width};
+use super::frames::{self, Frames};
+use super::question::Question;
 use crate::show;
 
+/// Most frames that are listed; the shares of the period tell the rest.
+const LISTED_FRAMES: u64 = 15;
+
+/// Chains of stages that cost no more than this in excess of another are not listed.
+const SAME_PERCENT: f64 = 10.0;
+
 /// The plan, a paragraph a finding.
-pub(crate) fn text(question: &Question, plan: &Plan, width: Option<&Width>) -> String {
+pub(crate) fn text(question: &Question, findings: &Findings) -> String {
     let mut out = String::new();
-    head(&mut out, question, plan);
-    best(&mut out, question, &plan.best);
-    proof(&mut out, &plan.best);
-    if let Some(width) = width {
+    let answer = &findings.answer;
+    head(&mut out, question, answer);
+    best(&mut out, question, answer);
+    line(&mut out, "proof", &proof(&answer.proof));
+    if let Some(width) = &findings.width {
         interval(&mut out, width);
     }
-    cadence(&mut out, plan);
-    ladder(&mut out, question, plan);
+    cadence(&mut out, findings);
+    ladder(&mut out, question, answer);
+    if let Some((filter, chains)) = question.filter.as_ref().zip(findings.chains.as_ref()) {
+        stages(&mut out, filter, chains);
+    }
+    if let Some(frames) = &findings.frames {
+        frame_samples(&mut out, frames);
+    }
     out
 }
 
@@ -28,7 +47,7 @@ fn line(out: &mut String, label: &str, text: &str) {
     let _ = writeln!(out, "{label:<10}{text}");
 }
 
-fn head(out: &mut String, question: &Question, plan: &Plan) {
+fn head(out: &mut String, question: &Question, answer: &Answer) {
     if let Some((from, to)) = question.rates {
         line(
             out,
@@ -41,28 +60,56 @@ fn head(out: &mut String, question: &Question, plan: &Plan) {
             &format!("{}{}", show::rate(to), question.to_drift),
         );
     }
-    let value = *plan.target.numer() as f64 / *plan.target.denom() as f64;
+    let value = *answer.target.numer() as f64 / *answer.target.denom() as f64;
     line(
         out,
         "target",
-        &format!("{} = {value:.12}", Parts::from(&plan.target)),
+        &format!("{} = {value:.12}", Parts::from(&answer.target)),
     );
-    let bounds = &question.query.bounds;
-    let mut allowed = format!("L up to {}, M up to {}", bounds.max_l(), bounds.max_m());
-    if let Some(prime) = bounds.largest_prime() {
-        let _ = write!(allowed, ", no prime factor above {prime}");
-    }
-    line(out, "bounds", &allowed);
+    line(out, "bounds", &allowed(&question.allowed));
     out.push('\n');
 }
 
-fn best(out: &mut String, question: &Question, best: &Candidate) {
-    let ratio = Parts::from(&best.ratio);
-    if best.residual == 0.0 {
+fn allowed(allowed: &Allowed) -> String {
+    let up_to = |part: &str, bound: u64| match bound {
+        MAX_BOUND => format!("any {part}"),
+        _ => format!("{part} up to {bound}"),
+    };
+    let both = |bounds: &Bounds| {
+        let (l, m) = (up_to("L", bounds.max_l()), up_to("M", bounds.max_m()));
+        format!("{l}, {m}")
+    };
+    match allowed {
+        Allowed::Bounded(bounds) => match bounds.largest_prime() {
+            Some(prime) => format!("{}, no prime factor above {prime}", both(bounds)),
+            None => both(bounds),
+        },
+        Allowed::Product { max_product } => format!("L·M up to {max_product}"),
+        Allowed::Cost {
+            weight_l,
+            weight_m,
+            max_cost,
+        } => format!("{weight_l}·L + {weight_m}·M up to {max_cost}"),
+        Allowed::Multiple(multiple, bounds) => format!("{}, {}", both(bounds), wanted(*multiple)),
+        Allowed::FixedM { m, max_l } => format!("{}, M = {m}", up_to("L", *max_l)),
+        Allowed::PowerOfTwoM(bounds) => format!("{}, M a power of two", both(bounds)),
+    }
+}
+
+fn wanted(multiple: Multiple) -> String {
+    match multiple {
+        Multiple::OfL(k) => format!("L a multiple of {k}"),
+        Multiple::OfM(k) => format!("M a multiple of {k}"),
+    }
+}
+
+fn best(out: &mut String, question: &Question, answer: &Answer) {
+    let (ratio, residual) = (Parts::from(&answer.best), answer.residual);
+    if residual == 0.0 {
         line(out, "best", &format!("{ratio}, exact"));
         return;
     }
-    let makes = if best.residual > 0.0 {
+    let makes = if residual > 0.0 {
         "makes too much"
     } else {
         "makes too little"
@@ -70,34 +117,42 @@ fn best(out: &mut String, question: &Question, best: &Candidate) {
     line(
         out,
         "best",
-        &format!("{ratio}, {}: {makes}", show::offset(best.residual)),
+        &format!("{ratio}, {}: {makes}", show::offset(residual)),
     );
-    let headroom = match question.query.headroom_samples {
+    let headroom = match question.headroom_samples {
         1.0 => "1 sink sample".to_owned(),
         samples => format!("{samples} sink samples"),
     };
-    let lasts = match best.seconds_to_slip {
+    let lasts = match question.seconds_to_slip(residual) {
         Some(seconds) => format!("a headroom of {headroom} lasts {}", show::duration(seconds)),
         None => "give --from and --to to learn how long the headroom lasts".to_owned(),
     };
     line(out, "", &lasts);
 }
 
-fn proof(out: &mut String, best: &Candidate) {
-    let why = match &best.certificate {
+fn proof(proof: &Proof) -> String {
+    match proof {
+        Proof::Direct(certificate) => certified(certificate, None),
+        Proof::Reduced(multiple, found) => certified(&found.reduced.certificate, Some(*multiple)),
+        Proof::Rounded => ROUNDED.to_owned(),
+    }
+}
+
+fn certified(certificate: &Certificate, multiple: Option<Multiple>) -> String {
+    match certificate {
         Certificate::Nearest(bracket) => {
-            let end = |node: Node| match node {
-                Node::ZERO => "0".to_owned(),
-                Node::INFINITY => "infinity".to_owned(),
-                node => node.to_string(),
+            let end = |node: Node| match (node, multiple) {
+                (Node::ZERO, _) => "0".to_owned(),
+                (Node::INFINITY, _) => "infinity".to_owned(),
+                (node, Some(multiple)) => multiplied(multiple, node).to_string(),
+                (node, None) => node.to_string(),
             };
             let (below, above) = (end(bracket.below), end(bracket.above));
             format!("no other ratio within the bounds lies between {below} and {above}")
         }
         Certificate::Uncertified(reason) => format!("none: {reason}"),
         other => format!("none of this kind is expected here: {other:?}"),
-    };
-    line(out, "proof", &why);
+    }
 }
 
 fn interval(out: &mut String, width: &Width) {
@@ -126,8 +181,12 @@ fn interval(out: &mut String, width: &Width) {
     }
 }
 
-fn cadence(out: &mut String, plan: &Plan) {
-    let Some(cadence) = &plan.cadence else {
+fn cadence(out: &mut String, findings: &Findings) {
+    let Some(cadence) = &findings.answer.cadence else {
+        if let Some(stepping) = &findings.stepping {
+            out.push('\n');
+            self::stepping(out, stepping);
+        }
         return;
     };
     out.push('\n');
@@ -140,45 +199,168 @@ fn cadence(out: &mut String, plan: &Plan) {
         Parts::from(&high),
     );
     line(out, "cadence", &counts);
-    let bound = cadence.error_bound();
-    let samples = *bound.numer() as f64 / *bound.denom() as f64;
+    let samples = show_bound(cadence.error_bound());
     line(
         out,
         "",
-        &format!("and are never off by more than {samples:.4} samples at a block's end"),
+        &format!("and are never off by more than {samples} samples at a block's end"),
     );
+    if let Some(stepping) = &findings.stepping {
+        self::stepping(out, stepping);
+    }
 }
 
-fn ladder(out: &mut String, question: &Question, plan: &Plan) {
+fn stepping(out: &mut String, stepping: &Stepping) {
+    let phases = stepping.phases();
+    let advances = match stepping.advances() {
+        (one, other) if one == other => format!("{phases} phases, advancing by {one}, exact"),
+        (short, long) => {
+            let samples = show_bound(stepping.error_bound());
+            format!(
+                "{phases} phases, advancing by {short} or {long}: never off by more than {samples} \
+                 samples"
+            )
+        }
+    };
+    line(out, "stepping", &advances);
+}
+
+/// A bound in samples to three digits, never shown smaller than it is.
+fn show_bound(bound: Exact) -> String {
+    let samples = *bound.numer() as f64 / *bound.denom() as f64;
+    let places = (2.0 - samples.log10().floor()).clamp(0.0, 30.0) as usize;
+    let nearest = format!("{samples:.places$}");
+    if nearest.parse().is_ok_and(|shown: f64| shown >= samples) {
+        return nearest;
+    }
+    format!("{:.places$}", samples + 10_f64.powi(-(places as i32)))
+}
+
+fn ladder(out: &mut String, question: &Question, answer: &Answer) {
     out.push_str("\nladder    what a larger filter bank buys\n");
-    let heading = ["L/M", "off by", "headroom lasts", "steps"]
-        .map(str::to_owned)
-        .to_vec();
-    let mut rows = vec![heading];
-    rows.extend(plan.ladder.iter().map(|rung| row(question, rung)));
+    let mut heading = vec!["L/M", "off by", "headroom lasts"];
+    heading.extend(question.filter.as_ref().map(|_| "coefficients"));
+    heading.push("steps");
+    let mut rows = vec![heading.into_iter().map(str::to_owned).collect()];
+    rows.extend(answer.ladder.iter().map(|rung| row(question, rung)));
     out.push_str(&show::table(&rows));
 }
 
 fn row(question: &Question, rung: &Rung) -> Vec<String> {
-    let query = &question.query;
-    let slip = seconds_to_slip(
-        rung.last_residual,
-        query.headroom_samples,
-        query.sink_rate_hz,
-    );
     let (off, lasts) = if rung.last_residual == 0.0 {
         ("exact".to_owned(), "for ever".to_owned())
     } else {
+        let slip = question.seconds_to_slip(rung.last_residual);
         (
             show::offset(rung.last_residual),
             slip.map_or("-".to_owned(), show::duration),
         )
     };
     let last = rung.last();
-    let steps = if rung.count > 1 {
+    let mut row = vec![Parts::from(&last).to_string(), off, lasts];
+    let filter = question.filter.as_ref();
+    row.extend(filter.map(|filter| filter.coefficients(&last).to_string()));
+    row.push(if rung.count > 1 {
         format!("{} from {}", rung.count, Parts::from(&rung.first))
     } else {
         String::new()
+    });
+    row
+}
+
+fn stages(out: &mut String, filter: &Filter, chains: &[Chain]) {
+    let (passband, attenuation) = (show::rate(filter.passband), filter.spec.stopband_db);
+    let head = format!("the best ratio in stages that pass {passband} and stop {attenuation} dB");
+    out.push('\n');
+    line(out, "stages", &head);
+    line(out, "", &format!("lengths by {}", filter::ESTIMATE));
+    let shown = distinct(chains);
+    if shown.len() < chains.len() {
+        let left_out = chains.len() - shown.len();
+        let hint =
+            format!("{left_out} more are within {SAME_PERCENT} % of one of these; --json has all");
+        line(out, "", &hint);
+    }
+    let heading = [
+        "stages",
+        "multiply-adds",
+        "coefficients",
+        "delay",
+        "taps a phase",
+    ];
+    let mut rows = vec![heading.map(str::to_owned).to_vec()];
+    rows.extend(shown.into_iter().map(chain_row));
+    out.push_str(&show::table(&rows));
+}
+
+/// The chains, without those that cost nearly the same as one before, or more.
+fn distinct(chains: &[Chain]) -> Vec<&Chain> {
+    let allowance = 1.0 + SAME_PERCENT / 100.0;
+    let covers = |shown: &Cost, cost: &Cost| {
+        shown.multiply_adds <= cost.multiply_adds * allowance
+            && shown.coefficients as f64 <= cost.coefficients as f64 * allowance
+            && shown.delay_s <= cost.delay_s * allowance
     };
-    vec![Parts::from(&last).to_string(), off, lasts, steps]
+    let mut shown: Vec<&Chain> = Vec::new();
+    for chain in chains {
+        if !shown
+            .iter()
+            .any(|earlier| covers(&earlier.cost, &chain.cost))
+        {
+            shown.push(chain);
+        }
+    }
+    shown
+}
+
+fn chain_row(chain: &Chain) -> Vec<String> {
+    let joined = |part: fn(&Stage) -> String, by: &str| {
+        chain.stages.iter().map(part).collect::<Vec<_>>().join(by)
+    };
+    let stages = joined(|stage| format!("{}/{}", stage.l, stage.m), " · ");
+    vec![
+        if stages.is_empty() {
+            "none".to_owned()
+        } else {
+            stages
+        },
+        format!("{:.1}", chain.cost.multiply_adds),
+        chain.cost.coefficients.to_string(),
+        show::duration(chain.cost.delay_s),
+        joined(|stage| stage.taps_per_phase.to_string(), " + "),
+    ]
+}
+
+fn frame_samples(out: &mut String, frames: &Frames) {
+    out.push('\n');
+    let rate = show::rate(frames.rate);
+    line(
+        out,
+        "frames",
+        &format!("samples a frame at {rate}, in broadcast order"),
+    );
+    for (end, cadence) in [("source", &frames.source), ("sink", &frames.sink)] {
+        line(out, &format!("  {end}"), &frame_row(cadence));
+    }
+}
+
+fn frame_row(cadence: &FrameCadence) -> String {
+    let period = cadence.period_frames();
+    if period == 1 {
+        return format!("{} in every frame", cadence.samples_in(0));
+    }
+    let listed: Vec<String> = frames::listed(cadence, LISTED_FRAMES)
+        .map(|samples| samples.to_string())
+        .collect();
+    let more = if period > LISTED_FRAMES { " ..." } else { "" };
+    let shares: Vec<String> = frames::shares(cadence)
+        .iter()
+        .map(|(frames, samples)| format!("{frames} of {samples}"))
+        .collect();
+    format!(
+        "{}{more}\n{:10}{period} frames, {}",
+        listed.join(" "),
+        "",
+        shares.join(" and "),
+    )
 }

@@ -1,0 +1,242 @@
+//! Which ratios are allowed, and the nearest of them with its proof.
+
+use ratewright_ratio::plan::{Query, plan};
+use ratewright_ratio::{
+    Bounds, Cadence, Certificate, Exact, Fraction, Multiple, MultipleBest, MultipleError, Node,
+    Region, RegionError, Rung, best_for_m, best_in, best_multiple, best_power_of_two, ladder,
+    ladder_in, residual,
+};
+
+/// The ratios to choose from.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub(crate) enum Allowed {
+    /// L and M up to their bounds, perhaps without large prime factors.
+    Bounded(Bounds),
+    /// L·M up to a limit, from 1 to 2^63 − 1.
+    Product { max_product: u64 },
+    /// `weight_l`·L + `weight_m`·M up to a limit.
+    Cost {
+        weight_l: u64,
+        weight_m: u64,
+        max_cost: u64,
+    },
+    /// L or M a multiple, both up to their bounds.
+    Multiple(Multiple, Bounds),
+    /// One M; L from 1 to `max_l`.
+    FixedM { m: u64, max_l: u64 },
+    /// M a power of two, both up to their bounds.
+    PowerOfTwoM(Bounds),
+}
+
+/// Why there is no such ratio.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, thiserror::Error)]
+pub(crate) enum NotAllowed {
+    /// The limit of a product or a weighted sum is out of range.
+    #[error(transparent)]
+    Region(#[from] RegionError),
+    /// No multiple is within the bounds.
+    #[error(transparent)]
+    Multiple(#[from] MultipleError),
+}
+
+/// What was found.
+#[derive(Clone, Debug)]
+pub(crate) struct Answer {
+    pub(crate) target: Exact,
+    /// The nearest ratio: in lowest terms, unless M is fixed or a part has to be a multiple.
+    pub(crate) best: Fraction,
+    /// (L/M)/target − 1 of it.
+    pub(crate) residual: f64,
+    pub(crate) proof: Proof,
+    /// Error against size, the simplest first.
+    pub(crate) ladder: Vec<Rung>,
+    /// Two allowed ratios that average the target exactly.
+    pub(crate) cadence: Option<Cadence>,
+}
+
+/// Why the answer is the nearest.
+#[derive(Clone, Copy, Debug)]
+pub(crate) enum Proof {
+    /// A certificate for the target and what is allowed.
+    Direct(Certificate),
+    /// A certificate for the problem that is left when the multiple is divided out.
+    Reduced(Multiple, MultipleBest),
+    /// None is needed: see [`ROUNDED`].
+    Rounded,
+}
+
+/// How [`Proof::Rounded`] is put in words.
+pub(crate) const ROUNDED: &str = "L is the target times M, rounded to the nearest L allowed";
+
+impl Allowed {
+    /// The nearest of these ratios to `target`, and what goes with it.
+    pub(crate) fn answer(&self, target: &Exact) -> Result<Answer, NotAllowed> {
+        let target = target.reduced();
+        match *self {
+            Self::Bounded(bounds) => Ok(bounded(target, bounds)),
+            Self::Product { max_product } => Ok(within(target, &Region::product(max_product)?)),
+            Self::Cost {
+                weight_l,
+                weight_m,
+                max_cost,
+            } => {
+                let region = Region::weighted(weight_l, weight_m, max_cost)?;
+                Ok(within(target, &region))
+            }
+            Self::Multiple(multiple, bounds) => Ok(multiples(target, multiple, &bounds)?),
+            Self::FixedM { m, max_l } => Ok(fixed(target, m, max_l)),
+            Self::PowerOfTwoM(bounds) => Ok(powers_of_two(target, &bounds)),
+        }
+    }
+}
+
+fn bounded(target: Exact, bounds: Bounds) -> Answer {
+    let plan = plan(&Query {
+        target,
+        bounds,
+        headroom_samples: 1.0,
+        sink_rate_hz: None,
+        filter: None,
+    });
+    Answer {
+        target,
+        best: plan.best.ratio,
+        residual: plan.best.residual,
+        proof: Proof::Direct(plan.best.certificate),
+        ladder: plan.ladder,
+        cadence: plan.cadence,
+    }
+}
+
+fn within(target: Exact, region: &Region) -> Answer {
+    let best = best_in(&target, region);
+    Answer {
+        target,
+        best: best.ratio,
+        residual: residual(&best.ratio, &target),
+        proof: Proof::Direct(best.certificate),
+        ladder: ladder_in(&target, region),
+        cadence: enclosing(&target, &best.certificate, |end| end),
+    }
+}
+
+fn multiples(target: Exact, multiple: Multiple, bounds: &Bounds) -> Result<Answer, MultipleError> {
+    let found = best_multiple(&target, multiple, bounds)?;
+    // Dividing by the multiple scales ratio and target alike, so residuals stay as they are.
+    let ladder = ladder(&found.target, &found.bounds)
+        .into_iter()
+        .map(|rung| Rung {
+            first: unreduced(multiplied(multiple, Node::from(&rung.first))),
+            step: multiplied(multiple, rung.step),
+            ..rung
+        });
+    let best = Fraction::new_raw(found.l, found.m);
+    Ok(Answer {
+        target,
+        best,
+        residual: residual(&best, &target),
+        proof: Proof::Reduced(multiple, found),
+        ladder: ladder.collect(),
+        cadence: enclosing(&target, &found.reduced.certificate, |end| {
+            multiplied(multiple, end)
+        }),
+    })
+}
+
+fn fixed(target: Exact, m: u64, max_l: u64) -> Answer {
+    let best = Fraction::new_raw(best_for_m(&target, m, max_l), m);
+    Answer {
+        cadence: on_grid(&target, m, max_l),
+        ..rounded(target, best, vec![rung(&target, best)])
+    }
+}
+
+fn powers_of_two(target: Exact, bounds: &Bounds) -> Answer {
+    let max_l = bounds.max_l();
+    let finest = bounds.max_m().ilog2();
+    let up_to = |bit: u32| {
+        let bounds = Bounds::new(max_l, 1 << bit).expect("2^bit is within the bound of M");
+        best_power_of_two(&target, &bounds)
+    };
+    let mut steps: Vec<Fraction> = (0..=finest).map(up_to).collect();
+    steps.dedup();
+    let best = best_power_of_two(&target, bounds);
+    let ladder = steps.into_iter().map(|ratio| rung(&target, ratio));
+    let answer = rounded(target, best, ladder.collect());
+    let is_exact = answer.residual == 0.0;
+    // The finest grid of which both ratios are within the bounds.
+    let cadence = || {
+        (0..=finest)
+            .rev()
+            .find_map(|bit| on_grid(&target, 1 << bit, max_l))
+    };
+    Answer {
+        cadence: if is_exact { None } else { cadence() },
+        ..answer
+    }
+}
+
+fn rounded(target: Exact, best: Fraction, ladder: Vec<Rung>) -> Answer {
+    Answer {
+        target,
+        best,
+        residual: residual(&best, &target),
+        proof: Proof::Rounded,
+        ladder,
+        cadence: None,
+    }
+}
+
+/// The cadence of the ends of a certificate's bracket, each changed by `end`.
+fn enclosing(
+    target: &Exact,
+    certificate: &Certificate,
+    end: impl Fn(Node) -> Node,
+) -> Option<Cadence> {
+    let Certificate::Nearest(bracket) = certificate else {
+        return None;
+    };
+    bracket.below.fraction().zip(bracket.above.fraction())?;
+    let (low, high) = (end(bracket.below), end(bracket.above));
+    Cadence::of_pair(target, unreduced(low), unreduced(high)).ok()
+}
+
+/// The cadence of the two ratios of this M around the target.
+fn on_grid(target: &Exact, m: u64, max_l: u64) -> Option<Cadence> {
+    let nearest = best_for_m(target, m, max_l);
+    let is_below = residual(&Fraction::new_raw(nearest, m), target) < 0.0;
+    let low = if is_below { nearest } else { nearest - 1 };
+    let pair = (Fraction::new_raw(low, m), Fraction::new_raw(low + 1, m));
+    let cadence = Cadence::of_pair(target, pair.0, pair.1).ok();
+    cadence.filter(|_| low < max_l)
+}
+
+/// The pair of which the certificate's problem has had the multiple divided out.
+pub(crate) fn multiplied(multiple: Multiple, node: Node) -> Node {
+    match multiple {
+        Multiple::OfL(k) => Node {
+            l: k * node.l,
+            m: node.m,
+        },
+        Multiple::OfM(k) => Node {
+            l: node.l,
+            m: k * node.m,
+        },
+    }
+}
+
+/// A block takes its L and M as they are, so common factors stay.
+fn unreduced(node: Node) -> Fraction {
+    Fraction::new_raw(node.l, node.m)
+}
+
+fn rung(target: &Exact, ratio: Fraction) -> Rung {
+    let residual = residual(&ratio, target);
+    Rung {
+        first: ratio,
+        step: Node { l: 0, m: 0 },
+        count: 1,
+        first_residual: residual,
+        last_residual: residual,
+    }
+}
