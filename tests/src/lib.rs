@@ -2,7 +2,11 @@
 //!
 //! The tests stand in `tests/`; this library holds nothing but their shared footing.
 
-use serde_json::Value;
+#![allow(
+    clippy::disallowed_methods,
+    reason = "whole systems are started and looked at from outside"
+)]
+
 use std::{
     path::{Path, PathBuf},
     process::Command,
@@ -29,24 +33,51 @@ pub fn workspace() -> PathBuf {
 pub fn dependencies(package: &str) -> Vec<String> {
     let output = Command::new(env!("CARGO"))
         .current_dir(workspace())
-        .args(["tree", "--package", package, "--edges", "normal", "--prefix", "none"])
+        .args([
+            "tree",
+            "--package",
+            package,
+            "--edges",
+            "normal",
+            "--prefix",
+            "none",
+        ])
         .args(["--format", "{p}", "--offline"])
         .output()
         .expect("cargo runs, since it runs this test");
-    assert!(output.status.success(), "{}", String::from_utf8_lossy(&output.stderr));
+    assert!(
+        output.status.success(),
+        "{}",
+        String::from_utf8_lossy(&output.stderr)
+    );
     String::from_utf8_lossy(&output.stdout)
         .lines()
         .filter_map(|line| line.split_whitespace().next().map(str::to_owned))
         .collect()
 }
 
-/// A JSON field by a path of keys, for messages that name what is missing.
+/// A binary of the workspace. `cargo test --workspace` has built it before any test runs; where
+/// it is missing (this package tested alone) it is built now.
 ///
 /// # Panics
-/// If the path leads nowhere.
+/// If it does not build.
 #[must_use]
-pub fn at<'a>(value: &'a Value, path: &[&str]) -> &'a Value {
-    path.iter().fold(value, |here, key| {
-        here.get(key).unwrap_or_else(|| panic!("no {key} of {path:?} in {value}"))
-    })
+pub fn binary(package: &str, name: &str) -> PathBuf {
+    let own = std::env::current_exe().expect("this test lies somewhere");
+    let built = own
+        .ancestors()
+        .nth(2)
+        .expect("tests lie in a folder of the build");
+    let path = built.join(name);
+    if !path.exists() {
+        let mut build = Command::new(env!("CARGO"));
+        build.current_dir(workspace()).args(["build", "--quiet"]);
+        build.args(["--package", package, "--bin", name]);
+        if built.ends_with("release") {
+            build.arg("--release");
+        }
+        let status = build.status().expect("cargo runs, since it runs this test");
+        assert!(status.success(), "{name} does not build");
+    }
+    path
 }

@@ -3,21 +3,44 @@
 
 use ratewright_tests::dependencies;
 
-const PURE: [&str; 4] =
-    ["ratewright-ratio", "ratewright-timing", "ratewright-control", "ratewright-rehearsal"];
+const PURE: [&str; 4] = [
+    "ratewright-ratio",
+    "ratewright-timing",
+    "ratewright-control",
+    "ratewright-rehearsal",
+];
 
 const IMPURE: [&str; 15] = [
-    "async-std", "axum", "getrandom", "hyper", "mio", "rand", "reqwest", "rusqlite", "rustix",
-    "smol", "socket2", "tokio", "tonic", "ureq", "uuid",
+    "async-std",
+    "axum",
+    "getrandom",
+    "hyper",
+    "mio",
+    "rand",
+    "reqwest",
+    "rusqlite",
+    "rustix",
+    "smol",
+    "socket2",
+    "tokio",
+    "tonic",
+    "ureq",
+    "uuid",
 ];
 
 #[test]
 fn no_pure_crate_depends_on_the_outside_world() {
     for pure in PURE {
         let tree = dependencies(pure);
-        assert!(tree.iter().any(|name| name == pure), "{pure} is missing from its own tree");
+        assert!(
+            tree.iter().any(|name| name == pure),
+            "{pure} is missing from its own tree"
+        );
         for impure in IMPURE {
-            assert!(!tree.iter().any(|name| name == impure), "{pure} depends on {impure}");
+            assert!(
+                !tree.iter().any(|name| name == impure),
+                "{pure} depends on {impure}"
+            );
         }
     }
 }
@@ -32,11 +55,18 @@ fn ratio_and_timing_know_nothing_of_each_other_nor_of_the_wire() {
         ("ratewright-client", "ratewright-control"),
     ] {
         let tree = dependencies(pure);
-        assert!(!tree.iter().any(|name| name == stranger), "{pure} depends on {stranger}");
+        assert!(
+            !tree.iter().any(|name| name == stranger),
+            "{pure} depends on {stranger}"
+        );
     }
 }
 
 #[test]
 fn the_check_can_fail() {
-    assert!(dependencies("ratewright-client").iter().any(|name| name == "tokio"));
+    assert!(
+        dependencies("ratewright-client")
+            .iter()
+            .any(|name| name == "tokio")
+    );
 }
