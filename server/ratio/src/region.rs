@@ -119,10 +119,14 @@ impl Region {
                     & (low.1.max(high.1) <= max_m)
                     & ((l > max_l) | (m > max_m))
             }
-            _ => {
-                self.contains(low.0, low.1) && self.contains(high.0, high.1) && !self.contains(l, m)
-            }
+            _ => self.contains_both_only(low, high, (l, m)),
         }
+    }
+
+    /// Out of line, so that the box, which is nearly every call, keeps the registers to itself.
+    #[cold]
+    fn contains_both_only(&self, low: (u64, u64), high: (u64, u64), sum: (u64, u64)) -> bool {
+        self.contains(low.0, low.1) && self.contains(high.0, high.1) && !self.contains(sum.0, sum.1)
     }
 }
 
