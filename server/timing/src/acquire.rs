@@ -1,11 +1,11 @@
 //! When an estimate that is still too wide should lock.
 
-use crate::bank::JUMP;
+use crate::bank::{Bank, JUMP};
+use crate::drift_filter::DriftFilter;
 use crate::filter::Filter;
 use crate::lock::{ENTER, LOCK_ROWS};
 use crate::mode::{Step, Walk, WalkNoise};
 use crate::normal::Z95;
-use crate::predict::WIDEN;
 use crate::start::{Line, Start};
 
 /// Farther than this nothing is foreseen, s.
@@ -13,7 +13,7 @@ const HORIZON_S: f64 = 86_400.0;
 
 /// Deviation at which the lock's threshold is entered, ppm.
 fn wanted_ppm(lock_half_width: f64) -> f64 {
-    1e6 * lock_half_width * ENTER / (Z95 * WIDEN)
+    1e6 * lock_half_width * ENTER / Z95
 }
 
 /// The same from the first rows alone: white noise narrows the drift's variance as T⁻³.
@@ -36,47 +36,78 @@ pub(crate) fn lock_expected_from_start(
 }
 
 /// Seconds until the half-width should be within the threshold, if rows go on as they do.
-///
-/// The covariance of an average mode is run forward in strides that grow by a tenth, each with
-/// the information that its rows would bring.
 pub(crate) fn lock_expected_in_s(filter: &Filter, lock_half_width: f64, rows: u16) -> Option<f64> {
-    let step_s = filter.mean_step_s();
-    if step_s <= 0.0 {
-        return None;
-    }
-    let wanted = wanted_ppm(lock_half_width);
-    let per_row: f64 = filter
+    let information: f64 = filter
         .measuring()
         .map(|d| d.information() / d.thinning())
         .sum();
-    let (mut walk, noise) = average(filter);
-    let mut ahead = 0.0;
-    let mut stride = step_s;
-    while ahead < HORIZON_S {
-        if walk.yy <= wanted * wanted {
-            let rows_missing = f64::from(LOCK_ROWS.saturating_sub(rows));
-            return Some(ahead.max(rows_missing * step_s));
-        }
-        walk.advance(&Step::new(stride, 0.0), noise);
-        let information = per_row * stride / step_s;
+    let pace = RowPace {
+        step_s: filter.mean_step_s(),
+        rows,
+    };
+    pace.foreseen(&filter.bank, wanted_ppm(lock_half_width), |walk, count| {
+        let information = information * count;
         walk.correct(0.0, -information / (1.0 + information * walk.xx));
-        ahead += stride;
-        stride = stride.max(0.1 * ahead);
+    })
+}
+
+/// The same for drift readings.
+pub(crate) fn lock_expected_from_drifts(
+    filter: &DriftFilter,
+    lock_half_width: f64,
+    rows: u16,
+) -> Option<f64> {
+    let pace = RowPace {
+        step_s: filter.mean_step_s(),
+        rows,
+    };
+    let variance = filter.reading_variance();
+    pace.foreseen(filter.bank(), wanted_ppm(lock_half_width), |walk, count| {
+        walk.correct_drift(0.0, variance / count)
+    })
+}
+
+/// How rows come, and how many there were.
+struct RowPace {
+    step_s: f64,
+    rows: u16,
+}
+
+impl RowPace {
+    /// Runs the covariance of an average mode forward, in strides that grow by a tenth; `learn`
+    /// corrects it by as many rows as come in a stride.
+    fn foreseen(&self, bank: &Bank, wanted: f64, learn: impl Fn(&mut Walk, f64)) -> Option<f64> {
+        if self.step_s <= 0.0 {
+            return None;
+        }
+        let (mut walk, noise) = average(bank);
+        let mut ahead = 0.0;
+        let mut stride = self.step_s;
+        while ahead < HORIZON_S {
+            if walk.yy <= wanted * wanted {
+                let rows_missing = f64::from(LOCK_ROWS.saturating_sub(self.rows));
+                return Some(ahead.max(rows_missing * self.step_s));
+            }
+            walk.advance(&Step::new(stride, 0.0), noise);
+            learn(&mut walk, stride / self.step_s);
+            ahead += stride;
+            stride = stride.max(0.1 * ahead);
+        }
+        None
     }
-    None
 }
 
 /// Covariance and process noise averaged over the modes.
-fn average(filter: &Filter) -> (Walk, WalkNoise) {
-    let m = filter.bank.mixture();
+fn average(bank: &Bank) -> (Walk, WalkNoise) {
+    let m = bank.mixture();
     let mut noise = WalkNoise { q1: 0.0, q2: 0.0 };
     let mut xy = 0.0;
-    let weights = filter.bank.weights().into_iter().enumerate();
+    let weights = bank.weights().into_iter().enumerate();
     for (j, weight) in weights.filter(|&(j, _)| j != JUMP) {
-        let own = filter.bank.noise(j).walk;
+        let own = bank.noise(j).walk;
         noise.q1 += weight * own.q1;
         noise.q2 += weight * own.q2;
-        xy += weight * filter.bank.walk(j).xy;
+        xy += weight * bank.walk(j).xy;
     }
     (
         Walk {

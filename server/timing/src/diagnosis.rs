@@ -1,6 +1,6 @@
 //! What the link makes of its probe, for people.
 
-use crate::bank::{JUMP, WALKS};
+use crate::bank::{Bank, JUMP, WALKS};
 use crate::direction::Direction;
 use crate::filter::Filter;
 
@@ -10,8 +10,19 @@ pub struct Diagnosis {
     /// The direction that measures, or those going out and coming back; none while the first
     /// readings are gathered, and for drift readings.
     pub directions: Vec<DirectionDiagnosis>,
+    /// What drift readings show of themselves; none for all other measurements.
+    pub drift_readings: Option<DriftDiagnosis>,
     /// Shares of belief in how the clock wanders.
     pub wander: Wander,
+}
+
+/// Noise of drift readings.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct DriftDiagnosis {
+    /// Deviation of a reading as it shows itself, dimensionless.
+    pub deviation: f64,
+    /// Deviation that the latest reading claimed, dimensionless.
+    pub claimed: f64,
 }
 
 /// Noise of one direction.
@@ -44,10 +55,11 @@ pub struct Wander {
     pub jump: f64,
 }
 
-impl Filter {
-    pub(crate) fn diagnosis(&self) -> Diagnosis {
+impl Wander {
+    /// Shares of the bank's modes.
+    pub(crate) fn of(bank: &Bank) -> Self {
         let mut wander = Wander::default();
-        let weights = self.bank.weights();
+        let weights = bank.weights();
         let total: f64 = weights.iter().sum();
         for (j, weight) in weights.into_iter().enumerate() {
             let share = weight / total;
@@ -57,9 +69,16 @@ impl Filter {
                 _ => wander.slopes[j - WALKS] = share,
             }
         }
+        wander
+    }
+}
+
+impl Filter {
+    pub(crate) fn diagnosis(&self) -> Diagnosis {
         Diagnosis {
             directions: self.measuring().map(Direction::diagnosis).collect(),
-            wander,
+            drift_readings: None,
+            wander: Wander::of(&self.bank),
         }
     }
 }
@@ -83,8 +102,48 @@ impl Direction {
 mod tests {
     use num_rational::Ratio;
 
-    use crate::sim::{Clock, ClockModel, Delay, Path, PathModel, probe};
-    use crate::{Link, LinkConfig};
+    use crate::sim::{Clock, ClockModel, Delay, Path, PathModel, Random, probe};
+    use crate::{Link, LinkConfig, Measurement, State};
+
+    #[test]
+    fn drift_readings_worse_than_they_claim_are_found_out_and_a_lock_is_foreseen() {
+        let mut clock = Clock::new(ClockModel::crystal(), 3);
+        let mut random = Random::new(4);
+        let mut link = Link::new(LinkConfig::new(Ratio::from_integer(1))).unwrap();
+        let mut foreseen = None;
+        let mut locked = None;
+        for i in 1..4000_i64 {
+            let at_ns = i * 5_000_000_000;
+            let Measurement::Frequency {
+                drift,
+                reference_ns,
+                ..
+            } = probe::frequency(&mut clock, &mut random, 1e-6, at_ns)
+            else {
+                panic!("a drift")
+            };
+            let reading = Measurement::Frequency {
+                drift,
+                deviation: 0.5e-6,
+                reference_ns,
+            };
+            link.observe(i as u64, &reading).unwrap();
+            let estimate = link.estimate(at_ns);
+            if i == 100 {
+                foreseen = estimate.lock_expected_in_s.map(|wait| 500.0 + wait);
+            }
+            if estimate.state == State::Locked && locked.is_none() {
+                locked = Some(i as f64 * 5.0);
+            }
+        }
+        let readings = link.diagnosis().drift_readings.unwrap();
+        assert!((readings.claimed - 0.5e-6).abs() < 1e-12);
+        assert!((readings.deviation - 1e-6).abs() < 0.3e-6, "{readings:?}");
+        let (foreseen, locked) = (foreseen.unwrap(), locked.unwrap());
+        let ratio = foreseen / locked;
+        assert!((0.4..2.5).contains(&ratio), "{foreseen} s, {locked} s");
+        assert!(link.diagnosis().wander.walks[0] > 0.0);
+    }
 
     #[test]
     fn the_noise_of_a_probe_is_found_out() {

@@ -113,6 +113,11 @@ impl Direction {
         }
     }
 
+    /// Rows learned from, as far as they are counted.
+    pub(crate) fn rows(&self) -> u16 {
+        self.learner.rows()
+    }
+
     /// s, −1 or +1.
     pub(crate) fn sign(&self) -> f64 {
         f64::from(self.sign)

@@ -3,12 +3,13 @@
 use serde::{Deserialize, Serialize};
 
 use crate::bank::Bank;
+use crate::diagnosis::{Diagnosis, DriftDiagnosis, Wander};
 use crate::estimate::normal_half_width;
 use crate::filter::Setup;
 use crate::holdover::{Belief, Structure};
 use crate::mode::{Step, slope_reach};
 use crate::outcome::Outcome;
-use crate::predict::{Prediction, WIDEN};
+use crate::predict::Prediction;
 
 /// A reading pulls no harder than this many deviations.
 const CLIP: f64 = 2.5;
@@ -21,6 +22,9 @@ pub(crate) struct DriftFilter {
     t_s: f64,
     /// Measured variance of the readings over the claimed one.
     claim: f64,
+    /// Claimed variance of the latest reading, ppm².
+    latest_claim: f64,
+    mean_step_s: f64,
     far_in_a_row: u32,
 }
 
@@ -31,12 +35,36 @@ impl DriftFilter {
             structure: Structure::new(setup.scale),
             t_s,
             claim: 1.0,
+            latest_claim: 0.0,
+            mean_step_s: 0.0,
             far_in_a_row: 0,
         }
     }
 
     pub(crate) fn bank(&self) -> &Bank {
         &self.bank
+    }
+
+    /// Variance of a reading as it shows itself, ppm².
+    pub(crate) fn reading_variance(&self) -> f64 {
+        self.claim * self.latest_claim
+    }
+
+    /// Usual step from reading to reading, s; nought before there is one.
+    pub(crate) fn mean_step_s(&self) -> f64 {
+        self.mean_step_s
+    }
+
+    /// What the readings show of themselves and of the clock, for people.
+    pub(crate) fn diagnosis(&self) -> Diagnosis {
+        Diagnosis {
+            directions: Vec::new(),
+            drift_readings: Some(DriftDiagnosis {
+                deviation: 1e-6 * self.reading_variance().sqrt(),
+                claimed: 1e-6 * self.latest_claim.sqrt(),
+            }),
+            wander: Wander::of(&self.bank),
+        }
     }
 
     /// Time since the last reading, s.
@@ -58,7 +86,12 @@ impl DriftFilter {
             };
             self.bank.advance(&Step::new(dt, least_q2));
             self.t_s = t_s;
+            if !in_gap {
+                let gain = if self.mean_step_s > 0.0 { 0.06 } else { 1.0 };
+                self.mean_step_s += gain * (dt - self.mean_step_s);
+            }
         }
+        self.latest_claim = r;
         let m = self.bank.mixture();
         let variance = m.yy + self.claim * r;
         let off = (y - m.y) * (y - m.y) / variance;
@@ -104,7 +137,7 @@ impl DriftFilter {
         Prediction {
             y: m.y + slope_reach(ahead) * m.d,
             variance,
-            half_width: WIDEN * normal_half_width(variance.sqrt()),
+            half_width: normal_half_width(variance.sqrt()),
             slope: m.d,
             x: m.x + ahead * m.y,
             x_variance: m.xx + ahead * ahead * variance,

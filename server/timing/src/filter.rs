@@ -160,6 +160,11 @@ impl Filter {
         mixture
     }
 
+    /// Rows that the noise was learned from, as far as they are counted.
+    pub(crate) fn rows(&self) -> u16 {
+        self.directions[0].rows()
+    }
+
     /// Usual step from row to row, s; nought before there is one.
     pub(crate) fn mean_step_s(&self) -> f64 {
         f64::from(self.pace.mean_step_s)
@@ -225,7 +230,7 @@ impl Filter {
         let residual = direction.sign() * direction.newton_step(&detail);
         let verdict = direction.judge(e, &detail, mixture.xx);
         let moved = direction.learn(&detail, mixture.xx, f64::from(self.pace.least_sigma));
-        self.bank.loosen(0.1 * moved * moved, 0.0);
+        self.bank.loosen(0.5 * moved * moved, 0.0);
         (verdict, Some(residual))
     }
 

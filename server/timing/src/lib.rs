@@ -97,7 +97,7 @@ mod start;
 
 pub use combine::combine;
 pub use config::{ConfigError, LatencyTail, LinkConfig};
-pub use diagnosis::{Diagnosis, DirectionDiagnosis, Wander};
+pub use diagnosis::{Diagnosis, DirectionDiagnosis, DriftDiagnosis, Wander};
 pub use estimate::{Estimate, Reason, State, compose, exact};
 pub use forecast::Forecast;
 pub use history::{EventCounts, History, Transition};

@@ -2,7 +2,7 @@
 
 use serde::{Deserialize, Serialize};
 
-use crate::acquire::{lock_expected_from_start, lock_expected_in_s};
+use crate::acquire::{lock_expected_from_drifts, lock_expected_from_start, lock_expected_in_s};
 use crate::blocks::Blocks;
 use crate::config::{ConfigError, LinkConfig};
 use crate::diagnosis::{Diagnosis, Wander};
@@ -16,7 +16,7 @@ use crate::intake::{Intake, Row, Values};
 use crate::lock::Lock;
 use crate::measurement::Measurement;
 use crate::outcome::{Event, Outcome, Refusal};
-use crate::predict::{Prediction, WIDEN};
+use crate::predict::{Prediction, widening};
 use crate::start::{Start, StartRow};
 
 /// The estimator of one link: one clock, read against one reference by one probe.
@@ -158,8 +158,10 @@ impl Link {
     pub fn diagnosis(&self) -> Diagnosis {
         match &self.stage {
             Stage::Phase { filter, .. } => filter.diagnosis(),
-            Stage::Starting { .. } | Stage::Drift(_) => Diagnosis {
+            Stage::Drift(filter) => filter.diagnosis(),
+            Stage::Starting { .. } => Diagnosis {
                 directions: Vec::new(),
+                drift_readings: None,
                 wander: Wander::default(),
             },
         }
@@ -305,12 +307,12 @@ impl Link {
 
     /// Half-width after a row, from the moments alone: what the lock goes by.
     fn quick_half_width(&self) -> f64 {
-        let variance = match &self.stage {
-            Stage::Starting { start, .. } => start.line(self.quantum_us()).yy,
-            Stage::Phase { filter, .. } => filter.latest.yy,
-            Stage::Drift(filter) => filter.bank().mixture().yy,
+        let (variance, widening) = match &self.stage {
+            Stage::Starting { start, .. } => (start.line(self.quantum_us()).yy, 1.0),
+            Stage::Phase { filter, .. } => (filter.latest.yy, widening(filter.rows())),
+            Stage::Drift(filter) => (filter.bank().mixture().yy, 1.0),
         };
-        1e-6 * WIDEN * normal_half_width(variance.sqrt())
+        1e-6 * widening * normal_half_width(variance.sqrt())
     }
 
     fn predict(&self, now_s: f64, in_gap: bool) -> Prediction {
@@ -369,7 +371,9 @@ impl Link {
             Stage::Phase { filter, .. } => {
                 lock_expected_in_s(filter, wanted, self.rows_since_start)
             }
-            Stage::Drift(_) => None,
+            Stage::Drift(filter) => {
+                lock_expected_from_drifts(filter, wanted, self.rows_since_start)
+            }
         }
     }
 }

@@ -7,8 +7,11 @@ use crate::growth::Growth;
 use crate::mode::slope_reach;
 use crate::normal::{Z95, cdf};
 
-/// Widening of the interval for what the noise model does not know of itself.
-pub(crate) const WIDEN: f64 = 1.05;
+/// Widening of the interval for what a noise learned from `rows` rows does not know of itself,
+/// whose own relative error falls with the root of their number.
+pub(crate) fn widening(rows: u16) -> f64 {
+    1.0 + 2.0 / f64::from(rows.max(1)).sqrt()
+}
 /// Modes of less weight do not count for the interval.
 const LEAST_WEIGHT: f64 = 1e-3;
 
@@ -100,7 +103,7 @@ impl Filter {
             p.variance += part.weight * (part.deviation * part.deviation + dy * dy);
             p.x_variance += part.weight * (x_var + dx * dx);
         }
-        p.half_width = WIDEN * half_width(&parts, p.y, p.variance.sqrt());
+        p.half_width = widening(self.rows()) * half_width(&parts, p.y, p.variance.sqrt());
         p
     }
 }
