@@ -1,60 +1,103 @@
 //! The least deviation that any estimator of the drift could have: the covariance of the
-//! two-state filter that knows wander and noise, with the noise's Fisher information.
+//! filter that knows how the clock wanders, its warming and its day, and the noise's Fisher
+//! information. Weather is random: it is known by its deviation and time alone.
 
-use ratewright_timing::sim::Delay;
+use ratewright_timing::sim::{ClockModel, Delay, Weather};
 
-/// Covariance of phase (s) and drift, run along with the readings.
+const STATES: usize = 4;
+/// The simulated clock follows its weather in an eighth of the weather's own time.
+const LAG: f64 = 8.0;
+
+/// Covariance of phase (s), drift without weather, weather's drift and what that follows, run
+/// along with the readings.
 pub(crate) struct Bound {
-    xx: f64,
-    xy: f64,
-    yy: f64,
+    p: [[f64; STATES]; STATES],
     white_fm: f64,
     walk_fm: f64,
+    weather: Weather,
     last_ns: i64,
 }
 
 impl Bound {
-    pub(crate) fn new(white_fm: f64, walk_fm: f64) -> Self {
+    pub(crate) fn new(model: &ClockModel) -> Self {
+        let weather = model.weather.unwrap_or(Weather {
+            deviation: 0.0,
+            time_s: 1e3,
+        });
+        let mut p = [[0.0; STATES]; STATES];
+        (p[0][0], p[1][1]) = (1.0, 3.6e-9);
+        p[3][3] = weather.deviation * weather.deviation;
         Bound {
-            xx: 1.0,
-            xy: 0.0,
-            yy: 3.6e-9,
-            white_fm,
-            walk_fm,
+            p,
+            white_fm: model.white_fm,
+            walk_fm: model.walk_fm,
+            weather,
             last_ns: 0,
         }
     }
 
-    /// Covariance at a time.
+    /// Covariance at a time: P ← FPFᵀ + Q, steps being short against the weather's time τ. Of
+    /// weather, u′ = −u/τ + noise and w′ = 8(u − w)/τ.
     pub(crate) fn advance(&mut self, at_ns: i64) {
         let dt = (at_ns - self.last_ns).max(0) as f64 * 1e-9;
         self.last_ns = at_ns;
-        self.xx += dt * (2.0 * self.xy + dt * self.yy) + self.white_fm * dt;
-        self.xx += self.walk_fm * dt * dt * dt / 3.0;
-        self.xy += dt * self.yy + 0.5 * self.walk_fm * dt * dt;
-        self.yy += self.walk_fm * dt;
+        let tau = self.weather.time_s;
+        let keep = libm::exp(-dt / tau);
+        let follow = LAG / tau;
+        let lagging = libm::exp(-dt * follow);
+        let (area, lagged) = (tau * (1.0 - keep), (1.0 - lagging) / follow);
+        let share = LAG / (LAG - 1.0);
+        let f = [
+            [1.0, dt, lagged, share * (area - lagged)],
+            [0.0, 1.0, 0.0, 0.0],
+            [0.0, 0.0, lagging, share * (keep - lagging)],
+            [0.0, 0.0, 0.0, keep],
+        ];
+        let old = self.p;
+        let entry = |i: usize, j: usize| -> f64 {
+            let row = |a: usize| (0..STATES).map(|b| old[a][b] * f[j][b]).sum::<f64>();
+            (0..STATES).map(|a| f[i][a] * row(a)).sum()
+        };
+        self.p = core::array::from_fn(|i| core::array::from_fn(|j| entry(i, j)));
+        let stationary = self.weather.deviation * self.weather.deviation;
+        let gust = 2.0 * stationary / tau;
+        self.add(0, 0, self.white_fm * dt + self.walk_fm * dt * dt * dt / 3.0);
+        self.add(0, 1, 0.5 * self.walk_fm * dt * dt);
+        self.add(1, 1, self.walk_fm * dt);
+        self.add(2, 2, gust * follow * follow * dt * dt * dt / 3.0);
+        self.add(2, 3, 0.5 * gust * follow * dt * dt);
+        self.add(3, 3, stationary * (1.0 - keep * keep));
+    }
+
+    fn add(&mut self, i: usize, j: usize, noise: f64) {
+        self.p[i][j] += noise;
+        self.p[j][i] = self.p[i][j];
     }
 
     /// A phase reading of the given information, 1/s².
     pub(crate) fn read_phase(&mut self, information: f64) {
-        let gain = information / (1.0 + information * self.xx);
-        let (kx, ky) = (self.xx, self.xy);
-        self.xx = kx / (1.0 + information * kx);
-        self.xy -= kx * ky * gain;
-        self.yy -= ky * ky * gain;
+        self.read([1.0, 0.0, 0.0, 0.0], information);
     }
 
     /// A drift reading of the given deviation.
     pub(crate) fn read_drift(&mut self, deviation: f64) {
-        let gain = 1.0 / (self.yy + deviation * deviation);
-        let (kx, ky) = (self.xy, self.yy);
-        self.xx -= kx * kx * gain;
-        self.xy -= kx * ky * gain;
-        self.yy -= ky * ky * gain;
+        self.read([0.0, 1.0, 1.0, 0.0], 1.0 / (deviation * deviation));
+    }
+
+    fn read(&mut self, h: [f64; STATES], information: f64) {
+        let k: [f64; STATES] = self.p.map(|row| (0..STATES).map(|j| row[j] * h[j]).sum());
+        let seen: f64 = (0..STATES).map(|i| h[i] * k[i]).sum();
+        let gain = information / (1.0 + information * seen);
+        let old = self.p;
+        self.p = core::array::from_fn(|i| core::array::from_fn(|j| old[i][j] - k[i] * k[j] * gain));
+        if h[1] == 0.0 {
+            // What would cancel is divided instead.
+            self.p[0][0] = old[0][0] / (1.0 + information * old[0][0]);
+        }
     }
 
     pub(crate) fn drift_variance(&self) -> f64 {
-        self.yy
+        self.p[1][1] + 2.0 * self.p[1][2] + self.p[2][2]
     }
 }
 

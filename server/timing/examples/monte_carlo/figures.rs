@@ -118,8 +118,9 @@ impl Tally {
 
     fn count_events(&mut self, trial: &Trial) {
         self.events += trial.events.len() as f64;
+        let window_s = trial.call_window_s;
         for &event in &trial.events {
-            let near = |call: &&(f64, Event)| (event..event + 600.0).contains(&call.0);
+            let near = |call: &&(f64, Event)| (event..event + window_s).contains(&call.0);
             self.found
                 .extend(trial.calls.iter().find(near).map(|call| call.0 - event));
         }
@@ -127,7 +128,7 @@ impl Tally {
             !trial
                 .events
                 .iter()
-                .any(|&event| (event..event + 600.0).contains(&call.0))
+                .any(|&event| (event..event + window_s).contains(&call.0))
         };
         self.false_calls += trial.calls.iter().filter(stray).count() as f64;
     }

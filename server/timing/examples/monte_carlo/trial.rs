@@ -30,12 +30,14 @@ pub(crate) struct Trial {
     /// Events of the world and what the estimator called, s.
     pub(crate) events: Vec<f64>,
     pub(crate) calls: Vec<(f64, Event)>,
+    /// A call within 600 readings after an event, and 600 s at least, is of that event, s.
+    pub(crate) call_window_s: f64,
 }
 
 pub(crate) fn run(scenario: &Scenario, seed: u64) -> Trial {
     let mut world = World::new(scenario, seed);
     let mut link = Link::new(world.config()).expect("scenarios declare what links accept");
-    let mut bound = Bound::new(world.model.white_fm, world.model.walk_fm);
+    let mut bound = Bound::new(&world.model);
     let mut per_row = information(&world.paths[0].delay, world.tick_s());
     if scenario.kind == crate::scenarios::Kind::Exchange {
         per_row += information(&world.paths[1].delay, world.tick_s());
@@ -50,6 +52,7 @@ pub(crate) fn run(scenario: &Scenario, seed: u64) -> Trial {
             .map_or(f64::INFINITY, |&ns| ns as f64 / 1e9),
         events: world.events.iter().map(|&ns| ns as f64 / 1e9).collect(),
         calls: Vec::new(),
+        call_window_s: 600.0 * scenario.interval_s.max(1.0),
     };
     let mut query_ns = NS / 2;
     let mut sequence = 0;
