@@ -5,7 +5,7 @@
 //! read from the certificate, so a certificate for other bounds proves nothing.
 //!
 //! The theorems are those of [`crate::bracket`], [`crate::nearest`] and [`mod@crate::simplest`].
-//! Cost: 6 to 10 multiplications; no division, no allocation.
+//! Cost: 4 to 8 multiplications; no division, no allocation.
 
 use std::hint::select_unpredictable;
 

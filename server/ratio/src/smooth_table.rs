@@ -1,22 +1,25 @@
 //! A table of smooth ratios near a band, for many look-ups under the same bounds.
 //!
-//! **Method.** All reduced ratios of the band with smooth parts, in ascending order, with an index of equal
-//! slices of the band. A look-up goes to the slice by one multiplication of doubles, which is only a guess:
-//! the step to the right place and the choice between its two ends are exact.
+//! **Method.** All reduced ratios of the band with smooth parts, in ascending order; the middles between
+//! neighbours, as doubles; and an index of equal slices of the band. A look-up goes to the slice by one
+//! multiplication and on to the two middles around the target. Targets and middles are doubles within 2^-50 of
+//! their value, so a target farther than that from both middles has its answer; otherwise integers decide.
 //!
-//! **Cost.** The build visits every pair in the band, and needs 16 bytes a ratio; a look-up takes a few
-//! comparisons, however large the bounds are.
+//! **Cost.** The build visits every pair in the band, and needs 32 bytes a ratio; a look-up takes one division and
+//! a few comparisons, however large the bounds are.
 //!
 //! **Corner case.** A target outside the band is looked for by the two lists instead, with the same answer.
 
 use num_integer::Integer;
 
-use crate::bracket::{Bracket, Node};
-use crate::nearest::nearer;
-use crate::{Best, Bounds, Certificate, Exact, Interval, Reason, best, smooth};
+use crate::nearest::nearer_of;
+use crate::{Best, Bounds, Certificate, Exact, Fraction, Interval, Reason, best, smooth};
 
-/// Slices of the index for each ratio: most then hold one at most.
+/// Slices of the index for each ratio: most then hold one middle at most.
 const SLICES_PER_RATIO: usize = 4;
+
+/// What a double here may be off, as a part of itself, with room to spare; two middles are 2^-41 apart at least.
+const DOUBT: f64 = 1.0 / (1u64 << 48) as f64;
 
 /// Smooth ratios within bounds and near a band, ready for look-ups.
 #[derive(Clone, Debug)]
@@ -24,10 +27,14 @@ pub struct SmoothTable {
     bounds: Bounds,
     /// Parts fit 32 bits because the bounds are at most 2^20.
     ratios: Vec<(u32, u32)>,
-    /// For slice i of the band, the first ratio that is not below the slice.
+    /// Ratio i is the nearest from middle i to middle i + 1; infinite before the first and after the last.
+    middles: Vec<f64>,
+    /// For slice i of the band, the ratio at its start or an earlier one.
     slices: Vec<u32>,
     low: f64,
     slices_per_one: f64,
+    /// For sure between two ratios of the table, so nothing outside the band is nearer.
+    covered: std::ops::Range<f64>,
 }
 
 impl SmoothTable {
@@ -51,14 +58,41 @@ impl SmoothTable {
         let (low, high) = (value(band.lo()), value(band.hi()));
         let count = SLICES_PER_RATIO * ratios.len().max(1);
         let slices_per_one = count as f64 / (high - low).max(f64::MIN_POSITIVE);
+        let between = ratios
+            .windows(2)
+            .map(|two| (quotient(two[0]) + quotient(two[1])) / 2.0);
+        let middles = [f64::NEG_INFINITY]
+            .into_iter()
+            .chain(between)
+            .chain([f64::INFINITY])
+            .collect();
+        let covered = match (ratios.first(), ratios.last()) {
+            (Some(&first), Some(&last)) => {
+                quotient(first) * (1.0 + DOUBT)..quotient(last) * (1.0 - DOUBT)
+            }
+            _ => 0.0..0.0,
+        };
         let mut table = Self {
             bounds: *bounds,
             ratios,
-            slices: Vec::new(),
+            middles,
+            slices: Vec::with_capacity(count),
             low,
             slices_per_one,
+            covered,
         };
-        table.slices = table.index(count);
+        let mut at = 0;
+        for slice in 0..count {
+            // By the same rounded formula as in a look-up, which never falls as values rise.
+            while table
+                .middles
+                .get(at + 1)
+                .is_some_and(|&middle| table.slice(middle) < slice)
+            {
+                at += 1;
+            }
+            table.slices.push(at as u32);
+        }
         table
     }
 
@@ -74,61 +108,55 @@ impl SmoothTable {
 
     /// The nearest ratio to `target` within the bounds; on a tie the smaller M, then the smaller L.
     pub fn best(&self, target: &Exact) -> Best {
-        let Some(bracket) = self.bracket(target) else {
+        let value = value(target);
+        if !self.covered.contains(&value) {
             return best(target, &self.bounds);
-        };
-        let ratio = nearer(&bracket, target);
+        }
+        let mut at = self.slices[self.slice(value).min(self.slices.len() - 1)] as usize;
+        while self.middles[at + 1] < value {
+            at += 1;
+        }
+        let doubt = value * DOUBT;
+        let is_sure = (value - self.middles[at] > doubt) & (self.middles[at + 1] - value > doubt);
         Best {
-            ratio,
+            ratio: if is_sure {
+                self.ratio(at)
+            } else {
+                self.nearest_around(at, target)
+            },
             certificate: Certificate::Uncertified(Reason::SmoothBounds),
         }
     }
 
-    /// The ratios on either side, if both are in the table; then nothing outside the band can be nearer.
+    /// The nearest of a ratio and its two neighbours, by integers.
+    #[cold]
+    fn nearest_around(&self, at: usize, target: &Exact) -> Fraction {
+        let last = self.ratios.len() - 1;
+        (at.saturating_sub(1)..=(at + 1).min(last))
+            .map(|i| self.ratio(i))
+            .reduce(|a, b| nearer_of(a, b, target))
+            .expect("at is one of them")
+    }
+
     #[inline]
-    fn bracket(&self, target: &Exact) -> Option<Bracket> {
-        let node = |i: usize| {
-            let (l, m) = self.ratios[i];
-            Node {
-                l: u64::from(l),
-                m: u64::from(m),
-            }
-        };
-        let is_below = |i: usize| node(i).compare_target(target).is_gt();
-        let mut at = self.guess(value(target));
-        // `at` becomes the first ratio that is not below the target.
-        while at > 0 && !is_below(at - 1) {
-            at -= 1;
-        }
-        while at < self.ratios.len() && is_below(at) {
-            at += 1;
-        }
-        (at > 0 && at < self.ratios.len()).then(|| Bracket {
-            below: node(at - 1),
-            above: node(at),
-        })
+    fn ratio(&self, at: usize) -> Fraction {
+        let (l, m) = self.ratios[at];
+        Fraction::new_raw(l.into(), m.into())
     }
 
-    fn guess(&self, value: f64) -> usize {
-        // The cast saturates, so a target far outside lands at an end.
-        let slice = ((value - self.low) * self.slices_per_one) as usize;
-        self.slices[slice.min(self.slices.len() - 1)] as usize
-    }
-
-    fn index(&self, count: usize) -> Vec<u32> {
-        let mut slices = Vec::with_capacity(count + 1);
-        for (i, &(l, m)) in self.ratios.iter().enumerate() {
-            let slice = ((f64::from(l) / f64::from(m) - self.low) * self.slices_per_one) as usize;
-            while slices.len() <= slice.min(count) {
-                slices.push(i as u32);
-            }
-        }
-        slices.resize(count + 1, self.ratios.len() as u32);
-        slices
+    /// The slice of a value in the band; a signed cast is the shorter one, and saturates.
+    #[inline]
+    fn slice(&self, value: f64) -> usize {
+        ((value - self.low) * self.slices_per_one) as i64 as usize
     }
 }
 
-/// A target as a double, near enough for a guess.
+#[inline]
+fn quotient((l, m): (u32, u32)) -> f64 {
+    f64::from(l) / f64::from(m)
+}
+
+/// A target as a double, within a part of 2^-51.
 #[inline]
 fn value(target: &Exact) -> f64 {
     match (
