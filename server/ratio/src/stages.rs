@@ -125,18 +125,10 @@ pub struct Chain {
 /// # Ok::<(), ratewright_ratio::stages::StageError>(())
 /// ```
 pub fn least_work(ratio: Fraction, spec: &FilterSpec) -> Result<Chain, StageError> {
-    let plans = search(ratio, spec, |kept: &mut Vec<Partial>, new| {
-        match kept.first_mut() {
-            Some(old) if old.cost.multiply_adds <= new.cost.multiply_adds => (),
-            Some(old) => *old = new,
-            None => kept.push(new),
-        }
-    })?;
-    let order = |a: &&Partial, b: &&Partial| a.cost.multiply_adds.total_cmp(&b.cost.multiply_adds);
-    // min_by keeps the first of equals, and the fewer stages come first.
+    // With one number to beat, all but one are beaten; the fewer stages come first and win a tie.
+    let plans = search(ratio, spec, |a, b| a.multiply_adds <= b.multiply_adds)?;
     Ok(plans
-        .iter()
-        .min_by(order)
+        .first()
         .expect("the single stage is always a plan")
         .chain())
 }
@@ -146,19 +138,9 @@ pub fn least_work(ratio: Fraction, spec: &FilterSpec) -> Result<Chain, StageErro
 /// # Errors
 /// [`StageError`].
 pub fn front(ratio: Fraction, spec: &FilterSpec) -> Result<Vec<Chain>, StageError> {
-    let mut kept = Vec::new();
-    for plan in search(ratio, spec, keep_unbeaten)? {
-        keep_unbeaten(&mut kept, plan);
-    }
+    let mut kept = search(ratio, spec, Cost::beats)?;
     kept.sort_by(|a, b| a.cost.multiply_adds.total_cmp(&b.cost.multiply_adds));
     Ok(kept.iter().map(Partial::chain).collect())
-}
-
-fn keep_unbeaten(kept: &mut Vec<Partial>, new: Partial) {
-    if !kept.iter().any(|old| old.cost.beats(&new.cost)) {
-        kept.retain(|old| !new.cost.beats(&old.cost));
-        kept.push(new);
-    }
 }
 
 /// A chain under construction.
@@ -180,12 +162,15 @@ impl Partial {
     /// This chain with one more stage.
     fn then(mut self, step: &Step, stopband_db: f64) -> Self {
         let taps = kaiser::taps_estimate(stopband_db, step.width);
-        let taps_per_phase = (taps / step.l as f64).ceil();
+        // Rounded up by integers: `ceil` is a call on processors without an instruction for it.
+        let exact = taps / step.l as f64;
+        let whole = exact as u64;
         let stage = Stage {
             l: step.l,
             m: step.m,
-            taps_per_phase: taps_per_phase as u64,
+            taps_per_phase: whole + u64::from(whole as f64 != exact),
         };
+        let taps_per_phase = stage.taps_per_phase as f64;
         self.stages[self.count] = stage;
         self.count += 1;
         self.cost.multiply_adds += taps_per_phase * step.outputs_per_sink_sample;
@@ -209,38 +194,51 @@ struct Step {
     outputs_per_sink_sample: f64,
 }
 
-/// All complete chains the keeping rule has kept, the fewer stages first.
+/// All complete chains that no other beats, the fewer stages first. What beats a chain must beat every chain
+/// that goes on from it, so a chain that a complete one beats is not followed.
 fn search(
     ratio: Fraction,
     spec: &FilterSpec,
-    keep: impl Fn(&mut Vec<Partial>, Partial),
+    beats: impl Fn(&Cost, &Cost) -> bool,
 ) -> Result<Vec<Partial>, StageError> {
     check(ratio, spec)?;
     if ratio == Fraction::new_raw(1, 1) {
         return Ok(vec![Partial::default()]);
     }
     let states = states(ratio);
-    let steps = steps(ratio, spec, &states);
     let last = states.len() - 1;
-    let mut complete = Vec::new();
+    // The last stage, and no other, completes the ratio.
+    let (ends, others): (Vec<Step>, Vec<Step>) = steps(ratio, spec, &states)
+        .into_iter()
+        .partition(|step| step.to == last);
+    let keep_unbeaten = |kept: &mut Vec<Partial>, new: Partial| {
+        if !kept.iter().any(|old| beats(&old.cost, &new.cost)) {
+            kept.retain(|old| !beats(&new.cost, &old.cost));
+            kept.push(new);
+        }
+    };
+    let mut complete: Vec<Partial> = Vec::new();
     for count in 1..=MAX_STAGES {
         let stopband_db = spec.stopband_db + 20.0 * libm::log10(count as f64);
         let mut layer = vec![Vec::new(); states.len()];
         layer[0].push(Partial::default());
-        for position in 1..=count {
+        for _ in 1..count {
             let mut next = vec![Vec::new(); states.len()];
-            // The last stage, and no other, completes the ratio.
-            for step in steps
-                .iter()
-                .filter(|step| (step.to == last) == (position == count))
-            {
+            for step in &others {
                 for partial in &layer[step.from] {
-                    keep(&mut next[step.to], partial.then(step, stopband_db));
+                    let longer = partial.then(step, stopband_db);
+                    if !complete.iter().any(|done| beats(&done.cost, &longer.cost)) {
+                        keep_unbeaten(&mut next[step.to], longer);
+                    }
                 }
             }
             layer = next;
         }
-        complete.append(&mut layer[last]);
+        for step in &ends {
+            for partial in &layer[step.from] {
+                keep_unbeaten(&mut complete, partial.then(step, stopband_db));
+            }
+        }
     }
     Ok(complete)
 }
