@@ -14,6 +14,7 @@ pub(crate) struct Tally {
     /// Share covered of each seed: answers along one trace are not independent.
     covered: Vec<f64>,
     covered_start: Vec<f64>,
+    covered_first: Vec<f64>,
     times: [Vec<f64>; 3],
     gaps: Vec<(i64, f64, bool)>,
     rivals: [(f64, f64); 3],
@@ -101,6 +102,9 @@ impl Tally {
             .extend(share(trial.answers.iter().copied().filter(|a| a.steady)));
         self.covered_start
             .extend(share(trial.answers.iter().copied().filter(|a| a.start)));
+        let first = |a: &Answer| a.start && a.t_s - trial.first_t_s < 120.0;
+        self.covered_first
+            .extend(share(trial.answers.iter().copied().filter(first)));
         for (times, limit) in self.times.iter_mut().zip([10.0, 1.0, 0.1]) {
             times.push(settle(&trial, limit));
         }
@@ -139,6 +143,7 @@ impl Tally {
         self.count += other.count;
         self.covered.extend(other.covered);
         self.covered_start.extend(other.covered_start);
+        self.covered_first.extend(other.covered_first);
         for (times, more) in self.times.iter_mut().zip(other.times) {
             times.extend(more);
         }
@@ -172,9 +177,12 @@ impl Tally {
         }
     }
 
-    /// Holdover and events, where there are any.
+    /// The first minutes; holdover and events, where there are any.
     pub(crate) fn extra_lines(&self) -> Vec<String> {
-        let mut lines = Vec::new();
+        let (covered, error) = mean_and_error(&self.covered_first);
+        let mut lines = vec![format!(
+            "  first two minutes: coverage {covered:.3} ± {error:.3}"
+        )];
         for (length, name) in [(72, "1 min"), (3600, "1 h"), (86_400, "24 h")] {
             let errors: Vec<_> = self.gaps.iter().filter(|gap| gap.0 == length).collect();
             if errors.is_empty() {
