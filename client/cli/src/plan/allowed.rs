@@ -3,8 +3,8 @@
 use ratewright_ratio::plan::{Query, plan};
 use ratewright_ratio::{
     Bounds, Cadence, Certificate, Exact, Fraction, Multiple, MultipleBest, MultipleError, Node,
-    Region, RegionError, Rung, best_for_m, best_in, best_multiple, best_power_of_two, ladder,
-    ladder_in, residual,
+    Region, RegionError, Rung, Stepping, best_for_m, best_in, best_multiple, best_power_of_two,
+    ladder, ladder_in, residual,
 };
 
 /// The ratios to choose from.
@@ -60,7 +60,7 @@ pub(crate) enum Proof {
     /// A certificate for the target and what is allowed.
     Direct(Certificate),
     /// A certificate for the problem that is left when the multiple is divided out.
-    Reduced(Multiple, MultipleBest),
+    Reduced(MultipleBest),
     /// None is needed: see [`ROUNDED`].
     Rounded,
 }
@@ -87,6 +87,21 @@ impl Allowed {
             Self::FixedM { m, max_l } => Ok(fixed(target, m, max_l)),
             Self::PowerOfTwoM(bounds) => Ok(powers_of_two(target, &bounds)),
         }
+    }
+}
+
+impl Answer {
+    /// Stepping beside a cadence of two filters, with as many phases as the two have together, if
+    /// that is off by less. None where M is the modulus of an accumulator: the cadence is that of
+    /// its two steps already.
+    pub(crate) fn stepping_of_equal_size(&self) -> Option<Stepping> {
+        if matches!(self.proof, Proof::Rounded) {
+            return None;
+        }
+        let cadence = self.cadence.as_ref()?;
+        let phases = cadence.low().numer().checked_add(*cadence.high().numer())?;
+        let stepping = Stepping::new(&self.target, phases).ok()?;
+        (stepping.error_bound() < cadence.error_bound()).then_some(stepping)
     }
 }
 
@@ -135,7 +150,7 @@ fn multiples(target: Exact, multiple: Multiple, bounds: &Bounds) -> Result<Answe
         target,
         best,
         residual: residual(&best, &target),
-        proof: Proof::Reduced(multiple, found),
+        proof: Proof::Reduced(found),
         ladder: ladder.collect(),
         cadence: enclosing(&target, &found.reduced.certificate, |end| {
             multiplied(multiple, end)

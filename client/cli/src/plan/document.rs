@@ -81,7 +81,7 @@ fn best(question: &Question, answer: &Answer) -> Value {
 fn proof(proof: &Proof) -> Value {
     match proof {
         Proof::Direct(direct) => certificate(direct),
-        Proof::Reduced(_, found) => {
+        Proof::Reduced(found) => {
             let mut document = certificate(&found.reduced.certificate);
             document["reduced"] = json!({
                 "l": found.reduced.ratio.numer(),

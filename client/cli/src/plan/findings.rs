@@ -4,7 +4,7 @@ use ratewright_ratio::plan::seconds_to_slip;
 use ratewright_ratio::stages::Chain;
 use ratewright_ratio::{Exact, Fraction, Stepping, SteppingError, residual, simplest};
 
-use super::allowed::{Answer, Proof};
+use super::allowed::Answer;
 use super::frames::Frames;
 use super::limits::not_allowed;
 use super::question::Question;
@@ -63,9 +63,7 @@ fn width(question: &Question, best: &Fraction) -> Option<Width> {
     })
 }
 
-/// Stepping with the phases asked for; else, beside a cadence of filters, with as many phases as
-/// its two filters have together, if that is off by less. (Where M is the modulus of an
-/// accumulator, the cadence is already that of its two steps.)
+/// Stepping with the phases asked for; else beside a cadence, where it helps.
 fn stepping(question: &Question, answer: &Answer) -> Result<Option<Stepping>, Failure> {
     if let Some(phases) = question.phases {
         let stepping = Stepping::new(&answer.target, phases);
@@ -81,16 +79,7 @@ fn stepping(question: &Question, answer: &Answer) -> Result<Option<Stepping>, Fa
             })
         });
     }
-    let filters = answer
-        .cadence
-        .as_ref()
-        .filter(|_| !matches!(answer.proof, Proof::Rounded));
-    let of_equal_size = filters.and_then(|cadence| {
-        let phases = cadence.low().numer().checked_add(*cadence.high().numer())?;
-        let stepping = Stepping::new(&answer.target, phases).ok()?;
-        (stepping.error_bound() < cadence.error_bound()).then_some(stepping)
-    });
-    Ok(of_equal_size)
+    Ok(answer.stepping_of_equal_size())
 }
 
 impl Question {

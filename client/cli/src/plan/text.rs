@@ -27,7 +27,7 @@ pub(crate) fn text(question: &Question, findings: &Findings) -> String {
     let answer = &findings.answer;
     head(&mut out, question, answer);
     best(&mut out, question, answer);
-    line(&mut out, "proof", &proof(&answer.proof));
+    line(&mut out, "proof", &proof(&answer.proof, &question.allowed));
     if let Some(width) = &findings.width {
         interval(&mut out, width);
     }
@@ -130,10 +130,14 @@ fn best(out: &mut String, question: &Question, answer: &Answer) {
     line(out, "", &lasts);
 }
 
-fn proof(proof: &Proof) -> String {
+fn proof(proof: &Proof, allowed: &Allowed) -> String {
+    let multiple = match allowed {
+        Allowed::Multiple(multiple, _) => Some(*multiple),
+        _ => None,
+    };
     match proof {
-        Proof::Direct(certificate) => certified(certificate, None),
-        Proof::Reduced(multiple, found) => certified(&found.reduced.certificate, Some(*multiple)),
+        Proof::Direct(certificate) => certified(certificate, multiple),
+        Proof::Reduced(found) => certified(&found.reduced.certificate, multiple),
         Proof::Rounded => ROUNDED.to_owned(),
     }
 }

@@ -1,28 +1,53 @@
 //! A planning question and its answer.
 
+// What a plan may be asked for is said once for the command line and the service.
+#[path = "../../../../client/cli/src/plan/allowed.rs"]
+mod allowed;
+mod answer;
+mod limit;
+#[cfg(test)]
+mod tests;
+
 use num_rational::Ratio;
 use ratewright_proto::v1;
 use ratewright_ratio::{
-    Bounds, Exact, Fraction, Interval,
-    plan::{Candidate, Plan, Query, seconds_to_slip},
-    simplest, target_from_rates,
+    Exact, FrameCadence, FrameOrder, Interval, stages::FilterSpec, target_from_rates,
 };
 
-use super::{names, rate, setting};
+use super::{names, rate};
 use crate::refused::{Refused, Violation, Violations};
+use allowed::Allowed;
+pub(crate) use answer::answer;
 
 /// A question that has been checked.
 #[derive(Debug)]
 pub(crate) struct Question {
-    pub(crate) query: Query,
+    target: Exact,
+    allowed: Allowed,
+    headroom_samples: f64,
+    /// The sink's rate, if it is known.
+    sink_rate_hz: Option<Ratio<u64>>,
     /// Interval of the target, if the drifts have a width.
-    pub(crate) interval: Option<Interval>,
+    interval: Option<Interval>,
+    filter: Option<Filter>,
+    /// Phases of a resampler that steps.
+    phases: Option<u64>,
+    /// Samples of the source and of the sink per video frame.
+    frames: Option<(FrameCadence, FrameCadence)>,
+}
+
+/// What the filter has to do.
+#[derive(Debug)]
+struct Filter {
+    spec: FilterSpec,
+    /// The transition, as a part of the band below half the smaller rate.
+    relative_width: f64,
 }
 
 pub(crate) fn question(sent: v1::PlanRatioRequest) -> Result<Question, Refused> {
     let nominal = nominal(&sent)?;
     let mut violations = Violations::default();
-    let bounds = violations.note(bounds(&sent));
+    let allowed = violations.note(limit::allowed(&sent));
     let headroom = violations.note(headroom(sent.headroom_samples));
     let drifts = [
         violations.note(drift("source_drift", sent.source_drift)),
@@ -36,11 +61,13 @@ pub(crate) fn question(sent: v1::PlanRatioRequest) -> Result<Question, Refused> 
             sent.sink_drift_half_width,
         )),
     ];
+    let filter = violations.note(filter(&sent, &nominal));
+    let frames = violations.note(frames(&sent, &nominal));
     violations.into_result()?;
     let [Some(source), Some(sink), Some(source_half), Some(sink_half)] = drifts else {
         unreachable!("a drift that is missing was noted as a violation")
     };
-    let (Some(bounds), Some(headroom_samples)) = (bounds, headroom) else {
+    let (Some(headroom_samples), Some(allowed)) = (headroom, allowed) else {
         unreachable!("a field that is missing was noted as a violation")
     };
     let target = drifted(nominal.target, source, sink)?;
@@ -53,20 +80,22 @@ pub(crate) fn question(sent: v1::PlanRatioRequest) -> Result<Question, Refused> 
             Interval::closed(low, high).expect("a wider source and a slower sink lower the target"),
         )
     };
-    let sink_rate_hz = nominal.sink_rate_hz;
-    let query = Query {
+    Ok(Question {
         target,
-        bounds,
+        allowed,
         headroom_samples,
-        sink_rate_hz,
-        filter: None,
-    };
-    Ok(Question { query, interval })
+        sink_rate_hz: nominal.rates.map(|(_, sink)| sink),
+        interval,
+        filter: filter.flatten(),
+        phases: (sent.phases != 0).then_some(sent.phases),
+        frames: frames.flatten(),
+    })
 }
 
 struct Nominal {
     target: Exact,
-    sink_rate_hz: Option<Ratio<u64>>,
+    /// Source and sink rate, if they were sent.
+    rates: Option<(Ratio<u64>, Ratio<u64>)>,
 }
 
 fn nominal(sent: &v1::PlanRatioRequest) -> Result<Nominal, Refused> {
@@ -78,7 +107,7 @@ fn nominal(sent: &v1::PlanRatioRequest) -> Result<Nominal, Refused> {
         }
         Some(target) => Ok(Nominal {
             target: fraction("target", target)?,
-            sink_rate_hz: None,
+            rates: None,
         }),
         None => {
             let mut violations = Violations::default();
@@ -91,7 +120,7 @@ fn nominal(sent: &v1::PlanRatioRequest) -> Result<Nominal, Refused> {
             let target = target_from_rates(source, sink).expect("a checked rate is not 0 Hz");
             Ok(Nominal {
                 target,
-                sink_rate_hz: Some(sink),
+                rates: Some((source, sink)),
             })
         }
     }
@@ -138,26 +167,6 @@ fn drifted(nominal: Exact, source: f64, sink: f64) -> Result<Exact, Violation> {
     }
 }
 
-fn bounds(sent: &v1::PlanRatioRequest) -> Result<Bounds, Violation> {
-    let bound = |field: &str, value: u64| match value {
-        0 => Ok(1024),
-        1..=0x8000_0000 => Ok(value),
-        _ => Err(Violation::new(
-            field,
-            value,
-            "1 to 2147483648, or 0 for 1024",
-        )),
-    };
-    let (max_l, max_m) = (bound("max_l", sent.max_l)?, bound("max_m", sent.max_m)?);
-    let bounds = Bounds::new(max_l, max_m).expect("2^31 is within what the ratio crate takes");
-    if sent.largest_prime == 0 {
-        return Ok(bounds);
-    }
-    bounds
-        .with_largest_prime(sent.largest_prime)
-        .map_err(|why| Violation::new("largest_prime", sent.largest_prime, why.to_string()))
-}
-
 fn headroom(sent: f64) -> Result<f64, Violation> {
     match sent {
         0.0 => Ok(1.0),
@@ -186,158 +195,45 @@ fn half_width(field: &str, sent: f64) -> Result<f64, Violation> {
     }
 }
 
-pub(crate) fn plan_to_wire(question: &Question, plan: &Plan) -> v1::PlanRatioResponse {
-    let simplest = question.interval.as_ref().and_then(simplest);
-    v1::PlanRatioResponse {
-        target: Some(rate::fraction_to_wire(&plan.target)),
-        best: Some(candidate_to_wire(&plan.best)),
-        ladder: ladder_to_wire(&question.query, plan),
-        cadence: plan.cadence.as_ref().map(setting::cadence_to_wire),
-        simplest: simplest.map(|simplest| rate::fraction_to_wire(&simplest.fraction)),
-    }
-}
-
-fn candidate_to_wire(candidate: &Candidate) -> v1::Candidate {
-    // The nearest ratio is proved by a bracket, never by an interval.
-    let interval = (&candidate.ratio, &candidate.ratio);
-    v1::Candidate {
-        certificate: Some(setting::certificate_to_wire(
-            &candidate.certificate,
-            interval,
-        )),
-        ..rung_to_wire(
-            &candidate.ratio,
-            candidate.residual,
-            candidate.seconds_to_slip,
-        )
-    }
-}
-
-/// The first and the last ratio of each rung: a rung may hold thousands.
-fn ladder_to_wire(query: &Query, plan: &Plan) -> Vec<v1::Candidate> {
-    let shown = |ratio: Fraction, residual: f64| {
-        let slip = seconds_to_slip(residual, query.headroom_samples, query.sink_rate_hz);
-        rung_to_wire(&ratio, residual, slip)
+fn filter(sent: &v1::PlanRatioRequest, nominal: &Nominal) -> Result<Option<Filter>, Violation> {
+    let Some(wish) = &sent.filter else {
+        return Ok(None);
     };
-    let mut ladder = Vec::new();
-    for rung in &plan.ladder {
-        ladder.push(shown(rung.first, rung.first_residual));
-        if rung.count > 1 {
-            ladder.push(shown(rung.last(), rung.last_residual));
-        }
-    }
-    ladder
+    let (source, sink) = nominal.rates.ok_or_else(|| needs_rates("filter"))?;
+    let hertz = |rate: Ratio<u64>| *rate.numer() as f64 / *rate.denom() as f64;
+    let spec = FilterSpec {
+        source_rate_hz: hertz(source),
+        passband_hz: wish.passband_hz,
+        stopband_db: wish.attenuation_db,
+    };
+    Ok(Some(Filter {
+        spec,
+        relative_width: 1.0 - wish.passband_hz / (hertz(source.min(sink)) / 2.0),
+    }))
 }
 
-fn rung_to_wire(ratio: &Fraction, residual: f64, seconds_to_slip: Option<f64>) -> v1::Candidate {
-    v1::Candidate {
-        ratio: Some(rate::ratio_to_wire(ratio)),
-        exact: residual == 0.0,
-        residual_ppb: residual * 1e9,
-        seconds_to_slip,
-        certificate: None,
+fn frames(
+    sent: &v1::PlanRatioRequest,
+    nominal: &Nominal,
+) -> Result<Option<(FrameCadence, FrameCadence)>, Violation> {
+    if sent.frame_rate.is_none() {
+        return Ok(None);
     }
-}
-
-#[cfg(test)]
-mod tests {
-    use super::*;
-
-    fn hertz(numerator: u64) -> Option<v1::Rate> {
-        Some(v1::Rate {
-            numerator,
-            denominator: 1,
+    let frame_rate = rate::rate("frame_rate", sent.frame_rate)?;
+    let (source, sink) = nominal.rates.ok_or_else(|| needs_rates("frame_rate"))?;
+    let of = |audio| {
+        FrameCadence::new(audio, frame_rate, FrameOrder::Smpte272m).map_err(|why| {
+            let accepted = format!("a rate with shorter periods: {why}");
+            Violation::new("frame_rate", frame_rate, accepted)
         })
-    }
+    };
+    Ok(Some((of(source)?, of(sink)?)))
+}
 
-    fn request() -> v1::PlanRatioRequest {
-        v1::PlanRatioRequest {
-            source_rate: hertz(44_100),
-            sink_rate: hertz(48_000),
-            ..Default::default()
-        }
-    }
-
-    #[test]
-    fn nominal_rates_give_the_exact_target() {
-        let question = question(request()).unwrap();
-        assert_eq!(question.query.target, Exact::new(160, 147));
-        let answer = plan_to_wire(&question, &ratewright_ratio::plan::plan(&question.query));
-        let best = answer.best.unwrap();
-        assert_eq!(best.ratio, Some(v1::Ratio { l: 160, m: 147 }));
-        assert!(best.exact && best.seconds_to_slip.is_none());
-    }
-
-    #[test]
-    fn a_fast_sink_raises_the_target() {
-        let sent = v1::PlanRatioRequest {
-            sink_drift: 1e-5,
-            sink_drift_half_width: 1e-7,
-            ..request()
-        };
-        let question = question(sent).unwrap();
-        let target = question.query.target;
-        let relative = *target.numer() as f64 / *target.denom() as f64 / (160.0 / 147.0) - 1.0;
-        assert!((relative - 1e-5).abs() < 1e-15, "{relative}");
-        let interval = question.interval.unwrap();
-        assert!(interval.lo() < &target && &target < interval.hi());
-    }
-
-    #[test]
-    fn the_longest_rates_still_fit() {
-        let sent = v1::PlanRatioRequest {
-            source_rate: Some(v1::Rate {
-                numerator: 999_999_999_989,
-                denominator: 999_999_937,
-            }),
-            sink_rate: Some(v1::Rate {
-                numerator: 999_999_999_961,
-                denominator: 999_999_929,
-            }),
-            source_drift: 1.234_567e-5,
-            sink_drift: -7.654_321e-6,
-            ..Default::default()
-        };
-        assert!(question(sent).is_ok());
-    }
-
-    #[test]
-    fn faults_are_named() {
-        let both = v1::PlanRatioRequest {
-            target: Some(v1::Fraction::default()),
-            ..request()
-        };
-        let zero = v1::PlanRatioRequest {
-            target: Some(v1::Fraction {
-                numerator: "1".into(),
-                denominator: "0".into(),
-            }),
-            ..Default::default()
-        };
-        let wild = v1::PlanRatioRequest {
-            max_l: 1 << 40,
-            sink_drift: f64::NAN,
-            ..request()
-        };
-        for (sent, fields) in [
-            (both, vec!["target"]),
-            (zero, vec!["target.denominator"]),
-            (wild, vec!["max_l", "sink_drift"]),
-            (
-                v1::PlanRatioRequest::default(),
-                vec!["source_rate", "sink_rate"],
-            ),
-        ] {
-            let Refused::Invalid(violations) = question(sent).unwrap_err() else {
-                panic!("a wrong field is a violation")
-            };
-            assert_eq!(
-                violations
-                    .iter()
-                    .map(|v| v.field.as_str())
-                    .collect::<Vec<_>>(),
-                fields
-            );
-        }
-    }
+fn needs_rates(field: &str) -> Violation {
+    Violation::new(
+        field,
+        "sent beside target",
+        "none beside target: send the two rates",
+    )
 }

@@ -55,3 +55,39 @@ async fn the_classic_ratio_is_found_exact() {
     let status = facility.clients.ratios.plan_ratio(wrong).await.unwrap_err();
     assert_eq!(violations(&status)[0].0, "sink_rate.numerator");
 }
+
+#[tokio::test]
+async fn a_limit_and_wishes_go_over_the_wire() {
+    let mut facility = Facility::start().await;
+    let hertz = |numerator| {
+        Some(v1::Rate {
+            numerator,
+            denominator: 1,
+        })
+    };
+    let request = v1::PlanRatioRequest {
+        source_rate: hertz(44_100),
+        sink_rate: hertz(48_000),
+        limit: Some(v1::plan_ratio_request::Limit::LMultipleOf(320)),
+        filter: Some(v1::FilterWish {
+            passband_hz: 20_000.0,
+            attenuation_db: 100.0,
+        }),
+        phases: 256,
+        frame_rate: hertz(25),
+        ..Default::default()
+    };
+    let plan = facility.clients.ratios.plan_ratio(request.clone()).await;
+    let plan = plan.unwrap().into_inner();
+    assert_eq!(plan.best.unwrap().ratio, Some(v1::Ratio { l: 320, m: 294 }));
+    assert!(plan.reduced.is_some() && plan.chains.len() > 1);
+    assert_eq!(plan.stepping.unwrap().phases, 256);
+    assert_eq!(plan.sink_frames.unwrap().samples, [1_920]);
+
+    let wrong = v1::PlanRatioRequest {
+        phases: 1,
+        ..request
+    };
+    let status = facility.clients.ratios.plan_ratio(wrong).await.unwrap_err();
+    assert_eq!(violations(&status)[0].0, "phases");
+}
