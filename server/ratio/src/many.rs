@@ -14,8 +14,8 @@ use thiserror::Error;
 
 use crate::{Bounds, Fraction, TargetError, best, smooth, target_from_f64};
 
-/// Lanes that run side by side.
-const LANES: usize = 8;
+/// Lanes that run side by side: four vectors, so that one divides while the others multiply.
+const LANES: usize = 16;
 
 /// Larger bounds are served one by one.
 const MAX_BOUND_OF_LANES: u64 = 1 << 26;

@@ -33,6 +33,25 @@ pub(crate) fn chain_with_end(target: &Exact, bounds: &Bounds) -> u64 {
     sum.wrapping_add(d)
 }
 
+/// The same for both ends of an interval: it ends where an integer is between them. The quotients are those of the
+/// lower end, and every second division waits for a product and a difference of the one before.
+#[inline(never)]
+pub(crate) fn chain_of_interval(interval: &Interval) -> u64 {
+    let part = |x: &u128| *x as u64;
+    let (mut n, mut d) = (part(interval.lo().numer()), part(interval.lo().denom()));
+    let (mut high_n, mut high_d) = (part(interval.hi().numer()), part(interval.hi().denom()));
+    let mut sum = 0u64;
+    loop {
+        let quotient = n / d;
+        let (rest, high_rest) = (n % d, high_n - quotient * high_d);
+        sum = sum.wrapping_add(quotient);
+        if (rest == 0) | (high_rest >= high_d) {
+            return sum;
+        }
+        (n, d, high_n, high_d) = (high_d, high_rest, d, rest);
+    }
+}
+
 /// Partial quotients a search has to look at: those of all convergents within bounds, and the one that leaves
 /// them, if there is one.
 pub(crate) fn steps_of_search(targets: &[Exact], bounds: &Bounds) -> Vec<u32> {

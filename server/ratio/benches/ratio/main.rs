@@ -129,6 +129,9 @@ fn simplest_in_intervals() {
                 Timing::new("floor: bare divisions", count, |i| {
                     baselines::division_chain(intervals[i].lo(), steps[i])
                 }),
+                Timing::new("divisions that find their own end", count, |i| {
+                    baselines::chain_of_interval(&intervals[i])
+                }),
                 Timing::new("simplest", count, |i| {
                     simplest(&intervals[i]).map_or(0, |answer| *answer.fraction.numer())
                 }),
