@@ -74,7 +74,8 @@
 //!
 //! - `cargo run --release -p ratewright-ratio --example brute_force`: 10^8 cases against brute force.
 //! - `cargo run --release -p ratewright-ratio --example cadence_billion`: 10^9 samples against the stated bounds.
-//! - `cargo bench -p ratewright-ratio`: times as ratios to the bare chain of divisions.
+//! - `cargo bench -p ratewright-ratio`: times as ratios to the bare chain of divisions; the head of
+//!   `benches/ratio/main.rs` has the figures, the goals, and why some are missed.
 //! - `cargo +nightly fuzz run public_functions`, in this crate's folder: any input against big integers.
 
 pub mod accumulator;

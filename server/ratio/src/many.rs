@@ -8,7 +8,7 @@
 //! exact search decides instead.
 //!
 //! **Method.** All lanes step until each has met its bound; a lane that has stands still. No lane branches.
-//! Cost: a third and less of one by one, on processors with vectors of four doubles.
+//! Cost: 1/2.3 to 1/3.1 of one by one, on processors with vectors of four doubles.
 
 use thiserror::Error;
 
