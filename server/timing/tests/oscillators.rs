@@ -87,19 +87,11 @@ fn a_compensated_oscillator_gets_a_narrower_interval_and_a_true_one() {
     let t = tally(Oscillator::Compensated, |seed| {
         model(0.1e-6, 3e-22, 1e-6, seed)
     });
-    println!(
-        "{:?} {:?} {:?} {:?}",
-        t.covered, t.half_width, t.gap_covered, t.gap_half_width
-    );
     assert_deserved(&t);
 }
 
 #[test]
 fn an_oven_oscillator_gets_a_narrower_interval_and_a_true_one() {
     let t = tally(Oscillator::Oven, |seed| model(1e-9, 1e-24, 0.2e-6, seed));
-    println!(
-        "{:?} {:?} {:?} {:?}",
-        t.covered, t.half_width, t.gap_covered, t.gap_half_width
-    );
     assert_deserved(&t);
 }
