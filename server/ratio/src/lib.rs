@@ -79,6 +79,7 @@
 //! - `cargo +nightly fuzz run public_functions`, in this crate's folder: any input against big integers.
 
 pub mod accumulator;
+pub mod allowed;
 pub mod balance;
 pub mod big;
 pub mod bounds;

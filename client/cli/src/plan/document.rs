@@ -7,11 +7,11 @@ use ratewright_ratio::{
 use serde_json::{Value, json};
 
 use super::Parts;
-use super::allowed::{Allowed, Answer, Proof, ROUNDED};
 use super::filter::{self, Filter};
 use super::findings::{Findings, Width};
 use super::frames::{self, Frames, LISTED_FRAMES};
 use super::question::Question;
+use ratewright_ratio::allowed::{Allowed, Answer, Proof, ROUNDED};
 
 /// The document. Ratios are numbers `l` and `m`; exact fractions of any size are texts `n/d`.
 pub(crate) fn document(question: &Question, findings: &Findings) -> Value {

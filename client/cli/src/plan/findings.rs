@@ -4,11 +4,11 @@ use ratewright_ratio::plan::seconds_to_slip;
 use ratewright_ratio::stages::Chain;
 use ratewright_ratio::{Exact, Fraction, Stepping, SteppingError, residual, simplest};
 
-use super::allowed::Answer;
 use super::frames::Frames;
 use super::limits::not_allowed;
 use super::question::Question;
 use crate::failure::Failure;
+use ratewright_ratio::allowed::Answer;
 
 /// What was found.
 #[derive(Debug)]

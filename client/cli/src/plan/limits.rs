@@ -3,8 +3,8 @@
 use clap::Args;
 use ratewright_ratio::{Bounds, MAX_BOUND, Multiple, MultipleError};
 
-use super::allowed::{Allowed, NotAllowed};
 use crate::failure::Failure;
+use ratewright_ratio::allowed::{Allowed, NotAllowed};
 
 /// Bounds of L and M where none is given.
 const COMMON_BOUND: u64 = 1024;

@@ -1,6 +1,5 @@
 //! `ratewright plan`: choosing a ratio without a daemon.
 
-mod allowed;
 mod document;
 mod drift;
 mod filter;

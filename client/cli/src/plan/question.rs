@@ -4,10 +4,10 @@ use num_rational::Ratio;
 use ratewright_ratio::{Exact, Interval, target_from_rates};
 
 use super::Arguments;
-use super::allowed::Allowed;
 use super::drift::Drift;
 use super::filter::Filter;
 use crate::failure::Failure;
+use ratewright_ratio::allowed::Allowed;
 
 /// A question, as the ratio crate takes it and as it was put.
 #[derive(Debug)]

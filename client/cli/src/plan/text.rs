@@ -8,12 +8,12 @@ use ratewright_ratio::{
 };
 
 use super::Parts;
-use super::allowed::{Allowed, Answer, Proof, ROUNDED, multiplied};
 use super::filter::{self, Filter};
 use super::findings::{Findings, Width};
 use super::frames::{self, Frames};
 use super::question::Question;
 use crate::show;
+use ratewright_ratio::allowed::{Allowed, Answer, Proof, ROUNDED, multiplied};
 
 /// Most frames that are listed; the shares of the period tell the rest.
 const LISTED_FRAMES: u64 = 15;

@@ -1,8 +1,5 @@
 //! A planning question and its answer.
 
-// What a plan may be asked for is said once for the command line and the service.
-#[path = "../../../../client/cli/src/plan/allowed.rs"]
-mod allowed;
 mod answer;
 mod limit;
 #[cfg(test)]
@@ -11,12 +8,12 @@ mod tests;
 use num_rational::Ratio;
 use ratewright_proto::v1;
 use ratewright_ratio::{
-    Exact, FrameCadence, FrameOrder, Interval, stages::FilterSpec, target_from_rates,
+    Exact, FrameCadence, FrameOrder, Interval, allowed::Allowed, stages::FilterSpec,
+    target_from_rates,
 };
 
 use super::{names, rate};
 use crate::refused::{Refused, Violation, Violations};
-use allowed::Allowed;
 pub(crate) use answer::answer;
 
 /// A question that has been checked.

@@ -8,10 +8,10 @@ use ratewright_ratio::{
     stages::{Chain, Stage, StageError, front},
 };
 
-use super::allowed::{Answer, Proof, ROUNDED};
 use super::{Filter, Question, limit};
 use crate::convert::{rate, setting};
 use crate::refused::{Refused, Violation};
+use ratewright_ratio::allowed::{Answer, Proof, ROUNDED};
 
 /// Most frames that are listed.
 const LISTED_FRAMES: u64 = 4_096;

@@ -3,8 +3,8 @@
 use ratewright_proto::v1::{self, plan_ratio_request::Limit};
 use ratewright_ratio::{Bounds, MAX_BOUND, Multiple, MultipleError, RegionError};
 
-use super::allowed::{Allowed, NotAllowed};
 use crate::refused::Violation;
+use ratewright_ratio::allowed::{Allowed, NotAllowed};
 
 /// Largest L and M that may be sent.
 const MOST: u64 = 1 << 31;

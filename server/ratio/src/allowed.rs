@@ -1,7 +1,13 @@
-//! Which ratios are allowed, and the nearest of them with its proof.
+//! Which ratios are allowed, and the nearest of them with its proof: one door for every limit a
+//! plan may be asked to keep.
+//!
+//! **Cost.** That of the search behind it, and of the ladder.
+//!
+//! **Corner cases.** Where M is fixed or a power of two there is nothing to prove beyond rounding;
+//! where a part must be a multiple, the proof is that of the problem with the multiple divided out.
 
-use ratewright_ratio::plan::{Query, plan};
-use ratewright_ratio::{
+use crate::plan::{Query, plan};
+use crate::{
     Bounds, Cadence, Certificate, Exact, Fraction, Multiple, MultipleBest, MultipleError, Node,
     Region, RegionError, Rung, Stepping, best_for_m, best_in, best_multiple, best_power_of_two,
     ladder, ladder_in, residual,
@@ -9,28 +15,39 @@ use ratewright_ratio::{
 
 /// The ratios to choose from.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
-pub(crate) enum Allowed {
+pub enum Allowed {
     /// L and M up to their bounds, perhaps without large prime factors.
     Bounded(Bounds),
     /// L·M up to a limit, from 1 to 2^63 − 1.
-    Product { max_product: u64 },
+    Product {
+        /// Largest L·M.
+        max_product: u64,
+    },
     /// `weight_l`·L + `weight_m`·M up to a limit.
     Cost {
+        /// Weight of L, at least 1.
         weight_l: u64,
+        /// Weight of M, at least 1.
         weight_m: u64,
+        /// Largest weighted sum.
         max_cost: u64,
     },
     /// L or M a multiple, both up to their bounds.
     Multiple(Multiple, Bounds),
     /// One M; L from 1 to `max_l`.
-    FixedM { m: u64, max_l: u64 },
+    FixedM {
+        /// The M.
+        m: u64,
+        /// Largest L.
+        max_l: u64,
+    },
     /// M a power of two, both up to their bounds.
     PowerOfTwoM(Bounds),
 }
 
 /// Why there is no such ratio.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, thiserror::Error)]
-pub(crate) enum NotAllowed {
+pub enum NotAllowed {
     /// The limit of a product or a weighted sum is out of range.
     #[error(transparent)]
     Region(#[from] RegionError),
@@ -41,22 +58,24 @@ pub(crate) enum NotAllowed {
 
 /// What was found.
 #[derive(Clone, Debug)]
-pub(crate) struct Answer {
-    pub(crate) target: Exact,
+pub struct Answer {
+    /// What was asked for, in lowest terms.
+    pub target: Exact,
     /// The nearest ratio: in lowest terms, unless M is fixed or a part has to be a multiple.
-    pub(crate) best: Fraction,
+    pub best: Fraction,
     /// (L/M)/target − 1 of it.
-    pub(crate) residual: f64,
-    pub(crate) proof: Proof,
+    pub residual: f64,
+    /// Why it is the nearest.
+    pub proof: Proof,
     /// Error against size, the simplest first.
-    pub(crate) ladder: Vec<Rung>,
+    pub ladder: Vec<Rung>,
     /// Two allowed ratios that average the target exactly.
-    pub(crate) cadence: Option<Cadence>,
+    pub cadence: Option<Cadence>,
 }
 
 /// Why the answer is the nearest.
 #[derive(Clone, Copy, Debug)]
-pub(crate) enum Proof {
+pub enum Proof {
     /// A certificate for the target and what is allowed.
     Direct(Certificate),
     /// A certificate for the problem that is left when the multiple is divided out.
@@ -66,11 +85,22 @@ pub(crate) enum Proof {
 }
 
 /// How [`Proof::Rounded`] is put in words.
-pub(crate) const ROUNDED: &str = "L is the target times M, rounded to the nearest L allowed";
+pub const ROUNDED: &str = "L is the target times M, rounded to the nearest L allowed";
 
 impl Allowed {
     /// The nearest of these ratios to `target`, and what goes with it.
-    pub(crate) fn answer(&self, target: &Exact) -> Result<Answer, NotAllowed> {
+    ///
+    /// # Errors
+    /// [`NotAllowed`] if no ratio is allowed at all.
+    ///
+    /// # Examples
+    /// ```
+    /// use ratewright_ratio::{Exact, Fraction, allowed::Allowed};
+    /// let small = Allowed::Product { max_product: 1_000 };
+    /// assert_eq!(small.answer(&Exact::new(160, 147))?.best, Fraction::new(25, 23));
+    /// # Ok::<(), ratewright_ratio::allowed::NotAllowed>(())
+    /// ```
+    pub fn answer(&self, target: &Exact) -> Result<Answer, NotAllowed> {
         let target = target.reduced();
         match *self {
             Self::Bounded(bounds) => Ok(bounded(target, bounds)),
@@ -94,7 +124,7 @@ impl Answer {
     /// Stepping beside a cadence of two filters, with as many phases as the two have together, if
     /// that is off by less. None where M is the modulus of an accumulator: the cadence is that of
     /// its two steps already.
-    pub(crate) fn stepping_of_equal_size(&self) -> Option<Stepping> {
+    pub fn stepping_of_equal_size(&self) -> Option<Stepping> {
         if matches!(self.proof, Proof::Rounded) {
             return None;
         }
@@ -227,7 +257,7 @@ fn on_grid(target: &Exact, m: u64, max_l: u64) -> Option<Cadence> {
 }
 
 /// The pair of which the certificate's problem has had the multiple divided out.
-pub(crate) fn multiplied(multiple: Multiple, node: Node) -> Node {
+pub fn multiplied(multiple: Multiple, node: Node) -> Node {
     match multiple {
         Multiple::OfL(k) => Node {
             l: k * node.l,
