@@ -1,5 +1,8 @@
 //! What the README copies from elsewhere is the same there, and what it points at exists.
-#![allow(clippy::disallowed_methods, reason = "it reads the files of the workspace")]
+#![allow(
+    clippy::disallowed_methods,
+    reason = "it reads the files of the workspace"
+)]
 
 use std::fs;
 
@@ -29,7 +32,10 @@ fn the_table_of_metrics_is_the_one_of_the_code() {
 fn relative_links_lead_somewhere() {
     for page in ["README.md", "DEVELOPERS.md"] {
         let text = text(page);
-        let links = text.split("](").skip(1).filter_map(|rest| rest.split(')').next());
+        let links = text
+            .split("](")
+            .skip(1)
+            .filter_map(|rest| rest.split(')').next());
         for link in links.filter(|link| !link.contains("://")) {
             let file = link.split('#').next().unwrap_or(link);
             assert!(workspace().join(file).exists(), "{page} points at {link}");
