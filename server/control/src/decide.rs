@@ -4,6 +4,7 @@ use crate::engine::Engine;
 use crate::issue::Stamp;
 use crate::record::{Ends, Judgement};
 use crate::schedule::Subject;
+use crate::timeline::Timeline;
 use crate::{CrossingState, Effects, HouseNs, Id, Reason, Transition};
 use ratewright_timing::State;
 
@@ -59,7 +60,7 @@ impl Engine {
         let Some(member) = self.look_at(id, now, lead_ns, effects) else {
             return;
         };
-        let ends = self.settle(member, now, lead_ns, effects);
+        let ends = self.settle(member, now, now.saturating_add(lead_ns), effects);
         let step_ns = self.step_ns(id, now, &ends);
         self.schedule
             .set(Subject::Crossing(id.clone()), now.saturating_add(step_ns));
@@ -83,15 +84,19 @@ impl Engine {
             Judgement::Change { reason, .. } => reason != Reason::First,
             Judgement::Pending | Judgement::Stay { .. } => false,
         };
+        let mut effect_ns = now.saturating_add(lead_ns);
         if members.iter().any(changes) {
+            let earliest_ns = effect_ns;
+            effect_ns = earliest_ns.max(self.last_effect_ns(&members));
+            let is_later = effect_ns > earliest_ns;
             for member in &mut members {
-                self.change_along(member, now, lead_ns);
+                self.change_along(member, now, effect_ns, is_later);
             }
         }
         let mut step_ns = None;
         for member in members {
             let id = member.id.clone();
-            let ends = self.settle(member, now, lead_ns, effects);
+            let ends = self.settle(member, now, effect_ns, effects);
             let own_ns = self.step_ns(&id, now, &ends);
             step_ns = Some(step_ns.map_or(own_ns, |least_ns: i64| least_ns.min(own_ns)));
         }
@@ -101,16 +106,31 @@ impl Engine {
         }
     }
 
-    /// A member that could have stayed changes with the others.
-    fn change_along(&self, member: &mut Member, now: HouseNs, lead_ns: i64) {
-        if matches!(member.judgement, Judgement::Change { .. }) {
-            return;
-        }
+    /// Latest effect of the settings of these members: no change can take effect before it.
+    fn last_effect_ns(&self, members: &[Member]) -> HouseNs {
+        let timelines = members
+            .iter()
+            .filter_map(|member| Some(&self.crossings.get(&member.id)?.ledger.timeline));
+        timelines
+            .filter_map(Timeline::last_effect_ns)
+            .max()
+            .unwrap_or(HouseNs::MIN)
+    }
+
+    /// A member that could have stayed changes with the others. One that changes anyhow keeps its
+    /// choice, unless that was made for an earlier effect.
+    fn change_along(&self, member: &mut Member, now: HouseNs, effect_ns: HouseNs, is_later: bool) {
+        let reason = match member.judgement {
+            Judgement::Change { .. } if !is_later => return,
+            Judgement::Change { reason, .. } => reason,
+            Judgement::Pending | Judgement::Stay { .. } => Reason::Group,
+        };
         if let Some(record) = self.crossings.get(&member.id) {
-            let choice = record.choose_anew(now, &member.ends, seconds(lead_ns));
+            let lead_s = seconds(effect_ns.saturating_sub(now));
+            let choice = record.choose_anew(now, &member.ends, lead_s);
             member.judgement = Judgement::Change {
                 choice: Box::new(choice),
-                reason: Reason::Group,
+                reason,
             };
         }
     }
@@ -144,7 +164,7 @@ impl Engine {
         &mut self,
         member: Member,
         now: HouseNs,
-        lead_ns: i64,
+        effect_ns: HouseNs,
         effects: &mut Effects,
     ) -> Ends {
         let Member {
@@ -155,7 +175,7 @@ impl Engine {
         let stamp = Stamp {
             epoch: self.epoch,
             decided_ns: now,
-            effect_ns: now.saturating_add(lead_ns),
+            effect_ns,
         };
         let Some(record) = self.crossings.get_mut(&id) else {
             return ends;

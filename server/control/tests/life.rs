@@ -254,6 +254,69 @@ fn a_group_switches_together() {
 }
 
 #[test]
+fn a_group_waits_for_what_a_member_has_under_way() {
+    let mut world = World::new();
+    world.add_exact("house", 48_000);
+    for (name, drift) in [("a", 5e-6), ("b", -5e-6)] {
+        world.add(
+            clock(name, 44_100),
+            crystal(drift, 1e-10),
+            MICROSECOND,
+            SECOND,
+        );
+    }
+    let group = Some(id("front"));
+    let alone = CrossingDeclaration {
+        lead_ns: 60 * SECOND,
+        ..crossing("x-a", "a", "house")
+    };
+    let grouped = CrossingDeclaration {
+        group: group.clone(),
+        ..crossing("x-b", "b", "house")
+    };
+    world.cross(alone.clone());
+    world.cross(grouped.clone());
+    world.run_until(HOUR);
+    // Other bounds make A change, a minute ahead; then it joins B, which has to change at once.
+    let bounds = ratewright_ratio::Bounds::new(512, 512).expect("in range");
+    let alone = CrossingDeclaration { bounds, ..alone };
+    world.apply(Event::DeclareCrossing(alone.clone()));
+    let under_way_ns = HOUR + 60 * SECOND;
+    let newest = |world: &World, name: &str| -> Setting {
+        let settings = &world.tally(name).settings;
+        settings.last().expect("settings were made").clone()
+    };
+    world.run_until(HOUR + SECOND);
+    assert_eq!(newest(&world, "x-a").effect_ns, under_way_ns);
+    let joining = CrossingDeclaration {
+        group,
+        lead_ns: SECOND,
+        ..alone
+    };
+    world.apply(Event::DeclareCrossing(joining));
+    let effects = world.apply(Event::DeclareCrossing(CrossingDeclaration {
+        bounds,
+        ..grouped
+    }));
+    let told: Vec<(&str, i64, Reason)> = effects
+        .settings
+        .iter()
+        .map(|s| (s.crossing.as_str(), s.effect_ns, s.reason))
+        .collect();
+    assert_eq!(
+        told,
+        [
+            ("x-a", under_way_ns, Reason::Group),
+            ("x-b", under_way_ns, Reason::Declaration),
+        ]
+    );
+    world.run_until(3 * HOUR);
+    for name in ["x-a", "x-b"] {
+        assert!(world.phase_of(name).abs() <= 4.0);
+    }
+}
+
+#[test]
 fn another_rate_begins_anew() {
     let mut world = facility(crystal(8e-6, 1e-10));
     world.run_until(HOUR);
