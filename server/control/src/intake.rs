@@ -1,6 +1,6 @@
 //! Readings come in: which are taken, and when a link is begun for them.
 
-use ratewright_timing::Outcome;
+use ratewright_timing::{Measurement, Outcome};
 
 use crate::clocks::{ClockRecord, Clocks, MAX_DEPTH};
 use crate::link::LinkRecord;
@@ -8,6 +8,10 @@ use crate::{HouseNs, Id, Reading, Reference, Refusal};
 
 /// Most links of one clock.
 const MAX_LINKS: usize = 8;
+/// A reading against house time may be ahead of it by this much, ns (10 min): probes that keep
+/// house time on another scale, or send a stretch of readings at once, stay well within it, and
+/// no wrong time can have the honest ones after it refused as going back for much longer.
+const AHEAD_NS: i64 = 600_000_000_000;
 
 impl Clocks {
     /// Takes a reading in. True with the outcome if the link is new.
@@ -18,14 +22,16 @@ impl Clocks {
     ) -> Result<(Outcome, bool), Refusal> {
         let record = self.accountable(reading)?;
         let known = record.links.iter().position(|link| link.is_of(reading));
+        self.check_not_ahead(reading, known.map(|index| &record.links[index]), now)?;
         if let Some(index) = known {
             let next_lineage = self.links_begun + 1;
             let record = self
                 .records
                 .get_mut(&reading.clock)
                 .expect("it was found above");
-            let outcome = record.links[index].observe(reading, now, next_lineage)?;
-            if record.links[index].lineage == next_lineage {
+            let link = &mut record.links[index];
+            let outcome = link.observe(&record.declaration, reading, now, next_lineage)?;
+            if link.lineage == next_lineage {
                 self.links_begun = next_lineage;
             }
             return Ok((outcome, false));
@@ -55,6 +61,41 @@ impl Clocks {
             return Err(Refusal::not_found("reference", host, known));
         }
         Ok(record)
+    }
+
+    /// Refuses a reading far ahead of what its reference can show by now: once it was taken, the
+    /// honest ones after it would be refused as going back.
+    fn check_not_ahead(
+        &self,
+        reading: &Reading,
+        link: Option<&LinkRecord>,
+        now: HouseNs,
+    ) -> Result<(), Refusal> {
+        let latest_ns = match (&reading.reference, link) {
+            (Reference::House, _) => now.saturating_add(AHEAD_NS),
+            (Reference::Clock(host), Some(link)) if self.is_live(host) => {
+                link.latest_reference_ns(now)
+            }
+            (Reference::Clock(_), _) => return Ok(()),
+        };
+        let reference_ns = reading.measurement.reference_ns();
+        if reference_ns <= latest_ns {
+            return Ok(());
+        }
+        let field = match reading.measurement {
+            Measurement::Exchange { .. } => "measurement.t3_ns",
+            _ => "measurement.reference_ns",
+        };
+        let accepted = format!("up to {latest_ns}, as far ahead as the reference may be by now");
+        Err(Refusal::invalid(field, reference_ns, accepted))
+    }
+
+    /// False for an exact clock: a record read against one has a time base of its own, and comes
+    /// in faster than its time goes by.
+    fn is_live(&self, host: &Id) -> bool {
+        self.records
+            .get(host)
+            .is_some_and(|record| !record.declaration.exact)
     }
 
     /// Checks that a link may be begun; gives the idle one whose place it takes, if there is need.

@@ -1,6 +1,6 @@
 //! One link: a clock, read against one reference by one probe.
 
-use ratewright_timing::{Estimate, Event as TimingEvent, Link, Outcome};
+use ratewright_timing::{Estimate, Event as TimingEvent, Link, Outcome, Refusal as Timing};
 use serde::{Deserialize, Serialize};
 
 use crate::clocks::MAX_DEPTH;
@@ -11,6 +11,17 @@ const ABANDONED_NS: i64 = 86_400_000_000_000;
 /// The least latency seen so far is forgotten at this rate, 1 ns in so many: the reference may
 /// run slower than house time, by less than 200 ppm.
 const FORGET_LATENCY: i64 = 5_000;
+
+/// A link that took nothing for so long is stuck: it takes a reading that goes back, and begins
+/// anew, ns (10 min): a single wrong reference time, or a reference that was set back, must not
+/// stop it for ever, while strays that come late do not make it forget what it knows.
+const STUCK_NS: i64 = 600_000_000_000;
+/// A reading may be ahead of what the link makes of its reference's time by this much, ns (1 h):
+/// readings that were kept back may be that far apart, and all come at once.
+const LEAP_NS: i64 = 3_600_000_000_000;
+/// A reading that arrives later than the least latency by more than this, ns (10 s), was not
+/// under way so long: the reference was set, or the least latency came of a wrong time.
+const LATEST_NS: i64 = 10_000_000_000;
 
 /// A link's estimator with what the engine must know of its readings.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
@@ -71,11 +82,10 @@ impl LinkRecord {
             let value = format!("{} bytes long", reading.probe.len());
             return Err(Refusal::invalid("probe", value, "1 to 63 bytes"));
         }
-        let config = declaration.link_config();
         let mut record = LinkRecord {
             reference: reading.reference.clone(),
             probe: reading.probe.clone(),
-            link: Link::new(config).expect("the declaration was checked when it came in"),
+            link: fresh(declaration),
             lineage,
             restart: None,
             fitted_ns: now,
@@ -84,7 +94,7 @@ impl LinkRecord {
             arrived_ns: now,
             offset_ns: reading.measurement.reference_ns().saturating_sub(now),
         };
-        let outcome = record.observe(reading, now, lineage)?;
+        let outcome = record.observe(declaration, reading, now, lineage)?;
         Ok((record, outcome))
     }
 
@@ -99,6 +109,7 @@ impl LinkRecord {
     /// Takes a reading; `next_lineage` becomes the link's if its phase begins anew.
     pub(crate) fn observe(
         &mut self,
+        declaration: &ClockDeclaration,
         reading: &Reading,
         now: HouseNs,
         next_lineage: u32,
@@ -107,10 +118,16 @@ impl LinkRecord {
             0 => self.last_sequence.saturating_add(1),
             own => own,
         };
-        let outcome = self
-            .link
-            .observe(sequence, &reading.measurement)
-            .map_err(refusal)?;
+        let outcome = match self.link.observe(sequence, &reading.measurement) {
+            Err(Timing::TimeWentBack { .. }) if self.is_stuck(now) => {
+                let mut link = fresh(declaration);
+                link.observe(sequence, &reading.measurement)
+                    .map_err(refusal)?;
+                self.link = link;
+                Outcome::Event(TimingEvent::Restart)
+            }
+            taken => taken.map_err(refusal)?,
+        };
         if outcome == Outcome::Stale {
             return Ok(outcome);
         }
@@ -127,12 +144,35 @@ impl LinkRecord {
         } else {
             (self.fitted_ns, self.unfit_ns) = (now, None);
         }
+        // An outlier's time is not to be trusted, but after a silence there is no better one.
+        if outcome != Outcome::Outlier || self.is_stuck(now) {
+            self.keep_offset(reading.measurement.reference_ns(), now);
+        }
         self.last_sequence = sequence;
-        let arrived = reading.measurement.reference_ns().saturating_sub(now);
-        let forgotten = now.saturating_sub(self.arrived_ns) / FORGET_LATENCY;
-        self.offset_ns = arrived.max(self.offset_ns.saturating_sub(forgotten));
         self.arrived_ns = now;
         Ok(outcome)
+    }
+
+    /// Latest time that a host's clock may show by now; any at all once the link is stuck: the
+    /// host's clock may have been set.
+    pub(crate) fn latest_reference_ns(&self, now: HouseNs) -> i64 {
+        if self.is_stuck(now) {
+            return i64::MAX;
+        }
+        now.saturating_add(self.offset_ns).saturating_add(LEAP_NS)
+    }
+
+    fn is_stuck(&self, now: HouseNs) -> bool {
+        now.saturating_sub(self.arrived_ns) > STUCK_NS
+    }
+
+    /// Keeps the offset of the readings that were under way the least.
+    fn keep_offset(&mut self, reference_ns: i64, now: HouseNs) {
+        let arrived = reference_ns.saturating_sub(now);
+        let forgotten = now.saturating_sub(self.arrived_ns) / FORGET_LATENCY;
+        let least = self.offset_ns.saturating_sub(forgotten);
+        let is_late = arrived < least.saturating_sub(LATEST_NS);
+        self.offset_ns = if is_late { arrived } else { arrived.max(least) };
     }
 
     /// The estimate at a house time, which is mapped to the reference's.
@@ -141,9 +181,12 @@ impl LinkRecord {
     }
 }
 
+fn fresh(declaration: &ClockDeclaration) -> Link {
+    Link::new(declaration.link_config()).expect("the declaration was checked when it came in")
+}
+
 /// A refusal of the estimator, with the path of the field.
-fn refusal(refused: ratewright_timing::Refusal) -> Refusal {
-    use ratewright_timing::Refusal as Timing;
+fn refusal(refused: Timing) -> Refusal {
     let path = |field: &str| format!("measurement.{field}");
     match refused {
         Timing::OutOfRange {
