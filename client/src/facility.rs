@@ -154,7 +154,8 @@ pub struct CrossingStatus {
     pub phase_error_samples: f64,
     /// Its standard deviation, sink samples.
     pub phase_deviation_samples: f64,
-    /// Seconds until the 95 % band of the phase error leaves the headroom; `None` if never.
+    /// Seconds until the 95 % band of the phase error leaves the headroom; `None` if not within
+    /// a day.
     pub seconds_to_slip: Option<f64>,
     /// The setting in force or on its way.
     pub setting: Option<Setting>,

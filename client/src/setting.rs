@@ -32,8 +32,8 @@ pub struct Setting {
     /// House time after which a follower that heard nothing reports itself expired, ns. It goes
     /// on holding the long-run average: expiry never stops a stream.
     pub expiry_ns: i64,
-    /// Seconds from the decision until the 95 % band of the phase error leaves the headroom;
-    /// `None` if never.
+    /// Forecast of the decision: seconds from the effect until the 95 % band of the phase error
+    /// leaves the headroom, if nothing is set anew; `None` if it does not within a day.
     pub seconds_to_slip: Option<f64>,
     /// Why it was decided.
     pub reason: Reason,

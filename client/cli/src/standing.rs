@@ -80,7 +80,7 @@ fn crossing_row(crossing: &Crossing) -> Vec<String> {
         off,
         status
             .seconds_to_slip
-            .map_or("never".to_owned(), show::duration),
+            .map_or("not within a day".to_owned(), show::duration),
         show::crossing_word(status.state).to_owned(),
     ]
 }

@@ -62,8 +62,8 @@ fn line(setting: &Setting, now_ns: i64) -> String {
         format!("{} ago", show::duration(-effect_s))
     };
     let slip = match setting.seconds_to_slip {
-        Some(seconds) => format!("slips in {}", show::duration(seconds)),
-        None => "never slips".to_owned(),
+        Some(seconds) => format!("could slip {} after it", show::duration(seconds)),
+        None => "no slip within a day".to_owned(),
     };
     format!(
         "{:<20} {:>6}  {:<36} {:>15}  effect {effect}, {slip} ({})",

@@ -201,7 +201,8 @@ impl Daemon {
     /// grace time to do so, a last snapshot is written.
     ///
     /// # Errors
-    /// [`Failed`] if the snapshot could not be written. Nothing durable is lost then.
+    /// [`Failed`] if the snapshot could not be written, or the engine had stopped by itself.
+    /// Nothing durable is lost then.
     pub async fn drain(mut self) -> Result<(), Failed> {
         tracing::info!(grace_s = self.grace.as_secs_f64(), "draining");
         self.readiness.enter(Phase::Draining);
@@ -212,7 +213,7 @@ impl Daemon {
         }
         self.desk.stop().await;
         match self.stopped.take() {
-            Some(stopped) => stopped.await.unwrap_or(Ok(()))?,
+            Some(stopped) => stopped.await.map_err(|_| Failed::Engine)??,
             None => return Ok(()),
         }
         tracing::info!("stopped");

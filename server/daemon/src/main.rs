@@ -1,7 +1,7 @@
 //! `ratewrightd`: the daemon's command line.
 //!
-//! Exit codes: 0 after a clean drain, 69 if an address cannot be served, 74 if the store fails,
-//! 78 if the configuration is at fault.
+//! Exit codes: 0 after a clean drain, 69 if an address cannot be served, 70 if the program itself
+//! is at fault, 74 if the store fails, 78 if the configuration is at fault.
 #![allow(
     clippy::print_stderr,
     clippy::print_stdout,
@@ -12,7 +12,7 @@ use std::{io::IsTerminal as _, path::PathBuf, process::ExitCode};
 
 use clap::{Parser, Subcommand};
 use ratewright_server::{
-    Daemon, Opening, RecoverFault, StartFault,
+    Daemon, Failed, Opening, RecoverFault, StartFault,
     config::{self, Config, LogFormat},
     sample,
 };
@@ -38,8 +38,8 @@ enum Command {
     Run {
         /// Configuration file (TOML); without one, every default.
         config: Option<PathBuf>,
-        /// Begin a new epoch of setting numbers: once, after the store was restored from a
-        /// backup, or to leave behind the state of another engine version.
+        /// Begin a new epoch of setting numbers: once, after the store was lost or restored from
+        /// a backup, or to leave behind the state of another engine version.
         #[arg(long)]
         new_epoch: bool,
     },
@@ -160,7 +160,7 @@ async fn serve(
         }
         fault = daemon.failed() => {
             tracing::error!(%fault, "the daemon failed");
-            ExitCode::from(EX_IOERR)
+            ExitCode::from(status_of(&fault))
         }
         ended = played => match ended {
             Ok(()) => ExitCode::SUCCESS,
@@ -174,8 +174,15 @@ async fn serve(
         Ok(()) => code,
         Err(fault) => {
             tracing::error!(%fault, "the last snapshot was not written");
-            ExitCode::from(EX_IOERR)
+            ExitCode::from(status_of(&fault))
         }
+    }
+}
+
+fn status_of(fault: &Failed) -> u8 {
+    match fault {
+        Failed::Store(_) => EX_IOERR,
+        Failed::Engine => EX_SOFTWARE,
     }
 }
 

@@ -8,6 +8,9 @@ use ratewright_control::HouseNs;
 use super::{attention, clocks, crossings};
 use crate::board::{ClockView, CrossingView};
 
+/// Rows that a table shows at most, the worst; the headline and the list speak of all.
+const ROWS: usize = 1_000;
+
 pub(super) fn page(
     house_ns: HouseNs,
     crossings: &[Arc<CrossingView>],
@@ -33,16 +36,26 @@ pub(super) fn page(
                     (attention::list(crossings, clocks, house_ns))
                     section aria-labelledby="crossings" {
                         h2 id="crossings" { "Crossings" }
-                        (crossings::table(crossings))
+                        (crossings::table(&crossings[..crossings.len().min(ROWS)]))
+                        (left_out(crossings.len(), "crossings"))
                     }
                     section aria-labelledby="clocks" {
                         h2 id="clocks" { "Clocks" }
-                        (clocks::table(clocks, house_ns))
+                        (clocks::table(&clocks[..clocks.len().min(ROWS)], house_ns))
+                        (left_out(clocks.len(), "clocks"))
                     }
                     p .stamp { "House time " (stamp(house_ns)) " (TAI)" }
                 }
                 (footer())
             }
+        }
+    }
+}
+
+fn left_out(all: usize, what: &str) -> Markup {
+    html! {
+        @if all > ROWS {
+            p { (all - ROWS) " more " (what) " stand better than these and are left out." }
         }
     }
 }

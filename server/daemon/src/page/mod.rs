@@ -33,9 +33,6 @@ use crate::{
     readiness::{Phase, Readiness},
 };
 
-/// Clocks, and crossings, that the page shows at most.
-const SHOWN: usize = 1_000;
-
 #[derive(Clone)]
 struct Sources {
     board: Arc<Board>,
@@ -66,8 +63,8 @@ pub fn router(board: Arc<Board>, house: HouseClock, readiness: Readiness) -> Rou
 }
 
 async fn status(State(sources): State<Sources>) -> impl IntoResponse {
-    let mut crossings = sources.board.crossings(None, SHOWN);
-    let mut clocks = sources.board.clocks(None, SHOWN);
+    let mut crossings = sources.board.crossings(None, usize::MAX);
+    let mut clocks = sources.board.clocks(None, usize::MAX);
     crossings.sort_by_key(|view| crossings::urgency(view));
     clocks.sort_by_key(|view| clocks::urgency(view));
     let page = frame::page(sources.house.now(), &crossings, &clocks);

@@ -38,8 +38,8 @@ use crate::{
 use slots::Slot;
 pub(crate) use slots::Slots;
 
-/// Bytes a message to the daemon may have. A full batch of readings takes about a tenth.
-const MAX_MESSAGE: usize = 4 << 20;
+/// Bytes a message to the daemon may have. A full batch of readings takes less than half.
+const MAX_MESSAGE: usize = 1 << 20;
 
 /// What an answer that goes on is made of.
 type Answers<T> = Pin<Box<dyn Stream<Item = Result<T, Status>> + Send>>;

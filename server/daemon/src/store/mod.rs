@@ -78,9 +78,9 @@ pub enum Opening {
     /// Go on where it was left.
     #[default]
     Continue,
-    /// Begin a new epoch, whose setting numbers start afresh. For a store restored from a backup:
-    /// everything else goes on. For one written by another engine version: declarations and
-    /// history stay, estimates start afresh.
+    /// Begin a new epoch, greater than any before. For a store restored from a backup: everything
+    /// else goes on. For one written by another engine version: declarations and history stay,
+    /// estimates start afresh. For an empty one that takes the place of one that was lost.
     NewEpoch,
 }
 

@@ -72,7 +72,11 @@ impl Store {
         let journalled = newest_row(&db)?;
         let begin = match &head {
             None => Begin::Afresh {
-                epoch: 1,
+                // Where a store was lost, followers may have heard of any epoch before.
+                epoch: match opening {
+                    Opening::Continue => 1,
+                    Opening::NewEpoch => new_epoch(0, house_now_ns),
+                },
                 declarations: Vec::new(),
             },
             Some(head) => {
