@@ -107,7 +107,8 @@ def same_on_page():
     """The page says of each clock which state it is in, and when those not locked will be."""
     with urllib.request.urlopen(PAGE, timeout=5) as page:
         html = page.read().decode()
-    rows = [re.sub(r"<[^>]+>", " ", row) for row in html.split("<tr")]
+    table = html.split('id="clocks"')[1]
+    rows = [re.sub(r"<[^>]+>", " ", row) for row in table.split("<tr")]
     for clock in standing()["clocks"]:
         row = next((row for row in rows if f" {clock['clock']} " in row), None)
         if row is None:
