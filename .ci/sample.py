@@ -9,6 +9,7 @@ the same store: no number may be lost or used twice, and settings must be served
 of the process's start. At last it must end by itself when told to.
 """
 
+import atexit
 import json
 import os
 import re
@@ -60,17 +61,27 @@ def numbers(now):
 
 
 def daemon(command, store, printed):
-    """Starts the daemon in a group of its own. Its binary is built, so cargo adds little."""
-    return subprocess.Popen(
+    """Starts the daemon in a group of its own, which does not outlive this script. Its binary is
+    built, so cargo adds little."""
+    process = subprocess.Popen(
         [*shlex.split(command), "--store", store],
         stdout=printed,
         stderr=subprocess.STDOUT,
         start_new_session=True,
     )
+    atexit.register(end, process)
+    return process
+
+
+def end(process):
+    if process.poll() is None:
+        os.killpg(process.pid, signal.SIGKILL)
 
 
 def main():
     with tempfile.TemporaryDirectory() as store, tempfile.TemporaryFile("w+") as printed:
+        if standing():
+            sys.exit("another daemon serves on the default ports")
         began = time.monotonic()
         first = daemon(sys.argv[1], store, printed)
         until(began + 60, "the sample facility measured, with a setting everywhere", settled)
