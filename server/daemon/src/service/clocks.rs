@@ -46,14 +46,10 @@ impl ClockService for Clocks {
             page_token,
         } = request.into_inner();
         let page = paging::page("clocks", page_size, &page_token)?;
-        let after = page.after.and_then(|id| Id::new(&id).ok());
-        let mut views = self.0.board.clocks(after.as_ref(), page.size + 1);
-        let more = views.len() > page.size;
-        views.truncate(page.size);
-        let next_page_token = match views.last() {
-            Some(last) if more => paging::token("clocks", last.declaration.id.as_str()),
-            _ => String::new(),
-        };
+        let after = page.after.as_deref().and_then(|id| Id::new(id).ok());
+        let found = self.0.board.clocks(after.as_ref(), page.size + 1);
+        let (views, next_page_token) =
+            page.cut("clocks", found, |view| view.declaration.id.to_string());
         let clocks = views.iter().map(|view| clock::view_to_wire(view)).collect();
         Ok(Response::new(v1::ListClocksResponse {
             clocks,

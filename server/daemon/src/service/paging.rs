@@ -13,6 +13,26 @@ pub(super) struct Page {
     pub(super) after: Option<String>,
 }
 
+impl Page {
+    /// Cuts what was found, one more than the page takes if there is more, and gives the token of
+    /// the next page, empty if this is the last. `end` is what a page ending with an item is
+    /// known by.
+    pub(super) fn cut<T>(
+        &self,
+        list: &str,
+        mut found: Vec<T>,
+        end: impl Fn(&T) -> String,
+    ) -> (Vec<T>, String) {
+        let more = found.len() > self.size;
+        found.truncate(self.size);
+        let next = match found.last() {
+            Some(last) if more => token(list, &end(last)),
+            _ => String::new(),
+        };
+        (found, next)
+    }
+}
+
 /// Checks what a call sent. `list` tells lists apart: a token of one is no token of another.
 pub(super) fn page(list: &str, page_size: i32, page_token: &str) -> Result<Page, Violation> {
     let size = match usize::try_from(page_size) {
@@ -37,7 +57,7 @@ pub(super) fn page(list: &str, page_size: i32, page_token: &str) -> Result<Page,
 }
 
 /// The token of a page that goes on after `after`.
-pub(super) fn token(list: &str, after: &str) -> String {
+fn token(list: &str, after: &str) -> String {
     let mut token = format!("{:016x}", seal(list, after));
     token.extend(after.bytes().map(|byte| format!("{byte:02x}")));
     token
@@ -74,6 +94,18 @@ mod tests {
             page("crossings", 0, &token).unwrap_err().field,
             "page_token"
         );
+    }
+
+    #[test]
+    fn only_a_page_with_more_behind_it_has_a_token() {
+        let page = Page {
+            size: 2,
+            after: None,
+        };
+        let cut = |found: Vec<u8>| page.cut("numbers", found, u8::to_string);
+        assert_eq!(cut(vec![]), (vec![], String::new()));
+        assert_eq!(cut(vec![1, 2]), (vec![1, 2], String::new()));
+        assert_eq!(cut(vec![1, 2, 3]), (vec![1, 2], token("numbers", "2")));
     }
 
     #[test]

@@ -54,7 +54,7 @@ impl RatioService for Ratios {
             .history
             .settings(crossing, before, page.size + 1)
             .await;
-        let mut settings: Vec<v1::Setting> = found
+        let settings: Vec<v1::Setting> = found
             .map_err(unreadable)?
             .into_iter()
             .map(|recorded| recorded.setting)
@@ -62,14 +62,9 @@ impl RatioService for Ratios {
         if settings.is_empty() && !known {
             return Err(Refused::not_found(parent).into());
         }
-        let more = settings.len() > page.size;
-        settings.truncate(page.size);
-        let next_page_token = match settings.last() {
-            Some(last) if more => {
-                paging::token(&parent, &format!("{}-{}", last.epoch, last.number))
-            }
-            _ => String::new(),
-        };
+        let (settings, next_page_token) = page.cut(&parent, settings, |last| {
+            format!("{}-{}", last.epoch, last.number)
+        });
         Ok(Response::new(v1::ListSettingsResponse {
             settings,
             next_page_token,
