@@ -141,7 +141,6 @@ fn bounded(target: Exact, bounds: Bounds) -> Answer {
         bounds,
         headroom_samples: 1.0,
         sink_rate_hz: None,
-        filter: None,
     });
     Answer {
         target,

@@ -5,7 +5,6 @@
 use num_rational::Ratio;
 use serde::{Deserialize, Serialize};
 
-use crate::stages::{self, Chain, FilterSpec};
 use crate::{Bounds, Cadence, Certificate, Exact, Fraction, Rung, best, ladder, residual};
 
 /// What is to be planned.
@@ -19,8 +18,6 @@ pub struct Query {
     pub headroom_samples: f64,
     /// The sink's true rate, Hz, if it is known.
     pub sink_rate_hz: Option<Ratio<u64>>,
-    /// What the filter has to do, if stages are wanted.
-    pub filter: Option<FilterSpec>,
 }
 
 /// The answer to a [`Query`].
@@ -35,9 +32,6 @@ pub struct Plan {
     /// Two ratios whose average is exactly the target; `None` if one ratio is exact, or if the target has
     /// no allowed ratio on one side, or a period beyond 2^62 blocks.
     pub cadence: Option<Cadence>,
-    /// The best ratio as chains of stages, none of which beats another, by multiply-adds; empty if no filter
-    /// was given, or if the filter does not suit the ratio ([`crate::stages::front`] says why).
-    pub stages: Vec<Chain>,
 }
 
 /// A single ratio and what it does.
@@ -64,7 +58,6 @@ pub struct Candidate {
 ///     bounds: Bounds::new(256, 256)?,
 ///     headroom_samples: 1.0,
 ///     sink_rate_hz: Some(num_rational::Ratio::from_integer(48_000)),
-///     filter: None,
 /// };
 /// let plan = plan::plan(&query);
 /// assert_eq!(plan.best.ratio, Fraction::new(160, 147));
@@ -81,15 +74,11 @@ pub fn plan(query: &Query) -> Plan {
         seconds_to_slip: seconds_to_slip(residual, query.headroom_samples, query.sink_rate_hz),
         certificate: answer.certificate,
     };
-    let stages = query
-        .filter
-        .and_then(|spec| stages::front(best.ratio, &spec).ok());
     Plan {
         target,
         best,
         ladder: ladder(&target, &query.bounds),
         cadence: Cadence::new(&target, &query.bounds).ok(),
-        stages: stages.unwrap_or_default(),
     }
 }
 
