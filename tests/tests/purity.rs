@@ -3,11 +3,12 @@
 
 use ratewright_tests::dependencies;
 
-const PURE: [&str; 4] = [
+const PURE: [&str; 5] = [
     "ratewright-ratio",
     "ratewright-timing",
     "ratewright-control",
     "ratewright-rehearsal",
+    "ratewright-pictures",
 ];
 
 const IMPURE: [&str; 15] = [
