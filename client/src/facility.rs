@@ -157,6 +157,9 @@ pub struct CrossingStatus {
     /// Seconds until the 95 % band of the phase error leaves the headroom; `None` if not within
     /// a day.
     pub seconds_to_slip: Option<f64>,
+    /// Seconds until the phase error can no longer be kept within the headroom, however it is set, if no
+    /// further reading comes; `None` if not within a day.
+    pub seconds_vouched: Option<f64>,
     /// The setting in force or on its way.
     pub setting: Option<Setting>,
     /// Settings made so far.

@@ -59,6 +59,7 @@ pub(crate) fn crossing(crossing: &Crossing) -> Value {
         "phase_error_samples": status.phase_error_samples,
         "phase_deviation_samples": status.phase_deviation_samples,
         "seconds_to_slip": status.seconds_to_slip,
+        "seconds_vouched": status.seconds_vouched,
         "setting": status.setting.as_ref().map(setting),
         "settings_made": status.settings_made,
     })

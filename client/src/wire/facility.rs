@@ -158,6 +158,7 @@ impl TryFrom<v1::CrossingStatus> for CrossingStatus {
             phase_error_samples: wire.phase_error_samples,
             phase_deviation_samples: wire.phase_deviation_samples,
             seconds_to_slip: wire.seconds_to_slip,
+            seconds_vouched: wire.seconds_vouched,
             setting: wire.setting.map(TryInto::try_into).transpose()?,
             settings_made: wire.settings_made,
             residual: wire.residual,

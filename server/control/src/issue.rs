@@ -4,7 +4,7 @@ use ratewright_ratio::residual;
 
 use crate::policy::choose::Choice;
 use crate::policy::realise::{Way, error_of};
-use crate::policy::slip::seconds_to_slip;
+use crate::policy::slip::{seconds_to_slip, seconds_vouched};
 use crate::record::{CrossingRecord, Ends};
 use crate::timeline::{self, as_double};
 use crate::{Evidence, HouseNs, Reason, Setting};
@@ -123,5 +123,18 @@ impl CrossingRecord {
         let room = self.declaration.headroom_samples - error_of(&setting.realised);
         let velocity = outlook.velocity(as_double(&setting.average()));
         seconds_to_slip(&outlook, room, (phase, velocity), delay_s)
+    }
+
+    /// Seconds for which this account, which is advanced to now, can be vouched for without a further reading,
+    /// within [`crate::SLIP_HORIZON_S`].
+    pub(crate) fn vouched(&self, ends: &Ends) -> Option<f64> {
+        let own_error = self
+            .newest
+            .as_ref()
+            .map_or(0.0, |newest| error_of(&newest.realised));
+        seconds_vouched(
+            &self.outlook(ends),
+            self.declaration.headroom_samples - own_error,
+        )
     }
 }

@@ -62,6 +62,7 @@ impl Engine {
             phase_error_samples: outlook.phase,
             phase_deviation_samples: outlook.deviation(0.0),
             seconds_to_slip: slip,
+            seconds_vouched: record.vouched(&ends),
             settings_made: record.settings_made,
             changes_made: record.changes_made,
             setting: record.newest.clone(),

@@ -42,6 +42,9 @@ pub struct CrossingStatus {
     /// Forecast: seconds until the 95 % band of the phase error first leaves the headroom; absent
     /// if it does not within [`crate::SLIP_HORIZON_S`].
     pub seconds_to_slip: Option<f64>,
+    /// Seconds until the phase error can no longer be kept within the headroom however it is set, if no
+    /// further reading comes: the 95 % band alone is as wide. Absent as above.
+    pub seconds_vouched: Option<f64>,
     /// The newest setting.
     pub setting: Option<Setting>,
     /// Settings made since the crossing was declared.

@@ -41,6 +41,17 @@ pub struct CrossingView {
     pub as_of_ns: HouseNs,
 }
 
+/// A follower's word that a setting took effect.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct Applied {
+    /// The crossing.
+    pub crossing: Id,
+    /// Epoch and number of the setting.
+    pub setting: (u64, u64),
+    /// House time of the effect.
+    pub house_ns: HouseNs,
+}
+
 /// News for the board; what is not in it stays as it was.
 #[derive(Clone, Debug, Default)]
 pub struct News {
@@ -54,6 +65,8 @@ pub struct News {
     pub crossings_gone: Vec<Id>,
     /// Settings in the order they were made; only the newest of a crossing is kept.
     pub settings: Vec<Setting>,
+    /// Settings that took effect, as their followers say.
+    pub applied: Vec<Applied>,
 }
 
 /// The board. Share it in an `Arc`.
@@ -73,6 +86,8 @@ struct Shown {
     /// The same, by number: what came after a change is a range of this map.
     by_change: BTreeMap<u64, Id>,
     last_change: u64,
+    /// Epoch and number of the newest setting of each crossing that its follower applied, since the start.
+    applied: BTreeMap<Id, (u64, u64)>,
 }
 
 /// Which crossings a watcher wants.
@@ -119,6 +134,12 @@ impl Board {
             .newest
             .get(crossing)
             .map(|(_, setting)| Arc::clone(setting))
+    }
+
+    /// Epoch and number of the newest setting of the crossing that its follower has applied, if one has
+    /// reported since the start.
+    pub fn applied(&self, crossing: &Id) -> Option<(u64, u64)> {
+        self.shown().applied.get(crossing).copied()
     }
 
     /// The oldest of the changes after change `seen` (0 for all) that is selected and still the
@@ -170,6 +191,13 @@ impl Board {
         for setting in news.settings {
             shown.show_setting(setting);
         }
+        for Applied {
+            crossing, setting, ..
+        } in news.applied
+        {
+            let newest = shown.applied.entry(crossing).or_insert(setting);
+            *newest = setting.max(*newest);
+        }
         let last_change = shown.last_change;
         drop(shown);
         if any_setting {
@@ -205,6 +233,7 @@ impl Shown {
 
     fn forget_crossing(&mut self, id: &Id) {
         self.crossings.remove(id);
+        self.applied.remove(id);
         if let Some((change, _)) = self.newest.remove(id) {
             self.by_change.remove(&change);
         }

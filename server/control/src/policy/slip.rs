@@ -21,10 +21,21 @@ pub(crate) fn seconds_to_slip(
     (phase, velocity): (f64, f64),
     delay_s: f64,
 ) -> Option<f64> {
-    let out_at = |tau_s: f64| {
+    first_out(|tau_s| {
         let middle = outlook.extrapolate(phase, velocity, tau_s);
         middle.abs() + Z95 * outlook.deviation(delay_s + tau_s) >= room
-    };
+    })
+}
+
+/// Seconds until the phase error can no longer be vouched for if no reading comes: the band's half-width
+/// alone, around a middle that settings keep at 0, is as wide as `room`. `None` if that is not within
+/// [`SLIP_HORIZON_S`].
+pub(crate) fn seconds_vouched(outlook: &Outlook<'_>, room: f64) -> Option<f64> {
+    first_out(|tau_s| Z95 * outlook.deviation(tau_s) >= room)
+}
+
+/// The first instant at which `out_at` holds, seconds.
+fn first_out(out_at: impl Fn(f64) -> bool) -> Option<f64> {
     if out_at(0.0) {
         return Some(0.0);
     }

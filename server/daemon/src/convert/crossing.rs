@@ -201,6 +201,7 @@ fn status_to_wire(view: &CrossingView) -> v1::CrossingStatus {
         phase_error_samples: status.phase_error_samples,
         phase_deviation_samples: status.phase_deviation_samples,
         seconds_to_slip: status.seconds_to_slip,
+        seconds_vouched: status.seconds_vouched,
         setting: status.setting.as_ref().map(setting::setting_to_wire),
         settings_made: status.settings_made,
         residual: status.residual.unwrap_or(0.0),

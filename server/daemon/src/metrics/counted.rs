@@ -2,7 +2,7 @@
 
 use std::{
     sync::{
-        OnceLock,
+        LazyLock, OnceLock,
         atomic::{AtomicU64, Ordering},
     },
     time::Duration,
@@ -12,14 +12,18 @@ use ::metrics::{
     Unit, counter, describe_counter, describe_gauge, describe_histogram, gauge, histogram,
 };
 use metrics_exporter_prometheus::{Matcher, PrometheusBuilder, PrometheusHandle};
-use ratewright_control::{Reason, Setting, Transition};
+use ratewright_control::{HouseNs, Reason, Setting, Transition};
 
 use super::{clock_state, crossing_state};
 
 const READINGS: &str = "ratewright_readings_total";
 const SETTINGS: &str = "ratewright_settings_total";
 const TRANSITIONS: &str = "ratewright_transitions_total";
+const EVIDENCE_AGE: &str = "ratewright_setting_evidence_age_seconds";
+const APPLIED_DELAY: &str = "ratewright_applied_delay_seconds";
 const STREAMS: &str = "ratewright_streams";
+const JOURNAL_ROWS: &str = "ratewright_journal_rows";
+const STORE_BYTES: &str = "ratewright_store_bytes";
 const EVENTS: &str = "ratewright_journal_events_total";
 const COMMIT: &str = "ratewright_commit_duration_seconds";
 const BUILD: &str = "ratewright_build_info";
@@ -27,16 +31,27 @@ const BUILD: &str = "ratewright_build_info";
 /// A commit takes from well under a millisecond on a disk with a safe cache to long on a sick one.
 const COMMIT_BUCKETS_S: [f64; 9] = [0.0005, 0.001, 0.0025, 0.005, 0.01, 0.025, 0.1, 0.5, 2.5];
 
+/// Decisions come each second until clocks are locked, then each ten seconds; a follower is late by a
+/// block, or by the network's worst.
+const HOUSE_BUCKETS_S: [f64; 9] = [0.01, 0.05, 0.25, 1.0, 2.5, 5.0, 10.0, 30.0, 120.0];
+
 /// Commits between two compactions of the histogram's samples: nobody may be scraping.
 const COMMITS_AN_UPKEEP: u64 = 1024;
 
 static RECORDER: OnceLock<Option<PrometheusHandle>> = OnceLock::new();
+static PROCESS: LazyLock<metrics_process::Collector> = LazyLock::new(Default::default);
 
 /// Starts counting. Call once a process, before anything is recorded; later calls do nothing.
 pub fn install() {
     RECORDER.get_or_init(|| {
         let builder = PrometheusBuilder::new()
-            .set_buckets_for_metric(Matcher::Full(COMMIT.to_owned()), &COMMIT_BUCKETS_S);
+            .set_buckets_for_metric(Matcher::Full(COMMIT.to_owned()), &COMMIT_BUCKETS_S)
+            .and_then(|it| {
+                it.set_buckets_for_metric(Matcher::Full(EVIDENCE_AGE.to_owned()), &HOUSE_BUCKETS_S)
+            })
+            .and_then(|it| {
+                it.set_buckets_for_metric(Matcher::Full(APPLIED_DELAY.to_owned()), &HOUSE_BUCKETS_S)
+            });
         match builder.and_then(PrometheusBuilder::install_recorder) {
             Ok(handle) => Some(handle),
             Err(fault) => {
@@ -50,6 +65,7 @@ pub fn install() {
 }
 
 fn describe() {
+    PROCESS.describe();
     describe_gauge!(BUILD, "Always 1; the label tells the version.");
     describe_counter!(READINGS, "Readings answered since the start, by outcome.");
     describe_counter!(
@@ -57,7 +73,19 @@ fn describe() {
         "Settings published since the start, by why they were made."
     );
     describe_counter!(TRANSITIONS, "Changes of state since the start.");
-    describe_gauge!(STREAMS, "Open report, watch and follow streams.");
+    describe_histogram!(
+        EVIDENCE_AGE,
+        Unit::Seconds,
+        "House time from the newest reading of either clock to the setting that rests on it."
+    );
+    describe_histogram!(
+        APPLIED_DELAY,
+        Unit::Seconds,
+        "House time from the instant of a setting to its effect, as the follower reports."
+    );
+    describe_gauge!(STREAMS, "Open streams, by kind.");
+    describe_gauge!(JOURNAL_ROWS, "Events that a restart would replay.");
+    describe_gauge!(STORE_BYTES, Unit::Bytes, "Size of the store on disk.");
     describe_counter!(EVENTS, "Events written to the journal since the start.");
     describe_histogram!(
         COMMIT,
@@ -68,6 +96,7 @@ fn describe() {
 
 /// Everything counted so far, in Prometheus' text format.
 pub(super) fn render() -> String {
+    PROCESS.collect();
     RECORDER
         .get()
         .and_then(Option::as_ref)
@@ -94,8 +123,11 @@ pub fn commit(events: usize, took: Duration) {
     }
 }
 
-/// A setting was published.
-pub fn setting(setting: &Setting) {
+/// A setting was published; `newest_reading_ns` is the house time of the newest reading of its clocks.
+pub fn setting(setting: &Setting, newest_reading_ns: Option<HouseNs>) {
+    if let Some(newest_ns) = newest_reading_ns {
+        histogram!(EVIDENCE_AGE).record(seconds(setting.decided_ns - newest_ns));
+    }
     let reason = match setting.reason {
         Reason::First => "first",
         Reason::Evidence => "evidence",
@@ -117,7 +149,22 @@ pub fn transition(transition: &Transition) {
     counter!(TRANSITIONS, "kind" => kind, "to" => to).increment(1);
 }
 
-/// Streams open now.
-pub fn open_streams(open: usize) {
-    gauge!(STREAMS).set(open as f64);
+/// A follower has said that a setting took effect, so long after its instant, ns.
+pub fn applied(delay_ns: i64) {
+    histogram!(APPLIED_DELAY).record(seconds(delay_ns));
+}
+
+/// Streams of a kind open now.
+pub fn open_streams(kind: &'static str, open: usize) {
+    gauge!(STREAMS, "kind" => kind).set(open as f64);
+}
+
+/// How large the store is.
+pub fn store(journal_rows: i64, bytes: u64) {
+    gauge!(JOURNAL_ROWS).set(journal_rows as f64);
+    gauge!(STORE_BYTES).set(bytes as f64);
+}
+
+fn seconds(ns: i64) -> f64 {
+    ns.max(0) as f64 * 1e-9
 }

@@ -4,13 +4,14 @@ use std::collections::BTreeSet;
 
 use ratewright_control::{Effects, Engine, Event, HouseNs, Id, Setting};
 
-use crate::board::{ClockView, CrossingView, News};
+use crate::board::{Applied, ClockView, CrossingView, News};
 
 /// Clocks and crossings that a group has touched.
 #[derive(Debug, Default)]
 pub(super) struct Touched {
     clocks: BTreeSet<Id>,
     crossings: BTreeSet<Id>,
+    applied: Vec<Applied>,
 }
 
 impl Touched {
@@ -22,6 +23,7 @@ impl Touched {
                 .crossings()
                 .map(|crossing| crossing.id.clone())
                 .collect(),
+            applied: Vec::new(),
         }
     }
 
@@ -47,6 +49,20 @@ impl Touched {
             | Event::Occupancy { crossing: id, .. } => drop(self.crossings.insert(id.clone())),
             Event::Reading(_) | Event::Tick | Event::OpenEpoch { .. } => {}
         }
+        if let Event::Applied {
+            crossing,
+            epoch,
+            number,
+            house_ns,
+            ..
+        } = event
+        {
+            self.applied.push(Applied {
+                crossing: crossing.clone(),
+                setting: (*epoch, *number),
+                house_ns: *house_ns,
+            });
+        }
         self.crossings.extend(
             effects
                 .settings
@@ -59,6 +75,7 @@ impl Touched {
     pub(super) fn news(self, engine: &Engine, settings: Vec<Setting>, now: HouseNs) -> News {
         let mut news = News {
             settings,
+            applied: self.applied,
             ..News::default()
         };
         for id in self.clocks {

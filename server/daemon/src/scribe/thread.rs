@@ -5,7 +5,7 @@ use std::{
     time::{Duration, Instant},
 };
 
-use ratewright_control::{Engine, Event};
+use ratewright_control::{Engine, Event, HouseNs, Setting};
 use tokio::{
     runtime::{self, Runtime},
     sync::{mpsc, oneshot},
@@ -19,7 +19,7 @@ use super::{
     start::{Declared, recover},
 };
 use crate::{
-    board::Board,
+    board::{Board, News},
     house::HouseClock,
     metrics,
     store::{Begin, Store, StoreError},
@@ -184,12 +184,36 @@ impl Room {
             .drain(..)
             .map(|(setting, _)| setting)
             .collect();
-        settings.iter().for_each(metrics::setting);
         let touched = std::mem::take(&mut group.touched);
-        self.board
-            .publish(touched.news(&self.engine, settings, self.house.now()));
+        let news = touched.news(&self.engine, settings, self.house.now());
+        self.count(&news);
+        self.board.publish(news);
         group.answer();
         Ok(())
+    }
+
+    /// Counts what is about to be heard of.
+    fn count(&self, news: &News) {
+        for setting in &news.settings {
+            metrics::setting(setting, self.newest_reading_ns(setting));
+        }
+        for applied in &news.applied {
+            if let Some(setting) = self.board.newest_setting(&applied.crossing)
+                && (setting.epoch, setting.number) == applied.setting
+            {
+                metrics::applied(applied.house_ns - setting.effect_ns);
+            }
+        }
+    }
+
+    /// House time of the newest reading of either clock of a setting's crossing.
+    fn newest_reading_ns(&self, setting: &Setting) -> Option<HouseNs> {
+        let crossing = self.engine.crossing(&setting.crossing)?;
+        let last = |clock| {
+            let known = self.engine.estimate(clock, setting.decided_ns)?;
+            known.estimate.last_reading_ns
+        };
+        last(&crossing.source).max(last(&crossing.sink))
     }
 
     /// What is due by the system's time: the board's refresh and the snapshot.
@@ -197,6 +221,7 @@ impl Room {
         if self.refreshed.elapsed() >= REFRESH {
             let news = Touched::all(&self.engine).news(&self.engine, Vec::new(), self.house.now());
             self.board.publish(news);
+            metrics::store(self.store.since_snapshot(), self.store.bytes());
             self.refreshed = Instant::now();
         }
         let (events, age) = (self.store.since_snapshot(), self.snapshot_taken.elapsed());

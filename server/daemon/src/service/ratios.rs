@@ -5,7 +5,7 @@ use ratewright_proto::v1::{
 };
 use tonic::{Request, Response, Status, Streaming};
 
-use super::{Access, Answers, feed, follow, paging, plan};
+use super::{Access, Answers, feed, follow, paging, plan, slots::Kind};
 use crate::{
     convert::names::{self, SettingName},
     refused::{Refused, Violation},
@@ -77,7 +77,7 @@ impl RatioService for Ratios {
     ) -> Result<Response<Self::WatchSettingsStream>, Status> {
         let board = self.0.board.clone();
         let selection = feed::selection(&board, request.get_ref(), "crossings")?;
-        let slot = self.0.slots.take()?;
+        let slot = self.0.slots.take(Kind::Watch)?;
         let feed = feed::Feed::new(board, selection);
         Ok(Response::new(follow::watch(self.0.clone(), feed, slot)))
     }
@@ -86,7 +86,7 @@ impl RatioService for Ratios {
         &self,
         request: Request<Streaming<v1::FollowSettingsRequest>>,
     ) -> Result<Response<Self::FollowSettingsStream>, Status> {
-        let slot = self.0.slots.take()?;
+        let slot = self.0.slots.take(Kind::Follow)?;
         let mut reports = request.into_inner();
         let first = tokio::select! {
             first = reports.message() => first?,

@@ -10,7 +10,7 @@ use tokio::sync::mpsc;
 use tokio_stream::{StreamExt as _, wrappers::ReceiverStream};
 use tonic::{Request, Response, Status, Streaming};
 
-use super::{Access, Answers, Slot};
+use super::{Access, Answers, Slot, slots::Kind};
 use crate::{
     convert::reading::{self, Batch},
     metrics,
@@ -32,7 +32,7 @@ impl ReadingService for Readings {
         &self,
         request: Request<Streaming<v1::ReportReadingsRequest>>,
     ) -> Result<Response<Self::ReportReadingsStream>, Status> {
-        let slot = self.0.slots.take()?;
+        let slot = self.0.slots.take(Kind::Report)?;
         let (sender, waiting) = mpsc::channel(AHEAD);
         tokio::spawn(take_in(self.0.clone(), request.into_inner(), sender, slot));
         let house = self.0.house;

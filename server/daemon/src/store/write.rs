@@ -76,6 +76,13 @@ impl Store {
     pub(crate) fn since_snapshot(&self) -> i64 {
         self.newest - self.snapshot
     }
+
+    /// Size of the database and of its log, bytes; 0 if the file system does not say.
+    pub(crate) fn bytes(&self) -> u64 {
+        let database = self.db.path().unwrap_or_default();
+        let size = |path: String| std::fs::metadata(path).map_or(0, |found| found.len());
+        size(database.to_owned()) + size(format!("{database}-wal"))
+    }
 }
 
 fn encode<T: serde::Serialize>(value: &T) -> Result<Vec<u8>, StoreError> {
