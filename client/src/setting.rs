@@ -105,6 +105,8 @@ pub enum Reason {
     Group,
     /// Only expiry and review were moved on.
     Renewal,
+    /// The stream comes from another source.
+    ChangeOver,
 }
 
 /// What a decision rested on.

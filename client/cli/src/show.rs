@@ -129,6 +129,7 @@ pub(crate) fn reason_word(reason: Reason) -> &'static str {
         Reason::Declaration => "declaration",
         Reason::Group => "group",
         Reason::Renewal => "renewal",
+        Reason::ChangeOver => "changeover",
     }
 }
 

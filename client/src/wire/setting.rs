@@ -67,6 +67,7 @@ fn reason(wire: &v1::Setting) -> Result<Reason, WireError> {
         v1::SettingReason::Declaration => Ok(Reason::Declaration),
         v1::SettingReason::Group => Ok(Reason::Group),
         v1::SettingReason::Renewal => Ok(Reason::Renewal),
+        v1::SettingReason::ChangeOver => Ok(Reason::ChangeOver),
         v1::SettingReason::Unspecified => Err(WireError::new(
             "setting.reason",
             wire.reason,

@@ -75,7 +75,7 @@ impl ClockRecord {
     /// What is believed before anything is measured.
     fn prior(&self, now: HouseNs) -> Estimate {
         let mut declaration = self.declaration.clone();
-        if declaration.tolerance_ppm == 0.0 {
+        if declaration.tolerance_ppm == 0.0 && declaration.oscillator.is_none() {
             declaration.tolerance_ppm = COMMON_TOLERANCE_PPM;
         }
         ratewright_timing::Link::new(declaration.link_config())
@@ -227,6 +227,7 @@ impl Clocks {
             reference: link.map(|link| link.reference.clone()),
             probe: link.map(|link| link.probe.clone()),
             measured,
+            fault: None,
         })
     }
 }

@@ -2,7 +2,7 @@
 
 use num_rational::Ratio;
 use ratewright_ratio::Bounds;
-use ratewright_timing::LinkConfig;
+use ratewright_timing::{LatencyTail, LinkConfig, Oscillator};
 use serde::{Deserialize, Serialize};
 
 use crate::{Id, Refusal};
@@ -15,6 +15,12 @@ const MAX_HEADROOM_SAMPLES: f64 = 1e9;
 const MAX_LEAD_NS: i64 = 600_000_000_000;
 /// Shortest and longest review horizon, ns (10 s, 30 days).
 const REVIEW_HORIZON_NS: (i64, i64) = (10_000_000_000, 30 * 86_400_000_000_000);
+/// Longest floor between two changes, ns (1 h).
+const MAX_LEAST_HOLD_NS: i64 = 3_600_000_000_000;
+/// Least and largest pitch limit, ppm.
+const PITCH_LIMITS_PPM: (f64, f64) = (0.1, 1000.0);
+/// Largest step of a counter or of timestamps, ns (1 s).
+const MAX_QUANTUM_NS: i64 = 1_000_000_000;
 /// Largest nominal ratio of a crossing, and its inverse the smallest.
 const MAX_NOMINAL_RATIO: f64 = 1_048_576.0;
 
@@ -31,6 +37,17 @@ pub struct ClockDeclaration {
     pub exact: bool,
     /// Bound of the drift that its maker or standard states, ppm; 0 if none is declared.
     pub tolerance_ppm: f64,
+    /// Kind of its oscillator, if it is known: sets what is believed before anything is measured,
+    /// and how far its drift may wander. Here and below, links that run already keep to what they
+    /// began with.
+    pub oscillator: Option<Oscillator>,
+    /// Which way its one-way readings err when they are not punctual, if that is known.
+    pub tail: Option<LatencyTail>,
+    /// Step of its counter or of its timestamps, ns, where it is coarser than a tick of the
+    /// nominal rate; 0 if it is not known, at most 1 s.
+    pub quantum_ns: i64,
+    /// True if stability statistics of it are to be kept.
+    pub statistics: bool,
 }
 
 /// What the resampler of a crossing can do.
@@ -40,7 +57,16 @@ pub enum Realisation {
     Single,
     /// It can alternate between two ratios at block ends by itself.
     Cadence,
+    /// It has one table of `max_l` phases, and moves on by one number of phases or by one more at
+    /// any output, by itself; `max_m` is not looked at.
+    Stepping,
+    /// It can hold each of two ratios in turn, by itself, until its running error would leave a
+    /// swing.
+    Lazy,
 }
+
+/// Pitch limit of a crossing for which none is declared, ppm: far below what is heard.
+pub const DEFAULT_PITCH_LIMIT_PPM: f64 = 20.0;
 
 /// A place where a stream passes from a source clock to a sink clock.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
@@ -65,16 +91,42 @@ pub struct CrossingDeclaration {
     pub lead_ns: i64,
     /// A setting is confirmed or replaced after this time at the latest, ns; 10 s to 30 days.
     pub review_horizon_ns: i64,
+    /// Least time between two settings that change what is run, ns; renewals do not count. 0 for
+    /// none, at most 1 h.
+    pub least_hold_ns: i64,
+    /// Fastest deliberate change of pitch to bring the phase error back, ppm, 0.1 to 1000.
+    pub pitch_limit_ppm: f64,
+    /// True for a trial: settings are decided and recorded, but nobody is to run them.
+    pub silent: bool,
+    /// Clock of another source that can carry the same stream.
+    pub backup: Option<Id>,
 }
 
 impl ClockDeclaration {
+    /// A clock of which nothing but the nominal rate, Hz, is declared.
+    pub fn new(id: Id, nominal_hz: Ratio<u64>) -> Self {
+        ClockDeclaration {
+            id,
+            display_name: String::new(),
+            nominal_hz,
+            exact: false,
+            tolerance_ppm: 0.0,
+            oscillator: None,
+            tail: None,
+            quantum_ns: 0,
+            statistics: false,
+        }
+    }
+
     /// The declaration as the estimator wants it.
     pub(crate) fn link_config(&self) -> LinkConfig {
-        let config = LinkConfig::new(self.nominal_hz);
-        if self.tolerance_ppm > 0.0 {
-            config.with_tolerance_ppm(self.tolerance_ppm)
-        } else {
-            config
+        let plain = LinkConfig::new(self.nominal_hz);
+        LinkConfig {
+            tolerance_ppm: Some(self.tolerance_ppm).filter(|&ppm| ppm > 0.0),
+            oscillator: self.oscillator.unwrap_or(plain.oscillator),
+            latency_tail: self.tail.unwrap_or(plain.latency_tail),
+            quantum_s: Some(self.quantum_ns as f64 * 1e-9).filter(|&s| s > 0.0),
+            ..plain
         }
     }
 
@@ -88,6 +140,14 @@ impl ClockDeclaration {
                 "0 for none, or above 0 to 100000",
             ));
         }
+        if !(0..=MAX_QUANTUM_NS).contains(&self.quantum_ns) {
+            let accepted = format!("0 if it is not known, up to {MAX_QUANTUM_NS} ns");
+            return Err(Refusal::invalid("quantum_ns", self.quantum_ns, accepted));
+        }
+        if self.statistics {
+            let accepted = "false: this version keeps no stability statistics";
+            return Err(Refusal::invalid("statistics", true, accepted));
+        }
         ratewright_timing::Link::new(self.link_config())
             .map(|_| ())
             .map_err(|e| Refusal::invalid(e.field, e.value, e.accepted))
@@ -100,6 +160,28 @@ impl ClockDeclaration {
 }
 
 impl CrossingDeclaration {
+    /// A crossing of two clocks with these bounds and, for the rest: one sample of headroom, a
+    /// cadence, no group, 1 s of lead, a review every 24 h, no floor between changes, the
+    /// [`DEFAULT_PITCH_LIMIT_PPM`], and no backup.
+    pub fn new(id: Id, source: Id, sink: Id, bounds: Bounds) -> Self {
+        CrossingDeclaration {
+            id,
+            display_name: String::new(),
+            source,
+            sink,
+            bounds,
+            headroom_samples: 1.0,
+            realisation: Realisation::Cadence,
+            group: None,
+            lead_ns: 1_000_000_000,
+            review_horizon_ns: 86_400_000_000_000,
+            least_hold_ns: 0,
+            pitch_limit_ppm: DEFAULT_PITCH_LIMIT_PPM,
+            silent: false,
+            backup: None,
+        }
+    }
+
     /// Checks what can be checked without looking at the clocks.
     pub(crate) fn check(&self) -> Result<(), Refusal> {
         check_display_name(&self.display_name)?;
@@ -130,6 +212,61 @@ impl CrossingDeclaration {
                 self.review_horizon_ns,
                 accepted,
             ));
+        }
+        if !(0..=MAX_LEAST_HOLD_NS).contains(&self.least_hold_ns) {
+            let accepted = format!("0 for none, up to {MAX_LEAST_HOLD_NS} ns");
+            return Err(Refusal::invalid(
+                "least_hold_ns",
+                self.least_hold_ns,
+                accepted,
+            ));
+        }
+        let (least, most) = PITCH_LIMITS_PPM;
+        if !(least..=most).contains(&self.pitch_limit_ppm) {
+            let accepted = format!("{least} to {most} ppm");
+            return Err(Refusal::invalid(
+                "pitch_limit_ppm",
+                self.pitch_limit_ppm,
+                accepted,
+            ));
+        }
+        self.check_backup()?;
+        self.check_not_yet()
+    }
+
+    fn check_backup(&self) -> Result<(), Refusal> {
+        let Some(backup) = &self.backup else {
+            return Ok(());
+        };
+        if *backup != self.source && *backup != self.sink {
+            return Ok(());
+        }
+        let accepted = "none, or another clock than the source and the sink";
+        Err(Refusal::invalid("backup", backup, accepted))
+    }
+
+    /// Refuses what this version can be told of but cannot do.
+    fn check_not_yet(&self) -> Result<(), Refusal> {
+        if matches!(self.realisation, Realisation::Stepping | Realisation::Lazy) {
+            let value = format!("{:?}", self.realisation);
+            let accepted = "Single or Cadence: this version decides no other";
+            return Err(Refusal::invalid("realisation", value, accepted));
+        }
+        if self.least_hold_ns != 0 {
+            let accepted = "0: this version keeps no floor";
+            return Err(Refusal::invalid(
+                "least_hold_ns",
+                self.least_hold_ns,
+                accepted,
+            ));
+        }
+        if self.silent {
+            let accepted = "false: this version knows no trials";
+            return Err(Refusal::invalid("silent", true, accepted));
+        }
+        if let Some(backup) = &self.backup {
+            let accepted = "none: this version knows no changeover";
+            return Err(Refusal::invalid("backup", backup, accepted));
         }
         Ok(())
     }

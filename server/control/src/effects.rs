@@ -3,17 +3,51 @@
 use ratewright_timing::{Outcome, State};
 use serde::{Deserialize, Serialize};
 
-use crate::{CrossingState, Id, Setting};
+use crate::{ClockFault, CrossingState, HouseNs, Id, Setting};
 
 /// What the caller has to do after an event, in this order.
 #[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub struct Effects {
     /// New settings: to be made durable, then published.
+    /// A [`Setting::silent`] one is to be stored, but published to nobody.
     pub settings: Vec<Setting>,
+    /// What an operator did, to be kept.
+    pub acts: Vec<Act>,
     /// Changes of state, for log and metrics.
     pub transitions: Vec<Transition>,
     /// How a reading went; absent for other events.
     pub outcome: Option<Outcome>,
+}
+
+/// What an operator did to a crossing.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Act {
+    /// The crossing.
+    pub crossing: Id,
+    /// Who did it.
+    pub by: String,
+    /// Why, in the operator's words; may be empty.
+    pub note: String,
+    /// When.
+    pub at_ns: HouseNs,
+    /// What was done.
+    pub what: ActKind,
+}
+
+/// Kinds of acts.
+#[derive(Clone, Debug, PartialEq, Eq, Serialize, Deserialize)]
+pub enum ActKind {
+    /// The crossing was pinned.
+    Pinned,
+    /// The crossing was released.
+    Released,
+    /// The stream came from another source from then on.
+    ChangedOver {
+        /// Clock of the source before.
+        from: Id,
+        /// Clock of the source from then on.
+        to: Id,
+    },
 }
 
 /// A change of state, with its reason.
@@ -29,6 +63,13 @@ pub enum Transition {
         to: State,
         /// Why.
         reason: ratewright_timing::Reason,
+    },
+    /// A fault of a clock was found, or is gone.
+    ClockFault {
+        /// The clock.
+        clock: Id,
+        /// The fault; absent if it is gone.
+        fault: Option<ClockFault>,
     },
     /// A crossing.
     Crossing {

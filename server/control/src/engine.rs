@@ -78,6 +78,10 @@ impl Engine {
                 let level = (*level_samples, *deviation_samples);
                 self.occupied(crossing, level, *house_ns, now, &mut effects)?;
             }
+            Event::Pin { .. } | Event::Release { .. } | Event::ChangeOver { .. } => {
+                let accepted = "another event: this version has no operator's hand";
+                return Err(Refusal::invalid("event", "as sent", accepted));
+            }
             Event::Tick => {}
             Event::OpenEpoch { epoch } => self.open_epoch(*epoch)?,
         }

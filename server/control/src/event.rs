@@ -68,6 +68,35 @@ pub enum Event {
         /// House time of the measurement, ns.
         house_ns: HouseNs,
     },
+    /// What a crossing runs stays until it is released, whatever is measured.
+    Pin {
+        /// The crossing.
+        crossing: Id,
+        /// Who says so, 1 to 128 bytes.
+        by: String,
+        /// Why, at most 512 bytes.
+        note: String,
+    },
+    /// A pinned crossing is decided again.
+    Release {
+        /// The crossing.
+        crossing: Id,
+        /// Who says so, 1 to 128 bytes.
+        by: String,
+        /// Why, at most 512 bytes.
+        note: String,
+    },
+    /// The stream of a crossing now comes from its other source.
+    ChangeOver {
+        /// The crossing.
+        crossing: Id,
+        /// Clock of that source: the declared source or the backup.
+        source: Id,
+        /// Who says so, 1 to 128 bytes.
+        by: String,
+        /// Why, at most 512 bytes.
+        note: String,
+    },
     /// Time has passed: does what is due.
     Tick,
     /// The state was restored from a backup: numbers of the new epoch are not those of the old.

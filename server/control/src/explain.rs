@@ -39,6 +39,24 @@ fn what(setting: &Setting) -> String {
             cadence.high_blocks(),
             text(&setting.wanted),
         ),
+        Realised::Stepping(stepping) => {
+            let (short, long) = stepping.advances();
+            format!(
+                "step through its {} phases by {short} or {long} for each output, {} on average",
+                stepping.phases(),
+                text(&setting.wanted),
+            )
+        }
+        Realised::Lazy {
+            cadence,
+            swing_samples,
+        } => format!(
+            "hold {} and {} in turn, each until the running error would leave ±{swing_samples} samples, \
+             {} on average",
+            text(&cadence.low()),
+            text(&cadence.high()),
+            text(&setting.wanted),
+        ),
     };
     let lead_s = seconds(setting.effect_ns - setting.decided_ns);
     format!(
@@ -60,6 +78,7 @@ fn why(setting: &Setting, crossing: &CrossingDeclaration) -> String {
             Some(group) => format!("another crossing of the group {group} changed"),
             None => "another crossing of its group changed".to_owned(),
         },
+        Reason::ChangeOver => "the stream was changed over to another source".to_owned(),
         Reason::Renewal => "nothing changed, and the one before it was due for review".to_owned(),
     };
     format!("It was made because {why}.")

@@ -37,21 +37,23 @@ mod status;
 mod target;
 mod timeline;
 
-pub use declaration::{ClockDeclaration, CrossingDeclaration, Realisation};
-pub use effects::{Effects, Transition};
+pub use declaration::{
+    ClockDeclaration, CrossingDeclaration, DEFAULT_PITCH_LIMIT_PPM, Realisation,
+};
+pub use effects::{Act, ActKind, Effects, Transition};
 pub use engine::Engine;
 pub use event::{Event, Reading, Reference};
 pub use explain::explain;
 pub use id::{Id, IdError};
 pub use refusal::{Refusal, RefusalKind};
 pub use setting::{Evidence, Realised, Reason, Setting};
-pub use status::{ClockEstimate, CrossingState, CrossingStatus};
+pub use status::{ClockEstimate, ClockFault, CrossingState, CrossingStatus, Pin};
 
 /// House time, ns: the facility's one timescale, monotonic.
 pub type HouseNs = i64;
 
 /// Version of the engine: the same journal replays to the same bytes within one version only.
-pub const ENGINE_VERSION: u32 = 1;
+pub const ENGINE_VERSION: u32 = 2;
 
 /// How far ahead a slip is forecast, seconds.
 pub const SLIP_HORIZON_S: f64 = 86_400.0;

@@ -4,6 +4,8 @@
 //! interval of rates that keep the phase error's band in the tube longest ([`funnel`]); the second
 //! realises it within the crossing's bounds ([`realise`]).
 
+use crate::CrossingDeclaration;
+
 pub(crate) mod choose;
 pub(crate) mod funnel;
 pub(crate) mod keep;
@@ -23,8 +25,6 @@ pub(crate) const INWARD_DEVIATIONS: f64 = 2.5;
 pub(crate) const TUBE: f64 = 0.8;
 /// The share of the headroom within which a phase that moves inward is let be.
 pub(crate) const INWARD_TUBE: f64 = 0.9;
-/// Pitch change that recovery may cause: 20 ppm, far below what is heard.
-pub(crate) const PITCH_LIMIT: f64 = 20e-6;
 /// Recovery may take at least so long, seconds.
 pub(crate) const RECOVERY_S: f64 = 120.0;
 /// How far ahead a hold is planned, seconds.
@@ -35,6 +35,11 @@ pub(crate) const HOLD_SHARE: f64 = 0.95;
 pub(crate) const MAX_VIRTUAL: u64 = 1 << 31;
 /// Error in output samples that a change from one pair of ratios to another carries over.
 pub(crate) const CARRIED_SAMPLES: f64 = 0.0013;
+
+/// Velocity that recovery may have at a sink's rate, samples/s.
+pub(crate) fn pitch_limit(declaration: &CrossingDeclaration, sink_hz: f64) -> f64 {
+    declaration.pitch_limit_ppm * 1e-6 * sink_hz
+}
 
 /// The limits of the phase error that planning and keeping go by, sink samples and samples/s.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -48,9 +53,10 @@ pub(crate) struct Limits {
 }
 
 impl Limits {
-    /// The limits under a headroom, with a cadence that errs by up to `cadence_error` samples.
+    /// The limits of a crossing, with a cadence that errs by up to `cadence_error` samples.
     /// An error that fills the tube cannot be planned away: then its average is kept to the tube.
-    pub(crate) fn new(headroom: f64, cadence_error: f64, sink_hz: f64) -> Self {
+    pub(crate) fn new(declaration: &CrossingDeclaration, cadence_error: f64, sink_hz: f64) -> Self {
+        let headroom = declaration.headroom_samples;
         let error = if cadence_error < TUBE * headroom {
             cadence_error
         } else {
@@ -59,7 +65,7 @@ impl Limits {
         Limits {
             tube: TUBE * headroom - error,
             inward: INWARD_TUBE * headroom - error,
-            pitch: PITCH_LIMIT * sink_hz,
+            pitch: pitch_limit(declaration, sink_hz),
         }
     }
 }

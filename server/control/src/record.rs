@@ -9,7 +9,7 @@ use crate::policy::choose::{Choice, View, choose, choose_nominal};
 use crate::policy::keep::may_stay;
 use crate::policy::outlook::Outlook;
 use crate::policy::realise::{block_inputs, error_of};
-use crate::policy::{Limits, PITCH_LIMIT, TUBE};
+use crate::policy::{TUBE, pitch_limit};
 use crate::target::Target;
 use crate::{
     ClockDeclaration, CrossingDeclaration, CrossingState, HouseNs, Id, Reason, Setting, Transition,
@@ -101,7 +101,8 @@ impl CrossingRecord {
     /// Brings the account up to `now`; tells if it had to be begun anew.
     pub(crate) fn advance(&mut self, now: HouseNs, ends: &Ends) -> Option<Transition> {
         self.ledger.advance(now, &ends.source, &ends.sink);
-        let recoverable = PITCH_LIMIT * ends.target.nominal_sink_hz * LONGEST_RECOVERY_S;
+        let pitch = pitch_limit(&self.declaration, ends.target.nominal_sink_hz);
+        let recoverable = pitch * LONGEST_RECOVERY_S;
         let limit = self.declaration.headroom_samples + recoverable;
         let phase = self.ledger.phase_samples();
         if phase.abs() - 2.0 * self.ledger.variance().sqrt() <= limit {
@@ -219,11 +220,7 @@ impl CrossingRecord {
     fn stays(&self, view: &View<'_>) -> Option<(CrossingState, String)> {
         let newest = self.newest.as_ref()?;
         let error = error_of(&newest.realised);
-        let limits = Limits::new(
-            view.declaration.headroom_samples,
-            error,
-            view.outlook.sink_hz,
-        );
+        let limits = view.limits(error);
         let block_s = block_inputs(&newest.realised) as f64 * view.outlook.target.value
             / view.outlook.sink_hz;
         if may_stay(

@@ -1,7 +1,8 @@
 //! Settings: decisions as they are published, stored and proved.
 
 use ratewright_ratio::{
-    Bounds, Cadence, Certificate, CertificateError, Claim, Fraction, Interval, Side, exact,
+    Bounds, Cadence, Certificate, CertificateError, Claim, Fraction, Interval, Node, Side,
+    Stepping, exact,
 };
 use serde::{Deserialize, Serialize};
 
@@ -38,6 +39,10 @@ pub struct Setting {
     pub seconds_to_slip: Option<f64>,
     /// Why it was made.
     pub reason: Reason,
+    /// True if it was made for the crossing's backup source.
+    pub on_backup: bool,
+    /// True if it is for the record only: the crossing was declared silent.
+    pub silent: bool,
     /// What it rests on.
     pub evidence: Evidence,
 }
@@ -49,6 +54,16 @@ pub enum Realised {
     Single(Fraction),
     /// Two neighbouring ratios in turn, changed at block ends, whose average is the wanted one.
     Cadence(Cadence),
+    /// One table of phases; each output moves on by one number of phases or by one more.
+    Stepping(Stepping),
+    /// Two neighbouring ratios whose average is the wanted one, each held until the running error
+    /// would leave ±`swing_samples`.
+    Lazy {
+        /// The two ratios.
+        cadence: Cadence,
+        /// Limit of the running error, output samples; at least the cadence's error bound.
+        swing_samples: f64,
+    },
 }
 
 /// Why a setting was made.
@@ -64,6 +79,8 @@ pub enum Reason {
     Declaration,
     /// Another crossing of its group changed.
     Group,
+    /// The stream comes from another source.
+    ChangeOver,
     /// Nothing changed; the setting before it was due for review.
     Renewal,
 }
@@ -102,7 +119,7 @@ impl Setting {
     pub fn average(&self) -> Fraction {
         match self.realised {
             Realised::Single(ratio) => ratio,
-            Realised::Cadence(_) => self.wanted,
+            Realised::Cadence(_) | Realised::Stepping(_) | Realised::Lazy { .. } => self.wanted,
         }
     }
 
@@ -111,7 +128,9 @@ impl Setting {
     /// What it proves: [`Certificate::Simplest`], that the single ratio is the simplest in the
     /// allowed interval of the evidence; [`Certificate::Nearest`], that the single ratio is the
     /// nearest to `wanted` within the bounds; [`Certificate::NeighbourPair`], that nothing within
-    /// the bounds lies between the two ratios of the cadence, and `wanted` does.
+    /// the bounds lies between the two ratios of the cadence or the lazy switching, and `wanted`
+    /// does; [`Certificate::SteppingPair`], that the two advances of a table of `max_l` phases
+    /// enclose `wanted`.
     ///
     /// # Errors
     /// [`CertificateError`] names what does not hold; [`CertificateError::Uncertified`] if there
@@ -120,7 +139,25 @@ impl Setting {
         let wanted = exact(&self.wanted);
         let region = bounds.into();
         match (self.realised, &self.certificate) {
-            (Realised::Cadence(cadence), certificate) => {
+            (Realised::Stepping(stepping), certificate) => {
+                let Certificate::SteppingPair(pair) = self.certificate else {
+                    return Err(CertificateError::WrongKind);
+                };
+                let table = Node {
+                    l: stepping.phases(),
+                    m: stepping.advances().0,
+                };
+                if table.l != bounds.max_l() {
+                    return Err(CertificateError::OutsideRegion(table));
+                }
+                if (pair.phases, pair.advance) != (table.l, table.m) || stepping.wanted() != wanted
+                {
+                    return Err(CertificateError::OtherAnswer { claimed: table });
+                }
+                let target = &wanted;
+                certificate.verify(&Claim::SteppingPair { pair, target })
+            }
+            (Realised::Cadence(cadence) | Realised::Lazy { cadence, .. }, certificate) => {
                 let (low, high) = (cadence.low(), cadence.high());
                 certificate.verify(&Claim::NeighbourPair {
                     low,

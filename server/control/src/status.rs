@@ -1,9 +1,12 @@
 //! How a crossing stands, for people and metrics.
 
+use std::fmt;
+
+use ratewright_ratio::Bounds;
 use ratewright_timing::Estimate;
 use serde::{Deserialize, Serialize};
 
-use crate::{Reference, Setting};
+use crate::{HouseNs, Id, Reference, Setting};
 
 /// State of a crossing.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
@@ -45,12 +48,63 @@ pub struct CrossingStatus {
     /// Seconds until the phase error can no longer be kept within the headroom however it is set, if no
     /// further reading comes: the 95 % band alone is as wide. Absent as above.
     pub seconds_vouched: Option<f64>,
+    /// Clock of the source in use: the declared one or the backup.
+    pub source: Id,
+    /// Who pinned it and why, if it is pinned.
+    pub pin: Option<Pin>,
+    /// Smallest bounds that would do, if it is out of bounds and there are any.
+    pub needed: Option<Bounds>,
     /// The newest setting.
     pub setting: Option<Setting>,
     /// Settings made since the crossing was declared.
     pub settings_made: u64,
     /// Of these, the ones with another wanted ratio than the one before.
     pub changes_made: u64,
+}
+
+/// A crossing is pinned: what it runs stays.
+#[derive(Clone, Debug, PartialEq, Eq, Serialize, Deserialize)]
+pub struct Pin {
+    /// Who pinned it.
+    pub by: String,
+    /// Since when.
+    pub since_ns: HouseNs,
+    /// Why, in the operator's words; may be empty.
+    pub note: String,
+}
+
+/// What is wrong with a clock that is measured. Its text names it in words and numbers.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub enum ClockFault {
+    /// Its timestamps run at another rate than its samples come in: the samples count.
+    ForeignTimestamps {
+        /// Drift of the timestamps, dimensionless.
+        timestamps: f64,
+        /// Drift of the samples as delivered, dimensionless.
+        samples: f64,
+        /// Standard deviation of their difference.
+        deviation: f64,
+    },
+}
+
+impl fmt::Display for ClockFault {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        match self {
+            ClockFault::ForeignTimestamps {
+                timestamps,
+                samples,
+                deviation,
+            } => write!(
+                f,
+                "its timestamps come from another clock than its samples: they run at {:+.4} ppm and the \
+                 samples at {:+.4} ppm, {:.4} ± {:.4} ppm apart; the samples count",
+                timestamps * 1e6,
+                samples * 1e6,
+                (timestamps - samples).abs() * 1e6,
+                deviation * 1e6
+            ),
+        }
+    }
 }
 
 /// A clock at an instant: its estimate against house time, and where that comes from.
@@ -64,4 +118,6 @@ pub struct ClockEstimate {
     pub probe: Option<String>,
     /// True if there are readings all the way to house time, or the clock is exact.
     pub measured: bool,
+    /// What is wrong with it, if anything is.
+    pub fault: Option<ClockFault>,
 }

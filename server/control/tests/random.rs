@@ -220,6 +220,14 @@ fn check(
                 assert!(bounds.allow(&cadence.low()) && bounds.allow(&cadence.high()));
                 assert_eq!(declaration.realisation, Realisation::Cadence);
             }
+            Realised::Stepping(stepping) => {
+                assert_eq!(stepping.phases(), bounds.max_l());
+                assert_eq!(declaration.realisation, Realisation::Stepping);
+            }
+            Realised::Lazy { cadence, .. } => {
+                assert!(bounds.allow(&cadence.low()) && bounds.allow(&cadence.high()));
+                assert_eq!(declaration.realisation, Realisation::Lazy);
+            }
         }
         match setting.verify(bounds) {
             Ok(()) => {}

@@ -28,11 +28,8 @@ impl Desk {
         let mut engine = Engine::new(1);
         for (name, exact) in [("desk", false), ("host", false), ("record", true)] {
             let declaration = ClockDeclaration {
-                id: id(name),
-                display_name: String::new(),
-                nominal_hz: Ratio::from_integer(1_000_000),
                 exact,
-                tolerance_ppm: 0.0,
+                ..ClockDeclaration::new(id(name), Ratio::from_integer(1_000_000))
             };
             engine
                 .apply(&Event::DeclareClock(declaration), 0)

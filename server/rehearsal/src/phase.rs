@@ -12,12 +12,10 @@ use crate::facility::{Facility, TrueClock};
 /// # use ratewright_rehearsal::*;
 /// # use num_rational::Ratio;
 /// # let id = |text| Id::new(text).unwrap();
-/// # let clock = |name, hz| ClockDeclaration { id: id(name), display_name: String::new(),
-/// #     nominal_hz: Ratio::from_integer(hz), exact: true, tolerance_ppm: 0.0 };
-/// # let crossing = CrossingDeclaration { id: id("line"), display_name: String::new(), source: id("source"),
-/// #     sink: id("sink"), bounds: ratewright_ratio::Bounds::new(512, 512).unwrap(), headroom_samples: 4.0,
-/// #     realisation: Realisation::Cadence, group: None, lead_ns: 1_000_000_000,
-/// #     review_horizon_ns: 86_400_000_000_000 };
+/// # let clock = |name, hz| ClockDeclaration { exact: true,
+/// #     ..ClockDeclaration::new(id(name), Ratio::from_integer(hz)) };
+/// # let bounds = ratewright_ratio::Bounds::new(512, 512).unwrap();
+/// # let crossing = CrossingDeclaration::new(id("line"), id("source"), id("sink"), bounds);
 /// # let plan = Plan { hosts: vec![], devices: vec![], exact: vec![clock("source", 48_000), clock("sink", 48_000)],
 /// #     crossings: vec![crossing.clone()] };
 /// # let facility = Facility::new(plan, 1, 0).unwrap();

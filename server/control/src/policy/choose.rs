@@ -74,7 +74,7 @@ pub(crate) fn choose(view: &View<'_>) -> Choice {
     }
     match view.declaration.realisation {
         Realisation::Single => view.single(&spans, entry),
-        Realisation::Cadence => view.cadence(),
+        Realisation::Cadence | Realisation::Stepping | Realisation::Lazy => view.cadence(),
     }
 }
 
@@ -96,11 +96,7 @@ pub(crate) fn choose_nominal(view: &View<'_>, state: CrossingState, reason: Stri
 
 impl View<'_> {
     pub(crate) fn limits(&self, cadence_error: f64) -> Limits {
-        Limits::new(
-            self.declaration.headroom_samples,
-            cadence_error,
-            self.outlook.sink_hz,
-        )
+        Limits::new(self.declaration, cadence_error, self.outlook.sink_hz)
     }
 
     fn allowed(&self, span: &Span) -> Option<Allowed> {

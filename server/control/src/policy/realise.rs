@@ -143,6 +143,11 @@ pub(crate) fn error_of(realised: &Realised) -> f64 {
     match realised {
         Realised::Single(_) => 0.0,
         Realised::Cadence(cadence) => pair_error(cadence),
+        Realised::Stepping(stepping) => {
+            let bound = stepping.error_bound();
+            *bound.numer() as f64 / *bound.denom() as f64 + CARRIED_SAMPLES
+        }
+        Realised::Lazy { swing_samples, .. } => *swing_samples,
     }
 }
 
@@ -150,6 +155,9 @@ pub(crate) fn error_of(realised: &Realised) -> f64 {
 pub(crate) fn block_inputs(realised: &Realised) -> u64 {
     match realised {
         Realised::Single(ratio) => *ratio.denom(),
-        Realised::Cadence(cadence) => *cadence.low().denom().max(cadence.high().denom()),
+        Realised::Stepping(_) => 1,
+        Realised::Cadence(cadence) | Realised::Lazy { cadence, .. } => {
+            *cadence.low().denom().max(cadence.high().denom())
+        }
     }
 }

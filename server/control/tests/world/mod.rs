@@ -12,9 +12,9 @@ use std::collections::BTreeMap;
 use num_rational::Ratio;
 use ratewright_control::{
     ClockDeclaration, CrossingDeclaration, CrossingState, Effects, Engine, Event, Id, Reading,
-    Realisation, Realised, Reference, Setting, Transition,
+    Realised, Reference, Setting, Transition,
 };
-use ratewright_ratio::Bounds;
+use ratewright_ratio::{Bounds, Exact};
 use ratewright_timing::Measurement;
 use ratewright_timing::sim::{Clock, ClockModel, Delay, Path, PathModel};
 
@@ -27,13 +27,7 @@ pub fn id(name: &str) -> Id {
 }
 
 pub fn clock(name: &str, hz: u64) -> ClockDeclaration {
-    ClockDeclaration {
-        id: id(name),
-        display_name: String::new(),
-        nominal_hz: Ratio::from_integer(hz),
-        exact: false,
-        tolerance_ppm: 0.0,
-    }
+    ClockDeclaration::new(id(name), Ratio::from_integer(hz))
 }
 
 pub fn exact_clock(name: &str, hz: u64) -> ClockDeclaration {
@@ -44,17 +38,12 @@ pub fn exact_clock(name: &str, hz: u64) -> ClockDeclaration {
 }
 
 pub fn crossing(name: &str, source: &str, sink: &str) -> CrossingDeclaration {
+    let bounds = Bounds::new(1024, 1024).expect("in range");
     CrossingDeclaration {
-        id: id(name),
-        display_name: String::new(),
-        source: id(source),
-        sink: id(sink),
-        bounds: Bounds::new(1024, 1024).expect("in range"),
         headroom_samples: 4.0,
-        realisation: Realisation::Cadence,
-        group: None,
         lead_ns: SECOND,
         review_horizon_ns: HOUR,
+        ..CrossingDeclaration::new(id(name), id(source), id(sink), bounds)
     }
 }
 
@@ -343,10 +332,9 @@ impl World {
                 running.ratio = Some(average(&setting));
                 running.cadence_error = match setting.realised {
                     Realised::Single(_) => 0.0,
-                    Realised::Cadence(cadence) => {
-                        let bound = cadence.error_bound();
-                        *bound.numer() as f64 / *bound.denom() as f64
-                    }
+                    Realised::Cadence(cadence) => as_f64(cadence.error_bound()),
+                    Realised::Stepping(stepping) => as_f64(stepping.error_bound()),
+                    Realised::Lazy { swing_samples, .. } => swing_samples,
                 };
                 if running.reports {
                     let Setting {
@@ -428,6 +416,10 @@ impl World {
             running.tally.worst_account = running.tally.worst_account.max(off);
         }
     }
+}
+
+fn as_f64(exact: Exact) -> f64 {
+    *exact.numer() as f64 / *exact.denom() as f64
 }
 
 pub fn average(setting: &Setting) -> f64 {

@@ -42,11 +42,10 @@ fn clock(section: &Section<'_>, taken: &mut BTreeSet<Id>) -> Option<ClockDeclara
         |value| number(value, 0.0, 10_000.0),
     );
     Some(ClockDeclaration {
-        id: id?,
         display_name,
-        nominal_hz: nominal_hz?,
         exact,
         tolerance_ppm,
+        ..ClockDeclaration::new(id?, nominal_hz?)
     })
 }
 
@@ -98,17 +97,15 @@ fn crossing(
         &mut review_horizon_ns,
         |value| seconds(value, 10.0, 2_592_000.0),
     );
+    let bounds = Bounds::new(max_l, max_m).ok()?;
     Some(CrossingDeclaration {
-        id: id?,
         display_name,
-        source: source?,
-        sink: sink?,
-        bounds: Bounds::new(max_l, max_m).ok()?,
         headroom_samples,
         realisation,
         group,
         lead_ns,
         review_horizon_ns,
+        ..CrossingDeclaration::new(id?, source?, sink?, bounds)
     })
 }
 

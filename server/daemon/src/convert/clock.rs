@@ -38,11 +38,10 @@ pub(crate) fn declaration(
         unreachable!("a field that is missing was noted as a violation")
     };
     Ok(ClockDeclaration {
-        id,
         display_name,
-        nominal_hz,
         exact: sent.exact,
         tolerance_ppm,
+        ..ClockDeclaration::new(id, nominal_hz)
     })
 }
 

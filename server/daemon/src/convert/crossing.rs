@@ -58,17 +58,15 @@ pub(crate) fn declaration(
     let missing = "a field that is missing was noted as a violation";
     let bounds = Bounds::new(max_l.expect(missing), max_m.expect(missing))
         .expect("2^31 is within what the ratio crate takes");
+    let (source, sink) = (source.expect(missing), sink.expect(missing));
     Ok(CrossingDeclaration {
-        id: id.expect(missing),
         display_name: display_name.expect(missing),
-        source: source.expect(missing),
-        sink: sink.expect(missing),
-        bounds,
         headroom_samples: headroom_samples.expect(missing),
         realisation: realisation.expect(missing),
         group: group.expect(missing),
         lead_ns: lead_ns.expect(missing),
         review_horizon_ns: review_horizon_ns.expect(missing),
+        ..CrossingDeclaration::new(id.expect(missing), source, sink, bounds)
     })
 }
 
@@ -151,6 +149,8 @@ pub(crate) fn declaration_to_wire(crossing: &CrossingDeclaration) -> v1::Crossin
     let realisation = match crossing.realisation {
         Realisation::Single => v1::Realisation::Single,
         Realisation::Cadence => v1::Realisation::Cadence,
+        // Not in the contract yet, so that no crossing can be declared over it with these.
+        Realisation::Stepping | Realisation::Lazy => v1::Realisation::Unspecified,
     };
     v1::Crossing {
         name: names::crossing(&crossing.id),

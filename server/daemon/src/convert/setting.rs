@@ -20,10 +20,12 @@ pub(crate) fn setting_to_wire(setting: &Setting) -> v1::Setting {
         epoch: setting.epoch,
         number: setting.number,
         wanted: Some(fraction_to_wire(&setting.wanted)),
-        realisation: Some(match &setting.realised {
-            Realised::Single(ratio) => Realisation::Single(ratio_to_wire(ratio)),
-            Realised::Cadence(cadence) => Realisation::Cadence(cadence_to_wire(cadence)),
-        }),
+        realisation: match &setting.realised {
+            Realised::Single(ratio) => Some(Realisation::Single(ratio_to_wire(ratio))),
+            Realised::Cadence(cadence) => Some(Realisation::Cadence(cadence_to_wire(cadence))),
+            // Not in the contract yet, and no crossing can be declared over it that gets one.
+            Realised::Stepping(_) | Realised::Lazy { .. } => None,
+        },
         residual: setting.residual,
         certificate: Some(certificate_to_wire(&setting.certificate, interval)),
         decided_ns: setting.decided_ns,
@@ -92,6 +94,7 @@ fn reason_to_wire(reason: Reason) -> v1::SettingReason {
         Reason::Declaration => v1::SettingReason::Declaration,
         Reason::Group => v1::SettingReason::Group,
         Reason::Renewal => v1::SettingReason::Renewal,
+        Reason::ChangeOver => v1::SettingReason::ChangeOver,
     }
 }
 

@@ -135,6 +135,7 @@ pub fn setting(setting: &Setting, newest_reading_ns: Option<HouseNs>) {
         Reason::Declaration => "declaration",
         Reason::Group => "group",
         Reason::Renewal => "renewal",
+        Reason::ChangeOver => "changeover",
     };
     counter!(SETTINGS, "reason" => reason).increment(1);
 }
@@ -144,6 +145,8 @@ pub fn transition(transition: &Transition) {
     let (kind, to) = match transition {
         Transition::Clock { to, .. } => ("clock", clock_state(*to)),
         Transition::Crossing { to, .. } => ("crossing", crossing_state(*to)),
+        Transition::ClockFault { fault: Some(_), .. } => ("clock", "faulty"),
+        Transition::ClockFault { fault: None, .. } => ("clock", "sound"),
         Transition::Centred { .. } => ("crossing", "centred"),
     };
     counter!(TRANSITIONS, "kind" => kind, "to" => to).increment(1);

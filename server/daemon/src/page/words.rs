@@ -82,6 +82,15 @@ pub(super) fn runs(realised: &Realised) -> String {
             blocks(cadence.low_blocks(), cadence.low()),
             blocks(cadence.high_blocks(), cadence.high())
         ),
+        Realised::Stepping(stepping) => {
+            let (short, long) = stepping.advances();
+            format!("{short} or {long} of {} phases", stepping.phases())
+        }
+        Realised::Lazy { cadence, .. } => format!(
+            "{} and {}, each held",
+            fraction(cadence.low()),
+            fraction(cadence.high())
+        ),
     }
 }
 
@@ -97,6 +106,7 @@ pub(super) fn why(reason: Reason) -> &'static str {
         Reason::Recovery => "to bring the phase error back",
         Reason::Declaration => "a declaration changed",
         Reason::Group => "its group changed",
+        Reason::ChangeOver => "the stream comes from another source",
         Reason::Renewal => "reviewed, and nothing had to change",
     }
 }

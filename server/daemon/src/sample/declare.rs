@@ -75,6 +75,8 @@ fn crossing_on_the_wire(
         realisation: match crossing.realisation {
             control::Realisation::Single => Realisation::Single,
             control::Realisation::Cadence => Realisation::Cadence,
+            // The client cannot say these yet, and the sample facility has none.
+            control::Realisation::Stepping | control::Realisation::Lazy => Realisation::Cadence,
         },
         group: crossing.group.as_ref().map(id),
         lead_ns: crossing.lead_ns,

@@ -93,6 +93,13 @@ fn log_transition(transition: &Transition) {
         } => {
             tracing::info!(%clock, ?from, ?to, ?reason, "clock changed its state");
         }
+        Transition::ClockFault {
+            clock,
+            fault: Some(fault),
+        } => tracing::warn!(%clock, %fault, "clock is at fault"),
+        Transition::ClockFault { clock, fault: None } => {
+            tracing::info!(%clock, "the fault of the clock is gone");
+        }
         Transition::Crossing {
             crossing,
             from,

@@ -46,6 +46,9 @@ impl Touched {
             Event::DeclareCrossing(crossing) => drop(self.crossings.insert(crossing.id.clone())),
             Event::DeleteCrossing(id)
             | Event::Applied { crossing: id, .. }
+            | Event::Pin { crossing: id, .. }
+            | Event::Release { crossing: id, .. }
+            | Event::ChangeOver { crossing: id, .. }
             | Event::Occupancy { crossing: id, .. } => drop(self.crossings.insert(id.clone())),
             Event::Reading(_) | Event::Tick | Event::OpenEpoch { .. } => {}
         }

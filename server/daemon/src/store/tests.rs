@@ -31,13 +31,8 @@ fn begun(folder: &TempDir) -> Opened {
 }
 
 fn clock(name: &str) -> Event {
-    Event::DeclareClock(ClockDeclaration {
-        id: Id::new(name).unwrap(),
-        display_name: String::new(),
-        nominal_hz: Ratio::from_integer(48_000),
-        exact: false,
-        tolerance_ppm: 0.0,
-    })
+    let rate = Ratio::from_integer(48_000);
+    Event::DeclareClock(ClockDeclaration::new(Id::new(name).unwrap(), rate))
 }
 
 fn setting(number: u64) -> Setting {
@@ -57,6 +52,8 @@ fn setting(number: u64) -> Setting {
         expiry_ns: 40,
         seconds_to_slip: None,
         reason: Reason::First,
+        on_backup: false,
+        silent: false,
         evidence: Evidence {
             target: 160.0 / 147.0,
             target_low: 1.0,

@@ -181,11 +181,8 @@ async fn a_new_epoch_numbers_afresh_and_keeps_the_rest() {
 #[tokio::test]
 async fn what_the_configuration_declares_is_there_at_once() {
     let desk = ClockDeclaration {
-        id: Id::new("desk").unwrap(),
         display_name: "Desk".into(),
-        nominal_hz: Ratio::new(48_000_000, 1_001),
-        exact: false,
-        tolerance_ppm: 0.0,
+        ..ClockDeclaration::new(Id::new("desk").unwrap(), Ratio::new(48_000_000, 1_001))
     };
     let mut facility = Facility::start_with(|config| config.clocks.push(desk)).await;
     let get = v1::GetClockRequest {

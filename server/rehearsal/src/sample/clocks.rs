@@ -261,10 +261,8 @@ fn device(
 
 fn clock(name: &str, title: &str, nominal_hz: Ratio<u64>) -> ClockDeclaration {
     ClockDeclaration {
-        id: id(name),
         display_name: title.to_owned(),
-        nominal_hz,
-        exact: false,
         tolerance_ppm: 100.0,
+        ..ClockDeclaration::new(id(name), nominal_hz)
     }
 }

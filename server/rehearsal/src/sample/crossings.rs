@@ -126,16 +126,12 @@ fn crossing(
     bound: u64,
     headroom_samples: f64,
 ) -> CrossingDeclaration {
+    let bounds = Bounds::new(bound, bound).expect("the bounds of the sample facility are positive");
     CrossingDeclaration {
-        id: id(name),
         display_name: title.to_owned(),
-        source: id(source),
-        sink: id(sink),
-        bounds: Bounds::new(bound, bound).expect("the bounds of the sample facility are positive"),
         headroom_samples,
-        realisation: Realisation::Cadence,
-        group: None,
         lead_ns: S,
         review_horizon_ns: DAY_S * S,
+        ..CrossingDeclaration::new(id(name), id(source), id(sink), bounds)
     }
 }
