@@ -221,7 +221,10 @@ impl Feed {
             sleep_until(retry_at).await;
         }
         let crossings = self.crossings.iter().map(crossing_name).collect();
-        let select = v1::WatchSettingsRequest { crossings };
+        let select = v1::WatchSettingsRequest {
+            crossings,
+            newest_known: Vec::new(),
+        };
         let mut stub = self.client.ratio_stub();
         let opened = match &mut self.outbound {
             None => {

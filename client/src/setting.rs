@@ -2,7 +2,7 @@
 
 use std::fmt;
 
-use ratewright_ratio::{Bracket, Cadence, Fraction, Interval, Parents};
+use ratewright_ratio::{Bracket, Cadence, Fraction, Interval, Parents, Stepping, SteppingPair};
 
 use crate::Id;
 use crate::wire::setting_name;
@@ -70,6 +70,15 @@ pub enum Realised {
     Single(Fraction),
     /// Two ratios in turn at block ends.
     Cadence(Cadence),
+    /// One table of phases, and two advances in turn at each output.
+    Stepping(Stepping),
+    /// Two ratios, each held until the running error would leave the swing.
+    Lazy {
+        /// The two ratios.
+        cadence: Cadence,
+        /// Largest running error at any block end, either way, output samples.
+        swing_samples: f64,
+    },
 }
 
 /// What proves a setting.
@@ -86,6 +95,8 @@ pub enum Proof {
     },
     /// The two ratios of the cadence are neighbours within the bounds.
     Neighbours(Bracket),
+    /// The two advances enclose the wanted ratio.
+    Stepping(SteppingPair),
     /// There is no proof, for this reason.
     Uncertified(String),
 }

@@ -6,7 +6,8 @@
 //! [`ratewright_ratio`].
 
 use ratewright_ratio::{
-    Bounds, Bracket, Cadence, Certificate, CertificateError, Claim, Fraction, Node, Side, exact,
+    Bounds, Bracket, Cadence, Certificate, CertificateError, Claim, Fraction, Node, Side, Stepping,
+    SteppingPair, exact,
 };
 use thiserror::Error;
 
@@ -24,6 +25,14 @@ pub enum VerifyError {
         max_l: u64,
         /// Largest M.
         max_m: u64,
+    },
+    /// More phases than the table holds.
+    #[error("{phases} phases are more than the crossing's {max_l}")]
+    TooManyPhases {
+        /// The phases of the setting.
+        phases: u64,
+        /// Largest L, which is the table's size.
+        max_l: u64,
     },
     /// One ratio that is not the wanted one, without the proof that it is the nearest.
     #[error("it runs {run}, but {wanted} is wanted")]
@@ -56,10 +65,11 @@ impl Setting {
                 within(ratio, bounds)?;
                 self.verify_single(*ratio, bounds)
             }
-            Realised::Cadence(cadence) => {
+            Realised::Cadence(cadence) | Realised::Lazy { cadence, .. } => {
                 verify_pair(cadence, bounds)?;
                 self.verify_shown_pair(cadence)
             }
+            Realised::Stepping(stepping) => self.verify_stepping(stepping, bounds),
         }
     }
 
@@ -79,7 +89,9 @@ impl Setting {
                 let claim = Claim::Simplest { fraction, interval };
                 Certificate::Simplest(*parents).verify(&claim)?;
             }
-            Proof::Neighbours(_) => return Err(CertificateError::WrongKind.into()),
+            Proof::Neighbours(_) | Proof::Stepping(_) => {
+                return Err(CertificateError::WrongKind.into());
+            }
             Proof::Uncertified(_) => {}
         }
         let wanted = self.wanted;
@@ -99,8 +111,28 @@ impl Setting {
                 let claimed = Node::from(&cadence.low());
                 Err(CertificateError::OtherAnswer { claimed }.into())
             }
-            Proof::Nearest(_) | Proof::Simplest { .. } => Err(CertificateError::WrongKind.into()),
+            Proof::Nearest(_) | Proof::Simplest { .. } | Proof::Stepping(_) => {
+                Err(CertificateError::WrongKind.into())
+            }
             Proof::Uncertified(_) => Ok(()),
+        }
+    }
+
+    /// That the table is large enough, and that the two advances enclose the wanted ratio.
+    fn verify_stepping(&self, stepping: &Stepping, bounds: &Bounds) -> Result<(), VerifyError> {
+        let (phases, max_l) = (stepping.phases(), bounds.max_l());
+        if phases > max_l {
+            return Err(VerifyError::TooManyPhases { phases, max_l });
+        }
+        let advance = stepping.advances().0;
+        let claim = Claim::SteppingPair {
+            pair: SteppingPair { phases, advance },
+            target: &exact(&self.wanted),
+        };
+        match &self.proof {
+            Proof::Stepping(shown) => Ok(Certificate::SteppingPair(*shown).verify(&claim)?),
+            Proof::Uncertified(_) => Ok(stepping.certificate().verify(&claim)?),
+            _ => Err(CertificateError::WrongKind.into()),
         }
     }
 }

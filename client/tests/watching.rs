@@ -4,8 +4,10 @@ mod fake_server;
 
 use std::time::Duration;
 
-use fake_server::{FakeServer, cadence_setting, nearest_setting};
-use ratewright_client::{Client, Freshness, Id, RefusalKind, Setting, Update, VerifyError, Watch};
+use fake_server::{FakeServer, cadence_setting, lazy_setting, nearest_setting, stepping_setting};
+use ratewright_client::{
+    Client, Freshness, Id, Realised, RefusalKind, Setting, Update, VerifyError, Watch,
+};
 use ratewright_proto::v1;
 use ratewright_ratio::Fraction;
 use v1::certificate::Proof;
@@ -145,6 +147,59 @@ async fn a_setting_whose_certificate_fails_is_refused_and_the_next_good_one_come
     }
     server.facility.publish(good((1, 8), 1.0884));
     assert_eq!(next_setting(&mut watch).await.number.number, 8);
+}
+
+#[tokio::test]
+async fn a_stepping_and_a_lazy_pair_are_verified_too() {
+    let server = FakeServer::start();
+    let wanted = Fraction::new(100_001, 100_000);
+    let stepping = |number| stepping_setting("hall-to-van", number, wanted, 256);
+    let lazy = |number, swing| lazy_setting("hall-to-van", number, wanted, BOUNDS, swing);
+    server.facility.publish(stepping((1, 1)));
+    let mut watch = watching(&server).await;
+    let Realised::Stepping(run) = next_setting(&mut watch).await.realised else {
+        panic!("a stepping was published");
+    };
+    assert_eq!((run.phases(), run.advances()), (256, (255, 256)));
+
+    let too_large = stepping_setting("hall-to-van", (1, 2), wanted, 257);
+    let mut other_advance = stepping((1, 3));
+    if let Some(Realisation::Stepping(run)) = &mut other_advance.realisation {
+        (run.advance, run.longer_advance) = (256, 257);
+    }
+    let mut other_proof = stepping((1, 4));
+    other_proof.certificate = Some(v1::Certificate {
+        proof: Some(Proof::Stepping(v1::SteppingPair {
+            phases: 256,
+            advance: 256,
+        })),
+    });
+    let mut no_proof_of_it = stepping((1, 5));
+    no_proof_of_it.certificate = lazy((1, 5), 2.0).certificate;
+    for (bad, why) in [
+        (too_large, "more than the crossing's 256"),
+        (other_advance, "either side of the wanted one"),
+        (other_proof, "certificate fails"),
+        (no_proof_of_it, "another kind"),
+        (lazy((1, 6), 0.001), "the error bound of the cadence"),
+        (lazy((1, 7), f64::NAN), "the error bound of the cadence"),
+        (lazy((1, 8), 1e10), "to 10^9"),
+    ] {
+        let bad_name = bad.name.clone();
+        server.facility.say(bad);
+        match next(&mut watch).await {
+            Update::Refused { name, error } => {
+                assert_eq!(name, bad_name);
+                assert!(error.to_string().contains(why), "{name}: {error}");
+            }
+            other => panic!("{bad_name} should be refused ({why}), not {other:?}"),
+        }
+    }
+    server.facility.publish(lazy((1, 9), 2.0));
+    let Realised::Lazy { swing_samples, .. } = next_setting(&mut watch).await.realised else {
+        panic!("a lazy pair was published");
+    };
+    assert_eq!(swing_samples, 2.0);
 }
 
 #[tokio::test]

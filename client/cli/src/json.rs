@@ -2,7 +2,7 @@
 //! fractions are texts `n/d`.
 
 use ratewright_client::{Clock, Crossing, Estimate, Proof, Realised, Reference, Setting};
-use ratewright_ratio::Fraction;
+use ratewright_ratio::{Cadence, Fraction};
 use serde_json::{Value, json};
 
 use crate::show;
@@ -91,14 +91,28 @@ pub(crate) fn setting(setting: &Setting) -> Value {
 fn realised(realised: &Realised) -> Value {
     match realised {
         Realised::Single(ratio) => json!({ "l": ratio.numer(), "m": ratio.denom() }),
-        Realised::Cadence(cadence) => {
-            let block = |ratio: Fraction, count: u64| json!({ "l": ratio.numer(), "m": ratio.denom(), "count": count });
-            json!({
-                "low": block(cadence.low(), cadence.low_blocks()),
-                "high": block(cadence.high(), cadence.high_blocks()),
-            })
+        Realised::Cadence(cadence) => pair(cadence),
+        Realised::Stepping(stepping) => {
+            let (advance, longer) = stepping.advances();
+            json!({ "phases": stepping.phases(), "advance": advance, "longer_advance": longer })
+        }
+        Realised::Lazy {
+            cadence,
+            swing_samples,
+        } => {
+            let mut lazy = pair(cadence);
+            lazy["swing_samples"] = json!(swing_samples);
+            lazy
         }
     }
+}
+
+fn pair(cadence: &Cadence) -> Value {
+    let block = |ratio: Fraction, count: u64| json!({ "l": ratio.numer(), "m": ratio.denom(), "count": count });
+    json!({
+        "low": block(cadence.low(), cadence.low_blocks()),
+        "high": block(cadence.high(), cadence.high_blocks()),
+    })
 }
 
 fn proof(proof: &Proof) -> Value {
@@ -116,6 +130,9 @@ fn proof(proof: &Proof) -> Value {
             "left_parent": parents.left.to_string(),
             "right_parent": parents.right.to_string(),
         }}),
+        Proof::Stepping(pair) => {
+            json!({ "stepping": { "phases": pair.phases, "advance": pair.advance } })
+        }
         Proof::Uncertified(reason) => json!({ "uncertified": reason }),
     }
 }

@@ -2,6 +2,7 @@
 
 use num_rational::Ratio;
 use ratewright_client::{Clock, CrossingState, Estimate, EstimateState, Realised, Reason};
+use ratewright_ratio::Cadence;
 
 /// A dimensionless offset with its sign: `+12.3 ppb`, `-1.25 ppm`, `+0.14 %`.
 pub(crate) fn offset(fraction: f64) -> String {
@@ -61,16 +62,28 @@ pub(crate) fn rate(hz: Ratio<u64>) -> String {
 pub(crate) fn realised(realised: &Realised) -> String {
     match realised {
         Realised::Single(ratio) => format!("{}/{}", ratio.numer(), ratio.denom()),
-        Realised::Cadence(cadence) => format!(
-            "{} x {}/{} + {} x {}/{}",
-            cadence.low_blocks(),
-            cadence.low().numer(),
-            cadence.low().denom(),
-            cadence.high_blocks(),
-            cadence.high().numer(),
-            cadence.high().denom(),
-        ),
+        Realised::Cadence(cadence) => pair(cadence),
+        Realised::Stepping(stepping) => {
+            let (advance, longer) = stepping.advances();
+            format!("{} phases by {advance} or {longer}", stepping.phases())
+        }
+        Realised::Lazy {
+            cadence,
+            swing_samples,
+        } => format!("{}, held within ±{swing_samples}", pair(cadence)),
     }
+}
+
+fn pair(cadence: &Cadence) -> String {
+    format!(
+        "{} x {}/{} + {} x {}/{}",
+        cadence.low_blocks(),
+        cadence.low().numer(),
+        cadence.low().denom(),
+        cadence.high_blocks(),
+        cadence.high().numer(),
+        cadence.high().denom(),
+    )
 }
 
 /// What is known of a clock: its drift, and how good that is.

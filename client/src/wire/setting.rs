@@ -1,13 +1,18 @@
 //! Settings in.
 
 use ratewright_proto::v1;
-use ratewright_ratio::{Cadence, Fraction, Interval, Parents, exact};
+use ratewright_ratio::{
+    Cadence, Fraction, Interval, Lazy, Parents, Stepping, SteppingPair, exact, target_from_f64,
+};
 use v1::setting::Realisation;
 
 use super::fraction::{bracket, exact as exact_end, fraction, node, ratio};
 use super::name::id_of;
 use super::{WireError, required};
 use crate::{Evidence, Proof, Realised, Reason, Setting, SettingNumber};
+
+/// Largest headroom of a crossing, sink samples, and so the largest swing.
+const LARGEST_SWING: f64 = 1e9;
 
 impl TryFrom<v1::Setting> for Setting {
     type Error = WireError;
@@ -39,6 +44,8 @@ fn realised(wanted: Fraction, wire: Option<Realisation>) -> Result<Realised, Wir
     match required("setting.realisation", wire)? {
         Realisation::Single(single) => Ok(Realised::Single(ratio("setting.single", Some(single))?)),
         Realisation::Cadence(wire) => cadence(wanted, &wire).map(Realised::Cadence),
+        Realisation::Stepping(wire) => stepping(wanted, &wire).map(Realised::Stepping),
+        Realisation::Lazy(wire) => lazy(wanted, wire),
     }
 }
 
@@ -57,6 +64,42 @@ fn cadence(wanted: Fraction, wire: &v1::Cadence) -> Result<Cadence, WireError> {
         ));
     }
     Ok(cadence)
+}
+
+/// Worked out anew from the table's size; the advances that came must agree.
+fn stepping(wanted: Fraction, wire: &v1::Stepping) -> Result<Stepping, WireError> {
+    let field = "setting.stepping";
+    let stepping = Stepping::new(&exact(&wanted), wire.phases)
+        .map_err(|_| WireError::new(field, wire, "at least as many phases as outputs an input"))?;
+    let advances = (wire.advance, wire.longer_advance);
+    if stepping.advances() != advances {
+        return Err(WireError::new(
+            "setting.stepping.advance, longer_advance",
+            advances,
+            "the advances on either side of the wanted one",
+        ));
+    }
+    Ok(stepping)
+}
+
+/// A swing that the two ratios cannot keep is refused.
+fn lazy(wanted: Fraction, wire: v1::Lazy) -> Result<Realised, WireError> {
+    let pair = required("setting.lazy.cadence", wire.cadence)?;
+    let cadence = cadence(wanted, &pair)?;
+    let swing_samples = wire.swing_samples;
+    let kept = target_from_f64(swing_samples)
+        .is_ok_and(|swing| swing_samples <= LARGEST_SWING && Lazy::new(cadence, &swing).is_ok());
+    if !kept {
+        return Err(WireError::new(
+            "setting.lazy.swing_samples",
+            swing_samples,
+            "the error bound of the cadence to 10^9",
+        ));
+    }
+    Ok(Realised::Lazy {
+        cadence,
+        swing_samples,
+    })
 }
 
 fn reason(wire: &v1::Setting) -> Result<Reason, WireError> {
@@ -85,6 +128,9 @@ impl TryFrom<v1::Certificate> for Proof {
             Wire::Nearest(ends) => Ok(Self::Nearest(bracket("certificate.nearest", &ends)?)),
             Wire::Neighbours(ends) => {
                 Ok(Self::Neighbours(bracket("certificate.neighbours", &ends)?))
+            }
+            Wire::Stepping(v1::SteppingPair { phases, advance }) => {
+                Ok(Self::Stepping(SteppingPair { phases, advance }))
             }
             Wire::Uncertified(reason) => Ok(Self::Uncertified(reason)),
             Wire::Simplest(simplest) => {

@@ -27,7 +27,7 @@ use v1::crossing_service_server::CrossingServiceServer;
 use v1::ratio_service_server::RatioServiceServer;
 use v1::reading_service_server::ReadingServiceServer;
 
-pub(crate) use ratios::{cadence_setting, nearest_setting};
+pub(crate) use ratios::{cadence_setting, lazy_setting, nearest_setting, stepping_setting};
 
 /// The house time of everything the fake says, ns.
 pub(crate) const HOUSE_NS: i64 = 1_800_000_000_000_000_000;

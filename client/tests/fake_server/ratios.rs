@@ -4,8 +4,8 @@ use std::pin::Pin;
 
 use ratewright_proto::v1;
 use ratewright_ratio::{
-    Bounds, Bracket, Cadence, Certificate, Exact, Fraction, MAX_BOUND, best, exact, residual,
-    target_from_f64,
+    Bounds, Bracket, Cadence, Certificate, Exact, Fraction, MAX_BOUND, Stepping, best, exact,
+    residual, target_from_f64,
 };
 use tokio::sync::broadcast::error::RecvError;
 use tokio::sync::mpsc;
@@ -124,6 +124,52 @@ pub(crate) fn cadence_setting(
         realisation: Some(Realisation::Cadence(wire)),
         certificate: Some(v1::Certificate {
             proof: Some(Proof::Neighbours(ends(&bracket))),
+        }),
+        ..setting(crossing, number, &wanted, target, 0.0)
+    }
+}
+
+/// The same two ratios, each held while the error keeps within `swing_samples`.
+pub(crate) fn lazy_setting(
+    crossing: &str,
+    number: (u64, u64),
+    wanted: Fraction,
+    bounds: (u64, u64),
+    swing_samples: f64,
+) -> v1::Setting {
+    let balanced = cadence_setting(crossing, number, wanted, bounds);
+    let Some(Realisation::Cadence(cadence)) = balanced.realisation else {
+        panic!("a cadence was made");
+    };
+    let cadence = Some(cadence);
+    v1::Setting {
+        realisation: Some(Realisation::Lazy(v1::Lazy {
+            cadence,
+            swing_samples,
+        })),
+        ..balanced
+    }
+}
+
+/// A good setting of one table of phases.
+pub(crate) fn stepping_setting(
+    crossing: &str,
+    number: (u64, u64),
+    wanted: Fraction,
+    phases: u64,
+) -> v1::Setting {
+    let stepping = Stepping::new(&exact(&wanted), phases).expect("enough phases");
+    let (advance, longer_advance) = stepping.advances();
+    let target = *wanted.numer() as f64 / *wanted.denom() as f64;
+    v1::Setting {
+        realisation: Some(Realisation::Stepping(v1::Stepping {
+            phases,
+            advance,
+            longer_advance,
+            error_bound_samples: 0.1,
+        })),
+        certificate: Some(v1::Certificate {
+            proof: Some(Proof::Stepping(v1::SteppingPair { phases, advance })),
         }),
         ..setting(crossing, number, &wanted, target, 0.0)
     }

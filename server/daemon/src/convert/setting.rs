@@ -63,10 +63,10 @@ pub(crate) fn certificate_to_wire(
             left_parent: Some(node_to_wire(parents.left)),
             right_parent: Some(node_to_wire(parents.right)),
         }),
-        Certificate::SteppingPair(pair) => Proof::Uncertified(format!(
-            "a stepping pair of {} phases and advance {}, which this contract has no proof for",
-            pair.phases, pair.advance
-        )),
+        Certificate::SteppingPair(pair) => Proof::Stepping(v1::SteppingPair {
+            phases: pair.phases,
+            advance: pair.advance,
+        }),
         Certificate::Uncertified(reason) => Proof::Uncertified(reason.to_string()),
     };
     v1::Certificate { proof: Some(proof) }

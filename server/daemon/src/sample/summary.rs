@@ -3,6 +3,7 @@
 use std::fmt::{self, Display, Formatter};
 
 use ratewright_client::{Clock, Crossing, CrossingState, EstimateState, Realised};
+use ratewright_ratio::{Cadence, Fraction};
 
 /// The facility at an instant; displays as the summary.
 pub(super) struct Snapshot<'a> {
@@ -144,18 +145,25 @@ fn locked(clock: &Clock) -> String {
 fn runs(realised: &Realised) -> String {
     match realised {
         Realised::Single(ratio) => format!("{}/{}", ratio.numer(), ratio.denom()),
-        Realised::Cadence(cadence) => {
-            let ((low, high), low_blocks, high_blocks) = (
-                (cadence.low(), cadence.high()),
-                cadence.low_blocks(),
-                cadence.high_blocks(),
-            );
-            let part = |ratio: ratewright_ratio::Fraction, blocks| {
-                format!("{blocks} × {}/{}", ratio.numer(), ratio.denom())
-            };
-            format!("{} + {}", part(low, low_blocks), part(high, high_blocks))
+        Realised::Cadence(cadence) => pair(cadence),
+        Realised::Lazy {
+            cadence,
+            swing_samples,
+        } => format!("{} within ±{swing_samples:.1}", pair(cadence)),
+        Realised::Stepping(stepping) => {
+            let (advance, longer) = stepping.advances();
+            format!("{} phases by {advance} or {longer}", stepping.phases())
         }
     }
+}
+
+fn pair(cadence: &Cadence) -> String {
+    let part = |ratio: Fraction, blocks| format!("{blocks} × {}/{}", ratio.numer(), ratio.denom());
+    format!(
+        "{} + {}",
+        part(cadence.low(), cadence.low_blocks()),
+        part(cadence.high(), cadence.high_blocks())
+    )
 }
 
 /// A span of time in the two largest units that say something.

@@ -26,6 +26,13 @@ pub(super) fn watch(
     let (sender, answers) = mpsc::channel(1);
     tokio::spawn(async move {
         let _slot = slot;
+        if feed.resumes()
+            && greet(&sender, watched(None, access.house.now()))
+                .await
+                .is_err()
+        {
+            return;
+        }
         loop {
             tokio::select! {
                 sent = send_next(&access, &mut feed, &sender, watched) => {
@@ -39,11 +46,8 @@ pub(super) fn watch(
     Box::pin(ReceiverStream::new(answers))
 }
 
-fn watched(setting: v1::Setting, house_ns: i64) -> v1::WatchSettingsResponse {
-    v1::WatchSettingsResponse {
-        setting: Some(setting),
-        house_ns,
-    }
+fn watched(setting: Option<v1::Setting>, house_ns: i64) -> v1::WatchSettingsResponse {
+    v1::WatchSettingsResponse { setting, house_ns }
 }
 
 /// Starts a follow, after its first message.
@@ -56,6 +60,13 @@ pub(super) fn follow(
     let (sender, answers) = mpsc::channel(1);
     tokio::spawn(async move {
         let _slot = slot;
+        if feed.resumes()
+            && greet(&sender, followed(None, access.house.now()))
+                .await
+                .is_err()
+        {
+            return;
+        }
         let mut reporting = true;
         loop {
             tokio::select! {
@@ -78,11 +89,17 @@ pub(super) fn follow(
     Box::pin(ReceiverStream::new(answers))
 }
 
-fn followed(setting: v1::Setting, house_ns: i64) -> v1::FollowSettingsResponse {
+fn followed(setting: Option<v1::Setting>, house_ns: i64) -> v1::FollowSettingsResponse {
     v1::FollowSettingsResponse {
-        message: Some(Said::Setting(setting)),
+        message: setting.map(Said::Setting),
         house_ns,
     }
+}
+
+/// Tells whoever resumes that it is heard, and the house time: there may be no setting to tell.
+async fn greet<T>(to: &Sender<T>, greeting: T) -> Result<(), mpsc::error::SendError<()>> {
+    to.reserve().await?.send(Ok(greeting));
+    Ok(())
 }
 
 /// Waits for room first, so that the setting is the newest at the moment of sending.
@@ -90,11 +107,12 @@ async fn send_next<T>(
     access: &Access,
     feed: &mut Feed,
     to: &Sender<T>,
-    wrap: impl Fn(v1::Setting, i64) -> T,
+    wrap: impl Fn(Option<v1::Setting>, i64) -> T,
 ) -> Result<(), mpsc::error::SendError<()>> {
     let room = to.reserve().await?;
     let setting = feed.next().await;
-    room.send(Ok(wrap(setting_to_wire(&setting), access.house.now())));
+    let setting = Some(setting_to_wire(&setting));
+    room.send(Ok(wrap(setting, access.house.now())));
     Ok(())
 }
 

@@ -77,8 +77,9 @@ impl RatioService for Ratios {
     ) -> Result<Response<Self::WatchSettingsStream>, Status> {
         let board = self.0.board.clone();
         let selection = feed::selection(&board, request.get_ref(), "crossings")?;
+        let known = feed::known(request.get_ref(), "newest_known")?;
         let slot = self.0.slots.take(Kind::Watch)?;
-        let feed = feed::Feed::new(board, selection);
+        let feed = feed::Feed::new(board, selection, known);
         Ok(Response::new(follow::watch(self.0.clone(), feed, slot)))
     }
 
@@ -100,7 +101,8 @@ impl RatioService for Ratios {
         };
         let board = self.0.board.clone();
         let selection = feed::selection(&board, &select, "select.crossings")?;
-        let feed = feed::Feed::new(board, selection);
+        let known = feed::known(&select, "select.newest_known")?;
+        let feed = feed::Feed::new(board, selection, known);
         Ok(Response::new(follow::follow(
             self.0.clone(),
             feed,

@@ -18,7 +18,10 @@ async fn watch(clients: &mut Clients, crossings: &[&str]) -> Streaming<v1::Watch
         .iter()
         .map(|id| format!("crossings/{id}"))
         .collect();
-    let request = v1::WatchSettingsRequest { crossings };
+    let request = v1::WatchSettingsRequest {
+        crossings,
+        newest_known: Vec::new(),
+    };
     clients
         .ratios
         .watch_settings(request)
@@ -93,10 +96,46 @@ async fn a_slow_watcher_gets_the_newest_and_not_each() {
 }
 
 #[tokio::test]
+async fn a_reader_that_resumes_hears_only_what_it_has_not() {
+    let mut facility = Facility::start().await;
+    let clients = &mut facility.clients;
+    clients.declare_pair().await;
+    clients
+        .declare_crossing("other", "stage", "desk")
+        .await
+        .unwrap();
+    let resume = |known: &str| v1::WatchSettingsRequest {
+        crossings: Vec::new(),
+        newest_known: vec![known.to_owned()],
+    };
+    let request = resume("crossings/desk-to-stage/settings/1-1");
+    let answer = clients.ratios.watch_settings(request).await.unwrap();
+    let mut watch = answer.into_inner();
+    let first = timeout(SOON, watch.message()).await.unwrap();
+    let first = first.unwrap().unwrap();
+    assert!(first.setting.is_none() && first.house_ns > 0, "{first:?}");
+    assert_eq!(next(&mut watch).await.crossing, "crossings/other");
+    redeclare(clients, "desk-to-stage", 512).await;
+    assert_eq!(
+        next(&mut watch).await.name,
+        "crossings/desk-to-stage/settings/1-2"
+    );
+
+    for name in [
+        "crossings/desk-to-stage",
+        "crossings/desk-to-stage/settings/latest",
+    ] {
+        let refused = clients.ratios.watch_settings(resume(name)).await;
+        assert_eq!(violations(&refused.unwrap_err())[0].0, "newest_known[0]");
+    }
+}
+
+#[tokio::test]
 async fn watching_an_unknown_crossing_is_refused() {
     let mut facility = Facility::start().await;
     let request = v1::WatchSettingsRequest {
         crossings: vec!["crossings/moon".into()],
+        newest_known: Vec::new(),
     };
     let status = facility
         .clients
@@ -118,6 +157,7 @@ impl Follow {
         let (say, said) = mpsc::channel(8);
         let select = v1::WatchSettingsRequest {
             crossings: vec!["crossings/desk-to-stage".into()],
+            newest_known: Vec::new(),
         };
         say.send(v1::FollowSettingsRequest {
             message: Some(Say::Select(select)),
