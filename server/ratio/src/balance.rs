@@ -10,6 +10,7 @@
 //! visits all x + y residues, and no set of x + y residues fits in a symmetric interval shorter than
 //! ±⌊(x + y)/2⌋. The window [θ − y, θ + x − 1] is centred: θ − y = −⌊(x + y)/2⌋ and θ + x − 1 = ⌊(x + y − 1)/2⌋. ∎
 
+use num_rational::Ratio;
 use serde::{Deserialize, Deserializer, Serialize, de};
 
 /// The largest step: sums of two steps and of an error stay far within 64 bits.
@@ -53,6 +54,20 @@ impl Balance {
     pub(crate) fn bound(self) -> u64 {
         (self.up.unsigned_abs() + self.down.unsigned_abs()) / 2
     }
+}
+
+/// `error`·`scale`/`unit` rounded to the nearest integer; `None` beyond [`MAX_STEP`], or if the arithmetic is
+/// beyond 128 bits.
+pub(crate) fn rounded(error: Ratio<i128>, scale: u128, unit: u128) -> Option<i64> {
+    let part = |x: u128| i128::try_from(x).ok();
+    let twice = error.numer().checked_mul(2)?.checked_mul(part(scale)?)?;
+    let divisor = error.denom().checked_mul(part(unit)?)?;
+    let units = twice
+        .checked_add(divisor)?
+        .div_euclid(divisor.checked_mul(2)?);
+    i64::try_from(units)
+        .ok()
+        .filter(|e| e.unsigned_abs() <= MAX_STEP.unsigned_abs())
 }
 
 /// Reads a saved error, refusing what no sequence reaches.

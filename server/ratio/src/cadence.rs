@@ -22,7 +22,7 @@ use num_rational::Ratio;
 use serde::{Deserialize, Serialize};
 use thiserror::Error;
 
-use crate::balance::{Balance, MAX_STEP};
+use crate::balance::{Balance, MAX_STEP, rounded};
 use crate::bracket::{Bracket, Node};
 use crate::wide::Wide;
 use crate::{Bounds, Certificate, Claim, Exact, Fraction, Reason, neighbours, smooth};
@@ -288,20 +288,18 @@ impl Cadence {
     /// (1/(2D) output samples for neighbours), and is brought within the bound at the fastest rate the pair
     /// allows. `None` if it is beyond 2^60 units, or the arithmetic beyond 128 bits.
     pub fn start_from(self, error: Ratio<i128>) -> Option<CadenceState> {
-        let denominator = i128::try_from(*self.pair.wanted.denom()).ok()?;
-        let twice = error.numer().checked_mul(2)?.checked_mul(denominator)?;
-        let divisor = error.denom().checked_mul(i128::try_from(self.unit).ok()?)?;
-        let units = twice
-            .checked_add(divisor)?
-            .div_euclid(divisor.checked_mul(2)?);
-        let largest = (MAX_RAW / self.unit).min(MAX_STEP as u128);
-        let error = i64::try_from(units)
-            .ok()
-            .filter(|&e| u128::from(e.unsigned_abs()) <= largest)?;
+        let error = self.units_of(error)?;
         Some(CadenceState {
             cadence: self,
             error,
         })
+    }
+
+    /// An error in output samples, in units, rounded to the nearest.
+    pub(crate) fn units_of(&self, error: Ratio<i128>) -> Option<i64> {
+        let largest = (MAX_RAW / self.unit).min(MAX_STEP as u128);
+        rounded(error, *self.pair.wanted.denom(), self.unit)
+            .filter(|&e| u128::from(e.unsigned_abs()) <= largest)
     }
 }
 

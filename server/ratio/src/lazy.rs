@@ -4,6 +4,7 @@
 //! the balanced cadence, ⌊(x + y)/2⌋ units, the change always keeps |e| ≤ E. (If e − y < −E then
 //! e + x ≤ x + y − 1 − E ≤ E, and likewise upwards.) Each hold runs across the whole headroom, so there are about
 //! `f_in·(t − r₀)(r₁ − t)/(E(r₁ − r₀))` changes a second between r₀ and r₁, for E well above one block's error.
+//! From outside, each block takes the choice that leaves the smaller |e|, so it returns at the fastest rate.
 //!
 //! **Cost.** One addition and one comparison a block.
 
@@ -47,12 +48,15 @@ pub enum LazyError {
         /// The cadence's error bound, output samples.
         least: Exact,
     },
-    /// A saved state whose error is beyond its headroom.
-    #[error("error is {error} units; accepted is at most {limit} either way")]
-    BeyondHeadroom {
-        /// The refused error, in units of the cadence.
+    /// A saved state that no sequence reaches.
+    #[error(
+        "saved error {error} and headroom {limit}, in units of the cadence; accepted is an error within ±2^60 and \
+         a headroom from the cadence's bound to 2^60"
+    )]
+    Saved {
+        /// The saved error.
         error: i64,
-        /// The headroom in the same units.
+        /// The saved headroom.
         limit: i64,
     },
 }
@@ -79,16 +83,30 @@ impl Lazy {
         })
     }
 
+    /// The same with an error carried over from what was served before, as in [`Cadence::start_from`]; it
+    /// begins with the ratio that brings the error down.
+    #[must_use]
+    pub fn start_from(self, error: Ratio<i128>) -> Option<Self> {
+        let error = self.cadence.units_of(error)?;
+        let serves_high = error < 0;
+        Some(Self {
+            error,
+            serves_high,
+            ..self
+        })
+    }
+
     /// The ratio of the next block, to be called once at every block end.
     #[inline]
     pub fn next_block(&mut self) -> Fraction {
         let balance = self.cadence.balance();
         let held = balance.after(self.error, self.serves_high);
-        if held.abs() <= self.limit {
+        let other = balance.after(self.error, !self.serves_high);
+        if held.abs() <= self.limit || held.abs() <= other.abs() {
             self.error = held;
         } else {
             self.serves_high = !self.serves_high;
-            self.error = balance.after(self.error, self.serves_high);
+            self.error = other;
         }
         if self.serves_high {
             self.cadence.high()
@@ -141,8 +159,9 @@ impl TryFrom<Unchecked> for Lazy {
             error,
         } = raw;
         let bound = i64::try_from(cadence.balance().bound()).unwrap_or(MAX_STEP);
-        if limit < bound || limit > MAX_STEP || error.checked_abs().is_none_or(|e| e > limit) {
-            return Err(LazyError::BeyondHeadroom { error, limit });
+        // A carried error may be beyond the headroom.
+        if limit < bound || limit > MAX_STEP || error.checked_abs().is_none_or(|e| e > MAX_STEP) {
+            return Err(LazyError::Saved { error, limit });
         }
         Ok(Self {
             cadence,

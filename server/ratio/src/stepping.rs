@@ -17,7 +17,7 @@ use num_rational::Ratio;
 use serde::{Deserialize, Serialize};
 use thiserror::Error;
 
-use crate::balance::Balance;
+use crate::balance::{Balance, rounded};
 use crate::{Certificate, Exact, SteppingPair};
 
 /// A table of phases with the two advances that give the wanted ratio on average.
@@ -130,11 +130,10 @@ impl Stepping {
     /// The exact bound of |outputs made − outputs wanted| at any output, in output samples. It is reached.
     pub fn error_bound(&self) -> Exact {
         let units = self.balance.map_or(0, Balance::bound);
-        // units/scale phases, each worth n/(D·L) outputs, and scale divides n.
-        let (n, d) = (*self.wanted.ratio.numer(), *self.wanted.ratio.denom());
+        // units/scale phases, each worth n/(D·L) outputs.
         Exact::new(
-            u128::from(units) * (n / u128::from(self.scale)),
-            d * u128::from(self.phases()),
+            u128::from(units) * self.unit_numerator(),
+            self.wanted.ratio.denom() * u128::from(self.phases()),
         )
     }
 
@@ -152,6 +151,25 @@ impl Stepping {
             stepping: self,
             error: 0,
         }
+    }
+
+    /// The sequence with an error carried over from what was served before, in output samples
+    /// (made − wanted), rounded to the nearest unit of this stepping and brought within the bound at the
+    /// fastest rate the advances allow. `None` if it is beyond 2^60 units, the arithmetic beyond 128 bits, or
+    /// the advance exact, so that nothing would ever bring it back.
+    pub fn start_from(self, error: Ratio<i128>) -> Option<SteppingState> {
+        self.balance?;
+        let scale = self.wanted.ratio.denom() * u128::from(self.phases());
+        let error = rounded(-error, scale, self.unit_numerator())?;
+        Some(SteppingState {
+            stepping: self,
+            error,
+        })
+    }
+
+    /// One unit of error is as many outputs, over D·L: scale divides n.
+    fn unit_numerator(&self) -> u128 {
+        self.wanted.ratio.numer() / u128::from(self.scale)
     }
 }
 
@@ -194,12 +212,9 @@ impl SteppingState {
 
     /// Outputs made − outputs wanted so far, in output samples, exact.
     pub fn error_outputs(&self) -> Ratio<i128> {
-        let (n, d) = (
-            *self.stepping.wanted.ratio.numer(),
-            *self.stepping.wanted.ratio.denom(),
-        );
+        let d = *self.stepping.wanted.ratio.denom();
         let part = |x: u128| i128::try_from(x).expect("n is below 2^121 and phases·D below 2^124");
-        let per_unit = part(n / u128::from(self.stepping.scale));
+        let per_unit = part(self.stepping.unit_numerator());
         Ratio::new(
             -i128::from(self.error) * per_unit,
             part(d * u128::from(self.stepping.phases())),

@@ -147,6 +147,66 @@ fn lazy_keeps_the_headroom_and_changes_as_often_as_estimated() {
 }
 
 #[test]
+fn lazy_returns_from_a_carried_error_and_stays() {
+    let (mut random, mut seen) = (Random::new(9), 0);
+    while seen < 300 {
+        let Some(cadence) = case(&mut random, 500) else {
+            continue;
+        };
+        let headroom = Exact::new(random.range(1, 12).into(), 2);
+        let Ok(lazy) = Lazy::new(cadence, &headroom) else {
+            continue;
+        };
+        let carried = Ratio::new(i128::from(random.range(0, 16_000)) - 8_000, 997);
+        let mut lazy = lazy.start_from(carried).expect("in range");
+        let off = lazy.error_outputs() - carried;
+        let unit = Ratio::new(1, *cadence.wanted().denom() as i128);
+        assert!(off <= unit / 2 && off >= -unit / 2, "{cadence:?} {carried}");
+        let limit = Ratio::new(*headroom.numer() as i128, *headroom.denom() as i128);
+        let size = |error: Ratio<i128>| error.max(-error);
+        let mut last = size(lazy.error_outputs());
+        let mut returned = last <= limit;
+        for _ in 0..20_000 {
+            lazy.next_block();
+            let now = size(lazy.error_outputs());
+            assert!(now <= limit || (!returned && now < last), "{cadence:?}");
+            returned |= now <= limit;
+            last = now;
+        }
+        seen += 1;
+    }
+}
+
+#[test]
+fn stepping_carries_an_error_to_half_a_unit_and_works_it_off() {
+    let (mut random, mut seen) = (Random::new(10), 0);
+    while seen < 1_000 {
+        let d = random.range(1, 300);
+        let wanted = Exact::new(u128::from(random.range(1, 2 * d)), d.into());
+        let phases = random.range(2, 64);
+        let Ok(stepping) = Stepping::new(&wanted, phases) else {
+            continue;
+        };
+        let carried = Ratio::new(i128::from(random.range(0, 4_000)) - 2_000, 997);
+        let exact_advance = stepping.advances().0 == stepping.advances().1;
+        let Some(mut state) = stepping.start_from(carried) else {
+            assert!(exact_advance, "{stepping:?} {carried}");
+            continue;
+        };
+        let bound = stepping.error_bound();
+        let bound = Ratio::new(*bound.numer() as i128, *bound.denom() as i128);
+        let off = state.error_outputs() - carried;
+        assert!(off <= bound && off >= -bound, "{stepping:?} {carried}");
+        for _ in 0..100_000 {
+            state.next_output();
+        }
+        let error = state.error_outputs();
+        assert!(error <= bound && error >= -bound, "{stepping:?} {carried}");
+        seen += 1;
+    }
+}
+
+#[test]
 fn stepping_is_exact_and_within_half_a_phase() {
     let mut random = Random::new(8);
     for _ in 0..3_000 {
