@@ -20,12 +20,18 @@ pub(crate) fn setting_to_wire(setting: &Setting) -> v1::Setting {
         epoch: setting.epoch,
         number: setting.number,
         wanted: Some(fraction_to_wire(&setting.wanted)),
-        realisation: match &setting.realised {
-            Realised::Single(ratio) => Some(Realisation::Single(ratio_to_wire(ratio))),
-            Realised::Cadence(cadence) => Some(Realisation::Cadence(cadence_to_wire(cadence))),
-            // Not in the contract yet, and no crossing can be declared over it that gets one.
-            Realised::Stepping(_) | Realised::Lazy { .. } => None,
-        },
+        realisation: Some(match &setting.realised {
+            Realised::Single(ratio) => Realisation::Single(ratio_to_wire(ratio)),
+            Realised::Cadence(cadence) => Realisation::Cadence(cadence_to_wire(cadence)),
+            Realised::Stepping(stepping) => Realisation::Stepping(stepping_to_wire(stepping)),
+            Realised::Lazy {
+                cadence,
+                swing_samples,
+            } => Realisation::Lazy(v1::Lazy {
+                cadence: Some(cadence_to_wire(cadence)),
+                swing_samples: *swing_samples,
+            }),
+        }),
         residual: setting.residual,
         certificate: Some(certificate_to_wire(&setting.certificate, interval)),
         decided_ns: setting.decided_ns,
@@ -45,6 +51,17 @@ pub(crate) fn cadence_to_wire(cadence: &ratio::Cadence) -> v1::Cadence {
         high: Some(ratio_to_wire(&cadence.high())),
         low_blocks: cadence.low_blocks(),
         high_blocks: cadence.high_blocks(),
+        error_bound_samples: *bound.numer() as f64 / *bound.denom() as f64,
+    }
+}
+
+pub(crate) fn stepping_to_wire(stepping: &ratio::Stepping) -> v1::Stepping {
+    let (advance, longer_advance) = stepping.advances();
+    let bound = stepping.error_bound();
+    v1::Stepping {
+        phases: stepping.phases(),
+        advance,
+        longer_advance,
         error_bound_samples: *bound.numer() as f64 / *bound.denom() as f64,
     }
 }

@@ -40,7 +40,7 @@ pub(crate) fn answer(question: &Question) -> Result<v1::PlanRatioResponse, Refus
             Proof::Reduced(reduced) => Some(reduced_to_wire(reduced)),
             _ => None,
         },
-        stepping: stepping.as_ref().map(stepping_to_wire),
+        stepping: stepping.as_ref().map(setting::stepping_to_wire),
         chains: chains.iter().map(chain_to_wire).collect(),
         source_frames: frames.map(|(source, _)| frames_to_wire(source)),
         sink_frames: frames.map(|(_, sink)| frames_to_wire(sink)),
@@ -122,17 +122,6 @@ fn stepping(question: &Question, found: &Answer) -> Result<Option<Stepping>, Vio
         });
     }
     Ok(found.stepping_of_equal_size())
-}
-
-fn stepping_to_wire(stepping: &Stepping) -> v1::Stepping {
-    let (advance, longer_advance) = stepping.advances();
-    let bound = stepping.error_bound();
-    v1::Stepping {
-        phases: stepping.phases(),
-        advance,
-        longer_advance,
-        error_bound_samples: *bound.numer() as f64 / *bound.denom() as f64,
-    }
 }
 
 fn chains(filter: &Filter, ratio: &Fraction) -> Result<Vec<Chain>, Violation> {
