@@ -60,6 +60,11 @@ pub enum StartFault {
     Reflection(#[from] tonic_reflection::server::Error),
 }
 
+/// Why a configuration was not taken by a daemon that serves already.
+#[derive(Debug, thiserror::Error)]
+#[error("nothing of it was taken: {0}")]
+pub struct RedeclareFault(String);
+
 /// Why a daemon stopped by itself.
 #[derive(Debug, thiserror::Error)]
 pub enum Failed {
@@ -181,6 +186,20 @@ impl Daemon {
     /// The daemon's house time.
     pub fn house(&self) -> HouseClock {
         self.house
+    }
+
+    /// Declares what `config` declares otherwise than it stands, all of it or nothing, and tells how much
+    /// that was. Streams go on. What the file no longer declares stays until it is deleted over gRPC.
+    ///
+    /// # Errors
+    /// [`RedeclareFault`] names the declaration and the field that the engine does not take.
+    pub async fn redeclare(&self, config: Config) -> Result<usize, RedeclareFault> {
+        let Config {
+            clocks, crossings, ..
+        } = config;
+        let declared = Declared { clocks, crossings };
+        let done = self.desk.declare(declared).await;
+        done.map_err(|refused| RedeclareFault(refused.to_string()))
     }
 
     /// Waits until the daemon fails by itself. [`Daemon::drain`] it then all the same.

@@ -38,6 +38,6 @@ mod service;
 mod store;
 mod transport;
 
-pub use daemon::{Builder, Daemon, Failed, StartFault};
+pub use daemon::{Builder, Daemon, Failed, RedeclareFault, StartFault};
 pub use scribe::RecoverFault;
 pub use store::{Opening, StoreError};

@@ -8,7 +8,11 @@
     reason = "this is a command: what it has to say before the log begins goes to the terminal"
 )]
 
-use std::{io::IsTerminal as _, path::PathBuf, process::ExitCode};
+use std::{
+    io::IsTerminal as _,
+    path::{Path, PathBuf},
+    process::ExitCode,
+};
 
 use clap::{Parser, Subcommand};
 use ratewright_server::{
@@ -34,7 +38,8 @@ struct Arguments {
 
 #[derive(Subcommand)]
 enum Command {
-    /// Serve until told to stop (SIGTERM or SIGINT).
+    /// Serve until told to stop (SIGTERM or SIGINT); read the configuration's declarations again on
+    /// SIGHUP.
     Run {
         /// Configuration file (TOML); without one, every default.
         config: Option<PathBuf>,
@@ -78,7 +83,7 @@ fn main() -> ExitCode {
                 .as_deref()
                 .map_or_else(|| Ok(Config::default()), config::load)
             {
-                Ok(config) => in_runtime(|signals| run(config, opening, signals)),
+                Ok(loaded) => in_runtime(|signals| run(loaded, config, opening, signals)),
                 Err(faults) => at_fault(&faults),
             }
         }
@@ -115,10 +120,15 @@ fn in_runtime<W: Future<Output = ExitCode>>(work: impl FnOnce(Signals) -> W) -> 
     }
 }
 
-async fn run(config: Config, opening: Opening, signals: Signals) -> ExitCode {
+async fn run(
+    config: Config,
+    file: Option<PathBuf>,
+    opening: Opening,
+    signals: Signals,
+) -> ExitCode {
     start_log(config.log, "info");
     match Daemon::builder(config).opening(opening).start().await {
-        Ok(daemon) => serve(daemon, signals, std::future::pending()).await,
+        Ok(daemon) => serve(daemon, signals, file, std::future::pending()).await,
         Err(fault) => not_started(&fault),
     }
 }
@@ -134,7 +144,7 @@ async fn run_sample(pace: f64, store: Option<PathBuf>, signals: Signals) -> Exit
     let code = match Daemon::builder(config).pace(pace).start().await {
         Ok(daemon) => {
             let played = sample::run(daemon.grpc(), daemon.people(), daemon.house());
-            serve(daemon, signals, played).await
+            serve(daemon, signals, None, played).await
         }
         Err(fault) => not_started(&fault),
     };
@@ -151,24 +161,31 @@ async fn run_sample(pace: f64, store: Option<PathBuf>, signals: Signals) -> Exit
 async fn serve(
     mut daemon: Daemon,
     mut signals: Signals,
+    file: Option<PathBuf>,
     played: impl Future<Output = Result<(), sample::SampleError>>,
 ) -> ExitCode {
-    let code = tokio::select! {
-        name = signals.heard() => {
-            tracing::info!(signal = name, "told to stop");
-            ExitCode::SUCCESS
-        }
-        fault = daemon.failed() => {
-            tracing::error!(%fault, "the daemon failed");
-            ExitCode::from(status_of(&fault))
-        }
-        ended = played => match ended {
-            Ok(()) => ExitCode::SUCCESS,
-            Err(fault) => {
-                tracing::error!(%fault, "the sample facility failed");
-                ExitCode::from(EX_SOFTWARE)
+    let mut played = std::pin::pin!(played);
+    let code = loop {
+        tokio::select! {
+            heard = signals.heard() => match heard {
+                Heard::Stop(signal) => {
+                    tracing::info!(signal, "told to stop");
+                    break ExitCode::SUCCESS;
+                }
+                Heard::Reload => reload(&daemon, file.as_deref()).await,
+            },
+            fault = daemon.failed() => {
+                tracing::error!(%fault, "the daemon failed");
+                break ExitCode::from(status_of(&fault));
             }
-        },
+            ended = &mut played => break match ended {
+                Ok(()) => ExitCode::SUCCESS,
+                Err(fault) => {
+                    tracing::error!(%fault, "the sample facility failed");
+                    ExitCode::from(EX_SOFTWARE)
+                }
+            },
+        }
     };
     match daemon.drain().await {
         Ok(()) => code,
@@ -179,6 +196,20 @@ async fn serve(
     }
 }
 
+/// Reads the declarations again. A fault changes nothing but the log.
+async fn reload(daemon: &Daemon, file: Option<&Path>) {
+    let Some(file) = file else {
+        return tracing::warn!("there is no configuration file to read again");
+    };
+    match config::load(file) {
+        Ok(config) => match daemon.redeclare(config).await {
+            Ok(declared) => tracing::info!(declared, "declarations read again"),
+            Err(fault) => tracing::error!(%fault, "declarations stay as they were"),
+        },
+        Err(faults) => tracing::error!(%faults, "declarations stay as they were"),
+    }
+}
+
 fn status_of(fault: &Failed) -> u8 {
     match fault {
         Failed::Store(_) => EX_IOERR,
@@ -186,11 +217,20 @@ fn status_of(fault: &Failed) -> u8 {
     }
 }
 
-/// The signals that ask for a drain. They are caught from here on: one that comes while the daemon
-/// starts is heeded once it serves.
+/// The signals that are heeded. They are caught from here on: one that comes while the daemon starts is
+/// heeded once it serves.
 struct Signals {
     terminate: Signal,
     interrupt: Signal,
+    hangup: Signal,
+}
+
+/// What a signal asks for.
+enum Heard {
+    /// A drain; the signal's name.
+    Stop(&'static str),
+    /// The configuration's declarations, read again.
+    Reload,
 }
 
 impl Signals {
@@ -200,13 +240,15 @@ impl Signals {
         Ok(Self {
             terminate,
             interrupt: signal(SignalKind::interrupt())?,
+            hangup: signal(SignalKind::hangup())?,
         })
     }
 
-    async fn heard(&mut self) -> &'static str {
+    async fn heard(&mut self) -> Heard {
         tokio::select! {
-            _ = self.terminate.recv() => "SIGTERM",
-            _ = self.interrupt.recv() => "SIGINT",
+            _ = self.terminate.recv() => Heard::Stop("SIGTERM"),
+            _ = self.interrupt.recv() => Heard::Stop("SIGINT"),
+            _ = self.hangup.recv() => Heard::Reload,
         }
     }
 }

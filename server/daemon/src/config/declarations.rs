@@ -3,7 +3,9 @@
 use std::collections::BTreeSet;
 
 use num_rational::Ratio;
-use ratewright_control::{ClockDeclaration, CrossingDeclaration, Id, Realisation};
+use ratewright_control::{
+    ClockDeclaration, CrossingDeclaration, Effects, Engine, Event, Id, Realisation, Refusal,
+};
 use ratewright_ratio::{Bounds, parse_rate};
 use toml::de::DeValue;
 
@@ -18,15 +20,46 @@ const NS_PER_S: f64 = 1e9;
 /// The declarations of a file. What has a fault is noted and left out.
 pub(super) fn read(root: &Section<'_>) -> (Vec<ClockDeclaration>, Vec<CrossingDeclaration>) {
     let mut clock_ids = BTreeSet::new();
-    let clocks = root.each("clock", |section| clock(section, &mut clock_ids));
+    // The engine has the last word on what fits together; it is asked here, where the line is known.
+    let mut trial = Engine::new(1);
+    let clocks = root.each("clock", |section| {
+        let clock = clock(section, &mut clock_ids)?;
+        let taken = trial.apply(&Event::DeclareClock(clock.clone()), 0);
+        noted(section, taken).then_some(clock)
+    });
     let mut crossing_ids = BTreeSet::new();
     let crossings = root.each("crossing", |section| {
-        crossing(section, &mut crossing_ids, &clock_ids)
+        let crossing = crossing(section, &mut crossing_ids, &clock_ids)?;
+        let whole = [&crossing.source, &crossing.sink]
+            .iter()
+            .all(|end| trial.clock(end).is_some());
+        if !whole {
+            // A clock of it has a fault of its own, which is noted already.
+            return None;
+        }
+        let taken = trial.apply(&Event::DeclareCrossing(crossing.clone()), 0);
+        noted(section, taken).then_some(crossing)
     });
     (
         clocks.into_iter().flatten().collect(),
         crossings.into_iter().flatten().collect(),
     )
+}
+
+/// True if the engine took a declaration; else its word is noted as a fault of the section.
+fn noted(section: &Section<'_>, taken: Result<Effects, Refusal>) -> bool {
+    let Err(refusal) = taken else { return true };
+    let key = match refusal.field.as_str() {
+        "tolerance_ppm" => "tolerance_ppm",
+        "nominal_hz" => "rate",
+        "headroom_samples" => "headroom_samples",
+        "group" => "group",
+        "source" => "source",
+        "sink" => "sink",
+        _ => "id",
+    };
+    section.fault(key, &refusal.value, &refusal.accepted);
+    false
 }
 
 fn clock(section: &Section<'_>, taken: &mut BTreeSet<Id>) -> Option<ClockDeclaration> {
@@ -58,13 +91,6 @@ fn crossing(
     let display_name = title(section);
     let source = end("source", section, clocks);
     let sink = end("sink", section, clocks);
-    if source.is_some() && source == sink {
-        section.fault(
-            "sink",
-            "the source as well",
-            "another clock than the source",
-        );
-    }
     let (mut max_l, mut max_m) = (1_024, 1_024);
     let mut headroom_samples = 1.0;
     let mut realisation = Realisation::Cadence;

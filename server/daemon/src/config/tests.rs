@@ -141,8 +141,7 @@ fn what_contradicts_is_reported() {
         ["5: clock[1].id is \"a\" a second time; accepted: a name of its own"]
     );
     let itself = "[[clock]]\nid = 'a'\nrate = 1\n[[crossing]]\nid = 'b'\nsource = 'a'\nsink = 'a'";
-    let expected =
-        ["7: crossing[0].sink is the source as well; accepted: another clock than the source"];
+    let expected = ["7: crossing[0].sink is a; accepted: another clock than the source"];
     assert_eq!(faults(itself), expected);
 }
 
@@ -174,4 +173,46 @@ fn a_file_that_is_not_there_is_a_fault_that_names_it() {
         error.starts_with("/nonexistent/ratewrightd.toml: cannot be read"),
         "{error}"
     );
+}
+
+/// What only the engine knows is told with the line it stands in as well.
+#[test]
+fn limits_of_the_engine_are_faults_of_the_file() {
+    let text = r#"
+[[clock]]
+id = "slow"
+rate = 25
+[[clock]]
+id = "fast"
+rate = "100M"
+[[crossing]]
+id = "far"
+source = "slow"
+sink = "fast"
+[[crossing]]
+id = "loop"
+source = "slow"
+sink = "slow"
+"#;
+    let found = faults(text);
+    assert_eq!(found.len(), 2, "{found:?}");
+    assert!(
+        found[0].contains("rates within a factor of 1048576"),
+        "{found:?}"
+    );
+    assert!(found[1].starts_with("15: crossing[1].sink"), "{found:?}");
+}
+
+#[test]
+fn a_group_that_is_too_large_is_a_fault_of_the_first_too_many() {
+    let mut text =
+        String::from("[[clock]]\nid = \"a\"\nrate = 48000\n[[clock]]\nid = \"b\"\nrate = 48000\n");
+    for i in 0..65 {
+        text += &format!(
+            "[[crossing]]\nid = \"c{i}\"\nsource = \"a\"\nsink = \"b\"\ngroup = \"all\"\n"
+        );
+    }
+    let found = faults(&text);
+    assert_eq!(found.len(), 1, "{found:?}");
+    assert!(found[0].contains("crossing[64].group"), "{found:?}");
 }

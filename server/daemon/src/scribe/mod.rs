@@ -90,6 +90,14 @@ impl Desk {
         self.send(decide, Promise::Durable).await.answer().await
     }
 
+    /// Declares what differs from what the engine holds, all of it or nothing; answers how much that was
+    /// when it is on the disk.
+    pub(crate) async fn declare(&self, declared: Declared) -> Result<usize, Refused> {
+        let decide = Box::new(move |engine: &Engine| start::all_or_none(engine, &declared));
+        let done = self.send(decide, Promise::Durable).await.answer().await?;
+        Ok(done.outcomes.len())
+    }
+
     /// Asks the scribe to stop after what has been handed in before.
     pub(crate) async fn stop(&self) {
         // If the scribe is gone already, that is what was asked for.

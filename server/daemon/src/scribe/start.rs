@@ -3,7 +3,10 @@
 use ratewright_control::{ClockDeclaration, CrossingDeclaration, Engine, Event, HouseNs, Refusal};
 
 use super::group::Group;
-use crate::store::{Begin, Store, StoreError};
+use crate::{
+    refused::{Refused, Violation},
+    store::{Begin, Store, StoreError},
+};
 
 /// What the configuration declares.
 #[derive(Clone, Debug, Default)]
@@ -115,6 +118,29 @@ fn differing(engine: &Engine, declared: &Declared) -> Vec<Event> {
         .collect()
 }
 
+/// The same, once it is sure that the engine takes every one of them; tried on a copy.
+pub(super) fn all_or_none(engine: &Engine, declared: &Declared) -> Result<Vec<Event>, Refused> {
+    let events = differing(engine, declared);
+    let mut trial = engine.clone();
+    for event in &events {
+        // An instant before the newest counts as that one.
+        if let Err(refusal) = trial.apply(event, HouseNs::MIN) {
+            let field = format!("{}: {}", name_of(event), refusal.field);
+            return Err(Violation::new(field, refusal.value, refusal.accepted).into());
+        }
+    }
+    Ok(events)
+}
+
+/// The name of what an event declares.
+fn name_of(event: &Event) -> String {
+    match event {
+        Event::DeclareClock(clock) => format!("clocks/{}", clock.id),
+        Event::DeclareCrossing(crossing) => format!("crossings/{}", crossing.id),
+        other => unreachable!("{other:?} declares nothing"),
+    }
+}
+
 fn declare(
     engine: &mut Engine,
     group: &mut Group,
@@ -122,11 +148,7 @@ fn declare(
     now: HouseNs,
 ) -> Result<(), RecoverFault> {
     for event in declarations {
-        let name = match &event {
-            Event::DeclareClock(clock) => format!("clocks/{}", clock.id),
-            Event::DeclareCrossing(crossing) => format!("crossings/{}", crossing.id),
-            other => unreachable!("{other:?} declares nothing"),
-        };
+        let name = name_of(&event);
         group
             .apply(engine, event, now)
             .map_err(|refusal| RecoverFault::Declaration { name, refusal })?;

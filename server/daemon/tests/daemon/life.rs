@@ -5,7 +5,10 @@ use std::time::{Duration, Instant};
 use num_rational::Ratio;
 use ratewright_control::{ClockDeclaration, Id};
 use ratewright_proto::v1;
-use ratewright_server::{Daemon, Opening, StartFault, StoreError, config::Config};
+use ratewright_server::{
+    Daemon, Opening, StartFault, StoreError,
+    config::{Config, parse},
+};
 use tonic::Code;
 use tonic_health::pb::{
     HealthCheckRequest, health_check_response::ServingStatus, health_client::HealthClient,
@@ -270,6 +273,50 @@ async fn a_store_in_use_is_refused() {
         panic!("the store is the fault: {refused}")
     };
     assert!(matches!(fault, StoreError::InUse(_)), "{fault}");
+}
+
+#[tokio::test]
+async fn declarations_are_read_again_whole_or_not_at_all_and_streams_go_on() {
+    let mut facility = Facility::start().await;
+    facility.clients.declare_pair().await;
+    let watched = facility
+        .clients
+        .ratios
+        .watch_settings(v1::WatchSettingsRequest::default());
+    let mut watch = watched.await.unwrap().into_inner();
+    watch.message().await.unwrap().unwrap();
+
+    let added = "[[clock]]\nid = 'van'\nrate = 44100\n[[clock]]\nid = 'house'\nrate = 48000\n\
+                 [[crossing]]\nid = 'van-in'\nsource = 'van'\nsink = 'house'\n";
+    let taken = facility.daemon.redeclare(parse(added).unwrap()).await;
+    assert_eq!(taken.unwrap(), 3);
+    let heard = watch.message().await.unwrap().unwrap().setting.unwrap();
+    assert_eq!(heard.crossing, "crossings/van-in");
+    // Nothing has changed since.
+    assert_eq!(
+        facility
+            .daemon
+            .redeclare(parse(added).unwrap())
+            .await
+            .unwrap(),
+        0
+    );
+
+    // The second is impossible for a clock that crossings use: the first is not taken either.
+    let half = "[[clock]]\nid = 'bus'\nrate = 48000\n[[clock]]\nid = 'van'\nrate = '1/1000'\n";
+    let refused = facility
+        .daemon
+        .redeclare(parse(half).unwrap())
+        .await
+        .unwrap_err();
+    assert!(refused.to_string().contains("clocks/van"), "{refused}");
+    let name = "clocks/bus".into();
+    let never = facility
+        .clients
+        .clocks
+        .get_clock(v1::GetClockRequest { name })
+        .await;
+    assert_eq!(never.unwrap_err().code(), Code::NotFound);
 }
 
 #[tokio::test]
