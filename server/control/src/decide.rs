@@ -2,10 +2,11 @@
 
 use crate::engine::Engine;
 use crate::issue::Stamp;
+use crate::policy::standing::Standing;
 use crate::record::{Ends, Judgement};
 use crate::schedule::Subject;
 use crate::timeline::Timeline;
-use crate::{CrossingState, Effects, HouseNs, Id, Reason, Transition};
+use crate::{Effects, HouseNs, Id, Reason, Transition};
 use ratewright_timing::State;
 
 /// A clock is looked at so often until it is locked, and afterwards, ns.
@@ -82,7 +83,7 @@ impl Engine {
         let changes = |member: &Member| match member.judgement {
             // A newcomer begins by itself.
             Judgement::Change { reason, .. } => reason != Reason::First,
-            Judgement::Pending | Judgement::Stay { .. } => false,
+            Judgement::Pending | Judgement::Stay(_) => false,
         };
         let mut effect_ns = now.saturating_add(lead_ns);
         if members.iter().any(changes) {
@@ -123,7 +124,7 @@ impl Engine {
         let reason = match member.judgement {
             Judgement::Change { .. } if !is_later => return,
             Judgement::Change { reason, .. } => reason,
-            Judgement::Pending | Judgement::Stay { .. } => Reason::Group,
+            Judgement::Pending | Judgement::Stay(_) => Reason::Group,
         };
         if let Some(record) = self.crossings.get(&member.id) {
             let lead_s = seconds(effect_ns.saturating_sub(now));
@@ -180,9 +181,9 @@ impl Engine {
         let Some(record) = self.crossings.get_mut(&id) else {
             return ends;
         };
-        let (state, reason) = match judgement {
+        let standing = match judgement {
             Judgement::Pending => return ends,
-            Judgement::Stay { state, reason } => {
+            Judgement::Stay(standing) => {
                 if let Some(due) = record
                     .newest
                     .clone()
@@ -190,25 +191,31 @@ impl Engine {
                 {
                     effects.settings.push(record.renew(&due, stamp, &ends));
                 }
-                (state, reason)
+                standing
             }
             Judgement::Change { choice, reason } => {
-                let standing = (choice.state, choice.reason.clone());
+                let standing = choice.standing.clone();
                 effects
                     .settings
                     .push(record.issue(*choice, reason, stamp, &ends));
                 standing
             }
         };
-        effects.transitions.extend(record.stand(state, reason));
+        effects.transitions.extend(record.stand(standing));
         ends
     }
 }
 
 impl crate::record::CrossingRecord {
     /// Takes a state with its reason; tells if it is another one.
-    fn stand(&mut self, to: CrossingState, reason: String) -> Option<Transition> {
+    fn stand(&mut self, standing: Standing) -> Option<Transition> {
+        let Standing {
+            state: to,
+            reason,
+            needed,
+        } = standing;
         let from = std::mem::replace(&mut self.state, to);
+        self.needed = needed.map(Box::new);
         self.reason.clone_from(&reason);
         let crossing = self.id().clone();
         (from != to).then_some(Transition::Crossing {

@@ -247,11 +247,6 @@ impl CrossingDeclaration {
 
     /// Refuses what this version can be told of but cannot do.
     fn check_not_yet(&self) -> Result<(), Refusal> {
-        if matches!(self.realisation, Realisation::Stepping | Realisation::Lazy) {
-            let value = format!("{:?}", self.realisation);
-            let accepted = "Single or Cadence: this version decides no other";
-            return Err(Refusal::invalid("realisation", value, accepted));
-        }
         if self.least_hold_ns != 0 {
             let accepted = "0: this version keeps no floor";
             return Err(Refusal::invalid(

@@ -149,9 +149,13 @@ fn proof(setting: &Setting, crossing: &CrossingDeclaration) -> String {
             "Certificate: with {within} nothing lies between {} and {}.",
             bracket.below, bracket.above
         ),
-        Certificate::SteppingPair(_) => {
-            "Certificate: the two advances enclose what is wanted.".to_owned()
-        }
+        Certificate::SteppingPair(pair) => format!(
+            "Certificate: with a table of {} phases, {} phases by the output make too much and {} too little \
+             or just enough, so the two enclose it.",
+            pair.phases,
+            pair.advance,
+            pair.advance + 1
+        ),
         Certificate::Uncertified(reason) => format!("There is no short proof: {reason}."),
     }
 }

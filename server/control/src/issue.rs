@@ -5,9 +5,10 @@ use ratewright_ratio::residual;
 use crate::policy::choose::Choice;
 use crate::policy::realise::{Way, error_of};
 use crate::policy::slip::{seconds_to_slip, seconds_vouched};
+use crate::policy::standing::Standing;
 use crate::record::{CrossingRecord, Ends};
 use crate::timeline::{self, as_double};
-use crate::{Evidence, HouseNs, Reason, Setting};
+use crate::{Evidence, HouseNs, Realised, Reason, Setting};
 
 /// When a setting is decided and takes effect, and under which epoch it is numbered.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -67,8 +68,7 @@ impl CrossingRecord {
             },
             allowed: (newest.evidence.allowed_low, newest.evidence.allowed_high),
             hold_s: newest.evidence.expected_hold_s,
-            state: self.state,
-            reason: self.reason.clone(),
+            standing: Standing::new(self.state, String::new()),
             recovers: false,
         };
         self.issue(confirmed, Reason::Renewal, stamp, ends)
@@ -76,6 +76,15 @@ impl CrossingRecord {
 
     fn take(&mut self, setting: Setting) {
         let before = self.newest.as_ref().map(Setting::average);
+        let is_single = |realised: &Realised| matches!(realised, Realised::Single(_));
+        if !is_single(&setting.realised) {
+            self.ledger.leave_error(0.0);
+        } else if self.running_error() > 0.0 {
+            self.ledger.leave_error(self.running_error());
+        }
+        if self.newest.as_ref().map(|newest| newest.realised) != Some(setting.realised) {
+            self.changed_ns = setting.effect_ns;
+        }
         self.changes_made += u64::from(before.is_some_and(|before| before != setting.average()));
         self.settings_made += 1;
         self.last_number = setting.number;
@@ -130,13 +139,7 @@ impl CrossingRecord {
     /// Seconds for which this account, which is advanced to now, can be vouched for without a further reading,
     /// within [`crate::SLIP_HORIZON_S`].
     pub(crate) fn vouched(&self, ends: &Ends) -> Option<f64> {
-        let own_error = self
-            .newest
-            .as_ref()
-            .map_or(0.0, |newest| error_of(&newest.realised));
-        seconds_vouched(
-            &self.outlook(ends),
-            self.declaration.headroom_samples - own_error,
-        )
+        let room = self.declaration.headroom_samples - self.running_error();
+        seconds_vouched(&self.outlook(ends), room)
     }
 }

@@ -5,7 +5,8 @@
 //! the planned instants until a follower reports the true ones.
 //!
 //! **Variance.** That of both passages, plus an offset's: what reports and blocks leave open, a
-//! random walk of [`WALK`], and what occupancy could not say better.
+//! random walk of [`WALK`], and what occupancy could not say better; and that of a running error
+//! which a single ratio has taken over (uniform within its bound: a third of its square).
 
 use serde::{Deserialize, Serialize};
 
@@ -34,6 +35,8 @@ pub(crate) struct Ledger {
     at_ns: Option<HouseNs>,
     phase_samples: f64,
     offset_variance: f64,
+    /// Variance of what a running error has left to the single ratio in force, samples².
+    left_variance: f64,
     source: Passage,
     sink: Passage,
     /// Occupancies in a row that were at odds with the account, and to which side.
@@ -61,6 +64,7 @@ impl Ledger {
             at_ns: None,
             phase_samples: 0.0,
             offset_variance: 0.0,
+            left_variance: 0.0,
             source: Passage::begin(0),
             sink: Passage::begin(0),
             at_odds: 0,
@@ -74,7 +78,14 @@ impl Ledger {
 
     /// Variance of the phase error, samples².
     pub(crate) fn variance(&self) -> f64 {
-        self.offset_variance + self.samples2(self.source.variance_ns2() + self.sink.variance_ns2())
+        let passages = self.source.variance_ns2() + self.sink.variance_ns2();
+        self.offset_variance + self.left_variance + self.samples2(passages)
+    }
+
+    /// What made the ratio on average gave way to a single ratio with a running error anywhere up
+    /// to `most_samples`, which that one keeps; 0 if something has brought it within its own.
+    pub(crate) fn leave_error(&mut self, most_samples: f64) {
+        self.left_variance = most_samples * most_samples / 3.0;
     }
 
     /// A variance in ns² of either clock as samples² of the sink.
@@ -91,6 +102,7 @@ impl Ledger {
             .map(|_| now);
         self.phase_samples = phase_samples;
         self.offset_variance = variance;
+        self.left_variance = 0.0;
         self.source = Passage::begin(now);
         self.sink = Passage::begin(now);
         self.at_odds = 0;
@@ -181,7 +193,7 @@ impl Ledger {
     ) -> Levelled {
         let innovation = level - (self.phase_samples - velocity * age_s);
         let passages = self.source.lasting_variance_ns2() + self.sink.lasting_variance_ns2();
-        let lasting = self.offset_variance + self.samples2(passages);
+        let lasting = self.offset_variance + self.left_variance + self.samples2(passages);
         let whole = self.variance() + variance;
         if innovation.abs() > AT_ODDS * whole.sqrt() {
             return self.at_odds(innovation, variance);
@@ -189,6 +201,7 @@ impl Ledger {
         let gain = lasting / whole;
         self.phase_samples += gain * innovation;
         self.offset_variance *= 1.0 - gain;
+        self.left_variance *= 1.0 - gain;
         self.source.sharpen(1.0 - gain);
         self.sink.sharpen(1.0 - gain);
         self.at_odds = 0;
@@ -207,6 +220,7 @@ impl Ledger {
         }
         self.phase_samples += innovation;
         self.offset_variance = variance;
+        self.left_variance = 0.0;
         self.source.sharpen(0.0);
         self.sink.sharpen(0.0);
         self.at_odds = 0;

@@ -33,6 +33,10 @@ pub(crate) const PLAN_HORIZON_S: f64 = 40_000.0;
 pub(crate) const HOLD_SHARE: f64 = 0.95;
 /// Largest denominator of a virtual rate.
 pub(crate) const MAX_VIRTUAL: u64 = 1 << 31;
+/// The share of the headroom that the running error of lazy switching may take: each hold of one
+/// of the two ratios runs across it, so that a wider one switches less often but leaves less of
+/// the tube for what is uncertain.
+pub(crate) const SWING_SHARE: f64 = 0.25;
 /// Error in output samples that a change from one pair of ratios to another carries over.
 pub(crate) const CARRIED_SAMPLES: f64 = 0.0013;
 
@@ -44,7 +48,7 @@ pub(crate) fn pitch_limit(declaration: &CrossingDeclaration, sink_hz: f64) -> f6
 /// The limits of the phase error that planning and keeping go by, sink samples and samples/s.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub(crate) struct Limits {
-    /// The tube, less a cadence's own error.
+    /// The tube, less what is run errs by itself.
     pub(crate) tube: f64,
     /// The wider tube for a phase that moves inward, less the same.
     pub(crate) inward: f64,
@@ -53,12 +57,12 @@ pub(crate) struct Limits {
 }
 
 impl Limits {
-    /// The limits of a crossing, with a cadence that errs by up to `cadence_error` samples.
+    /// The limits of a crossing, if what is run errs by up to `own_error` samples itself.
     /// An error that fills the tube cannot be planned away: then its average is kept to the tube.
-    pub(crate) fn new(declaration: &CrossingDeclaration, cadence_error: f64, sink_hz: f64) -> Self {
+    pub(crate) fn new(declaration: &CrossingDeclaration, own_error: f64, sink_hz: f64) -> Self {
         let headroom = declaration.headroom_samples;
-        let error = if cadence_error < TUBE * headroom {
-            cadence_error
+        let error = if own_error < TUBE * headroom {
+            own_error
         } else {
             0.0
         };

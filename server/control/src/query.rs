@@ -65,7 +65,7 @@ impl Engine {
             seconds_vouched: record.vouched(&ends),
             source: record.declaration.source.clone(),
             pin: None,
-            needed: None,
+            needed: record.needed.as_deref().copied(),
             settings_made: record.settings_made,
             changes_made: record.changes_made,
             setting: record.newest.clone(),

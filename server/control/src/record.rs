@@ -1,6 +1,7 @@
 //! A crossing as the engine keeps it.
 
 use num_rational::Ratio;
+use ratewright_ratio::Bounds;
 use serde::{Deserialize, Serialize};
 
 use crate::clocks::Traced;
@@ -9,6 +10,7 @@ use crate::policy::choose::{Choice, View, choose, choose_nominal};
 use crate::policy::keep::may_stay;
 use crate::policy::outlook::Outlook;
 use crate::policy::realise::{block_inputs, error_of};
+use crate::policy::standing::Standing;
 use crate::policy::{TUBE, pitch_limit};
 use crate::target::Target;
 use crate::{
@@ -35,6 +37,10 @@ pub(crate) struct CrossingRecord {
     pub(crate) changes_made: u64,
     pub(crate) state: CrossingState,
     pub(crate) reason: String,
+    /// Smallest bounds that would do, while it is out of bounds.
+    pub(crate) needed: Option<Box<Bounds>>,
+    /// When what is run was changed last: the effect of that setting.
+    pub(crate) changed_ns: HouseNs,
     /// A reason to decide anew at the next opportunity.
     pub(crate) forced: Option<Reason>,
 }
@@ -65,10 +71,7 @@ pub(crate) enum Judgement {
     /// A setting is under way; there is nothing to decide.
     Pending,
     /// The setting in force stays.
-    Stay {
-        state: CrossingState,
-        reason: String,
-    },
+    Stay(Standing),
     /// Another one is due.
     Change { choice: Box<Choice>, reason: Reason },
 }
@@ -90,6 +93,8 @@ impl CrossingRecord {
             changes_made: 0,
             state: CrossingState::Waiting,
             reason: "declared".to_owned(),
+            needed: None,
+            changed_ns: HouseNs::MIN,
             forced: Some(Reason::First),
         }
     }
@@ -125,7 +130,7 @@ impl CrossingRecord {
         let settled = |clock: &Traced| matches!(clock.estimate.state, Locked | Holdover);
         match self.state {
             CrossingState::Waiting if ends.source.measured && ends.sink.measured => STEPS_S.0,
-            CrossingState::Waiting | CrossingState::OutOfBounds => STEPS_S.1,
+            CrossingState::Waiting => STEPS_S.1,
             CrossingState::Holding if ends.target.certain => STEPS_S.1,
             CrossingState::Holding if self.tube_lasts_s(now, ends) < SHORT_HOLD_S => STEPS_S.0,
             _ if settled(&ends.source) && settled(&ends.sink) => STEPS_S.1,
@@ -161,9 +166,9 @@ impl CrossingRecord {
             return self.wait(&view, ends);
         }
         if self.forced.is_none()
-            && let Some((state, reason)) = self.stays(&view)
+            && let Some(standing) = self.stays(&view)
         {
-            return Judgement::Stay { state, reason };
+            return Judgement::Stay(standing);
         }
         self.change_to(choose(&view))
     }
@@ -175,11 +180,7 @@ impl CrossingRecord {
         if ends.source.measured && ends.sink.measured {
             choose(&view)
         } else {
-            choose_nominal(
-                &view,
-                CrossingState::Waiting,
-                waiting_for(ends, &self.declaration),
-            )
+            choose_nominal(&view, self.waiting(ends))
         }
     }
 
@@ -199,6 +200,7 @@ impl CrossingRecord {
             outlook,
             declaration: &self.declaration,
             velocity: in_force.map_or(0.0, |ratio| outlook.velocity(ratio)),
+            running_error: self.running_error(),
             lead_s,
             step_s: self.step_s(now, ends),
         }
@@ -206,20 +208,23 @@ impl CrossingRecord {
 
     /// Until both clocks are measured the nominal ratio runs.
     fn wait(&self, view: &View<'_>, ends: &Ends) -> Judgement {
-        let reason = waiting_for(ends, &self.declaration);
+        let standing = self.waiting(ends);
         if self.forced.is_none() {
-            return Judgement::Stay {
-                state: CrossingState::Waiting,
-                reason,
-            };
+            return Judgement::Stay(standing);
         }
-        self.change_to(choose_nominal(view, CrossingState::Waiting, reason))
+        self.change_to(choose_nominal(view, standing))
+    }
+
+    /// What the running error of the newest setting may be off by, samples.
+    pub(crate) fn running_error(&self) -> f64 {
+        let newest = self.newest.as_ref();
+        newest.map_or(0.0, |newest| error_of(&newest.realised))
     }
 
     /// The state in which the setting in force may stay, if it may.
-    fn stays(&self, view: &View<'_>) -> Option<(CrossingState, String)> {
+    fn stays(&self, view: &View<'_>) -> Option<Standing> {
         let newest = self.newest.as_ref()?;
-        let error = error_of(&newest.realised);
+        let error = view.running_error;
         let limits = view.limits(error);
         let block_s = block_inputs(&newest.realised) as f64 * view.outlook.target.value
             / view.outlook.sink_hz;
@@ -247,10 +252,7 @@ impl CrossingRecord {
             .as_ref()
             .is_some_and(|newest| newest.realised == choice.way.realised)
         {
-            return Judgement::Stay {
-                state: choice.state,
-                reason: choice.reason,
-            };
+            return Judgement::Stay(choice.standing);
         }
         let reason = if choice.recovers {
             Reason::Recovery
@@ -262,13 +264,14 @@ impl CrossingRecord {
             reason,
         }
     }
-}
 
-fn waiting_for(ends: &Ends, declaration: &CrossingDeclaration) -> String {
-    let (id, role) = if ends.source.measured {
-        (&declaration.sink, "sink")
-    } else {
-        (&declaration.source, "source")
-    };
-    format!("the {role} {id} was never measured")
+    fn waiting(&self, ends: &Ends) -> Standing {
+        let (id, role) = if ends.source.measured {
+            (&self.declaration.sink, "sink")
+        } else {
+            (&self.declaration.source, "source")
+        };
+        let reason = format!("the {role} {id} was never measured");
+        Standing::new(CrossingState::Waiting, reason)
+    }
 }

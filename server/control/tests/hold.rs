@@ -141,7 +141,7 @@ fn equal_rates_are_held_by_a_cadence_around_one() {
 }
 
 #[test]
-fn equal_rates_within_half_a_sample_are_degraded_and_say_why() {
+fn a_cadence_of_equal_rates_within_half_a_sample_is_out_of_bounds_and_says_what_would_do() {
     let mut world = World::new();
     world.add_exact("house", 48_000);
     world.add(
@@ -159,13 +159,25 @@ fn equal_rates_within_half_a_sample_are_degraded_and_say_why() {
         .engine
         .status(&id("x"), world.now)
         .expect("it was declared");
-    assert_eq!(status.state, CrossingState::Degraded);
+    assert_eq!(status.state, CrossingState::OutOfBounds);
     assert!(
         status
             .reason
-            .contains("a cadence within the bounds errs by up to 0.501"),
+            .contains("what can be run within the bounds errs by up to 0.501"),
         "{}",
         status.reason
+    );
+    // Next to 1/1 everything errs by half a sample, so 1/1 has to be no neighbour any more: the
+    // target is 5 ppm from it, less the 0.07 ppm that bring 0.4 samples back in two minutes.
+    let needed = status.needed.expect("wider bounds would do");
+    let expected = 1e6 / (5.0 - 0.4 / 120.0 / 0.048);
+    for parts in [needed.max_l(), needed.max_m()] {
+        assert!((parts as f64 / expected - 1.0).abs() < 0.01, "{needed:?}");
+    }
+    assert!(
+        status
+            .reason
+            .contains(&format!("M up to {}", needed.max_m()))
     );
     // The least bad: the average is held all the same, and with few settings.
     assert!(status.phase_error_samples.abs() < 0.4);
@@ -175,6 +187,23 @@ fn equal_rates_within_half_a_sample_are_degraded_and_say_why() {
     assert!(
         all - early < 20,
         "{all} settings in half an hour, {early} early"
+    );
+    // With what would do it holds.
+    world.cross(CrossingDeclaration {
+        headroom_samples: 0.5,
+        bounds: needed,
+        ..crossing("x", "desk", "house")
+    });
+    world.run_until(HOUR / 2 + 30 * SECOND);
+    let status = world
+        .engine
+        .status(&id("x"), world.now)
+        .expect("it was declared");
+    assert_eq!(
+        (status.state, status.needed),
+        (CrossingState::Holding, None),
+        "{}",
+        status.reason
     );
 }
 

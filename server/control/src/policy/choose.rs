@@ -5,11 +5,12 @@ use ratewright_ratio::Fraction;
 use crate::policy::funnel::{Entry, Span, funnel};
 use crate::policy::outlook::Outlook;
 use crate::policy::realise::{
-    Allowed, Way, allowed, cadence_error, error_of, nearest_virtual, realise,
+    Allowed, Way, allowed, error_of, nearest_single, nearest_virtual, own_error, realise,
 };
+use crate::policy::standing::Standing;
 use crate::policy::{HOLD_SHARE, Limits, MARGIN_DEVIATIONS};
 use crate::timeline::as_double;
-use crate::{CrossingDeclaration, CrossingState, Realisation};
+use crate::{CrossingDeclaration, CrossingState, Realisation, Realised};
 
 /// What the policy looks at.
 #[derive(Clone, Copy, Debug)]
@@ -18,6 +19,9 @@ pub(crate) struct View<'a> {
     pub(crate) declaration: &'a CrossingDeclaration,
     /// Velocity of the phase error under the ratio in force, samples/s.
     pub(crate) velocity: f64,
+    /// What the running error of what is in force may be off by, samples: a single ratio after it
+    /// would keep that.
+    pub(crate) running_error: f64,
     /// Seconds from a decision to its effect.
     pub(crate) lead_s: f64,
     /// Seconds to the next decision.
@@ -31,22 +35,20 @@ pub(crate) struct Choice {
     /// The interval it was chosen from; twice the wanted ratio where there was none.
     pub(crate) allowed: (Fraction, Fraction),
     pub(crate) hold_s: f64,
-    pub(crate) state: CrossingState,
-    pub(crate) reason: String,
+    pub(crate) standing: Standing,
     /// True if the phase error has to be brought back first.
     pub(crate) recovers: bool,
 }
 
 impl Choice {
     /// A choice without an interval to choose from.
-    fn without_room(way: Way, state: CrossingState, reason: String) -> Self {
+    fn without_room(way: Way, standing: Standing) -> Self {
         let allowed = (way.wanted, way.wanted);
         Choice {
             way,
             allowed,
             hold_s: 0.0,
-            state,
-            reason,
+            standing,
             recovers: false,
         }
     }
@@ -55,15 +57,15 @@ impl Choice {
 /// The setting to have from the lead on.
 pub(crate) fn choose(view: &View<'_>) -> Choice {
     if view.outlook.target.certain {
-        return choose_nominal(
-            view,
-            CrossingState::Holding,
-            "both clocks are exact".to_owned(),
-        );
+        let reason = "both clocks are exact".to_owned();
+        return choose_nominal(view, Standing::new(CrossingState::Holding, reason));
     }
-    let limits = view.limits(0.0);
+    let limits = view.limits(view.running_error);
     if view.is_blind(&limits) {
         return view.least_bad(limits);
+    }
+    if view.declaration.realisation == Realisation::Stepping {
+        return view.on_average();
     }
     let entry = Entry::new(view.outlook, &limits, view.lead_s, view.velocity);
     let spans = funnel(view.outlook, &limits, entry, view.step_s);
@@ -74,12 +76,12 @@ pub(crate) fn choose(view: &View<'_>) -> Choice {
     }
     match view.declaration.realisation {
         Realisation::Single => view.single(&spans, entry),
-        Realisation::Cadence | Realisation::Stepping | Realisation::Lazy => view.cadence(),
+        _ => view.on_average(),
     }
 }
 
 /// The ratio of the nominal rates, held until something is measured.
-pub(crate) fn choose_nominal(view: &View<'_>, state: CrossingState, reason: String) -> Choice {
+pub(crate) fn choose_nominal(view: &View<'_>, standing: Standing) -> Choice {
     let nominal = view.outlook.target.nominal;
     let parts = (
         u64::try_from(*nominal.numer()),
@@ -89,14 +91,12 @@ pub(crate) fn choose_nominal(view: &View<'_>, state: CrossingState, reason: Stri
         (Ok(numer), Ok(denom)) => Fraction::new(numer, denom),
         _ => nearest_virtual(view.outlook.target.value),
     };
-    let View { declaration, .. } = view;
-    let way = realise(wanted, &declaration.bounds, declaration.realisation);
-    Choice::without_room(way, state, reason)
+    Choice::without_room(realise(wanted, view.declaration), standing)
 }
 
 impl View<'_> {
-    pub(crate) fn limits(&self, cadence_error: f64) -> Limits {
-        Limits::new(self.declaration, cadence_error, self.outlook.sink_hz)
+    pub(crate) fn limits(&self, own_error: f64) -> Limits {
+        Limits::new(self.declaration, own_error, self.outlook.sink_hz)
     }
 
     fn allowed(&self, span: &Span) -> Option<Allowed> {
@@ -113,13 +113,15 @@ impl View<'_> {
     /// A choice out of a span of the funnel.
     fn held(&self, way: Way, allowed: &Allowed, span: Span, entry: Entry) -> Choice {
         let velocity = self.outlook.velocity(as_double(&way.wanted));
-        let (state, reason) = self.standing(velocity, error_of(&way.realised));
+        let error = match way.realised {
+            Realised::Single(_) => self.running_error,
+            ref on_average => error_of(on_average),
+        };
         Choice {
+            standing: self.standing(velocity, error),
             way,
             allowed: (allowed.low, allowed.high),
             hold_s: span.hold_s,
-            state,
-            reason,
             recovers: entry.excess > 0.0,
         }
     }
@@ -138,40 +140,34 @@ impl View<'_> {
             return self.held(way, &allowed, span, entry);
         }
         if spans.is_empty() {
-            return self.least_bad(self.limits(0.0));
+            return self.least_bad(self.limits(self.running_error));
         }
         let needed = spans.first().and_then(|span| self.allowed(span));
-        let cure = needed.map_or_else(String::new, |needed| {
-            let (l, m) = (needed.simplest.numer(), needed.simplest.denom());
-            format!(": that would take L up to {l} and M up to {m}, or a cadence")
-        });
-        self.nearest(format!(
-            "no ratio within the bounds comes near enough to the target{cure}"
-        ))
-    }
-
-    /// The single ratio nearest to the target, which does not hold.
-    fn nearest(&self, reason: String) -> Choice {
+        let needed = needed.and_then(|needed| needed.bounds());
+        let reason = "no ratio within the bounds comes near enough to the target";
         let wanted = nearest_virtual(self.outlook.target.value);
-        let way = realise(wanted, &self.declaration.bounds, Realisation::Single);
-        Choice::without_room(way, CrossingState::OutOfBounds, reason)
+        let way = nearest_single(wanted, bounds);
+        Choice::without_room(way, Standing::out_of_bounds(reason, needed))
     }
 
-    /// A cadence around the wanted ratio, whose own error narrows the tube.
-    fn cadence(&self) -> Choice {
-        let bounds = &self.declaration.bounds;
-        let Some(error) = cadence_error(self.outlook.exact_target(), bounds) else {
+    /// What makes the wanted ratio on average, whose own error narrows the tube.
+    fn on_average(&self) -> Choice {
+        let View { declaration, .. } = self;
+        let target = self.outlook.exact_target();
+        let Some(error) = own_error(target, declaration) else {
             let reason = "the target is beyond every ratio within the bounds";
-            return self.nearest(reason.to_owned());
+            let way = realise(nearest_virtual(self.outlook.target.value), declaration);
+            return Choice::without_room(way, Standing::out_of_bounds(reason, self.needed()));
         };
         let limits = self.limits(error);
         let entry = Entry::new(self.outlook, &limits, self.lead_s, self.velocity);
         let spans = funnel(self.outlook, &limits, entry, self.step_s);
         match self.longest(&spans) {
             Some((span, allowed)) => {
-                let way = allowed.single(bounds);
-                let way =
-                    way.unwrap_or_else(|| realise(allowed.simplest, bounds, Realisation::Cadence));
+                let by_itself = allowed
+                    .single(&declaration.bounds)
+                    .filter(|_| declaration.realisation != Realisation::Stepping);
+                let way = by_itself.unwrap_or_else(|| realise(allowed.simplest, declaration));
                 self.held(way, &allowed, span, entry)
             }
             None => self.least_bad(limits),
@@ -183,9 +179,8 @@ impl View<'_> {
         let entry = Entry::new(self.outlook, &limits, self.lead_s, self.velocity);
         let velocity = self.velocity_back(&limits, entry.phase);
         let wanted = nearest_virtual(self.outlook.ratio(velocity));
-        let View { declaration, .. } = self;
-        let way = realise(wanted, &declaration.bounds, declaration.realisation);
-        let choice = Choice::without_room(way, CrossingState::Degraded, self.why_not(&limits));
+        let standing = Standing::new(CrossingState::Degraded, self.why_not(&limits));
+        let choice = Choice::without_room(realise(wanted, self.declaration), standing);
         Choice {
             recovers: true,
             ..choice
@@ -214,8 +209,8 @@ impl View<'_> {
     /// True if nothing can be vouched for, as uncertainty alone fills the tube, and nothing says
     /// either that another ratio would be better: a phase that is surely out moves inward, and
     /// another one has no velocity beyond what is uncertain of it.
-    pub(crate) fn is_as_good(&self, cadence_error: f64) -> bool {
-        let limits = self.limits(cadence_error);
+    pub(crate) fn is_as_good(&self, own_error: f64) -> bool {
+        let limits = self.limits(own_error);
         if !self.is_blind(&limits) {
             return false;
         }

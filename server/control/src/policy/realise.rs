@@ -1,12 +1,13 @@
 //! The second layer: a wanted fraction within the bounds of a resampler.
 
 use ratewright_ratio::{
-    Bounds, Cadence, Certificate, Exact, Fraction, Interval, MAX_BOUND, best, exact, simplest,
-    target_from_f64,
+    Bounds, Cadence, Certificate, Exact, Fraction, Interval, MAX_BOUND, Stepping, best, exact,
+    simplest, target_from_f64,
 };
 
-use crate::policy::{CARRIED_SAMPLES, MAX_VIRTUAL};
-use crate::{Realisation, Realised};
+use crate::policy::{CARRIED_SAMPLES, MAX_VIRTUAL, SWING_SHARE};
+use crate::timeline::as_double;
+use crate::{CrossingDeclaration, Realisation, Realised};
 
 /// A wanted fraction with what realises it, and the proof.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -68,6 +69,12 @@ fn inward(ratio: f64, up: bool) -> Option<Fraction> {
 }
 
 impl Allowed {
+    /// The smallest bounds that have a ratio of the interval: the simplest fraction has the
+    /// smallest parts of all.
+    pub(crate) fn bounds(&self) -> Option<Bounds> {
+        Bounds::new(*self.simplest.numer(), *self.simplest.denom()).ok()
+    }
+
     /// The simplest fraction itself, if the bounds allow it.
     pub(crate) fn single(&self, bounds: &Bounds) -> Option<Way> {
         bounds.allow(&self.simplest).then_some(Way {
@@ -94,22 +101,21 @@ impl Allowed {
     }
 }
 
-/// A wanted fraction as the resampler can best make it: by itself, by a cadence, or by the
-/// nearest single ratio.
-pub(crate) fn realise(wanted: Fraction, bounds: &Bounds, realisation: Realisation) -> Way {
-    let target = exact(&wanted);
-    if realisation == Realisation::Cadence
-        && !bounds.allow(&wanted)
-        && let Ok(cadence) = Cadence::new(&target, bounds)
-    {
-        let certificate = cadence.certificate(bounds);
-        return Way {
-            wanted,
-            realised: Realised::Cadence(cadence),
-            certificate,
-        };
-    }
-    let nearest = best(&target, bounds);
+/// A wanted fraction as the resampler of a crossing can best make it: by itself, on average, or by
+/// the nearest single ratio.
+pub(crate) fn realise(wanted: Fraction, declaration: &CrossingDeclaration) -> Way {
+    let bounds = &declaration.bounds;
+    let on_average = match declaration.realisation {
+        Realisation::Single => None,
+        Realisation::Stepping => return stepping(wanted, bounds.max_l()),
+        Realisation::Cadence | Realisation::Lazy => in_turn(wanted, declaration),
+    };
+    on_average.unwrap_or_else(|| nearest_single(wanted, bounds))
+}
+
+/// The single ratio within the bounds that is nearest to what is wanted.
+pub(crate) fn nearest_single(wanted: Fraction, bounds: &Bounds) -> Way {
+    let nearest = best(&exact(&wanted), bounds);
     Way {
         wanted,
         realised: Realised::Single(nearest.ratio),
@@ -117,10 +123,78 @@ pub(crate) fn realise(wanted: Fraction, bounds: &Bounds, realisation: Realisatio
     }
 }
 
-/// How far a cadence around the target may err, in output samples: for the ratios a/b < c/d with
-/// bc − ad = δ that is δ/(2·min(b, d)) whatever lies between, and what a change of pair carries
-/// over. 0 if the target needs none; `None` if no two ratios enclose it.
-pub(crate) fn cadence_error(target: &Exact, bounds: &Bounds) -> Option<f64> {
+/// Two neighbouring ratios in turn, where no single one will do and there are two.
+fn in_turn(wanted: Fraction, declaration: &CrossingDeclaration) -> Option<Way> {
+    let bounds = &declaration.bounds;
+    if bounds.allow(&wanted) {
+        return None;
+    }
+    let cadence = Cadence::new(&exact(&wanted), bounds).ok()?;
+    let realised = match declaration.realisation {
+        Realisation::Lazy => Realised::Lazy {
+            cadence,
+            swing_samples: swing(declaration, pair_error(&cadence)),
+        },
+        _ => Realised::Cadence(cadence),
+    };
+    Some(Way {
+        wanted,
+        realised,
+        certificate: cadence.certificate(bounds),
+    })
+}
+
+/// A table of phases makes any ratio up to their number, but nothing above it.
+fn stepping(wanted: Fraction, phases: u64) -> Way {
+    let largest = Fraction::from_integer(phases);
+    let nearest = wanted.min(largest);
+    // Only parts of nominal rates can be too fine for it, and a virtual rate never is.
+    let made = [nearest, nearest_virtual(as_double(&nearest)).min(largest)]
+        .into_iter()
+        .find_map(|ratio| Some((ratio, Stepping::new(&exact(&ratio), phases).ok()?)));
+    let (wanted, stepping) =
+        made.expect("virtual rates have numerators up to 2^53 and denominators up to 2^31");
+    Way {
+        wanted,
+        realised: Realised::Stepping(stepping),
+        certificate: stepping.certificate(),
+    }
+}
+
+/// How far lazy switching may swing: a share of the headroom, but no less than what the balanced
+/// order of the two ratios needs.
+fn swing(declaration: &CrossingDeclaration, pair_error: f64) -> f64 {
+    (SWING_SHARE * declaration.headroom_samples).max(pair_error)
+}
+
+/// How far what realises a ratio near the target may err at most, in output samples. 0 if nothing
+/// errs; `None` if the bounds cannot make the target at all.
+///
+/// A cadence of a/b < c/d with bc − ad = δ errs by δ/(2·min(b, d)) whatever lies between, and by
+/// what a change of pair carries over; lazy switching by its swing; a table of L phases at the
+/// ratio t by half a phase, t/(2L), and by what a change carries over, half a phase at most.
+pub(crate) fn own_error(target: &Exact, declaration: &CrossingDeclaration) -> Option<f64> {
+    let bounds = &declaration.bounds;
+    match declaration.realisation {
+        Realisation::Single => Some(0.0),
+        Realisation::Cadence => cadence_error(target, bounds),
+        Realisation::Lazy => {
+            cadence_error(target, bounds).map(|error| swing(declaration, error) + CARRIED_SAMPLES)
+        }
+        Realisation::Stepping => {
+            let (ratio, phases) = (double(target), bounds.max_l() as f64);
+            (ratio <= phases).then_some(ratio / phases)
+        }
+    }
+}
+
+fn double(exact: &Exact) -> f64 {
+    *exact.numer() as f64 / *exact.denom() as f64
+}
+
+/// The error of the cadence around a target; 0 if it needs none, `None` if no two ratios of the
+/// bounds enclose it.
+fn cadence_error(target: &Exact, bounds: &Bounds) -> Option<f64> {
     match Cadence::new(target, bounds) {
         Ok(cadence) => Some(pair_error(&cadence)),
         Err(ratewright_ratio::CadenceError::SingleRatio { .. }) => Some(0.0),
@@ -129,7 +203,7 @@ pub(crate) fn cadence_error(target: &Exact, bounds: &Bounds) -> Option<f64> {
 }
 
 /// The same for a given cadence.
-pub(crate) fn pair_error(cadence: &Cadence) -> f64 {
+fn pair_error(cadence: &Cadence) -> f64 {
     let (low, high) = (cadence.low(), cadence.high());
     let (a, b) = (u128::from(*low.numer()), u128::from(*low.denom()));
     let (c, d) = (u128::from(*high.numer()), u128::from(*high.denom()));
@@ -143,15 +217,13 @@ pub(crate) fn error_of(realised: &Realised) -> f64 {
     match realised {
         Realised::Single(_) => 0.0,
         Realised::Cadence(cadence) => pair_error(cadence),
-        Realised::Stepping(stepping) => {
-            let bound = stepping.error_bound();
-            *bound.numer() as f64 / *bound.denom() as f64 + CARRIED_SAMPLES
-        }
-        Realised::Lazy { swing_samples, .. } => *swing_samples,
+        Realised::Stepping(stepping) => double(&stepping.wanted()) / stepping.phases() as f64,
+        Realised::Lazy { swing_samples, .. } => swing_samples + CARRIED_SAMPLES,
     }
 }
 
-/// Input samples of the longest block of what is in force: it may change at block ends only.
+/// Input samples of the longest block of what is in force: it may change at block ends only. A
+/// table of phases may change at any output.
 pub(crate) fn block_inputs(realised: &Realised) -> u64 {
     match realised {
         Realised::Single(ratio) => *ratio.denom(),
@@ -159,5 +231,58 @@ pub(crate) fn block_inputs(realised: &Realised) -> u64 {
         Realised::Cadence(cadence) | Realised::Lazy { cadence, .. } => {
             *cadence.low().denom().max(cadence.high().denom())
         }
+    }
+}
+
+/// The smallest bounds within which what realises the target errs by less than `room` samples, or
+/// `None` if there are none (bounds on prime factors are not searched).
+///
+/// The two neighbours around a target have growing denominators as M may grow, so the error
+/// falls, and the first M that does is found by bisection.
+pub(crate) fn bounds_for(
+    target: &Exact,
+    declaration: &CrossingDeclaration,
+    room: f64,
+) -> Option<Bounds> {
+    let bounds = &declaration.bounds;
+    if bounds.largest_prime().is_some() || room <= 0.0 {
+        return None;
+    }
+    let ratio = double(target);
+    if declaration.realisation == Realisation::Stepping {
+        let phases = (ratio / room).max(ratio).floor() + 1.0;
+        return Bounds::new(phases as u64, bounds.max_m()).ok();
+    }
+    let boxed = |m: u64| Bounds::new((ratio * m as f64).ceil() as u64 + 1, m).ok();
+    let does = |m: u64| {
+        let error = boxed(m).and_then(|bounds| cadence_error(target, &bounds));
+        error.is_some_and(|error| error < room)
+    };
+    let (mut fails, mut holds) = (0, MAX_VIRTUAL);
+    if !does(holds) {
+        return None;
+    }
+    while holds - fails > 1 {
+        let middle = fails + (holds - fails) / 2;
+        if does(middle) {
+            holds = middle;
+        } else {
+            fails = middle;
+        }
+    }
+    match Cadence::new(target, &boxed(holds)?) {
+        Ok(cadence) => {
+            let (low, high) = (cadence.low(), cadence.high());
+            let largest = |a: &u64, b: &u64| *a.max(b);
+            Bounds::new(
+                largest(low.numer(), high.numer()),
+                largest(low.denom(), high.denom()),
+            )
+            .ok()
+        }
+        Err(ratewright_ratio::CadenceError::SingleRatio { ratio }) => {
+            Bounds::new(*ratio.numer(), *ratio.denom()).ok()
+        }
+        Err(_) => None,
     }
 }

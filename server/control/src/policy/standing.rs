@@ -1,50 +1,101 @@
 //! How a crossing stands: does it hold, and if not, why.
 
+use ratewright_ratio::{Bounds, target_from_f64};
+
 use crate::policy::choose::View;
-use crate::policy::realise::allowed;
-use crate::policy::{MARGIN_DEVIATIONS, PLAN_HORIZON_S};
+use crate::policy::realise::{allowed, bounds_for};
+use crate::policy::{MARGIN_DEVIATIONS, PLAN_HORIZON_S, RECOVERY_S};
 use crate::{CrossingState, Realisation};
 
+/// A state with its reason.
+#[derive(Clone, Debug, PartialEq)]
+pub(crate) struct Standing {
+    pub(crate) state: CrossingState,
+    /// In words and numbers.
+    pub(crate) reason: String,
+    /// Smallest bounds that would do, if these do not.
+    pub(crate) needed: Option<Bounds>,
+}
+
+impl Standing {
+    pub(crate) fn new(state: CrossingState, reason: String) -> Self {
+        Standing {
+            state,
+            reason,
+            needed: None,
+        }
+    }
+
+    /// The bounds do not do, for this reason; what would is said with it.
+    pub(crate) fn out_of_bounds(reason: &str, needed: Option<Bounds>) -> Self {
+        let cure = needed.map_or_else(String::new, |needed| {
+            let (l, m) = (needed.max_l(), needed.max_m());
+            format!(": that would take L up to {l} and M up to {m}")
+        });
+        Standing {
+            state: CrossingState::OutOfBounds,
+            reason: format!("{reason}{cure}"),
+            needed,
+        }
+    }
+}
+
 impl View<'_> {
+    /// The smallest bounds within which what is run on average errs by less than the tube, at the
+    /// target and as far from it as it takes to bring a phase error across the tube in time.
+    pub(crate) fn needed(&self) -> Option<Bounds> {
+        let tube = self.limits(0.0).tube;
+        let back = (tube / RECOVERY_S).min(self.limits(0.0).pitch);
+        let at = |velocity: f64| {
+            let target = target_from_f64(self.outlook.ratio(velocity)).ok()?;
+            bounds_for(&target, self.declaration, tube)
+        };
+        let (below, above) = (at(-back)?, at(back)?);
+        let (l, m) = (
+            below.max_l().max(above.max_l()),
+            below.max_m().max(above.max_m()),
+        );
+        Bounds::new(l, m).ok()
+    }
+
     /// How a crossing stands under a setting that may stay, which gives the phase error this
     /// velocity and errs by up to so much itself: holding, unless the phase error is out of the
     /// headroom by now, not known to be within, or has no way back when the hold ends.
-    pub(crate) fn standing(&self, velocity: f64, cadence_error: f64) -> (CrossingState, String) {
+    pub(crate) fn standing(&self, velocity: f64, own_error: f64) -> Standing {
+        let degraded = |reason| Standing::new(CrossingState::Degraded, reason);
         let (phase, headroom) = (self.outlook.phase, self.declaration.headroom_samples);
         if phase.abs() > headroom {
-            let reason = format!(
+            return degraded(format!(
                 "the phase error of {phase:.3} samples is outside the headroom of {headroom} \
                  and on its way back"
-            );
-            return (CrossingState::Degraded, reason);
+            ));
         }
         let tube = self.limits(0.0).tube;
-        if cadence_error >= tube {
+        if own_error >= tube {
             let reason = format!(
-                "a cadence within the bounds errs by up to {cadence_error:.3} samples, \
+                "what can be run within the bounds errs by up to {own_error:.3} samples itself, \
                  more than the {tube:.3} that the headroom of {headroom} leaves"
             );
-            return (CrossingState::Degraded, reason);
+            return Standing::out_of_bounds(&reason, self.needed());
         }
         let margin = MARGIN_DEVIATIONS * self.outlook.deviation(0.0);
         if margin > tube {
-            let reason = format!(
+            return degraded(format!(
                 "the phase error is uncertain by {margin:.3} samples ({MARGIN_DEVIATIONS} deviations), \
                  and the tube is {tube:.3}"
-            );
-            return (CrossingState::Degraded, reason);
+            ));
         }
-        if let Some(reason) = self.dead_end(velocity) {
-            return (CrossingState::OutOfBounds, reason);
+        if let Some(standing) = self.dead_end(velocity) {
+            return standing;
         }
         let reason = format!("the phase error stays within the headroom of {headroom} samples");
-        (CrossingState::Holding, reason)
+        Standing::new(CrossingState::Holding, reason)
     }
 
     /// For one ratio at a time: why there will be no way back, if so. No ratio of the bounds
     /// moves the phase error the other way, within the pitch limit, and that will be needed
     /// within what is planned for.
-    fn dead_end(&self, velocity: f64) -> Option<String> {
+    fn dead_end(&self, velocity: f64) -> Option<Standing> {
         let limits = self.limits(0.0);
         let lasts = velocity.abs() * PLAN_HORIZON_S < limits.tube;
         if self.declaration.realisation != Realisation::Single || lasts {
@@ -59,11 +110,10 @@ impl View<'_> {
         if other.any_single(&self.declaration.bounds).is_some() {
             return None;
         }
-        // The simplest fraction has the smallest parts of all that would do.
-        let (l, m) = (other.simplest.numer(), other.simplest.denom());
-        Some(format!(
+        let reason = format!(
             "the phase error grows by {velocity:+.2e} samples a second, and no ratio within the bounds \
-             leads back: that would take L up to {l} and M up to {m}, or a cadence"
-        ))
+             leads back"
+        );
+        Some(Standing::out_of_bounds(&reason, other.bounds()))
     }
 }
