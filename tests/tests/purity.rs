@@ -3,10 +3,11 @@
 
 use ratewright_tests::dependencies;
 
-const PURE: [&str; 5] = [
+const PURE: [&str; 6] = [
     "ratewright-ratio",
     "ratewright-timing",
     "ratewright-control",
+    "ratewright-declarations",
     "ratewright-rehearsal",
     "ratewright-pictures",
 ];

@@ -23,10 +23,6 @@
 //! | `[[crossing]]` `lead_s` | s, 0.001 to 60 | 1 | from a decision to its effect |
 //! | `[[crossing]]` `review_horizon_s` | s, 10 to 2592000 | 86400 | longest trust in a setting that is not renewed |
 
-mod declarations;
-mod faults;
-mod section;
-
 use std::{
     net::{Ipv4Addr, SocketAddr},
     path::{Path, PathBuf},
@@ -34,9 +30,9 @@ use std::{
 };
 
 use ratewright_control::{ClockDeclaration, CrossingDeclaration};
+use ratewright_declarations::{Declarations, Section, Sheet, integer, number, text};
+pub use ratewright_declarations::{Fault, Faults};
 
-pub use self::faults::{Fault, Faults};
-use self::section::{Section, Sheet, integer, number, text};
 use crate::house::TAI_MINUS_UTC_S;
 
 /// Configuration of a daemon, already checked.
@@ -115,7 +111,7 @@ pub fn parse(text: &str) -> Result<Config, Vec<Fault>> {
     root.section("shutdown", |section| shutdown(section, &mut config));
     root.section("log", |section| log(section, &mut config));
     root.section("house", |section| house(section, &mut config));
-    (config.clocks, config.crossings) = declarations::read(&root);
+    declarations(&root, &mut config);
     root.close();
     sheet.finish(config)
 }
@@ -182,6 +178,15 @@ fn house(section: &Section<'_>, config: &mut Config) {
         &mut config.tai_minus_utc_s,
         |value| integer(value, 0, 100),
     );
+}
+
+/// What has a fault is noted and left out.
+fn declarations(root: &Section<'_>, config: &mut Config) {
+    let mut declarations = Declarations::default();
+    let read = root.each("clock", |section| declarations.clock(section));
+    config.clocks = read.into_iter().flatten().collect();
+    let read = root.each("crossing", |section| declarations.crossing(section));
+    config.crossings = read.into_iter().flatten().collect();
 }
 
 #[cfg(test)]

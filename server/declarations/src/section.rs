@@ -8,19 +8,21 @@ use toml::{
     de::{DeTable, DeValue},
 };
 
-use super::Fault;
+use crate::Fault;
 
 /// Longest piece of the file that a fault quotes, characters.
 const QUOTE: usize = 60;
 
 /// The text of a file, and the faults found in it so far.
-pub(super) struct Sheet<'t> {
+#[derive(Debug)]
+pub struct Sheet<'t> {
     text: &'t str,
     faults: RefCell<Vec<Fault>>,
 }
 
 impl<'t> Sheet<'t> {
-    pub(super) fn new(text: &'t str) -> Self {
+    /// A sheet without faults.
+    pub fn new(text: &'t str) -> Self {
         Self {
             text,
             faults: RefCell::default(),
@@ -31,7 +33,7 @@ impl<'t> Sheet<'t> {
     ///
     /// # Errors
     /// All faults of syntax.
-    pub(super) fn table(&self) -> Result<DeTable<'t>, Vec<Fault>> {
+    pub fn table(&self) -> Result<DeTable<'t>, Vec<Fault>> {
         let (table, errors) = DeTable::parse_recoverable(self.text);
         if errors.is_empty() {
             return Ok(table.into_inner());
@@ -46,8 +48,11 @@ impl<'t> Sheet<'t> {
         Err(self.sorted())
     }
 
-    /// The result, or all faults in the order of their lines.
-    pub(super) fn finish<T>(self, result: T) -> Result<T, Vec<Fault>> {
+    /// The result, if nothing is at fault.
+    ///
+    /// # Errors
+    /// All faults in the order of their lines.
+    pub fn finish<T>(self, result: T) -> Result<T, Vec<Fault>> {
         let faults = self.sorted();
         if faults.is_empty() {
             Ok(result)
@@ -88,7 +93,8 @@ impl<'t> Sheet<'t> {
 }
 
 /// A table of the file.
-pub(super) struct Section<'t> {
+#[derive(Debug)]
+pub struct Section<'t> {
     sheet: &'t Sheet<'t>,
     table: &'t DeTable<'t>,
     /// Path of the keys below, with a dot at its end; empty for the root.
@@ -99,7 +105,8 @@ pub(super) struct Section<'t> {
 }
 
 impl<'t> Section<'t> {
-    pub(super) fn root(sheet: &'t Sheet<'t>, table: &'t DeTable<'t>) -> Self {
+    /// The table of the whole file, from [`Sheet::table`].
+    pub fn root(sheet: &'t Sheet<'t>, table: &'t DeTable<'t>) -> Self {
         Self {
             sheet,
             table,
@@ -110,7 +117,7 @@ impl<'t> Section<'t> {
     }
 
     /// Reads the table `key`, if it is there.
-    pub(super) fn section(&self, key: &'static str, read: impl FnOnce(&Section<'t>)) {
+    pub fn section(&self, key: &'static str, read: impl FnOnce(&Section<'t>)) {
         let Some(value) = self.find(key) else { return };
         match value.get_ref() {
             DeValue::Table(table) => {
@@ -123,7 +130,7 @@ impl<'t> Section<'t> {
     }
 
     /// Reads every table of the array `key`; those that have a fault give `None`.
-    pub(super) fn each<T>(
+    pub fn each<T>(
         &self,
         key: &'static str,
         mut read: impl FnMut(&Section<'t>) -> Option<T>,
@@ -150,7 +157,7 @@ impl<'t> Section<'t> {
 
     /// Reads `key` into `place`, which keeps its default if the key is absent or wrong. `accepted` says
     /// what `read` takes; it gives `None` for anything else.
-    pub(super) fn set<T>(
+    pub fn set<T>(
         &self,
         key: &'static str,
         accepted: &str,
@@ -165,7 +172,7 @@ impl<'t> Section<'t> {
     }
 
     /// Reads `key`, which must be there. `None` notes a fault.
-    pub(super) fn need<T>(
+    pub fn need<T>(
         &self,
         key: &'static str,
         accepted: &str,
@@ -182,7 +189,7 @@ impl<'t> Section<'t> {
     }
 
     /// Notes that the value of `key` will not do beside others.
-    pub(super) fn fault(&self, key: &'static str, value: &str, accepted: &str) {
+    pub fn fault(&self, key: &'static str, value: &str, accepted: &str) {
         let line = self
             .table
             .get(key)
@@ -196,7 +203,7 @@ impl<'t> Section<'t> {
     }
 
     /// Notes every key that nothing asked for.
-    pub(super) fn close(&self) {
+    pub fn close(&self) {
         let known = self.known.borrow();
         for key in self
             .table
@@ -240,22 +247,32 @@ impl<'t> Section<'t> {
 }
 
 /// A string.
-pub(super) fn text<'v>(value: &'v DeValue<'_>) -> Option<&'v str> {
+pub fn text<'v>(value: &'v DeValue<'_>) -> Option<&'v str> {
     value.as_str()
 }
 
+/// `true` or `false`.
+pub fn flag(value: &DeValue<'_>) -> Option<bool> {
+    value.as_bool()
+}
+
 /// An integer in `low..=high`.
-pub(super) fn integer(value: &DeValue<'_>, low: i64, high: i64) -> Option<i64> {
+pub fn integer(value: &DeValue<'_>, low: i64, high: i64) -> Option<i64> {
     let digits = value.as_integer()?;
     let integer = i64::from_str_radix(digits.as_str(), digits.radix()).ok()?;
     (low..=high).contains(&integer).then_some(integer)
 }
 
 /// An integer or a float in `low..=high`.
-pub(super) fn number(value: &DeValue<'_>, low: f64, high: f64) -> Option<f64> {
+pub fn number(value: &DeValue<'_>, low: f64, high: f64) -> Option<f64> {
     let number = match value {
         DeValue::Float(float) => float.as_str().parse().ok()?,
         _ => integer(value, i64::MIN, i64::MAX)? as f64,
     };
     (low..=high).contains(&number).then_some(number)
+}
+
+/// Seconds in `low..=high`, as nanoseconds.
+pub fn seconds(value: &DeValue<'_>, low: f64, high: f64) -> Option<i64> {
+    number(value, low, high).map(|s| (s * 1e9).round() as i64)
 }

@@ -1,10 +1,10 @@
-//! What is wrong with a configuration file.
+//! What is wrong with a file.
 
 use std::fmt;
 
 use thiserror::Error;
 
-/// Every fault of a configuration file; displayed one a line.
+/// Every fault of a file; displayed one a line.
 #[derive(Clone, Debug, PartialEq, Eq, Error)]
 pub struct Faults {
     /// The file.
@@ -27,7 +27,8 @@ pub struct Fault {
 }
 
 impl Fault {
-    pub(super) fn unreadable(error: &std::io::Error) -> Self {
+    /// The fault of a file that cannot be read at all.
+    pub fn unreadable(error: &std::io::Error) -> Self {
         Self {
             line: 0,
             key: String::new(),
