@@ -4,6 +4,7 @@ use crate::engine::Engine;
 use crate::issue::Stamp;
 use crate::policy::standing::Standing;
 use crate::record::{Ends, Judgement};
+use crate::restraint::Restraint;
 use crate::schedule::Subject;
 use crate::timeline::Timeline;
 use crate::{Effects, HouseNs, Id, Reason, Transition};
@@ -58,11 +59,13 @@ impl Engine {
             return;
         };
         let lead_ns = record.declaration.lead_ns;
-        let Some(member) = self.look_at(id, now, lead_ns, effects) else {
+        let restraint = record.restraint(now, lead_ns);
+        let Some(mut member) = self.look_at(id, now, lead_ns, effects) else {
             return;
         };
+        self.restrain(&mut member, restraint.as_ref(), now, lead_ns);
         let ends = self.settle(member, now, now.saturating_add(lead_ns), effects);
-        let step_ns = self.step_ns(id, now, &ends);
+        let step_ns = self.step_ns(id, now, lead_ns, &ends);
         self.schedule
             .set(Subject::Crossing(id.clone()), now.saturating_add(step_ns));
     }
@@ -80,6 +83,10 @@ impl Engine {
             .iter()
             .filter_map(|id| self.look_at(id, now, lead_ns, effects));
         let mut members: Vec<Member> = looked.collect();
+        let restraint = self.restraint_of(&members, now, lead_ns);
+        for member in &mut members {
+            self.restrain(member, restraint.as_ref(), now, lead_ns);
+        }
         let changes = |member: &Member| match member.judgement {
             // A newcomer begins by itself.
             Judgement::Change { reason, .. } => reason != Reason::First,
@@ -98,7 +105,7 @@ impl Engine {
         for member in members {
             let id = member.id.clone();
             let ends = self.settle(member, now, effect_ns, effects);
-            let own_ns = self.step_ns(&id, now, &ends);
+            let own_ns = self.step_ns(&id, now, lead_ns, &ends);
             step_ns = Some(step_ns.map_or(own_ns, |least_ns: i64| least_ns.min(own_ns)));
         }
         if let Some(step_ns) = step_ns {
@@ -155,9 +162,41 @@ impl Engine {
         })
     }
 
-    fn step_ns(&self, id: &Id, now: HouseNs, ends: &Ends) -> i64 {
-        let record = self.crossings.get(id);
-        record.map_or(i64::MAX, |record| (record.step_s(now, ends) * 1e9) as i64)
+    /// What keeps any of the members from changing.
+    fn restraint_of(&self, members: &[Member], now: HouseNs, lead_ns: i64) -> Option<Restraint> {
+        let records = members
+            .iter()
+            .filter_map(|member| self.crossings.get(&member.id));
+        records.fold(None, |strongest, record| {
+            match record.restraint(now, lead_ns) {
+                Some(restraint) => Some(restraint.with(strongest)),
+                None => strongest,
+            }
+        })
+    }
+
+    fn restrain(
+        &self,
+        member: &mut Member,
+        restraint: Option<&Restraint>,
+        now: HouseNs,
+        lead_ns: i64,
+    ) {
+        if let (Some(restraint), Some(record)) = (restraint, self.crossings.get(&member.id)) {
+            let judgement = std::mem::replace(&mut member.judgement, Judgement::Pending);
+            let when = (now, seconds(lead_ns));
+            member.judgement = record.restrained(judgement, restraint, when, &member.ends);
+        }
+    }
+
+    /// Time to the next decision, which is not later than the floor between changes allows one.
+    fn step_ns(&self, id: &Id, now: HouseNs, lead_ns: i64, ends: &Ends) -> i64 {
+        let Some(record) = self.crossings.get(id) else {
+            return i64::MAX;
+        };
+        let step_ns = (record.step_s(now, ends) * 1e9) as i64;
+        let floor_ns = record.floor_ends_in_ns(now, lead_ns);
+        floor_ns.map_or(step_ns, |floor_ns| step_ns.min(floor_ns))
     }
 
     /// Does what was judged.

@@ -230,8 +230,7 @@ impl CrossingDeclaration {
                 accepted,
             ));
         }
-        self.check_backup()?;
-        self.check_not_yet()
+        self.check_backup()
     }
 
     fn check_backup(&self) -> Result<(), Refusal> {
@@ -245,25 +244,22 @@ impl CrossingDeclaration {
         Err(Refusal::invalid("backup", backup, accepted))
     }
 
-    /// Refuses what this version can be told of but cannot do.
-    fn check_not_yet(&self) -> Result<(), Refusal> {
-        if self.least_hold_ns != 0 {
-            let accepted = "0: this version keeps no floor";
-            return Err(Refusal::invalid(
-                "least_hold_ns",
-                self.least_hold_ns,
-                accepted,
-            ));
-        }
-        if self.silent {
-            let accepted = "false: this version knows no trials";
-            return Err(Refusal::invalid("silent", true, accepted));
-        }
-        if let Some(backup) = &self.backup {
-            let accepted = "none: this version knows no changeover";
-            return Err(Refusal::invalid("backup", backup, accepted));
-        }
-        Ok(())
+    /// The clocks it names: source, sink, and backup if there is one.
+    pub(crate) fn clocks(&self) -> impl Iterator<Item = &Id> {
+        [&self.source, &self.sink].into_iter().chain(&self.backup)
+    }
+
+    /// True if a setting made under the old declaration must not stand: its clocks, what the
+    /// resampler can do, the headroom, or whether it is run at all.
+    pub(crate) fn asks_for_another_setting_than(&self, old: &CrossingDeclaration) -> bool {
+        let decides = |d: &CrossingDeclaration| {
+            (
+                (d.source.clone(), d.sink.clone()),
+                (d.bounds, d.realisation, d.headroom_samples),
+                d.silent,
+            )
+        };
+        decides(self) != decides(old)
     }
 
     /// Checks the ratio of the nominal rates; `field` is what to blame.

@@ -3,9 +3,7 @@
 use crate::engine::Engine;
 use crate::record::CrossingRecord;
 use crate::schedule::Subject;
-use crate::{
-    ClockDeclaration, CrossingDeclaration, Effects, HouseNs, Id, Reason, Refusal, Transition,
-};
+use crate::{ClockDeclaration, CrossingDeclaration, Effects, HouseNs, Id, Reason, Refusal};
 
 /// Most crossings in a group: they are decided in one go.
 const MAX_GROUP: usize = 64;
@@ -27,7 +25,7 @@ impl Engine {
             .set(Subject::Clock(declaration.id.clone()), now);
         let users: Vec<Id> = self.users(&declaration.id).cloned().collect();
         for crossing in users {
-            self.rates_changed(&crossing, now, effects);
+            self.rates_changed(&crossing, &declaration.id, now, effects);
         }
         self.hurry_users(&declaration.id, now);
         Ok(())
@@ -40,14 +38,20 @@ impl Engine {
             let Some(record) = self.crossings.get(crossing) else {
                 continue;
             };
-            let (source, sink) = (&record.declaration.source, &record.declaration.sink);
-            let pair = if *source == declaration.id {
-                of(sink).map(|sink| (declaration, sink))
-            } else {
-                of(source).map(|source| (source, declaration))
-            };
-            if let Some((source, sink)) = pair {
-                CrossingDeclaration::check_rates("nominal_hz", source, sink)?;
+            let crossing = &record.declaration;
+            for source in [Some(&crossing.source), crossing.backup.as_ref()]
+                .into_iter()
+                .flatten()
+            {
+                let as_declared = |id: &Id| match *id == declaration.id {
+                    true => Some(declaration),
+                    false => of(id),
+                };
+                if let (Some(source), Some(sink)) =
+                    (as_declared(source), as_declared(&crossing.sink))
+                {
+                    CrossingDeclaration::check_rates("nominal_hz", source, sink)?;
+                }
             }
         }
         Ok(())
@@ -60,22 +64,19 @@ impl Engine {
             .flat_map(|record| &record.crossings)
     }
 
-    /// The account of a crossing begins anew at other nominal rates.
-    fn rates_changed(&mut self, crossing: &Id, now: HouseNs, effects: &mut Effects) {
-        let Some(record) = self.crossings.get_mut(crossing) else {
+    /// The account of a crossing begins anew at other nominal rates, if the clock is in use there.
+    fn rates_changed(&mut self, id: &Id, clock: &Id, now: HouseNs, effects: &mut Effects) {
+        let Some(record) = self.crossings.get_mut(id) else {
             return;
         };
-        let hz = |id: &Id| self.clocks.get(id).map(|clock| clock.declaration.hz());
-        let declaration = &record.declaration;
-        if let (Some(source_hz), Some(sink_hz)) = (hz(&declaration.source), hz(&declaration.sink)) {
-            record.ledger.change_rates(now, source_hz, sink_hz);
-            record.forced = record.forced.or(Some(Reason::Declaration));
-            effects.transitions.push(Transition::Centred {
-                crossing: crossing.clone(),
-                phase_error_samples: 0.0,
-                reason: "a clock of it was declared anew".to_owned(),
-            });
+        if record.source() != clock && record.declaration.sink != *clock {
+            return;
         }
+        record.forced = record.forced.or(Some(Reason::Declaration));
+        let reason = format!("its clock {clock} was declared anew");
+        effects
+            .transitions
+            .extend(self.centre_anew(id, now, reason));
     }
 
     pub(crate) fn delete_clock(&mut self, id: &Id) -> Result<(), Refusal> {
@@ -100,11 +101,16 @@ impl Engine {
         &mut self,
         declaration: &CrossingDeclaration,
         now: HouseNs,
+        effects: &mut Effects,
     ) -> Result<(), Refusal> {
         declaration.check()?;
         let source = self.end("source", &declaration.source)?;
         let sink = self.end("sink", &declaration.sink)?;
         CrossingDeclaration::check_rates("sink", source, sink)?;
+        if let Some(backup) = &declaration.backup {
+            let backup = self.end("backup", backup)?;
+            CrossingDeclaration::check_rates("backup", backup, sink)?;
+        }
         self.check_group(declaration)?;
         match self
             .crossings
@@ -118,9 +124,11 @@ impl Engine {
             }
             Some(old) if old == *declaration => return Ok(()),
             Some(old) => {
-                let rates = (source.hz(), sink.hz());
+                if declaration.asks_for_another_setting_than(&old) {
+                    self.check_unpinned(&declaration.id)?;
+                }
                 self.detach(&old);
-                self.redeclare(&old, declaration, rates, now);
+                self.redeclare(&old, declaration, now, effects);
             }
         }
         self.attach(declaration, now);
@@ -146,35 +154,42 @@ impl Engine {
         Err(Refusal::precondition("group", group, accepted))
     }
 
+    /// Takes another declaration. The stream goes on coming from the clock it came from, if that is
+    /// still one of the two sources.
     fn redeclare(
         &mut self,
         old: &CrossingDeclaration,
         new: &CrossingDeclaration,
-        hz: (f64, f64),
         now: HouseNs,
+        effects: &mut Effects,
     ) {
         let Some(record) = self.crossings.get_mut(&new.id) else {
             return;
         };
+        let source_before = record.source().clone();
         record.declaration = new.clone();
-        if (&old.source, &old.sink) != (&new.source, &new.sink) {
-            record.ledger.change_rates(now, hz.0, hz.1);
-        }
-        let names_only = CrossingDeclaration {
-            display_name: old.display_name.clone(),
-            group: old.group.clone(),
-            lead_ns: old.lead_ns,
-            review_horizon_ns: old.review_horizon_ns,
-            ..new.clone()
-        };
-        if names_only != *old {
+        record.on_backup =
+            new.backup.as_ref() == Some(&source_before) && new.source != source_before;
+        if new.asks_for_another_setting_than(old) {
             record.forced = record.forced.or(Some(Reason::Declaration));
         }
+        let reason = if *record.source() != source_before || new.sink != old.sink {
+            "it was declared between other clocks"
+        } else if new.silent != old.silent && new.silent {
+            "it was declared silent: nobody runs its settings from now on"
+        } else if new.silent != old.silent {
+            "it is no longer silent: what a trial would have added up to is not what runs"
+        } else {
+            return;
+        };
+        effects
+            .transitions
+            .extend(self.centre_anew(&new.id, now, reason.to_owned()));
     }
 
     /// Enters a crossing where it is looked up, and makes it due.
     fn attach(&mut self, declaration: &CrossingDeclaration, now: HouseNs) {
-        for clock in [&declaration.source, &declaration.sink] {
+        for clock in declaration.clocks() {
             if let Some(clock) = self.clocks.get_mut(clock) {
                 clock.crossings.insert(declaration.id.clone());
             }
@@ -189,7 +204,7 @@ impl Engine {
     }
 
     fn detach(&mut self, declaration: &CrossingDeclaration) {
-        for clock in [&declaration.source, &declaration.sink] {
+        for clock in declaration.clocks() {
             if let Some(clock) = self.clocks.get_mut(clock) {
                 clock.crossings.remove(&declaration.id);
             }

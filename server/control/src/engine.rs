@@ -6,6 +6,7 @@ use ratewright_timing::Outcome;
 use serde::{Deserialize, Serialize};
 
 use crate::clocks::Clocks;
+use crate::hand::Hand;
 use crate::record::CrossingRecord;
 use crate::schedule::{Schedule, Subject};
 use crate::{Effects, Event, HouseNs, Id, Reading, Refusal};
@@ -57,7 +58,9 @@ impl Engine {
                 self.declare_clock(declaration, now, &mut effects)?
             }
             Event::DeleteClock(id) => self.delete_clock(id)?,
-            Event::DeclareCrossing(declaration) => self.declare_crossing(declaration, now)?,
+            Event::DeclareCrossing(declaration) => {
+                self.declare_crossing(declaration, now, &mut effects)?;
+            }
             Event::DeleteCrossing(id) => self.delete_crossing(id)?,
             Event::Reading(reading) => effects.outcome = Some(self.read(reading, now)?),
             Event::Applied {
@@ -78,9 +81,20 @@ impl Engine {
                 let level = (*level_samples, *deviation_samples);
                 self.occupied(crossing, level, *house_ns, now, &mut effects)?;
             }
-            Event::Pin { .. } | Event::Release { .. } | Event::ChangeOver { .. } => {
-                let accepted = "another event: this version has no operator's hand";
-                return Err(Refusal::invalid("event", "as sent", accepted));
+            Event::Pin { crossing, by, note } => {
+                self.pin(crossing, Hand { by, note }, now, &mut effects)?;
+            }
+            Event::Release { crossing, by, note } => {
+                self.release(crossing, Hand { by, note }, now, &mut effects)?;
+            }
+            Event::ChangeOver {
+                crossing,
+                source,
+                by,
+                note,
+            } => {
+                let hand = Hand { by, note };
+                self.change_over(crossing, source, hand, now, &mut effects)?;
             }
             Event::Tick => {}
             Event::OpenEpoch { epoch } => self.open_epoch(*epoch)?,

@@ -2,12 +2,13 @@
 
 use ratewright_ratio::{Certificate, Fraction};
 
+use crate::policy::realise::error_of;
 use crate::{CrossingDeclaration, Realised, Reason, SLIP_HORIZON_S, Setting};
 
 /// Tells what a setting does, why it was made, what it rests on and how long it is good for.
 /// One sentence or two in each line.
 pub fn explain(setting: &Setting, crossing: &CrossingDeclaration) -> Vec<String> {
-    vec![
+    let mut lines = vec![
         what(setting),
         why(setting, crossing),
         target(setting, crossing),
@@ -15,7 +16,12 @@ pub fn explain(setting: &Setting, crossing: &CrossingDeclaration) -> Vec<String>
         choice(setting),
         proof(setting, crossing),
         outlook(setting, crossing),
-    ]
+    ];
+    lines.extend(floor(crossing));
+    if setting.silent {
+        lines.push("It is a trial for the record: nobody is told of it.".to_owned());
+    }
+    lines
 }
 
 fn text(ratio: &Fraction) -> String {
@@ -86,10 +92,14 @@ fn why(setting: &Setting, crossing: &CrossingDeclaration) -> String {
 
 fn target(setting: &Setting, crossing: &CrossingDeclaration) -> String {
     let e = &setting.evidence;
+    let source = match &crossing.backup {
+        Some(backup) if setting.on_backup => format!("{backup}, the backup source,"),
+        _ => crossing.source.to_string(),
+    };
     format!(
         "{} was {:+.4} ± {:.4} ppm off its nominal rate and {} {:+.4} ± {:.4} ppm, so the target was \
          {:.12} (95 %: {:.12} to {:.12}).",
-        crossing.source,
+        source,
         e.source_drift * 1e6,
         e.source_deviation * 1e6,
         crossing.sink,
@@ -104,9 +114,23 @@ fn target(setting: &Setting, crossing: &CrossingDeclaration) -> String {
 fn phase(setting: &Setting, crossing: &CrossingDeclaration) -> String {
     let e = &setting.evidence;
     format!(
-        "The phase error was {:+.4} ± {:.4} sink samples, of a headroom of {}.",
-        e.phase_error_samples, e.phase_deviation_samples, crossing.headroom_samples
+        "The phase error was {:+.4} ± {:.4} sink samples, of a headroom of {}; it is brought back by at most \
+         {} ppm of pitch. What is run errs by up to {:.4} samples itself.",
+        e.phase_error_samples,
+        e.phase_deviation_samples,
+        crossing.headroom_samples,
+        crossing.pitch_limit_ppm,
+        error_of(&setting.realised),
     )
+}
+
+fn floor(crossing: &CrossingDeclaration) -> Option<String> {
+    (crossing.least_hold_ns > 0).then(|| {
+        format!(
+            "Nothing else is run before {:.1} s after its effect, even if it has to be waited for.",
+            seconds(crossing.least_hold_ns)
+        )
+    })
 }
 
 fn choice(setting: &Setting) -> String {

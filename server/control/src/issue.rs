@@ -48,8 +48,8 @@ impl CrossingRecord {
             expiry_ns: review_ns.saturating_add(self.declaration.review_horizon_ns),
             seconds_to_slip: None,
             reason,
-            on_backup: false,
-            silent: false,
+            on_backup: self.on_backup,
+            silent: self.declaration.silent,
             evidence: self.evidence(&choice, ends),
         };
         setting.residual = residual(&setting.average(), &ends.target.exact);

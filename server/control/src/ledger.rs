@@ -108,6 +108,12 @@ impl Ledger {
         self.at_odds = 0;
     }
 
+    /// The stream comes from another source of the same nominal rate from `now` on, to which the
+    /// account is advanced. It goes on, with what is uncertain of the source so far.
+    pub(crate) fn hand_over(&mut self, now: HouseNs) {
+        self.source.hand_over(now);
+    }
+
     /// Takes other nominal rates, Hz: the account begins anew.
     pub(crate) fn change_rates(&mut self, now: HouseNs, source_hz: f64, sink_hz: f64) {
         (self.source_hz, self.sink_hz) = (source_hz, sink_hz);

@@ -122,6 +122,14 @@ impl Passage {
         taken_back_ns
     }
 
+    /// Another clock goes on from `now`: what was gained stays as uncertain as it is.
+    pub(crate) fn hand_over(&mut self, now: HouseNs) {
+        *self = Passage {
+            closed_variance_ns2: self.variance_ns2(),
+            ..Passage::begin(now)
+        };
+    }
+
     /// Variance of a change of drift at an unknown instant within a span: uniform, ns².
     fn doubt_variance_ns2(&self) -> f64 {
         self.doubt.map_or(0.0, |doubt| {

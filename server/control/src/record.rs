@@ -14,7 +14,8 @@ use crate::policy::standing::Standing;
 use crate::policy::{TUBE, pitch_limit};
 use crate::target::Target;
 use crate::{
-    ClockDeclaration, CrossingDeclaration, CrossingState, HouseNs, Id, Reason, Setting, Transition,
+    ClockDeclaration, CrossingDeclaration, CrossingState, HouseNs, Id, Pin, Reason, Setting,
+    Transition,
 };
 
 /// A phase error that would take longer than this to bring back, seconds, is not brought back:
@@ -39,6 +40,10 @@ pub(crate) struct CrossingRecord {
     pub(crate) reason: String,
     /// Smallest bounds that would do, while it is out of bounds.
     pub(crate) needed: Option<Box<Bounds>>,
+    /// Who pinned it, if it is pinned.
+    pub(crate) pin: Option<Box<Pin>>,
+    /// True if the stream comes from the backup source.
+    pub(crate) on_backup: bool,
     /// When what is run was changed last: the effect of that setting.
     pub(crate) changed_ns: HouseNs,
     /// A reason to decide anew at the next opportunity.
@@ -94,6 +99,8 @@ impl CrossingRecord {
             state: CrossingState::Waiting,
             reason: "declared".to_owned(),
             needed: None,
+            pin: None,
+            on_backup: false,
             changed_ns: HouseNs::MIN,
             forced: Some(Reason::First),
         }
@@ -101,6 +108,12 @@ impl CrossingRecord {
 
     pub(crate) fn id(&self) -> &Id {
         &self.declaration.id
+    }
+
+    /// Clock of the source that the stream comes from.
+    pub(crate) fn source(&self) -> &Id {
+        let CrossingDeclaration { source, backup, .. } = &self.declaration;
+        backup.as_ref().filter(|_| self.on_backup).unwrap_or(source)
     }
 
     /// Brings the account up to `now`; tells if it had to be begun anew.
@@ -188,7 +201,7 @@ impl CrossingRecord {
         Outlook::new(&self.ledger, ends.target.clone(), &ends.source, &ends.sink)
     }
 
-    fn view<'a>(
+    pub(crate) fn view<'a>(
         &'a self,
         now: HouseNs,
         outlook: &'a Outlook<'a>,
@@ -269,7 +282,7 @@ impl CrossingRecord {
         let (id, role) = if ends.source.measured {
             (&self.declaration.sink, "sink")
         } else {
-            (&self.declaration.source, "source")
+            (self.source(), "source")
         };
         let reason = format!("the {role} {id} was never measured");
         Standing::new(CrossingState::Waiting, reason)

@@ -14,8 +14,8 @@ const OLDEST_LEVEL_NS: i64 = 60_000_000_000;
 impl Engine {
     /// The two ends of a crossing at `now`.
     pub(crate) fn ends(&self, crossing: &Id, now: HouseNs) -> Option<Ends> {
-        let declaration = &self.crossings.get(crossing)?.declaration;
-        let (source, sink) = (&declaration.source, &declaration.sink);
+        let record = self.crossings.get(crossing)?;
+        let (source, sink) = (record.source(), &record.declaration.sink);
         let rate = |id: &Id| {
             self.clocks
                 .get(id)
@@ -27,9 +27,22 @@ impl Engine {
         ))
     }
 
-    fn known_ends(&self, crossing: &Id, now: HouseNs) -> Result<Ends, Refusal> {
+    pub(crate) fn known_ends(&self, crossing: &Id, now: HouseNs) -> Result<Ends, Refusal> {
         let unknown = || Refusal::not_found("crossing", crossing, "a crossing that was declared");
         self.ends(crossing, now).ok_or_else(unknown)
+    }
+
+    /// Refuses what a follower cannot know: nobody is to run the settings of a trial.
+    fn check_on_air(&self, crossing: &Id) -> Result<(), Refusal> {
+        if self
+            .crossings
+            .get(crossing)
+            .is_some_and(|record| record.declaration.silent)
+        {
+            let accepted = "a crossing that is not silent: nobody runs the settings of a trial";
+            return Err(Refusal::precondition("crossing", crossing, accepted));
+        }
+        Ok(())
     }
 
     pub(crate) fn applied(
@@ -40,6 +53,7 @@ impl Engine {
         now: HouseNs,
     ) -> Result<(), Refusal> {
         let ends = self.known_ends(crossing, now)?;
+        self.check_on_air(crossing)?;
         let record = self
             .crossings
             .get_mut(crossing)
@@ -76,6 +90,7 @@ impl Engine {
         effects: &mut Effects,
     ) -> Result<(), Refusal> {
         let ends = self.known_ends(crossing, now)?;
+        self.check_on_air(crossing)?;
         check_level(level, deviation)?;
         let (oldest_ns, latest_ns) = (
             now.saturating_sub(OLDEST_LEVEL_NS),

@@ -197,6 +197,12 @@ impl View<'_> {
         (-phase / back_s).clamp(-limits.pitch, limits.pitch)
     }
 
+    /// True if the band of the phase error is in the tube now.
+    pub(crate) fn is_in_tube(&self) -> bool {
+        let band = self.outlook.phase.abs() + MARGIN_DEVIATIONS * self.outlook.deviation(0.0);
+        band <= self.limits(self.running_error).tube
+    }
+
     /// True if uncertainty alone fills the tube: there is nothing to plan with.
     fn is_blind(&self, limits: &Limits) -> bool {
         MARGIN_DEVIATIONS * self.outlook.deviation(0.0) > limits.tube

@@ -432,6 +432,14 @@ impl World {
         self.running[&id(name)].phase
     }
 
+    /// The stream of a crossing truly comes from this clock from now on.
+    pub fn comes_from(&mut self, name: &str, source: &str) {
+        self.advance_truth();
+        let source = self.device(source);
+        let running = self.running.get_mut(&id(name));
+        running.expect("the test has declared it").source = source;
+    }
+
     /// Clock time that a clock has truly gained on house time, s.
     pub fn gained_s(&mut self, name: &str) -> f64 {
         let device = self.device(name);
