@@ -5,8 +5,9 @@ use std::collections::{BTreeMap, BTreeSet};
 use ratewright_timing::{Estimate, State, compose, exact};
 use serde::{Deserialize, Serialize};
 
-use crate::link::{Lineage, LinkRecord, Restart};
-use crate::{ClockDeclaration, ClockEstimate, HouseNs, Id, Reference};
+use crate::link::{Lineage, LinkRecord, Reads, Restart};
+use crate::statistics::Statistics;
+use crate::{ClockDeclaration, ClockEstimate, ClockFault, HouseNs, Id, Reference};
 
 /// Longest chain of links from a clock to house time.
 pub(crate) const MAX_DEPTH: usize = 4;
@@ -31,6 +32,9 @@ pub(crate) struct ClockRecord {
     chosen: usize,
     /// State that was last told.
     pub(crate) state: State,
+    /// What is wrong with it.
+    pub(crate) fault: Option<Box<ClockFault>>,
+    pub(crate) statistics: Option<Box<Statistics>>,
     /// Crossings that use it.
     pub(crate) crossings: BTreeSet<Id>,
     /// Clocks that are measured against it.
@@ -67,6 +71,8 @@ impl ClockRecord {
             links: Vec::new(),
             chosen: 0,
             state,
+            fault: None,
+            statistics: None,
             crossings: BTreeSet::new(),
             referrers: BTreeSet::new(),
         }
@@ -109,6 +115,7 @@ impl Clocks {
         if changed {
             let dropped = std::mem::take(&mut record.links);
             record.chosen = 0;
+            record.fault = None;
             for link in dropped {
                 self.forget_referrer(&link.reference, &declaration.id);
             }
@@ -133,7 +140,8 @@ impl Clocks {
         }
     }
 
-    /// Looks again which link of a clock counts: that with the narrowest interval.
+    /// Looks again which link of a clock counts: that with the narrowest interval. Timestamps that
+    /// come from another clock never do.
     pub(crate) fn choose_link(&mut self, id: &Id, now: HouseNs) {
         let Some(record) = self.records.get(id) else {
             return;
@@ -141,7 +149,17 @@ impl Clocks {
         if record.links.len() < 2 {
             return;
         }
-        let width = |index: usize| self.by_link(&record.links[index], now, MAX_DEPTH);
+        let is_foreign = |link: &LinkRecord| {
+            link.reads == Reads::Timestamps
+                && matches!(
+                    record.fault.as_deref(),
+                    Some(ClockFault::ForeignTimestamps { .. })
+                )
+        };
+        let width = |index: usize| {
+            let link = Some(&record.links[index]).filter(|link| !is_foreign(link))?;
+            self.by_link(link, now, MAX_DEPTH)
+        };
         let widths: Vec<f64> = (0..record.links.len())
             .map(|index| {
                 width(index)
@@ -188,7 +206,7 @@ impl Clocks {
     }
 
     /// The estimate by one link, composed with that of its reference.
-    fn by_link(&self, link: &LinkRecord, now: HouseNs, depth: usize) -> Option<Traced> {
+    pub(crate) fn by_link(&self, link: &LinkRecord, now: HouseNs, depth: usize) -> Option<Traced> {
         let own = link.estimate(now);
         let Reference::Clock(host) = &link.reference else {
             return Some(Traced {
@@ -227,7 +245,7 @@ impl Clocks {
             reference: link.map(|link| link.reference.clone()),
             probe: link.map(|link| link.probe.clone()),
             measured,
-            fault: None,
+            fault: record.fault.as_deref().copied(),
         })
     }
 }

@@ -6,6 +6,7 @@ use crate::policy::standing::Standing;
 use crate::record::{Ends, Judgement};
 use crate::restraint::Restraint;
 use crate::schedule::Subject;
+use crate::statistics::kept;
 use crate::timeline::Timeline;
 use crate::{Effects, HouseNs, Id, Reason, Transition};
 use ratewright_timing::State;
@@ -24,6 +25,8 @@ struct Member {
 impl Engine {
     /// Tells a change of a clock's state, and chooses among its links.
     pub(crate) fn look_at_clock(&mut self, id: &Id, now: HouseNs, effects: &mut Effects) {
+        let fault = self.clocks.check_timestamps(id, now);
+        effects.transitions.extend(fault);
         self.clocks.choose_link(id, now);
         let Some(traced) = self.clocks.estimate(id, now) else {
             return;
@@ -31,6 +34,10 @@ impl Engine {
         let Some(record) = self.clocks.get_mut(id) else {
             return;
         };
+        let statistics = record.statistics.take();
+        if record.declaration.statistics {
+            record.statistics = kept(statistics, now, &traced);
+        }
         let to = traced.estimate.state;
         let from = std::mem::replace(&mut record.state, to);
         if from != to {

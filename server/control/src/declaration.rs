@@ -144,10 +144,6 @@ impl ClockDeclaration {
             let accepted = format!("0 if it is not known, up to {MAX_QUANTUM_NS} ns");
             return Err(Refusal::invalid("quantum_ns", self.quantum_ns, accepted));
         }
-        if self.statistics {
-            let accepted = "false: this version keeps no stability statistics";
-            return Err(Refusal::invalid("statistics", true, accepted));
-        }
         ratewright_timing::Link::new(self.link_config())
             .map(|_| ())
             .map_err(|e| Refusal::invalid(e.field, e.value, e.accepted))

@@ -9,6 +9,7 @@ use crate::clocks::Clocks;
 use crate::hand::Hand;
 use crate::record::CrossingRecord;
 use crate::schedule::{Schedule, Subject};
+use crate::sink_count::SinkCount;
 use crate::{Effects, Event, HouseNs, Id, Reading, Refusal};
 
 /// House times beyond ±2⁶² ns (146 years) count as that, so that differences fit 64 bits.
@@ -68,9 +69,14 @@ impl Engine {
                 epoch,
                 number,
                 house_ns,
-                ..
+                sink_sample,
             } => {
                 self.applied(crossing, (*epoch, *number), *house_ns, now)?;
+                let count = SinkCount {
+                    sample: *sink_sample,
+                    house_ns: *house_ns,
+                };
+                self.counted(crossing, count, now, &mut effects);
             }
             Event::Occupancy {
                 crossing,

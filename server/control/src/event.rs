@@ -53,7 +53,9 @@ pub enum Event {
         number: u64,
         /// House time of the effect, ns.
         house_ns: HouseNs,
-        /// The sink's sample count at that instant, as the follower counts.
+        /// The sink's sample count at that instant, as the follower counts; 0 if it does not. A
+        /// count that falls means that the sink began anew, and one that goes at another rate than
+        /// the sink's clock is a fault of that.
         sink_sample: u64,
     },
     /// The accountable follower has measured its buffer.

@@ -186,6 +186,7 @@ impl Engine {
         let hz = |id: &Id| Some(self.clocks.get(id)?.declaration.hz());
         let (source_hz, sink_hz) = (hz(record.source())?, hz(&record.declaration.sink)?);
         record.ledger.change_rates(now, source_hz, sink_hz);
+        record.sink_count = None;
         Some(Transition::Centred {
             crossing: id.clone(),
             phase_error_samples: 0.0,

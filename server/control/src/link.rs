@@ -1,6 +1,8 @@
 //! One link: a clock, read against one reference by one probe.
 
-use ratewright_timing::{Estimate, Event as TimingEvent, Link, Outcome, Refusal as Timing};
+use ratewright_timing::{
+    Estimate, Event as TimingEvent, Link, Measurement, Outcome, Refusal as Timing,
+};
 use serde::{Deserialize, Serialize};
 
 use crate::clocks::MAX_DEPTH;
@@ -28,6 +30,7 @@ const LATEST_NS: i64 = 10_000_000_000;
 pub(crate) struct LinkRecord {
     pub(crate) reference: Reference,
     pub(crate) probe: String,
+    pub(crate) reads: Reads,
     link: Link,
     /// Changes whenever the link's phase begins anew.
     pub(crate) lineage: u32,
@@ -42,6 +45,27 @@ pub(crate) struct LinkRecord {
     pub(crate) arrived_ns: HouseNs,
     /// Reference time minus house time, from the readings that were under way the least.
     offset_ns: i64,
+}
+
+/// What of a clock a link reads; it takes one kind of measurement only.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
+pub(crate) enum Reads {
+    /// Samples as they are delivered, counted.
+    Samples,
+    /// Timestamps that the sender writes.
+    Timestamps,
+    /// Its time or its drift.
+    Time,
+}
+
+impl Reads {
+    fn of(measurement: &Measurement) -> Self {
+        match measurement {
+            Measurement::Counter { .. } => Reads::Samples,
+            Measurement::SenderReport { .. } => Reads::Timestamps,
+            Measurement::Exchange { .. } | Measurement::Frequency { .. } => Reads::Time,
+        }
+    }
 }
 
 /// A link's phase began anew: readings fitted up to one house time, and did not from another on.
@@ -85,6 +109,7 @@ impl LinkRecord {
         let mut record = LinkRecord {
             reference: reading.reference.clone(),
             probe: reading.probe.clone(),
+            reads: Reads::of(&reading.measurement),
             link: fresh(declaration),
             lineage,
             restart: None,

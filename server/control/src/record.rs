@@ -12,6 +12,7 @@ use crate::policy::outlook::Outlook;
 use crate::policy::realise::{block_inputs, error_of};
 use crate::policy::standing::Standing;
 use crate::policy::{TUBE, pitch_limit};
+use crate::sink_count::SinkCount;
 use crate::target::Target;
 use crate::{
     ClockDeclaration, CrossingDeclaration, CrossingState, HouseNs, Id, Pin, Reason, Setting,
@@ -42,6 +43,8 @@ pub(crate) struct CrossingRecord {
     pub(crate) needed: Option<Box<Bounds>>,
     /// Who pinned it, if it is pinned.
     pub(crate) pin: Option<Box<Pin>>,
+    /// The sink's count as its follower said it last.
+    pub(crate) sink_count: Option<SinkCount>,
     /// True if the stream comes from the backup source.
     pub(crate) on_backup: bool,
     /// When what is run was changed last: the effect of that setting.
@@ -100,6 +103,7 @@ impl CrossingRecord {
             reason: "declared".to_owned(),
             needed: None,
             pin: None,
+            sink_count: None,
             on_backup: false,
             changed_ns: HouseNs::MIN,
             forced: Some(Reason::First),

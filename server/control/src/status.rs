@@ -85,6 +85,15 @@ pub enum ClockFault {
         /// Standard deviation of their difference.
         deviation: f64,
     },
+    /// A follower that plays out at it counts its samples at another rate than its readings say.
+    CountedOtherwise {
+        /// Drift by the follower's count, dimensionless.
+        counted: f64,
+        /// Drift by its readings, dimensionless.
+        estimated: f64,
+        /// Standard deviation of their difference.
+        deviation: f64,
+    },
 }
 
 impl fmt::Display for ClockFault {
@@ -101,6 +110,19 @@ impl fmt::Display for ClockFault {
                 timestamps * 1e6,
                 samples * 1e6,
                 (timestamps - samples).abs() * 1e6,
+                deviation * 1e6
+            ),
+            ClockFault::CountedOtherwise {
+                counted,
+                estimated,
+                deviation,
+            } => write!(
+                f,
+                "a follower counts its samples at {:+.4} ppm, and its readings say {:+.4} ppm, {:.4} ± {:.4} ppm \
+                 apart",
+                counted * 1e6,
+                estimated * 1e6,
+                (counted - estimated).abs() * 1e6,
                 deviation * 1e6
             ),
         }
