@@ -200,6 +200,12 @@ fn clocks() {
         "129 bytes",
     );
     refused(
+        declare(&|c| c.quantum_ns = SECOND + 1),
+        Invalid,
+        "quantum_ns",
+        "1000000001",
+    );
+    refused(
         Event::DeleteClock(id("nobody")),
         NotFound,
         "clock",
@@ -252,6 +258,29 @@ fn crossings() {
         "review_horizon_ns",
         "1",
     );
+    refused(
+        declare(&|c| c.least_hold_ns = 3_600 * SECOND + 1),
+        Invalid,
+        "least_hold_ns",
+        "3600000000001",
+    );
+    for limit in [0.0, 0.09, 1000.1, f64::NAN] {
+        let text = limit.to_string();
+        refused(
+            declare(&|c| c.pitch_limit_ppm = limit),
+            Invalid,
+            "pitch_limit_ppm",
+            &text,
+        );
+    }
+    for (backup, kind) in [("desk", Invalid), ("house", Invalid), ("nobody", NotFound)] {
+        refused(
+            declare(&|c| c.backup = Some(id(backup))),
+            kind,
+            "backup",
+            backup,
+        );
+    }
     refused(Event::DeleteCrossing(id("y")), NotFound, "crossing", "y");
 }
 
