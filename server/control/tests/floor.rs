@@ -3,7 +3,7 @@
 mod world;
 
 use ratewright_control::{
-    CrossingDeclaration, CrossingState, CrossingStatus, Event, Reason, Setting,
+    CrossingDeclaration, CrossingState, CrossingStatus, Event, Reason, Setting, explain,
 };
 use ratewright_ratio::Bounds;
 use ratewright_timing::sim::{ClockModel, Delay, Disturbance, Upset};
@@ -62,6 +62,38 @@ fn no_two_changes_are_nearer_than_the_floor() {
     assert!(shortest(&held) >= floor_ns, "{} ns", shortest(&held));
     // Renewals do not count, and go on.
     assert!(held.iter().any(|setting| setting.reason == Reason::Renewal));
+}
+
+#[test]
+fn the_longest_floor_of_a_group_holds_for_all_of_it() {
+    let floor_ns = 300 * SECOND;
+    let member = |name: &str, least_hold_ns| CrossingDeclaration {
+        id: id(name),
+        headroom_samples: 0.5,
+        group: Some(id("pair")),
+        least_hold_ns,
+        ..crossing("x", "desk", "house")
+    };
+    let mut world = facility(crystal(8e-6, 1e-9), member("x", 0));
+    world.cross(member("y", floor_ns));
+    world.run_until(HOUR);
+    for name in ["x", "y"] {
+        // A newcomer begins by itself: the first of the changes that both make is the second.
+        let settings = &world.tally(name).settings;
+        let made = changes(settings);
+        assert!(made.len() > 3, "{name} changes");
+        let least = made.windows(2).map(|pair| pair[1] - pair[0]).min();
+        assert!(least >= Some(floor_ns), "{name}: {least:?}");
+    }
+    let told = explain(
+        world.tally("y").settings.last().expect("settings"),
+        &member("y", floor_ns),
+    );
+    assert!(
+        told.iter()
+            .any(|line| line.starts_with("Nothing else is run before 300.0 s after its effect")),
+        "{told:?}"
+    );
 }
 
 #[test]

@@ -4,7 +4,7 @@ mod world;
 
 use ratewright_control::{
     Act, ActKind, CrossingDeclaration, CrossingState, CrossingStatus, Event, Reason, RefusalKind,
-    Transition,
+    Transition, explain,
 };
 use ratewright_ratio::Bounds;
 use ratewright_timing::sim::{ClockModel, Delay, Disturbance, Upset};
@@ -198,6 +198,11 @@ fn a_trial_decides_and_records_and_begins_anew_when_it_goes_on_air() {
     let settings = world.tally("x").settings.clone();
     assert!(settings.len() > 5 && settings.iter().all(|setting| setting.silent));
     let newest = settings.last().expect("settings").clone();
+    let told = explain(&newest, world.engine.crossing(&id("x")).expect("declared"));
+    assert_eq!(
+        told.last().map(String::as_str),
+        Some("It is a trial for the record: nobody is told of it.")
+    );
     let applied = Event::Applied {
         crossing: id("x"),
         epoch: newest.epoch,

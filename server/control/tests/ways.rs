@@ -5,7 +5,8 @@ mod world;
 
 use num_rational::Ratio;
 use ratewright_control::{
-    CrossingDeclaration, CrossingState, CrossingStatus, Event, Realisation, Realised, explain,
+    CrossingDeclaration, CrossingState, CrossingStatus, Event, Realisation, Realised, Setting,
+    explain,
 };
 use ratewright_ratio::{Bounds, Certificate, CertificateError, Lazy, target_from_f64};
 use ratewright_timing::sim::Delay;
@@ -196,6 +197,82 @@ fn a_setting_does_not_verify_for_another_table_or_with_another_proof() {
         forged.verify(&own),
         Err(CertificateError::OtherAnswer { .. })
     ));
+}
+
+/// Runs what the settings say, so many steps of each, with the running error carried over, and
+/// gives the largest one there was.
+fn largest_running_error(settings: &[Setting], steps: usize) -> f64 {
+    let size = |error: Ratio<i128>| (*error.numer() as f64 / *error.denom() as f64).abs();
+    let (mut error, mut largest) = (Ratio::from_integer(0), 0.0_f64);
+    let carried = "what is carried is within what the one before may err by";
+    for setting in settings {
+        match setting.realised {
+            Realised::Single(_) => {}
+            Realised::Cadence(cadence) => {
+                let mut state = cadence.start_from(error).expect(carried);
+                for _ in 0..steps {
+                    state.next_block();
+                    largest = largest.max(size(state.error_outputs()));
+                }
+                error = state.error_outputs();
+            }
+            Realised::Stepping(stepping) => {
+                // One exact advance moves no error: it stays as it is.
+                let is_exact = stepping.advances().0 == stepping.advances().1;
+                let (mut state, kept) = if is_exact {
+                    (stepping.start(), error)
+                } else {
+                    let state = stepping.start_from(error).expect(carried);
+                    (state, Ratio::from_integer(0))
+                };
+                for _ in 0..steps {
+                    state.next_output();
+                    largest = largest.max(size(kept + state.error_outputs()));
+                }
+                error = kept + state.error_outputs();
+            }
+            Realised::Lazy {
+                cadence,
+                swing_samples,
+            } => {
+                let swing = target_from_f64(swing_samples).expect("a positive number");
+                let lazy = Lazy::new(cadence, &swing).expect("wide enough for the pair");
+                let mut state = lazy.start_from(error).expect(carried);
+                for _ in 0..steps {
+                    state.next_block();
+                    largest = largest.max(size(state.error_outputs()));
+                }
+                error = state.error_outputs();
+            }
+        }
+    }
+    largest
+}
+
+#[test]
+fn what_is_run_errs_by_no_more_than_the_tube_leaves_for_it() {
+    // From setting to setting, as a follower runs them: half a phase and half a phase carried
+    // over, the swing, or half a block; and what is rounded when it is carried over.
+    for (realisation, bound, headroom, budget) in [
+        (Realisation::Stepping, 16, 0.5, 1.0001 / 16.0),
+        (Realisation::Stepping, 1024, 0.5, 1.0001 / 1024.0),
+        (Realisation::Lazy, 1024, 16.0, 4.0013),
+        (Realisation::Cadence, 1024, 4.0, 0.5013),
+    ] {
+        let mut world = desk(48_000, 37.3e-6, way(realisation, bound, headroom));
+        world.run_until(3 * HOUR);
+        let settings = &world.tally("x").settings;
+        assert!(settings.len() > 8, "{} settings", settings.len());
+        let largest = largest_running_error(settings, 4_000);
+        assert!(
+            largest <= budget,
+            "{realisation:?} within {bound}: {largest} of {budget}"
+        );
+        assert!(
+            largest > 0.3 * budget,
+            "{realisation:?} within {bound}: {largest} of {budget} is no test"
+        );
+    }
 }
 
 #[test]
