@@ -44,11 +44,7 @@ pub struct Best {
 /// ```
 pub fn best(target: &Exact, bounds: &Bounds) -> Best {
     if bounds.largest_prime().is_none()
-        && narrow::fits(bounds)
-        && let (Ok(n), Ok(d)) = (
-            u64::try_from(*target.numer()),
-            u64::try_from(*target.denom()),
-        )
+        && let Some((n, d)) = narrow::parts(target, bounds)
     {
         return narrow::best(n, d, bounds);
     }
@@ -102,10 +98,10 @@ pub fn neighbours(target: &Exact, bounds: &Bounds) -> Bracket {
     if !narrow::fits(bounds) {
         return bracket::find(target, bounds);
     }
-    // The leading 64 bits of a wide target nearly always lead to the same bracket, which one exact look
+    // The leading 63 bits of a wide target nearly always lead to the same bracket, which one exact look
     // confirms: what makes a bracket does not depend on the target but that it lies between the ends.
     let (n, d) = (*target.numer(), *target.denom());
-    let shift = 64u32.saturating_sub((n | d).leading_zeros());
+    let shift = (128 - narrow::WIDTH).saturating_sub((n | d).leading_zeros());
     let bracket = narrow::find((n >> shift) as u64, (d >> shift) as u64, bounds);
     if shift == 0 || bracket.encloses(target) {
         bracket

@@ -17,6 +17,7 @@ use std::hint::select_unpredictable;
 
 use crate::bounds::MAX_BOUND;
 use crate::bracket::Node;
+use crate::narrow::{after, divide};
 use crate::{Certificate, Fraction, Interval};
 use serde::{Deserialize, Serialize};
 
@@ -71,13 +72,47 @@ pub fn simplest(interval: &Interval) -> Option<Simplest> {
 /// The parents of the simplest fraction between n1/d1 and n2/d2, parts below 2^62, ends in the interval as
 /// flagged. Nothing overflows: no convergent on the way is larger than the answer, and the answer is at most
 /// the mediant of the ends.
-fn narrow_search(
+fn narrow_search(low: [u64; 2], high: [u64; 2], closed: (bool, bool)) -> Parents {
+    let (mut old, mut new) = (Node::ZERO, Node::INFINITY);
+    let mut new_above = true;
+    // Quotients that both ends share are those of the lower end alone: the other end has the same one if that
+    // leaves it a proper rest, which takes no division. Each division then waits for nothing but the last one.
+    let ([mut x, mut y], [mut u, mut v]) = (low, high);
+    loop {
+        let (whole, rest) = divide(x, y);
+        let taken = u128::from(whole) * u128::from(v);
+        let other_rest = u128::from(u).wrapping_sub(taken);
+        let is_proper = (other_rest.wrapping_sub(1) < u128::from(v - 1)) & (rest != 0);
+        if !is_proper {
+            break;
+        }
+        (old, new) = (new, after(old, whole, new));
+        ([x, y], [u, v]) = ([y, rest], [v, other_rest as u64]);
+        new_above = !new_above;
+    }
+    let state = State { old, new, new_above };
+    if new_above {
+        end_of_search(state, [x, y], [u, v], closed)
+    } else {
+        end_of_search(state, [u, v], [x, y], (closed.1, closed.0))
+    }
+}
+
+/// The last two convergents, and on which side the newer one is.
+struct State {
+    old: Node,
+    new: Node,
+    new_above: bool,
+}
+
+/// The same from any state of the search; nearly always, this is its last step.
+#[inline(always)]
+fn end_of_search(
+    State { mut old, mut new, mut new_above }: State,
     [mut n1, mut d1]: [u64; 2],
     [mut n2, mut d2]: [u64; 2],
     (mut low_closed, mut high_closed): (bool, bool),
 ) -> Parents {
-    let (mut old, mut new) = (Node::ZERO, Node::INFINITY);
-    let mut new_above = true;
     loop {
         let whole = n1 / d1;
         let (rest1, rest2) = (n1 - whole * d1, n2 - whole * d2);
