@@ -182,9 +182,7 @@ impl Certificate {
                 side: Side::Either,
             },
         ) = (self, claim)
-            && let Ok(n) = u64::try_from(*target.numer())
-            && let Ok(whole) = u64::try_from(*target.denom())
-            && narrow_nearest(bracket, ratio, n, whole, region)
+            && narrow_nearest(bracket, ratio, target, region)
         {
             return Ok(());
         }
@@ -276,31 +274,38 @@ fn verify_bracket(
     Ok(())
 }
 
-/// The common case in one machine word a product: parts below 2^31, a target n/`whole` of 64 bits, both ends
-/// finite, no tie. False decides nothing.
+/// The common case in one machine word a product: parts below 2^31, a target n/D of 64 bits, both ends finite,
+/// no tie. False decides nothing.
+///
+/// With the determinant 1 the distances e = n·b − a·D and f = c·D − n·d have e·d + f·b = D. So the target is
+/// between the ends iff 0 ≤ e·d ≤ D, and the lower end is the nearer one iff e·d < D − e·d.
 #[inline]
-fn narrow_nearest(
-    bracket: &Bracket,
-    ratio: &Fraction,
-    n: u64,
-    whole: u64,
-    region: &Region,
-) -> bool {
+fn narrow_nearest(bracket: &Bracket, ratio: &Fraction, target: &Exact, region: &Region) -> bool {
     let (Node { l: a, m: b }, Node { l: c, m: d }) = (bracket.below, bracket.above);
+    let (Ok(n), Ok(whole)) = (
+        u64::try_from(*target.numer()),
+        u64::try_from(*target.denom()),
+    ) else {
+        return false;
+    };
     if (a | b | c | d) >= 1 << 31 || b * c != a * d + 1 || a == 0 || d == 0 {
         return false;
     }
-    let product = |x: u64, y: u64| i128::from(x) * i128::from(y);
-    let from_below = product(n, b) - product(whole, a);
-    let to_above = product(whole, c) - product(n, d);
-    let is_bracket = (from_below >= 0) & (to_above >= 0) & region.separates((a, b), (c, d));
-    // Then from_below·d + to_above·b = D, so both fit 64 bits.
-    let low = (from_below as u64).wrapping_mul(d);
-    let high = (to_above as u64).wrapping_mul(b);
+    let product = |x: u64, y: u64| u128::from(x) * u128::from(y);
+    let Ok(from_below) = u64::try_from(product(n, b).wrapping_sub(product(whole, a))) else {
+        return false;
+    };
+    let Some(high) = from_below.checked_mul(d).and_then(|low| whole.checked_sub(low)) else {
+        return false;
+    };
+    let low = whole - high;
     // No branch: which end is nearer is as good as random.
     let l = select_unpredictable(low < high, a, c);
     let m = select_unpredictable(low < high, b, d);
-    is_bracket & (low != high) & (*ratio.numer() == l) & (*ratio.denom() == m)
+    region.separates((a, b), (c, d))
+        & (low != high)
+        & (*ratio.numer() == l)
+        & (*ratio.denom() == m)
 }
 
 fn verify_nearest(

@@ -159,13 +159,17 @@ fn quotient((l, m): (u32, u32)) -> f64 {
 /// A target as a double, within a part of 2^-51.
 #[inline]
 fn value(target: &Exact) -> f64 {
-    match (
-        u64::try_from(*target.numer()),
-        u64::try_from(*target.denom()),
-    ) {
-        (Ok(n), Ok(d)) => n as f64 / d as f64,
-        _ => *target.numer() as f64 / *target.denom() as f64,
+    let (n, d) = (*target.numer(), *target.denom());
+    if (n | d) >> 63 != 0 {
+        return n as f64 / d as f64;
     }
+    // Signed integers become doubles in one step. The inverse of a power of two, the D of a double, is exact.
+    let (n, d) = (n as i64, d as u64);
+    if d.is_power_of_two() {
+        let inverse = f64::from_bits(u64::from(1023 - d.trailing_zeros()) << 52);
+        return n as f64 * inverse;
+    }
+    n as f64 / d as i64 as f64
 }
 
 /// All reduced ratios of the band with allowed parts, in no order.
