@@ -295,17 +295,17 @@ fn narrow_nearest(bracket: &Bracket, ratio: &Fraction, target: &Exact, region: &
     let Ok(from_below) = u64::try_from(product(n, b).wrapping_sub(product(whole, a))) else {
         return false;
     };
-    let Some(high) = from_below.checked_mul(d).and_then(|low| whole.checked_sub(low)) else {
+    let Some(high) = from_below
+        .checked_mul(d)
+        .and_then(|low| whole.checked_sub(low))
+    else {
         return false;
     };
     let low = whole - high;
     // No branch: which end is nearer is as good as random.
     let l = select_unpredictable(low < high, a, c);
     let m = select_unpredictable(low < high, b, d);
-    region.separates((a, b), (c, d))
-        & (low != high)
-        & (*ratio.numer() == l)
-        & (*ratio.denom() == m)
+    region.separates((a, b), (c, d)) & (low != high) & (*ratio.numer() == l) & (*ratio.denom() == m)
 }
 
 fn verify_nearest(

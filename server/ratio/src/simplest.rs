@@ -90,7 +90,11 @@ fn narrow_search(low: [u64; 2], high: [u64; 2], closed: (bool, bool)) -> Parents
         ([x, y], [u, v]) = ([y, rest], [v, other_rest as u64]);
         new_above = !new_above;
     }
-    let state = State { old, new, new_above };
+    let state = State {
+        old,
+        new,
+        new_above,
+    };
     if new_above {
         end_of_search(state, [x, y], [u, v], closed)
     } else {
@@ -108,7 +112,11 @@ struct State {
 /// The same from any state of the search; nearly always, this is its last step.
 #[inline(always)]
 fn end_of_search(
-    State { mut old, mut new, mut new_above }: State,
+    State {
+        mut old,
+        mut new,
+        mut new_above,
+    }: State,
     [mut n1, mut d1]: [u64; 2],
     [mut n2, mut d2]: [u64; 2],
     (mut low_closed, mut high_closed): (bool, bool),

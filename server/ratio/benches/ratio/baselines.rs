@@ -33,22 +33,22 @@ pub(crate) fn chain_with_end(target: &Exact, bounds: &Bounds) -> u64 {
     sum.wrapping_add(d)
 }
 
-/// The same for both ends of an interval: it ends where an integer is between them. The quotients are those of the
-/// lower end, and every second division waits for a product and a difference of the one before.
+/// The same for an interval: the chain of the lower end for as long as the other end has the same quotients, which a
+/// product and a difference tell of each, and one division where they part.
 #[inline(never)]
 pub(crate) fn chain_of_interval(interval: &Interval) -> u64 {
     let part = |x: &u128| *x as u64;
     let (mut n, mut d) = (part(interval.lo().numer()), part(interval.lo().denom()));
-    let (mut high_n, mut high_d) = (part(interval.hi().numer()), part(interval.hi().denom()));
+    let (mut other_n, mut other_d) = (part(interval.hi().numer()), part(interval.hi().denom()));
     let mut sum = 0u64;
     loop {
-        let quotient = n / d;
-        let (rest, high_rest) = (n % d, high_n - quotient * high_d);
+        let (quotient, rest) = (n / d, n % d);
         sum = sum.wrapping_add(quotient);
-        if (rest == 0) | (high_rest >= high_d) {
-            return sum;
+        let other_rest = other_n.wrapping_sub(quotient.wrapping_mul(other_d));
+        if (rest == 0) | (other_rest >= other_d) {
+            return sum.wrapping_add(other_n / other_d);
         }
-        (n, d, high_n, high_d) = (high_d, high_rest, d, rest);
+        (n, d, other_n, other_d) = (d, rest, other_d, other_rest);
     }
 }
 
