@@ -5,8 +5,13 @@
 //! nest, so the finest grid on which that L is within the bound holds the nearest, or the next one, where L is
 //! held at its bound; a tie's other side is on the grid before.
 //!
+//! **Proof.** |t − L/M| = |t·M − L|/M with M fixed, so the nearest integer to t·M is wanted. L/2^i is 2L/2^(i+1),
+//! so each grid holds the coarser ones. ∎
+//!
 //! **Cost.** One division while n·M fits 64 bits; else a binary search with one product a step.
 //! **Check.** [`is_nearest_for_m`] needs two comparisons of products.
+//!
+//! **Corner cases.** A target below 1/(2M) gives L = 1, never 0. L/M is not in lowest terms when M is fixed.
 
 use crate::nearest::nearer_of;
 use crate::wide::Wide;

@@ -1,4 +1,14 @@
 //! The bounds of a filter bank: how large L and M may be.
+//!
+//! L is the number of filter phases and M the input samples of a block, so both are bounded by memory and by
+//! delay. The pairs within bounds of L and M alone are *down-closed*: with a pair they hold every smaller pair, which
+//! is all that the [bracket theorem](crate::bracket) asks for. With a largest prime factor they are not (with 3, 8/1 is
+//! allowed and 7/1 is not), and [`crate::smooth`] serves them.
+//!
+//! **Cost.** A comparison each; a largest prime factor is checked by trial division, at most √n steps.
+//!
+//! **Corner cases.** 1/1 is within all bounds. A bound is at most 2^63 − 1, so that the mediant of two ratios always
+//! fits 64 bits.
 
 use serde::{Deserialize, Serialize};
 use thiserror::Error;
@@ -53,6 +63,17 @@ impl Bounds {
     ///
     /// # Errors
     /// [`BoundsError::OutOfRange`] names the bound that is not.
+    ///
+    /// # Examples
+    /// ```
+    /// use ratewright_ratio::{Bounds, Fraction};
+    /// let bounds = Bounds::new(256, 128)?;
+    /// assert!(bounds.allow(&Fraction::new(160, 127)) && !bounds.allow(&Fraction::new(160, 147)));
+    /// // 147 = 3·7·7, but 127 is a prime.
+    /// let bounds = Bounds::new(256, 256)?.with_largest_prime(7)?;
+    /// assert!(bounds.allow(&Fraction::new(160, 147)) && !bounds.allow(&Fraction::new(160, 127)));
+    /// # Ok::<(), ratewright_ratio::BoundsError>(())
+    /// ```
     pub fn new(max_l: u64, max_m: u64) -> Result<Self, BoundsError> {
         for (field, value) in [("max_l", max_l), ("max_m", max_m)] {
             if !(1..=MAX_BOUND).contains(&value) {

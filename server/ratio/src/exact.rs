@@ -2,6 +2,13 @@
 //!
 //! A target is the ratio of two true rates. The crate takes it as an exact fraction, because "nearest" and
 //! "equal" are only then well defined: a double is read as the dyadic fraction that it is, never rounded again.
+//!
+//! **Sign.** residual = (L/M)/target − 1, formed in integers, so that its sign is exact and a 0.0 means equal.
+//!
+//! **Cost.** Shifts for a double; a greatest common divisor for two rates; four products for a residual.
+//!
+//! **Corner cases.** NaN, infinities, zero and negative numbers are refused. Subnormals and other doubles beyond 128
+//! bits are refused here and served by [`crate::big`]. Fractions need not be in lowest terms.
 
 use num_integer::Integer;
 use num_rational::Ratio;

@@ -6,6 +6,9 @@
 //! **Theorem.** Rounding to nearest keeps |cum(k) − k·S/F| ≤ 1/2 sample, floor and ceiling below 1, and every
 //! frame takes ⌊S/F⌋ or ⌈S/F⌉ samples. All three give the same sum, in another order.
 //!
+//! **Proof.** The first is what rounding means. cum(k) = ⌊k·S/F + c⌋ with a c from 0 to below 1 for each way, and
+//! ⌊x + S/F⌋ − ⌊x⌋ is ⌊S/F⌋ or ⌈S/F⌉ for every x. cum(F) = S whatever c is. ∎
+//!
 //! **The broadcast order.** SMPTE 272M's audio frame sequences at 29.97 frames a second are the nearest
 //! rounding at 48 kHz (5 frames) and 32 kHz (15 frames). At 44.1 kHz (100 frames) its table is another one:
 //! 1472 and 1471 in turn, with 1471 also in frames 23, 47 and 71 counted from 1.

@@ -1,4 +1,12 @@
 //! Intervals of ratios with exact ends, each closed or open.
+//!
+//! An interval is what is known of a target: bounds of two drifts give it, and [`mod@crate::simplest`] finds the
+//! ratio to hold inside it.
+//!
+//! **Cost.** Two comparisons of products, in 64-bit words while the ends fit them.
+//!
+//! **Corner cases.** One point is an interval if both ends are closed. Zero may be an open lower end, but is never
+//! inside: it is no ratio.
 
 use serde::{Deserialize, Serialize};
 use thiserror::Error;
@@ -69,6 +77,16 @@ impl Interval {
     ///
     /// # Errors
     /// [`IntervalError`] if it is empty, holds zero, or an end is not finite.
+    ///
+    /// # Examples
+    /// ```
+    /// use ratewright_ratio::{Ends, Exact, Fraction, Interval};
+    /// let (lo, hi) = (Exact::new(1, 2), Exact::new(2, 1));
+    /// let interval = Interval::new(lo, hi, Ends::HighOpen)?;
+    /// assert!(interval.contains(&Fraction::new(1, 2)) && !interval.contains(&Fraction::new(2, 1)));
+    /// assert!(Interval::new(lo, lo, Ends::Open).is_err() && Interval::closed(lo, lo).is_ok());
+    /// # Ok::<(), ratewright_ratio::IntervalError>(())
+    /// ```
     pub fn new(lo: Exact, hi: Exact, ends: Ends) -> Result<Self, IntervalError> {
         for (field, end) in [("lo", lo), ("hi", hi)] {
             if *end.denom() == 0 {

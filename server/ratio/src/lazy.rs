@@ -6,7 +6,12 @@
 //! `f_in·(t − r₀)(r₁ − t)/(E(r₁ − r₀))` changes a second between r₀ and r₁, for E well above one block's error.
 //! From outside, each block takes the choice that leaves the smaller |e|, so it returns at the fastest rate.
 //!
+//! **Sign.** As in [`crate::cadence`]: outputs made − outputs wanted, so a high block adds.
+//!
 //! **Cost.** One addition and one comparison a block.
+//!
+//! **Corner cases.** A headroom below the bound of the balanced cadence is refused, as no order of the blocks keeps
+//! it. The number of changes is an estimate: a hold ends at the last whole block within the headroom.
 
 use num_rational::Ratio;
 use serde::{Deserialize, Serialize};

@@ -6,6 +6,8 @@
 //!
 //! The same scaling turns the [ladder](mod@crate::ladder) of the smaller problem into that of the multiples.
 //!
+//! **Cost.** The search in the box.
+//!
 //! **Corner case.** L/M need not be in lowest terms then: 320/294 is an answer for multiples of 320.
 //! Ties go to the smaller M, then the smaller L.
 

@@ -1,4 +1,9 @@
-//! Reading rates from text.
+//! Reading rates and targets from text, exactly: 44.1k is 44100 Hz, and 0.1 is 1/10.
+//!
+//! **Cost.** A greatest common divisor.
+//!
+//! **Corner cases.** Decimal digits are taken as they stand, never by way of a double. What does not fit the
+//! exact type is refused, as are signs, zero and denominators of zero.
 
 use num_integer::Integer;
 use num_rational::Ratio;

@@ -1,7 +1,13 @@
 //! Down-closed sets of (L, M): with a pair they hold every smaller pair.
 //!
 //! The bracket theorem (see [`crate::bracket`]) needs nothing else of a constraint, so one search and one
-//! verifier serve all three shapes.
+//! verifier serve all three shapes: a box, L·M up to a limit, and
+//! a weighted sum. Each limit does not fall when L or M grows, so a smaller pair keeps it too.
+//!
+//! **Cost.** Up to two products a look. A run of the search takes two divisions in the box; elsewhere it gallops, with
+//! O(log j) looks for a run of j.
+//!
+//! **Corner case.** A product beyond 64 bits is outside, as every limit is below 2^63.
 
 use serde::{Deserialize, Serialize};
 use thiserror::Error;
@@ -59,6 +65,14 @@ impl Region {
     ///
     /// # Errors
     /// [`RegionError::OutOfRange`] unless 1 ≤ `max_product` ≤ [`MAX_BOUND`].
+    ///
+    /// # Examples
+    /// ```
+    /// use ratewright_ratio::Region;
+    /// let region = Region::product(1_000)?;
+    /// assert!(region.contains(25, 40) && !region.contains(26, 40));
+    /// # Ok::<(), ratewright_ratio::RegionError>(())
+    /// ```
     pub fn product(max_product: u64) -> Result<Self, RegionError> {
         check("max_product", max_product)?;
         Ok(Self(Shape::Product { max_product }))

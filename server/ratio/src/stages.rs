@@ -11,6 +11,8 @@
 //! **Method.** Dynamic programming over (l used, m used), divisors of L and M: [`least_work`] keeps one plan a
 //! state and number of stages, [`front`] keeps all that nothing else beats.
 //!
+//! **Cost.** 20 to 100 µs for the least work of the standard pairs, about ten times that for the whole front.
+//!
 //! **Corner cases.** A prime L and M leave one stage. Near 1 stages save memory, but never multiply-adds.
 
 use serde::{Deserialize, Serialize};

@@ -10,6 +10,8 @@
 //! **Theorem.** max |e| ≤ t/(2L) output samples, since the phase is at most half a phase off. For equal memory
 //! (L = a + c coefficients sets) that is below the bound of a block-end cadence.
 //!
+//! **Cost.** One comparison and one addition an output.
+//!
 //! **Corner cases.** The advance is at least 1, so t is at most L. If n divides L·D one advance is exact.
 
 use num_integer::Integer;
