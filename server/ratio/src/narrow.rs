@@ -75,12 +75,10 @@ fn descend(n: u64, d: u64, bounds: &Bounds) -> Ends<u64> {
 #[inline(always)]
 pub(crate) fn divide(x: u64, y: u64) -> (u64, u64) {
     if y.is_power_of_two() {
-        (x >> y.trailing_zeros(), x & (y - 1))
-    } else if y == 0 {
-        (u64::MAX, 0)
-    } else {
-        (x / y, x % y)
+        return (x >> y.trailing_zeros(), x & (y - 1));
     }
+    x.checked_div(y)
+        .map_or((u64::MAX, 0), |quotient| (quotient, x % y))
 }
 
 /// `old + run·new` by components.
