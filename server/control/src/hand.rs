@@ -175,17 +175,21 @@ impl Engine {
         }
     }
 
-    /// The account of a crossing begins anew between the clocks that it has now.
+    /// The account of a crossing begins anew between the clocks that it has now: with the next
+    /// setting, if one is due that may be made, as what runs until then is for another stream.
     pub(crate) fn centre_anew(
         &mut self,
         id: &Id,
         now: HouseNs,
         reason: String,
     ) -> Option<Transition> {
+        let is_pinned = self.check_unpinned(id).is_err();
         let record = self.crossings.get_mut(id)?;
         let hz = |id: &Id| Some(self.clocks.get(id)?.declaration.hz());
-        let (source_hz, sink_hz) = (hz(record.source())?, hz(&record.declaration.sink)?);
-        record.ledger.change_rates(now, source_hz, sink_hz);
+        let hz = (hz(record.source())?, hz(&record.declaration.sink)?);
+        let is_due = record.forced.is_some() && !is_pinned;
+        let next = is_due.then_some(record.last_number + 1);
+        record.ledger.begin_anew(now, hz, next);
         record.sink_count = None;
         Some(Transition::Centred {
             crossing: id.clone(),

@@ -114,9 +114,13 @@ impl Ledger {
         self.source.hand_over(now);
     }
 
-    /// Takes other nominal rates, Hz: the account begins anew.
-    pub(crate) fn change_rates(&mut self, now: HouseNs, source_hz: f64, sink_hz: f64) {
-        (self.source_hz, self.sink_hz) = (source_hz, sink_hz);
+    /// Begins anew between these nominal rates, Hz: with the effect of the setting of a number, which
+    /// is to come, or else now.
+    pub(crate) fn begin_anew(&mut self, now: HouseNs, hz: (f64, f64), with: Option<u64>) {
+        (self.source_hz, self.sink_hz) = hz;
+        if let Some(number) = with {
+            self.timeline.begin_with(number);
+        }
         self.centre(now, 0.0, 0.0);
     }
 

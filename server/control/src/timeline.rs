@@ -30,10 +30,12 @@ pub(crate) struct Stretch {
     pub(crate) to_ns: HouseNs,
 }
 
-/// The last settings, in the order of their effect; before the first nothing runs.
+/// The last settings, in the order of their effect; before the first that counts nothing runs.
 #[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub(crate) struct Timeline {
     entries: Vec<Entry>,
+    /// Settings below this number were for another stream. Their followers may still report them.
+    counts_from: u64,
 }
 
 /// A correction of when a setting took effect: `after` instead of `before` between two instants.
@@ -61,6 +63,19 @@ impl Timeline {
         self.entries.push(entry);
     }
 
+    /// The stream begins anew with the setting of this number.
+    pub(crate) fn begin_with(&mut self, number: u64) {
+        self.counts_from = number;
+    }
+
+    /// The settings of this stream.
+    fn counting(&self) -> &[Entry] {
+        let before = self
+            .entries
+            .partition_point(|entry| entry.number < self.counts_from);
+        &self.entries[before..]
+    }
+
     /// Effect of the newest setting.
     pub(crate) fn last_effect_ns(&self) -> Option<HouseNs> {
         self.entries.last().map(|entry| entry.effect_ns)
@@ -68,18 +83,15 @@ impl Timeline {
 
     /// When the stream began, as far back as is kept.
     pub(crate) fn begins_ns(&self) -> Option<HouseNs> {
-        self.entries.first().map(|entry| entry.effect_ns)
+        self.counting().first().map(|entry| entry.effect_ns)
     }
 
     /// The ratio in force at an instant; the first one before it began.
     pub(crate) fn ratio_at(&self, at_ns: HouseNs) -> Option<f64> {
-        let in_force = self
-            .entries
-            .iter()
-            .rev()
-            .find(|entry| entry.effect_ns <= at_ns);
+        let entries = self.counting();
+        let in_force = entries.iter().rev().find(|entry| entry.effect_ns <= at_ns);
         in_force
-            .or(self.entries.first())
+            .or(entries.first())
             .map(|entry| as_double(&entry.ratio))
     }
 
@@ -89,23 +101,20 @@ impl Timeline {
         from_ns: HouseNs,
         to_ns: HouseNs,
     ) -> impl Iterator<Item = Stretch> {
-        let ends = self
-            .entries
+        let entries = self.counting();
+        let ends = entries
             .iter()
             .skip(1)
             .map(|next| next.effect_ns)
             .chain([HouseNs::MAX]);
-        self.entries
-            .iter()
-            .zip(ends)
-            .filter_map(move |(entry, end_ns)| {
-                let (from_ns, to_ns) = (entry.effect_ns.max(from_ns), end_ns.min(to_ns));
-                (from_ns < to_ns).then(|| Stretch {
-                    ratio: as_double(&entry.ratio),
-                    from_ns,
-                    to_ns,
-                })
+        entries.iter().zip(ends).filter_map(move |(entry, end_ns)| {
+            let (from_ns, to_ns) = (entry.effect_ns.max(from_ns), end_ns.min(to_ns));
+            (from_ns < to_ns).then(|| Stretch {
+                ratio: as_double(&entry.ratio),
+                from_ns,
+                to_ns,
             })
+        })
     }
 
     /// The setting with this number, if it is kept.
@@ -126,8 +135,9 @@ impl Timeline {
         let index = self
             .entries
             .iter()
-            .position(|entry| entry.number == number)?;
+            .position(|entry| entry.number == number && number >= self.counts_from)?;
         let previous = index.checked_sub(1).map(|i| self.entries[i]);
+        let previous = previous.filter(|entry| entry.number >= self.counts_from);
         let next_ns = self
             .entries
             .get(index + 1)

@@ -142,6 +142,35 @@ fn a_source_of_another_rate_begins_anew_and_keeps_the_numbering() {
     let made = &effects.settings[0];
     assert_eq!((made.number, made.reason), (last + 1, Reason::ChangeOver));
     assert!((world::average(made) - 1.0).abs() < 1e-4);
+    // What ran until its effect made thousands of samples too many, which nobody can use: the
+    // account begins with the effect, and is told to begin anew but once.
+    let effect_ns = made.effect_ns;
+    world.run_until(effect_ns);
+    let (at_effect, of_account) = (world.phase("x"), status(&world).phase_error_samples);
+    assert!(
+        at_effect > 4000.0 && of_account == 0.0,
+        "{at_effect} {of_account}"
+    );
+    world.run_until(effect_ns + 120 * SECOND);
+    let later = status(&world);
+    let off = later.phase_error_samples - (world.phase("x") - at_effect);
+    assert!(off.abs() < 5.0 * later.phase_deviation_samples, "{off}");
+    assert_eq!(later.state, CrossingState::Holding, "{}", later.reason);
+    let told = world.transitions.iter();
+    let centred_since = told.filter(|(_, t)| matches!(t, Transition::Centred { .. }));
+    assert_eq!(centred_since.count(), 1);
+    // Its follower may still say when it had applied the one before.
+    world.apply(Event::Applied {
+        crossing: id("x"),
+        epoch: 1,
+        number: last,
+        house_ns: HOUR,
+        sink_sample: 0,
+    });
+    assert_eq!(
+        status(&world).phase_error_samples,
+        later.phase_error_samples
+    );
     // The main source may change its rate meanwhile: it is not in use.
     let faster = clock("main", 96_000);
     let effects = world.apply(Event::DeclareClock(faster));
