@@ -3,7 +3,9 @@
 use crate::engine::Engine;
 use crate::record::CrossingRecord;
 use crate::schedule::Subject;
-use crate::{ClockDeclaration, CrossingDeclaration, Effects, HouseNs, Id, Reason, Refusal};
+use crate::{
+    ClockDeclaration, ClockFault, CrossingDeclaration, Effects, HouseNs, Id, Reason, Refusal,
+};
 
 /// Most crossings in a group: they are decided in one go.
 const MAX_GROUP: usize = 64;
@@ -222,7 +224,11 @@ impl Engine {
         }
     }
 
-    pub(crate) fn delete_crossing(&mut self, id: &Id) -> Result<(), Refusal> {
+    pub(crate) fn delete_crossing(
+        &mut self,
+        id: &Id,
+        effects: &mut Effects,
+    ) -> Result<(), Refusal> {
         let Some(record) = self.crossings.remove(id) else {
             return Err(Refusal::not_found(
                 "crossing",
@@ -231,6 +237,17 @@ impl Engine {
             ));
         };
         self.numbers_gone = self.numbers_gone.max(record.last_number);
+        // Its follower counts no more, so nothing would ever take that back.
+        let sink = &record.declaration.sink;
+        let fault = self
+            .clocks
+            .get(sink)
+            .and_then(|clock| clock.fault.as_deref());
+        if matches!(fault, Some(ClockFault::CountedOtherwise { .. })) {
+            effects
+                .transitions
+                .extend(self.clocks.set_fault(sink, None));
+        }
         self.detach(&record.declaration);
         Ok(())
     }

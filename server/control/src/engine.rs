@@ -62,7 +62,7 @@ impl Engine {
             Event::DeclareCrossing(declaration) => {
                 self.declare_crossing(declaration, now, &mut effects)?;
             }
-            Event::DeleteCrossing(id) => self.delete_crossing(id)?,
+            Event::DeleteCrossing(id) => self.delete_crossing(id, &mut effects)?,
             Event::Reading(reading) => effects.outcome = Some(self.read(reading, now)?),
             Event::Applied {
                 crossing,

@@ -7,7 +7,11 @@
 //! **Order of use.** Declare clocks, declare crossings (a setting is there at once), feed
 //! readings; apply [`Event::Tick`] whenever [`Engine::next_due`] says so. House times must not go
 //! back; one that does counts as the latest seen. What [`Effects`] holds must be made durable
-//! before it is published.
+//! before it is published; a silent setting is published to nobody.
+//!
+//! **The operator's hand.** [`Event::Pin`], [`Event::Release`] and [`Event::ChangeOver`] say who acts
+//! and why; each leaves an [`Act`] in the effects. A pin, and the floor between changes, keep a
+//! crossing and its whole group from changing; what would be done is still worked out, and said.
 //!
 //! **Signs** are derived in [`signs`] and used from there everywhere.
 

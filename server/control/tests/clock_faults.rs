@@ -231,6 +231,14 @@ fn a_sink_that_counts_at_another_rate_is_at_fault_until_it_does_not() {
     };
     assert!((counted - 1e-3).abs() < 1e-6);
     assert!(fault.to_string().contains("+1000.0"), "{fault}");
+    // Without the crossing nobody counts any more.
+    let mut without = camera.engine.clone();
+    let deleted = without.apply(&Event::DeleteCrossing(id("x")), camera.now);
+    let told = deleted.expect("it is there").transitions;
+    assert!(
+        matches!(told[..], [Transition::ClockFault { fault: None, .. }]),
+        "{told:?}"
+    );
     let before = rate(camera.now, 1e-3);
     let since = camera.now;
     let said = follow(&mut camera, HOUR, |ns| before + rate(ns - since, 0.0));
