@@ -78,6 +78,11 @@ impl ClockRecord {
         }
     }
 
+    /// True if the estimate rests on this link.
+    pub(crate) fn counts(&self, link: usize) -> bool {
+        link == self.chosen
+    }
+
     /// What is believed before anything is measured.
     fn prior(&self, now: HouseNs) -> Estimate {
         let mut declaration = self.declaration.clone();

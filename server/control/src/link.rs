@@ -6,7 +6,7 @@ use ratewright_timing::{
 use serde::{Deserialize, Serialize};
 
 use crate::clocks::MAX_DEPTH;
-use crate::{ClockDeclaration, HouseNs, Reading, Reference, Refusal};
+use crate::{ClockDeclaration, HouseNs, LinkView, Reading, Reference, Refusal};
 
 /// A link that has been silent for so long gives up its place to a new probe, ns (a day).
 const ABANDONED_NS: i64 = 86_400_000_000_000;
@@ -198,6 +198,24 @@ impl LinkRecord {
         let least = self.offset_ns.saturating_sub(forgotten);
         let is_late = arrived < least.saturating_sub(LATEST_NS);
         self.offset_ns = if is_late { arrived } else { arrived.max(least) };
+    }
+
+    /// The link for people; whether it counts is for its clock to say.
+    pub(crate) fn view(&self, now: HouseNs) -> LinkView {
+        let history = self.link.history();
+        let in_house_time = |at_ns: i64| at_ns.saturating_sub(self.offset_ns);
+        LinkView {
+            reference: self.reference.clone(),
+            probe: self.probe.clone(),
+            counts: false,
+            estimate: self.estimate(now),
+            diagnosis: self.link.diagnosis(),
+            events: history.events,
+            last_event: history
+                .last_event
+                .map(|(event, at_ns)| (event, in_house_time(at_ns))),
+            arrived_ns: self.arrived_ns,
+        }
     }
 
     /// The estimate at a house time, which is mapped to the reference's.
