@@ -19,6 +19,8 @@ use ratewright_control::{
 };
 use tokio::sync::watch;
 
+use crate::chronicle::{Chronicle, Happening, Point, Span};
+
 /// A clock as of `as_of_ns`.
 #[derive(Clone, Debug)]
 pub struct ClockView {
@@ -67,6 +69,8 @@ pub struct News {
     pub settings: Vec<Setting>,
     /// Settings that took effect, as their followers say.
     pub applied: Vec<Applied>,
+    /// What else changed.
+    pub happenings: Vec<Happening>,
 }
 
 /// The board. Share it in an `Arc`.
@@ -88,6 +92,7 @@ struct Shown {
     last_change: u64,
     /// Epoch and number of the newest setting of each crossing that its follower applied, since the start.
     applied: BTreeMap<Id, (u64, u64)>,
+    chronicle: Chronicle,
 }
 
 /// Which crossings a watcher wants.
@@ -163,6 +168,34 @@ impl Board {
         Some((*change, Arc::clone(setting)))
     }
 
+    /// How the drift of a clock went over a span up to `now_ns`, oldest first.
+    pub fn drift_history(&self, clock: &Id, span: Span, now_ns: HouseNs) -> Vec<Point> {
+        let shown = self.shown();
+        let trace = shown.chronicle.drift(clock);
+        trace.map_or_else(Vec::new, |trace| trace.points(span, now_ns))
+    }
+
+    /// How the phase error of a crossing went over a span up to `now_ns`, oldest first.
+    pub fn phase_history(&self, crossing: &Id, span: Span, now_ns: HouseNs) -> Vec<Point> {
+        let shown = self.shown();
+        let trace = shown.chronicle.phase(crossing);
+        trace.map_or_else(Vec::new, |trace| trace.points(span, now_ns))
+    }
+
+    /// What changed from `since_ns` on and is asked for, newest first.
+    pub fn happenings(
+        &self,
+        since_ns: HouseNs,
+        wanted: impl Fn(&Happening) -> bool,
+    ) -> Vec<Happening> {
+        let shown = self.shown();
+        let since = shown.chronicle.since(since_ns);
+        since
+            .filter(|happening| wanted(happening))
+            .cloned()
+            .collect()
+    }
+
     /// Wakes when settings changed; the value is the number of the newest change.
     pub fn changes(&self) -> watch::Receiver<u64> {
         self.changes.subscribe()
@@ -173,16 +206,22 @@ impl Board {
         let mut shown = self.shown.write().unwrap_or_else(PoisonError::into_inner);
         for id in news.clocks_gone {
             shown.clocks.remove(&id);
+            shown.chronicle.forget_clock(&id);
         }
         for id in news.crossings_gone {
             shown.forget_crossing(&id);
         }
+        for happening in news.happenings {
+            shown.chronicle.note(happening);
+        }
         for view in news.clocks {
+            shown.chronicle.note_clock(&view);
             shown
                 .clocks
                 .insert(view.declaration.id.clone(), Arc::new(view));
         }
         for view in news.crossings {
+            shown.chronicle.note_crossing(&view);
             shown
                 .crossings
                 .insert(view.declaration.id.clone(), Arc::new(view));
@@ -219,6 +258,7 @@ impl Default for Board {
 
 impl Shown {
     fn show_setting(&mut self, setting: Setting) {
+        self.chronicle.note_setting(&setting);
         self.last_change += 1;
         let change = self.last_change;
         let crossing = setting.crossing.clone();
@@ -234,6 +274,7 @@ impl Shown {
     fn forget_crossing(&mut self, id: &Id) {
         self.crossings.remove(id);
         self.applied.remove(id);
+        self.chronicle.forget_crossing(id);
         if let Some((change, _)) = self.newest.remove(id) {
             self.by_change.remove(&change);
         }

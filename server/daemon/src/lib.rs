@@ -10,7 +10,8 @@
 //!
 //! - `scribe`: the one thread that owns the engine and the store. A setting is on disk before
 //!   the board shows it.
-//! - [`board`]: what the rest of the daemon may see, without ever making the scribe wait.
+//! - [`board`]: what the rest of the daemon may see, without ever making the scribe wait; with the
+//!   [`chronicle`]: how it went lately.
 //! - `service`: the calls of `ratewright.v1`; they decide nothing.
 //! - `convert`: the one place where wire types and domain types meet.
 //!
@@ -22,6 +23,7 @@
 )]
 
 pub mod board;
+pub mod chronicle;
 pub mod config;
 mod convert;
 mod daemon;

@@ -4,7 +4,12 @@ use ratewright_control::{Engine, Event, HouseNs, Refusal, Setting, Transition, e
 use tokio::sync::oneshot;
 
 use super::{Command, Done, Promise, news::Touched};
-use crate::{metrics, refused::Refused, store};
+use crate::{
+    chronicle::{Happening, What},
+    metrics,
+    refused::Refused,
+    store,
+};
 
 /// Events that one group holds, about: the group is closed by the command that reaches it.
 const FULL: usize = 8_192;
@@ -14,6 +19,8 @@ const FULL: usize = 8_192;
 pub(super) struct Group {
     pub(super) written: store::Group,
     pub(super) touched: Touched,
+    /// Changes of state, for the board.
+    pub(super) happenings: Vec<Happening>,
     answers: Vec<(oneshot::Sender<Result<Done, Refused>>, Done)>,
 }
 
@@ -61,6 +68,11 @@ impl Group {
         let effects = engine.apply(&event, now)?;
         self.touched.note(engine, &event, &effects);
         effects.transitions.iter().for_each(log_transition);
+        let happened = effects.transitions.into_iter().map(|transition| Happening {
+            at_ns: now,
+            what: What::Transition(transition),
+        });
+        self.happenings.extend(happened);
         for setting in &effects.settings {
             let explanation = explained(engine, setting);
             self.written.settings.push((setting.clone(), explanation));

@@ -98,6 +98,22 @@ impl Desk {
         Ok(done.outcomes.len())
     }
 
+    /// Asks the engine something, between two events; the answer must not take long, for
+    /// everybody else waits.
+    pub(crate) async fn ask<T: Send + 'static>(
+        &self,
+        question: impl FnOnce(&Engine) -> T + Send + 'static,
+    ) -> Result<T, Refused> {
+        let (tell, told) = oneshot::channel();
+        let decide = Box::new(|engine: &Engine| {
+            // A caller that has gone does not need its answer.
+            let _ = tell.send(question(engine));
+            Ok(Vec::new())
+        });
+        self.send(decide, Promise::Applied).await.answer().await?;
+        told.await.map_err(|_| Refused::Unavailable("stopping"))
+    }
+
     /// Asks the scribe to stop after what has been handed in before.
     pub(crate) async fn stop(&self) {
         // If the scribe is gone already, that is what was asked for.

@@ -185,7 +185,10 @@ impl Room {
             .map(|(setting, _)| setting)
             .collect();
         let touched = std::mem::take(&mut group.touched);
-        let news = touched.news(&self.engine, settings, self.house.now());
+        let news = News {
+            happenings: std::mem::take(&mut group.happenings),
+            ..touched.news(&self.engine, settings, self.house.now())
+        };
         self.count(&news);
         self.board.publish(news);
         group.answer();
