@@ -182,18 +182,17 @@ impl Board {
         trace.map_or_else(Vec::new, |trace| trace.points(span, now_ns))
     }
 
-    /// What changed from `since_ns` on and is asked for, newest first.
+    /// What changed from `since_ns` on and is wanted: the newest `most`, newest first, and how many
+    /// there are.
     pub fn happenings(
         &self,
         since_ns: HouseNs,
+        most: usize,
         wanted: impl Fn(&Happening) -> bool,
-    ) -> Vec<Happening> {
+    ) -> (Vec<Happening>, usize) {
         let shown = self.shown();
-        let since = shown.chronicle.since(since_ns);
-        since
-            .filter(|happening| wanted(happening))
-            .cloned()
-            .collect()
+        let found = || shown.chronicle.since(since_ns).filter(|h| wanted(h));
+        (found().take(most).cloned().collect(), found().count())
     }
 
     /// Wakes when settings changed; the value is the number of the newest change.

@@ -140,6 +140,16 @@ impl Builder {
             grace: config.drain_grace,
         };
         let slots = Slots::new(config.max_streams);
+        daemon.serve_people(
+            people,
+            page::Sources {
+                board: Arc::clone(&board),
+                house,
+                readiness: readiness.clone(),
+                desk: desk.clone(),
+                history: history.clone(),
+            },
+        );
         let access = Access {
             desk,
             board,
@@ -149,7 +159,6 @@ impl Builder {
             slots,
         };
         daemon.serve_grpc(grpc, &access, config.max_streams).await?;
-        daemon.serve_people(people);
         // The thread says how it went before it ends, unless it panicked.
         recovered.await.unwrap_or(Err(RecoverFault::Panicked))?;
         daemon.readiness.enter(Phase::Serving);
@@ -262,8 +271,8 @@ impl Daemon {
         Ok(())
     }
 
-    fn serve_people(&mut self, listener: TcpListener) {
-        let router = page::router(Arc::clone(&self.board), self.house, self.readiness.clone());
+    fn serve_people(&mut self, listener: TcpListener, sources: page::Sources) {
+        let router = page::router(sources);
         let readiness = self.readiness.clone();
         self.servers.spawn(async move {
             let drained = async move { readiness.draining().await };

@@ -31,7 +31,7 @@ mod digest;
 mod health;
 pub mod house;
 pub mod metrics;
-pub mod page;
+mod page;
 pub mod readiness;
 mod refused;
 pub mod sample;

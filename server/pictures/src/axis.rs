@@ -71,6 +71,27 @@ impl Axis {
         }
     }
 
+    /// An axis of the time that is left, s, from `from_s` above 0 to `to_s`: near times have more
+    /// room than far ones.
+    ///
+    /// ```
+    /// # use ratewright_pictures::Axis;
+    /// let axis = Axis::ahead("time left", 1.0, 86_400.0);
+    /// let labels: Vec<_> = axis.mark_labels().collect();
+    /// assert_eq!(labels, ["1 s", "10 s", "1 min", "10 min", "1 h", "6 h", "1 d"]);
+    /// ```
+    pub fn ahead(label: &str, from_s: f64, to_s: f64) -> Self {
+        const MARKS_S: [i64; 7] = [1, 10, 60, 600, 3_600, 21_600, 86_400];
+        let marks = MARKS_S
+            .into_iter()
+            .filter(|&at_s| (from_s..=to_s).contains(&(at_s as f64)))
+            .map(|at_s| (libm::log10(at_s as f64), time::elapsed(at_s)));
+        Self {
+            marks: marks.collect(),
+            ..Self::decades(label, from_s, to_s)
+        }
+    }
+
     /// An axis of the time that has passed, s.
     ///
     /// ```

@@ -9,17 +9,31 @@
 
 mod axis;
 mod brush;
+mod course;
 mod curve;
+mod fractions;
 mod frame;
 mod ink;
+mod ladder;
+mod mark;
+mod nearness;
 mod phase;
 mod picture;
+mod stability;
 mod time;
+mod turns;
 
 pub use axis::Axis;
 pub use brush::Unpaintable;
+pub use course::{Banded, Course};
 pub use curve::{Moment, Stretch, thinned};
+pub use fractions::{Fractions, Neighbour};
 pub use frame::{Chart, Frame};
 pub use ink::{Ink, STYLE};
+pub use ladder::ladder;
+pub use mark::Standing;
+pub use nearness::Nearness;
 pub use phase::PhaseStory;
 pub use picture::Picture;
+pub use stability::{Limit, Steadiness};
+pub use turns::Turns;

@@ -15,6 +15,11 @@ pub struct Picture {
 }
 
 impl Picture {
+    /// What it shows.
+    pub fn title(&self) -> &str {
+        &self.title
+    }
+
     /// A file of its own: it carries its style sheet, and follows the reader's choice of light or dark.
     pub fn file(&self) -> String {
         let style = format!("<style>\n{STYLE}</style>\n");

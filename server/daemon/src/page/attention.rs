@@ -72,7 +72,7 @@ pub(super) fn list(
         } @else {
             ul .attention {
                 @for sentence in sentences.iter().take(SENTENCES) { li { (sentence) } }
-                @if more > 0 { li { "and " (more) " more in the tables below." } }
+                @if more > 0 { li { "and " (more) " more: " a href="/crossings" { "crossings" } ", " a href="/clocks" { "clocks" } "." } }
             }
         }
     }
@@ -87,7 +87,7 @@ fn trouble(view: &CrossingView) -> Option<Markup> {
     };
     let slip = view.status.seconds_to_slip.map(words::span);
     Some(html! {
-        strong { (crossings::title(view)) } " " (problem)
+        (crossings::link(view)) " " (problem)
         @if let Some(slip) = slip { " and may slip in " (slip) }
         ": " (view.status.reason) "."
     })
@@ -96,7 +96,7 @@ fn trouble(view: &CrossingView) -> Option<Markup> {
 fn holdover(view: &ClockView, house_ns: HouseNs) -> Markup {
     let age = clocks::reading_age_s(view, house_ns).map_or("ever".to_owned(), words::span);
     html! {
-        strong { (clocks::title(view)) } " is in holdover: no readings for " (age) "."
+        (clocks::link(view)) " is in holdover: no readings for " (age) "."
     }
 }
 
@@ -105,5 +105,5 @@ fn free_running(view: &ClockView) -> Markup {
         true => "is measured, but known no better than 10 ppm yet.",
         false => "was never measured.",
     };
-    html! { strong { (clocks::title(view)) } " " (told) }
+    html! { (clocks::link(view)) " " (told) }
 }

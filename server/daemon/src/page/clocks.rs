@@ -31,6 +31,11 @@ pub(super) fn title(view: &ClockView) -> &str {
     }
 }
 
+/// A clock's title that leads to its page.
+pub(super) fn link(view: &ClockView) -> Markup {
+    html! { a href={ "/clocks/" (view.declaration.id) } { (title(view)) } }
+}
+
 /// Seconds since the newest reading; `None` without one.
 pub(super) fn reading_age_s(view: &ClockView, house_ns: HouseNs) -> Option<f64> {
     let last_ns = view.estimate.estimate.last_reading_ns?;
@@ -41,7 +46,7 @@ pub(super) fn table(views: &[Arc<ClockView>], house_ns: HouseNs) -> Markup {
     html! {
         table role="table" {
             caption {
-                "Clocks, the least known first. Drift is against house time, in parts per million, with the \
+                "The least known first. Drift is against house time, in parts per million, with the \
                  half-width of its 95\u{a0}% interval; positive runs fast."
             }
             thead role="rowgroup" {
@@ -64,9 +69,9 @@ fn row(view: &ClockView, house_ns: HouseNs) -> Markup {
     let estimate = &view.estimate.estimate;
     let (state, class) = words::clock_state(estimate.state);
     html! {
-        tr role="row" .(class) {
+        tr id={ "clock-" (view.declaration.id) } role="row" .(class) {
             th role="rowheader" scope="row" {
-                (title(view))
+                (link(view))
                 span .aside { (view.declaration.id) " \u{b7} " (words::rate(view.declaration.nominal_hz)) }
             }
             td role="cell" data-head="State" { span .state { (state) } }

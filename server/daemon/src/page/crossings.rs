@@ -32,11 +32,16 @@ pub(super) fn title(view: &CrossingView) -> &str {
     }
 }
 
+/// A crossing's title that leads to its page.
+pub(super) fn link(view: &CrossingView) -> Markup {
+    html! { a href={ "/crossings/" (view.declaration.id) } { (title(view)) } }
+}
+
 pub(super) fn table(views: &[Arc<CrossingView>]) -> Markup {
     html! {
         table role="table" {
             caption {
-                "Crossings, the worst first. The residual is what runs over what it should be, minus one, in \
+                "The worst first. The residual is what runs over what it should be, minus one, in \
                  parts per billion. The phase error is in samples of the sink; it slips when it leaves the \
                  headroom, which the line shows from end to end, and the last column says when that would be if \
                  nothing were set anew."
@@ -62,16 +67,17 @@ fn row(view: &CrossingView) -> Markup {
     let (declaration, status) = (&view.declaration, &view.status);
     let (state, class) = words::crossing_state(status.state);
     html! {
-        tr role="row" .(class) {
+        tr id={ "crossing-" (view.declaration.id) } role="row" .(class) {
             th role="rowheader" scope="row" {
-                (title(view))
+                (link(view))
                 span .aside { (declaration.source) " \u{2192} " (declaration.sink) }
             }
             td role="cell" data-head="State" {
                 span .state { (state) }
-                span .aside { (status.reason) }
+                // What holds needs no reasons.
+                @if status.state != CrossingState::Holding { span .aside { (status.reason) } }
             }
-            td role="cell" data-head="Runs" { (setting(status.setting.as_ref())) }
+            td role="cell" data-head="Runs" { (runs(status.setting.as_ref())) }
             td role="cell" data-head="Residual, ppb" .number {
                 @match status.residual {
                     Some(residual) => (words::ppb(residual)),
@@ -95,12 +101,18 @@ fn row(view: &CrossingView) -> Markup {
     }
 }
 
-fn setting(setting: Option<&Setting>) -> Markup {
+/// What a setting runs, with the way to the setting.
+pub(super) fn runs(setting: Option<&Setting>) -> Markup {
     html! {
         @match setting {
             Some(setting) => {
                 span .ratio { (words::runs(&setting.realised)) }
-                span .aside { "setting " (setting.epoch) "-" (setting.number) ": " (words::why(setting.reason)) }
+                span .aside {
+                    a href={ "/crossings/" (setting.crossing) "/settings/" (setting.epoch) "-" (setting.number) } {
+                        "setting " (setting.epoch) "-" (setting.number)
+                    }
+                    ": " (words::why(setting.reason))
+                }
             }
             None => "nothing yet",
         }

@@ -1,76 +1,105 @@
-//! The page around the tables.
+//! The page around what it shows.
 
-use std::sync::Arc;
-
+use axum::{
+    http::{StatusCode, header},
+    response::{Html, IntoResponse, Response},
+};
 use maud::{DOCTYPE, Markup, html};
 use ratewright_control::HouseNs;
 
-use super::{attention, clocks, crossings};
-use crate::board::{ClockView, CrossingView};
+use super::words;
 
-/// Rows that a table shows at most, the worst; the headline and the list speak of all.
-const ROWS: usize = 1_000;
+/// Which of the places in the header a page belongs to.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub(super) enum Place {
+    Facility,
+    Crossings,
+    Clocks,
+    Planner,
+    Elsewhere,
+}
 
-pub(super) fn page(
-    house_ns: HouseNs,
-    crossings: &[Arc<CrossingView>],
-    clocks: &[Arc<ClockView>],
-) -> Markup {
-    html! {
-        (DOCTYPE)
-        html lang="en" {
-            head {
-                meta charset="utf-8";
-                meta name="viewport" content="width=device-width, initial-scale=1";
-                meta name="color-scheme" content="light dark";
-                title { "ratewright: " (attention::headline(crossings, clocks)) }
-                link rel="icon" href="data:,";
-                link rel="stylesheet" href="/page.css";
-                script src="/page.js" defer {}
-                noscript { meta http-equiv="refresh" content="10"; }
-            }
-            body {
-                (header())
-                main id="status" {
-                    h1 { (sentence(&attention::headline(crossings, clocks))) }
-                    (attention::list(crossings, clocks, house_ns))
-                    section aria-labelledby="crossings" {
-                        h2 id="crossings" { "Crossings" }
-                        (crossings::table(&crossings[..crossings.len().min(ROWS)]))
-                        (left_out(crossings.len(), "crossings"))
+/// A page to be.
+#[derive(Debug)]
+pub(super) struct Leaf {
+    /// What stands in the browser's title, after the program's name.
+    pub(super) title: String,
+    pub(super) place: Place,
+    /// House time it speaks of; a page that has one renews itself.
+    pub(super) as_of_ns: Option<HouseNs>,
+    pub(super) body: Markup,
+}
+
+const PLACES: [(Place, &str, &str); 4] = [
+    (Place::Facility, "/", "Facility"),
+    (Place::Crossings, "/crossings", "Crossings"),
+    (Place::Clocks, "/clocks", "Clocks"),
+    (Place::Planner, "/plan", "Planner"),
+];
+
+impl IntoResponse for Leaf {
+    fn into_response(self) -> Response {
+        let headers = [
+            (
+                header::CONTENT_SECURITY_POLICY,
+                "default-src 'none'; style-src 'self'; script-src 'self'; connect-src 'self'; \
+                 img-src data:; base-uri 'none'; form-action 'self'; frame-ancestors 'none'",
+            ),
+            (header::CACHE_CONTROL, "no-store"),
+            (header::X_CONTENT_TYPE_OPTIONS, "nosniff"),
+            (header::REFERRER_POLICY, "no-referrer"),
+        ];
+        (headers, Html(self.markup().into_string())).into_response()
+    }
+}
+
+impl Leaf {
+    fn markup(&self) -> Markup {
+        html! {
+            (DOCTYPE)
+            html lang="en" {
+                head {
+                    meta charset="utf-8";
+                    meta name="viewport" content="width=device-width, initial-scale=1";
+                    meta name="color-scheme" content="light dark";
+                    title { "ratewright: " (self.title) }
+                    link rel="icon" href="data:,";
+                    link rel="stylesheet" href="/page.css";
+                    @if self.as_of_ns.is_some() {
+                        script src="/page.js" defer {}
+                        noscript { meta http-equiv="refresh" content="10"; }
                     }
-                    section aria-labelledby="clocks" {
-                        h2 id="clocks" { "Clocks" }
-                        (clocks::table(&clocks[..clocks.len().min(ROWS)], house_ns))
-                        (left_out(clocks.len(), "clocks"))
-                    }
-                    p .stamp { "House time " (stamp(house_ns)) " (TAI)" }
                 }
-                (footer())
+                body {
+                    a .skip href="#main" { "To the content" }
+                    (self.header())
+                    main #main tabindex="-1" {
+                        (self.body)
+                        @if let Some(house_ns) = self.as_of_ns {
+                            p #stamp .stamp { "House time " (words::stamp(house_ns)) " (TAI)" }
+                        }
+                    }
+                    (footer())
+                }
             }
         }
     }
-}
 
-fn left_out(all: usize, what: &str) -> Markup {
-    html! {
-        @if all > ROWS {
-            p { (all - ROWS) " more " (what) " stand better than these and are left out." }
-        }
-    }
-}
-
-fn header() -> Markup {
-    html! {
-        header {
-            p .name { "ratewright" }
-            nav aria-label="Sections" {
-                a href="#crossings" { "Crossings" }
-                a href="#clocks" { "Clocks" }
-                a href="/metrics" { "Metrics" }
+    fn header(&self) -> Markup {
+        html! {
+            header {
+                p .name { "ratewright" }
+                nav #places aria-label="Places" {
+                    @for (place, address, name) in PLACES {
+                        a href=(address) aria-current=[(place == self.place).then_some("page")] { (name) }
+                    }
+                }
+                // Shown by the script that renews the page; without it there is nothing to hold.
+                @if self.as_of_ns.is_some() {
+                    button #hold type="button" hidden aria-pressed="false" { "Hold still" }
+                }
             }
-            // Shown by the script that renews the page; without it there is nothing to pause.
-            button #pause type="button" hidden aria-pressed="false" { "Hold still" }
+            p #contact role="status" {}
         }
     }
 }
@@ -80,72 +109,37 @@ fn footer() -> Markup {
         footer {
             p {
                 strong { "Not a safety system. " }
-                "Voice alarm and the like defer to local codes and licensed practice."
+                "Voice alarm and the like defer to local codes and licensed practice. "
+                a href="/metrics" { "Metrics" }
             }
         }
     }
 }
 
-fn sentence(text: &str) -> String {
-    let mut chars = text.chars();
-    chars.next().map_or_else(String::new, |first| {
-        first.to_uppercase().chain(chars).collect()
-    })
+/// The style sheet: the pages' own, and that of the pictures.
+pub(super) fn style_sheet() -> String {
+    format!("{}{}", include_str!("page.css"), ratewright_pictures::STYLE)
 }
 
-/// House time as date and time of day on its own scale.
-fn stamp(house_ns: HouseNs) -> String {
-    let seconds = house_ns.div_euclid(1_000_000_000);
-    let (days, of_day) = (seconds.div_euclid(86_400), seconds.rem_euclid(86_400));
-    let (year, month, day) = civil(days);
-    let (h, m, s) = (of_day / 3_600, of_day % 3_600 / 60, of_day % 60);
-    format!("{year:04}-{month:02}-{day:02} {h:02}:{m:02}:{s:02}")
+/// Said where something cannot be that never should be so.
+pub(super) const OF_THE_PROGRAM: &str = "the answer cannot be shown: a fault of this program";
+
+/// A page that says what is not there.
+pub(super) fn not_found(what: &str) -> Response {
+    trouble(StatusCode::NOT_FOUND, "Not found", what)
 }
 
-/// The Gregorian date of a count of days since 1970-01-01.
-fn civil(days: i64) -> (i64, i64, i64) {
-    let leap = |year: i64| year % 4 == 0 && (year % 100 != 0 || year % 400 == 0);
-    let (mut year, mut left) = (1970, days);
-    while left >= 365 + i64::from(leap(year)) {
-        left -= 365 + i64::from(leap(year));
-        year += 1;
-    }
-    let lengths = [
-        31,
-        28 + i64::from(leap(year)),
-        31,
-        30,
-        31,
-        30,
-        31,
-        31,
-        30,
-        31,
-        30,
-        31,
-    ];
-    let mut month = 1;
-    for length in lengths {
-        if left < length {
-            break;
-        }
-        left -= length;
-        month += 1;
-    }
-    (year, month, left + 1)
-}
-
-#[cfg(test)]
-mod tests {
-    use super::*;
-
-    /// Dates from the calendar.
-    #[test]
-    fn house_time_reads_as_a_date() {
-        let at = |seconds: i64| stamp(seconds * 1_000_000_000);
-        assert_eq!(at(0), "1970-01-01 00:00:00");
-        assert_eq!(at(951_782_400 + 86_399), "2000-02-29 23:59:59");
-        assert_eq!(at(1_767_225_600 - 1), "2025-12-31 23:59:59");
-        assert_eq!(at(1_767_225_600), "2026-01-01 00:00:00");
-    }
+/// A page that says why there is none.
+pub(super) fn trouble(status: StatusCode, title: &str, why: &str) -> Response {
+    let leaf = Leaf {
+        title: title.to_owned(),
+        place: Place::Elsewhere,
+        as_of_ns: None,
+        body: html! {
+            h1 { (title) }
+            p { (why) }
+            p { a href="/" { "To the facility at a glance" } }
+        },
+    };
+    (status, leaf).into_response()
 }

@@ -2,18 +2,35 @@
 //!
 //! | path | what |
 //! | --- | --- |
-//! | `/` | the status page: what needs a look first, then every crossing and every clock, worst first |
+//! | `/` | the facility at a glance: what needs a look first |
+//! | `/crossings`, `/clocks` | all of them, the worst first, to be searched and leafed through |
+//! | `/changes` | what changed in the last hour |
+//! | `/crossings/{id}`, `/clocks/{id}` | one of them, closely |
+//! | `/crossings/{id}/settings` | every setting it ever had |
+//! | `/crossings/{id}/settings/{epoch}-{number}` | one setting, and why it was made |
+//! | `/plan` | a planner; the question is in the address, so that it can be handed on |
 //! | `/metrics` | for Prometheus, see [`crate::metrics`] |
 //! | `/livez` | 200 while the process answers |
 //! | `/readyz` | 200 while everything is served, else 503; a clock in holdover does not make it so |
 //!
-//! The page is plain HTML from the server. It works without a script; with one it renews itself in place.
-//! Nothing is fetched from another host, and the browser is told to allow none.
+//! The pages are plain HTML from the server, with pictures in them. They work without a script; with one
+//! they renew themselves in place. Nothing can be changed by them, nothing is fetched from another host,
+//! and the browser is told to allow none.
 
 mod attention;
+mod changes;
+mod clock;
 mod clocks;
+mod crossing;
 mod crossings;
+mod facility;
+mod figures;
+mod fractions;
 mod frame;
+mod listing;
+mod plan;
+mod probes;
+mod settings;
 mod words;
 
 use std::sync::Arc;
@@ -22,63 +39,81 @@ use axum::{
     Router,
     extract::State,
     http::{StatusCode, header},
-    response::{Html, IntoResponse},
+    response::{IntoResponse, Response},
     routing::get,
 };
+use ratewright_control::Engine;
 
 use crate::{
     board::Board,
     house::HouseClock,
     metrics,
     readiness::{Phase, Readiness},
+    scribe::Desk,
+    store::History,
 };
 
-#[derive(Clone)]
-struct Sources {
-    board: Arc<Board>,
-    house: HouseClock,
-    readiness: Readiness,
+/// What the pages are made from. Cheap to clone.
+#[derive(Clone, Debug)]
+pub(crate) struct Sources {
+    pub(crate) board: Arc<Board>,
+    pub(crate) house: HouseClock,
+    pub(crate) readiness: Readiness,
+    pub(crate) desk: Desk,
+    pub(crate) history: History,
 }
 
 /// The routes of the people's port.
-pub fn router(board: Arc<Board>, house: HouseClock, readiness: Readiness) -> Router {
+pub(crate) fn router(sources: Sources) -> Router {
     Router::new()
-        .route("/", get(status))
+        .route("/", get(facility::show))
+        .route("/crossings", get(listing::crossings))
+        .route("/clocks", get(listing::clocks))
+        .route("/changes", get(changes::show))
+        .route("/clocks/{id}", get(clock::show))
+        .route("/crossings/{id}", get(crossing::show))
+        .route("/crossings/{id}/settings", get(settings::list))
+        .route("/crossings/{id}/settings/{numbered}", get(settings::show))
+        .merge(plan::router())
         .route(
             "/page.css",
-            get(async || typed("text/css; charset=utf-8", include_str!("page.css"))),
+            get(async || typed("text/css; charset=utf-8", frame::style_sheet())),
         )
         .route(
             "/page.js",
-            get(async || typed("text/javascript; charset=utf-8", include_str!("page.js"))),
+            get(async || {
+                typed(
+                    "text/javascript; charset=utf-8",
+                    include_str!("page.js").into(),
+                )
+            }),
         )
         .route("/metrics", get(scrape))
         .route("/livez", get(async || "alive\n"))
         .route("/readyz", get(ready))
-        .with_state(Sources {
-            board,
-            house,
-            readiness,
-        })
+        .fallback(async || frame::not_found("Nothing is at this address."))
+        .with_state(sources)
 }
 
-async fn status(State(sources): State<Sources>) -> impl IntoResponse {
-    let mut crossings = sources.board.crossings(None, usize::MAX);
-    let mut clocks = sources.board.clocks(None, usize::MAX);
-    crossings.sort_by_key(|view| crossings::urgency(view));
-    clocks.sort_by_key(|view| clocks::urgency(view));
-    let page = frame::page(sources.house.now(), &crossings, &clocks);
-    let headers = [
-        (
-            header::CONTENT_SECURITY_POLICY,
-            "default-src 'none'; style-src 'self'; script-src 'self'; connect-src 'self'; \
-             img-src data:; base-uri 'none'; form-action 'none'; frame-ancestors 'none'",
-        ),
-        (header::CACHE_CONTROL, "no-store"),
-        (header::X_CONTENT_TYPE_OPTIONS, "nosniff"),
-        (header::REFERRER_POLICY, "no-referrer"),
-    ];
-    (headers, Html(page.into_string()))
+impl Sources {
+    /// What the engine says to a question about one thing, or the page that says why it does not.
+    async fn ask<T: Send + 'static>(
+        &self,
+        question: impl FnOnce(&Engine) -> T + Send + 'static,
+    ) -> Result<T, Response> {
+        let why = match self.readiness.phase() {
+            Phase::Recovering => "The daemon is recovering its store.".to_owned(),
+            Phase::Serving | Phase::Draining => match self.desk.ask(question).await {
+                Ok(answer) => return Ok(answer),
+                Err(refused) => words::sentence(&refused.to_string()),
+            },
+        };
+        Err(frame::trouble(
+            StatusCode::SERVICE_UNAVAILABLE,
+            "Not now",
+            &why,
+        ))
+    }
 }
 
 async fn scrape(State(sources): State<Sources>) -> impl IntoResponse {
@@ -100,14 +135,12 @@ async fn ready(State(sources): State<Sources>) -> impl IntoResponse {
     }
 }
 
-fn typed(kind: &'static str, text: &'static str) -> impl IntoResponse {
-    (
-        [
-            (header::CONTENT_TYPE, kind),
-            (header::X_CONTENT_TYPE_OPTIONS, "nosniff"),
-        ],
-        text,
-    )
+fn typed(kind: &'static str, text: String) -> Response {
+    let headers = [
+        (header::CONTENT_TYPE, kind),
+        (header::X_CONTENT_TYPE_OPTIONS, "nosniff"),
+    ];
+    (headers, text).into_response()
 }
 
 #[cfg(test)]

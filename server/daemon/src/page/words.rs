@@ -1,9 +1,11 @@
 //! Numbers and states in words.
 
+use maud::{Markup, PreEscaped, html};
 use num_rational::Ratio;
-use ratewright_control::{CrossingState, Realised, Reason};
+use ratewright_control::{CrossingState, HouseNs, Realised, Reason};
+use ratewright_pictures::{Picture, Standing};
 use ratewright_ratio::Fraction;
-use ratewright_timing::State;
+use ratewright_timing::{Reason as StateReason, State};
 
 /// A minus sign as wide as a plus, so that columns of signed numbers line up.
 fn signed(text: String) -> String {
@@ -29,6 +31,48 @@ pub(super) fn ppb(residual: f64) -> String {
     match residual * 1e9 {
         none if none.abs() < 0.005 => "0".to_owned(),
         some => signed(format!("{some:+.2}")),
+    }
+}
+
+/// A part of one with the unit that keeps it short, to three figures.
+pub(super) fn parts(part: f64) -> String {
+    let (factor, unit) = match part.abs() {
+        small if small < 1e-6 => (1e9, "ppb"),
+        small if small < 1e-2 => (1e6, "ppm"),
+        _ => (1e2, "%"),
+    };
+    format!("{}\u{a0}{unit}", small(part.abs() * factor))
+}
+
+/// How many blocks of the lower and of the higher ratio there are, as far as numbers of them say
+/// anything.
+pub(super) fn shares(low: u64, high: u64) -> String {
+    match low.saturating_add(high) {
+        0..=1_000_000 => format!("{low} and {high} blocks of them"),
+        all => format!(
+            "{:.2} and {:.2} of every 100 blocks",
+            100.0 * low as f64 / all as f64,
+            100.0 * high as f64 / all as f64
+        ),
+    }
+}
+
+/// A number above 0, to three figures or a little more.
+pub(super) fn small(value: f64) -> String {
+    if value == 0.0 || !value.is_finite() {
+        return format!("{value}");
+    }
+    let places = (2.0 - value.abs().log10().floor()).clamp(0.0, 12.0) as usize;
+    format!("{value:.places$}")
+}
+
+/// A short time with the unit that keeps it short.
+pub(super) fn seconds(seconds: f64) -> String {
+    let units = [(1.0, "s"), (1e-3, "ms"), (1e-6, "\u{b5}s"), (1e-9, "ns")];
+    let fitting = units.into_iter().find(|(unit, _)| seconds.abs() >= *unit);
+    match fitting {
+        Some((unit, name)) => format!("{}\u{a0}{name}", small(seconds / unit)),
+        None => "0 s".to_owned(),
     }
 }
 
@@ -111,6 +155,46 @@ pub(super) fn why(reason: Reason) -> &'static str {
     }
 }
 
+/// Why an estimate is in its state.
+pub(super) fn why_state(reason: StateReason) -> &'static str {
+    match reason {
+        StateReason::NeverMeasured => "it was never measured",
+        StateReason::TooWide => "its interval is wider than 10 ppm either way",
+        StateReason::Narrowing => "its interval is still narrowing",
+        StateReason::WithinThreshold => "its interval is as narrow as wanted",
+        StateReason::LockLost => "its interval has grown too wide for a lock",
+        StateReason::ReadingsStopped => "its readings have stopped",
+        StateReason::ByDefinition => "it is house time by definition",
+    }
+}
+
+/// Text as a part of an address: all but letters, digits and `-._~` by their bytes (RFC 3986, 2.1).
+pub(super) fn in_address(text: &str) -> String {
+    let escaped = |byte: u8| match byte {
+        b'a'..=b'z' | b'A'..=b'Z' | b'0'..=b'9' | b'-' | b'.' | b'_' | b'~' => {
+            char::from(byte).to_string()
+        }
+        _ => format!("%{byte:02X}"),
+    };
+    text.bytes().map(escaped).collect()
+}
+
+/// States of a clock, the worst first.
+pub(super) const CLOCK_STATES: [State; 4] = [
+    State::FreeRunning,
+    State::Holdover,
+    State::Acquiring,
+    State::Locked,
+];
+
+/// States of a crossing, the worst first.
+pub(super) const CROSSING_STATES: [CrossingState; 4] = [
+    CrossingState::OutOfBounds,
+    CrossingState::Degraded,
+    CrossingState::Waiting,
+    CrossingState::Holding,
+];
+
 /// A state as a word, and the class that colours it.
 pub(super) fn clock_state(state: State) -> (&'static str, &'static str) {
     match state {
@@ -129,6 +213,88 @@ pub(super) fn crossing_state(state: CrossingState) -> (&'static str, &'static st
         CrossingState::Degraded => ("degraded", "fading"),
         CrossingState::OutOfBounds => ("out of bounds", "adrift"),
     }
+}
+
+/// The mark of a state in a picture: that of its class.
+pub(super) fn crossing_standing(state: CrossingState) -> Standing {
+    match state {
+        CrossingState::Waiting => Standing::Nearing,
+        CrossingState::Holding => Standing::Sound,
+        CrossingState::Degraded => Standing::Fading,
+        CrossingState::OutOfBounds => Standing::Adrift,
+    }
+}
+
+/// A list of facts: each a name and what is so.
+pub(super) fn facts<const N: usize>(id: &str, facts: [(&str, Markup); N]) -> Markup {
+    html! {
+        dl id=(id) .facts {
+            @for (name, fact) in facts { div { dt { (name) } dd { (fact) } } }
+        }
+    }
+}
+
+/// A picture that can be scrolled sideways where it does not fit.
+pub(super) fn picture(id: &str, drawn: &Picture) -> Markup {
+    let name = format!("Picture: {}", drawn.title());
+    html! {
+        div id=(id) .scroll role="region" aria-label=(name) tabindex="0" { (PreEscaped(drawn.inline())) }
+    }
+}
+
+/// With a capital letter.
+pub(super) fn sentence(text: &str) -> String {
+    let mut chars = text.chars();
+    chars.next().map_or_else(String::new, |first| {
+        first.to_uppercase().chain(chars).collect()
+    })
+}
+
+/// How long ago, from house times.
+pub(super) fn ago(at_ns: HouseNs, now_ns: HouseNs) -> String {
+    format!("{} ago", span((now_ns - at_ns).max(0) as f64 * 1e-9))
+}
+
+/// House time as date and time of day on its own scale.
+pub(super) fn stamp(house_ns: HouseNs) -> String {
+    let seconds = house_ns.div_euclid(1_000_000_000);
+    let (days, of_day) = (seconds.div_euclid(86_400), seconds.rem_euclid(86_400));
+    let (year, month, day) = civil(days);
+    let (h, m, s) = (of_day / 3_600, of_day % 3_600 / 60, of_day % 60);
+    format!("{year:04}-{month:02}-{day:02} {h:02}:{m:02}:{s:02}")
+}
+
+/// The Gregorian date of a count of days since 1970-01-01.
+fn civil(days: i64) -> (i64, i64, i64) {
+    let leap = |year: i64| year % 4 == 0 && (year % 100 != 0 || year % 400 == 0);
+    let (mut year, mut left) = (1970, days);
+    while left >= 365 + i64::from(leap(year)) {
+        left -= 365 + i64::from(leap(year));
+        year += 1;
+    }
+    let lengths = [
+        31,
+        28 + i64::from(leap(year)),
+        31,
+        30,
+        31,
+        30,
+        31,
+        31,
+        30,
+        31,
+        30,
+        31,
+    ];
+    let mut month = 1;
+    for length in lengths {
+        if left < length {
+            break;
+        }
+        left -= length;
+        month += 1;
+    }
+    (year, month, left + 1)
 }
 
 #[cfg(test)]
@@ -165,5 +331,15 @@ mod tests {
                 "for ever"
             ]
         );
+    }
+
+    /// Dates from the calendar.
+    #[test]
+    fn house_time_reads_as_a_date() {
+        let at = |seconds: i64| stamp(seconds * 1_000_000_000);
+        assert_eq!(at(0), "1970-01-01 00:00:00");
+        assert_eq!(at(951_782_400 + 86_399), "2000-02-29 23:59:59");
+        assert_eq!(at(1_767_225_600 - 1), "2025-12-31 23:59:59");
+        assert_eq!(at(1_767_225_600), "2026-01-01 00:00:00");
     }
 }
