@@ -49,7 +49,9 @@ impl Happening {
     /// The clock it is about.
     pub fn clock(&self) -> Option<&Id> {
         match &self.what {
-            What::Transition(Transition::Clock { clock, .. }) => Some(clock),
+            What::Transition(
+                Transition::Clock { clock, .. } | Transition::ClockFault { clock, .. },
+            ) => Some(clock),
             _ => None,
         }
     }
@@ -61,7 +63,7 @@ impl Happening {
                 Transition::Crossing { crossing, .. } | Transition::Centred { crossing, .. },
             )
             | What::Setting { crossing, .. } => Some(crossing),
-            What::Transition(Transition::Clock { .. }) => None,
+            What::Transition(Transition::Clock { .. } | Transition::ClockFault { .. }) => None,
         }
     }
 }

@@ -58,13 +58,18 @@ pub(super) fn list(
         .filter(|v| v.estimate.estimate.state == State::Holdover)
         .collect();
     lost.sort_by_key(|view| clocks::staleness(view, house_ns));
+    let at_fault = clocks.iter().filter_map(|view| fault(view));
     let troubles = crossings.iter().filter_map(|view| trouble(view));
     let lost = lost.into_iter().map(|view| holdover(view, house_ns));
     let unknown = clocks
         .iter()
         .filter(|v| v.estimate.estimate.state == State::FreeRunning);
     let unknown = unknown.map(|view| free_running(view));
-    let sentences: Vec<Markup> = troubles.chain(lost).chain(unknown).collect();
+    let sentences: Vec<Markup> = troubles
+        .chain(at_fault)
+        .chain(lost)
+        .chain(unknown)
+        .collect();
     let more = sentences.len().saturating_sub(SENTENCES);
     html! {
         @if sentences.is_empty() {
@@ -90,7 +95,15 @@ fn trouble(view: &CrossingView) -> Option<Markup> {
         (crossings::link(view)) " " (problem)
         @if let Some(slip) = slip { " and may slip in " (slip) }
         ": " (view.status.reason) "."
+        @if let Some(needed) = &view.status.needed {
+            " L up to " (needed.max_l()) " and M up to " (needed.max_m()) " would do."
+        }
     })
+}
+
+fn fault(view: &ClockView) -> Option<Markup> {
+    let fault = view.estimate.fault.as_ref()?;
+    Some(html! { (clocks::link(view)) " is at fault: " (fault) "." })
 }
 
 fn holdover(view: &ClockView, house_ns: HouseNs) -> Markup {

@@ -84,6 +84,13 @@ fn told(what: &What) -> Markup {
                 ", " (words::why_state(*reason))
             }
         }
+        What::Transition(Transition::ClockFault { clock, fault }) => html! {
+            "clock " (link("clocks", clock)) ": "
+            @match fault {
+                Some(fault) => { span .state.adrift { "at fault" } ", " (fault) }
+                None => "its fault is gone",
+            }
+        },
         What::Transition(Transition::Crossing {
             crossing,
             from,

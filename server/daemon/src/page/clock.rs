@@ -63,6 +63,9 @@ fn head(view: &ClockView) -> Markup {
                 " A lock is expected in about " (words::span(seconds)) "."
             }
         }
+        @if let Some(fault) = &view.estimate.fault {
+            p #fault .verdict.adrift { span .state { "at fault" } ": " (fault) "." }
+        }
     }
 }
 

@@ -51,6 +51,7 @@ pub(super) async fn show(
     };
     let body = html! {
         (head(&view))
+        (besides(&view, now))
         (figures(&view, now))
         (phase(&sources.board, &view, forecast.as_ref(), &asked, now))
         (choice(&view))
@@ -78,6 +79,37 @@ fn head(view: &CrossingView) -> Markup {
         p .kind { "Crossing " code { (declared.id) } ", from " (clock(&declared.source)) " to " (clock(&declared.sink)) }
         h1 #headline { (crossings::title(view)) }
         p #state .verdict.(class) role="status" { span .state { (state) } ": " (view.status.reason) "." }
+    }
+}
+
+/// What the state does not tell: an operator's hand, a trial, another source, bounds that would do.
+fn besides(view: &CrossingView, now: HouseNs) -> Markup {
+    let (declared, status) = (&view.declaration, &view.status);
+    html! {
+        @if let Some(pin) = &status.pin {
+            p #pin .verdict.nearing {
+                span .state { "pinned" } ": what it runs stays, by " (pin.by) ", "
+                (words::ago(pin.since_ns, now)) @if !pin.note.is_empty() { ": " (pin.note) } "."
+            }
+        }
+        @if declared.silent {
+            p #silent .verdict.nearing {
+                span .state { "on trial" } ": settings are decided and recorded, but nobody is told to run them."
+            }
+        }
+        @if status.source != declared.source {
+            p #source .verdict.nearing {
+                span .state { "changed over" } ": the stream comes from "
+                a href={ "/clocks/" (status.source) } { (status.source) } " in place of "
+                a href={ "/clocks/" (declared.source) } { (declared.source) } "."
+            }
+        }
+        @if let Some(needed) = &status.needed {
+            p #needed .verdict.adrift {
+                span .state { "needs more room" } ": L up to " (needed.max_l()) " and M up to " (needed.max_m())
+                " would do."
+            }
+        }
     }
 }
 
@@ -109,6 +141,13 @@ fn figures(view: &CrossingView, now: HouseNs) -> Markup {
             None => "no slip in sight",
         }
     };
+    let vouched = html! {
+        @match status.seconds_vouched {
+            Some(seconds) => { "for " (words::span(seconds)) " more" }
+            None => "for a day and more",
+        }
+        span .aside { "if no further reading comes, however it is set" }
+    };
     let review = html! {
         @match &status.setting {
             Some(setting) => {
@@ -130,6 +169,7 @@ fn figures(view: &CrossingView, now: HouseNs) -> Markup {
             ("Residual", residual),
             ("Phase error, 95 %", phase),
             ("If left alone", alone),
+            ("Can be vouched for", vouched),
             ("Looked at again", review),
             ("Settings so far", made),
         ],
@@ -213,6 +253,8 @@ fn realisation(realisation: Realisation) -> &'static str {
     match realisation {
         Realisation::Single => "runs one ratio until it is told another",
         Realisation::Cadence => "takes two ratios in turn by itself",
+        Realisation::Stepping => "steps through one table of phases by itself",
+        Realisation::Lazy => "holds each of two ratios as long as it can by itself",
     }
 }
 

@@ -199,6 +199,7 @@ fn why(setting: &v1::Setting) -> &'static str {
         SettingReason::Recovery => words::why(Reason::Recovery),
         SettingReason::Declaration => words::why(Reason::Declaration),
         SettingReason::Group => words::why(Reason::Group),
+        SettingReason::ChangeOver => words::why(Reason::ChangeOver),
         SettingReason::Renewal => words::why(Reason::Renewal),
     }
 }
