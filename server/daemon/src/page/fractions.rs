@@ -59,19 +59,12 @@ impl<'a> Choice<'a> {
     fn of(setting: &'a v1::Setting) -> Option<Self> {
         let evidence = setting.evidence.as_ref()?;
         let target = target_from_f64(evidence.target).ok()?;
-        let ratios = match setting.realisation.as_ref()? {
-            Realisation::Single(single) => vec![*single],
-            Realisation::Cadence(cadence) => vec![cadence.low?, cadence.high?],
-        };
-        let run = ratios.iter().map(|ratio| {
-            let both = ratio.l > 0 && ratio.m > 0;
-            both.then(|| neighbour(&Fraction::new(ratio.l, ratio.m), &target))
-        });
+        let run = run_by(setting.realisation.as_ref()?)?;
         Some(Self {
             setting,
             evidence,
+            run: run.iter().map(|ratio| neighbour(ratio, &target)).collect(),
             target,
-            run: run.collect::<Option<_>>()?,
         })
     }
 
@@ -84,7 +77,7 @@ impl<'a> Choice<'a> {
             Proof::Nearest(bracket) | Proof::Neighbours(bracket) => {
                 Some((bracket.below.as_ref()?, bracket.above.as_ref()?))
             }
-            Proof::Simplest(_) | Proof::Uncertified(_) => None,
+            Proof::Simplest(_) | Proof::Stepping(_) | Proof::Uncertified(_) => None,
         }
     }
 
@@ -95,6 +88,22 @@ impl<'a> Choice<'a> {
         match (u64::try_from(l), u64::try_from(m)) {
             (Ok(l), Ok(m)) => Some(residual(&Fraction::new(l, m), &self.target)),
             _ => Some(l as f64 / m as f64 / self.evidence.target - 1.0),
+        }
+    }
+
+    /// The fractions to choose from: those within the bounds; with one table of phases the phases
+    /// over any advance.
+    fn allowed(&self, bounds: Option<&Bounds>) -> Vec<Neighbour> {
+        match (&self.setting.realisation, bounds) {
+            (Some(Realisation::Stepping(stepping)), _) => {
+                let advances = stepping.advance.saturating_sub(8).max(1)..=stepping.advance + 9;
+                let ratios = advances.map(|advance| Fraction::new_raw(stepping.phases, advance));
+                ratios
+                    .map(|ratio| neighbour(&ratio, &self.target))
+                    .collect()
+            }
+            (_, Some(bounds)) => around(&self.target, bounds),
+            (_, None) => Vec::new(),
         }
     }
 
@@ -114,13 +123,28 @@ impl<'a> Choice<'a> {
             .and_then(|wanted| self.off(wanted));
         Fractions {
             title: "The fractions around the target".to_owned(),
-            allowed: bounds.map_or_else(Vec::new, |bounds| around(&self.target, bounds)),
+            allowed: self.allowed(bounds),
             run: self.run.clone(),
-            max_m: bounds.map(Bounds::max_m),
-            gap: self.bracket().and_then(ends),
+            max_m: bounds.map(Bounds::max_m).filter(|_| !self.steps()),
+            gap: self
+                .bracket()
+                .and_then(ends)
+                .or_else(|| self.between_advances()),
             interval: Some((off(e.target_low), off(e.target_high))),
             holding: held.filter(|(low, high)| low < high),
             wanted: wanted.filter(|_| self.run.len() > 1),
+        }
+    }
+
+    fn steps(&self) -> bool {
+        matches!(self.setting.realisation, Some(Realisation::Stepping(_)))
+    }
+
+    /// Between two advances that follow each other there is no third.
+    fn between_advances(&self) -> Option<(f64, f64)> {
+        match self.run.as_slice() {
+            [low, high] if self.steps() => Some((low.residual, high.residual)),
+            _ => None,
         }
     }
 
@@ -169,19 +193,38 @@ impl<'a> Choice<'a> {
                      of their parts, is beyond the bounds."
                 })
             }
+            Proof::Stepping(pair) => Some(html! {
+                "A table of " (pair.phases) " phases makes " span .figure { (pair.phases) "/" (pair.advance + 1) }
+                " or " span .figure { (pair.phases) "/" (pair.advance) } " by two advances that follow each \
+                 other; the wanted ratio lies between them, and no other two enclose it."
+            }),
             Proof::Uncertified(reason) => Some(html! { "There is no short proof: " (reason) "." }),
         }
     }
 
     fn turns(&self) -> Option<Markup> {
-        let Some(Realisation::Cadence(cadence)) = &self.setting.realisation else {
-            return None;
-        };
         let wanted = self.setting.wanted.as_ref()?;
+        let (way, bound) = match self.setting.realisation.as_ref()? {
+            Realisation::Single(_) => return None,
+            Realisation::Cadence(cadence) => {
+                let shares = words::shares(cadence.low_blocks, cadence.high_blocks);
+                (
+                    format!("The two are taken in turn, {shares}"),
+                    cadence.error_bound_samples,
+                )
+            }
+            Realisation::Lazy(lazy) => {
+                let way = "Each of the two is held until the running error would leave its swing";
+                (way.to_owned(), lazy.swing_samples)
+            }
+            Realisation::Stepping(stepping) => {
+                let way = "At each output one of the two advances is made";
+                (way.to_owned(), stepping.error_bound_samples)
+            }
+        };
         Some(html! {
-            "The two are taken in turn, " (words::shares(cadence.low_blocks, cadence.high_blocks))
-            ": on average exactly " span .figure { (text(wanted)) }
-            ", and never off by more than " (words::small(cadence.error_bound_samples)) " output samples."
+            (way) ": on average exactly " span .figure { (text(wanted)) }
+            ", and never off by more than " (words::small(bound)) " output samples."
         })
     }
 
@@ -195,6 +238,28 @@ impl<'a> Choice<'a> {
                 .collect(),
         }
     }
+}
+
+/// The ratios that a setting runs, the lower first; not in lowest terms where they are those of
+/// a table of phases.
+fn run_by(realisation: &Realisation) -> Option<Vec<Fraction>> {
+    let pair = |cadence: &v1::Cadence| Some(vec![cadence.low?, cadence.high?]);
+    let ratio = |l, m| v1::Ratio { l, m };
+    let ratios = match realisation {
+        Realisation::Single(single) => vec![*single],
+        Realisation::Cadence(cadence) => pair(cadence)?,
+        Realisation::Lazy(lazy) => pair(lazy.cadence.as_ref()?)?,
+        Realisation::Stepping(stepping) => [stepping.longer_advance, stepping.advance]
+            .map(|advance| ratio(stepping.phases, advance))
+            .to_vec(),
+    };
+    let sound = ratios.iter().all(|ratio| ratio.l > 0 && ratio.m > 0);
+    sound.then(|| {
+        ratios
+            .iter()
+            .map(|ratio| Fraction::new_raw(ratio.l, ratio.m))
+            .collect()
+    })
 }
 
 fn text(fraction: &v1::Fraction) -> String {

@@ -186,6 +186,18 @@ fn runs(setting: &v1::Setting) -> String {
             );
             format!("{low} and {high}")
         }
+        Some(Realisation::Stepping(stepping)) => format!(
+            "{} or {} of {} phases",
+            stepping.advance, stepping.longer_advance, stepping.phases
+        ),
+        Some(Realisation::Lazy(lazy)) => {
+            let cadence = lazy.cadence.unwrap_or_default();
+            format!(
+                "{} and {}, each held",
+                ratio(cadence.low),
+                ratio(cadence.high)
+            )
+        }
         None => "\u{2014}".to_owned(),
     }
 }
