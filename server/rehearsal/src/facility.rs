@@ -2,7 +2,7 @@
 
 use num_rational::Ratio;
 use ratewright_control::{Event, HouseNs, Id};
-use ratewright_timing::sim::{Clock, ClockModel};
+use ratewright_timing::sim::{Clock, ClockModel, Disturbance, Upset};
 
 use crate::{
     dice::Dice,
@@ -101,10 +101,20 @@ impl Facility {
         let found = hosts.chain(devices).find(|(clock, _)| *clock == id);
         let model = found.map_or_else(steady, |(_, model)| model.clone());
         let clock = true_clock(id, &model, self.dice);
+        let stepless = ClockModel {
+            upsets: model
+                .upsets
+                .iter()
+                .copied()
+                .filter(|upset| !is_step(upset))
+                .collect(),
+            ..model
+        };
         Some(TrueClock {
             nominal_hz,
             origin_ns: self.origin_ns,
             clock,
+            stepless: true_clock(id, &stepless, self.dice),
         })
     }
 }
@@ -116,6 +126,10 @@ fn steady() -> ClockModel {
         walk_fm: 0.0,
         ..ClockModel::crystal()
     }
+}
+
+fn is_step(upset: &Upset) -> bool {
+    matches!(upset.what, Disturbance::PhaseStep(_))
 }
 
 /// The true condition of a clock at an instant.
@@ -134,6 +148,8 @@ pub struct TrueClock {
     nominal_hz: Ratio<u64>,
     origin_ns: HouseNs,
     clock: Clock,
+    /// The same life without steps: a clock that shows another time has made no other samples.
+    stepless: Clock,
 }
 
 impl TrueClock {
@@ -146,10 +162,25 @@ impl TrueClock {
         }
     }
 
-    /// Ticks that pass from `from_ns` to `until_ns` of house time.
+    /// Ticks that pass from `from_ns` to `until_ns` of house time. Steps of what the clock shows are none.
     pub(crate) fn ticks(&mut self, from_ns: HouseNs, until_ns: HouseNs) -> f64 {
-        let gained_s = -self.at(from_ns).phase_s + self.at(until_ns).phase_s;
+        let mut phase_s = |at_ns: HouseNs| self.stepless.phase_s(at_ns - self.origin_ns);
+        let gained_s = -phase_s(from_ns) + phase_s(until_ns);
         ticks_within(self.nominal_hz, until_ns - from_ns, gained_s)
+    }
+
+    /// The first instant at or after `house_ns` at which the count of ticks since the origin is a multiple
+    /// of `block`: a block end. To the nanosecond.
+    pub(crate) fn block_end(&mut self, house_ns: HouseNs, block: u32) -> (HouseNs, u64) {
+        let since_ns = house_ns - self.origin_ns;
+        let count = ticks_within(self.nominal_hz, since_ns, self.stepless.phase_s(since_ns));
+        // Half a billionth of a tick is rounding, not a new block.
+        let blocks = libm::ceil(count / f64::from(block) - 1e-9);
+        let missing = (blocks * f64::from(block) - count).max(0.0);
+        let hz = *self.nominal_hz.numer() as f64 / *self.nominal_hz.denom() as f64;
+        let rate_hz = hz * (1.0 + self.stepless.drift(since_ns));
+        let wait_ns = libm::ceil(missing / rate_hz * 1e9) as HouseNs;
+        (house_ns + wait_ns, blocks as u64 * u64::from(block))
     }
 }
 

@@ -35,11 +35,16 @@ impl Delay {
 
     /// The delay of occasion `index`, ns.
     pub(crate) fn draw_ns(&self, dice: Dice, index: u64) -> i64 {
+        self.draw_congested_ns(1.0, dice, index)
+    }
+
+    /// As [`Delay::draw_ns`], with queues and bursts longer by a factor.
+    pub(crate) fn draw_congested_ns(&self, factor: f64, dice: Dice, index: u64) -> i64 {
         let mut queue = self.queue_ns * dice.lane(1).exponential(index);
         if self.burst_share > 0.0 && dice.lane(2).uniform(index) < self.burst_share {
             queue += self.burst_ns * dice.lane(3).exponential(index);
         }
-        self.least_ns + queue as i64
+        self.least_ns + (factor * queue) as i64
     }
 }
 
@@ -55,12 +60,24 @@ pub struct Link {
     pub loss: f64,
     /// When nothing passes, ns since the facility's origin.
     pub outages: Vec<Period>,
+    /// When queues and bursts are longer by a factor, since the facility's origin; where several
+    /// overlap, the largest counts.
+    pub congestions: Vec<(Period, f64)>,
 }
 
 impl Link {
     /// True unless there is an outage.
     pub fn is_up(&self, at_ns: i64) -> bool {
         !self.outages.iter().any(|outage| outage.holds(at_ns))
+    }
+
+    /// How much longer queues are at `at_ns`.
+    pub(crate) fn congestion(&self, at_ns: i64) -> f64 {
+        let now = self
+            .congestions
+            .iter()
+            .filter(|(period, _)| period.holds(at_ns));
+        now.fold(1.0, |worst, (_, factor)| worst.max(*factor))
     }
 
     /// True if message `index`, sent at `at_ns`, arrives.
@@ -87,6 +104,7 @@ mod tests {
             back: still,
             loss: 0.2,
             outages,
+            congestions: Vec::new(),
         };
         let passed = |at_ns| {
             (0..DRAWS)

@@ -16,7 +16,7 @@ use crate::facility::{Facility, TrueClock};
 /// #     ..ClockDeclaration::new(id(name), Ratio::from_integer(hz)) };
 /// # let bounds = ratewright_ratio::Bounds::new(512, 512).unwrap();
 /// # let crossing = CrossingDeclaration::new(id("line"), id("source"), id("sink"), bounds);
-/// # let plan = Plan { hosts: vec![], devices: vec![], exact: vec![clock("source", 48_000), clock("sink", 48_000)],
+/// # let plan = Plan { hosts: vec![], devices: vec![], exact: vec![clock("source", 48_000), clock("sink", 48_000)], followers: vec![],
 /// #     crossings: vec![crossing.clone()] };
 /// # let facility = Facility::new(plan, 1, 0).unwrap();
 /// // Both clocks tick at exactly 48 kHz: 49/48 makes 1000 samples too many each second.
@@ -38,13 +38,23 @@ impl TruePhase {
     /// Starts at 0 at the facility's origin with `ratio` in force; `None` if the plan lacks a clock of
     /// the crossing.
     pub fn new(facility: &Facility, crossing: &CrossingDeclaration, ratio: f64) -> Option<Self> {
+        Self::starting(facility, crossing, ratio, facility.origin_ns())
+    }
+
+    /// As [`TruePhase::new`], from `from_ns` on.
+    pub fn starting(
+        facility: &Facility,
+        crossing: &CrossingDeclaration,
+        ratio: f64,
+        from_ns: HouseNs,
+    ) -> Option<Self> {
         let source = facility.true_clock(&crossing.source)?;
         let sink = facility.true_clock(&crossing.sink)?;
         Some(Self {
             source,
             sink,
             ratio,
-            since_ns: facility.origin_ns(),
+            since_ns: from_ns,
             samples: 0.0,
         })
     }

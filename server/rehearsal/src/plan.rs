@@ -5,7 +5,10 @@ use ratewright_timing::sim::ClockModel;
 use serde::{Deserialize, Serialize};
 use thiserror::Error;
 
-use crate::link::{Delay, Link};
+use crate::{
+    follower::Follower,
+    link::{Delay, Link},
+};
 
 /// A facility that could exist. Together with a seed and an origin it becomes a [`Facility`](crate::Facility).
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
@@ -18,6 +21,8 @@ pub struct Plan {
     pub exact: Vec<ClockDeclaration>,
     /// Where streams pass from clock to clock.
     pub crossings: Vec<CrossingDeclaration>,
+    /// Who runs the settings; a crossing without one is followed to the nanosecond, in silence.
+    pub followers: Vec<Follower>,
 }
 
 /// A machine that compares its own clock with the house by two-way exchanges, and stamps the
@@ -49,6 +54,8 @@ pub struct Device {
     pub every_ns: i64,
     /// How it is read.
     pub reading: DeviceReading,
+    /// When its counter begins at 0 again, ns since the origin, in order.
+    pub resets_ns: Vec<i64>,
 }
 
 /// How a device is read.
@@ -59,6 +66,13 @@ pub enum DeviceReading {
         /// Width of the counter, 1 to 64.
         bits: u32,
         /// From the latch to the reading of the host's clock.
+        latch: Delay,
+    },
+    /// The media timestamp of a stream's packets, as the host receives them.
+    SenderReport {
+        /// Width of the timestamp, 1 to 64.
+        bits: u32,
+        /// From the timestamp's instant to the reading of the host's clock.
         latch: Delay,
     },
     /// A frequency counter on house time.
@@ -105,6 +119,44 @@ impl Plan {
             self.check_host(i, &device.host)?;
             check_reading(i, device.reading)?;
         }
+        for (i, follower) in self.followers.iter().enumerate() {
+            self.check_follower(i, follower)?;
+        }
+        Ok(())
+    }
+
+    fn check_follower(&self, i: usize, follower: &Follower) -> Result<(), PlanError> {
+        let refused = |field: &str, value: String, accepted| {
+            Err(PlanError {
+                field: format!("followers[{i}].{field}"),
+                value,
+                accepted,
+            })
+        };
+        if !self
+            .crossings
+            .iter()
+            .any(|crossing| crossing.id == follower.crossing)
+        {
+            return refused(
+                "crossing",
+                follower.crossing.to_string(),
+                "the id of a crossing of the plan",
+            );
+        }
+        if follower.block_samples == 0 {
+            return refused("block_samples", "0".to_owned(), "1 and above");
+        }
+        if let Some(levels) = follower.levels {
+            check_interval(
+                || format!("followers[{i}].levels.every_ns"),
+                levels.every_ns,
+            )?;
+            if levels.deviation_samples.is_nan() || levels.deviation_samples <= 0.0 {
+                let value = levels.deviation_samples.to_string();
+                return refused("levels.deviation_samples", value, "greater than 0");
+            }
+        }
         Ok(())
     }
 
@@ -145,11 +197,15 @@ fn check_share(field: impl Fn() -> String, value: f64) -> Result<(), PlanError> 
 fn check_reading(i: usize, reading: DeviceReading) -> Result<(), PlanError> {
     let field = |name: &str| format!("devices[{i}].reading.{name}");
     match reading {
-        DeviceReading::Counter { bits, .. } if !(1..=64).contains(&bits) => Err(PlanError {
-            field: field("bits"),
-            value: bits.to_string(),
-            accepted: "1 to 64",
-        }),
+        DeviceReading::Counter { bits, .. } | DeviceReading::SenderReport { bits, .. }
+            if !(1..=64).contains(&bits) =>
+        {
+            Err(PlanError {
+                field: field("bits"),
+                value: bits.to_string(),
+                accepted: "1 to 64",
+            })
+        }
         DeviceReading::Frequency { deviation } if deviation.is_nan() || deviation <= 0.0 => {
             Err(PlanError {
                 field: field("deviation"),

@@ -44,6 +44,8 @@ pub(crate) struct Probe {
     means: Means,
     dice: Dice,
     next: u64,
+    /// When the counter began at 0 again, and what it would have shown there otherwise.
+    resets: Vec<(i64, i128)>,
     /// Taken, but not arrived by the latest question.
     under_way: Option<Delivered>,
     arrived_ns: HouseNs,
@@ -77,6 +79,7 @@ impl Probe {
             means: Means::Exchange,
             dice: dice.named("probe").named(host.clock.id.as_str()),
             next: 0,
+            resets: Vec::new(),
             under_way: None,
             arrived_ns: origin_ns,
         }
@@ -84,7 +87,15 @@ impl Probe {
 
     /// The readings that a host takes of a device.
     pub(crate) fn of_device(device: &Device, host: &Host, dice: Dice, origin_ns: HouseNs) -> Self {
+        let mut ahead = true_clock(&device.clock.id, &device.oscillator, dice);
+        let mut count_at = |&at_ns: &i64| {
+            (
+                at_ns,
+                ticks(device.clock.nominal_hz, at_ns, ahead.phase_s(at_ns)),
+            )
+        };
         Self {
+            resets: device.resets_ns.iter().map(&mut count_at).collect(),
             clock: device.clock.id.clone(),
             nominal_hz: device.clock.nominal_hz,
             truth: true_clock(&device.clock.id, &device.oscillator, dice),
@@ -169,9 +180,15 @@ impl Probe {
     fn exchange(&mut self, index: u64, asked_ns: i64) -> Option<(i64, Reference, Measurement)> {
         let link = &self.host.link;
         let (there, back) = (self.dice.lane(2), self.dice.lane(3));
-        let arrives_ns = asked_ns + link.there.draw_ns(there, index);
+        let arrives_ns = asked_ns
+            + link
+                .there
+                .draw_congested_ns(link.congestion(asked_ns), there, index);
         let answered_ns = arrives_ns + ANSWER_NS;
-        let done_ns = answered_ns + link.back.draw_ns(back, index);
+        let done_ns = answered_ns
+            + link
+                .back
+                .draw_congested_ns(link.congestion(answered_ns), back, index);
         let passed = link.passes(asked_ns, there.lane(9), index)
             && link.passes(answered_ns, back.lane(9), index)
             && done_ns - asked_ns <= self.patience_ns();
@@ -194,7 +211,28 @@ impl Probe {
         reading: DeviceReading,
     ) -> (i64, Reference, Measurement) {
         match reading {
-            DeviceReading::Counter { bits, latch } => self.read_counter(index, at_ns, bits, latch),
+            DeviceReading::Counter { bits, latch } => {
+                let (stamped_ns, count, reference_ns) = self.latch(index, at_ns, bits, latch);
+                (
+                    stamped_ns,
+                    self.by_host(),
+                    Measurement::Counter {
+                        count,
+                        bits,
+                        reference_ns,
+                    },
+                )
+            }
+            DeviceReading::SenderReport { bits, latch } => {
+                let (stamped_ns, media_timestamp, reference_ns) =
+                    self.latch(index, at_ns, bits, latch);
+                let measurement = Measurement::SenderReport {
+                    media_timestamp,
+                    bits,
+                    reference_ns,
+                };
+                (stamped_ns, self.by_host(), measurement)
+            }
             DeviceReading::Frequency { deviation } => {
                 let error = deviation * self.dice.lane(4).normal(index);
                 let drift = self.truth.drift(at_ns) + error;
@@ -212,27 +250,27 @@ impl Probe {
         }
     }
 
-    fn read_counter(
-        &mut self,
-        index: u64,
-        latched_ns: i64,
-        bits: u32,
-        latch: Delay,
-    ) -> (i64, Reference, Measurement) {
+    /// When the host stamped what was latched, the count, and the stamp.
+    fn latch(&mut self, index: u64, latched_ns: i64, bits: u32, latch: Delay) -> (i64, u64, i64) {
         let phase_s = self.truth.phase_s(latched_ns);
         let ticks = ticks(self.nominal_hz, latched_ns, phase_s);
         let delay_ns = latch.draw_ns(self.dice.lane(5), index);
         let stamped_ns = latched_ns + delay_ns.min(self.patience_ns());
-        let measurement = Measurement::Counter {
-            count: wrap(ticks + self.first_count(bits), bits),
-            bits,
-            reference_ns: self.host_shows(stamped_ns),
-        };
+        let reset = self
+            .resets
+            .iter()
+            .rev()
+            .find(|(at_ns, _)| *at_ns <= latched_ns);
+        let begin = reset.map_or_else(|| self.first_count(bits), |(_, shown)| -shown);
         (
             stamped_ns,
-            Reference::Clock(self.host.id.clone()),
-            measurement,
+            wrap(ticks + begin, bits),
+            self.host_shows(stamped_ns),
         )
+    }
+
+    fn by_host(&self) -> Reference {
+        Reference::Clock(self.host.id.clone())
     }
 
     /// A counter that was switched on long before the origin shows anything.

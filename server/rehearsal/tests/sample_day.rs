@@ -195,7 +195,7 @@ fn nothing_slips(facility: &Facility, engine: &Engine, diary: &Diary) {
         let mut judge = Judge::new(facility, crossing, &diary.settings);
         let mut phase = 0.0;
         for at_s in (from_s..=DAY_S).step_by(5) {
-            phase = judge.at(ORIGIN_NS + at_s * S) - lost_samples(crossing, at_s);
+            phase = judge.at(ORIGIN_NS + at_s * S);
             let (id, headroom) = (&crossing.id, crossing.headroom_samples);
             assert!(
                 phase.abs() <= headroom,
@@ -209,14 +209,5 @@ fn nothing_slips(facility: &Facility, engine: &Engine, diary: &Diary) {
             error.abs() <= 0.05 * crossing.headroom_samples,
             "{id}: account off by {error}"
         );
-    }
-}
-
-/// What the gramophone's step took from the phase error of its crossing, sink samples.
-fn lost_samples(crossing: &CrossingDeclaration, at_s: i64) -> f64 {
-    if crossing.source.as_str() == "gramophone" && at_s * S >= sample::GRAMOPHONE_STEP_AT_NS {
-        sample::GRAMOPHONE_STEP_BY_S * 48_000.0
-    } else {
-        0.0
     }
 }

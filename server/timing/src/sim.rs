@@ -25,6 +25,7 @@
 
 mod clock;
 mod delay;
+mod flicker;
 mod path;
 pub mod probe;
 mod random;

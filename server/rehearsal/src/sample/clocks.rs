@@ -224,6 +224,7 @@ fn link(delay: Delay, outages: Vec<Period>) -> Link {
         back,
         loss: 0.005,
         outages,
+        congestions: Vec::new(),
     }
 }
 
@@ -256,6 +257,7 @@ fn device(
         host: id(host),
         every_ns,
         reading,
+        resets_ns: Vec::new(),
     }
 }
 

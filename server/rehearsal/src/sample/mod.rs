@@ -36,6 +36,7 @@ pub fn plan() -> Plan {
         devices: clocks::devices(),
         exact: clocks::exact(),
         crossings: crossings::crossings(),
+        followers: Vec::new(),
     }
 }
 

@@ -3,12 +3,13 @@
 use num_rational::Ratio;
 use serde::{Deserialize, Serialize};
 
+use super::flicker::Flicker;
 use super::random::Random;
 use crate::growth::DAILY;
 
 /// How a clock wanders. Drifts are dimensionless, times in seconds.
 ///
-/// The drift is constant + walk + ageing·t + warm-up + daily swing + jumps; the phase is its
+/// The drift is constant + walk + flicker + ageing·t + warm-up + daily swing + jumps; the phase is its
 /// integral plus white frequency noise plus steps.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct ClockModel {
@@ -18,6 +19,9 @@ pub struct ClockModel {
     pub white_fm: f64,
     /// Random walk of the drift: variance gained a second, 1/s.
     pub walk_fm: f64,
+    /// Flicker frequency noise: the Allan deviation it has at any averaging time from some ten seconds
+    /// to some days.
+    pub flicker_fm: f64,
     /// Ageing, 1/s.
     pub ageing_per_s: f64,
     /// Warm-up after time 0.
@@ -78,7 +82,7 @@ pub enum Disturbance {
 
 impl Knot {
     fn total_drift(&self) -> f64 {
-        self.drift + self.weather
+        self.drift + self.weather + self.flicker.drift()
     }
 }
 
@@ -89,6 +93,7 @@ impl ClockModel {
             drift: 0.0,
             white_fm: 1e-18,
             walk_fm: 1e-20,
+            flicker_fm: 0.0,
             ageing_per_s: 0.0,
             warm_up: None,
             daily: None,
@@ -116,6 +121,7 @@ struct Knot {
     drift: f64,
     temperature: f64,
     weather: f64,
+    flicker: Flicker,
 }
 
 const NS: i64 = 1_000_000_000;
@@ -220,13 +226,16 @@ impl Clock {
                 )
             }
         };
-        let swung = 0.5 * (knot.weather + weather);
+        let flicker = knot.flicker.following(m.flicker_fm, &mut self.random);
+        let flickered = 0.5 * (knot.flicker.drift() + flicker.drift());
+        let swung = 0.5 * (knot.weather + weather) + flickered;
         Knot {
             second: knot.second + 1,
             phase_s: knot.phase_s + knot.drift + 0.5 * walked + bend + white + swung,
             drift: knot.drift + walked,
             temperature,
             weather,
+            flicker,
         }
     }
 }
@@ -262,6 +271,7 @@ mod tests {
             }],
             walk_fm: 0.0,
             white_fm: 0.0,
+            flicker_fm: 0.0,
         };
         let mut clock = Clock::new(model, 1);
         let mut integral = 0.0;
