@@ -1,7 +1,11 @@
 //! What ends a command early.
 
 use ratewright_client::{CallError, Closed};
+use ratewright_declarations::Faults;
 use thiserror::Error;
+
+/// The status of a configuration that is at fault, as in sysexits.h (and in `ratewrightd check`).
+const EX_CONFIG: u8 = 78;
 
 /// Why a command failed.
 #[derive(Debug, Error)]
@@ -15,6 +19,12 @@ pub(crate) enum Failure {
     /// What went wrong was already said in the command's own output.
     #[error("see above")]
     Quiet,
+    /// A crossing of a rehearsal slipped, as was said.
+    #[error("a crossing slipped")]
+    Slipped,
+    /// A file is at fault.
+    #[error("{0}")]
+    File(Faults),
     /// Who read standard output has seen enough.
     #[error("standard output was closed")]
     ReaderGone,
@@ -26,6 +36,8 @@ impl Failure {
         match self {
             Self::Usage(_) => 2,
             Self::Failed(_) | Self::Quiet => 1,
+            Self::Slipped => 3,
+            Self::File(_) => EX_CONFIG,
             Self::ReaderGone => 0,
         }
     }

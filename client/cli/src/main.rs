@@ -17,6 +17,7 @@ mod json;
 mod out;
 mod plan;
 mod probe;
+mod rehearse;
 mod report;
 mod server;
 mod show;
@@ -36,7 +37,7 @@ use crate::failure::Failure;
 /// Finds, hands out and explains exact resampling ratios for clocks that drift.
 ///
 /// Exit status: 0 all went well; 1 something was refused or failed; 2 the command was not
-/// understood.
+/// understood; 3 a crossing of a rehearsal slipped; 78 a file is at fault.
 #[derive(Debug, Parser)]
 #[command(name = "ratewright", version, max_term_width = 100)]
 struct Arguments {
@@ -52,6 +53,7 @@ enum Command {
     Watch(watch::Arguments),
     Explain(explain::Arguments),
     Probe(probe::Arguments),
+    Rehearse(rehearse::Arguments),
 }
 
 #[tokio::main]
@@ -63,10 +65,11 @@ async fn main() -> ExitCode {
         Command::Watch(arguments) => watch::run(&arguments).await,
         Command::Explain(arguments) => explain::run(&arguments).await,
         Command::Probe(arguments) => probe::run(&arguments).await,
+        Command::Rehearse(arguments) => rehearse::run(&arguments),
     };
     match done {
         Ok(()) | Err(Failure::ReaderGone) => ExitCode::SUCCESS,
-        Err(Failure::Quiet) => ExitCode::from(1),
+        Err(failure @ (Failure::Quiet | Failure::Slipped)) => ExitCode::from(failure.status()),
         Err(failure) => {
             eprintln!("ratewright: {failure}");
             ExitCode::from(failure.status())

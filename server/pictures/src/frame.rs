@@ -33,7 +33,7 @@ const BELOW: u32 = 44;
 const TITLE_PX: u32 = 16;
 const LABEL_PX: u32 = 12;
 /// What a letter of a label takes on average, px.
-const LETTER_PX: f64 = 6.9;
+const LETTER_PX: f64 = 7.6;
 /// Length of the strokes in the key, px.
 const STROKE_PX: f64 = 20.0;
 
