@@ -89,8 +89,8 @@ impl PhaseStory {
             let tick = [(at_s, low), (at_s, low + 0.035 * (high - low))];
             line(chart, tick, stroke(Ink::Text, 1.0))?;
         }
-        curve(chart, &self.truth, Ink::Slate, 2.0)?;
-        curve(chart, &self.account, Ink::Amber, 1.0)?;
+        curve(chart, &self.truth, Ink::Slate, 3.2)?;
+        curve(chart, &self.account, Ink::Amber, 1.2)?;
         Ok(())
     }
 }
