@@ -196,7 +196,7 @@ impl ReadingService for Bare {
         tokio::spawn(async move {
             while let Ok(Some(batch)) = batches.message().await {
                 let rows = batch.readings.len();
-                let written = (batch.receipt != v1::ReceiptLevel::Applied as i32).then(|| {
+                let written = (batch.receipt == v1::ReceiptLevel::Durable as i32).then(|| {
                     let (done, written) = oneshot::channel();
                     let _ = writer.send((rows, done));
                     written
