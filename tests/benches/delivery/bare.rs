@@ -31,7 +31,9 @@ struct Bare {
 
 /// Serves until it is killed.
 pub(crate) async fn serve(folder: &str) {
-    let listener = tokio::net::TcpListener::bind("127.0.0.1:0").await.expect("a free port");
+    let listener = tokio::net::TcpListener::bind("127.0.0.1:0")
+        .await
+        .expect("a free port");
     println!("{}", listener.local_addr().expect("it is bound"));
     let (writer, to_write) = std::sync::mpsc::channel();
     let path = format!("{folder}/bare.sqlite3");
@@ -201,7 +203,11 @@ impl ReadingService for Bare {
                     let _ = writer.send((rows, done));
                     written
                 });
-                if sender.send((batch.batch, rows as u64, written)).await.is_err() {
+                if sender
+                    .send((batch.batch, rows as u64, written))
+                    .await
+                    .is_err()
+                {
                     return;
                 }
             }

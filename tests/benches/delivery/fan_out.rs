@@ -47,7 +47,12 @@ pub(crate) async fn compare(sides: [&Side; 2]) {
         from_first.map(median),
         "",
     );
-    line("memory of an idle watcher", "bytes", bytes, "wanted 1.3 or less");
+    line(
+        "memory of an idle watcher",
+        "bytes",
+        bytes,
+        "wanted 1.3 or less",
+    );
 }
 
 /// Watchers that say when they heard of a change, and a connection to make one.

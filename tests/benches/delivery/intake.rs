@@ -11,11 +11,7 @@ use tokio::sync::mpsc;
 use tokio_stream::wrappers::ReceiverStream;
 use tonic::transport::Channel;
 
-use crate::{
-    line, median,
-    served::CLOCKS,
-    side::Side,
-};
+use crate::{line, median, served::CLOCKS, side::Side};
 
 const BATCH: u64 = 64;
 const ROUND: Duration = Duration::from_secs(2);
@@ -150,7 +146,10 @@ async fn stream(
     let mut answered = 0;
     while let Some(receipt) = receipts.message().await.expect("receipts") {
         let refused = receipt.refusals.first();
-        assert!(refused.is_none() || load.receipt == NO_RECEIPT, "{refused:?}");
+        assert!(
+            refused.is_none() || load.receipt == NO_RECEIPT,
+            "{refused:?}"
+        );
         answered += BATCH;
     }
     answered

@@ -48,5 +48,7 @@ fn median(mut figures: Vec<f64>) -> f64 {
 /// One line of the result: the figure of both, and their ratio beside what is wanted of it.
 fn line(what: &str, unit: &str, [bare, ours]: [f64; 2], wanted: &str) {
     let ratio = ours / bare;
-    println!("{what:<52} bare {bare:>12.1} {unit:<11} ratewright {ours:>12.1}   {ratio:.2}  ({wanted})");
+    println!(
+        "{what:<52} bare {bare:>12.1} {unit:<11} ratewright {ours:>12.1}   {ratio:.2}  ({wanted})"
+    );
 }

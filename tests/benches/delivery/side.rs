@@ -78,7 +78,9 @@ impl Side {
         let status = std::fs::read_to_string(path).expect("it runs, on Linux");
         let line = status.lines().find(|line| line.starts_with("VmRSS:"));
         let kib = line.and_then(|line| line.split_whitespace().nth(1));
-        kib.and_then(|kib| kib.parse::<f64>().ok()).expect("a number of KiB") * 1024.0
+        kib.and_then(|kib| kib.parse::<f64>().ok())
+            .expect("a number of KiB")
+            * 1024.0
     }
 }
 
