@@ -3,13 +3,14 @@
 
 use ratewright_tests::dependencies;
 
-const PURE: [&str; 6] = [
+const PURE: [&str; 7] = [
     "ratewright-ratio",
     "ratewright-timing",
     "ratewright-control",
     "ratewright-declarations",
     "ratewright-rehearsal",
     "ratewright-pictures",
+    "ratewright-handle",
 ];
 
 const IMPURE: [&str; 15] = [
