@@ -35,12 +35,15 @@ const SLOPE_NOISE: [SlopeNoise; SLOPES] = [
     },
     SlopeNoise {
         walk: WalkNoise { q1: 1e-6, q2: 1e-7 },
-        q3: 3e-9,
+        q3: 5e-9,
         d_deviation: 8e-3,
     },
 ];
 /// Weights before any evidence: walks, jump, slopes.
 pub(crate) const PRIOR: [f64; MODES] = [0.20, 0.25, 0.13, 1e-6, 0.10, 0.08, 0.24];
+/// The same for a clock just heard of: it may have been switched on just now, and a warming one
+/// must be held by the interval before its slope shows.
+pub(crate) const START: [f64; MODES] = [0.14, 0.18, 0.09, 1e-6, 0.08, 0.06, 0.45];
 const FLOOR: f64 = 1e-4;
 const JUMP_FLOOR: f64 = 1e-6;
 /// Time over which weights fade to their prior, s.
@@ -102,7 +105,7 @@ impl Bank {
         Bank {
             walks: [walk; WALKS],
             slopes: SLOPE_NOISE.each_ref().map(slope),
-            weights: PRIOR.map(|w| w as f32),
+            weights: START.map(|w| w as f32),
             faded_s: 0.0,
             scale: scale as f32,
         }

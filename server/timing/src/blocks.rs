@@ -1,21 +1,21 @@
 //! Two-way rows by blocks of four: the least delayed out and back of each block.
 //!
 //! Queues only ever add, so the earliest of four is far better than the mean of four where
-//! tails are long. The first 64 rows are taken singly, and then once more as 16 blocks.
+//! tails are long. The first 64 rows are taken singly, and then once more as 16 blocks (see `early`).
 
 use serde::{Deserialize, Serialize};
 
-use crate::filter::{Filter, Setup};
-use crate::outcome::Outcome;
 use crate::start::{START_ROWS, Start, StartRow};
 
 const BLOCK: usize = 4;
 
-/// Rows gathered, and the block under way.
-#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+/// Single rows before the first block.
+const SINGLE_ROWS: usize = BLOCK * START_ROWS;
+
+/// Whether rows are taken by blocks yet, and the block under way.
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub(crate) struct Blocks {
-    /// The first rows, until there are 64; empty afterwards.
-    early: Vec<StartRow>,
+    by_blocks: bool,
     block: Option<Block>,
 }
 
@@ -56,61 +56,52 @@ impl Block {
 }
 
 impl Blocks {
-    /// Begins with the rows that the filter has begun with.
-    pub(crate) fn new(rows: &[StartRow]) -> Self {
-        let mut early = Vec::with_capacity(BLOCK * START_ROWS);
-        early.extend_from_slice(rows);
-        Blocks { early, block: None }
-    }
-
-    /// Takes a row into the filter, singly at first, then by blocks.
-    pub(crate) fn take(
+    /// Takes a row; what the filter is to take of it, with whether that ends a gap: singly at
+    /// first, then a block's best when it is done.
+    pub(crate) fn gather(
         &mut self,
-        filter: &mut Filter,
         row: StartRow,
         in_gap: bool,
-        setup: &Setup,
-    ) -> Outcome {
-        if self.early.is_empty() {
-            return self.gather(filter, row, in_gap);
+        drift: f64,
+    ) -> Option<(StartRow, bool)> {
+        if !self.by_blocks {
+            return Some((row, in_gap));
         }
-        let outcome = filter.take(&row, in_gap);
-        self.early.push(row);
-        if self.early.len() < BLOCK * START_ROWS {
-            return outcome;
-        }
-        *filter = self.begin_again(filter.latest.y, setup);
-        outcome
-    }
-
-    fn begin_again(&mut self, drift: f64, setup: &Setup) -> Filter {
-        let mut start = Start::new(setup.prior_var);
-        for rows in self.early.chunks(BLOCK) {
-            let mut block = Block::new(&rows[0], false);
-            rows[1..].iter().for_each(|row| block.add(row, drift));
-            start.push(block.row());
-        }
-        self.early = Vec::new();
-        Filter::begin(&start, true, setup)
-    }
-
-    fn gather(&mut self, filter: &mut Filter, row: StartRow, in_gap: bool) -> Outcome {
-        let drift = filter.latest.y;
         let Some(block) = &mut self.block else {
             self.block = Some(Block::new(&row, in_gap));
-            return Outcome::Used;
+            return None;
         };
         if in_gap {
             let done = *block;
             *block = Block::new(&row, true);
-            return filter.take(&done.row(), done.in_gap);
+            return Some((done.row(), done.in_gap));
         }
         block.add(&row, drift);
         if usize::from(block.rows) < BLOCK {
-            return Outcome::Used;
+            return None;
         }
         let done = *block;
         self.block = None;
-        filter.take(&done.row(), done.in_gap)
+        Some((done.row(), done.in_gap))
+    }
+
+    /// Once there are enough single rows, the same ones by blocks: from now on all are.
+    pub(crate) fn begin(
+        &mut self,
+        singly: &[StartRow],
+        prior_var: f64,
+        drift: f64,
+    ) -> Option<Start> {
+        if self.by_blocks || singly.len() < SINGLE_ROWS {
+            return None;
+        }
+        self.by_blocks = true;
+        let mut start = Start::new(prior_var);
+        for rows in singly.chunks(BLOCK) {
+            let mut block = Block::new(&rows[0], false);
+            rows[1..].iter().for_each(|row| block.add(row, drift));
+            start.push(block.row());
+        }
+        Some(start)
     }
 }

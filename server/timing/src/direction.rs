@@ -113,6 +113,14 @@ impl Direction {
         }
     }
 
+    /// What is known of the direction by now, to begin anew with.
+    pub(crate) fn learned(&self) -> FirstGuess {
+        FirstGuess {
+            noise: self.noise(),
+            offset: self.offset,
+        }
+    }
+
     /// Rows learned from, as far as they are counted.
     pub(crate) fn rows(&self) -> u16 {
         self.learner.rows()

@@ -8,7 +8,7 @@ use crate::growth::Growth;
 use crate::holdover::{Belief, Structure};
 use crate::mode::{Step, Walk};
 use crate::outcome::{Event, Outcome};
-use crate::start::{Start, StartRow};
+use crate::start::{FirstGuess, Start, StartRow};
 
 /// Rows before a jump of the drift is believed.
 const JUMP_ROWS: u16 = 24;
@@ -71,6 +71,14 @@ struct Pace {
 /// Going out, lateness makes z smaller; coming back, larger.
 const TWO_WAY_SIGNS: [f64; 2] = [-1.0, 1.0];
 
+fn signs(two_way: bool, setup: &Setup) -> [f64; 2] {
+    if two_way {
+        TWO_WAY_SIGNS
+    } else {
+        [setup.one_way_sign; 2]
+    }
+}
+
 impl Filter {
     /// Bytes besides bank and directions that every row reads or writes: also the time at
     /// which the structure function has something to do again.
@@ -78,18 +86,29 @@ impl Filter {
 
     /// Begins from the rows gathered, and takes them one after another.
     pub(crate) fn begin(start: &Start, two_way: bool, setup: &Setup) -> Self {
-        let signs = if two_way {
-            TWO_WAY_SIGNS
-        } else {
-            [setup.one_way_sign; 2]
-        };
-        let guesses = start.guess(signs, setup.least_sigma);
+        let guesses = start.guess(signs(two_way, setup), setup.least_sigma);
+        Filter::begin_with(start.rows(), guesses, two_way, setup)
+    }
+
+    /// The same from all the `rows` taken so far, with the noise learned from them.
+    pub(crate) fn begun_again(&self, rows: &[StartRow], setup: &Setup) -> Self {
+        let guesses = self.directions.each_ref().map(Direction::learned);
+        Filter::begin_with(rows, guesses, self.pace.two_way, setup)
+    }
+
+    fn begin_with(
+        rows: &[StartRow],
+        guesses: [FirstGuess; 2],
+        two_way: bool,
+        setup: &Setup,
+    ) -> Self {
+        let signs = signs(two_way, setup);
         let mut directions = [0, 1].map(|c| Direction::new(signs[c], &guesses[c]));
         let middle = if two_way { 0.0 } else { directions[0].offset };
         if !two_way {
             directions[0].offset = 0.0;
         }
-        let first = start.rows()[0];
+        let first = rows[0];
         let spread = guesses[0].noise.sigma + guesses[0].noise.tau[0];
         let phase_var = (1e6 * spread * spread).min(1e10);
         let x = if two_way {
@@ -119,7 +138,7 @@ impl Filter {
             structure: Structure::new(setup.scale),
             average_weights: PRIOR.map(|w| w as f32),
         };
-        for row in start.rows() {
+        for row in rows {
             filter.take(row, false);
         }
         filter

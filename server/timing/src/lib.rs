@@ -95,6 +95,7 @@ mod config;
 mod diagnosis;
 mod direction;
 mod drift_filter;
+mod early;
 mod erfcx_table;
 mod estimate;
 mod exponential;

@@ -7,6 +7,7 @@ use crate::blocks::Blocks;
 use crate::config::{ConfigError, LinkConfig};
 use crate::diagnosis::{Diagnosis, Wander};
 use crate::drift_filter::DriftFilter;
+use crate::early::Early;
 use crate::estimate::{Estimate, Reason, State, normal_half_width};
 use crate::filter::{Filter, Setup};
 use crate::forecast::{Forecast, Part};
@@ -67,6 +68,7 @@ enum Stage {
     /// Phase readings are filtered.
     Phase {
         filter: Filter,
+        early: Option<Early>,
         blocks: Option<Blocks>,
     },
     /// Drift readings are filtered.
@@ -263,15 +265,32 @@ impl Link {
                     return Outcome::Buffered;
                 }
                 let filter = Filter::begin(start, is_two_way, &setup);
-                let blocks = is_two_way.then(|| Blocks::new(start.rows()));
-                self.stage = Stage::Phase { filter, blocks };
+                self.stage = Stage::Phase {
+                    filter,
+                    early: Some(Early::new(start.rows())),
+                    blocks: is_two_way.then(Blocks::default),
+                };
                 Outcome::Used
             }
-            Stage::Phase { filter, blocks } => {
-                let outcome = match blocks {
-                    None => filter.take(&row, in_gap),
-                    Some(blocks) => blocks.take(filter, row, in_gap, &setup),
+            Stage::Phase {
+                filter,
+                early,
+                blocks,
+            } => {
+                let gathered = match blocks {
+                    None => Some((row, in_gap)),
+                    Some(blocks) => blocks.gather(row, in_gap, filter.latest.y),
                 };
+                let Some((row, in_gap)) = gathered else {
+                    return Outcome::Used;
+                };
+                let outcome = match early {
+                    None => filter.take(&row, in_gap),
+                    Some(first) => first.take(filter, blocks.as_mut(), (row, in_gap), &setup),
+                };
+                if early.as_ref().is_some_and(Early::is_full) {
+                    *early = None;
+                }
                 if !filter.lost() {
                     return outcome;
                 }
