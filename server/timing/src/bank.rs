@@ -227,6 +227,17 @@ impl Bank {
         m
     }
 
+    /// Covariance of phase and drift over the modes.
+    pub(crate) fn covariance(&self, m: &Mixture) -> f64 {
+        let (mut total, mut xy) = (0.0, 0.0);
+        for (j, w) in self.weights().into_iter().enumerate() {
+            let walk = self.walk(j);
+            xy += w * (walk.xy + (walk.x - m.x) * (walk.y - m.y));
+            total += w;
+        }
+        xy / total
+    }
+
     /// Corrects all modes by one sight; `centre` is its detail at the mixture's mean.
     pub(crate) fn correct(&mut self, sight: &Sight, mixture: &Mixture, centre: &Detail) {
         let share = 1.0 / sight.thinning;

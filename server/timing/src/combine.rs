@@ -61,6 +61,7 @@ pub fn combine(estimates: &[Estimate]) -> Option<Estimate> {
         low: drift - half_width,
         high: drift + half_width,
         drift_rate_per_s: slope,
+        phase_drift_covariance_ns: best.phase_drift_covariance_ns * deviation / best.deviation,
         last_reading_ns: newest,
         rows_used: estimates.iter().map(|e| e.rows_used).sum(),
         outliers: estimates.iter().map(|e| e.outliers).sum(),

@@ -237,6 +237,13 @@ impl Direction {
         self.late(e)
     }
 
+    /// Whether only the flat part of the density explains a value, where phase `x` is foretold
+    /// with variance `p`.
+    pub(crate) fn disbelieves(&self, value: f64, x: f64, p: f64) -> bool {
+        let e = self.sign() * (value - self.offset - x);
+        self.noise().detail(e, p).shares[4] > 0.5
+    }
+
     /// Distance within which outliers agree, µs.
     pub(crate) fn agreement(&self, p: f64) -> f64 {
         self.noise().reach() + 0.5 * p.sqrt()

@@ -10,6 +10,7 @@ use crate::holdover::{Belief, Structure};
 use crate::mode::{Step, slope_reach};
 use crate::outcome::Outcome;
 use crate::predict::Prediction;
+use crate::start::PhaseAt;
 
 /// A reading pulls no harder than this many deviations.
 const CLIP: f64 = 2.5;
@@ -134,13 +135,17 @@ impl DriftFilter {
             growth.walk * ahead
         };
         let variance = m.yy + stray;
+        let xy = self.bank.covariance(&m);
         Prediction {
             y: m.y + slope_reach(ahead) * m.d,
             variance,
             half_width: normal_half_width(variance.sqrt()),
             slope: m.d,
             x: m.x + ahead * m.y,
-            x_variance: m.xx + ahead * ahead * variance,
+            x_variance: m.xx + ahead * (2.0 * xy + ahead * variance),
+            xy: xy + ahead * variance,
+            // Where the integral of the drift begins.
+            first_phase: PhaseAt { x: 0.0, xx: 0.0 },
             white_fm: 1e-6,
             growth,
         }

@@ -64,6 +64,17 @@ pub struct Estimate {
     pub phase_ns: f64,
     /// Standard deviation of `phase_ns`, ns.
     pub phase_deviation_ns: f64,
+    /// Covariance of `phase_ns` and `drift`, ns.
+    pub phase_drift_covariance_ns: f64,
+    /// The same phase at the time of the first reading, ns, as all of the first readings show
+    /// it, 256 of them (blocks of four count as one) or as many as there are: the single first
+    /// reading is off by its own error. `phase_ns` − `first_phase_ns` is what the clock has
+    /// gained on the reference since then. A constant latency is in both, and
+    /// cancels.
+    pub first_phase_ns: f64,
+    /// Standard deviation of `first_phase_ns`, ns. Its error and that of `phase_ns` are as good
+    /// as independent once the link has run for several times its first readings.
+    pub first_phase_deviation_ns: f64,
     /// Reference time the estimate speaks of, ns.
     pub as_of_ns: i64,
     /// Reference time of the last reading taken; absent when there was none.
@@ -141,6 +152,9 @@ pub fn exact(at_reference_ns: i64) -> Estimate {
         drift_rate_per_s: 0.0,
         phase_ns: 0.0,
         phase_deviation_ns: 0.0,
+        phase_drift_covariance_ns: 0.0,
+        first_phase_ns: 0.0,
+        first_phase_deviation_ns: 0.0,
         as_of_ns: at_reference_ns,
         last_reading_ns: None,
         rows_used: 0,
@@ -192,6 +206,12 @@ pub fn compose(device_vs_host: &Estimate, host_vs_house: &Estimate) -> Estimate 
         drift_rate_per_s: gain_a * a.drift_rate_per_s + gain_b * b.drift_rate_per_s,
         phase_ns: a.phase_ns + b.phase_ns,
         phase_deviation_ns: libm::hypot(a.phase_deviation_ns, b.phase_deviation_ns),
+        phase_drift_covariance_ns: a.phase_drift_covariance_ns + b.phase_drift_covariance_ns,
+        first_phase_ns: a.first_phase_ns + b.first_phase_ns,
+        first_phase_deviation_ns: libm::hypot(
+            a.first_phase_deviation_ns,
+            b.first_phase_deviation_ns,
+        ),
         as_of_ns: b.as_of_ns,
         last_reading_ns: b.last_reading_ns,
         rows_used: a.rows_used + b.rows_used,

@@ -8,7 +8,7 @@ use crate::growth::Growth;
 use crate::holdover::{Belief, Structure};
 use crate::mode::{Step, Walk};
 use crate::outcome::{Event, Outcome};
-use crate::start::{FirstGuess, Start, StartRow};
+use crate::start::{FirstGuess, PhaseAt, Start, StartRow};
 
 /// Rows before a jump of the drift is believed.
 const JUMP_ROWS: u16 = 24;
@@ -43,6 +43,7 @@ pub(crate) struct Filter {
     pace: Pace,
     pub(crate) structure: Structure,
     average_weights: [f32; MODES],
+    pub(crate) first_phase: PhaseAt,
 }
 
 /// The filter after its last row.
@@ -87,17 +88,40 @@ impl Filter {
     /// Begins from the rows gathered, and takes them one after another.
     pub(crate) fn begin(start: &Start, two_way: bool, setup: &Setup) -> Self {
         let guesses = start.guess(signs(two_way, setup), setup.least_sigma);
-        Filter::begin_with(start.rows(), guesses, two_way, setup)
+        let begun = Filter::through(start.rows().iter().copied(), guesses, two_way, setup);
+        begun.smoothed(start.rows(), setup)
     }
 
     /// The same from all the `rows` taken so far, with the noise learned from them.
     pub(crate) fn begun_again(&self, rows: &[StartRow], setup: &Setup) -> Self {
-        let guesses = self.directions.each_ref().map(Direction::learned);
-        Filter::begin_with(rows, guesses, self.pace.two_way, setup)
+        let two_way = self.pace.two_way;
+        let begun = Filter::through(rows.iter().copied(), self.learned(), two_way, setup);
+        begun.smoothed(rows, setup)
     }
 
-    fn begin_with(
-        rows: &[StartRow],
+    fn learned(&self) -> [FirstGuess; 2] {
+        self.directions.each_ref().map(Direction::learned)
+    }
+
+    /// With the phase at the time of the first reading as all `rows` show it: a filter goes
+    /// through them backwards, which makes every drift its opposite and leaves phases alone.
+    fn smoothed(mut self, rows: &[StartRow], setup: &Setup) -> Self {
+        let mirrored = rows.iter().rev().map(|row| StartRow {
+            t_s: -row.t_s,
+            z: row.z,
+        });
+        let back = Filter::through(mirrored, self.learned(), self.pace.two_way, setup);
+        let at_first = back.predict(rows[0].t_s, false);
+        self.first_phase = PhaseAt {
+            x: at_first.x,
+            xx: at_first.x_variance,
+        };
+        self
+    }
+
+    /// A new filter after all of the rows.
+    fn through(
+        rows: impl Iterator<Item = StartRow> + Clone,
         guesses: [FirstGuess; 2],
         two_way: bool,
         setup: &Setup,
@@ -108,7 +132,7 @@ impl Filter {
         if !two_way {
             directions[0].offset = 0.0;
         }
-        let first = rows[0];
+        let first = rows.clone().next().expect("a filter begins from some rows");
         let spread = guesses[0].noise.sigma + guesses[0].noise.tau[0];
         let phase_var = (1e6 * spread * spread).min(1e10);
         let x = if two_way {
@@ -137,9 +161,10 @@ impl Filter {
             },
             structure: Structure::new(setup.scale),
             average_weights: PRIOR.map(|w| w as f32),
+            first_phase: PhaseAt { x, xx: phase_var },
         };
         for row in rows {
-            filter.take(row, false);
+            filter.take(&row, false);
         }
         filter
     }
@@ -197,6 +222,13 @@ impl Filter {
     /// The directions that measure: one, or both of a two-way path.
     pub(crate) fn measuring(&self) -> impl Iterator<Item = &Direction> {
         self.directions[..if self.pace.two_way { 2 } else { 1 }].iter()
+    }
+
+    /// Whether every direction holds a row after a gap for impossible.
+    pub(crate) fn disbelieves(&self, t_s: f64, z: [f64; 2]) -> bool {
+        let p = self.predict((t_s - self.latest.t_s).max(0.0), true);
+        let mut seen = self.measuring().zip(z);
+        seen.all(|(direction, z)| direction.disbelieves(z, p.x, p.x_variance))
     }
 
     /// D(h) as far as it is known.
@@ -353,7 +385,7 @@ impl Filter {
             let off = walk.y - mixture.y;
             let strayed = off * off > 9.0 * (walk.yy + mixture.yy);
             if strayed || (idle && weight < 3e-4) {
-                let xy = self.mixed_covariance(mixture);
+                let xy = self.bank.covariance(mixture);
                 let state = Walk {
                     x: mixture.x,
                     y: mixture.y,
@@ -364,17 +396,6 @@ impl Filter {
                 self.bank.reseed(j, state);
             }
         }
-    }
-
-    fn mixed_covariance(&self, m: &Mixture) -> f64 {
-        let mut total = 0.0;
-        let mut xy = 0.0;
-        for (j, w) in self.bank.weights().into_iter().enumerate() {
-            let walk = self.bank.walk(j);
-            xy += w * (walk.xy + (walk.x - m.x) * (walk.y - m.y));
-            total += w;
-        }
-        xy / total
     }
 
     /// Follows a jump of the drift once the jump mode explains nearly everything.

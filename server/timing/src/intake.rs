@@ -10,15 +10,17 @@ use crate::outcome::Refusal;
 const RESTART_FALL: u64 = 100_000;
 
 /// One measurement in filter units: seconds since the first reading, µs and ppm.
-#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+#[derive(Clone, Copy, Debug, PartialEq)]
 pub(crate) struct Row {
     /// Reference time since the first reading, s.
     pub(crate) t_s: f64,
     pub(crate) values: Values,
+    /// Where counters are unwrapped from once the row is believed.
+    anchor: Option<Anchor>,
 }
 
 /// What a row says.
-#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+#[derive(Clone, Copy, Debug, PartialEq)]
 pub(crate) enum Values {
     /// Clock minus reference, µs.
     OneWay(f64),
@@ -28,30 +30,47 @@ pub(crate) enum Values {
     Drift(f64, f64),
 }
 
+/// An integer of 128 bits that is aligned as one of 64, to save room.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+struct Wide {
+    high: i64,
+    low: u64,
+}
+
+impl From<i128> for Wide {
+    fn from(value: i128) -> Self {
+        Wide {
+            high: (value >> 64) as i64,
+            low: value as u64,
+        }
+    }
+}
+
+impl Wide {
+    fn get(self) -> i128 {
+        (i128::from(self.high) << 64) | i128::from(self.low)
+    }
+}
+
 /// What the first measurement fixed, and where unwrapping stands.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
 enum Origin {
     Counter {
-        bits: u32,
-        reference_ns: i64,
+        bits: u8,
         report: bool,
+        first_count: u64,
         anchor: Anchor,
-        latest: Anchor,
     },
     Exchange {
-        clock_ns: i128,
-        reference_ns: i64,
+        clock_ns: Wide,
     },
-    Frequency {
-        reference_ns: i64,
-    },
+    Frequency,
 }
 
-/// A counter value with its unwrapped ticks since the first reading.
+/// A counter as it would stand had it never wrapped.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
 struct Anchor {
-    count: u64,
-    ticks: i128,
+    unwrapped: Wide,
     reference_ns: i64,
 }
 
@@ -59,46 +78,39 @@ struct Anchor {
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub(crate) struct Intake {
     nominal_hz: Ratio<u64>,
-    last: Option<Last>,
-    origin: Option<Origin>,
+    seen: Option<Seen>,
 }
 
+/// What is kept of the first measurement and of the last.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
-struct Last {
-    sequence: u64,
-    reference_ns: i64,
+struct Seen {
+    last_sequence: u64,
+    last_reference_ns: i64,
+    first_reference_ns: i64,
+    origin: Origin,
 }
 
 impl Intake {
     pub(crate) fn new(nominal_hz: Ratio<u64>) -> Self {
         Intake {
             nominal_hz,
-            last: None,
-            origin: None,
+            seen: None,
         }
     }
 
     /// Reference time of the last measurement taken, ns.
     pub(crate) fn last_reference_ns(&self) -> Option<i64> {
-        self.last.map(|last| last.reference_ns)
+        self.seen.map(|seen| seen.last_reference_ns)
     }
 
     /// A reference time as seconds since the first reading.
     pub(crate) fn seconds(&self, at_reference_ns: i64) -> f64 {
-        let origin_ns = match self.origin {
-            None => return 0.0,
-            Some(
-                Origin::Counter { reference_ns, .. }
-                | Origin::Exchange { reference_ns, .. }
-                | Origin::Frequency { reference_ns },
-            ) => reference_ns,
-        };
-        to_f64(at_reference_ns as i128 - origin_ns as i128) * 1e-9
+        self.seen.map_or(0.0, |seen| seen.seconds(at_reference_ns))
     }
 
     /// Tick of the counter, or of the timestamps, µs.
     pub(crate) fn quantum_us(&self) -> f64 {
-        match self.origin {
+        match self.seen.map(|seen| seen.origin) {
             Some(Origin::Counter { .. }) => {
                 1e6 * *self.nominal_hz.denom() as f64 / *self.nominal_hz.numer() as f64
             }
@@ -115,76 +127,114 @@ impl Intake {
         drift_ppm: f64,
     ) -> Result<Option<Row>, Refusal> {
         check_ranges(m)?;
-        self.check_kind(m)?;
         let reference_ns = m.reference_ns();
-        if let Some(last) = self.last {
-            if sequence <= last.sequence && last.sequence - sequence < RESTART_FALL {
+        if let Some(seen) = &self.seen {
+            seen.check_kind(m)?;
+            if sequence <= seen.last_sequence && seen.last_sequence - sequence < RESTART_FALL {
                 return Ok(None);
             }
-            if reference_ns <= last.reference_ns {
-                let field = if matches!(m, Measurement::Exchange { .. }) {
-                    "t3_ns"
-                } else {
-                    "reference_ns"
-                };
-                return Err(Refusal::TimeWentBack {
-                    field,
-                    value: reference_ns,
-                    last: last.reference_ns,
-                });
-            }
+            seen.check_time(m)?;
         }
-        self.last = Some(Last {
-            sequence,
-            reference_ns,
-        });
-        let values = match *m {
-            Measurement::Counter {
-                count,
-                bits,
-                reference_ns,
-            } => Values::OneWay(self.counter(count, bits, reference_ns, false, drift_ppm)),
-            Measurement::SenderReport {
-                media_timestamp,
-                bits,
-                reference_ns,
-            } => Values::OneWay(self.counter(media_timestamp, bits, reference_ns, true, drift_ppm)),
+        let seen = self.seen.get_or_insert_with(|| Seen::first(m));
+        (seen.last_sequence, seen.last_reference_ns) = (sequence, reference_ns);
+        let (values, anchor) = match *m {
+            Measurement::Counter { count, .. }
+            | Measurement::SenderReport {
+                media_timestamp: count,
+                ..
+            } => {
+                let (z, anchor) = seen.counter(count, reference_ns, self.nominal_hz, drift_ppm);
+                (Values::OneWay(z), anchor)
+            }
             Measurement::Exchange {
                 t1_ns,
                 t2_ns,
                 t3_ns,
                 t4_ns,
-            } => Values::TwoWay(self.exchange([t1_ns, t2_ns, t3_ns, t4_ns], drift_ppm)),
-            Measurement::Frequency {
-                drift,
-                deviation,
-                reference_ns,
             } => {
-                self.origin
-                    .get_or_insert(Origin::Frequency { reference_ns });
-                Values::Drift(drift * 1e6, deviation * deviation * 1e12)
+                let z = seen.exchange([t1_ns, t2_ns, t3_ns, t4_ns], drift_ppm);
+                (Values::TwoWay(z), None)
             }
+            Measurement::Frequency {
+                drift, deviation, ..
+            } => (
+                Values::Drift(drift * 1e6, deviation * deviation * 1e12),
+                None,
+            ),
         };
         Ok(Some(Row {
-            t_s: self.seconds(reference_ns),
+            t_s: seen.seconds(reference_ns),
             values,
+            anchor,
         }))
     }
 
-    /// The latest counter value was believed: unwrap from it.
-    pub(crate) fn confirm(&mut self) {
-        if let Some(Origin::Counter { anchor, latest, .. }) = &mut self.origin {
-            *anchor = *latest;
+    /// A row was believed: unwrap from it.
+    pub(crate) fn confirm(&mut self, row: &Row) {
+        if let Some(Seen {
+            origin: Origin::Counter { anchor, .. },
+            ..
+        }) = &mut self.seen
+            && let Some(believed) = row.anchor
+        {
+            *anchor = believed;
         }
+    }
+}
+
+impl Seen {
+    fn first(m: &Measurement) -> Seen {
+        let reference_ns = m.reference_ns();
+        let (origin, first_reference_ns) = match *m {
+            Measurement::Counter { count, bits, .. }
+            | Measurement::SenderReport {
+                media_timestamp: count,
+                bits,
+                ..
+            } => {
+                let anchor = Anchor {
+                    unwrapped: i128::from(count).into(),
+                    reference_ns,
+                };
+                let origin = Origin::Counter {
+                    bits: bits as u8, // 1 to 64: the ranges were checked
+                    report: m.kind() == "sender report",
+                    first_count: count,
+                    anchor,
+                };
+                (origin, reference_ns)
+            }
+            Measurement::Exchange {
+                t1_ns,
+                t2_ns,
+                t3_ns,
+                t4_ns,
+            } => {
+                // The middle of the first exchange is where the phase begins.
+                let trip = (t4_ns as i128 - t1_ns as i128) - (t3_ns as i128 - t2_ns as i128);
+                let clock_ns = (t1_ns as i128 + trip / 2).into();
+                (Origin::Exchange { clock_ns }, t2_ns)
+            }
+            Measurement::Frequency { .. } => (Origin::Frequency, reference_ns),
+        };
+        Seen {
+            last_sequence: 0,
+            last_reference_ns: reference_ns,
+            first_reference_ns,
+            origin,
+        }
+    }
+
+    fn seconds(&self, at_reference_ns: i64) -> f64 {
+        to_f64(at_reference_ns as i128 - self.first_reference_ns as i128) * 1e-9
     }
 
     fn check_kind(&self, m: &Measurement) -> Result<(), Refusal> {
         let accepted = match self.origin {
-            None => return Ok(()),
-            Some(Origin::Counter { report: false, .. }) => "counter",
-            Some(Origin::Counter { report: true, .. }) => "sender report",
-            Some(Origin::Exchange { .. }) => "exchange",
-            Some(Origin::Frequency { .. }) => "frequency",
+            Origin::Counter { report: false, .. } => "counter",
+            Origin::Counter { report: true, .. } => "sender report",
+            Origin::Exchange { .. } => "exchange",
+            Origin::Frequency => "frequency",
         };
         if m.kind() != accepted {
             return Err(Refusal::KindChanged {
@@ -193,88 +243,79 @@ impl Intake {
             });
         }
         if let (
-            Some(Origin::Counter { bits: accepted, .. }),
+            Origin::Counter { bits: accepted, .. },
             Measurement::Counter { bits: value, .. }
             | Measurement::SenderReport { bits: value, .. },
         ) = (self.origin, *m)
-            && value != accepted
+            && value != u32::from(accepted)
         {
-            return Err(Refusal::WidthChanged { value, accepted });
+            return Err(Refusal::WidthChanged {
+                value,
+                accepted: accepted.into(),
+            });
         }
         Ok(())
     }
 
-    /// Clock minus reference in µs, from a counter unwrapped to what the drift foretells.
+    fn check_time(&self, m: &Measurement) -> Result<(), Refusal> {
+        let (value, last) = (m.reference_ns(), self.last_reference_ns);
+        if value > last {
+            return Ok(());
+        }
+        let field = if matches!(m, Measurement::Exchange { .. }) {
+            "t3_ns"
+        } else {
+            "reference_ns"
+        };
+        Err(Refusal::TimeWentBack { field, value, last })
+    }
+
+    /// Clock minus reference in µs, from a counter unwrapped to what the drift foretells, and
+    /// where to unwrap the next one from.
     fn counter(
-        &mut self,
+        &self,
         count: u64,
-        bits: u32,
         reference_ns: i64,
-        report: bool,
+        nominal_hz: Ratio<u64>,
         drift: f64,
-    ) -> f64 {
-        let first = Anchor {
-            count,
-            ticks: 0,
-            reference_ns,
-        };
-        let origin = self.origin.get_or_insert(Origin::Counter {
-            bits,
-            reference_ns,
-            report,
-            anchor: first,
-            latest: first,
-        });
+    ) -> (f64, Option<Anchor>) {
         let Origin::Counter {
+            bits,
+            first_count,
             anchor,
-            latest,
-            reference_ns: first_ns,
             ..
-        } = origin
+        } = self.origin
         else {
-            return 0.0; // check_kind has refused every other kind
+            return (0.0, None); // check_kind has refused every other kind
         };
-        let (numer, denom) = (
-            *self.nominal_hz.numer() as i128,
-            *self.nominal_hz.denom() as i128,
-        );
+        let (numer, denom) = (*nominal_hz.numer() as i128, *nominal_hz.denom() as i128);
         let elapsed_ns = reference_ns as i128 - anchor.reference_ns as i128;
         let foretold =
             to_f64(elapsed_ns) * 1e-9 * (numer as f64 / denom as f64) * (1.0 + drift * 1e-6);
         let modulus = 1_i128 << bits;
-        let gained = (count as i128 - anchor.count as i128) & (modulus - 1);
+        let last = anchor.unwrapped.get();
+        let gained = (count as i128 - last) & (modulus - 1);
         let wraps = (foretold as i128 - gained + modulus / 2) >> bits;
-        let ticks = anchor.ticks + gained + (wraps << bits);
-        *latest = Anchor {
-            count,
-            ticks,
-            reference_ns,
-        };
-        let (seconds, rest) = divided(ticks * denom, numer);
+        let unwrapped = last + gained + (wraps << bits);
+        let (seconds, rest) = divided((unwrapped - first_count as i128) * denom, numer);
         let (picoseconds, _) = divided(rest * 1_000_000_000_000, numer);
         let clock_ps = seconds * 1_000_000_000_000 + picoseconds;
-        let reference_ps = (reference_ns as i128 - *first_ns as i128) * 1000;
-        to_f64(clock_ps - reference_ps) * 1e-6
+        let reference_ps = (reference_ns as i128 - self.first_reference_ns as i128) * 1000;
+        let anchor = Anchor {
+            unwrapped: unwrapped.into(),
+            reference_ns,
+        };
+        (to_f64(clock_ps - reference_ps) * 1e-6, Some(anchor))
     }
 
     /// Clock minus reference going out and coming back, µs, both referred to t3.
-    fn exchange(&mut self, [t1, t2, t3, t4]: [i64; 4], drift: f64) -> [f64; 2] {
-        // The middle of the first exchange is where the phase begins.
-        let first_trip = (t4 as i128 - t1 as i128) - (t3 as i128 - t2 as i128);
-        let origin = self.origin.get_or_insert(Origin::Exchange {
-            clock_ns: t1 as i128 + first_trip / 2,
-            reference_ns: t2,
-        });
-        let Origin::Exchange {
-            clock_ns,
-            reference_ns,
-        } = *origin
-        else {
+    fn exchange(&self, [t1, t2, t3, t4]: [i64; 4], drift: f64) -> [f64; 2] {
+        let Origin::Exchange { clock_ns } = self.origin else {
             return [0.0; 2]; // check_kind has refused every other kind
         };
         let difference = |clock: i64, reference: i64| {
-            let clock = clock as i128 - clock_ns;
-            let reference = reference as i128 - reference_ns as i128;
+            let clock = clock as i128 - clock_ns.get();
+            let reference = reference as i128 - self.first_reference_ns as i128;
             to_f64(clock - reference) * 1e-3
         };
         let held_s = to_f64(t3 as i128 - t2 as i128) * 1e-9;

@@ -52,6 +52,8 @@ pub struct Link {
     rows_used: u64,
     /// Rows since the link began, or began anew.
     rows_since_start: u16,
+    /// The last row was set aside with its time.
+    doubted: bool,
     outliers: u64,
     history: History,
 }
@@ -95,6 +97,7 @@ impl Link {
             mean_interval_s: 0.0,
             rows_used: 0,
             rows_since_start: 0,
+            doubted: false,
             outliers: 0,
             history: History::default(),
         })
@@ -110,11 +113,21 @@ impl Link {
     pub fn observe(&mut self, sequence: u64, m: &Measurement) -> Result<Outcome, Refusal> {
         let before_ns = self.intake.last_reference_ns();
         let drift_ppm = self.drift_ppm();
+        let interval_s = before_ns.map_or(0.0, |ns| self.seconds_between(ns, m.reference_ns()));
+        let in_gap = self.is_gap(interval_s);
+        let before = (in_gap && !self.doubted).then(|| self.intake.clone());
         let Some(row) = self.intake.admit(sequence, m, drift_ppm)? else {
             return Ok(Outcome::Stale);
         };
-        let interval_s = before_ns.map_or(0.0, |ns| row.t_s - self.intake.seconds(ns));
-        let in_gap = self.is_gap(interval_s);
+        self.doubted = false;
+        if let Some(before) = before
+            && self.disbelieves(&row)
+        {
+            self.intake = before;
+            self.doubted = true;
+            self.outliers += 1;
+            return Ok(Outcome::Outlier);
+        }
         let outcome = self.take(&row, in_gap);
         self.keep_interval(interval_s, in_gap);
         match outcome {
@@ -122,7 +135,7 @@ impl Link {
             _ => {
                 self.rows_used += 1;
                 self.rows_since_start = self.rows_since_start.saturating_add(1);
-                self.intake.confirm();
+                self.intake.confirm(&row);
             }
         }
         if let Outcome::Event(event) = outcome {
@@ -133,6 +146,24 @@ impl Link {
         }
         self.watch_state(m.reference_ns(), before_ns, in_gap);
         Ok(outcome)
+    }
+
+    /// Whether a row that would end a gap has no explanation but that its time or its value is
+    /// wrong. It is then as if it had not come: believing its time would have all rows refused
+    /// until that time. The row after it is taken whatever it says.
+    fn disbelieves(&self, row: &Row) -> bool {
+        let Stage::Phase { filter, .. } = &self.stage else {
+            return false;
+        };
+        match row.values {
+            Values::OneWay(z) => filter.disbelieves(row.t_s, [z; 2]),
+            Values::TwoWay(z) => filter.disbelieves(row.t_s, z),
+            Values::Drift(..) => false,
+        }
+    }
+
+    fn seconds_between(&self, earlier_ns: i64, later_ns: i64) -> f64 {
+        self.intake.seconds(later_ns) - self.intake.seconds(earlier_ns)
     }
 
     /// Moves the state by what the row has left, and notes every change of it.
@@ -195,6 +226,9 @@ impl Link {
             drift_rate_per_s: 1e-6 * p.slope,
             phase_ns: 1e3 * p.x,
             phase_deviation_ns: 1e3 * p.x_variance.sqrt(),
+            phase_drift_covariance_ns: 1e-3 * p.xy,
+            first_phase_ns: 1e3 * p.first_phase.x,
+            first_phase_deviation_ns: 1e3 * p.first_phase.xx.sqrt(),
             as_of_ns,
             last_reading_ns,
             rows_used: self.rows_used,
@@ -352,7 +386,9 @@ impl Link {
                     half_width: normal_half_width(variance.sqrt()),
                     slope: 0.0,
                     x: line.x + ahead * line.y,
-                    x_variance: line.xx + ahead * ahead * variance,
+                    x_variance: line.xx + ahead * (2.0 * line.xy + ahead * variance),
+                    xy: line.xy + ahead * variance,
+                    first_phase: line.first_phase,
                     white_fm: 1e-6 * scale,
                     growth,
                 }
@@ -402,10 +438,12 @@ impl Link {
 /// and states. Second, the bytes by which exact integers are checked and unwrapped besides.
 pub fn hot_state_bytes() -> ([usize; 2], usize) {
     use crate::{bank::Bank, blocks::Block, direction::Direction};
-    let counters = size_of::<f32>() + size_of::<u64>() + size_of::<u16>();
+    let counters = size_of::<f32>() + size_of::<u64>() + size_of::<u16>() + size_of::<bool>();
+    // Whether first rows are still kept.
+    let early = size_of::<usize>();
     let states = size_of::<Lock>() + size_of::<State>();
     let filter = size_of::<Bank>() + size_of::<Direction>() + Filter::PACE_BYTES;
-    let one_way = filter + counters + states;
+    let one_way = filter + counters + early + states;
     let two_way = one_way + size_of::<Direction>() + size_of::<Option<Block>>();
     ([one_way, two_way], size_of::<Intake>())
 }

@@ -6,6 +6,7 @@ use crate::filter::Filter;
 use crate::growth::Growth;
 use crate::mode::slope_reach;
 use crate::normal::{Z95, cdf};
+use crate::start::PhaseAt;
 
 /// Widening of the interval for what a noise learned from `rows` rows does not know of itself,
 /// whose own relative error falls with the root of their number.
@@ -26,6 +27,9 @@ pub(crate) struct Prediction {
     pub(crate) slope: f64,
     pub(crate) x: f64,
     pub(crate) x_variance: f64,
+    /// Covariance of phase and drift.
+    pub(crate) xy: f64,
+    pub(crate) first_phase: PhaseAt,
     pub(crate) white_fm: f64,
     pub(crate) growth: Growth,
 }
@@ -52,10 +56,12 @@ impl Filter {
             slope: 0.0,
             x: 0.0,
             x_variance: 0.0,
+            xy: 0.0,
+            first_phase: self.first_phase,
             white_fm: 0.0,
             growth,
         };
-        let mut xs = [(0.0, 0.0); MODES];
+        let mut phases = [(0.0, 0.0, 0.0); MODES];
         let mut total = 0.0;
         for (j, weight) in self.bank.weights().into_iter().enumerate() {
             if weight < LEAST_WEIGHT {
@@ -88,7 +94,8 @@ impl Filter {
                 y,
                 deviation: variance.max(0.0).sqrt(),
             };
-            xs[j] = (x, x_var);
+            let xy = walk.xy + ahead_s * (walk.yy + 0.5 * grown);
+            phases[j] = (x, x_var, xy);
             total += weight;
             p.y += weight * y;
             p.x += weight * x;
@@ -97,11 +104,12 @@ impl Filter {
         for value in [&mut p.y, &mut p.x, &mut p.slope, &mut p.white_fm] {
             *value /= total;
         }
-        for (part, (x, x_var)) in parts.iter_mut().zip(xs) {
+        for (part, (x, x_var, xy)) in parts.iter_mut().zip(phases) {
             part.weight /= total;
             let (dy, dx) = (part.y - p.y, x - p.x);
             p.variance += part.weight * (part.deviation * part.deviation + dy * dy);
             p.x_variance += part.weight * (x_var + dx * dx);
+            p.xy += part.weight * (xy + dx * dy);
         }
         p.half_width = widening(self.rows()) * half_width(&parts, p.y, p.variance.sqrt());
         p

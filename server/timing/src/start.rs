@@ -34,8 +34,18 @@ pub(crate) struct Line {
     pub(crate) t_s: f64,
     pub(crate) x: f64,
     pub(crate) xx: f64,
+    pub(crate) xy: f64,
     pub(crate) y: f64,
     pub(crate) yy: f64,
+    /// Phase at the first row.
+    pub(crate) first_phase: PhaseAt,
+}
+
+/// A phase, µs, with its variance, µs².
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub(crate) struct PhaseAt {
+    pub(crate) x: f64,
+    pub(crate) xx: f64,
 }
 
 /// What the first rows say of one direction.
@@ -88,21 +98,32 @@ impl Start {
                 t_s: last,
                 x: mean_z,
                 xx: 1e10,
+                xy: 0.0,
                 y: 0.0,
                 yy: self.prior_var,
+                first_phase: PhaseAt {
+                    x: mean_z,
+                    xx: 1e10,
+                },
             };
         }
         let (slope, slope_var, row_var) = self.slope(mean_t, least_noise_us);
         let y = slope * self.prior_var / (self.prior_var + slope_var);
         let yy = slope_var * self.prior_var / (self.prior_var + slope_var);
         let ahead = last - mean_t;
-        let xx = row_var / count + yy * ahead * ahead;
+        let before = self.rows[0].t_s - mean_t;
+        let middle_var = row_var / count;
         Line {
             t_s: last,
             x: mean_z + y * ahead,
-            xx,
+            xx: middle_var + yy * ahead * ahead,
+            xy: yy * ahead,
             y,
             yy,
+            first_phase: PhaseAt {
+                x: mean_z + y * before,
+                xx: middle_var + yy * before * before,
+            },
         }
     }
 

@@ -148,6 +148,116 @@ fn a_reset_of_the_counter_is_a_step() {
     }
 }
 
+/// A reset by hours is 10¹⁰ µs: kept with the 24 bits of single precision anywhere on its way,
+/// the step would come out wrong by a thousand µs, and the phase and for minutes the drift with
+/// it. Only steps show this, and only huge ones.
+#[test]
+fn a_step_of_hours_leaves_phase_and_drift_as_exact_as_one_of_milliseconds() {
+    let worst = |by_s: f64, two_way: bool, seed: u64| -> (f64, f64) {
+        let upset = Upset {
+            at_ns: 1800 * NS,
+            what: Disturbance::PhaseStep(by_s),
+        };
+        let model = ClockModel {
+            drift: 9e-6,
+            upsets: vec![upset],
+            ..ClockModel::crystal()
+        };
+        let mut clock = Clock::new(model, seed);
+        let mut out = Path::new(path(), seed + 1);
+        let mut back = Path::new(path(), seed + 2);
+        let hz = Ratio::from_integer(HZ);
+        let mut link = Link::new(LinkConfig::new(hz)).unwrap();
+        let (mut drift_off, mut phase_off) = (0.0_f64, 0.0_f64);
+        for i in 1..3000 {
+            let at_ns = i * NS;
+            let reading = if two_way {
+                probe::exchange(&mut clock, &mut out, &mut back, at_ns)
+            } else {
+                probe::counter(&mut clock, &mut out, hz, 64, at_ns)
+            };
+            let Some(reading) = reading else { continue };
+            link.observe(i as u64, &reading).unwrap();
+            // The step is not part of the phase, so that neither is it of what is gained.
+            if i > 1830 {
+                let e = link.estimate(at_ns);
+                let gained_ns = (at_ns - NS) as f64 * 9e-6;
+                phase_off = phase_off.max((e.phase_ns - gained_ns).abs());
+                drift_off = drift_off.max((e.drift - clock.drift(at_ns)).abs());
+            }
+        }
+        assert_eq!(link.history().events.phase_steps, 1, "step of {by_s} s");
+        (drift_off, phase_off)
+    };
+    for two_way in [false, true] {
+        for (seed, by_s) in [
+            (1, 40_000.0),
+            (2, -40_000.0),
+            (3, 123_456.7),
+            (4, -654_321.1),
+        ] {
+            let (small_drift, small_phase) = worst(by_s.signum() * 25e-3, two_way, seed);
+            let (drift, phase) = worst(by_s, two_way, seed);
+            assert!(
+                drift < 1.5 * small_drift + 5e-9 && phase < small_phase + 50_000.0,
+                "step of {by_s} s, two-way {two_way}: drift off {drift} against {small_drift}, \
+                 phase {phase} ns against {small_phase}"
+            );
+        }
+    }
+}
+
+/// A reading whose reference time is wrong by an hour is as if it had not come; a clock that was
+/// reset while nothing came is followed from the second reading on.
+#[test]
+fn one_wrong_time_costs_one_reading() {
+    let hz = Ratio::from_integer(HZ);
+    let mut clock = Clock::new(ClockModel::crystal(), 3);
+    let mut path = Path::new(path(), 4);
+    let mut link = Link::new(LinkConfig::new(hz)).unwrap();
+    let mut sequence = 0;
+    let mut read = |link: &mut Link, at_ns: i64, wrong_ns: i64| {
+        let m = match probe::counter(&mut clock, &mut path, hz, 32, at_ns) {
+            Some(Measurement::Counter {
+                count,
+                bits,
+                reference_ns,
+            }) => Measurement::Counter {
+                count,
+                bits,
+                reference_ns: reference_ns + wrong_ns,
+            },
+            _ => return Ok(Outcome::Stale),
+        };
+        sequence += 1;
+        link.observe(sequence, &m)
+    };
+    for i in 1..600 {
+        read(&mut link, i * NS, 0).unwrap();
+    }
+    let before = link.estimate(600 * NS);
+    let wrong = read(&mut link, 600 * NS, 3600 * NS);
+    assert_eq!(wrong, Ok(Outcome::Outlier));
+    for i in 601..700 {
+        let outcome = read(&mut link, i * NS, 0);
+        assert!(outcome.is_ok(), "{outcome:?}");
+    }
+    let after = link.estimate(700 * NS);
+    assert_eq!(after.outliers - before.outliers, 1, "{after:?}");
+    assert!(after.rows_used > before.rows_used + 90);
+    assert_eq!(after.state, State::Locked);
+
+    // Half an hour without readings, and all later ones an hour ahead: the second is believed.
+    assert_eq!(read(&mut link, 2500 * NS, 3600 * NS), Ok(Outcome::Outlier));
+    let used = link.estimate(6102 * NS).rows_used;
+    for i in 2501..2700 {
+        read(&mut link, i * NS, 3600 * NS).unwrap();
+    }
+    let e = link.estimate(6300 * NS);
+    assert_eq!(e.last_reading_ns.map(|ns| ns / NS), Some(6299));
+    assert!(e.rows_used > used + 150, "{e:?}");
+}
+
 #[test]
 fn a_longer_route_one_way_moves_no_clock() {
     for (seed, longer_s) in [(0, 400e-6), (1, -400e-6), (2, 900e-6), (3, -900e-6)] {

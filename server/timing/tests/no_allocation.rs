@@ -34,7 +34,7 @@ static ALLOCATOR: Counting = Counting;
 
 const NS: i64 = 1_000_000_000;
 
-/// Allocations from the 70th measurement on.
+/// Allocations from the 70th measurement on, by when two-way links take blocks.
 fn allocations(readings: &[Measurement]) -> u64 {
     let mut link = Link::new(LinkConfig::new(Ratio::from_integer(48_000))).unwrap();
     let (first, rest) = readings.split_at(70);

@@ -15,6 +15,8 @@ pub(crate) struct Tally {
     covered: Vec<f64>,
     covered_start: Vec<f64>,
     covered_first: Vec<f64>,
+    /// The same by octaves of the number of readings, from 4 on.
+    covered_octaves: [Vec<f64>; OCTAVES],
     times: [Vec<f64>; 3],
     gaps: Vec<(i64, f64, bool)>,
     rivals: [(f64, f64); 3],
@@ -24,6 +26,9 @@ pub(crate) struct Tally {
     found: Vec<f64>,
     events: f64,
 }
+
+/// Octaves of the number of readings that are looked at: 4 to 8, up to 2048 to 4096.
+const OCTAVES: usize = 10;
 
 /// The figures of a row.
 pub(crate) struct Figures {
@@ -105,6 +110,11 @@ impl Tally {
         let first = |a: &Answer| a.start && a.t_s - trial.first_t_s < 120.0;
         self.covered_first
             .extend(share(trial.answers.iter().copied().filter(first)));
+        for (k, octave) in self.covered_octaves.iter_mut().enumerate() {
+            let least = f64::from(4 << k);
+            let within = |a: &Answer| a.start && (least..2.0 * least).contains(&a.readings);
+            octave.extend(share(trial.answers.iter().copied().filter(within)));
+        }
         for (times, limit) in self.times.iter_mut().zip([10.0, 1.0, 0.1]) {
             times.push(settle(&trial, limit));
         }
@@ -144,6 +154,9 @@ impl Tally {
         self.covered.extend(other.covered);
         self.covered_start.extend(other.covered_start);
         self.covered_first.extend(other.covered_first);
+        for (octave, more) in self.covered_octaves.iter_mut().zip(other.covered_octaves) {
+            octave.extend(more);
+        }
         for (times, more) in self.times.iter_mut().zip(other.times) {
             times.extend(more);
         }
@@ -177,12 +190,26 @@ impl Tally {
         }
     }
 
+    fn octaves(&self) -> String {
+        let mut line = String::from("  by readings:");
+        for (k, octave) in self.covered_octaves.iter().enumerate() {
+            if octave.is_empty() {
+                continue;
+            }
+            let (covered, error) = mean_and_error(octave);
+            let least = 4 << k;
+            line += &format!(" from {least} {covered:.3} ± {error:.3},");
+        }
+        line.trim_end_matches(',').to_owned()
+    }
+
     /// The first minutes; holdover and events, where there are any.
     pub(crate) fn extra_lines(&self) -> Vec<String> {
         let (covered, error) = mean_and_error(&self.covered_first);
         let mut lines = vec![format!(
             "  first two minutes: coverage {covered:.3} ± {error:.3}"
         )];
+        lines.push(self.octaves());
         for (length, name) in [(72, "1 min"), (3600, "1 h"), (86_400, "24 h")] {
             let errors: Vec<_> = self.gaps.iter().filter(|gap| gap.0 == length).collect();
             if errors.is_empty() {

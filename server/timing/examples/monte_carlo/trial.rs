@@ -10,6 +10,8 @@ use crate::scenarios::{NS, Scenario, World};
 #[derive(Clone, Copy)]
 pub(crate) struct Answer {
     pub(crate) t_s: f64,
+    /// Readings so far, lost ones left out.
+    pub(crate) readings: f64,
     pub(crate) error_ppm: f64,
     pub(crate) covered: bool,
     pub(crate) steady: bool,
@@ -60,7 +62,7 @@ pub(crate) fn run(scenario: &Scenario, seed: u64) -> Trial {
         while query_ns < at_ns {
             if sequence > 0 {
                 let answer = ask(
-                    scenario, &mut world, &link, &mut bound, &rivals, query_ns, &trial,
+                    scenario, &mut world, &link, &mut bound, &rivals, query_ns, &trial, sequence,
                 );
                 trial.answers.push(answer);
             }
@@ -126,6 +128,7 @@ fn ask(
     rivals: &Rivals,
     at_ns: i64,
     trial: &Trial,
+    readings: u64,
 ) -> Answer {
     let t_s = at_ns as f64 / 1e9;
     let truth = world.clock.drift(at_ns);
@@ -152,6 +155,7 @@ fn ask(
     let ppm = |drift: f64| (drift - truth) * 1e6;
     Answer {
         t_s,
+        readings: readings as f64,
         error_ppm: ppm(e.drift),
         covered: e.low <= truth && truth <= e.high,
         steady: t_s > settled && !near_gap && !near_event,

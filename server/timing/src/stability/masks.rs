@@ -45,12 +45,12 @@ const fn segment(
     }
 }
 
-/// The masks known here. The Recommendations themselves were not re-read: the figures are
-/// those of a published transcription.
+/// The masks known here. The Recommendations themselves were not read: the figures are those
+/// of a published transcription, and agree with what is remembered of them.
 pub const MASKS: [Mask; 3] = [
     Mask {
         name: "EEC option 1, MTIE wander generation at constant temperature",
-        source: "ITU-T G.8262 (07/2010) clause 8.1, as commonly transcribed, not re-read",
+        source: "ITU-T G.8262 (07/2010) clause 8.1, as transcribed, not re-read",
         limits_tdev: false,
         segments: &[
             segment(0.1, 1.0, 0.0, 40.0, 0.0),
@@ -60,7 +60,7 @@ pub const MASKS: [Mask; 3] = [
     },
     Mask {
         name: "EEC option 1, TDEV wander generation at constant temperature",
-        source: "ITU-T G.8262 (07/2010) clause 8.1, as commonly transcribed, not re-read",
+        source: "ITU-T G.8262 (07/2010) clause 8.1, as transcribed, not re-read",
         limits_tdev: true,
         segments: &[
             segment(0.1, 25.0, 3.2, 0.0, 0.0),
@@ -68,9 +68,11 @@ pub const MASKS: [Mask; 3] = [
             segment(100.0, 1000.0, 6.4, 0.0, 0.0),
         ],
     },
+    // What follows beyond 2000 s is left out: the transcription has 433τ^0.2 + 0.01τ, of which
+    // the second term, as remembered from G.823 (0.01τ in µs), should be a thousand times more.
     Mask {
         name: "EEC network limit, MTIE (option 1)",
-        source: "ITU-T G.8261 clause 9.2, as commonly transcribed, not re-read",
+        source: "ITU-T G.8261 clause 9.2, as transcribed, not re-read",
         limits_tdev: false,
         segments: &[
             segment(0.1, 2.5, 250.0, 0.0, 0.0),
