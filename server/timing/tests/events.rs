@@ -191,7 +191,7 @@ fn a_step_of_hours_leaves_phase_and_drift_as_exact_as_one_of_milliseconds() {
     };
     for two_way in [false, true] {
         for (seed, by_s) in [
-            (1, 40_000.0),
+            (1, 40_000.0_f64),
             (2, -40_000.0),
             (3, 123_456.7),
             (4, -654_321.1),
