@@ -11,9 +11,6 @@ use crate::filter::{Filter, Setup};
 use crate::outcome::Outcome;
 use crate::start::StartRow;
 
-/// Rows after which the noise is known well enough to go on with.
-const MOST: usize = 256;
-
 /// The first rows of a filter.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub(crate) struct Early {
@@ -23,9 +20,12 @@ pub(crate) struct Early {
 }
 
 impl Early {
+    /// Rows after which the noise is known well enough to go on with.
+    pub(crate) const MOST: u16 = 256;
+
     /// Begins with the rows that a filter has begun with.
     pub(crate) fn new(rows: &[StartRow]) -> Self {
-        let mut kept = Vec::with_capacity(MOST);
+        let mut kept = Vec::with_capacity(usize::from(Self::MOST));
         kept.extend_from_slice(rows);
         Early {
             rows: kept,
@@ -35,7 +35,7 @@ impl Early {
 
     /// Whether there are enough of them.
     pub(crate) fn is_full(&self) -> bool {
-        self.rows.len() >= MOST
+        self.rows.len() >= usize::from(Self::MOST)
     }
 
     /// Takes a row into the filter, which may begin anew; where `blocks` begin, by blocks.

@@ -127,18 +127,14 @@ impl Filter {
         setup: &Setup,
     ) -> Self {
         let signs = signs(two_way, setup);
-        let mut directions = [0, 1].map(|c| Direction::new(signs[c], &guesses[c]));
-        let middle = if two_way { 0.0 } else { directions[0].offset };
-        if !two_way {
-            directions[0].offset = 0.0;
-        }
+        let directions = [0, 1].map(|c| Direction::new(signs[c], &guesses[c]));
         let first = rows.clone().next().expect("a filter begins from some rows");
         let spread = guesses[0].noise.sigma + guesses[0].noise.tau[0];
         let phase_var = (1e6 * spread * spread).min(1e10);
         let x = if two_way {
             0.5 * (first.z[0] + first.z[1])
         } else {
-            middle
+            first.z[0] - directions[0].offset
         };
         let bank = Bank::new(x, phase_var, setup.prior_var, setup.scale);
         let mut filter = Filter {

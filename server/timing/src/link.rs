@@ -319,12 +319,17 @@ impl Link {
                     return Outcome::Used;
                 };
                 let outcome = match early {
+                    // Once the filter has as many rows, nothing early is looked at any more.
+                    _ if filter.rows() >= Early::MOST => filter.take(&row, in_gap),
                     None => filter.take(&row, in_gap),
-                    Some(first) => first.take(filter, blocks.as_mut(), (row, in_gap), &setup),
+                    Some(first) => {
+                        let outcome = first.take(filter, blocks.as_mut(), (row, in_gap), &setup);
+                        if first.is_full() {
+                            *early = None;
+                        }
+                        outcome
+                    }
                 };
-                if early.as_ref().is_some_and(Early::is_full) {
-                    *early = None;
-                }
                 if !filter.lost() {
                     return outcome;
                 }
@@ -439,11 +444,9 @@ impl Link {
 pub fn hot_state_bytes() -> ([usize; 2], usize) {
     use crate::{bank::Bank, blocks::Block, direction::Direction};
     let counters = size_of::<f32>() + size_of::<u64>() + size_of::<u16>() + size_of::<bool>();
-    // Whether first rows are still kept.
-    let early = size_of::<usize>();
     let states = size_of::<Lock>() + size_of::<State>();
     let filter = size_of::<Bank>() + size_of::<Direction>() + Filter::PACE_BYTES;
-    let one_way = filter + counters + early + states;
+    let one_way = filter + counters + states;
     let two_way = one_way + size_of::<Direction>() + size_of::<Option<Block>>();
     ([one_way, two_way], size_of::<Intake>())
 }

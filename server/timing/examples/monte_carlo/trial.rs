@@ -28,6 +28,8 @@ pub(crate) struct Answer {
 pub(crate) struct Trial {
     pub(crate) answers: Vec<Answer>,
     pub(crate) first_t_s: f64,
+    /// Readings so far, lost ones left out.
+    pub(crate) readings: u64,
     pub(crate) first_event_s: f64,
     /// Events of the world and what the estimator called, s.
     pub(crate) events: Vec<f64>,
@@ -48,6 +50,7 @@ pub(crate) fn run(scenario: &Scenario, seed: u64) -> Trial {
     let mut trial = Trial {
         answers: Vec::new(),
         first_t_s: 0.0,
+        readings: 0,
         first_event_s: world
             .events
             .first()
@@ -57,23 +60,22 @@ pub(crate) fn run(scenario: &Scenario, seed: u64) -> Trial {
         call_window_s: 600.0 * scenario.interval_s.max(1.0),
     };
     let mut query_ns = NS / 2;
-    let mut sequence = 0;
     while let Some((at_ns, m)) = world.next() {
         while query_ns < at_ns {
-            if sequence > 0 {
+            if trial.readings > 0 {
                 let answer = ask(
-                    scenario, &mut world, &link, &mut bound, &rivals, query_ns, &trial, sequence,
+                    scenario, &mut world, &link, &mut bound, &rivals, query_ns, &trial,
                 );
                 trial.answers.push(answer);
             }
             query_ns += query_step(query_ns);
         }
         let Some(m) = m else { continue };
-        if sequence == 0 {
+        if trial.readings == 0 {
             trial.first_t_s = at_ns as f64 / 1e9;
         }
-        let outcome = link.observe(sequence, &m);
-        sequence += 1;
+        let outcome = link.observe(trial.readings, &m);
+        trial.readings += 1;
         if let Ok(Outcome::Event(event)) = outcome {
             trial.calls.push((at_ns as f64 / 1e9, event));
         }
@@ -128,7 +130,6 @@ fn ask(
     rivals: &Rivals,
     at_ns: i64,
     trial: &Trial,
-    readings: u64,
 ) -> Answer {
     let t_s = at_ns as f64 / 1e9;
     let truth = world.clock.drift(at_ns);
@@ -155,7 +156,7 @@ fn ask(
     let ppm = |drift: f64| (drift - truth) * 1e6;
     Answer {
         t_s,
-        readings: readings as f64,
+        readings: trial.readings as f64,
         error_ppm: ppm(e.drift),
         covered: e.low <= truth && truth <= e.high,
         steady: t_s > settled && !near_gap && !near_event,
