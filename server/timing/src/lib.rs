@@ -3,7 +3,7 @@
 //! A [`Link`] is the estimator of one clock read against one reference by one probe. Feed it
 //! [`Measurement`]s in the order of reference time with [`Link::observe`]; ask
 //! [`Link::estimate`] for the [`Estimate`] at any time from the last reading on. [`compose`]
-//! chains a device against a host with the host against the house, [`combine`] joins several
+//! chains a device against a host with the host against the house, [`combine()`] joins several
 //! probes of one clock. [`stability`] has the statistics of the trade, [`sim`] a world of
 //! seeded clocks and paths to test against.
 //!
