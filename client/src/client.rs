@@ -1,5 +1,7 @@
 //! Connecting, and the calls that ask once.
 
+mod hand;
+
 use std::future::Future;
 use std::sync::Arc;
 

@@ -18,6 +18,53 @@ pub struct ClockDeclaration {
     pub exact: bool,
     /// Largest |drift| the maker declares, ppm.
     pub tolerance_ppm: Option<f64>,
+    /// Kind of its oscillator: what is believed before it is measured.
+    pub oscillator: Option<Oscillator>,
+    /// Which way its one-way readings err when they are not punctual.
+    pub tail: Option<LatencyTail>,
+    /// Known step of its counter or of its timestamps, ns, 1 to 10^9.
+    pub quantum_ns: Option<i64>,
+    /// True if stability statistics of it are to be kept.
+    pub statistics: bool,
+}
+
+impl ClockDeclaration {
+    /// A clock of which nothing but the nominal rate, Hz, is declared.
+    pub fn new(id: Id, nominal_hz: Ratio<u64>) -> Self {
+        Self {
+            id,
+            display_name: String::new(),
+            nominal_hz,
+            exact: false,
+            tolerance_ppm: None,
+            oscillator: None,
+            tail: None,
+            quantum_ns: None,
+            statistics: false,
+        }
+    }
+}
+
+/// Kinds of oscillators. The tolerances are common practice.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Oscillator {
+    /// Uncompensated crystal: within 100 ppm or so.
+    Crystal,
+    /// Temperature-compensated crystal: within a few ppm.
+    Compensated,
+    /// Oven-controlled crystal: within 1 ppm, years of ageing included.
+    Oven,
+    /// Rubidium or caesium: within 1e-9.
+    Atomic,
+}
+
+/// Which of the two sides of a one-way reading comes late when it is not punctual.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum LatencyTail {
+    /// The reference is read late after the counter, or the report arrives late.
+    ReferenceLate,
+    /// The counter is read late after the reference.
+    CounterLate,
 }
 
 /// A clock and what its readings say.
@@ -27,6 +74,8 @@ pub struct Clock {
     pub declaration: ClockDeclaration,
     /// What is known of it.
     pub estimate: Estimate,
+    /// What is wrong with it, in words and numbers, if anything is known to be.
+    pub fault: Option<String>,
 }
 
 /// How good an estimate is (terms of ITU-T G.810 and G.781).
@@ -101,6 +150,39 @@ pub struct CrossingDeclaration {
     pub lead_ns: i64,
     /// Longest time a setting is trusted unrenewed, ns.
     pub review_horizon_ns: i64,
+    /// Least time between two settings that change what is run, ns, 0 for none to 1 h.
+    pub least_hold_ns: i64,
+    /// Fastest change of pitch to bring the phase error back, ppm, 0.1 to 1000.
+    pub pitch_limit_ppm: f64,
+    /// True for a trial: settings are decided and recorded, but no watcher or follower hears of
+    /// them.
+    pub silent: bool,
+    /// Clock of another source that can carry the same stream.
+    pub backup: Option<Id>,
+}
+
+impl CrossingDeclaration {
+    /// A crossing of two clocks with these bounds and, for the rest, the defaults of the contract:
+    /// one sample of headroom, a cadence, no group, 1 s of lead, a review every 24 h, no least hold,
+    /// 20 ppm of pitch, not silent, no backup.
+    pub fn new(id: Id, source: Id, sink: Id, bounds: Bounds) -> Self {
+        Self {
+            id,
+            display_name: String::new(),
+            source,
+            sink,
+            bounds,
+            headroom_samples: 1.0,
+            realisation: Realisation::Cadence,
+            group: None,
+            lead_ns: 1_000_000_000,
+            review_horizon_ns: 86_400_000_000_000,
+            least_hold_ns: 0,
+            pitch_limit_ppm: 20.0,
+            silent: false,
+            backup: None,
+        }
+    }
 }
 
 /// What a resampler can do to reach a ratio that its bank does not hold.
@@ -110,6 +192,10 @@ pub enum Realisation {
     Single,
     /// Two L/M in turn at block ends.
     Cadence,
+    /// One table of as many phases as the largest L, and one of two advances for each output.
+    Stepping,
+    /// Two L/M, each held until the running error would leave a swing.
+    Lazy,
 }
 
 /// A crossing and how it fares.
@@ -167,4 +253,21 @@ pub struct CrossingStatus {
     /// What the newest setting is off by now: its average over the target, minus 1; positive
     /// fills the sink's buffer; 0 if there is none.
     pub residual: f64,
+    /// Who pinned it, if it is pinned.
+    pub pin: Option<Pin>,
+    /// Clock of the source in use: the declared one or the backup.
+    pub source: Id,
+    /// Smallest bounds that would hold it, if it is out of bounds and there are any.
+    pub needed: Option<Bounds>,
+}
+
+/// A crossing is pinned: what it runs stays.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct Pin {
+    /// Who pinned it.
+    pub by: String,
+    /// House time since when, ns.
+    pub since_ns: i64,
+    /// Why, in the operator's words; may be empty.
+    pub note: String,
 }

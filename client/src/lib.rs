@@ -8,6 +8,7 @@
 //! | hear of settings | [`Client::watch`]: a [`Watch`] |
 //! | apply settings and say so | [`Client::follow`]: a [`Follow`] |
 //! | look once | [`Client::clock`], [`Client::crossing`], [`Client::setting`], [`Client::explain`] |
+//! | keep a crossing as it runs, or change its source | [`Client::pin`], [`Client::release`], [`Client::change_over`], [`Client::acts`] |
 //! | compare a clock with house time | [`Client::exchange_time`] |
 //!
 //! Streams reconnect by themselves with a jittered back-off. No setting is handed on whose
@@ -39,6 +40,7 @@
     reason = "the client is a shell crate: it reads clocks and opens sockets"
 )]
 
+mod act;
 mod backoff;
 mod batch;
 mod client;
@@ -56,11 +58,12 @@ mod verify;
 mod watch;
 mod wire;
 
+pub use act::{Act, ActKind};
 pub use client::Client;
 pub use error::{CallError, Refusal, RefusalKind, Violation};
 pub use facility::{
     Clock, ClockDeclaration, Crossing, CrossingDeclaration, CrossingState, CrossingStatus,
-    Estimate, EstimateState, Realisation,
+    Estimate, EstimateState, LatencyTail, Oscillator, Pin, Realisation,
 };
 pub use feed::{Freshness, Loss, Update};
 pub use follow::Follow;

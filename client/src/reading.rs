@@ -41,6 +41,15 @@ pub enum Measurement {
     },
     /// A two-way exchange of timestamps.
     Exchange(Exchange),
+    /// A media timestamp out of a sender report (RFC 3550) against its arrival.
+    SenderReport {
+        /// Timestamp in ticks of the nominal rate, less than 2^bits.
+        media_timestamp: u64,
+        /// Width at which the timestamp wraps, 1 to 64; 32 in RFC 3550.
+        bits: u32,
+        /// Arrival on the reference.
+        reference_ns: i64,
+    },
     /// A frequency measured by other means.
     Frequency {
         /// Drift against the reference, dimensionless, positive runs fast, within ±0.01.

@@ -4,7 +4,9 @@ mod fake_server;
 
 use fake_server::{FakeServer, HOUSE_NS, nearest_setting};
 use num_rational::Ratio;
-use ratewright_client::{CallError, Client, ClockDeclaration, Id, RefusalKind};
+use ratewright_client::{
+    CallError, Client, ClockDeclaration, Id, LatencyTail, Oscillator, RefusalKind,
+};
 use ratewright_ratio::Bounds;
 
 fn id(text: &str) -> Id {
@@ -13,11 +15,13 @@ fn id(text: &str) -> Id {
 
 fn clock(text: &str) -> ClockDeclaration {
     ClockDeclaration {
-        id: id(text),
         display_name: "Mixing desk".to_owned(),
-        nominal_hz: Ratio::new(48_000_000, 1_001),
-        exact: false,
         tolerance_ppm: Some(50.0),
+        oscillator: Some(Oscillator::Oven),
+        tail: Some(LatencyTail::CounterLate),
+        quantum_ns: Some(20_833),
+        statistics: true,
+        ..ClockDeclaration::new(id(text), Ratio::new(48_000_000, 1_001))
     }
 }
 

@@ -33,13 +33,7 @@ async fn connected(server: &FakeServer) -> Client {
     let client = Client::connect(&server.address())
         .await
         .expect("it listens");
-    let desk = ClockDeclaration {
-        id: id("desk"),
-        display_name: String::new(),
-        nominal_hz: Ratio::from_integer(48_000),
-        exact: false,
-        tolerance_ppm: None,
-    };
+    let desk = ClockDeclaration::new(id("desk"), Ratio::from_integer(48_000));
     client.declare_clock(&desk).await.expect("a good clock");
     client
 }

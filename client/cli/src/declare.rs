@@ -14,11 +14,8 @@ pub(crate) async fn ensure(
     exact: bool,
 ) -> Result<(), Failure> {
     let declaration = ClockDeclaration {
-        id: id.clone(),
-        display_name: String::new(),
-        nominal_hz,
         exact,
-        tolerance_ppm: None,
+        ..ClockDeclaration::new(id.clone(), nominal_hz)
     };
     match client.declare_clock(&declaration).await {
         Ok(_) => Ok(()),

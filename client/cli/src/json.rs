@@ -1,7 +1,7 @@
 //! Clocks, crossings and settings for machines. Field names are those of the contract; exact
 //! fractions are texts `n/d`.
 
-use ratewright_client::{Clock, Crossing, Estimate, Proof, Realised, Reference, Setting};
+use ratewright_client::{Clock, Crossing, Estimate, Id, Pin, Proof, Realised, Reference, Setting};
 use ratewright_ratio::{Cadence, Fraction};
 use serde_json::{Value, json};
 
@@ -17,6 +17,12 @@ pub(crate) fn clock(clock: &Clock) -> Value {
         "clock": clock.declaration.id.as_str(),
         "nominal_hz": fraction(&clock.declaration.nominal_hz),
         "exact": clock.declaration.exact,
+        "tolerance_ppm": clock.declaration.tolerance_ppm,
+        "oscillator": clock.declaration.oscillator.map(show::oscillator_word),
+        "tail": clock.declaration.tail.map(show::tail_word),
+        "quantum_ns": clock.declaration.quantum_ns,
+        "statistics": clock.declaration.statistics,
+        "fault": clock.fault,
         "estimate": estimate(&clock.estimate),
     })
 }
@@ -47,9 +53,16 @@ pub(crate) fn crossing(crossing: &Crossing) -> Value {
         "crossing": declaration.id.as_str(),
         "source": declaration.source.as_str(),
         "sink": declaration.sink.as_str(),
+        "backup": declaration.backup.as_ref().map(Id::as_str),
+        "source_in_use": status.source.as_str(),
         "max_l": declaration.bounds.max_l(),
         "max_m": declaration.bounds.max_m(),
         "headroom_samples": declaration.headroom_samples,
+        "realisation": show::realisation_word(declaration.realisation),
+        "group": declaration.group.as_ref().map(Id::as_str),
+        "least_hold_ns": declaration.least_hold_ns,
+        "pitch_limit_ppm": declaration.pitch_limit_ppm,
+        "silent": declaration.silent,
         "state": show::crossing_word(status.state),
         "reason": status.reason,
         "target": status.target,
@@ -60,9 +73,18 @@ pub(crate) fn crossing(crossing: &Crossing) -> Value {
         "phase_deviation_samples": status.phase_deviation_samples,
         "seconds_to_slip": status.seconds_to_slip,
         "seconds_vouched": status.seconds_vouched,
+        "pin": status.pin.as_ref().map(pin),
+        "needed": status
+            .needed
+            .as_ref()
+            .map(|bounds| json!({ "max_l": bounds.max_l(), "max_m": bounds.max_m() })),
         "setting": status.setting.as_ref().map(setting),
         "settings_made": status.settings_made,
     })
+}
+
+fn pin(pin: &Pin) -> Value {
+    json!({ "by": pin.by, "since_ns": pin.since_ns, "note": pin.note })
 }
 
 /// A setting.

@@ -9,10 +9,12 @@
     reason = "errors and losses go to standard error"
 )]
 
+mod acts;
 mod decimal;
 mod declare;
 mod explain;
 mod failure;
+mod hand;
 mod json;
 mod out;
 mod plan;
@@ -52,6 +54,10 @@ enum Command {
     Standing(standing::Arguments),
     Watch(watch::Arguments),
     Explain(explain::Arguments),
+    Pin(hand::Pin),
+    Release(hand::Release),
+    Changeover(hand::Changeover),
+    Acts(acts::Arguments),
     Probe(probe::Arguments),
     Rehearse(rehearse::Arguments),
 }
@@ -64,6 +70,10 @@ async fn main() -> ExitCode {
         Command::Standing(arguments) => standing::run(&arguments).await,
         Command::Watch(arguments) => watch::run(&arguments).await,
         Command::Explain(arguments) => explain::run(&arguments).await,
+        Command::Pin(arguments) => hand::pin(&arguments).await,
+        Command::Release(arguments) => hand::release(&arguments).await,
+        Command::Changeover(arguments) => hand::changeover(&arguments).await,
+        Command::Acts(arguments) => acts::run(&arguments).await,
         Command::Probe(arguments) => probe::run(&arguments).await,
         Command::Rehearse(arguments) => rehearse::run(&arguments),
     };

@@ -1,7 +1,10 @@
 //! Numbers as people read them.
 
 use num_rational::Ratio;
-use ratewright_client::{Clock, CrossingState, Estimate, EstimateState, Realised, Reason};
+use ratewright_client::{
+    Clock, Crossing, CrossingState, Estimate, EstimateState, LatencyTail, Oscillator, Realisation,
+    Realised, Reason,
+};
 use ratewright_ratio::Cadence;
 
 /// A dimensionless offset with its sign: `+12.3 ppb`, `-1.25 ppm`, `+0.14 %`.
@@ -130,6 +133,53 @@ pub(crate) fn crossing_word(state: CrossingState) -> &'static str {
         CrossingState::Holding => "holding",
         CrossingState::Degraded => "degraded",
         CrossingState::OutOfBounds => "out of bounds",
+    }
+}
+
+/// How a crossing fares, with what else an operator has to know: `holding, pinned by Ada`.
+pub(crate) fn crossing_state(crossing: &Crossing) -> String {
+    let (declaration, status) = (&crossing.declaration, &crossing.status);
+    let mut text = crossing_word(status.state).to_owned();
+    if let Some(needed) = &status.needed {
+        text += &format!(", needs {}/{}", needed.max_l(), needed.max_m());
+    }
+    if let Some(pin) = &status.pin {
+        text += &format!(", pinned by {}", pin.by);
+    }
+    if status.source != declaration.source {
+        text += &format!(", on backup {}", status.source);
+    }
+    if declaration.silent {
+        text += ", silent";
+    }
+    text
+}
+
+/// The word for what a resampler can do.
+pub(crate) fn realisation_word(realisation: Realisation) -> &'static str {
+    match realisation {
+        Realisation::Single => "single",
+        Realisation::Cadence => "cadence",
+        Realisation::Stepping => "stepping",
+        Realisation::Lazy => "lazy",
+    }
+}
+
+/// The word for a kind of oscillator.
+pub(crate) fn oscillator_word(oscillator: Oscillator) -> &'static str {
+    match oscillator {
+        Oscillator::Crystal => "crystal",
+        Oscillator::Compensated => "compensated",
+        Oscillator::Oven => "oven",
+        Oscillator::Atomic => "atomic",
+    }
+}
+
+/// The word for the side of a reading that comes late.
+pub(crate) fn tail_word(tail: LatencyTail) -> &'static str {
+    match tail {
+        LatencyTail::ReferenceLate => "reference-late",
+        LatencyTail::CounterLate => "counter-late",
     }
 }
 

@@ -41,6 +41,11 @@ pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
     let mut rows = vec![heading(&["clock", "nominal", "drift (95 %)", "state"])];
     rows.extend(clocks.iter().map(clock_row));
     out::text(format_args!("{}", show::table(&rows)))?;
+    for clock in &clocks {
+        if let Some(fault) = &clock.fault {
+            say!("  {} is at fault: {fault}", clock.declaration.id)?;
+        }
+    }
     say!("")?;
     let mut rows = vec![heading(&[
         "crossing", "from", "to", "setting", "runs", "off by", "slips in", "state",
@@ -81,6 +86,6 @@ fn crossing_row(crossing: &Crossing) -> Vec<String> {
         status
             .seconds_to_slip
             .map_or("not within a day".to_owned(), show::duration),
-        show::crossing_word(status.state).to_owned(),
+        show::crossing_state(crossing),
     ]
 }

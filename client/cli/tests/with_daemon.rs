@@ -8,7 +8,7 @@ use std::process::{Command, Output, Stdio};
 
 use fake_server::{FakeServer, nearest_setting};
 use ratewright_proto::v1::reading::Measurement;
-use ratewright_proto::v1::{CounterReading, FrequencyReading, TwoWayExchange};
+use ratewright_proto::v1::{CounterReading, FrequencyReading, SenderReport, TwoWayExchange};
 use serde_json::Value;
 
 fn ratewright(server: &FakeServer, arguments: &[&str]) -> Command {
@@ -67,6 +67,14 @@ fn each_kind_of_csv_is_told_by_its_header() {
                 t2_ns: 2,
                 t3_ns: 3,
                 t4_ns: -4,
+            }),
+        ),
+        (
+            "media_timestamp,reference_ns\n960,7\n",
+            Measurement::SenderReport(SenderReport {
+                media_timestamp: 960,
+                bits: 32,
+                reference_ns: 7,
             }),
         ),
         (
@@ -278,4 +286,58 @@ fn standing_and_explain_print_what_the_daemon_knows() {
         explained.contains("It is the nearest within the bounds."),
         "{explained}"
     );
+}
+
+#[test]
+fn an_operators_acts_are_done_and_listed() {
+    let server = FakeServer::start();
+    server.facility.declare_crossing("hall-to-van", 256, 256);
+    server
+        .facility
+        .publish(nearest_setting("hall-to-van", (1, 7), 1.0884, (256, 256)));
+    let does = |arguments: &[&str]| {
+        let output = run(&server, arguments, "");
+        assert!(output.status.success(), "{}", text(&output.stderr));
+        text(&output.stdout)
+    };
+    let none = does(&["acts", "hall-to-van"]);
+    assert_eq!(none, "nobody has acted on hall-to-van\n");
+
+    let pinned = does(&["pin", "hall-to-van", "--by", "Ada", "--note", "on air"]);
+    assert!(
+        pinned.starts_with("hall-to-van is pinned; its setting is 1-7"),
+        "{pinned}"
+    );
+    let standing = does(&["standing"]);
+    assert!(standing.contains("holding, pinned by Ada"), "{standing}");
+    let changed = does(&["changeover", "hall-to-van", "spare", "--by", "Ben"]);
+    assert!(changed.contains("takes its stream from spare"), "{changed}");
+    let released = does(&["release", "hall-to-van", "--by", "Ada", "--json"]);
+    let released: Value = serde_json::from_str(&released).expect("JSON");
+    assert_eq!(released["pin"], Value::Null);
+    assert_eq!(released["source_in_use"], "spare");
+
+    let listed = does(&["acts", "hall-to-van"]);
+    let lines: Vec<&str> = listed.lines().collect();
+    assert_eq!(lines.len(), 4, "{listed}");
+    assert!(lines[1].contains("released"), "{listed}");
+    assert!(
+        lines[2].contains("changed over from a to spare"),
+        "{listed}"
+    );
+    assert!(
+        lines[3].contains("pinned") && lines[3].contains("on air"),
+        "{listed}"
+    );
+    let newest = does(&["acts", "hall-to-van", "--most", "1", "--json"]);
+    let newest: Value = serde_json::from_str(&newest).expect("JSON");
+    assert_eq!(newest.as_array().map(Vec::len), Some(1));
+    assert_eq!(
+        (&newest[0]["by"], &newest[0]["what"]),
+        (&"Ada".into(), &"released".into())
+    );
+
+    let anonymous = run(&server, &["pin", "hall-to-van"], "");
+    assert_eq!(anonymous.status.code(), Some(2));
+    assert!(text(&anonymous.stderr).contains("--by"));
 }

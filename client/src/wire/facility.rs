@@ -8,7 +8,7 @@ use super::name::{clock_name, crossing_name, id_of, optional_id, optional_refere
 use super::{WireError, required};
 use crate::{
     Clock, ClockDeclaration, Crossing, CrossingDeclaration, CrossingState, CrossingStatus,
-    Estimate, EstimateState, Realisation,
+    Estimate, EstimateState, LatencyTail, Oscillator, Pin, Realisation,
 };
 
 impl From<&ClockDeclaration> for v1::Clock {
@@ -19,9 +19,32 @@ impl From<&ClockDeclaration> for v1::Clock {
             nominal_rate: Some(to_rate(declaration.nominal_hz)),
             exact: declaration.exact,
             tolerance_ppm: declaration.tolerance_ppm.unwrap_or_default(),
+            oscillator: oscillator_to_wire(declaration.oscillator).into(),
+            tail: tail_to_wire(declaration.tail).into(),
+            quantum_ns: declaration.quantum_ns.unwrap_or_default(),
+            statistics: declaration.statistics,
             estimate: None,
             etag: String::new(),
+            fault: String::new(),
         }
+    }
+}
+
+fn oscillator_to_wire(oscillator: Option<Oscillator>) -> v1::Oscillator {
+    match oscillator {
+        None => v1::Oscillator::Unspecified,
+        Some(Oscillator::Crystal) => v1::Oscillator::Crystal,
+        Some(Oscillator::Compensated) => v1::Oscillator::Compensated,
+        Some(Oscillator::Oven) => v1::Oscillator::Oven,
+        Some(Oscillator::Atomic) => v1::Oscillator::Atomic,
+    }
+}
+
+fn tail_to_wire(tail: Option<LatencyTail>) -> v1::LatencyTail {
+    match tail {
+        None => v1::LatencyTail::Unspecified,
+        Some(LatencyTail::ReferenceLate) => v1::LatencyTail::ReferenceLate,
+        Some(LatencyTail::CounterLate) => v1::LatencyTail::CounterLate,
     }
 }
 
@@ -29,6 +52,18 @@ impl TryFrom<v1::Clock> for Clock {
     type Error = WireError;
 
     fn try_from(wire: v1::Clock) -> Result<Self, WireError> {
+        let oscillator = match wire.oscillator() {
+            v1::Oscillator::Unspecified => None,
+            v1::Oscillator::Crystal => Some(Oscillator::Crystal),
+            v1::Oscillator::Compensated => Some(Oscillator::Compensated),
+            v1::Oscillator::Oven => Some(Oscillator::Oven),
+            v1::Oscillator::Atomic => Some(Oscillator::Atomic),
+        };
+        let tail = match wire.tail() {
+            v1::LatencyTail::Unspecified => None,
+            v1::LatencyTail::ReferenceLate => Some(LatencyTail::ReferenceLate),
+            v1::LatencyTail::CounterLate => Some(LatencyTail::CounterLate),
+        };
         Ok(Self {
             declaration: ClockDeclaration {
                 id: id_of("clock.name", "clocks", &wire.name)?,
@@ -36,7 +71,12 @@ impl TryFrom<v1::Clock> for Clock {
                 nominal_hz: rate("clock.nominal_rate", wire.nominal_rate)?,
                 exact: wire.exact,
                 tolerance_ppm: (wire.tolerance_ppm != 0.0).then_some(wire.tolerance_ppm),
+                oscillator,
+                tail,
+                quantum_ns: (wire.quantum_ns != 0).then_some(wire.quantum_ns),
+                statistics: wire.statistics,
             },
+            fault: Some(wire.fault).filter(|fault| !fault.is_empty()),
             estimate: required("clock.estimate", wire.estimate)?.try_into()?,
         })
     }
@@ -81,6 +121,8 @@ impl From<&CrossingDeclaration> for v1::Crossing {
         let realisation = match declaration.realisation {
             Realisation::Single => v1::Realisation::Single,
             Realisation::Cadence => v1::Realisation::Cadence,
+            Realisation::Stepping => v1::Realisation::Stepping,
+            Realisation::Lazy => v1::Realisation::Lazy,
         };
         Self {
             name: crossing_name(&declaration.id),
@@ -98,6 +140,14 @@ impl From<&CrossingDeclaration> for v1::Crossing {
                 .unwrap_or_default(),
             lead_ns: declaration.lead_ns,
             review_horizon_ns: declaration.review_horizon_ns,
+            least_hold_ns: declaration.least_hold_ns,
+            pitch_limit_ppm: declaration.pitch_limit_ppm,
+            silent: declaration.silent,
+            backup_clock: declaration
+                .backup
+                .as_ref()
+                .map(clock_name)
+                .unwrap_or_default(),
             status: None,
             etag: String::new(),
         }
@@ -111,28 +161,39 @@ impl TryFrom<v1::Crossing> for Crossing {
         let realisation = match wire.realisation() {
             v1::Realisation::Single => Realisation::Single,
             v1::Realisation::Unspecified | v1::Realisation::Cadence => Realisation::Cadence,
+            v1::Realisation::Stepping => Realisation::Stepping,
+            v1::Realisation::Lazy => Realisation::Lazy,
         };
-        let bounds = (wire.max_l, wire.max_m);
+        let backup = Some(wire.backup_clock.as_str()).filter(|name| !name.is_empty());
         let status = required("crossing.status", wire.status)?.try_into()?;
         let declaration = CrossingDeclaration {
             id: id_of("crossing.name", "crossings", &wire.name)?,
             display_name: wire.display_name,
             source: id_of("crossing.source_clock", "clocks", &wire.source_clock)?,
             sink: id_of("crossing.sink_clock", "clocks", &wire.sink_clock)?,
-            bounds: Bounds::new(bounds.0, bounds.1).map_err(|_| {
-                WireError::new("crossing.max_l, max_m", bounds, "bounds from 1 to 2^31")
-            })?,
+            bounds: bounds("crossing.max_l, max_m", (wire.max_l, wire.max_m))?,
             headroom_samples: wire.headroom_samples,
             realisation,
             group: optional_id("crossing.group", &wire.group)?,
             lead_ns: wire.lead_ns,
             review_horizon_ns: wire.review_horizon_ns,
+            least_hold_ns: wire.least_hold_ns,
+            pitch_limit_ppm: wire.pitch_limit_ppm,
+            silent: wire.silent,
+            backup: backup
+                .map(|name| id_of("crossing.backup_clock", "clocks", name))
+                .transpose()?,
         };
         Ok(Self {
             declaration,
             status,
         })
     }
+}
+
+fn bounds(field: &str, (max_l, max_m): (u64, u64)) -> Result<Bounds, WireError> {
+    Bounds::new(max_l, max_m)
+        .map_err(|_| WireError::new(field, (max_l, max_m), "bounds from 1 to 2^31"))
 }
 
 impl TryFrom<v1::CrossingStatus> for CrossingStatus {
@@ -162,6 +223,14 @@ impl TryFrom<v1::CrossingStatus> for CrossingStatus {
             setting: wire.setting.map(TryInto::try_into).transpose()?,
             settings_made: wire.settings_made,
             residual: wire.residual,
+            pin: wire
+                .pin
+                .map(|v1::Pin { by, since_ns, note }| Pin { by, since_ns, note }),
+            source: id_of("status.source_clock", "clocks", &wire.source_clock)?,
+            needed: wire
+                .needed
+                .map(|v1::Bounds { max_l, max_m }| bounds("status.needed", (max_l, max_m)))
+                .transpose()?,
         })
     }
 }

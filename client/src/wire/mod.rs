@@ -1,6 +1,7 @@
 //! Conversions between what travels and what the rest of the crate works with. Nothing outside
 //! this module and the streams that carry them sees a wire type.
 
+mod act;
 mod facility;
 mod fraction;
 mod name;

@@ -44,6 +44,15 @@ impl From<Measurement> for v1::reading::Measurement {
                 t3_ns,
                 t4_ns,
             }),
+            Measurement::SenderReport {
+                media_timestamp,
+                bits,
+                reference_ns,
+            } => Self::SenderReport(v1::SenderReport {
+                media_timestamp,
+                bits,
+                reference_ns,
+            }),
             Measurement::Frequency {
                 drift,
                 deviation,

@@ -3,6 +3,7 @@
 use ratewright_proto::v1;
 use tonic::{Code, Request, Response, Status};
 use tonic_types::{ErrorDetails, StatusExt as _};
+use v1::act::What;
 use v1::clock_service_server::ClockService;
 use v1::crossing_service_server::CrossingService;
 
@@ -21,6 +22,7 @@ pub(super) fn crossing(id: &str, max_l: u64, max_m: u64) -> v1::Crossing {
             state: v1::CrossingState::Holding.into(),
             reason: "both clocks are measured".to_owned(),
             as_of_ns: HOUSE_NS,
+            source_clock: "clocks/a".to_owned(),
             ..Default::default()
         }),
         ..Default::default()
@@ -168,5 +170,93 @@ impl CrossingService for Facility {
         _: Request<v1::DeleteCrossingRequest>,
     ) -> Result<Response<()>, Status> {
         Err(Status::unimplemented("the fake deletes no crossings"))
+    }
+
+    async fn pin_crossing(
+        &self,
+        request: Request<v1::PinCrossingRequest>,
+    ) -> Result<Response<v1::Crossing>, Status> {
+        let v1::PinCrossingRequest { name, by, note } = request.into_inner();
+        let pin = v1::Pin {
+            by: by.clone(),
+            since_ns: HOUSE_NS,
+            note: note.clone(),
+        };
+        let what = What::Pinned(v1::Pinned {});
+        self.act((&name, by, note), what, |status| status.pin = Some(pin))
+    }
+
+    async fn release_crossing(
+        &self,
+        request: Request<v1::ReleaseCrossingRequest>,
+    ) -> Result<Response<v1::Crossing>, Status> {
+        let v1::ReleaseCrossingRequest { name, by, note } = request.into_inner();
+        let what = What::Released(v1::Released {});
+        self.act((&name, by, note), what, |status| status.pin = None)
+    }
+
+    async fn change_over(
+        &self,
+        request: Request<v1::ChangeOverRequest>,
+    ) -> Result<Response<v1::Crossing>, Status> {
+        let v1::ChangeOverRequest {
+            name,
+            source_clock,
+            by,
+            note,
+        } = request.into_inner();
+        let what = What::ChangedOver(v1::ChangedOver {
+            from_clock: "clocks/a".to_owned(),
+            to_clock: source_clock.clone(),
+        });
+        self.act((&name, by, note), what, |status| {
+            status.source_clock = source_clock;
+        })
+    }
+
+    /// Pages of one act, as for clocks.
+    async fn list_acts(
+        &self,
+        request: Request<v1::ListActsRequest>,
+    ) -> Result<Response<v1::ListActsResponse>, Status> {
+        let v1::ListActsRequest {
+            parent, page_token, ..
+        } = request.into_inner();
+        let known = self.known();
+        let newest_first = known.acts.iter().rev();
+        let on_it = newest_first.filter(|act| act.crossing == parent);
+        let listed: usize = page_token.parse().unwrap_or(0);
+        let mut left = on_it.skip(listed);
+        let acts = left.next().cloned().into_iter().collect();
+        let more = left.next().map(|_| (listed + 1).to_string());
+        let next_page_token = more.unwrap_or_default();
+        Ok(Response::new(v1::ListActsResponse {
+            acts,
+            next_page_token,
+        }))
+    }
+}
+
+impl Facility {
+    /// Does what an operator asks for and keeps the record of it.
+    fn act(
+        &self,
+        (name, by, note): (&str, String, String),
+        what: What,
+        change: impl FnOnce(&mut v1::CrossingStatus),
+    ) -> Result<Response<v1::Crossing>, Status> {
+        let mut known = self.known();
+        let crossing = known.crossings.get_mut(name);
+        let status = crossing.and_then(|crossing| crossing.status.as_mut());
+        change(status.ok_or_else(|| not_found(name))?);
+        known.acts.push(v1::Act {
+            crossing: name.to_owned(),
+            by,
+            note,
+            at_ns: HOUSE_NS,
+            what: Some(what),
+        });
+        let crossing = known.crossing(name);
+        crossing.map(Response::new).ok_or_else(|| not_found(name))
     }
 }

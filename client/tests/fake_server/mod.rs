@@ -42,6 +42,8 @@ pub(crate) struct Known {
     pub(crate) batches: Vec<v1::ReportReadingsRequest>,
     /// Batches that still get no receipt.
     pub(crate) silent_batches: usize,
+    /// What operators did, oldest first.
+    pub(crate) acts: Vec<v1::Act>,
     pub(crate) follower_said: Vec<v1::follow_settings_request::Message>,
     /// Streams opened so far, of any kind.
     pub(crate) streams: usize,

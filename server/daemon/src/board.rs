@@ -65,7 +65,8 @@ pub struct News {
     pub crossings: Vec<CrossingView>,
     /// Crossings that were deleted.
     pub crossings_gone: Vec<Id>,
-    /// Settings in the order they were made; only the newest of a crossing is kept.
+    /// Settings in the order they were made; only the newest of a crossing is kept, and of those
+    /// that are silent none: nobody is to hear of them.
     pub settings: Vec<Setting>,
     /// Settings that took effect, as their followers say.
     pub applied: Vec<Applied>,
@@ -133,7 +134,7 @@ impl Board {
         page(&self.shown().crossings, after, limit)
     }
 
-    /// The newest setting of a crossing.
+    /// The newest setting of a crossing that watchers and followers hear of.
     pub fn newest_setting(&self, crossing: &Id) -> Option<Arc<Setting>> {
         self.shown()
             .newest
@@ -258,6 +259,10 @@ impl Default for Board {
 impl Shown {
     fn show_setting(&mut self, setting: Setting) {
         self.chronicle.note_setting(&setting);
+        if setting.silent {
+            self.withdraw(&setting.crossing);
+            return;
+        }
         self.last_change += 1;
         let change = self.last_change;
         let crossing = setting.crossing.clone();
@@ -274,7 +279,12 @@ impl Shown {
         self.crossings.remove(id);
         self.applied.remove(id);
         self.chronicle.forget_crossing(id);
-        if let Some((change, _)) = self.newest.remove(id) {
+        self.withdraw(id);
+    }
+
+    /// There is no setting of the crossing to be heard of any more.
+    fn withdraw(&mut self, crossing: &Id) {
+        if let Some((change, _)) = self.newest.remove(crossing) {
             self.by_change.remove(&change);
         }
     }

@@ -112,7 +112,7 @@ impl Builder {
             history,
             floor_ns,
             begin,
-        } = Store::open(&config.store, opening, system_ns)?;
+        } = Store::open(&config.store, opening, system_ns, config.keep_settings)?;
         let house = HouseClock::start(config.tai_minus_utc_s, floor_ns, pace);
         let board = Arc::new(Board::new());
         let readiness = Readiness::new();

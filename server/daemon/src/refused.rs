@@ -1,6 +1,8 @@
 //! Why a call is refused, in the daemon's own terms. How that looks on the wire is said once, in
 //! `service::status`.
 
+use crate::store::StoreError;
+
 /// A field that was not as accepted.
 #[derive(Clone, Debug, PartialEq, Eq)]
 pub(crate) struct Violation {
@@ -94,6 +96,12 @@ impl Refused {
             name: name.into(),
             field: None,
         }
+    }
+
+    /// The store could not be read.
+    pub(crate) fn unreadable(fault: StoreError) -> Self {
+        tracing::error!(%fault, "the history could not be read");
+        Self::Store(fault.to_string())
     }
 }
 

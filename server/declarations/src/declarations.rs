@@ -4,17 +4,18 @@ use std::collections::BTreeSet;
 
 use num_rational::Ratio;
 use ratewright_control::{
-    ClockDeclaration, CrossingDeclaration, Effects, Engine, Event, Id, Realisation, Refusal,
+    ClockDeclaration, CrossingDeclaration, Effects, Engine, Event, Id, Refusal,
 };
-use ratewright_ratio::{Bounds, parse_rate};
+use ratewright_ratio::parse_rate;
 use toml::de::DeValue;
 
-use crate::{Section, flag, integer, number, seconds, text};
+use crate::expected::Expected;
+use crate::running::Running;
+use crate::{Section, flag, integer, text};
 
 const MAX_TITLE: usize = 128;
 const LARGEST_NUMERATOR: u64 = 1_000_000_000_000;
 const LARGEST_DENOMINATOR: u64 = 1_000_000_000;
-const LARGEST_BOUND: i64 = 1 << 31;
 
 /// Reads declarations one after the other, and knows what was declared before.
 #[derive(Debug)]
@@ -57,18 +58,11 @@ impl Declarations {
     ) -> Option<ClockDeclaration> {
         let id = new_id(section, &mut self.clocks);
         let display_name = title(section);
-        let mut tolerance_ppm = 0.0;
-        section.set(
-            "tolerance_ppm",
-            "0 to 10000 ppm",
-            &mut tolerance_ppm,
-            |value| number(value, 0.0, 10_000.0),
-        );
+        let expected = Expected::read(section);
         let clock = ClockDeclaration {
             display_name,
             exact,
-            tolerance_ppm,
-            ..ClockDeclaration::new(id?, nominal_hz?)
+            ..expected.of(id?, nominal_hz?)
         };
         let taken = self.trial.apply(&Event::DeclareClock(clock.clone()), 0);
         noted(section, taken).then_some(clock)
@@ -79,20 +73,20 @@ impl Declarations {
     pub fn crossing(&mut self, section: &Section<'_>) -> Option<CrossingDeclaration> {
         let id = new_id(section, &mut self.crossings);
         let display_name = title(section);
-        let source = end("source", section, &self.clocks);
-        let sink = end("sink", section, &self.clocks);
-        let running = running(section);
+        let clock = |value: &_| as_id(value).filter(|id| self.clocks.contains(id));
+        let source = section.need("source", CLOCK, clock);
+        let sink = section.need("sink", CLOCK, clock);
+        let mut backup = None;
+        section.set("backup", CLOCK, &mut backup, |value| clock(value).map(Some));
+        let running = Running::read(section);
         let crossing = CrossingDeclaration {
             display_name,
-            headroom_samples: running.headroom_samples,
-            realisation: running.realisation,
-            group: running.group,
-            lead_ns: running.lead_ns,
-            review_horizon_ns: running.review_horizon_ns,
-            ..CrossingDeclaration::new(id?, source?, sink?, running.bounds?)
+            backup,
+            ..running.between(id?, source?, sink?)
         };
         let whole = [&crossing.source, &crossing.sink]
-            .iter()
+            .into_iter()
+            .chain(&crossing.backup)
             .all(|end| self.trial.clock(end).is_some());
         if !whole {
             // A clock of it has a fault of its own, which is noted already.
@@ -105,69 +99,27 @@ impl Declarations {
     }
 }
 
-/// How a crossing runs: what does not name anything else.
-struct Running {
-    bounds: Option<Bounds>,
-    headroom_samples: f64,
-    realisation: Realisation,
-    group: Option<Id>,
-    lead_ns: i64,
-    review_horizon_ns: i64,
-}
-
-fn running(section: &Section<'_>) -> Running {
-    let (mut max_l, mut max_m) = (1_024, 1_024);
-    let mut headroom_samples = 1.0;
-    let mut realisation = Realisation::Cadence;
-    let mut group = None;
-    let (mut lead_ns, mut review_horizon_ns) = (1_000_000_000, 86_400_000_000_000);
-    let bound = |value: &_| integer(value, 1, LARGEST_BOUND).map(i64::unsigned_abs);
-    section.set("max_l", "1 to 2147483648", &mut max_l, bound);
-    section.set("max_m", "1 to 2147483648", &mut max_m, bound);
-    section.set(
-        "headroom_samples",
-        "above 0 to 1000000000 sink samples",
-        &mut headroom_samples,
-        |value| number(value, f64::MIN_POSITIVE, 1e9),
-    );
-    section.set(
-        "realisation",
-        "\"single\" or \"cadence\"",
-        &mut realisation,
-        read_realisation,
-    );
-    section.set("group", Id::ACCEPTED, &mut group, |value| {
-        as_id(value).map(Some)
-    });
-    section.set("lead_s", "0.001 to 60 seconds", &mut lead_ns, |value| {
-        seconds(value, 0.001, 60.0)
-    });
-    section.set(
-        "review_horizon_s",
-        "10 to 2592000 seconds",
-        &mut review_horizon_ns,
-        |value| seconds(value, 10.0, 2_592_000.0),
-    );
-    Running {
-        bounds: Bounds::new(max_l, max_m).ok(),
-        headroom_samples,
-        realisation,
-        group,
-        lead_ns,
-        review_horizon_ns,
-    }
-}
-
 /// True if the engine took a declaration; else its word is noted as a fault of the section.
 fn noted(section: &Section<'_>, taken: Result<Effects, Refusal>) -> bool {
     let Err(refusal) = taken else { return true };
     let key = match refusal.field.as_str() {
-        "tolerance_ppm" => "tolerance_ppm",
         "nominal_hz" => "rate",
-        "headroom_samples" => "headroom_samples",
-        "group" => "group",
+        "tolerance_ppm" => "tolerance_ppm",
+        "oscillator" => "oscillator",
+        "latency_tail" => "tail",
+        "quantum_ns" | "quantum_s" => "quantum_ns",
+        "statistics" => "statistics",
         "source" => "source",
         "sink" => "sink",
+        "backup" => "backup",
+        "headroom_samples" => "headroom_samples",
+        "realisation" => "realisation",
+        "group" => "group",
+        "lead_ns" => "lead_s",
+        "review_horizon_ns" => "review_horizon_s",
+        "least_hold_ns" => "least_hold_s",
+        "pitch_limit_ppm" => "pitch_limit_ppm",
+        "silent" => "silent",
         _ => "id",
     };
     section.fault(key, &refusal.value, &refusal.accepted);
@@ -186,15 +138,6 @@ fn new_id(section: &Section<'_>, taken: &mut BTreeSet<Id>) -> Option<Id> {
         "a name of its own",
     );
     None
-}
-
-fn end(key: &'static str, section: &Section<'_>, clocks: &BTreeSet<Id>) -> Option<Id> {
-    const ACCEPTED: &str = "the id of a [[clock]] of this file";
-    let id = section.need(key, ACCEPTED, as_id)?;
-    if !clocks.contains(&id) {
-        section.fault(key, &format!("\"{id}\""), ACCEPTED);
-    }
-    Some(id)
 }
 
 /// The key `title`; empty if it is not there.
@@ -218,6 +161,8 @@ pub fn as_id(value: &DeValue<'_>) -> Option<Id> {
     Id::new(text(value)?).ok()
 }
 
+const CLOCK: &str = "the id of a [[clock]] of this file";
+
 const RATE: &str = "a rate in Hz above 0, such as 48000, \"44.1k\" or \"30000/1001\", whose parts are \
                     at most 10^12 / 10^9";
 
@@ -229,12 +174,4 @@ fn rate(value: &DeValue<'_>) -> Option<Ratio<u64>> {
     let in_range =
         (1..=LARGEST_NUMERATOR).contains(rate.numer()) && *rate.denom() <= LARGEST_DENOMINATOR;
     in_range.then_some(rate)
-}
-
-fn read_realisation(value: &DeValue<'_>) -> Option<Realisation> {
-    match text(value)? {
-        "single" => Some(Realisation::Single),
-        "cadence" => Some(Realisation::Cadence),
-        _ => None,
-    }
 }

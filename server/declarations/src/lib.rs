@@ -21,7 +21,9 @@
 //! ```
 
 mod declarations;
+mod expected;
 mod faults;
+mod running;
 mod section;
 
 pub use declarations::{Declarations, as_id};

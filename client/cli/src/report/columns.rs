@@ -9,6 +9,9 @@ use crate::decimal::Decimal;
 const SEQUENCE: &str = "sequence";
 const EXCHANGE: [&str; 4] = ["t1_ns", "t2_ns", "t3_ns", "t4_ns"];
 const FREQUENCY: [&str; 2] = ["drift_ppm", "deviation_ppm"];
+const SENDER_REPORT: &str = "media_timestamp";
+/// Width of a counter, and of the timestamps of RFC 3550.
+const BITS: (u32, u32) = (64, 32);
 
 /// Where the parts of a measurement are in a row.
 #[derive(Clone, Debug)]
@@ -26,6 +29,11 @@ enum Kind {
         reference: Time,
     },
     Exchange([usize; 4]),
+    SenderReport {
+        timestamp: usize,
+        bits: u32,
+        reference: Time,
+    },
     Frequency {
         drift: usize,
         deviation: usize,
@@ -64,9 +72,16 @@ impl Columns {
             },
             (_, _, Some(count), Some(reference)) => Kind::Counter {
                 count,
-                bits: arguments.bits,
+                bits: arguments.bits.unwrap_or(BITS.0),
                 reference,
             },
+            (.., Some(reference)) if let Some(timestamp) = find(SENDER_REPORT) => {
+                Kind::SenderReport {
+                    timestamp,
+                    bits: arguments.bits.unwrap_or(BITS.1),
+                    reference,
+                }
+            }
             _ => return Err(no_kind(header, arguments)),
         };
         let header: Vec<String> = header.iter().map(str::to_owned).collect();
@@ -102,6 +117,15 @@ impl Columns {
                     t4_ns: self.time(row, t4)?,
                 })
             }
+            Kind::SenderReport {
+                timestamp,
+                bits,
+                reference,
+            } => Measurement::SenderReport {
+                media_timestamp: self.whole(row, timestamp)?,
+                bits,
+                reference_ns: self.time(row, reference)?,
+            },
             Kind::Frequency {
                 drift,
                 deviation,
@@ -153,8 +177,8 @@ fn no_kind(header: &StringRecord, arguments: &Arguments) -> String {
     let found: Vec<&str> = header.iter().collect();
     let (count, reference) = (&arguments.count_column, &arguments.reference_column);
     format!(
-        "the columns are {}; expected are {count},{reference} (a counter), {} (exchanges) or {},{reference} \
-         (frequencies). For a counter under other names type --count-column COLUMN \
+        "the columns are {}; expected are {count},{reference} (a counter), {} (exchanges), \
+         {SENDER_REPORT},{reference} (sender reports) or {},{reference} (frequencies). For a counter under other names type --count-column COLUMN \
          --reference-column COLUMN --reference-unit s",
         found.join(","),
         EXCHANGE.join(","),

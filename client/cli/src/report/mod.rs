@@ -37,6 +37,7 @@ const ROWS: usize = 4096;
 ///   count,reference_ns               a tick counter read against the reference
 ///   t1_ns,t2_ns,t3_ns,t4_ns          two-way exchanges: sent and received again on the clock (t1,
 ///                                    t4), received and answered on the reference (t2, t3)
+///   media_timestamp,reference_ns     media timestamps of sender reports against their arrival
 ///   drift_ppm,deviation_ppm,reference_ns
 ///                                    drifts measured by other means, positive runs fast
 ///
@@ -58,9 +59,9 @@ pub(crate) struct Arguments {
     /// Which probe measured, if there are several
     #[arg(long, value_name = "ID")]
     probe: Option<Id>,
-    /// Width at which the counter wraps
-    #[arg(long, value_name = "BITS", default_value_t = 64, value_parser = clap::value_parser!(u32).range(1..=64))]
-    bits: u32,
+    /// Width at which the counter or the media timestamp wraps; 64 and 32 unless it is given
+    #[arg(long, value_name = "BITS", value_parser = clap::value_parser!(u32).range(1..=64))]
+    bits: Option<u32>,
     /// Column that holds the counter
     #[arg(long, value_name = "COLUMN", default_value = "count")]
     count_column: String,

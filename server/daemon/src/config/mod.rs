@@ -5,7 +5,10 @@
 //! | `listen.grpc` | address:port | `127.0.0.1:7420` | where gRPC is served; port 0 takes any free one |
 //! | `listen.people` | address:port | `127.0.0.1:7421` | where the page, the metrics and the probes are served |
 //! | `listen.max_streams` | 1 to 1,000,000 | 20000 | open report, watch and follow streams served at once |
+//! | `listen.max_connections` | 1 to 1,000,000 | 10000 | gRPC connections open at once; one more is closed as it comes |
+//! | `listen.max_connection_age_s` | s, 0, or 1 to 2592000 | 0 | after this, within a tenth of it, a gRPC connection is told to go elsewhere; 0 for never |
 //! | `store.folder` | path | `ratewright-store` | where everything that must survive is kept |
+//! | `store.keep_settings` | 100 to 1,000,000,000 | 10000 | of each crossing as many settings are kept at least; older ones are dropped in small steps |
 //! | `shutdown.grace_s` | s, 0 to 3600 | 10 | how long open streams and calls may last once the daemon drains |
 //! | `log.format` | `text`, `json` | `text` | lines for people, or an object a line |
 //! | `house.tai_minus_utc_s` | s, 0 to 100 | 37 | added to the system's UTC to begin house time |
@@ -14,14 +17,22 @@
 //! | `[[clock]]` `rate` | Hz, exact | needed | `48000`, `"44.1k"`, `"30000/1001"`, `"48000*1000/1001"` |
 //! | `[[clock]]` `exact` | true, false | false | derived from house time itself, never measured |
 //! | `[[clock]]` `tolerance_ppm` | ppm, 0 to 10000 | 0 | largest drift its maker states; 0 for not stated |
+//! | `[[clock]]` `oscillator` | `crystal`, `compensated`, `oven`, `atomic` | a plain crystal | what is believed of it before it is measured, and how far it may wander |
+//! | `[[clock]]` `tail` | `reference-late`, `counter-late` | `reference-late` | which side of a one-way reading is late when it is not punctual |
+//! | `[[clock]]` `quantum_ns` | ns, 0 to 10^9 | 0 | known step of its counter or timestamps; 0 for not known |
+//! | `[[clock]]` `statistics` | true, false | false | stability statistics of it are kept |
 //! | `[[crossing]]` `id`, `title` | as above | | |
 //! | `[[crossing]]` `source`, `sink` | `id` of a clock of the file | needed | samples enter by the one and leave by the other |
-//! | `[[crossing]]` `max_l`, `max_m` | 1 to 2^31 | 1024 | what the filter bank can run |
+//! | `[[crossing]]` `backup` | `id` of a clock of the file | none | another source that can carry the same stream |
+//! | `[[crossing]]` `max_l`, `max_m` | 1 to 2^31 | 1024 | what the filter bank can run; `max_l` is the number of phases of one that steps |
 //! | `[[crossing]]` `headroom_samples` | sink samples, above 0 to 10^9 | 1 | hard limit of the phase error, both ways |
-//! | `[[crossing]]` `realisation` | `single`, `cadence` | `cadence` | one ratio only, or two in turn at block ends |
+//! | `[[crossing]]` `realisation` | `single`, `cadence`, `stepping`, `lazy` | `cadence` | one ratio only; two in turn at block ends; one table of phases; two, each held as long as a swing allows |
 //! | `[[crossing]]` `group` | name | none | crossings of a group change at the same instant |
 //! | `[[crossing]]` `lead_s` | s, 0.001 to 60 | 1 | from a decision to its effect |
 //! | `[[crossing]]` `review_horizon_s` | s, 10 to 2592000 | 86400 | longest trust in a setting that is not renewed |
+//! | `[[crossing]]` `least_hold_s` | s, 0 to 3600 | 0 | least time between two settings that change what is run |
+//! | `[[crossing]]` `pitch_limit_ppm` | ppm, 0.1 to 1000 | 20 | fastest change of pitch to bring the phase error back |
+//! | `[[crossing]]` `silent` | true, false | false | a trial: decided and recorded, but no follower hears of it |
 
 use std::{
     net::{Ipv4Addr, SocketAddr},
@@ -52,6 +63,13 @@ pub struct Config {
     pub tai_minus_utc_s: i64,
     /// Open streams (report, watch, follow) that are served at once. Default 20,000.
     pub max_streams: usize,
+    /// gRPC connections that are open at once; one more is closed as it comes. Default 10,000.
+    pub max_connections: usize,
+    /// How old a gRPC connection gets, give or take a tenth, before it is told to go elsewhere.
+    /// Default: as old as it wants.
+    pub max_connection_age: Option<Duration>,
+    /// Settings of each crossing that are kept at least. Default 10,000.
+    pub keep_settings: u64,
     /// Clocks declared in the file.
     pub clocks: Vec<ClockDeclaration>,
     /// Crossings declared in the file.
@@ -77,6 +95,9 @@ impl Default for Config {
             log: LogFormat::Text,
             tai_minus_utc_s: TAI_MINUS_UTC_S,
             max_streams: 20_000,
+            max_connections: 10_000,
+            max_connection_age: None,
+            keep_settings: 10_000,
             clocks: Vec::new(),
             crossings: Vec::new(),
         }
@@ -127,6 +148,22 @@ fn listen(section: &Section<'_>, config: &mut Config) {
         &mut config.max_streams,
         |value| integer(value, 1, 1_000_000)?.try_into().ok(),
     );
+    section.set(
+        "max_connections",
+        "1 to 1000000",
+        &mut config.max_connections,
+        |value| integer(value, 1, 1_000_000)?.try_into().ok(),
+    );
+    section.set(
+        "max_connection_age_s",
+        "0 for none, or 1 to 2592000 seconds",
+        &mut config.max_connection_age,
+        |value| match number(value, 0.0, 2_592_000.0)? {
+            0.0 => Some(None),
+            age_s if age_s >= 1.0 => Some(Some(Duration::from_secs_f64(age_s))),
+            _ => None,
+        },
+    );
     if config.grpc == config.people && config.grpc.port() != 0 {
         section.fault(
             "people",
@@ -146,6 +183,12 @@ fn store(section: &Section<'_>, config: &mut Config) {
                 .filter(|path| !path.is_empty())
                 .map(PathBuf::from)
         },
+    );
+    section.set(
+        "keep_settings",
+        "100 to 1000000000",
+        &mut config.keep_settings,
+        |value| integer(value, 100, 1_000_000_000)?.try_into().ok(),
     );
 }
 

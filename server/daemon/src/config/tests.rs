@@ -1,6 +1,8 @@
 use num_rational::Ratio;
 use ratewright_control::{Effects, Engine, Event, Realisation, Refusal};
 
+use ratewright_timing::{LatencyTail, Oscillator};
+
 use super::*;
 
 const EXAMPLE: &str = include_str!("../../../../deploy/ratewrightd.example.toml");
@@ -55,6 +57,12 @@ fn declarations_come_out_as_written() {
         title = "Camera 1"
         rate = "30000/1001"
         tolerance_ppm = 20
+        oscillator = "oven"
+        tail = "counter-late"
+        quantum_ns = 1000
+        [[clock]]
+        id = "spare"
+        rate = "44.1k"
         [[crossing]]
         id = "line"
         source = "desk"
@@ -64,16 +72,43 @@ fn declarations_come_out_as_written() {
         realisation = "single"
         group = "studio"
         lead_s = 0.25
+        least_hold_s = 0.5
+        silent = true
+        backup = "spare"
+        pitch_limit_ppm = 0.5
+        [[crossing]]
+        id = "table"
+        source = "desk"
+        sink = "camera"
+        realisation = "stepping"
+        [[crossing]]
+        id = "swing"
+        source = "desk"
+        sink = "camera"
+        realisation = "lazy"
         "#,
     )
     .unwrap();
     assert_eq!(config.clocks[0].nominal_hz, Ratio::from_integer(44_100));
     assert_eq!(config.clocks[1].nominal_hz, Ratio::new(30_000, 1001));
-    assert_eq!(config.clocks[1].tolerance_ppm, 20.0);
+    let camera = &config.clocks[1];
+    assert_eq!((camera.tolerance_ppm, camera.quantum_ns), (20.0, 1_000));
+    assert_eq!(camera.oscillator, Some(Oscillator::Oven));
+    assert_eq!(camera.tail, Some(LatencyTail::CounterLate));
     let line = &config.crossings[0];
     assert_eq!((line.bounds.max_l(), line.bounds.max_m()), (512, 1024));
     assert_eq!((line.headroom_samples, line.lead_ns), (2.5, 250_000_000));
     assert_eq!(line.realisation, Realisation::Single);
+    assert_eq!(
+        (line.pitch_limit_ppm, line.least_hold_ns),
+        (0.5, 500_000_000)
+    );
+    assert_eq!(
+        (line.silent, line.backup.as_ref().unwrap().as_str()),
+        (true, "spare")
+    );
+    assert_eq!(config.crossings[1].realisation, Realisation::Stepping);
+    assert_eq!(config.crossings[2].realisation, Realisation::Lazy);
     assert_eq!(line.group.as_ref().unwrap().as_str(), "studio");
 }
 
@@ -94,12 +129,18 @@ rate = "0/5"
 [[clock]]
 id = "tape"
 tolerance_ppm = -1
+oscillator = "quartz"
 [[crossing]]
 id = "line"
 source = "tape"
 sink = "nowhere"
 max_l = 0
 headroom_samples = nan
+realisation = "both"
+backup = "nowhere"
+least_hold_s = 3601
+pitch_limit_ppm = 0
+silent = "yes"
 [shutdwon]
 grace_s = 1
 "#,
@@ -107,17 +148,23 @@ grace_s = 1
     let expected = [
         "2: listen.grpc is \"localhost\"; accepted: an address",
         "3: listen.people is 7421; accepted: an address",
-        "4: listen.ports is no key here; accepted: grpc, people, max_streams",
+        "4: listen.ports is no key here; accepted: grpc, people, max_streams, max_connections",
         "6: log.format is \"xml\"; accepted: \"text\" or \"json\"",
         "8: house.tai_minus_utc_s is 37.5; accepted: 0 to 100 seconds",
         "10: clock[0].id is \"Desk\"; accepted: 1 to 63 of a-z",
         "11: clock[0].rate is \"0/5\"; accepted: a rate in Hz",
         "12: clock[1].rate is missing; accepted: a rate in Hz",
         "14: clock[1].tolerance_ppm is -1; accepted: 0 to 10000 ppm",
-        "18: crossing[0].sink is \"nowhere\"; accepted: the id of a [[clock]]",
-        "19: crossing[0].max_l is 0; accepted: 1 to 2147483648",
-        "20: crossing[0].headroom_samples is nan; accepted: above 0",
-        "21: shutdwon is no key here; accepted: listen, store,",
+        "15: clock[1].oscillator is \"quartz\"; accepted: \"crystal\"",
+        "19: crossing[0].sink is \"nowhere\"; accepted: the id of a [[clock]]",
+        "20: crossing[0].max_l is 0; accepted: 1 to 2147483648",
+        "21: crossing[0].headroom_samples is nan; accepted: above 0",
+        "22: crossing[0].realisation is \"both\"; accepted: \"single\", \"cadence\"",
+        "23: crossing[0].backup is \"nowhere\"; accepted: the id of a [[clock]]",
+        "24: crossing[0].least_hold_s is 3601; accepted: 0 to 3600 seconds",
+        "25: crossing[0].pitch_limit_ppm is 0; accepted: 0.1 to 1000 ppm",
+        "26: crossing[0].silent is \"yes\"; accepted: true or false",
+        "27: shutdwon is no key here; accepted: listen, store,",
     ];
     assert_eq!(found.len(), expected.len(), "{found:#?}");
     for (found, expected) in found.iter().zip(expected) {
@@ -215,4 +262,17 @@ fn a_group_that_is_too_large_is_a_fault_of_the_first_too_many() {
     let found = faults(&text);
     assert_eq!(found.len(), 1, "{found:?}");
     assert!(found[0].contains("crossing[64].group"), "{found:?}");
+}
+
+/// What the engine refuses is told by the file's own name of the key.
+#[test]
+fn a_backup_that_is_the_source_is_a_fault_of_the_backup() {
+    let text = "[[clock]]\nid = 'a'\nrate = 1\n[[clock]]\nid = 'b'\nrate = 1\n[[crossing]]\nid = 'c'\n\
+                source = 'a'\nsink = 'b'\nbackup = 'a'";
+    let found = faults(text);
+    assert_eq!(found.len(), 1, "{found:?}");
+    assert!(
+        found[0].starts_with("11: crossing[0].backup is a"),
+        "{found:?}"
+    );
 }

@@ -3,7 +3,7 @@
 use prost::Message as _;
 use ratewright_control::{ClockDeclaration, ClockEstimate};
 use ratewright_proto::v1;
-use ratewright_timing::State;
+use ratewright_timing::{LatencyTail, Oscillator, State};
 
 use super::{names, rate};
 use crate::{
@@ -13,7 +13,16 @@ use crate::{
 };
 
 /// Fields of a clock that an update may change.
-pub(crate) const FIELDS: [&str; 4] = ["display_name", "nominal_rate", "exact", "tolerance_ppm"];
+pub(crate) const FIELDS: [&str; 8] = [
+    "display_name",
+    "nominal_rate",
+    "exact",
+    "tolerance_ppm",
+    "oscillator",
+    "tail",
+    "quantum_ns",
+    "statistics",
+];
 
 const MAX_DISPLAY_NAME: usize = 128;
 
@@ -31,17 +40,20 @@ pub(crate) fn declaration(
     let display_name = violations.note(display_name(&at("display_name"), sent.display_name));
     let nominal_hz = violations.note(rate::rate(&at("nominal_rate"), sent.nominal_rate));
     let tolerance_ppm = violations.note(tolerance(&at("tolerance_ppm"), sent.tolerance_ppm));
+    let oscillator = violations.note(oscillator(&at("oscillator"), sent.oscillator));
+    let tail = violations.note(tail(&at("tail"), sent.tail));
+    let quantum_ns = violations.note(quantum(&at("quantum_ns"), sent.quantum_ns));
     violations.into_result()?;
-    let (Some(id), Some(display_name), Some(nominal_hz), Some(tolerance_ppm)) =
-        (id, display_name, nominal_hz, tolerance_ppm)
-    else {
-        unreachable!("a field that is missing was noted as a violation")
-    };
+    let missing = "a field that is missing was noted as a violation";
     Ok(ClockDeclaration {
-        display_name,
+        display_name: display_name.expect(missing),
         exact: sent.exact,
-        tolerance_ppm,
-        ..ClockDeclaration::new(id, nominal_hz)
+        tolerance_ppm: tolerance_ppm.expect(missing),
+        oscillator: oscillator.expect(missing),
+        tail: tail.expect(missing),
+        quantum_ns: quantum_ns.expect(missing),
+        statistics: sent.statistics,
+        ..ClockDeclaration::new(id.expect(missing), nominal_hz.expect(missing))
     })
 }
 
@@ -74,6 +86,61 @@ fn tolerance(field: &str, sent: f64) -> Result<f64, Violation> {
     }
 }
 
+fn oscillator(field: &str, sent: i32) -> Result<Option<Oscillator>, Violation> {
+    match v1::Oscillator::try_from(sent) {
+        Ok(v1::Oscillator::Unspecified) => Ok(None),
+        Ok(v1::Oscillator::Crystal) => Ok(Some(Oscillator::Crystal)),
+        Ok(v1::Oscillator::Compensated) => Ok(Some(Oscillator::Compensated)),
+        Ok(v1::Oscillator::Oven) => Ok(Some(Oscillator::Oven)),
+        Ok(v1::Oscillator::Atomic) => Ok(Some(Oscillator::Atomic)),
+        Err(_) => {
+            let accepted = "OSCILLATOR_CRYSTAL (1), OSCILLATOR_COMPENSATED (2), OSCILLATOR_OVEN (3), \
+                            OSCILLATOR_ATOMIC (4), or 0 if it is not known";
+            Err(Violation::new(field, sent, accepted))
+        }
+    }
+}
+
+fn oscillator_to_wire(oscillator: Option<Oscillator>) -> v1::Oscillator {
+    match oscillator {
+        None => v1::Oscillator::Unspecified,
+        Some(Oscillator::Crystal) => v1::Oscillator::Crystal,
+        Some(Oscillator::Compensated) => v1::Oscillator::Compensated,
+        Some(Oscillator::Oven) => v1::Oscillator::Oven,
+        Some(Oscillator::Atomic) => v1::Oscillator::Atomic,
+    }
+}
+
+fn tail(field: &str, sent: i32) -> Result<Option<LatencyTail>, Violation> {
+    match v1::LatencyTail::try_from(sent) {
+        Ok(v1::LatencyTail::Unspecified) => Ok(None),
+        Ok(v1::LatencyTail::ReferenceLate) => Ok(Some(LatencyTail::ReferenceLate)),
+        Ok(v1::LatencyTail::CounterLate) => Ok(Some(LatencyTail::CounterLate)),
+        Err(_) => {
+            let accepted = "LATENCY_TAIL_REFERENCE_LATE (1), LATENCY_TAIL_COUNTER_LATE (2), or 0 if it is \
+                            not known";
+            Err(Violation::new(field, sent, accepted))
+        }
+    }
+}
+
+fn tail_to_wire(tail: Option<LatencyTail>) -> v1::LatencyTail {
+    match tail {
+        None => v1::LatencyTail::Unspecified,
+        Some(LatencyTail::ReferenceLate) => v1::LatencyTail::ReferenceLate,
+        Some(LatencyTail::CounterLate) => v1::LatencyTail::CounterLate,
+    }
+}
+
+fn quantum(field: &str, sent: i64) -> Result<i64, Violation> {
+    if (0..=1_000_000_000).contains(&sent) {
+        Ok(sent)
+    } else {
+        let accepted = "0 (not known) to 10^9 ns (1 s)";
+        Err(Violation::new(field, sent, accepted))
+    }
+}
+
 /// The declaration alone, as it is stored.
 pub(crate) fn declaration_to_wire(clock: &ClockDeclaration) -> v1::Clock {
     v1::Clock {
@@ -82,15 +149,22 @@ pub(crate) fn declaration_to_wire(clock: &ClockDeclaration) -> v1::Clock {
         nominal_rate: Some(rate::rate_to_wire(&clock.nominal_hz)),
         exact: clock.exact,
         tolerance_ppm: clock.tolerance_ppm,
+        oscillator: oscillator_to_wire(clock.oscillator).into(),
+        tail: tail_to_wire(clock.tail).into(),
+        quantum_ns: clock.quantum_ns,
+        statistics: clock.statistics,
         estimate: None,
         etag: String::new(),
+        fault: String::new(),
     }
 }
 
 pub(crate) fn view_to_wire(view: &ClockView) -> v1::Clock {
     let estimate = Some(estimate_to_wire(&view.estimate));
+    let fault = view.estimate.fault.as_ref();
     v1::Clock {
         estimate,
+        fault: fault.map_or_else(String::new, ToString::to_string),
         etag: etag(&view.declaration),
         ..declaration_to_wire(&view.declaration)
     }
@@ -142,6 +216,10 @@ pub(crate) fn overlay(mut current: v1::Clock, new: v1::Clock, paths: &[&str]) ->
             "nominal_rate" => current.nominal_rate = new.nominal_rate,
             "exact" => current.exact = new.exact,
             "tolerance_ppm" => current.tolerance_ppm = new.tolerance_ppm,
+            "oscillator" => current.oscillator = new.oscillator,
+            "tail" => current.tail = new.tail,
+            "quantum_ns" => current.quantum_ns = new.quantum_ns,
+            "statistics" => current.statistics = new.statistics,
             other => unreachable!("{other} is not among FIELDS"),
         }
     }
@@ -161,14 +239,25 @@ mod tests {
                 denominator: 1,
             }),
             tolerance_ppm: 50.0,
+            oscillator: v1::Oscillator::Oven.into(),
+            tail: v1::LatencyTail::CounterLate.into(),
+            quantum_ns: 20_833,
             ..Default::default()
         }
     }
 
     #[test]
     fn a_declaration_comes_back_as_it_was_sent() {
-        let declared = declaration("clock", Some(sent())).unwrap();
-        assert_eq!(declaration_to_wire(&declared), sent());
+        let kinds = (0..=4).flat_map(|oscillator| (0..=2).map(move |tail| (oscillator, tail)));
+        for (oscillator, tail) in kinds {
+            let sent = v1::Clock {
+                oscillator,
+                tail,
+                ..sent()
+            };
+            let declared = declaration("clock", Some(sent.clone())).unwrap();
+            assert_eq!(declaration_to_wire(&declared), sent);
+        }
     }
 
     #[test]
@@ -180,6 +269,9 @@ mod tests {
                 denominator: 0,
             }),
             tolerance_ppm: f64::NAN,
+            oscillator: 5,
+            tail: -1,
+            quantum_ns: 1_000_000_001,
             ..sent()
         };
         let Refused::Invalid(violations) = declaration("clock", Some(wrong)).unwrap_err() else {
@@ -191,7 +283,10 @@ mod tests {
             [
                 "clock.name",
                 "clock.nominal_rate.denominator",
-                "clock.tolerance_ppm"
+                "clock.tolerance_ppm",
+                "clock.oscillator",
+                "clock.tail",
+                "clock.quantum_ns"
             ]
         );
         assert_eq!(violations[2].value, "NaN");
@@ -206,6 +301,26 @@ mod tests {
         };
         assert_eq!(etag(&first), etag(&first.clone()));
         assert_ne!(etag(&first), etag(&other));
+    }
+
+    #[test]
+    fn each_field_of_the_mask_is_overlaid() {
+        for field in FIELDS {
+            let changed = overlay(v1::Clock::default(), changed(), &[field]);
+            assert_ne!(changed, v1::Clock::default(), "{field}");
+        }
+        let all = overlay(v1::Clock::default(), changed(), &FIELDS);
+        assert_eq!(all, changed());
+    }
+
+    /// Every field that may be changed, with a value of its own.
+    fn changed() -> v1::Clock {
+        v1::Clock {
+            name: String::new(),
+            exact: true,
+            statistics: true,
+            ..sent()
+        }
     }
 
     #[test]

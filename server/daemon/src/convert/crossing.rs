@@ -1,7 +1,9 @@
 //! Crossings and their status.
 
 use prost::Message as _;
-use ratewright_control::{CrossingDeclaration, CrossingState, Realisation};
+use ratewright_control::{
+    CrossingDeclaration, CrossingState, DEFAULT_PITCH_LIMIT_PPM, Id, Pin, Realisation,
+};
 use ratewright_proto::v1;
 use ratewright_ratio::Bounds;
 
@@ -13,7 +15,7 @@ use crate::{
 };
 
 /// Fields of a crossing that an update may change.
-pub(crate) const FIELDS: [&str; 10] = [
+pub(crate) const FIELDS: [&str; 14] = [
     "display_name",
     "source_clock",
     "sink_clock",
@@ -24,6 +26,10 @@ pub(crate) const FIELDS: [&str; 10] = [
     "group",
     "lead_ns",
     "review_horizon_ns",
+    "least_hold_ns",
+    "pitch_limit_ppm",
+    "silent",
+    "backup_clock",
 ];
 
 const MAX_BOUND: u64 = 1 << 31;
@@ -54,6 +60,10 @@ pub(crate) fn declaration(
         &at("review_horizon_ns"),
         sent.review_horizon_ns,
     ));
+    let least_hold_ns = violations.note(least_hold(&at("least_hold_ns"), sent.least_hold_ns));
+    let pitch_limit_ppm =
+        violations.note(pitch_limit(&at("pitch_limit_ppm"), sent.pitch_limit_ppm));
+    let backup = violations.note(backup(&at("backup_clock"), &sent.backup_clock));
     violations.into_result()?;
     let missing = "a field that is missing was noted as a violation";
     let bounds = Bounds::new(max_l.expect(missing), max_m.expect(missing))
@@ -66,6 +76,10 @@ pub(crate) fn declaration(
         group: group.expect(missing),
         lead_ns: lead_ns.expect(missing),
         review_horizon_ns: review_horizon_ns.expect(missing),
+        least_hold_ns: least_hold_ns.expect(missing),
+        pitch_limit_ppm: pitch_limit_ppm.expect(missing),
+        silent: sent.silent,
+        backup: backup.expect(missing),
         ..CrossingDeclaration::new(id.expect(missing), source, sink, bounds)
     })
 }
@@ -74,7 +88,7 @@ pub(crate) fn declaration(
 pub(crate) fn path_of(field: &str) -> String {
     match field {
         "id" => "crossing.name".into(),
-        "source" | "sink" => format!("crossing.{field}_clock"),
+        "source" | "sink" | "backup" => format!("crossing.{field}_clock"),
         other => format!("crossing.{other}"),
     }
 }
@@ -105,14 +119,17 @@ fn realisation(field: &str, sent: i32) -> Result<Realisation, Violation> {
     match v1::Realisation::try_from(sent) {
         Ok(v1::Realisation::Unspecified | v1::Realisation::Cadence) => Ok(Realisation::Cadence),
         Ok(v1::Realisation::Single) => Ok(Realisation::Single),
+        Ok(v1::Realisation::Stepping) => Ok(Realisation::Stepping),
+        Ok(v1::Realisation::Lazy) => Ok(Realisation::Lazy),
         Err(_) => {
-            let accepted = "REALISATION_SINGLE (1), REALISATION_CADENCE (2), or 0 for the latter";
+            let accepted = "REALISATION_SINGLE (1), REALISATION_CADENCE (2), REALISATION_STEPPING (3), \
+                            REALISATION_LAZY (4), or 0 for a cadence";
             Err(Violation::new(field, sent, accepted))
         }
     }
 }
 
-fn group(field: &str, sent: &str) -> Result<Option<ratewright_control::Id>, Violation> {
+fn group(field: &str, sent: &str) -> Result<Option<Id>, Violation> {
     if sent.is_empty() {
         Ok(None)
     } else {
@@ -144,13 +161,41 @@ fn review_horizon(field: &str, sent: i64) -> Result<i64, Violation> {
     }
 }
 
+fn least_hold(field: &str, sent: i64) -> Result<i64, Violation> {
+    if (0..=3_600 * SECOND_NS).contains(&sent) {
+        Ok(sent)
+    } else {
+        let accepted = "0 (none) to 36*10^11 (1 h)";
+        Err(Violation::new(field, sent, accepted))
+    }
+}
+
+fn pitch_limit(field: &str, sent: f64) -> Result<f64, Violation> {
+    if sent == 0.0 {
+        Ok(DEFAULT_PITCH_LIMIT_PPM)
+    } else if (0.1..=1000.0).contains(&sent) {
+        Ok(sent)
+    } else {
+        let accepted = format!("0.1 to 1000 ppm, or 0 for {DEFAULT_PITCH_LIMIT_PPM}");
+        Err(Violation::new(field, sent, accepted))
+    }
+}
+
+fn backup(field: &str, sent: &str) -> Result<Option<Id>, Violation> {
+    if sent.is_empty() {
+        Ok(None)
+    } else {
+        names::parse_clock(field, sent).map(Some)
+    }
+}
+
 /// The declaration alone, as it is stored.
 pub(crate) fn declaration_to_wire(crossing: &CrossingDeclaration) -> v1::Crossing {
     let realisation = match crossing.realisation {
         Realisation::Single => v1::Realisation::Single,
         Realisation::Cadence => v1::Realisation::Cadence,
-        // Not in the contract yet, so that no crossing can be declared over it with these.
-        Realisation::Stepping | Realisation::Lazy => v1::Realisation::Unspecified,
+        Realisation::Stepping => v1::Realisation::Stepping,
+        Realisation::Lazy => v1::Realisation::Lazy,
     };
     v1::Crossing {
         name: names::crossing(&crossing.id),
@@ -167,6 +212,13 @@ pub(crate) fn declaration_to_wire(crossing: &CrossingDeclaration) -> v1::Crossin
             .map_or_else(String::new, ToString::to_string),
         lead_ns: crossing.lead_ns,
         review_horizon_ns: crossing.review_horizon_ns,
+        least_hold_ns: crossing.least_hold_ns,
+        pitch_limit_ppm: crossing.pitch_limit_ppm,
+        silent: crossing.silent,
+        backup_clock: crossing
+            .backup
+            .as_ref()
+            .map_or_else(String::new, names::clock),
         status: None,
         etag: String::new(),
     }
@@ -205,6 +257,20 @@ fn status_to_wire(view: &CrossingView) -> v1::CrossingStatus {
         setting: status.setting.as_ref().map(setting::setting_to_wire),
         settings_made: status.settings_made,
         residual: status.residual.unwrap_or(0.0),
+        pin: status.pin.as_ref().map(pin_to_wire),
+        source_clock: names::clock(&status.source),
+        needed: status.needed.as_ref().map(|bounds| v1::Bounds {
+            max_l: bounds.max_l(),
+            max_m: bounds.max_m(),
+        }),
+    }
+}
+
+fn pin_to_wire(pin: &Pin) -> v1::Pin {
+    v1::Pin {
+        by: pin.by.clone(),
+        since_ns: pin.since_ns,
+        note: pin.note.clone(),
     }
 }
 
@@ -235,6 +301,10 @@ pub(crate) fn overlay(
             "group" => current.group = new.group.clone(),
             "lead_ns" => current.lead_ns = new.lead_ns,
             "review_horizon_ns" => current.review_horizon_ns = new.review_horizon_ns,
+            "least_hold_ns" => current.least_hold_ns = new.least_hold_ns,
+            "pitch_limit_ppm" => current.pitch_limit_ppm = new.pitch_limit_ppm,
+            "silent" => current.silent = new.silent,
+            "backup_clock" => current.backup_clock = new.backup_clock.clone(),
             other => unreachable!("{other} is not among FIELDS"),
         }
     }
@@ -262,12 +332,46 @@ mod tests {
         assert_eq!(declared.headroom_samples, 1.0);
         assert_eq!(declared.lead_ns, 1_000_000_000);
         assert_eq!(declared.review_horizon_ns, 86_400_000_000_000);
+        assert_eq!(
+            (declared.least_hold_ns, declared.pitch_limit_ppm),
+            (0, 20.0)
+        );
+        assert_eq!((declared.silent, &declared.backup), (false, &None));
         let shown = declaration_to_wire(&declared);
         assert_eq!(
             declaration("crossing", Some(shown.clone())).unwrap(),
             declared
         );
         assert_eq!(shown.realisation, v1::Realisation::Cadence as i32);
+    }
+
+    #[test]
+    fn a_declaration_comes_back_as_it_was_sent() {
+        for realisation in 1..=4 {
+            let sent = v1::Crossing {
+                realisation,
+                ..spelt_out()
+            };
+            let declared = declaration("crossing", Some(sent.clone())).unwrap();
+            assert_eq!(declaration_to_wire(&declared), sent);
+        }
+    }
+
+    /// Every field that is declared, with a value of its own.
+    fn spelt_out() -> v1::Crossing {
+        v1::Crossing {
+            display_name: "Desk to stage".into(),
+            headroom_samples: 12.0,
+            realisation: v1::Realisation::Lazy.into(),
+            group: "tour".into(),
+            lead_ns: 2_000_000,
+            review_horizon_ns: 60_000_000_000,
+            least_hold_ns: 5_000_000_000,
+            pitch_limit_ppm: 3.5,
+            silent: true,
+            backup_clock: "clocks/spare".into(),
+            ..sent()
+        }
     }
 
     #[test]
@@ -282,6 +386,9 @@ mod tests {
             group: "Two words".into(),
             lead_ns: -1,
             review_horizon_ns: 1,
+            least_hold_ns: 3_600_000_000_001,
+            pitch_limit_ppm: 0.05,
+            backup_clock: "spare".into(),
             ..sent()
         };
         let Refused::Invalid(violations) = declaration("crossing", Some(wrong)).unwrap_err() else {
@@ -302,7 +409,10 @@ mod tests {
                 "realisation",
                 "group",
                 "lead_ns",
-                "review_horizon_ns"
+                "review_horizon_ns",
+                "least_hold_ns",
+                "pitch_limit_ppm",
+                "backup_clock"
             ]
         );
     }
@@ -310,7 +420,8 @@ mod tests {
     #[test]
     fn each_field_of_the_mask_can_be_overlaid() {
         for field in FIELDS {
-            overlay(sent(), sent(), &[field]);
+            let changed = overlay(v1::Crossing::default(), spelt_out(), &[field]);
+            assert_ne!(changed, v1::Crossing::default(), "{field}");
         }
         let merged = overlay(
             sent(),

@@ -27,7 +27,9 @@ pub(crate) fn refused(refusal: Refusal, path_of: impl Fn(&str) -> String) -> Ref
 /// The engine knows ids where callers send names.
 fn sent_value(field: &str, value: String) -> String {
     match field {
-        "clock" | "reference" | "source" | "sink" if value != "house" => format!("clocks/{value}"),
+        "clock" | "reference" | "source" | "sink" | "backup" if value != "house" => {
+            format!("clocks/{value}")
+        }
         "crossing" => format!("crossings/{value}"),
         _ => value,
     }

@@ -6,6 +6,7 @@
 pub(crate) mod clock;
 pub(crate) mod crossing;
 pub(crate) mod engine;
+pub(crate) mod hand;
 pub(crate) mod names;
 pub(crate) mod plan;
 pub(crate) mod rate;

@@ -84,7 +84,8 @@ fn at(index: usize) -> String {
 /// Name of a measurement's field in the contract.
 pub(crate) fn kind(measurement: &Measurement) -> &'static str {
     match measurement {
-        Measurement::Counter { .. } | Measurement::SenderReport { .. } => "counter",
+        Measurement::Counter { .. } => "counter",
+        Measurement::SenderReport { .. } => "sender_report",
         Measurement::Exchange { .. } => "exchange",
         Measurement::Frequency { .. } => "frequency",
     }
@@ -103,8 +104,9 @@ fn reading(sent: v1::Reading) -> Result<Reading, Violation> {
         Some(Sent::Counter(counter)) => self::counter(counter)?,
         Some(Sent::Exchange(exchange)) => self::exchange(exchange)?,
         Some(Sent::Frequency(frequency)) => self::frequency(frequency)?,
+        Some(Sent::SenderReport(report)) => sender_report(report)?,
         None => {
-            let accepted = "counter, exchange or frequency";
+            let accepted = "counter, exchange, frequency or sender_report";
             return Err(Violation::new("measurement", "absent", accepted));
         }
     };
@@ -118,20 +120,47 @@ fn reading(sent: v1::Reading) -> Result<Reading, Violation> {
 }
 
 fn counter(sent: v1::CounterReading) -> Result<Measurement, Violation> {
-    let bits = if sent.bits == 0 { 64 } else { sent.bits };
-    if bits > 64 {
-        return Err(Violation::new("counter.bits", bits, "1 to 64, or 0 for 64"));
-    }
-    if bits < 64 && sent.count >> bits != 0 {
-        let accepted = format!("less than 2^{bits}, the width that counter.bits gives");
-        return Err(Violation::new("counter.count", sent.count, accepted));
-    }
+    let bits = width("counter.bits", sent.bits, 64)?;
+    fits("counter.count", sent.count, bits)?;
     let reference_ns = time("counter.reference_ns", sent.reference_ns)?;
     Ok(Measurement::Counter {
         count: sent.count,
         bits,
         reference_ns,
     })
+}
+
+fn sender_report(sent: v1::SenderReport) -> Result<Measurement, Violation> {
+    let bits = width("sender_report.bits", sent.bits, 32)?;
+    let media_timestamp = sent.media_timestamp;
+    fits("sender_report.media_timestamp", media_timestamp, bits)?;
+    let reference_ns = time("sender_report.reference_ns", sent.reference_ns)?;
+    Ok(Measurement::SenderReport {
+        media_timestamp,
+        bits,
+        reference_ns,
+    })
+}
+
+/// The width of a counter; 0 stands for `usual`.
+fn width(field: &str, sent: u32, usual: u32) -> Result<u32, Violation> {
+    match sent {
+        0 => Ok(usual),
+        1..=64 => Ok(sent),
+        _ => Err(Violation::new(
+            field,
+            sent,
+            format!("1 to 64, or 0 for {usual}"),
+        )),
+    }
+}
+
+fn fits(field: &str, sent: u64, bits: u32) -> Result<(), Violation> {
+    if bits == 64 || sent >> bits == 0 {
+        return Ok(());
+    }
+    let accepted = format!("less than 2^{bits}, the width that bits gives");
+    Err(Violation::new(field, sent, accepted))
 }
 
 fn exchange(sent: v1::TwoWayExchange) -> Result<Measurement, Violation> {
@@ -263,6 +292,13 @@ mod tests {
                 reference_ns: 0,
             }))
         };
+        let report = |media_timestamp, bits| {
+            sent(Sent::SenderReport(v1::SenderReport {
+                media_timestamp,
+                bits,
+                reference_ns: 0,
+            }))
+        };
         let exchange = |t1_ns, t2_ns, t3_ns, t4_ns| {
             sent(Sent::Exchange(v1::TwoWayExchange {
                 t1_ns,
@@ -274,6 +310,8 @@ mod tests {
         let cases = [
             (counter(0, 65), "counter.bits"),
             (counter(1 << 32, 32), "counter.count"),
+            (report(0, 65), "sender_report.bits"),
+            (report(1 << 32, 0), "sender_report.media_timestamp"),
             (exchange(0, 5, 4, 9), "exchange.t3_ns"),
             (exchange(10, 4, 5, 9), "exchange.t4_ns"),
             (exchange(i64::MIN, 4, 5, 9), "exchange.t1_ns"),
@@ -310,5 +348,7 @@ mod tests {
             assert_eq!(super::reading(reading).unwrap_err().field, field);
         }
         assert!(reading(counter(u64::MAX, 0)).is_ok());
+        assert!(reading(report(u64::from(u32::MAX), 0)).is_ok());
+        assert!(reading(report(1 << 32, 33)).is_ok());
     }
 }

@@ -1,8 +1,11 @@
 //! Declares the facility over gRPC, and finds out when it began.
 
-use ratewright_client::{CallError, Client, Id, Realisation, RefusalKind, SettingNumber};
+use ratewright_client::{
+    CallError, Client, Id, LatencyTail, Oscillator, Realisation, RefusalKind, SettingNumber,
+};
 use ratewright_control as control;
 use ratewright_rehearsal::Plan;
+use ratewright_timing as timing;
 
 use super::SampleError;
 
@@ -54,11 +57,22 @@ fn unless_there<T>(declared: Result<T, CallError>) -> Result<(), CallError> {
 
 fn clock_on_the_wire(clock: &control::ClockDeclaration) -> ratewright_client::ClockDeclaration {
     ratewright_client::ClockDeclaration {
-        id: id(&clock.id),
         display_name: clock.display_name.clone(),
-        nominal_hz: clock.nominal_hz,
         exact: clock.exact,
         tolerance_ppm: Some(clock.tolerance_ppm).filter(|&ppm| ppm > 0.0),
+        oscillator: clock.oscillator.map(|kind| match kind {
+            timing::Oscillator::Crystal => Oscillator::Crystal,
+            timing::Oscillator::Compensated => Oscillator::Compensated,
+            timing::Oscillator::Oven => Oscillator::Oven,
+            timing::Oscillator::Atomic => Oscillator::Atomic,
+        }),
+        tail: clock.tail.map(|tail| match tail {
+            timing::LatencyTail::ReferenceLate => LatencyTail::ReferenceLate,
+            timing::LatencyTail::CounterLate => LatencyTail::CounterLate,
+        }),
+        quantum_ns: Some(clock.quantum_ns).filter(|&ns| ns > 0),
+        statistics: clock.statistics,
+        ..ratewright_client::ClockDeclaration::new(id(&clock.id), clock.nominal_hz)
     }
 }
 
@@ -66,21 +80,27 @@ fn crossing_on_the_wire(
     crossing: &control::CrossingDeclaration,
 ) -> ratewright_client::CrossingDeclaration {
     ratewright_client::CrossingDeclaration {
-        id: id(&crossing.id),
         display_name: crossing.display_name.clone(),
-        source: id(&crossing.source),
-        sink: id(&crossing.sink),
-        bounds: crossing.bounds,
         headroom_samples: crossing.headroom_samples,
         realisation: match crossing.realisation {
             control::Realisation::Single => Realisation::Single,
             control::Realisation::Cadence => Realisation::Cadence,
-            // The client cannot say these yet, and the sample facility has none.
-            control::Realisation::Stepping | control::Realisation::Lazy => Realisation::Cadence,
+            control::Realisation::Stepping => Realisation::Stepping,
+            control::Realisation::Lazy => Realisation::Lazy,
         },
         group: crossing.group.as_ref().map(id),
         lead_ns: crossing.lead_ns,
         review_horizon_ns: crossing.review_horizon_ns,
+        least_hold_ns: crossing.least_hold_ns,
+        pitch_limit_ppm: crossing.pitch_limit_ppm,
+        silent: crossing.silent,
+        backup: crossing.backup.as_ref().map(id),
+        ..ratewright_client::CrossingDeclaration::new(
+            id(&crossing.id),
+            id(&crossing.source),
+            id(&crossing.sink),
+            crossing.bounds,
+        )
     }
 }
 

@@ -1,6 +1,6 @@
 //! A group on its way: what its commands did, until it is on the disk.
 
-use ratewright_control::{Engine, Event, HouseNs, Refusal, Setting, Transition, explain};
+use ratewright_control::{Act, Engine, Event, HouseNs, Refusal, Setting, Transition, explain};
 use tokio::sync::oneshot;
 
 use super::{Command, Done, Promise, news::Touched};
@@ -77,6 +77,8 @@ impl Group {
             let explanation = explained(engine, setting);
             self.written.settings.push((setting.clone(), explanation));
         }
+        effects.acts.iter().for_each(log_act);
+        self.written.acts.extend(effects.acts);
         self.written.events.push((now, event));
         Ok(())
     }
@@ -92,6 +94,17 @@ impl Group {
 fn explained(engine: &Engine, setting: &Setting) -> Vec<String> {
     let crossing = engine.crossing(&setting.crossing);
     crossing.map_or_else(Vec::new, |crossing| explain(setting, crossing))
+}
+
+fn log_act(act: &Act) {
+    let Act {
+        crossing,
+        by,
+        note,
+        what,
+        ..
+    } = act;
+    tracing::info!(%crossing, by, note, ?what, "an operator acted");
 }
 
 fn log_transition(transition: &Transition) {

@@ -33,9 +33,10 @@ impl Touched {
         match event {
             Event::DeclareClock(clock) => {
                 self.clocks.insert(clock.id.clone());
-                let between = engine
-                    .crossings()
-                    .filter(|c| c.source == clock.id || c.sink == clock.id);
+                let between = engine.crossings().filter(|c| {
+                    [&c.source, &c.sink].contains(&&clock.id)
+                        || c.backup.as_ref() == Some(&clock.id)
+                });
                 self.crossings
                     .extend(between.map(|crossing| crossing.id.clone()));
             }

@@ -197,7 +197,7 @@ impl Room {
 
     /// Counts what is about to be heard of.
     fn count(&self, news: &News) {
-        for setting in &news.settings {
+        for setting in news.settings.iter().filter(|setting| !setting.silent) {
             metrics::setting(setting, self.newest_reading_ns(setting));
         }
         for applied in &news.applied {

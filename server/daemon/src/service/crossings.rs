@@ -6,7 +6,7 @@ use tonic::{Request, Response, Status};
 
 use super::{Access, etag, mask, paging};
 use crate::{
-    convert::{crossing, engine, names},
+    convert::{crossing, engine, hand, names},
     refused::{Refused, Violation},
 };
 
@@ -94,9 +94,72 @@ impl CrossingService for Crossings {
         .await?;
         Ok(Response::new(()))
     }
+
+    async fn pin_crossing(
+        &self,
+        request: Request<v1::PinCrossingRequest>,
+    ) -> Result<Response<v1::Crossing>, Status> {
+        self.act(hand::pin(request.into_inner())?).await
+    }
+
+    async fn release_crossing(
+        &self,
+        request: Request<v1::ReleaseCrossingRequest>,
+    ) -> Result<Response<v1::Crossing>, Status> {
+        self.act(hand::release(request.into_inner())?).await
+    }
+
+    async fn change_over(
+        &self,
+        request: Request<v1::ChangeOverRequest>,
+    ) -> Result<Response<v1::Crossing>, Status> {
+        self.act(hand::change_over(request.into_inner())?).await
+    }
+
+    async fn list_acts(
+        &self,
+        request: Request<v1::ListActsRequest>,
+    ) -> Result<Response<v1::ListActsResponse>, Status> {
+        let v1::ListActsRequest {
+            parent,
+            page_size,
+            page_token,
+        } = request.into_inner();
+        let id = names::parse_crossing("parent", &parent)?;
+        let list = format!("{parent}/acts");
+        let page = paging::page(&list, page_size, &page_token)?;
+        let before = page.after.as_deref().and_then(|place| place.parse().ok());
+        let known = self.0.board.crossing(&id).is_some();
+        let found = self.0.history.acts(id, before, page.size + 1).await;
+        let found = found.map_err(Refused::unreadable)?;
+        if found.is_empty() && !known {
+            return Err(Refused::not_found(parent).into());
+        }
+        let (found, next_page_token) = page.cut(&list, found, |(place, _)| place.to_string());
+        let acts = found.into_iter().map(|(_, act)| act).collect();
+        Ok(Response::new(v1::ListActsResponse {
+            acts,
+            next_page_token,
+        }))
+    }
 }
 
 impl Crossings {
+    /// Lets the engine do what an operator asks for, and shows what came of it.
+    async fn act(&self, event: Event) -> Result<Response<v1::Crossing>, Status> {
+        let (Event::Pin { crossing, .. }
+        | Event::Release { crossing, .. }
+        | Event::ChangeOver { crossing, .. }) = &event
+        else {
+            unreachable!("{event:?} is no act of an operator")
+        };
+        let id = crossing.clone();
+        let done = self.0.desk.decide(|_| Ok(event)).await?;
+        done.sole()
+            .map_err(|refusal| engine::refused(refusal, hand::path_of))?;
+        Ok(Response::new(self.shown(&id)?))
+    }
+
     fn shown(&self, id: &Id) -> Result<v1::Crossing, Refused> {
         let view = self.0.board.crossing(id);
         view.map(|view| crossing::view_to_wire(&view))

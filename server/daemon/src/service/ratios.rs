@@ -9,7 +9,7 @@ use super::{Access, Answers, feed, follow, paging, plan, slots::Kind};
 use crate::{
     convert::names::{self, SettingName},
     refused::{Refused, Violation},
-    store::{Recorded, StoreError},
+    store::Recorded,
 };
 
 #[derive(Debug)]
@@ -55,7 +55,7 @@ impl RatioService for Ratios {
             .settings(crossing, before, page.size + 1)
             .await;
         let settings: Vec<v1::Setting> = found
-            .map_err(unreadable)?
+            .map_err(Refused::unreadable)?
             .into_iter()
             .map(|recorded| recorded.setting)
             .collect();
@@ -132,7 +132,7 @@ impl Ratios {
             .history
             .setting(crossing, numbered)
             .await
-            .map_err(unreadable)?;
+            .map_err(Refused::unreadable)?;
         found.ok_or_else(|| Refused::not_found(name))
     }
 }
@@ -141,9 +141,4 @@ impl Ratios {
 fn numbers(after: &str) -> Option<(u64, u64)> {
     let (epoch, number) = after.split_once('-')?;
     Some((epoch.parse().ok()?, number.parse().ok()?))
-}
-
-fn unreadable(fault: StoreError) -> Refused {
-    tracing::error!(%fault, "the history could not be read");
-    Refused::Store(fault.to_string())
 }

@@ -13,7 +13,7 @@ use rusqlite::{Connection, OpenFlags, OptionalExtension, Row, params};
 
 use super::StoreError;
 
-/// The settings that were ever made. Cheap to clone.
+/// The settings that are kept, and the acts of operators. Cheap to clone.
 #[derive(Clone, Debug)]
 pub(crate) struct History(Arc<Mutex<Connection>>);
 
@@ -77,6 +77,35 @@ impl History {
             query
                 .query_map(range, columns)?
                 .map(|row| decode(row?))
+                .collect()
+        })
+        .await
+    }
+
+    /// At most `limit` acts on a crossing, newest first, from the first one before `before`, each with
+    /// its place in that order.
+    pub(crate) async fn acts(
+        &self,
+        crossing: Id,
+        before: Option<i64>,
+        limit: usize,
+    ) -> Result<Vec<(i64, v1::Act)>, StoreError> {
+        self.read(move |db| {
+            let mut query = db.prepare_cached(
+                "SELECT place, act FROM acts WHERE crossing = ? AND place < ?
+                 ORDER BY place DESC LIMIT ?",
+            )?;
+            let before = before.unwrap_or(i64::MAX);
+            query
+                .query_map(params![crossing.to_string(), before, limit as i64], |row| {
+                    Ok((row.get(0)?, row.get::<_, Vec<u8>>(1)?))
+                })?
+                .map(|row| {
+                    let (place, act) = row?;
+                    let act = v1::Act::decode(act.as_slice())
+                        .map_err(|why| StoreError::Damaged("an act", why.to_string()))?;
+                    Ok((place, act))
+                })
                 .collect()
         })
         .await

@@ -4,7 +4,8 @@
 //! | --- | --- |
 //! | `snapshot` | the engine as of one journal row, with its epoch and engine version |
 //! | `journal` | every event since, with the house time at which it was applied |
-//! | `settings` | every setting ever made, with its explanation, in the form of the contract |
+//! | `settings` | the newest settings of each crossing, with their explanations, in the form of the contract |
+//! | `acts` | what operators did, in the form of the contract |
 //! | `declarations` | clocks and crossings as they stand, in the form of the contract |
 //!
 //! A restart reads the snapshot and replays the journal: same events, same order, same bytes. The
@@ -21,7 +22,7 @@ mod write;
 
 use std::path::{Path, PathBuf};
 
-use ratewright_control::{Engine, Event, HouseNs, Setting};
+use ratewright_control::{Act, Engine, Event, HouseNs, Setting};
 use rusqlite::Connection;
 
 pub(crate) use history::{History, Recorded};
@@ -34,6 +35,8 @@ pub(crate) struct Store {
     newest: i64,
     /// Journal rows up to this one are gone.
     trimmed: i64,
+    /// Settings of a crossing that are kept, at least.
+    keep_settings: u64,
     /// The snapshot speaks of this journal row.
     snapshot: i64,
     /// Held for as long as the store is.
@@ -91,11 +94,13 @@ pub(crate) struct Group {
     pub(crate) events: Vec<(HouseNs, Event)>,
     /// Settings that came out, each with its explanation.
     pub(crate) settings: Vec<(Setting, Vec<String>)>,
+    /// What operators did.
+    pub(crate) acts: Vec<Act>,
 }
 
 impl Group {
     pub(crate) fn is_empty(&self) -> bool {
-        self.events.is_empty() && self.settings.is_empty()
+        self.events.is_empty() && self.settings.is_empty() && self.acts.is_empty()
     }
 }
 

@@ -11,7 +11,7 @@ use super::{Begin, History, Opened, Opening, Store, StoreError, database, lock::
 use crate::{convert, refused::Refused};
 
 /// Version of the tables below.
-const TABLES: i64 = 1;
+const TABLES: i64 = 2;
 
 const CREATE: &str = "
     CREATE TABLE snapshot (
@@ -41,7 +41,17 @@ const CREATE: &str = "
         declaration BLOB NOT NULL,
         PRIMARY KEY (kind, id)
     ) STRICT, WITHOUT ROWID;
-    PRAGMA user_version = 1;
+";
+
+/// What version 2 has more than version 1.
+const ACTS: &str = "
+    CREATE TABLE acts (
+        place INTEGER PRIMARY KEY,
+        crossing TEXT NOT NULL,
+        act BLOB NOT NULL
+    ) STRICT;
+    CREATE INDEX acts_of_crossing ON acts (crossing, place);
+    PRAGMA user_version = 2;
 ";
 
 /// The row of the snapshot, but for the state.
@@ -54,7 +64,8 @@ struct Head {
 
 impl Store {
     /// Opens the store in `folder`, which is made if it is missing. `house_now_ns` is what house
-    /// time would be by the system clock; a new epoch is numbered after it.
+    /// time would be by the system clock; a new epoch is numbered after it. Of each crossing at
+    /// least `keep_settings` settings are kept.
     ///
     /// # Errors
     /// See [`StoreError`]. Nothing has been changed then.
@@ -62,6 +73,7 @@ impl Store {
         folder: &Path,
         opening: Opening,
         house_now_ns: HouseNs,
+        keep_settings: u64,
     ) -> Result<Opened, StoreError> {
         let lock = Lock::take(folder)?;
         let db = Connection::open(database(folder))?;
@@ -95,6 +107,7 @@ impl Store {
             db,
             newest,
             trimmed,
+            keep_settings,
             snapshot,
             _lock: lock,
         };
@@ -117,7 +130,8 @@ fn new_epoch(before: u64, house_now_ns: HouseNs) -> u64 {
 fn create_tables(db: &Connection, folder: &Path) -> Result<(), StoreError> {
     let found: i64 = db.pragma_query_value(None, "user_version", |row| row.get(0))?;
     match found {
-        0 => Ok(db.execute_batch(&format!("BEGIN; {CREATE} COMMIT;"))?),
+        0 => Ok(db.execute_batch(&format!("BEGIN; {CREATE} {ACTS} COMMIT;"))?),
+        1 => Ok(db.execute_batch(&format!("BEGIN; {ACTS} COMMIT;"))?),
         TABLES => Ok(()),
         _ => Err(StoreError::Tables {
             path: folder.to_path_buf(),

@@ -2,19 +2,20 @@
 
 use num_rational::Ratio;
 use ratewright_control::{
-    ClockDeclaration, ENGINE_VERSION, Engine, Event, Evidence, Id, Realised, Reason, Setting,
+    Act, ActKind, ClockDeclaration, ENGINE_VERSION, Engine, Event, Evidence, Id, Realised, Reason,
+    Setting,
 };
 use ratewright_ratio::{Bounds, Exact, Fraction, best};
 use tempfile::TempDir;
 
-use super::{Begin, Group, Opened, Opening, Store, StoreError};
+use super::{Begin, Group, History, Opened, Opening, Store, StoreError};
 
 fn folder() -> TempDir {
     tempfile::tempdir().unwrap()
 }
 
 fn open(folder: &TempDir) -> Opened {
-    Store::open(folder.path(), Opening::Continue, 0).unwrap()
+    Store::open(folder.path(), Opening::Continue, 0, 1_000).unwrap()
 }
 
 /// A store that has begun, as a daemon's first start leaves it.
@@ -79,6 +80,7 @@ fn with_settings(numbers: std::ops::RangeInclusive<u64>) -> Group {
     Group {
         events: vec![(7, Event::Tick)],
         settings,
+        ..Group::default()
     }
 }
 
@@ -93,7 +95,7 @@ fn journal(opened: &Opened) -> Vec<(i64, Event)> {
 fn two_daemons_cannot_share_a_store() {
     let folder = folder();
     let first = open(&folder);
-    let second = Store::open(folder.path(), Opening::Continue, 0);
+    let second = Store::open(folder.path(), Opening::Continue, 0, 1_000);
     assert!(matches!(second, Err(StoreError::InUse(_))), "{second:?}");
     drop(first);
     open(&folder);
@@ -106,7 +108,7 @@ fn what_was_committed_is_read_back_in_order() {
     let events = vec![(10, clock("desk")), (10, Event::Tick), (25, clock("stage"))];
     let group = Group {
         events: events.clone(),
-        settings: Vec::new(),
+        ..Group::default()
     };
     opened.store.commit(&group).unwrap();
     drop(opened);
@@ -124,7 +126,7 @@ fn a_snapshot_takes_the_place_of_the_journal_which_is_trimmed_in_steps() {
         .store
         .commit(&Group {
             events: ticks,
-            settings: Vec::new(),
+            ..Group::default()
         })
         .unwrap();
     opened.store.write_snapshot(&Engine::new(1), 5_000).unwrap();
@@ -132,7 +134,7 @@ fn a_snapshot_takes_the_place_of_the_journal_which_is_trimmed_in_steps() {
     for ns in 5_001..=5_004 {
         let group = Group {
             events: vec![(ns, Event::Tick)],
-            settings: Vec::new(),
+            ..Group::default()
         };
         opened.store.commit(&group).unwrap();
         let count = |row: &rusqlite::Row<'_>| row.get::<_, i64>(0);
@@ -216,18 +218,18 @@ fn another_engine_version_is_refused_and_told_what_to_do() {
         .store
         .commit(&Group {
             events,
-            settings: Vec::new(),
+            ..Group::default()
         })
         .unwrap();
     let newer = "UPDATE snapshot SET engine_version = engine_version + 1";
     opened.store.db.execute(newer, []).unwrap();
     drop(opened);
-    let refused = Store::open(folder.path(), Opening::Continue, 0).unwrap_err();
+    let refused = Store::open(folder.path(), Opening::Continue, 0, 1_000).unwrap_err();
     assert!(
         matches!(refused, StoreError::EngineVersion { found, .. } if found == ENGINE_VERSION + 1)
     );
     assert!(refused.to_string().contains("--new-epoch"), "{refused}");
-    let opened = Store::open(folder.path(), Opening::NewEpoch, 0).unwrap();
+    let opened = Store::open(folder.path(), Opening::NewEpoch, 0, 1_000).unwrap();
     let Begin::Afresh {
         epoch,
         declarations,
@@ -246,7 +248,12 @@ fn two_restores_of_one_backup_open_different_epochs() {
     let folder = folder();
     drop(begun(&folder));
     let epoch_at = |house_s: i64| {
-        let opened = Store::open(folder.path(), Opening::NewEpoch, house_s * 1_000_000_000);
+        let opened = Store::open(
+            folder.path(),
+            Opening::NewEpoch,
+            house_s * 1_000_000_000,
+            1_000,
+        );
         match opened.unwrap().begin {
             Begin::Continue {
                 new_epoch: Some(epoch),
@@ -267,11 +274,11 @@ fn an_opened_epoch_is_remembered() {
         .store
         .commit(&Group {
             events,
-            settings: Vec::new(),
+            ..Group::default()
         })
         .unwrap();
     drop(opened);
-    let opened = Store::open(folder.path(), Opening::NewEpoch, 0).unwrap();
+    let opened = Store::open(folder.path(), Opening::NewEpoch, 0, 1_000).unwrap();
     assert!(matches!(
         opened.begin,
         Begin::Continue {
@@ -291,16 +298,103 @@ fn tables_of_another_version_are_refused() {
         .pragma_update(None, "user_version", 9)
         .unwrap();
     drop(opened);
-    let refused = Store::open(folder.path(), Opening::NewEpoch, 0).unwrap_err();
+    let refused = Store::open(folder.path(), Opening::NewEpoch, 0, 1_000).unwrap_err();
     assert!(
         matches!(
             refused,
             StoreError::Tables {
                 found: 9,
-                known: 1,
+                known: 2,
                 ..
             }
         ),
         "{refused}"
     );
+}
+
+#[tokio::test]
+async fn a_crossing_keeps_its_newest_settings_and_loses_older_ones_in_steps() {
+    let folder = folder();
+    drop(begun(&folder));
+    let opened = Store::open(folder.path(), Opening::Continue, 0, 150).unwrap();
+    let (mut store, history) = (opened.store, opened.history);
+    let id = || Id::new("desk-to-stage").unwrap();
+    let kept = async |history: &History| -> Vec<u64> {
+        let found = history.settings(id(), None, usize::MAX >> 1).await.unwrap();
+        found.iter().map(|r| r.setting.number).collect()
+    };
+    store.commit(&with_settings(1..=250)).unwrap();
+    let newest = |kept: std::ops::RangeInclusive<u64>| kept.rev().collect::<Vec<_>>();
+    assert_eq!(kept(&history).await, newest(101..=250));
+    store.commit(&with_settings(251..=299)).unwrap();
+    assert_eq!(kept(&history).await, newest(101..=299), "nobody looked");
+    let other = Setting {
+        crossing: Id::new("another").unwrap(),
+        ..setting(300)
+    };
+    let group = Group {
+        settings: vec![(other, Vec::new())],
+        ..Group::default()
+    };
+    store.commit(&group).unwrap();
+    assert_eq!(kept(&history).await, newest(101..=299), "by its own count");
+    store.commit(&with_settings(300..=300)).unwrap();
+    assert_eq!(kept(&history).await, newest(151..=300));
+}
+
+fn act(nr: i64) -> Act {
+    Act {
+        crossing: Id::new("desk-to-stage").unwrap(),
+        by: "Ada".into(),
+        note: format!("act {nr}"),
+        at_ns: nr,
+        what: ActKind::Pinned,
+    }
+}
+
+fn with_acts(numbers: std::ops::RangeInclusive<i64>) -> Group {
+    Group {
+        acts: numbers.map(act).collect(),
+        ..Group::default()
+    }
+}
+
+#[tokio::test]
+async fn acts_go_back_page_by_page() {
+    let folder = folder();
+    let mut opened = begun(&folder);
+    opened.store.commit(&with_acts(1..=2)).unwrap();
+    let other = Act {
+        crossing: Id::new("another").unwrap(),
+        ..act(9)
+    };
+    let group = Group {
+        acts: vec![other],
+        ..Group::default()
+    };
+    opened.store.commit(&group).unwrap();
+    opened.store.commit(&with_acts(3..=3)).unwrap();
+    let page = async |before, limit| {
+        let id = Id::new("desk-to-stage").unwrap();
+        let found = opened.history.acts(id, before, limit).await.unwrap();
+        let times: Vec<i64> = found.iter().map(|(_, act)| act.at_ns).collect();
+        (times, found.last().map(|(place, _)| *place))
+    };
+    let (first, last) = page(None, 2).await;
+    assert_eq!(first, [3, 2]);
+    assert_eq!(page(last, 2).await.0, [1]);
+}
+
+/// A store of the first daemons has no acts yet.
+#[test]
+fn tables_of_version_1_are_brought_to_version_2() {
+    let folder = folder();
+    let mut opened = begun(&folder);
+    opened.store.commit(&with_settings(1..=3)).unwrap();
+    let back = "DROP TABLE acts; PRAGMA user_version = 1;";
+    opened.store.db.execute_batch(back).unwrap();
+    drop(opened);
+    let mut opened = open(&folder);
+    assert_eq!(journal(&opened).len(), 1);
+    opened.store.commit(&with_acts(1..=1)).unwrap();
 }

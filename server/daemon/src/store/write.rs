@@ -1,8 +1,8 @@
 //! Writing: groups of events, snapshots, and the trimming of what a snapshot made needless.
 
 use prost::Message;
-use ratewright_control::{ENGINE_VERSION, Engine, Event, HouseNs};
-use rusqlite::{Transaction, params};
+use ratewright_control::{ENGINE_VERSION, Engine, Event, HouseNs, Setting};
+use rusqlite::{OptionalExtension as _, Transaction, params};
 
 use super::{Group, Store, StoreError};
 use crate::convert;
@@ -10,6 +10,9 @@ use crate::convert;
 /// Journal rows that one transaction trims at most: a large delete would hold up the group that
 /// waits behind it.
 const TRIM_STEP: i64 = 2_000;
+/// Each so many settings of a crossing its oldest ones are trimmed: to find where they begin takes
+/// milliseconds.
+const LOOK_EVERY: u64 = 100;
 
 impl Store {
     /// Writes a group in one transaction. When this returns, it is on the disk.
@@ -21,6 +24,11 @@ impl Store {
         let transaction = self.db.transaction()?;
         write_group(&transaction, self.newest, group)?;
         trim(&transaction, self.trimmed, trim_to)?;
+        for (setting, _) in &group.settings {
+            if setting.number.is_multiple_of(LOOK_EVERY) {
+                trim_settings(&transaction, setting, self.keep_settings)?;
+            }
+        }
         transaction.commit()?;
         self.newest += group.events.len() as i64;
         self.trimmed = trim_to;
@@ -113,6 +121,11 @@ fn write_group(to: &Transaction<'_>, newest: i64, group: &Group) -> Result<(), S
         ];
         settings.execute(row)?;
     }
+    let mut acts = to.prepare_cached("INSERT INTO acts (crossing, act) VALUES (?, ?)")?;
+    for act in &group.acts {
+        let wire = convert::hand::act_to_wire(act).encode_to_vec();
+        acts.execute(params![act.crossing.to_string(), wire])?;
+    }
     Ok(())
 }
 
@@ -147,5 +160,30 @@ fn trim(to: &Transaction<'_>, trimmed: i64, trim_to: i64) -> Result<(), StoreErr
         to.prepare_cached("DELETE FROM journal WHERE seq <= ?")?
             .execute([trim_to])?;
     }
+    Ok(())
+}
+
+/// Drops settings of the crossing that are older than its `keep` newest, the oldest first.
+fn trim_settings(to: &Transaction<'_>, newest: &Setting, keep: u64) -> Result<(), StoreError> {
+    let crossing = newest.crossing.to_string();
+    let oldest_kept = to
+        .prepare_cached(
+            "SELECT epoch, number FROM settings WHERE crossing = ?
+             ORDER BY epoch DESC, number DESC LIMIT 1 OFFSET ?",
+        )?
+        .query_row(params![crossing, keep - 1], |row| {
+            Ok((row.get::<_, u64>(0)?, row.get::<_, u64>(1)?))
+        })
+        .optional()?;
+    let Some((epoch, number)) = oldest_kept else {
+        return Ok(());
+    };
+    to.prepare_cached(
+        "DELETE FROM settings WHERE crossing = ?1 AND (epoch, number) IN (
+             SELECT epoch, number FROM settings
+             WHERE crossing = ?1 AND (epoch, number) < (?2, ?3)
+             ORDER BY epoch, number LIMIT ?4)",
+    )?
+    .execute(params![crossing, epoch, number, TRIM_STEP])?;
     Ok(())
 }

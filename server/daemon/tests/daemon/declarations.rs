@@ -327,3 +327,94 @@ async fn an_update_of_a_crossing_keeps_what_the_mask_leaves_out() {
     assert_eq!((updated.headroom_samples, updated.max_l), (10.0, 1024));
     assert_eq!(updated.source_clock, "clocks/desk");
 }
+
+#[tokio::test]
+async fn what_is_known_of_a_clock_beforehand_is_kept_and_changed_by_the_mask() {
+    let mut facility = Facility::start().await;
+    let clocks = &mut facility.clients.clocks;
+    let sent = v1::Clock {
+        oscillator: v1::Oscillator::Oven.into(),
+        tail: v1::LatencyTail::CounterLate.into(),
+        quantum_ns: 20_833,
+        ..clock("desk")
+    };
+    let request = v1::CreateClockRequest {
+        clock: Some(sent.clone()),
+    };
+    let created = clocks.create_clock(request).await.unwrap().into_inner();
+    assert_eq!(created.oscillator(), v1::Oscillator::Oven);
+    assert_eq!(created.tail(), v1::LatencyTail::CounterLate);
+    assert_eq!((created.quantum_ns, created.fault.as_str()), (20_833, ""));
+
+    let changed = v1::Clock {
+        oscillator: v1::Oscillator::Atomic.into(),
+        quantum_ns: 5,
+        ..sent
+    };
+    let update = v1::UpdateClockRequest {
+        clock: Some(changed.clone()),
+        update_mask: paths(&["oscillator"]),
+    };
+    let updated = clocks.update_clock(update).await.unwrap().into_inner();
+    assert_eq!(updated.oscillator(), v1::Oscillator::Atomic);
+    assert_eq!(updated.quantum_ns, 20_833);
+
+    let wrong = v1::Clock {
+        oscillator: 99,
+        quantum_ns: -1,
+        ..changed
+    };
+    let update = v1::UpdateClockRequest {
+        clock: Some(wrong),
+        update_mask: None,
+    };
+    let refused = clocks.update_clock(update).await.unwrap_err();
+    let told = violations(&refused);
+    assert_eq!(told[0].0, "clock.oscillator");
+    assert!(told[0].1.contains("OSCILLATOR_OVEN (3)"), "{}", told[0].1);
+    assert_eq!(told[1].0, "clock.quantum_ns");
+}
+
+#[tokio::test]
+async fn a_crossing_runs_in_the_way_its_resampler_can() {
+    let mut facility = Facility::start().await;
+    let clients = &mut facility.clients;
+    clients.declare_clock("desk").await.unwrap();
+    clients.declare_clock("stage").await.unwrap();
+    for realisation in [
+        v1::Realisation::Single,
+        v1::Realisation::Cadence,
+        v1::Realisation::Stepping,
+        v1::Realisation::Lazy,
+    ] {
+        let id = format!("way-{}", realisation as i32);
+        let sent = v1::Crossing {
+            realisation: realisation.into(),
+            pitch_limit_ppm: 2.5,
+            ..crossing(&id, "desk", "stage")
+        };
+        let request = v1::CreateCrossingRequest {
+            crossing: Some(sent),
+        };
+        let created = clients.crossings.create_crossing(request).await;
+        let created = created.unwrap().into_inner();
+        assert_eq!(created.realisation(), realisation);
+        assert_eq!(created.pitch_limit_ppm, 2.5);
+        let status = created.status.unwrap();
+        assert_eq!(status.source_clock, "clocks/desk");
+        assert_eq!((status.pin, status.needed), (None, None));
+        assert!(status.setting.unwrap().realisation.is_some());
+    }
+    let sent = v1::Crossing {
+        pitch_limit_ppm: 0.0,
+        ..crossing("way-1", "desk", "stage")
+    };
+    let request = v1::UpdateCrossingRequest {
+        crossing: Some(sent),
+        update_mask: paths(&["pitch_limit_ppm"]),
+    };
+    let updated = clients.crossings.update_crossing(request).await;
+    let updated = updated.unwrap().into_inner();
+    assert_eq!(updated.pitch_limit_ppm, 20.0, "0 means the default");
+    assert_eq!(updated.realisation(), v1::Realisation::Single);
+}

@@ -8,6 +8,7 @@
 
 mod declarations;
 mod facility;
+mod hand;
 mod kill;
 mod life;
 mod plan;

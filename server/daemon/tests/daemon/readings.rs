@@ -167,3 +167,47 @@ async fn an_exchange_tells_house_time() {
     assert_eq!(answer.t1_ns, -77);
     assert!(before <= answer.t2_ns && answer.t2_ns <= answer.t3_ns && answer.t3_ns <= after);
 }
+
+/// A stream of 48 kHz that runs 20 ppm fast, seen by its timestamps of 32 bits, which wrap.
+#[tokio::test]
+async fn sender_reports_tell_a_drift() {
+    let mut facility = Facility::start().await;
+    facility.clients.declare_clock("desk").await.unwrap();
+    let mut report = facility.clients.report().await;
+    let first = u64::from(u32::MAX) - 1_000_000;
+    let sent = |second: u64| {
+        let ticks = (second as f64 * 48_000.0 * (1.0 + 20e-6)).round() as u64;
+        let sender_report = v1::SenderReport {
+            media_timestamp: (first + ticks) & u64::from(u32::MAX),
+            bits: 0,
+            reference_ns: second as i64 * 1_000_000_000,
+        };
+        v1::Reading {
+            measurement: Some(v1::reading::Measurement::SenderReport(sender_report)),
+            ..drift("desk", 0.0, 0)
+        }
+    };
+    let receipt = report.batch((1..=200).map(sent).collect()).await;
+    assert_eq!(receipt.accepted, 200, "{:?}", receipt.refusals.first());
+    let get = v1::GetClockRequest {
+        name: "clocks/desk".into(),
+    };
+    let clock = facility.clients.clocks.get_clock(get).await.unwrap();
+    let estimate = clock.into_inner().estimate.unwrap();
+    assert!((estimate.drift - 20e-6).abs() < 1e-6, "{estimate:?}");
+
+    let refused = report.batch(vec![sent(200)]).await;
+    let field = "readings[0].sender_report.reference_ns";
+    assert_eq!(refused.refusals[0].field, field);
+    let wide = v1::SenderReport {
+        media_timestamp: 1 << 32,
+        ..Default::default()
+    };
+    let wide = v1::Reading {
+        measurement: Some(v1::reading::Measurement::SenderReport(wide)),
+        ..sent(201)
+    };
+    let refused = report.batch(vec![wide]).await;
+    let field = "readings[0].sender_report.media_timestamp";
+    assert_eq!(refused.refusals[0].field, field);
+}

@@ -101,8 +101,11 @@ fn info(view: &CrossingView) -> String {
     )
 }
 
-/// 0 while the follower keeps up; absent if none has reported since the start.
+/// 0 while the follower keeps up; absent if none has reported since the start, or nobody is to follow.
 fn unapplied_seconds(board: &Board, view: &CrossingView, house_ns: HouseNs) -> Option<f64> {
+    if view.declaration.silent {
+        return None;
+    }
     let applied = board.applied(&view.declaration.id)?;
     let newest = view.status.setting.as_ref()?;
     if (newest.epoch, newest.number) <= applied {

@@ -75,7 +75,8 @@ impl Rig {
 
     fn over(engine: Engine, board: Board, house: HouseClock, made: &Group) -> Self {
         let folder = tempfile::tempdir().expect("a folder for the test");
-        let opened = Store::open(folder.path(), Opening::Continue, 0).expect("an empty folder");
+        let opened =
+            Store::open(folder.path(), Opening::Continue, 0, 1_000).expect("an empty folder");
         let mut store = opened.store;
         store.commit(made).expect("the store is sound");
         let readiness = Readiness::new();
