@@ -5,14 +5,14 @@ use axum::{
     response::{IntoResponse, Response},
 };
 use maud::{Markup, html};
-use ratewright_control::{HouseNs, Id, LinkView};
+use ratewright_control::{Engine, HouseNs, Id, LinkView};
 use ratewright_timing::State as Standing;
 
 use super::{
     Sources, changes, clocks, crossings,
     figures::{self, AskedSpan},
     frame::{self, Leaf, Place},
-    probes, words,
+    probes, steadiness, words,
 };
 use crate::board::{Board, ClockView};
 
@@ -27,8 +27,9 @@ pub(super) async fn show(
     };
     let now = sources.house.now();
     let id = view.declaration.id.clone();
-    let links = match sources.ask(move |engine| engine.links(&id, now)).await {
-        Ok(links) => links.unwrap_or_default(),
+    let look = move |engine: &Engine| (engine.links(&id, now), engine.stability(&id));
+    let (links, octaves) = match sources.ask(look).await {
+        Ok((links, octaves)) => (links.unwrap_or_default(), octaves),
         Err(answer) => return answer,
     };
     let body = html! {
@@ -36,6 +37,9 @@ pub(super) async fn show(
         (figures(&view, now))
         (drift(&sources.board, &view, &asked, now))
         (probe_section(&view, &links, now))
+        @if !view.declaration.exact {
+            (steadiness::section(view.declaration.statistics, &octaves))
+        }
         (users(&sources.board, &view.declaration.id))
         section #changed aria-labelledby="changed-head" {
             h2 #changed-head { "Changed in the last hour" }

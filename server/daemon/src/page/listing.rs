@@ -36,13 +36,13 @@ pub(super) struct Asked {
 
 pub(super) fn sorted_crossings(board: &Board) -> Vec<Arc<CrossingView>> {
     let mut views = board.crossings(None, usize::MAX);
-    views.sort_unstable_by(|a, b| crossings::urgency(a).cmp(&crossings::urgency(b)));
+    views.sort_by_cached_key(|view| crossings::urgency(view));
     views
 }
 
 pub(super) fn sorted_clocks(board: &Board) -> Vec<Arc<ClockView>> {
     let mut views = board.clocks(None, usize::MAX);
-    views.sort_unstable_by(|a, b| clocks::urgency(a).cmp(&clocks::urgency(b)));
+    views.sort_by_cached_key(|view| clocks::urgency(view));
     views
 }
 
@@ -128,7 +128,7 @@ struct Found<V> {
 
 impl Asked {
     /// The page that is asked for; `facts` gives a view's state and what it is found by.
-    fn among<'v, V, const N: usize>(
+    fn among<V, const N: usize>(
         &self,
         views: Vec<Arc<V>>,
         states: &[&str],

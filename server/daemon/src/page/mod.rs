@@ -31,6 +31,7 @@ mod listing;
 mod plan;
 mod probes;
 mod settings;
+mod steadiness;
 mod words;
 
 use std::sync::Arc;

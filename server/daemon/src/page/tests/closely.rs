@@ -44,6 +44,32 @@ async fn a_clock_tells_its_drift_its_probes_and_what_rests_on_it() {
 }
 
 #[tokio::test]
+async fn statistics_are_shown_of_the_clocks_that_are_declared_so() {
+    let plain = Rig::sample(60).page("/clocks/hall-desk").await;
+    place(
+        from(&plain, "steadiness"),
+        "No stability statistics are kept",
+    );
+    let mut plan = sample::plan();
+    let desk = plan
+        .devices
+        .iter_mut()
+        .find(|device| device.clock.id.as_str() == "hall-desk");
+    desk.expect("it is in the plan").clock.statistics = true;
+    let page = Rig::playing(plan, 600).page("/clocks/hall-desk").await;
+    let section = from(&page, "steadiness");
+    for title in [
+        "Time deviation",
+        "Maximum time interval error",
+        "Allan deviation",
+    ] {
+        place(section, &format!("<title>{title}</title>"));
+    }
+    place(section, "ITU-T G.8262");
+    place(section, "NIST SP 1065");
+}
+
+#[tokio::test]
 async fn a_crossing_tells_its_target_its_phase_error_and_why_its_ratio() {
     let rig = Rig::sample(900);
     let view = rig

@@ -10,7 +10,7 @@ use axum::{
     http::{HeaderMap, Request},
 };
 use ratewright_control::{Engine, Event, HouseNs, Id, explain};
-use ratewright_rehearsal::{Facility, Occasion, declare, rehearse, sample};
+use ratewright_rehearsal::{Facility, Occasion, Plan, declare, rehearse, sample};
 use tempfile::TempDir;
 use tower::ServiceExt;
 
@@ -33,9 +33,13 @@ struct Rig {
 impl Rig {
     /// As it stands `age_s` after the sample facility began; house time runs on from there.
     fn sample(age_s: i64) -> Self {
+        Self::playing(sample::plan(), age_s)
+    }
+
+    /// The same with another plan.
+    fn playing(plan: Plan, age_s: i64) -> Self {
         let house = HouseClock::start(0, 0, 1.0);
         let now = house.now();
-        let plan = sample::plan();
         let mut facility =
             Facility::new(plan, sample::SEED, now - age_s * S).expect("a sound plan");
         let mut engine = Engine::new(1);
