@@ -8,9 +8,9 @@
 
 use crate::plan::{Query, plan};
 use crate::{
-    Bounds, Cadence, Certificate, Exact, Fraction, Multiple, MultipleBest, MultipleError, Node,
-    Region, RegionError, Rung, Stepping, best_for_m, best_in, best_multiple, best_power_of_two,
-    ladder, ladder_in, residual,
+    Bounds, Cadence, Certificate, Exact, Fraction, Lazy, Multiple, MultipleBest, MultipleError,
+    Node, Region, RegionError, Rung, Stepping, best_for_m, best_in, best_multiple,
+    best_power_of_two, ladder, ladder_in, residual, target_from_f64,
 };
 
 /// The ratios to choose from.
@@ -121,6 +121,44 @@ impl Allowed {
 }
 
 impl Answer {
+    /// The nearest allowed ratio that makes at most what is wanted. `None` if there is none, or if it is not the
+    /// best one and the pair has too long a period to make a cadence.
+    ///
+    /// # Examples
+    /// ```
+    /// use ratewright_ratio::{Bounds, Exact, Fraction, allowed::Allowed};
+    /// let answer = Allowed::Bounded(Bounds::new(64, 64)?).answer(&Exact::new(10_001, 10_000))?;
+    /// assert_eq!((answer.below(), answer.above()), (Some(Fraction::new(1, 1)), Some(Fraction::new(64, 63))));
+    /// let exact = Allowed::Bounded(Bounds::new(64, 64)?).answer(&Exact::new(2, 3))?;
+    /// assert_eq!((exact.below(), exact.above()), (Some(exact.best), Some(exact.best)));
+    /// # Ok::<(), Box<dyn std::error::Error>>(())
+    /// ```
+    pub fn below(&self) -> Option<Fraction> {
+        let low = self.cadence.as_ref().map(Cadence::low);
+        if self.residual <= 0.0 {
+            Some(self.best)
+        } else {
+            low
+        }
+    }
+
+    /// The nearest allowed ratio that makes at least what is wanted; `None` as in [`Answer::below`].
+    pub fn above(&self) -> Option<Fraction> {
+        let high = self.cadence.as_ref().map(Cadence::high);
+        if self.residual >= 0.0 {
+            Some(self.best)
+        } else {
+            high
+        }
+    }
+
+    /// The cadence with as few changes as a swing of ±`swing_samples` output samples allows. `None` if there is
+    /// no cadence, or if no order of its blocks stays within the swing.
+    pub fn lazy(&self, swing_samples: f64) -> Option<Lazy> {
+        let swing = target_from_f64(swing_samples).ok()?;
+        Lazy::new(self.cadence?, &swing).ok()
+    }
+
     /// Stepping beside a cadence of two filters, with as many phases as the two have together, if
     /// that is off by less. None where M is the modulus of an accumulator: the cadence is that of
     /// its two steps already.

@@ -17,6 +17,7 @@
 //! **Corner cases.** A wanted fraction within the bounds needs no cadence. One outside 1/`max_m` to `max_l`
 //! cannot have one. A headroom below [`Cadence::error_bound`] cannot be kept by any cadence of this pair.
 
+use num_bigint::BigUint;
 use num_integer::Integer;
 use num_rational::Ratio;
 use serde::{Deserialize, Serialize};
@@ -240,12 +241,13 @@ impl Cadence {
         )
     }
 
-    /// ⌊headroom⌋ in units of error, for a headroom in output samples.
-    pub(crate) fn units_within(&self, headroom: &Exact) -> Option<i64> {
-        let scaled = headroom.numer().checked_mul(*self.pair.wanted.denom())?;
-        let units = scaled / headroom.denom().checked_mul(self.unit)?;
+    /// ⌊headroom⌋ in units of error, for a headroom in output samples; at most what an error may be.
+    pub(crate) fn units_within(&self, headroom: &Exact) -> i64 {
+        let product = |a: u128, b: u128| BigUint::from(a) * b;
+        let whole = product(*headroom.numer(), *self.pair.wanted.denom());
+        let units = whole / product(*headroom.denom(), self.unit);
         let largest = (MAX_RAW / self.unit).min(MAX_STEP as u128);
-        Some(units.min(largest) as i64)
+        u128::try_from(units).map_or(largest, |units| units.min(largest)) as i64
     }
 
     /// The two steps of the error.

@@ -72,7 +72,7 @@ impl Lazy {
     /// # Errors
     /// [`LazyError::HeadroomTooSmall`].
     pub fn new(cadence: Cadence, headroom: &Exact) -> Result<Self, LazyError> {
-        let limit = cadence.units_within(headroom).unwrap_or(MAX_STEP);
+        let limit = cadence.units_within(headroom);
         if limit.unsigned_abs() < cadence.balance().bound() {
             let least = cadence.error_bound();
             return Err(LazyError::HeadroomTooSmall {

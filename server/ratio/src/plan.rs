@@ -30,7 +30,7 @@ pub struct Plan {
     /// The trade-off of error against size, from the simplest ratio to the nearest.
     pub ladder: Vec<Rung>,
     /// Two ratios whose average is exactly the target; `None` if one ratio is exact, or if the target has
-    /// no allowed ratio on one side, or a period beyond 2^62 blocks.
+    /// no allowed ratio on one side, or a period beyond 2^60 blocks.
     pub cadence: Option<Cadence>,
 }
 

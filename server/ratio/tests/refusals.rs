@@ -140,6 +140,14 @@ fn intervals_and_sequences() {
         Lazy::new(cadence, &Exact::new(1, 1_000)),
         &["headroom is 1/1000", "at least"],
     );
+    // Products of headroom and denominator beyond 128 bits: 2^-67 samples is too little all the same.
+    let fine = Exact::new(0x19e_3779_b97f_4a7c_15f3_9cc1, 1 << 88);
+    let wide = Bounds::new(1 << 31, 1 << 31).expect("in range");
+    let cadence = Cadence::new(&fine, &wide).expect("between");
+    says(
+        Lazy::new(cadence, &Exact::new((1 << 53) - 1, 1 << 120)),
+        &["headroom is 9007199254740991/", "at least"],
+    );
     says(Stepping::new(&two, 1), &["phases is 1", "wanted ratio 2"]);
     let rate = Ratio::from_integer(48_000);
     says(

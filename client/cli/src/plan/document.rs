@@ -2,7 +2,8 @@
 
 use ratewright_ratio::stages::Chain;
 use ratewright_ratio::{
-    Bounds, Cadence, Certificate, Fraction, FrameCadence, MAX_BOUND, Multiple, Rung, Stepping,
+    Bounds, Cadence, Certificate, Fraction, FrameCadence, Lazy, MAX_BOUND, Multiple, Rung,
+    Stepping, residual,
 };
 use serde_json::{Value, json};
 
@@ -23,9 +24,12 @@ pub(crate) fn document(question: &Question, findings: &Findings) -> Value {
         "headroom_samples": question.headroom_samples,
         "sink_hz": question.sink_rate_hz.map(|rate| Parts::from(&rate).to_string()),
         "best": best(question, answer),
+        "below": answer.below().map(|ratio| single(question, answer, &ratio)),
+        "above": answer.above().map(|ratio| single(question, answer, &ratio)),
         "interval": findings.width.as_ref().map(interval),
         "ladder": answer.ladder.iter().map(|rung| step(question, rung)).collect::<Vec<_>>(),
-        "cadence": answer.cadence.as_ref().map(cadence),
+        "cadence": answer.cadence.as_ref().map(|pair| cadence(question, pair)),
+        "lazy": findings.lazy.as_ref().map(|lazy| lazy_cadence(question, lazy)),
         "stepping": findings.stepping.as_ref().map(stepping),
         "stages": stages.map(|(filter, chains)| stage_plan(filter, chains)),
         "frames": findings.frames.as_ref().map(frame_plan),
@@ -66,13 +70,20 @@ fn ratio(ratio: &Fraction) -> Value {
 }
 
 fn best(question: &Question, answer: &Answer) -> Value {
+    let mut document = single(question, answer, &answer.best);
+    document["certificate"] = proof(&answer.proof);
+    document
+}
+
+/// One ratio and what it does.
+fn single(question: &Question, answer: &Answer, ratio: &Fraction) -> Value {
+    let residual = residual(ratio, &answer.target);
     json!({
-        "l": answer.best.numer(),
-        "m": answer.best.denom(),
-        "exact": answer.residual == 0.0,
-        "residual_ppb": answer.residual * 1e9,
-        "seconds_to_slip": question.seconds_to_slip(answer.residual),
-        "certificate": proof(&answer.proof),
+        "l": ratio.numer(),
+        "m": ratio.denom(),
+        "exact": residual == 0.0,
+        "residual_ppb": residual * 1e9,
+        "seconds_to_slip": question.seconds_to_slip(residual),
     })
 }
 
@@ -143,13 +154,22 @@ fn step(question: &Question, rung: &Rung) -> Value {
     document
 }
 
-fn cadence(cadence: &Cadence) -> Value {
+fn cadence(question: &Question, cadence: &Cadence) -> Value {
     let block = |ratio: Fraction, count: u64| json!({ "l": ratio.numer(), "m": ratio.denom(), "count": count });
     let bound = cadence.error_bound();
     json!({
         "low": block(cadence.low(), cadence.low_blocks()),
         "high": block(cadence.high(), cadence.high_blocks()),
         "error_bound_samples": *bound.numer() as f64 / *bound.denom() as f64,
+        "changes_per_second": question.source_rate_hz().map(|hz| cadence.switches_per_second(hz)),
+    })
+}
+
+/// The two ratios are those of the cadence; the swing is what the error may be, either way.
+fn lazy_cadence(question: &Question, lazy: &Lazy) -> Value {
+    json!({
+        "swing_samples": question.headroom_samples,
+        "changes_per_second": question.source_rate_hz().map(|hz| lazy.switches_per_second(hz)),
     })
 }
 

@@ -2,7 +2,7 @@
 
 use ratewright_ratio::plan::seconds_to_slip;
 use ratewright_ratio::stages::Chain;
-use ratewright_ratio::{Exact, Fraction, Stepping, SteppingError, residual, simplest};
+use ratewright_ratio::{Exact, Fraction, Lazy, Stepping, SteppingError, residual, simplest};
 
 use super::frames::Frames;
 use super::limits::not_allowed;
@@ -16,6 +16,8 @@ pub(crate) struct Findings {
     pub(crate) answer: Answer,
     /// What the intervals of the drifts mean; `None` if there are none.
     pub(crate) width: Option<Width>,
+    /// The cadence with as few changes as the headroom allows.
+    pub(crate) lazy: Option<Lazy>,
     pub(crate) stepping: Option<Stepping>,
     /// The best ratio in stages, if a filter was asked for.
     pub(crate) chains: Option<Vec<Chain>>,
@@ -43,6 +45,7 @@ impl Findings {
             .transpose()?;
         Ok(Self {
             width: width(question, &answer.best),
+            lazy: answer.lazy(question.headroom_samples),
             stepping: stepping(question, &answer)?,
             chains,
             frames: question.frames()?,
@@ -86,5 +89,12 @@ impl Question {
     /// How long the headroom lasts at a residual.
     pub(crate) fn seconds_to_slip(&self, residual: f64) -> Option<f64> {
         seconds_to_slip(residual, self.headroom_samples, self.sink_rate_hz)
+    }
+
+    /// The source's true rate, Hz, if it is known: the sink's over the target.
+    pub(crate) fn source_rate_hz(&self) -> Option<f64> {
+        let sink = self.sink_rate_hz?;
+        let target = *self.target.numer() as f64 / *self.target.denom() as f64;
+        Some(*sink.numer() as f64 / *sink.denom() as f64 / target)
     }
 }

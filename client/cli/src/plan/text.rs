@@ -4,7 +4,8 @@ use std::fmt::Write as _;
 
 use ratewright_ratio::stages::{Chain, Cost, Stage};
 use ratewright_ratio::{
-    Bounds, Certificate, Exact, FrameCadence, MAX_BOUND, Multiple, Node, Rung, Stepping,
+    Bounds, Cadence, Certificate, Exact, FrameCadence, Lazy, MAX_BOUND, Multiple, Node, Rung,
+    Stepping, residual,
 };
 
 use super::Parts;
@@ -28,10 +29,11 @@ pub(crate) fn text(question: &Question, findings: &Findings) -> String {
     head(&mut out, question, answer);
     best(&mut out, question, answer);
     line(&mut out, "proof", &proof(&answer.proof, &question.allowed));
+    sides(&mut out, answer);
     if let Some(width) = &findings.width {
         interval(&mut out, width);
     }
-    cadence(&mut out, findings);
+    cadence(&mut out, question, findings);
     ladder(&mut out, question, answer);
     if let Some((filter, chains)) = question.filter.as_ref().zip(findings.chains.as_ref()) {
         stages(&mut out, filter, chains);
@@ -119,15 +121,35 @@ fn best(out: &mut String, question: &Question, answer: &Answer) {
         "best",
         &format!("{ratio}, {}: {makes}", show::offset(residual)),
     );
-    let headroom = match question.headroom_samples {
-        1.0 => "1 sink sample".to_owned(),
-        samples => format!("{samples} sink samples"),
-    };
+    let headroom = headroom(question);
     let lasts = match question.seconds_to_slip(residual) {
         Some(seconds) => format!("a headroom of {headroom} lasts {}", show::duration(seconds)),
         None => "give --from and --to to learn how long the headroom lasts".to_owned(),
     };
     line(out, "", &lasts);
+}
+
+fn headroom(question: &Question) -> String {
+    match question.headroom_samples {
+        1.0 => "1 sink sample".to_owned(),
+        samples => format!("{samples} sink samples"),
+    }
+}
+
+/// The nearest ratio on either side, for a stream that must never make too much, or too little.
+fn sides(out: &mut String, answer: &Answer) {
+    let (Some(below), Some(above)) = (answer.below(), answer.above()) else {
+        return;
+    };
+    if answer.residual == 0.0 {
+        return;
+    }
+    let [most, least] = [below, above].map(|ratio| {
+        let off = show::offset(residual(&ratio, &answer.target));
+        format!("{}, {off}", Parts::from(&ratio))
+    });
+    line(out, "sides", &format!("at most the target: {most}"));
+    line(out, "", &format!("at least the target: {least}"));
 }
 
 fn proof(proof: &Proof, allowed: &Allowed) -> String {
@@ -185,7 +207,7 @@ fn interval(out: &mut String, width: &Width) {
     }
 }
 
-fn cadence(out: &mut String, findings: &Findings) {
+fn cadence(out: &mut String, question: &Question, findings: &Findings) {
     let Some(cadence) = &findings.answer.cadence else {
         if let Some(stepping) = &findings.stepping {
             out.push('\n');
@@ -209,9 +231,41 @@ fn cadence(out: &mut String, findings: &Findings) {
         "",
         &format!("and are never off by more than {samples} samples at a block's end"),
     );
+    if let Some(source_hz) = question.source_rate_hz() {
+        changes(out, question, cadence, findings.lazy.as_ref(), source_hz);
+    }
     if let Some(stepping) = &findings.stepping {
         self::stepping(out, stepping);
     }
+}
+
+/// How often the ratio changes: in the order with the least error, and in the one with the fewest changes.
+fn changes(
+    out: &mut String,
+    question: &Question,
+    cadence: &Cadence,
+    lazy: Option<&Lazy>,
+    source_hz: f64,
+) {
+    let every = |per_second: f64| show::duration(1.0 / per_second);
+    let balanced = every(cadence.switches_per_second(source_hz));
+    line(
+        out,
+        "",
+        &format!("in the order that keeps so close, which changes every {balanced}"),
+    );
+    let held = match lazy {
+        Some(lazy) => format!(
+            "off by up to {}, the same two change every {}",
+            headroom(question),
+            every(lazy.switches_per_second(source_hz))
+        ),
+        None => format!(
+            "none: a headroom of {} is less than that",
+            headroom(question)
+        ),
+    };
+    line(out, "lazy", &held);
 }
 
 fn stepping(out: &mut String, stepping: &Stepping) {

@@ -33,6 +33,15 @@ pub(crate) struct Question {
     frames: Option<(FrameCadence, FrameCadence)>,
 }
 
+impl Question {
+    /// The source's rate, Hz, if the sink's is known: that over the target.
+    fn source_rate_hz(&self) -> Option<f64> {
+        let sink = self.sink_rate_hz?;
+        let target = *self.target.numer() as f64 / *self.target.denom() as f64;
+        Some(*sink.numer() as f64 / *sink.denom() as f64 / target)
+    }
+}
+
 /// What the filter has to do.
 #[derive(Debug)]
 struct Filter {

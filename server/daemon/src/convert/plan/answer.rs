@@ -4,7 +4,7 @@ use ratewright_proto::v1;
 use ratewright_ratio::{
     Fraction, FrameCadence, MultipleBest, Rung, Stepping, SteppingError, filter_coefficients,
     plan::seconds_to_slip,
-    simplest,
+    residual, simplest,
     stages::{Chain, Stage, StageError, front},
 };
 
@@ -27,6 +27,9 @@ pub(crate) fn answer(question: &Question) -> Result<v1::PlanRatioResponse, Refus
     let stepping = stepping(question, &found)?;
     let simplest = question.interval.as_ref().and_then(simplest);
     let frames = question.frames.as_ref();
+    let lazy = found.lazy(question.headroom_samples);
+    let source_hz = question.source_rate_hz();
+    let on_side = |ratio: Fraction| candidate(question, &ratio, residual(&ratio, &found.target));
     Ok(v1::PlanRatioResponse {
         target: Some(rate::fraction_to_wire(&found.target)),
         best: Some(v1::Candidate {
@@ -44,6 +47,18 @@ pub(crate) fn answer(question: &Question) -> Result<v1::PlanRatioResponse, Refus
         chains: chains.iter().map(chain_to_wire).collect(),
         source_frames: frames.map(|(source, _)| frames_to_wire(source)),
         sink_frames: frames.map(|(_, sink)| frames_to_wire(sink)),
+        below: found.below().map(on_side),
+        above: found.above().map(on_side),
+        lazy: lazy.map(|lazy| v1::Lazy {
+            cadence: Some(setting::cadence_to_wire(lazy.cadence())),
+            swing_samples: question.headroom_samples,
+        }),
+        cadence_changes_per_second: source_hz
+            .zip(found.cadence)
+            .map(|(hz, cadence)| cadence.switches_per_second(hz)),
+        lazy_changes_per_second: source_hz
+            .zip(lazy)
+            .map(|(hz, lazy)| lazy.switches_per_second(hz)),
     })
 }
 

@@ -309,3 +309,46 @@ fn wishes_are_answered_when_they_are_made() {
     );
     assert_eq!(source.samples[20..26], [1472, 1471, 1471, 1471, 1472, 1471]);
 }
+
+#[test]
+fn both_sides_and_the_changes_of_a_pair_are_told() {
+    let sent = v1::PlanRatioRequest {
+        source_rate: hertz(48_000),
+        sink_rate: hertz(48_000),
+        sink_drift: 5e-6,
+        max_l: 512,
+        max_m: 512,
+        headroom_samples: 4.0,
+        ..Default::default()
+    };
+    let found = answer(&question(sent).unwrap()).unwrap();
+    let side = |side: &Option<v1::Candidate>| side.as_ref().unwrap().ratio.unwrap();
+    assert_eq!(side(&found.below), v1::Ratio { l: 1, m: 1 });
+    assert_eq!(side(&found.above), v1::Ratio { l: 512, m: 511 });
+    // 1/1 takes 2 · 4 samples across the headroom at 5 ppm of 48 kHz; 512/511 brings back one
+    // sample a block, in a moment.
+    let lazy = found.lazy.unwrap();
+    assert_eq!((lazy.swing_samples, lazy.cadence), (4.0, found.cadence));
+    let cycle_s = 8.0 / (48_000.0 * 5e-6);
+    let per_second = found.lazy_changes_per_second.unwrap();
+    assert!(
+        (per_second * cycle_s / 2.0 - 1.0).abs() < 0.01,
+        "{per_second}"
+    );
+    assert!(found.cadence_changes_per_second.unwrap() > 4.0 * per_second);
+
+    // Half a sample is more than a headroom of 0.1 takes, and without rates nobody knows the time.
+    let sent = v1::PlanRatioRequest {
+        target: Some(v1::Fraction {
+            numerator: "200001".to_owned(),
+            denominator: "200000".to_owned(),
+        }),
+        max_l: 512,
+        max_m: 512,
+        headroom_samples: 0.1,
+        ..Default::default()
+    };
+    let found = answer(&question(sent).unwrap()).unwrap();
+    assert!(found.cadence.is_some() && found.lazy.is_none());
+    assert_eq!(found.cadence_changes_per_second, None);
+}
