@@ -14,6 +14,7 @@ use v1::crossing_service_client::CrossingServiceClient;
 use v1::ratio_service_client::RatioServiceClient;
 use v1::reading_service_client::ReadingServiceClient;
 
+use crate::hosts::Hosts;
 use crate::wire::{WireError, clock_name, crossing_name, setting_name};
 use crate::{
     CallError, Clock, ClockDeclaration, Crossing, CrossingDeclaration, Exchange, Follow, Id,
@@ -26,8 +27,7 @@ const PAGE: i32 = 500;
 /// A connection to a daemon. Clones share it.
 #[derive(Clone, Debug)]
 pub struct Client {
-    address: Arc<str>,
-    channel: Channel,
+    hosts: Arc<Hosts>,
 }
 
 impl Client {
@@ -39,16 +39,36 @@ impl Client {
     /// # Errors
     /// [`CallError::Unreachable`] if nobody answers there within 5 s.
     pub async fn connect(address: &str) -> Result<Self, CallError> {
-        let channel = transport::connect(address).await?;
-        Ok(Self {
-            address: address.into(),
-            channel,
-        })
+        Self::connect_any(&[address]).await
     }
 
-    /// The address of the daemon, as it was given.
+    /// Connects to the first that answers of several daemons that serve the same facility,
+    /// beginning at a random one. Whenever contact is lost, the next address is tried.
+    ///
+    /// # Errors
+    /// [`CallError::Unreachable`] if none answers; it speaks of the last that was tried.
+    pub async fn connect_any(addresses: &[&str]) -> Result<Self, CallError> {
+        let hosts = Arc::new(Hosts::connect(addresses).await?);
+        Ok(Self { hosts })
+    }
+
+    /// As [`Client::connect_any`], without waiting: for a player that has to start while no daemon
+    /// answers. Streams connect when they can.
+    ///
+    /// # Errors
+    /// [`CallError::Unreachable`] only for what is no address.
+    pub fn connect_later(addresses: &[&str]) -> Result<Self, CallError> {
+        let hosts = Arc::new(Hosts::later(addresses)?);
+        Ok(Self { hosts })
+    }
+
+    /// The address in use, as it was given.
     pub fn address(&self) -> &str {
-        &self.address
+        self.hosts.address(self.hosts.place())
+    }
+
+    pub(crate) fn hosts(&self) -> &Hosts {
+        &self.hosts
     }
 
     /// A clock and its estimate.
@@ -204,13 +224,15 @@ impl Client {
         &self,
         mut clock_ns: impl FnMut() -> i64,
     ) -> Result<Exchange, CallError> {
+        let place = self.hosts.place();
         let mut stub = self.reading_stub();
         let t1_ns = clock_ns();
         let answer = stub
             .exchange_time(timed(v1::ExchangeTimeRequest { t1_ns }))
             .await;
         let t4_ns = clock_ns();
-        let answer = answer.map_err(|status| self.error(&status))?.into_inner();
+        let answer = answer.map_err(|status| self.hosts.error(place, &status))?;
+        let answer = answer.into_inner();
         Ok(Exchange {
             t1_ns,
             t2_ns: answer.t2_ns,
@@ -255,33 +277,33 @@ impl Client {
     }
 
     fn clock_stub(&self) -> ClockServiceClient<Channel> {
-        ClockServiceClient::new(self.channel.clone())
+        ClockServiceClient::new(self.channel())
     }
 
     fn crossing_stub(&self) -> CrossingServiceClient<Channel> {
-        CrossingServiceClient::new(self.channel.clone())
+        CrossingServiceClient::new(self.channel())
     }
 
     pub(crate) fn ratio_stub(&self) -> RatioServiceClient<Channel> {
-        RatioServiceClient::new(self.channel.clone())
+        RatioServiceClient::new(self.channel())
     }
 
     pub(crate) fn reading_stub(&self) -> ReadingServiceClient<Channel> {
-        ReadingServiceClient::new(self.channel.clone())
+        ReadingServiceClient::new(self.channel())
     }
 
-    /// What a failed call means.
-    pub(crate) fn error(&self, status: &Status) -> CallError {
-        transport::call_error(&self.address, status)
+    fn channel(&self) -> Channel {
+        self.hosts.channel(self.hosts.place())
     }
 
     async fn answer<T>(
         &self,
         call: impl Future<Output = Result<Response<T>, Status>>,
     ) -> Result<T, CallError> {
+        let place = self.hosts.place();
         call.await
             .map(Response::into_inner)
-            .map_err(|status| self.error(&status))
+            .map_err(|status| self.hosts.error(place, &status))
     }
 }
 

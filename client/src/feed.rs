@@ -1,17 +1,21 @@
 //! Settings as they arrive: connecting, checking, ordering. What `Watch` and `Follow` share.
 
-use std::collections::BTreeMap;
+use std::collections::{BTreeMap, VecDeque};
 use std::fmt;
+use std::path::Path;
 use std::time::Duration;
 
 use ratewright_proto::v1;
 use ratewright_ratio::Bounds;
+use tokio::task::spawn_blocking;
 use tokio::time::{Instant, sleep_until};
 use tonic::{Status, Streaming};
 use v1::follow_settings_response::Message;
 
 use crate::backoff::Backoff;
+use crate::cache::Cache;
 use crate::follow::Outbound;
+use crate::hosts::Place;
 use crate::newest::Newest;
 use crate::wire::crossing_name;
 use crate::{CallError, Client, Id, RefusalKind, Setting, VerifyError};
@@ -114,11 +118,16 @@ pub(crate) struct Feed {
     /// Present if this is a follower.
     outbound: Option<Outbound>,
     inbound: Option<Inbound>,
+    /// Where the call was made.
+    place: Place,
     lost: bool,
     retry_at: Option<Instant>,
     backoff: Backoff,
     /// A setting on its way through the checks; kept here so that a cancelled `next` loses nothing.
-    held: Option<Setting>,
+    held: Option<(Setting, v1::Setting)>,
+    cache: Option<Cache>,
+    /// Settings of the cache that were not handed on yet.
+    cached: VecDeque<Setting>,
     bounds: BTreeMap<Id, Bounds>,
     newest: Newest,
     heard: Option<Heard>,
@@ -127,6 +136,7 @@ pub(crate) struct Feed {
 impl Feed {
     pub(crate) fn new(client: Client, crossings: &[Id], outbound: Option<Outbound>) -> Self {
         Self {
+            place: client.hosts().place(),
             client,
             crossings: crossings.to_vec(),
             outbound,
@@ -135,10 +145,26 @@ impl Feed {
             retry_at: None,
             backoff: Backoff::default(),
             held: None,
+            cache: None,
+            cached: VecDeque::new(),
             bounds: BTreeMap::new(),
             newest: Newest::default(),
             heard: None,
         }
+    }
+
+    /// Begins with the settings that a folder holds of the selected crossings, and keeps those that
+    /// come there.
+    pub(crate) fn keep_in(&mut self, folder: &Path) {
+        let cache = Cache::new(folder);
+        for crossing in &self.crossings {
+            if let Some((setting, bounds)) = cache.read(crossing) {
+                self.bounds.insert(crossing.clone(), bounds);
+                self.newest.handed_on(crossing, setting.number);
+                self.cached.push_back(setting);
+            }
+        }
+        self.cache = Some(cache);
     }
 
     pub(crate) fn outbound(&mut self) -> Option<&mut Outbound> {
@@ -168,9 +194,12 @@ impl Feed {
     /// The next update. Cancel safe. An error is final for the selection: trying the same again
     /// would be refused again.
     pub(crate) async fn next(&mut self) -> Result<Update, CallError> {
+        if let Some(setting) = self.cached.pop_front() {
+            return Ok(Update::Setting(Box::new(setting)));
+        }
         loop {
-            if let Some(setting) = self.held.clone() {
-                let checked = self.check(&setting).await;
+            if let Some((setting, wire)) = self.held.clone() {
+                let checked = self.check(&setting, &wire).await;
                 self.held = None;
                 match checked {
                     Ok(update) => return Ok(update),
@@ -191,11 +220,10 @@ impl Feed {
                     }
                 }
                 Ok(None) => {
-                    let reason = "the daemon ended the stream".to_owned();
-                    let address = self.client.address().to_owned();
-                    return self.lose(CallError::Unreachable { address, reason });
+                    let ended = Status::unavailable("the daemon ended the stream");
+                    return self.lose(self.client.hosts().error(self.place, &ended));
                 }
-                Err(status) => return self.lose(self.client.error(&status)),
+                Err(status) => return self.lose(self.client.hosts().error(self.place, &status)),
             }
         }
     }
@@ -221,10 +249,12 @@ impl Feed {
             sleep_until(retry_at).await;
         }
         let crossings = self.crossings.iter().map(crossing_name).collect();
+        let newest_known = self.newest.names();
         let select = v1::WatchSettingsRequest {
             crossings,
-            newest_known: Vec::new(),
+            newest_known,
         };
+        self.place = self.client.hosts().place();
         let mut stub = self.client.ratio_stub();
         let opened = match &mut self.outbound {
             None => {
@@ -236,7 +266,8 @@ impl Feed {
                 response.map(|response| Inbound::Follow(response.into_inner()))
             }
         };
-        self.inbound = Some(opened.map_err(|status| self.client.error(&status))?);
+        let place = self.place;
+        self.inbound = Some(opened.map_err(|status| self.client.hosts().error(place, &status))?);
         Ok(())
     }
 
@@ -259,9 +290,9 @@ impl Feed {
             }),
             Message::Setting(wire) => {
                 let name = wire.name.clone();
-                match Setting::try_from(wire) {
+                match Setting::try_from(wire.clone()) {
                     Ok(setting) if self.newest.is_newer(&setting.crossing, setting.number) => {
-                        self.held = Some(setting);
+                        self.held = Some((setting, wire));
                         None
                     }
                     // The same again after a reconnection, or something that overtook.
@@ -277,7 +308,7 @@ impl Feed {
 
     /// Verifies a setting against the crossing's bounds, which may have been declared anew since
     /// they were last asked for.
-    async fn check(&mut self, setting: &Setting) -> Result<Update, CallError> {
+    async fn check(&mut self, setting: &Setting, wire: &v1::Setting) -> Result<Update, CallError> {
         let known = self.bounds.get(&setting.crossing);
         if known.is_none_or(|bounds| setting.verify(bounds).is_err()) {
             match self.client.bounds(&setting.crossing).await {
@@ -297,6 +328,13 @@ impl Feed {
                 name: setting.name(),
                 error,
             });
+        }
+        if let (Some(cache), Some(bounds)) = (&self.cache, self.bounds.get(&setting.crossing)) {
+            let (cache, crossing) = (cache.clone(), setting.crossing.clone());
+            let (wire, bounds) = (wire.clone(), *bounds);
+            let writing = spawn_blocking(move || cache.write(&crossing, &wire, &bounds));
+            // A full or missing disk must not keep a setting from being run.
+            let _ = writing.await;
         }
         self.newest.handed_on(&setting.crossing, setting.number);
         Ok(Update::Setting(Box::new(setting.clone())))

@@ -1,6 +1,7 @@
 //! Hearing of settings, applying them, and saying so.
 
 use std::collections::BTreeMap;
+use std::path::Path;
 
 use ratewright_proto::v1;
 use tokio::sync::mpsc;
@@ -87,6 +88,13 @@ impl Follow {
         if let Some(outbound) = self.feed.outbound() {
             outbound.send(Message::Occupancy(occupancy)).await;
         }
+    }
+
+    /// As [`Watch::keep_in`](crate::Watch::keep_in).
+    #[must_use]
+    pub fn keep_in(mut self, folder: &Path) -> Self {
+        self.feed.keep_in(folder);
+        self
     }
 
     /// As [`Watch::freshness`](crate::Watch::freshness).

@@ -7,11 +7,13 @@
 //! | send measurements | [`Client::report`]: a [`Reporter`] for readings and its [`Receipts`] |
 //! | hear of settings | [`Client::watch`]: a [`Watch`] |
 //! | apply settings and say so | [`Client::follow`]: a [`Follow`] |
+//! | have an audio thread run them | [`Client::play`]: a [`Player`] and its [`Reader`] |
 //! | look once | [`Client::clock`], [`Client::crossing`], [`Client::setting`], [`Client::explain`] |
 //! | keep a crossing as it runs, or change its source | [`Client::pin`], [`Client::release`], [`Client::change_over`], [`Client::acts`] |
 //! | compare a clock with house time | [`Client::exchange_time`] |
 //!
-//! Streams reconnect by themselves with a jittered back-off. No setting is handed on whose
+//! Streams reconnect by themselves with a jittered back-off, to the next address if
+//! [`Client::connect_any`] was given several, and resume from what they have. No setting is handed on whose
 //! certificate does not prove it, and none that is older than one handed on before.
 //!
 //! # Units and signs
@@ -37,19 +39,24 @@
 //! ```
 #![allow(
     clippy::disallowed_methods,
-    reason = "the client is a shell crate: it reads clocks and opens sockets"
+    clippy::disallowed_types,
+    reason = "the client is a shell crate: it reads clocks, opens sockets and keeps files"
 )]
 
 mod act;
 mod backoff;
 mod batch;
+mod cache;
 mod client;
 mod error;
 mod facility;
 mod feed;
 mod follow;
+mod hosts;
+mod house;
 mod id;
 mod newest;
+mod player;
 mod reading;
 mod report;
 mod setting;
@@ -68,11 +75,13 @@ pub use facility::{
 pub use feed::{Freshness, Loss, Update};
 pub use follow::Follow;
 pub use id::{Id, IdError};
+pub use player::{Player, PlayerOptions, Playing, SinkProbe};
+pub use ratewright_handle::{Applied, ArmError, Block, Reader, Realised, SettingNumber, Trim};
 pub use reading::{Exchange, Measurement, Reading, Reference};
 pub use report::{
     Answer, Closed, Promise, Receipt, Receipts, RefusedReadings, ReportOptions, Reporter,
 };
-pub use setting::{Evidence, Proof, Realised, Reason, Setting, SettingNumber};
+pub use setting::{Evidence, Proof, Reason, Setting};
 pub use verify::VerifyError;
 pub use watch::Watch;
 pub use wire::WireError;

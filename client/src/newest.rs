@@ -2,6 +2,7 @@
 
 use std::collections::BTreeMap;
 
+use crate::wire::setting_name;
 use crate::{Id, SettingNumber};
 
 /// The newest setting handed on, per crossing.
@@ -12,6 +13,13 @@ impl Newest {
     /// True if `number` is newer than all before it for the crossing.
     pub(crate) fn is_newer(&self, crossing: &Id, number: SettingNumber) -> bool {
         self.0.get(crossing).is_none_or(|newest| number > *newest)
+    }
+
+    /// The names of the settings handed on, from which a stream may be resumed.
+    pub(crate) fn names(&self) -> Vec<String> {
+        let name =
+            |(crossing, number): (&Id, &SettingNumber)| setting_name(crossing, Some(*number));
+        self.0.iter().map(name).collect()
     }
 
     /// Remembers a setting that was handed on. Older ones leave no mark.

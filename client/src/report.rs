@@ -9,6 +9,7 @@ use thiserror::Error;
 use tokio::sync::mpsc;
 use tokio::time::sleep;
 use tokio_stream::wrappers::ReceiverStream;
+use tonic::Status;
 
 use crate::backoff::Backoff;
 use crate::batch::{Batch, Gatherer};
@@ -226,10 +227,11 @@ impl Sender {
             let room = outbound.try_send(batch.request.clone());
             room.expect("the channel is longer than what can be unreceipted");
         }
+        let place = self.client.hosts().place();
         let mut stub = self.client.reading_stub();
         let opened = stub.report_readings(ReceiverStream::new(requests)).await;
         let mut inbound = opened
-            .map_err(|status| self.client.error(&status))?
+            .map_err(|status| self.client.hosts().error(place, &status))?
             .into_inner();
         if std::mem::take(&mut self.lost) {
             self.tell(Ok(Answer::Regained)).await;
@@ -249,13 +251,13 @@ impl Sender {
                     _ => outbound = None,
                 },
                 received = inbound.message() => {
-                    match received.map_err(|status| self.client.error(&status))? {
+                    match received.map_err(|status| self.client.hosts().error(place, &status))? {
                         Some(response) => self.receipt(response).await,
                         None if outbound.is_none() && self.unreceipted.is_empty() => return Ok(()),
-                        None => return Err(CallError::Unreachable {
-                            address: self.client.address().to_owned(),
-                            reason: "the daemon ended the stream".to_owned(),
-                        }),
+                        None => {
+                            let ended = Status::unavailable("the daemon ended the stream");
+                            return Err(self.client.hosts().error(place, &ended));
+                        }
                     }
                 }
             }

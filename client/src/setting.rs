@@ -1,8 +1,7 @@
 //! A setting: one decision for a crossing.
 
-use std::fmt;
-
-use ratewright_ratio::{Bracket, Cadence, Fraction, Interval, Parents, Stepping, SteppingPair};
+use ratewright_handle::{Realised, SettingNumber};
+use ratewright_ratio::{Bracket, Fraction, Interval, Parents, SteppingPair};
 
 use crate::Id;
 use crate::wire::setting_name;
@@ -46,39 +45,6 @@ impl Setting {
     pub fn name(&self) -> String {
         setting_name(&self.crossing, Some(self.number))
     }
-}
-
-/// The place of a setting among those of its crossing: a later epoch is newer whatever the number.
-#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash)]
-pub struct SettingNumber {
-    /// Grows when a store was restored from a backup.
-    pub epoch: u64,
-    /// Grows by one with each setting within an epoch, from 1.
-    pub number: u64,
-}
-
-impl fmt::Display for SettingNumber {
-    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
-        f.pad(&format!("{}-{}", self.epoch, self.number))
-    }
-}
-
-/// What a resampler is to run.
-#[derive(Clone, Copy, Debug, PartialEq)]
-pub enum Realised {
-    /// One ratio.
-    Single(Fraction),
-    /// Two ratios in turn at block ends.
-    Cadence(Cadence),
-    /// One table of phases, and two advances in turn at each output.
-    Stepping(Stepping),
-    /// Two ratios, each held until the running error would leave the swing.
-    Lazy {
-        /// The two ratios.
-        cadence: Cadence,
-        /// Largest running error at any block end, either way, output samples.
-        swing_samples: f64,
-    },
 }
 
 /// What proves a setting.

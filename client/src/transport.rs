@@ -30,20 +30,31 @@ const NO_GRPC: &str = "grpc-status header missing";
 
 /// Opens a connection and waits until it is up.
 pub(crate) async fn connect(address: &str) -> Result<Channel, CallError> {
-    let unreachable = |error: tonic::transport::Error| CallError::Unreachable {
-        address: address.to_owned(),
-        reason: innermost(&error),
-    };
-    let endpoint = Endpoint::from_shared(with_scheme(address)).map_err(unreachable)?;
-    endpoint
+    let connected = endpoint(address)?.connect().await;
+    connected.map_err(|error| unreachable(address, &error))
+}
+
+/// A connection that is opened when it is first used.
+pub(crate) fn later(address: &str) -> Result<Channel, CallError> {
+    Ok(endpoint(address)?.connect_lazy())
+}
+
+fn endpoint(address: &str) -> Result<Endpoint, CallError> {
+    let endpoint = Endpoint::from_shared(with_scheme(address))
+        .map_err(|error| unreachable(address, &error))?;
+    Ok(endpoint
         .connect_timeout(CONNECT_TIMEOUT)
         .http2_keep_alive_interval(KEEPALIVE_INTERVAL)
         .keep_alive_timeout(KEEPALIVE_TIMEOUT)
         .keep_alive_while_idle(true)
-        .initial_connection_window_size(CONNECTION_WINDOW_BYTES)
-        .connect()
-        .await
-        .map_err(unreachable)
+        .initial_connection_window_size(CONNECTION_WINDOW_BYTES))
+}
+
+fn unreachable(address: &str, error: &tonic::transport::Error) -> CallError {
+    CallError::Unreachable {
+        address: address.to_owned(),
+        reason: innermost(error),
+    }
 }
 
 fn with_scheme(address: &str) -> String {

@@ -1,5 +1,7 @@
 //! Hearing of settings.
 
+use std::path::Path;
+
 use crate::feed::Feed;
 use crate::{CallError, Client, Freshness, Id, Setting, Update};
 
@@ -26,6 +28,15 @@ impl Watch {
     /// Only what trying again would not mend, such as a crossing that is not declared.
     pub async fn next(&mut self) -> Result<Update, CallError> {
         self.feed.next().await
+    }
+
+    /// Keeps the newest setting of each selected crossing in a folder, and begins with what is there:
+    /// verified anew, and [stale](Freshness::Stale) until there is contact. A selection of all
+    /// crossings begins with nothing.
+    #[must_use]
+    pub fn keep_in(mut self, folder: &Path) -> Self {
+        self.feed.keep_in(folder);
+        self
     }
 
     /// Whether a setting can still be relied on.

@@ -45,6 +45,8 @@ pub(crate) struct Known {
     /// What operators did, oldest first.
     pub(crate) acts: Vec<v1::Act>,
     pub(crate) follower_said: Vec<v1::follow_settings_request::Message>,
+    /// What the newest stream of settings resumed from.
+    pub(crate) newest_known: Vec<String>,
     /// Streams opened so far, of any kind.
     pub(crate) streams: usize,
 }

@@ -184,6 +184,7 @@ impl Facility {
         let mut changes = self.changes.subscribe();
         let mut known = self.known();
         known.streams += 1;
+        known.newest_known = select.newest_known.clone();
         if let Some(name) = select
             .crossings
             .iter()
@@ -197,7 +198,7 @@ impl Facility {
         let snapshot: Vec<_> = known
             .settings
             .values()
-            .filter(|s| selected(s))
+            .filter(|s| selected(s) && !select.newest_known.contains(&s.name))
             .cloned()
             .collect();
         drop(known);
