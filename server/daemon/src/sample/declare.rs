@@ -71,7 +71,8 @@ fn clock_on_the_wire(clock: &control::ClockDeclaration) -> ratewright_client::Cl
             timing::LatencyTail::CounterLate => LatencyTail::CounterLate,
         }),
         quantum_ns: Some(clock.quantum_ns).filter(|&ns| ns > 0),
-        statistics: clock.statistics,
+        // The page has something to show of each.
+        statistics: !clock.exact,
         ..ratewright_client::ClockDeclaration::new(id(&clock.id), clock.nominal_hz)
     }
 }

@@ -7,6 +7,7 @@
 //! the same clocks where they would have been, with the readings of the time between missing.
 
 mod declare;
+mod follow;
 mod report;
 mod summary;
 mod tell;
@@ -62,6 +63,7 @@ pub async fn run(
     let page = format!("http://{people}/");
     tokio::select! {
         ended = report::forever(&client, facility, house) => ended,
+        ended = follow::forever(&client, house) => ended,
         ended = tell::forever(&client, house, origin_ns, &page) => ended,
     }
 }
