@@ -91,9 +91,20 @@ struct Shown {
     /// The same, by number: what came after a change is a range of this map.
     by_change: BTreeMap<u64, Id>,
     last_change: u64,
+    /// Settings of each crossing that were shown so far.
+    shown_of: BTreeMap<Id, u64>,
     /// Epoch and number of the newest setting of each crossing that its follower applied, since the start.
     applied: BTreeMap<Id, (u64, u64)>,
     chronicle: Chronicle,
+}
+
+/// How far a watcher is behind.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub struct Backlog {
+    /// Settings of its crossings that were shown so far; of those that are deleted none.
+    pub shown: u64,
+    /// Of these, the ones that it has not seen and that are still the newest.
+    pub waiting: u64,
 }
 
 /// Which crossings a watcher wants.
@@ -196,6 +207,31 @@ impl Board {
         (found().take(most).cloned().collect(), found().count())
     }
 
+    /// How far a watcher is behind that has seen change `seen` (0 for none).
+    pub fn backlog(&self, seen: u64, selection: &Selection) -> Backlog {
+        let shown = self.shown();
+        match selection {
+            Selection::All if seen == 0 => Backlog {
+                shown: shown.last_change,
+                waiting: shown.by_change.len() as u64,
+            },
+            Selection::All => Backlog {
+                shown: shown.last_change,
+                waiting: shown.by_change.range(seen + 1..).count() as u64,
+            },
+            Selection::Named(names) => {
+                let is_new = |name: &&Id| {
+                    let newest = shown.newest.get(*name);
+                    newest.is_some_and(|(change, _)| *change > seen)
+                };
+                Backlog {
+                    shown: names.iter().filter_map(|it| shown.shown_of.get(it)).sum(),
+                    waiting: names.iter().filter(is_new).count() as u64,
+                }
+            }
+        }
+    }
+
     /// Wakes when settings changed; the value is the number of the newest change.
     pub fn changes(&self) -> watch::Receiver<u64> {
         self.changes.subscribe()
@@ -266,6 +302,7 @@ impl Shown {
         self.last_change += 1;
         let change = self.last_change;
         let crossing = setting.crossing.clone();
+        *self.shown_of.entry(crossing.clone()).or_default() += 1;
         let before = self
             .newest
             .insert(crossing.clone(), (change, Arc::new(setting)));
@@ -279,6 +316,7 @@ impl Shown {
         self.crossings.remove(id);
         self.applied.remove(id);
         self.chronicle.forget_crossing(id);
+        self.shown_of.remove(id);
         self.withdraw(id);
     }
 

@@ -15,7 +15,7 @@ use crate::{
     scribe::{Declared, Desk, RecoverFault, Scribe, Stopped},
     service::{self, Access, Slots},
     store::{Opened, Opening, Store, StoreError},
-    transport,
+    transport::{self, Limits},
 };
 
 /// How a daemon is to be started.
@@ -116,6 +116,7 @@ impl Builder {
         let house = HouseClock::start(config.tai_minus_utc_s, floor_ns, pace);
         let board = Arc::new(Board::new());
         let readiness = Readiness::new();
+        let limits = Limits::of(&config);
         let Config {
             clocks, crossings, ..
         } = config;
@@ -158,7 +159,7 @@ impl Builder {
             readiness,
             slots,
         };
-        daemon.serve_grpc(grpc, &access, config.max_streams).await?;
+        daemon.serve_grpc(grpc, &access, limits).await?;
         // The thread says how it went before it ends, unless it panicked.
         recovered.await.unwrap_or(Err(RecoverFault::Panicked))?;
         daemon.readiness.enter(Phase::Serving);
@@ -252,7 +253,7 @@ impl Daemon {
         &mut self,
         listener: TcpListener,
         access: &Access,
-        max_streams: usize,
+        limits: Limits,
     ) -> Result<(), StartFault> {
         let mut routes = RoutesBuilder::default();
         service::add_to(&mut routes, access);
@@ -261,13 +262,8 @@ impl Daemon {
         // Many tools still ask by the older name.
         routes.add_service(reflection().build_v1alpha()?);
         let readiness = self.readiness.clone();
-        self.servers.spawn(async move {
-            let drained = async move { readiness.draining().await };
-            let served = transport::serve(listener, routes.routes(), max_streams, drained).await;
-            if let Err(fault) = served {
-                tracing::error!(%fault, "gRPC is no longer served");
-            }
-        });
+        let served = transport::serve(listener, routes.routes(), limits, readiness);
+        self.servers.spawn(served);
         Ok(())
     }
 

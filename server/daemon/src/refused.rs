@@ -81,12 +81,33 @@ pub(crate) enum Refused {
         /// The limit.
         limit: usize,
     },
-    /// The daemon does not serve, or no more.
+    /// The daemon or the connection goes away; another one will serve.
+    #[error("going away: {}; connect anew, to another daemon if there is one", .0.text())]
+    GoingAway(Why),
+    /// The daemon does not serve yet, or can no more.
     #[error("the daemon is {0}")]
     Unavailable(&'static str),
     /// The store failed; the daemon is about to stop.
     #[error("the store could not be read: {0}")]
     Store(String),
+}
+
+/// Why a stream has to end that nothing is wrong with.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub(crate) enum Why {
+    /// The daemon stops.
+    Stopping,
+    /// The connection is as old as it may get.
+    OldConnection,
+}
+
+impl Why {
+    fn text(self) -> &'static str {
+        match self {
+            Self::Stopping => "the daemon is stopping",
+            Self::OldConnection => "the connection is old",
+        }
+    }
 }
 
 impl Refused {

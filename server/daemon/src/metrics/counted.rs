@@ -22,6 +22,9 @@ const TRANSITIONS: &str = "ratewright_transitions_total";
 const EVIDENCE_AGE: &str = "ratewright_setting_evidence_age_seconds";
 const APPLIED_DELAY: &str = "ratewright_applied_delay_seconds";
 const STREAMS: &str = "ratewright_streams";
+const SUPERSEDED: &str = "ratewright_superseded_total";
+const CONNECTIONS: &str = "ratewright_connections";
+const TURNED_AWAY: &str = "ratewright_connections_turned_away_total";
 const JOURNAL_ROWS: &str = "ratewright_journal_rows";
 const STORE_BYTES: &str = "ratewright_store_bytes";
 const EVENTS: &str = "ratewright_journal_events_total";
@@ -84,6 +87,15 @@ fn describe() {
         "House time from the instant of a setting to its effect, as the follower reports."
     );
     describe_gauge!(STREAMS, "Open streams, by kind.");
+    describe_counter!(
+        SUPERSEDED,
+        "Settings that a slow watcher or follower never got, because a newer one took their place."
+    );
+    describe_gauge!(CONNECTIONS, "Open gRPC connections.");
+    describe_counter!(
+        TURNED_AWAY,
+        "gRPC connections closed as they came, because there were as many as there may be."
+    );
     describe_gauge!(JOURNAL_ROWS, "Events that a restart would replay.");
     describe_gauge!(STORE_BYTES, Unit::Bytes, "Size of the store on disk.");
     describe_counter!(EVENTS, "Events written to the journal since the start.");
@@ -160,6 +172,21 @@ pub fn applied(delay_ns: i64) {
 /// Streams of a kind open now.
 pub fn open_streams(kind: &'static str, open: usize) {
     gauge!(STREAMS, "kind" => kind).set(open as f64);
+}
+
+/// So many settings were replaced before a watcher or follower got them.
+pub fn superseded(settings: u64) {
+    counter!(SUPERSEDED).increment(settings);
+}
+
+/// gRPC connections open now.
+pub fn connections(open: usize) {
+    gauge!(CONNECTIONS).set(open as f64);
+}
+
+/// A gRPC connection was closed as it came.
+pub fn turned_away() {
+    counter!(TURNED_AWAY).increment(1);
 }
 
 /// How large the store is.

@@ -39,6 +39,9 @@
 //! | `ratewright_applied_delay_seconds` | | histogram, house time: from the instant of a setting to its effect, as the follower reports |
 //! | `ratewright_transitions_total` | `kind`, `to` | changes of state since the start, of a `clock` or a `crossing`; `centred` when an account of phase error began anew |
 //! | `ratewright_streams` | `kind` | open streams: `report`, `watch`, `follow` |
+//! | `ratewright_superseded_total` | | settings that a slow watcher or follower never got, because a newer one took their place |
+//! | `ratewright_connections` | | open gRPC connections |
+//! | `ratewright_connections_turned_away_total` | | gRPC connections closed as they came, because there were as many as there may be |
 //! | `ratewright_journal_events_total` | | events written to the journal since the start |
 //! | `ratewright_journal_rows` | | events that a restart would replay |
 //! | `ratewright_store_bytes` | | size of the store on disk |
@@ -52,7 +55,10 @@ use ratewright_control::CrossingState;
 use ratewright_timing::State;
 
 pub use self::{
-    counted::{applied, commit, install, open_streams, readings, setting, store, transition},
+    counted::{
+        applied, commit, connections, install, open_streams, readings, setting, store, superseded,
+        transition, turned_away,
+    },
     shown::{MOST_SUBJECTS, render},
 };
 

@@ -7,7 +7,7 @@ use tokio::sync::mpsc;
 use tokio_stream::wrappers::ReceiverStream;
 use tonic::{Status, Streaming};
 
-use super::{Access, Answers, Slot, feed::Feed};
+use super::{Access, Answers, Slot, feed::Feed, leave::Leave};
 use crate::{
     convert::{report, setting::setting_to_wire},
     refused::{Refused, Violation},
@@ -22,6 +22,7 @@ pub(super) fn watch(
     access: Access,
     mut feed: Feed,
     slot: Slot,
+    leave: Leave,
 ) -> Answers<v1::WatchSettingsResponse> {
     let (sender, answers) = mpsc::channel(1);
     tokio::spawn(async move {
@@ -38,7 +39,7 @@ pub(super) fn watch(
                 sent = send_next(&access, &mut feed, &sender, watched) => {
                     if sent.is_err() { return }
                 }
-                () = access.readiness.draining() => return say_goodbye(&sender).await,
+                why = leave.due() => return say_goodbye(&sender, why).await,
                 () = sender.closed() => return,
             }
         }
@@ -56,6 +57,7 @@ pub(super) fn follow(
     mut feed: Feed,
     mut reports: Streaming<v1::FollowSettingsRequest>,
     slot: Slot,
+    leave: Leave,
 ) -> Answers<v1::FollowSettingsResponse> {
     let (sender, answers) = mpsc::channel(1);
     tokio::spawn(async move {
@@ -81,7 +83,7 @@ pub(super) fn follow(
                     Ok(None) => reporting = false,
                     Err(status) => return drop(sender.send(Err(status)).await),
                 },
-                () = access.readiness.draining() => return say_goodbye(&sender).await,
+                why = leave.due() => return say_goodbye(&sender, why).await,
                 () = sender.closed() => return,
             }
         }
@@ -170,7 +172,7 @@ async fn take_in(access: &Access, heard: v1::FollowSettingsRequest) -> Result<()
         .map_err(|refusal| report::refusal_by_engine(&event, refusal).into())
 }
 
-async fn say_goodbye<T>(to: &Sender<T>) {
+async fn say_goodbye<T>(to: &Sender<T>, why: Refused) {
     // Whoever has gone already needs no goodbye.
-    let _ = to.send(Err(Refused::Unavailable("stopping").into())).await;
+    let _ = to.send(Err(why.into())).await;
 }

@@ -6,6 +6,7 @@ mod crossings;
 mod etag;
 mod feed;
 mod follow;
+mod leave;
 mod mask;
 mod paging;
 mod plan;
@@ -30,7 +31,7 @@ use crate::{
     board::Board,
     house::HouseClock,
     readiness::{Phase, Readiness},
-    refused::Refused,
+    refused::{Refused, Why},
     scribe::Desk,
     store::History,
 };
@@ -90,7 +91,7 @@ impl tonic::service::Interceptor for Gate {
         match self.0.phase() {
             Phase::Serving => Ok(request),
             Phase::Recovering => Err(Refused::Unavailable("recovering its store").into()),
-            Phase::Draining => Err(Refused::Unavailable("stopping").into()),
+            Phase::Draining => Err(Refused::GoingAway(Why::Stopping).into()),
         }
     }
 }

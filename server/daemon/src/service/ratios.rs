@@ -5,7 +5,7 @@ use ratewright_proto::v1::{
 };
 use tonic::{Request, Response, Status, Streaming};
 
-use super::{Access, Answers, feed, follow, paging, plan, slots::Kind};
+use super::{Access, Answers, feed, follow, leave::Leave, paging, plan, slots::Kind};
 use crate::{
     convert::names::{self, SettingName},
     refused::{Refused, Violation},
@@ -79,8 +79,10 @@ impl RatioService for Ratios {
         let selection = feed::selection(&board, request.get_ref(), "crossings")?;
         let known = feed::known(request.get_ref(), "newest_known")?;
         let slot = self.0.slots.take(Kind::Watch)?;
+        let leave = Leave::of(&self.0, &request);
         let feed = feed::Feed::new(board, selection, known);
-        Ok(Response::new(follow::watch(self.0.clone(), feed, slot)))
+        let settings = follow::watch(self.0.clone(), feed, slot, leave);
+        Ok(Response::new(settings))
     }
 
     async fn follow_settings(
@@ -88,12 +90,11 @@ impl RatioService for Ratios {
         request: Request<Streaming<v1::FollowSettingsRequest>>,
     ) -> Result<Response<Self::FollowSettingsStream>, Status> {
         let slot = self.0.slots.take(Kind::Follow)?;
+        let leave = Leave::of(&self.0, &request);
         let mut reports = request.into_inner();
         let first = tokio::select! {
             first = reports.message() => first?,
-            () = self.0.readiness.draining() => {
-                return Err(Refused::Unavailable("stopping").into());
-            }
+            why = leave.due() => return Err(why.into()),
         };
         let Some(Message::Select(select)) = first.and_then(|first| first.message) else {
             let accepted = "select, in the first message";
@@ -108,6 +109,7 @@ impl RatioService for Ratios {
             feed,
             reports,
             slot,
+            leave,
         )))
     }
 

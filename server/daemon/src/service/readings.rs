@@ -10,11 +10,11 @@ use tokio::sync::mpsc;
 use tokio_stream::{StreamExt as _, wrappers::ReceiverStream};
 use tonic::{Request, Response, Status, Streaming};
 
-use super::{Access, Answers, Slot, slots::Kind};
+use super::{Access, Answers, Slot, leave::Leave, slots::Kind};
 use crate::{
     convert::reading::{self, Batch},
     metrics,
-    refused::{Refused, Violation},
+    refused::Violation,
     scribe::{self, Promise},
 };
 
@@ -34,7 +34,9 @@ impl ReadingService for Readings {
     ) -> Result<Response<Self::ReportReadingsStream>, Status> {
         let slot = self.0.slots.take(Kind::Report)?;
         let (sender, waiting) = mpsc::channel(AHEAD);
-        tokio::spawn(take_in(self.0.clone(), request.into_inner(), sender, slot));
+        let leave = Leave::of(&self.0, &request);
+        let taken = take_in(self.0.clone(), request.into_inner(), sender, slot, leave);
+        tokio::spawn(taken);
         let house = self.0.house;
         let receipts =
             ReceiverStream::new(waiting).then(move |waiting: Result<Waiting, Status>| async move {
@@ -63,11 +65,12 @@ async fn take_in(
     mut batches: Streaming<v1::ReportReadingsRequest>,
     receipts: mpsc::Sender<Result<Waiting, Status>>,
     _slot: Slot,
+    leave: Leave,
 ) {
     loop {
         let sent = tokio::select! {
             sent = batches.message() => sent,
-            () = access.readiness.draining() => Err(Refused::Unavailable("stopping").into()),
+            why = leave.due() => Err(why.into()),
             () = receipts.closed() => return,
         };
         let waiting = match sent {

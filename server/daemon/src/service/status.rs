@@ -9,7 +9,7 @@ use std::{collections::HashMap, time::Duration};
 use tonic::{Code, Status};
 use tonic_types::{ErrorDetails, StatusExt as _};
 
-use crate::refused::{Refused, Violation};
+use crate::refused::{Refused, Violation, Why};
 
 /// Whose reasons those in `ErrorInfo` are.
 const DOMAIN: &str = "ratewright.v1";
@@ -40,6 +40,7 @@ fn reason(refused: &Refused) -> &'static str {
         Refused::StaleEtag { .. } => "STALE_ETAG",
         Refused::Precondition(_) => "PRECONDITION",
         Refused::TooManyStreams { .. } => "TOO_MANY_STREAMS",
+        Refused::GoingAway(_) => "GOING_AWAY",
         Refused::Unavailable(_) => "NOT_SERVING",
         Refused::Store(_) => "STORE_FAILED",
     }
@@ -83,6 +84,14 @@ fn describe(refused: Refused, details: &mut ErrorDetails) -> Code {
             details.add_quota_failure_violation("streams", format!("{limit} streams are open"));
             details.set_retry_info(Some(RETRY_AFTER));
             Code::ResourceExhausted
+        }
+        Refused::GoingAway(why) => {
+            details.set_retry_info(Some(match why {
+                Why::Stopping => RETRY_AFTER,
+                // A new connection is welcome at once.
+                Why::OldConnection => Duration::ZERO,
+            }));
+            Code::Unavailable
         }
         Refused::Unavailable(_) => {
             details.set_retry_info(Some(RETRY_AFTER));
@@ -143,10 +152,23 @@ mod tests {
                 Code::ResourceExhausted,
             ),
             (Refused::Unavailable("stopping"), Code::Unavailable),
+            (Refused::GoingAway(Why::Stopping), Code::Unavailable),
             (Refused::Store("disk".into()), Code::Internal),
         ];
         for (refused, code) in cases {
             assert_eq!(Status::from(refused).code(), code);
         }
+    }
+
+    #[test]
+    fn whoever_goes_away_says_how_long_to_wait() {
+        let wait = |why| {
+            let status = Status::from(Refused::GoingAway(why));
+            let details = status.get_error_details();
+            assert_eq!(details.error_info().unwrap().reason, "GOING_AWAY");
+            details.retry_info().unwrap().retry_delay
+        };
+        assert_eq!(wait(Why::Stopping), Some(Duration::from_secs(1)));
+        assert_eq!(wait(Why::OldConnection), Some(Duration::ZERO));
     }
 }

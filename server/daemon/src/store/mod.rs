@@ -160,4 +160,4 @@ fn database(folder: &Path) -> PathBuf {
 }
 
 #[cfg(test)]
-mod tests;
+pub(crate) mod tests;

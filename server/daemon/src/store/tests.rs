@@ -36,7 +36,8 @@ fn clock(name: &str) -> Event {
     Event::DeclareClock(ClockDeclaration::new(Id::new(name).unwrap(), rate))
 }
 
-fn setting(number: u64) -> Setting {
+/// A setting of `desk-to-stage`.
+pub(crate) fn setting(number: u64) -> Setting {
     let ratio = Fraction::new(160, 147);
     let target = Exact::new(160, 147);
     Setting {

@@ -4,7 +4,7 @@ use ratewright_proto::v1::{
     self, clock_service_client::ClockServiceClient, crossing_service_client::CrossingServiceClient,
     ratio_service_client::RatioServiceClient, reading_service_client::ReadingServiceClient,
 };
-use ratewright_server::{Daemon, Opening, config::Config};
+use ratewright_server::{Daemon, Opening, board::Board, config::Config};
 use tempfile::TempDir;
 use tokio::sync::mpsc;
 use tokio_stream::wrappers::ReceiverStream;
@@ -217,6 +217,15 @@ pub(crate) fn violations(status: &Status) -> Vec<(String, String)> {
     violations
         .map(|v| (v.field.clone(), v.description.clone()))
         .collect()
+}
+
+/// What a counter of the daemon's metrics has come to; daemons of one process share them.
+pub(crate) fn counted(name: &str) -> u64 {
+    let text = ratewright_server::metrics::render(&Board::new(), 0);
+    let value = text
+        .lines()
+        .find_map(|line| line.strip_prefix(name)?.strip_prefix(' '));
+    value.map_or(0, |value| value.parse().unwrap())
 }
 
 /// The reason that programs may rely on.

@@ -9,7 +9,7 @@ use ratewright_server::{
     Daemon, Opening, StartFault, StoreError,
     config::{Config, parse},
 };
-use tonic::Code;
+use tonic::{Code, Status, transport::Channel};
 use tonic_health::pb::{
     HealthCheckRequest, health_check_response::ServingStatus, health_client::HealthClient,
 };
@@ -18,7 +18,15 @@ use tonic_reflection::pb::v1::{
     server_reflection_request::MessageRequest, server_reflection_response::MessageResponse,
 };
 
-use crate::facility::{Clients, Facility, drift, reason};
+use tonic_types::StatusExt as _;
+
+use crate::facility::{Clients, Facility, counted, drift, reason};
+
+/// How long a status asks to wait.
+fn retry_after(status: &Status) -> Option<Duration> {
+    let details = status.get_error_details();
+    details.retry_info().and_then(|info| info.retry_delay)
+}
 
 async fn newest(clients: &mut Clients) -> v1::Setting {
     let name = "crossings/desk-to-stage/settings/latest".into();
@@ -350,12 +358,11 @@ async fn open_streams_are_told_of_the_drain_and_do_not_hold_it_up() {
     let told = watch.message().await.unwrap_err();
     assert_eq!(
         (told.code(), reason(&told)),
-        (Code::Unavailable, "NOT_SERVING".into())
+        (Code::Unavailable, "GOING_AWAY".into())
     );
-    assert_eq!(
-        report.receipts.message().await.unwrap_err().code(),
-        Code::Unavailable
-    );
+    assert_eq!(retry_after(&told), Some(Duration::from_secs(1)));
+    let told = report.receipts.message().await.unwrap_err();
+    assert_eq!(reason(&told), "GOING_AWAY");
     assert_eq!(
         heard.message().await.unwrap().unwrap().status(),
         ServingStatus::NotServing
@@ -411,4 +418,72 @@ async fn streams_are_counted_and_a_closed_one_frees_its_place() {
     tokio::time::timeout(Duration::from_secs(10), freed)
         .await
         .expect("the place comes back");
+}
+
+#[tokio::test]
+async fn one_connection_too_many_is_turned_away_and_a_closed_one_makes_room() {
+    let facility = Facility::start_with(|config| config.max_connections = 1).await;
+    let turned_away = counted("ratewright_connections_turned_away_total");
+    let address = format!("http://{}", facility.daemon.grpc());
+    let served = async || {
+        let endpoint = Channel::from_shared(address.clone()).unwrap();
+        let channel = endpoint.connect().await.ok()?;
+        let mut clocks = v1::clock_service_client::ClockServiceClient::new(channel);
+        clocks
+            .list_clocks(v1::ListClocksRequest::default())
+            .await
+            .ok()
+    };
+    assert!(served().await.is_none());
+    assert!(counted("ratewright_connections_turned_away_total") > turned_away);
+    drop(facility.clients);
+    let freed = async {
+        while served().await.is_none() {
+            tokio::time::sleep(Duration::from_millis(5)).await;
+        }
+    };
+    tokio::time::timeout(Duration::from_secs(10), freed)
+        .await
+        .expect("the place comes back");
+}
+
+#[tokio::test]
+async fn streams_of_an_old_connection_are_told_to_go_elsewhere() {
+    let age = Duration::from_secs(1);
+    let mut facility = Facility::start_with(|config| config.max_connection_age = Some(age)).await;
+    let begun = Instant::now();
+    facility.clients.declare_pair().await;
+    let request = v1::WatchSettingsRequest::default();
+    let clients = &mut facility.clients;
+    let watch = clients.ratios.watch_settings(request.clone()).await;
+    let mut watch = watch.unwrap().into_inner();
+    watch.message().await.unwrap().unwrap();
+    let mut report = clients.report().await;
+    assert_eq!(report.batch(vec![drift("desk", 1e-6, 1)]).await.accepted, 1);
+
+    let told = watch.message().await.unwrap_err();
+    assert!(begun.elapsed() >= age.mul_f64(0.8), "{:?}", begun.elapsed());
+    assert_eq!(
+        (told.code(), reason(&told)),
+        (Code::Unavailable, "GOING_AWAY".into())
+    );
+    assert_eq!(retry_after(&told), Some(Duration::ZERO));
+    let told = report.receipts.message().await.unwrap_err();
+    assert_eq!(reason(&told), "GOING_AWAY");
+
+    // The channel makes a new connection; its first call may find the old one closing.
+    let again = async {
+        loop {
+            if let Ok(watch) = clients.ratios.watch_settings(request.clone()).await {
+                return watch.into_inner();
+            }
+            tokio::time::sleep(Duration::from_millis(5)).await;
+        }
+    };
+    let mut watch = tokio::time::timeout(Duration::from_secs(10), again)
+        .await
+        .expect("the daemon still serves");
+    watch.message().await.unwrap().unwrap();
+    let told = watch.message().await.unwrap_err();
+    assert_eq!(reason(&told), "GOING_AWAY", "as any other connection");
 }

@@ -9,7 +9,7 @@ use tokio::{sync::mpsc, time::timeout};
 use tokio_stream::wrappers::ReceiverStream;
 use tonic::{Code, Streaming};
 
-use crate::facility::{Clients, Facility, crossing, violations};
+use crate::facility::{Clients, Facility, counted, crossing, violations};
 
 const SOON: Duration = Duration::from_secs(10);
 
@@ -83,6 +83,7 @@ async fn a_slow_watcher_gets_the_newest_and_not_each() {
     let clients = &mut facility.clients;
     clients.declare_pair().await;
     // A window of a few settings: what the network holds for a reader is not the daemon's.
+    let superseded = counted("ratewright_superseded_total");
     let mut narrow = Clients::connect_narrow(facility.daemon.grpc(), 4_096).await;
     let mut slow = watch(&mut narrow, &[]).await;
     for round in 0..100 {
@@ -93,6 +94,13 @@ async fn a_slow_watcher_gets_the_newest_and_not_each() {
         heard.push(next(&mut slow).await.number);
     }
     assert!(heard.is_sorted() && heard.len() < 30, "{heard:?}");
+    let missed = 101 - heard.len() as u64;
+    let all_counted = async {
+        while counted("ratewright_superseded_total") < superseded + missed {
+            tokio::time::sleep(Duration::from_millis(5)).await;
+        }
+    };
+    timeout(SOON, all_counted).await.expect("each is counted");
 }
 
 #[tokio::test]
