@@ -18,8 +18,9 @@ pub struct LinkConfig {
     pub oscillator: Oscillator,
     /// Which way a one-way reading errs when it is not punctual.
     pub latency_tail: LatencyTail,
-    /// True step of the counter, s, above zero and at most 1, where it is coarser than a tick
-    /// of `nominal_hz` (a counter in µs of a clock that ticks at 32768 Hz, say).
+    /// True step of what is read, s, above zero and at most 1, where it is not a tick of
+    /// `nominal_hz`: a counter that moves by whole periods of a device, say, or a count that is
+    /// latched when it changes, whose time is then as fine as the reference's timestamps.
     pub quantum_s: Option<f64>,
     /// Half-width of the 95 % interval at which the estimate counts as locked, dimensionless,
     /// above zero and at most 1e-5 (default 1e-7 = 0.1 ppm).

@@ -50,8 +50,13 @@ impl Part {
             .iter()
             .map(|(node, weight)| {
                 let v = node * tau_s;
-                let ahead = self.growth.variance(self.age_s + v);
-                weight * (ahead - (1.0 - node) * self.growth.variance(v))
+                let fresh = self.growth.variance(v);
+                let ahead = if self.age_s > 0.0 {
+                    self.growth.variance(self.age_s + v)
+                } else {
+                    fresh
+                };
+                weight * (ahead - (1.0 - node) * fresh)
             })
             .sum();
         let wander = (tau_s * tau_s * integral).max(0.0);

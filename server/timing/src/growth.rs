@@ -5,6 +5,8 @@ use serde::{Deserialize, Serialize};
 /// Lags of the structure function, s: 60·4^k.
 pub(crate) const LAGS_S: [f64; 6] = [60.0, 240.0, 960.0, 3840.0, 15360.0, 61440.0];
 
+/// ln 4: how far one lag is from the next.
+const LN_4: f64 = 2.0 * core::f64::consts::LN_2;
 /// 2π per day, rad/s.
 pub(crate) const DAILY: f64 = core::f64::consts::TAU / 86_400.0;
 
@@ -29,8 +31,9 @@ pub(crate) fn prior(lag_s: f64) -> f64 {
     if lag_s > 43_200.0 {
         return walk + 1.28 * (0.2 + 0.4 * (1.0 - libm::cos(DAILY * lag_s)));
     }
-    let swing = 1.0 - libm::cos(DAILY * lag_s);
-    let slope = 3e-5 * libm::sin(DAILY * lag_s) / DAILY;
+    let (sine, cosine) = libm::sincos(DAILY * lag_s);
+    let swing = 1.0 - cosine;
+    let slope = 3e-5 * sine / DAILY;
     walk + 0.32 * swing * swing + slope * slope
 }
 
@@ -50,7 +53,7 @@ impl Growth {
         let Some(above) = LAGS_S.iter().position(|&lag| lag > lag_s) else {
             return self.tail;
         };
-        let position = libm::log(lag_s / LAGS_S[above - 1]) / libm::log(4.0);
+        let position = libm::log(lag_s / LAGS_S[above - 1]) / LN_4;
         self.factors[above - 1] + position * (self.factors[above] - self.factors[above - 1])
     }
 }

@@ -261,8 +261,8 @@ impl Link {
 
     /// Step of what the probe reads, µs.
     fn quantum_us(&self) -> f64 {
-        let declared = self.config.quantum_s.map_or(0.0, |s| s * 1e6);
-        declared.max(self.intake.quantum_us())
+        let declared = self.config.quantum_s.map(|s| s * 1e6);
+        declared.unwrap_or(self.intake.quantum_us())
     }
 
     fn setup(&self) -> Setup {

@@ -16,7 +16,7 @@ use ratewright_control::{
 };
 use ratewright_ratio::{Bounds, Exact};
 use ratewright_timing::Measurement;
-use ratewright_timing::sim::{Clock, ClockModel, Delay, Path, PathModel};
+use ratewright_timing::sim::{Clock, ClockModel, Delay, Path, PathModel, Random};
 
 pub const SECOND: i64 = 1_000_000_000;
 pub const HOUR: i64 = 3600 * SECOND;
@@ -66,24 +66,41 @@ struct Device {
     sequence: u64,
     /// Nothing is read from and to these times.
     silence: (i64, i64),
+    /// Clock time gained on house time as of the world's now, s.
+    gained_s: f64,
+    /// What its counter stood at when it was last reset.
+    base: f64,
 }
 
 impl Device {
     /// A counter latched at its last tick, with the time of that tick read late by the path: the
     /// noise is that of the path alone, without a tick's quantisation.
     fn measure(&mut self, now: i64) -> Option<Measurement> {
-        let hz = self.declaration.nominal_hz;
-        let hz = *hz.numer() as f64 / *hz.denom() as f64;
-        let shown = now as f64 * 1e-9 * hz + self.truth.phase_s(now) * hz;
+        let hz = self.hz();
+        let shown = now as f64 * 1e-9 * hz + self.gained_s * hz;
         let count = shown.floor();
         let late_s = self.path.delay_s(now)? - (shown - count) / hz;
         let reference_ns = now + (late_s * 1e9).round() as i64;
         Some(Measurement::Counter {
-            count: count as u64,
+            count: (count - self.base) as u64,
             bits: 64,
             reference_ns,
         })
     }
+
+    fn hz(&self) -> f64 {
+        let hz = self.declaration.nominal_hz;
+        *hz.numer() as f64 / *hz.denom() as f64
+    }
+}
+
+/// A follower that measures its buffer so often, with so much normal noise.
+#[derive(Clone, Debug)]
+struct Gauge {
+    every_ns: i64,
+    next_ns: i64,
+    deviation_samples: f64,
+    random: Random,
 }
 
 /// What truly runs at a crossing.
@@ -98,7 +115,7 @@ struct Running {
     /// The follower is late by this, and reports or not.
     late_ns: i64,
     reports: bool,
-    at_ns: i64,
+    gauge: Option<Gauge>,
     phase: f64,
     tally: Tally,
 }
@@ -112,9 +129,11 @@ pub struct Tally {
     pub states: Vec<(i64, CrossingState)>,
     /// Largest |phase| (with the cadence's own error) since the last [`World::forget`].
     pub worst: f64,
-    /// Largest difference of the engine's phase from the true one since then, and the largest
-    /// one in standard deviations.
+    /// Largest difference of the engine's phase from the true one since then.
     pub worst_account: f64,
+    /// When the true phase left the headroom since then, and what the engine said at that time.
+    pub slips: Vec<(i64, CrossingState)>,
+    slipped: bool,
 }
 
 pub struct World {
@@ -124,7 +143,10 @@ pub struct World {
     running: BTreeMap<Id, Running>,
     pub transitions: Vec<(i64, Transition)>,
     pub journal: Option<Vec<(Event, i64)>>,
-    next_compare_ns: i64,
+    /// The truth is integrated up to here.
+    advanced_ns: i64,
+    /// When the engine's accounts are next compared with the truth.
+    pub next_compare_ns: i64,
 }
 
 impl World {
@@ -136,6 +158,7 @@ impl World {
             running: BTreeMap::new(),
             transitions: Vec::new(),
             journal: None,
+            advanced_ns: 0,
             next_compare_ns: 0,
         }
     }
@@ -170,7 +193,20 @@ impl World {
         period_ns: i64,
         seed: u64,
     ) {
+        self.add_read_by(declaration, model, PathModel::new(delay), period_ns, seed);
+    }
+
+    /// A clock that is read every `period_ns` by a path.
+    pub fn add_read_by(
+        &mut self,
+        declaration: ClockDeclaration,
+        model: ClockModel,
+        path: PathModel,
+        period_ns: i64,
+        seed: u64,
+    ) {
         self.apply(Event::DeclareClock(declaration.clone()));
+        let mut truth = Clock::new(model, seed);
         self.devices.push(Device {
             next_ns: if period_ns == i64::MAX {
                 i64::MAX
@@ -178,8 +214,10 @@ impl World {
                 self.now + period_ns / 2
             },
             declaration,
-            truth: Clock::new(model, seed),
-            path: Path::new(PathModel::new(delay), seed + 1),
+            gained_s: truth.phase_s(self.now),
+            base: 0.0,
+            truth,
+            path: Path::new(path, seed + 1),
             period_ns,
             sequence: 0,
             silence: (i64::MAX, i64::MAX),
@@ -189,6 +227,13 @@ impl World {
     pub fn silence(&mut self, name: &str, from_ns: i64, to_ns: i64) {
         let device = self.device(name);
         self.devices[device].silence = (from_ns, to_ns);
+    }
+
+    /// The counter of a clock begins at nought again; its stream goes on.
+    pub fn reset_counter(&mut self, name: &str) {
+        let (device, now) = (self.device(name), self.now);
+        let device = &mut self.devices[device];
+        device.base = (device.hz() * (now as f64 * 1e-9 + device.gained_s)).floor();
     }
 
     fn device(&self, name: &str) -> usize {
@@ -210,7 +255,7 @@ impl World {
             coming: Vec::new(),
             late_ns: 0,
             reports: false,
-            at_ns: self.now,
+            gauge: None,
             phase: 0.0,
             tally: Tally::default(),
         };
@@ -227,6 +272,19 @@ impl World {
             .get_mut(&id(name))
             .expect("the test has declared it");
         (running.late_ns, running.reports) = (late_ns, reports);
+    }
+
+    /// The follower of a crossing reports its level every so often, with so much noise.
+    pub fn gauge(&mut self, name: &str, every_ns: i64, deviation_samples: f64, seed: u64) {
+        let next_ns = self.now + every_ns;
+        let random = Random::new(seed);
+        let running = self.running.get_mut(&id(name));
+        running.expect("the test has declared it").gauge = Some(Gauge {
+            every_ns,
+            next_ns,
+            deviation_samples,
+            random,
+        });
     }
 
     /// Somebody moves the buffer by so many samples.
@@ -251,6 +309,7 @@ impl World {
         for running in self.running.values_mut() {
             running.tally.worst = 0.0;
             running.tally.worst_account = 0.0;
+            running.tally.slips.clear();
         }
     }
 
@@ -303,6 +362,7 @@ impl World {
                 return;
             }
             self.take_effect();
+            self.report_levels();
             if reading == next {
                 self.read();
             } else if due == next {
@@ -312,12 +372,32 @@ impl World {
         }
     }
 
+    /// When a follower next takes a setting or measures its buffer.
     fn next_effect(&self) -> i64 {
-        let coming = self
-            .running
-            .values()
-            .flat_map(|r| r.coming.first().map(|(at, _)| *at));
+        let coming = self.running.values().map(|r| {
+            let effect = r.coming.first().map_or(i64::MAX, |(at, _)| *at);
+            effect.min(r.gauge.as_ref().map_or(i64::MAX, |gauge| gauge.next_ns))
+        });
         coming.min().unwrap_or(i64::MAX)
+    }
+
+    fn report_levels(&mut self) {
+        let (now, mut reports) = (self.now, Vec::new());
+        for (crossing, running) in &mut self.running {
+            let Some(gauge) = running.gauge.as_mut().filter(|gauge| gauge.next_ns <= now) else {
+                continue;
+            };
+            gauge.next_ns += gauge.every_ns;
+            reports.push(Event::Occupancy {
+                crossing: crossing.clone(),
+                level_samples: running.phase + gauge.deviation_samples * gauge.random.normal(),
+                deviation_samples: gauge.deviation_samples,
+                house_ns: now,
+            });
+        }
+        for report in reports {
+            self.apply(report);
+        }
     }
 
     fn take_effect(&mut self) {
@@ -383,23 +463,31 @@ impl World {
 
     /// Integrates the true phase errors up to now.
     fn advance_truth(&mut self) {
-        let now = self.now;
+        let seconds = (self.now - self.advanced_ns) as f64 * 1e-9;
+        if seconds == 0.0 {
+            return;
+        }
+        self.advanced_ns = self.now;
+        // Ticks of each device since the last time.
+        let ticks = self.devices.iter_mut().map(|device| {
+            let gained_s = device.truth.phase_s(self.now);
+            let before_s = std::mem::replace(&mut device.gained_s, gained_s);
+            device.hz() * (seconds + (gained_s - before_s))
+        });
+        let ticks: Vec<f64> = ticks.collect();
         for running in self.running.values_mut() {
-            let from = std::mem::replace(&mut running.at_ns, now);
-            let Some(ratio) = running.ratio.filter(|_| from < now) else {
+            let Some(ratio) = running.ratio else {
                 continue;
             };
-            let mut gained = |device: usize| {
-                let device = &mut self.devices[device];
-                let hz = device.declaration.nominal_hz;
-                let hz = *hz.numer() as f64 / *hz.denom() as f64;
-                let before = device.truth.phase_s(from);
-                let seconds = (now - from) as f64 * 1e-9 + (device.truth.phase_s(now) - before);
-                hz * seconds
-            };
-            running.phase += ratio * gained(running.source) - gained(running.sink);
+            running.phase += ratio * ticks[running.source] - ticks[running.sink];
             let out = running.phase.abs() + running.cadence_error;
-            running.tally.worst = running.tally.worst.max(out);
+            let tally = &mut running.tally;
+            tally.worst = tally.worst.max(out);
+            let was_out = std::mem::replace(&mut tally.slipped, out > running.headroom);
+            if tally.slipped && !was_out {
+                let state = tally.states.last().map_or(CrossingState::Waiting, |s| s.1);
+                tally.slips.push((self.now, state));
+            }
         }
     }
 
@@ -422,6 +510,17 @@ fn as_f64(exact: Exact) -> f64 {
     *exact.numer() as f64 / *exact.denom() as f64
 }
 
+/// A property is tried on so many cases, unless the environment asks for another number.
+pub fn cases(usual: u32) -> proptest::test_runner::Config {
+    let asked = proptest::test_runner::Config::default();
+    let is_asked = std::env::var_os("PROPTEST_CASES").is_some();
+    proptest::test_runner::Config {
+        cases: if is_asked { asked.cases } else { usual },
+        max_shrink_iters: 2000,
+        ..asked
+    }
+}
+
 pub fn average(setting: &Setting) -> f64 {
     *setting.average().numer() as f64 / *setting.average().denom() as f64
 }
@@ -441,8 +540,7 @@ impl World {
     }
 
     /// Clock time that a clock has truly gained on house time, s.
-    pub fn gained_s(&mut self, name: &str) -> f64 {
-        let device = self.device(name);
-        self.devices[device].truth.phase_s(self.now)
+    pub fn gained_s(&self, name: &str) -> f64 {
+        self.devices[self.device(name)].gained_s
     }
 }
