@@ -44,7 +44,8 @@ pub(crate) struct ClockRecord {
 /// All clocks.
 #[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub(crate) struct Clocks {
-    pub(crate) records: BTreeMap<Id, ClockRecord>,
+    /// Boxed, as a map's nodes are half empty.
+    pub(crate) records: BTreeMap<Id, Box<ClockRecord>>,
     /// Links begun so far, of all clocks: the source of [`Lineage`].
     pub(crate) links_begun: u32,
 }
@@ -57,6 +58,8 @@ pub(crate) struct Traced {
     pub(crate) measured: bool,
     /// How the last of the links that did began anew.
     pub(crate) restart: Option<Restart>,
+    /// True once every one of the links is past its beginning, see [`LinkRecord::is_settled`].
+    pub(crate) settled: bool,
 }
 
 impl ClockRecord {
@@ -97,22 +100,23 @@ impl ClockRecord {
 
 impl Clocks {
     pub(crate) fn get(&self, id: &Id) -> Option<&ClockRecord> {
-        self.records.get(id)
+        self.records.get(id).map(Box::as_ref)
     }
 
     pub(crate) fn get_mut(&mut self, id: &Id) -> Option<&mut ClockRecord> {
-        self.records.get_mut(id)
+        self.records.get_mut(id).map(Box::as_mut)
     }
 
     pub(crate) fn iter(&self) -> impl Iterator<Item = &ClockRecord> {
-        self.records.values()
+        self.records.values().map(Box::as_ref)
     }
 
     /// Creates or replaces; true if the clock's rate or exactness changed under its users.
     pub(crate) fn declare(&mut self, declaration: &ClockDeclaration) -> bool {
         let Some(record) = self.records.get_mut(&declaration.id) else {
             let record = ClockRecord::new(declaration.clone());
-            self.records.insert(declaration.id.clone(), record);
+            self.records
+                .insert(declaration.id.clone(), Box::new(record));
             return false;
         };
         let old = std::mem::replace(&mut record.declaration, declaration.clone());
@@ -196,6 +200,7 @@ impl Clocks {
                 lineage: Lineage::default(),
                 measured: true,
                 restart: None,
+                settled: true,
             });
         }
         let by_chosen = record
@@ -207,6 +212,7 @@ impl Clocks {
             lineage: Lineage::default(),
             measured: false,
             restart: None,
+            settled: false,
         }))
     }
 
@@ -219,6 +225,7 @@ impl Clocks {
                 lineage: Lineage::of(link.lineage),
                 measured: true,
                 restart: link.restart,
+                settled: link.is_settled(),
             });
         };
         let host = self.chained(host, now, depth.checked_sub(1)?)?;
@@ -227,6 +234,7 @@ impl Clocks {
             lineage: host.lineage.then(link.lineage),
             measured: host.measured,
             restart: host.restart.max(link.restart),
+            settled: host.settled && link.is_settled(),
         })
     }
 

@@ -122,7 +122,8 @@ impl Engine {
             None => {
                 let record =
                     CrossingRecord::new(declaration.clone(), source, sink, self.numbers_gone);
-                self.crossings.insert(declaration.id.clone(), record);
+                self.crossings
+                    .insert(declaration.id.clone(), Box::new(record));
             }
             Some(old) if old == *declaration => return Ok(()),
             Some(old) => {

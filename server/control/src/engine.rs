@@ -26,7 +26,8 @@ pub struct Engine {
     /// declared later goes on from there, so that no number of its name is used twice.
     pub(crate) numbers_gone: u64,
     pub(crate) clocks: Clocks,
-    pub(crate) crossings: BTreeMap<Id, CrossingRecord>,
+    /// Boxed, as a map's nodes are half empty.
+    pub(crate) crossings: BTreeMap<Id, Box<CrossingRecord>>,
     pub(crate) groups: BTreeMap<Id, BTreeSet<Id>>,
     pub(crate) schedule: Schedule,
 }

@@ -164,7 +164,8 @@ impl Engine {
 
     fn declared(&mut self, id: &Id) -> Result<&mut CrossingRecord, Refusal> {
         let unknown = || Refusal::not_found("crossing", id, "a crossing that was declared");
-        self.crossings.get_mut(id).ok_or_else(unknown)
+        let record = self.crossings.get_mut(id).map(Box::as_mut);
+        record.ok_or_else(unknown)
     }
 
     /// Keeps an act, and has the crossing looked at.

@@ -1,11 +1,13 @@
 //! Names of clocks, crossings and groups.
 
 use std::fmt;
+use std::sync::Arc;
 
 use serde::{Deserialize, Serialize};
 use thiserror::Error;
 
 /// Name of a clock, a crossing or a group: 1 to 63 of `a`–`z`, `0`–`9` and `-`, the first a letter.
+/// Clones share the text.
 ///
 /// ```
 /// use ratewright_control::Id;
@@ -15,7 +17,7 @@ use thiserror::Error;
 /// ```
 #[derive(Clone, Debug, PartialEq, Eq, PartialOrd, Ord, Hash, Serialize, Deserialize)]
 #[serde(try_from = "String", into = "String")]
-pub struct Id(String);
+pub struct Id(Arc<str>);
 
 /// A name that is none.
 #[derive(Clone, Debug, PartialEq, Eq, Error)]
@@ -37,7 +39,7 @@ impl Id {
         let known = |c: u8| c.is_ascii_lowercase() || c.is_ascii_digit() || c == b'-';
         let first_is_letter = name.bytes().next().is_some_and(|c| c.is_ascii_lowercase());
         if first_is_letter && name.len() <= 63 && name.bytes().all(known) {
-            Ok(Id(name.to_owned()))
+            Ok(Id(name.into()))
         } else {
             let value = name.chars().take(80).collect();
             Err(IdError { value })
@@ -66,6 +68,6 @@ impl TryFrom<String> for Id {
 
 impl From<Id> for String {
     fn from(id: Id) -> Self {
-        id.0
+        id.as_str().to_owned()
     }
 }

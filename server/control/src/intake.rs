@@ -178,7 +178,10 @@ impl Clocks {
                     self.forget_referrer(&gone, id);
                 }
             }
-            None => record.links.push(link),
+            None => {
+                record.links.reserve_exact(1); // most clocks have one link
+                record.links.push(link);
+            }
         }
     }
 }

@@ -14,7 +14,7 @@ use crate::HouseNs;
 use crate::clocks::Traced;
 use crate::passage::Passage;
 use crate::signs::{phase_velocity, true_rate};
-use crate::timeline::{Entry, Timeline};
+use crate::timeline::{Entry, Stretch, Timeline};
 
 /// Growth of the offset's variance, samples² a second: 0.01 samples a day (own choice: block
 /// ends and the rounding of a follower's buffer).
@@ -33,6 +33,8 @@ pub(crate) struct Ledger {
     pub(crate) timeline: Timeline,
     /// Integrated up to here; none before the stream begins.
     at_ns: Option<HouseNs>,
+    /// It was last begun anew here: what was before has no part in it.
+    centred_ns: HouseNs,
     phase_samples: f64,
     offset_variance: f64,
     /// Variance of what a running error has left to the single ratio in force, samples².
@@ -62,6 +64,7 @@ impl Ledger {
             sink_hz,
             timeline: Timeline::default(),
             at_ns: None,
+            centred_ns: HouseNs::MIN,
             phase_samples: 0.0,
             offset_variance: 0.0,
             left_variance: 0.0,
@@ -79,6 +82,12 @@ impl Ledger {
     /// Variance of the phase error, samples².
     pub(crate) fn variance(&self) -> f64 {
         let passages = self.source.variance_ns2() + self.sink.variance_ns2();
+        self.offset_variance + self.left_variance + self.samples2(passages)
+    }
+
+    /// The part of it that no later reading takes away, samples².
+    pub(crate) fn lasting_variance(&self) -> f64 {
+        let passages = self.source.lasting_variance_ns2() + self.sink.lasting_variance_ns2();
         self.offset_variance + self.left_variance + self.samples2(passages)
     }
 
@@ -100,6 +109,7 @@ impl Ledger {
             .begins_ns()
             .filter(|&begins| begins <= now)
             .map(|_| now);
+        self.centred_ns = now;
         self.phase_samples = phase_samples;
         self.offset_variance = variance;
         self.left_variance = 0.0;
@@ -179,14 +189,26 @@ impl Ledger {
         source: &Traced,
         sink: &Traced,
     ) {
-        let integrated_ns = self.at_ns.unwrap_or(HouseNs::MIN);
-        let Some(correction) = self.timeline.correct(number, truly_ns, integrated_ns) else {
+        let (begun_ns, before) = (self.timeline.begins_ns(), self.timeline.clone());
+        let from_ns = self.timeline.correct(number, truly_ns);
+        let (Some(from_ns), Some(at_ns)) = (from_ns, self.at_ns) else {
             return;
         };
-        let seconds = (correction.to_ns.saturating_sub(correction.from_ns)) as f64 * 1e-9;
-        let velocity =
-            |ratio: Option<f64>| ratio.map_or(0.0, |ratio| self.velocity(ratio, source, sink));
-        self.phase_samples += (velocity(correction.truly) - velocity(correction.assumed)) * seconds;
+        if self.timeline.begins_ns() != begun_ns && self.centred_ns <= from_ns {
+            // The stream began at another time: all of it is integrated once more from there.
+            (self.at_ns, self.phase_samples) = (None, 0.0);
+            self.advance(at_ns, source, sink);
+            return;
+        }
+        let from_ns = from_ns.max(self.centred_ns);
+        let gained = |timeline: &Timeline| -> f64 {
+            let part = |stretch: Stretch| {
+                let seconds = (stretch.to_ns - stretch.from_ns) as f64 * 1e-9;
+                self.velocity(stretch.ratio, source, sink) * seconds
+            };
+            timeline.stretches(from_ns, at_ns).map(part).sum()
+        };
+        self.phase_samples += gained(&self.timeline) - gained(&before);
     }
 
     /// A follower has measured its buffer: `level` samples, `age_s` seconds ago, with this
@@ -202,8 +224,7 @@ impl Ledger {
         velocity: f64,
     ) -> Levelled {
         let innovation = level - (self.phase_samples - velocity * age_s);
-        let passages = self.source.lasting_variance_ns2() + self.sink.lasting_variance_ns2();
-        let lasting = self.offset_variance + self.left_variance + self.samples2(passages);
+        let lasting = self.lasting_variance();
         let whole = self.variance() + variance;
         if innovation.abs() > AT_ODDS * whole.sqrt() {
             return self.at_odds(innovation, variance);
@@ -228,6 +249,7 @@ impl Ledger {
         if self.at_odds.unsigned_abs() < AT_ODDS_IN_A_ROW {
             return Levelled::SetAside;
         }
+        self.centred_ns = self.at_ns.unwrap_or(self.centred_ns);
         self.phase_samples += innovation;
         self.offset_variance = variance;
         self.left_variance = 0.0;
@@ -261,6 +283,7 @@ mod tests {
             lineage: Lineage::of(1),
             measured: true,
             restart: None,
+            settled: true,
         }
     }
 
@@ -270,6 +293,7 @@ mod tests {
             lineage: Lineage::default(),
             measured: true,
             restart: None,
+            settled: true,
         }
     }
 

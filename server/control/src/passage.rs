@@ -7,6 +7,9 @@
 //! account with the smaller variance is kept; changing from increments to the backward run
 //! revises the past.
 //!
+//! While a link is young its phase still moves with what is learned of its noise, by more than its
+//! deviation says: until it has settled the past is always run backwards.
+//!
 //! When the phase begins anew (another link, a restart), a leg is closed with its variance and
 //! another one opened.
 
@@ -87,7 +90,10 @@ impl Passage {
         self.phase_variance_ns2 = deviation_ns * deviation_ns;
         let backward_variance = backward_variance_ns2(estimate, deviation_ns, span_s);
         match self.last {
-            Some((_, phase_ns)) if backward_variance > WORTH_REVISING * self.entry_variance_ns2 => {
+            Some((_, phase_ns))
+                if clock.settled
+                    && backward_variance > WORTH_REVISING * self.entry_variance_ns2 =>
+            {
                 self.gained_ns += estimate.phase_ns - phase_ns;
             }
             _ => {
@@ -189,6 +195,7 @@ mod tests {
             lineage: Lineage::of(lineage),
             measured: true,
             restart: None,
+            settled: true,
         }
     }
 

@@ -14,11 +14,14 @@ pub(crate) mod realise;
 pub(crate) mod slip;
 pub(crate) mod standing;
 
-/// Standard deviations that planning and keeping leave room for. The two must be equal: with a
-/// smaller margin for the growth than for what is uncertain now, the plan ends at an edge where
-/// keeping refuses at once (measured: twice the changes at half a sample of headroom). The tube's
-/// own reserve stands behind it, so more deviations only cost changes (`examples/hold_table`).
-pub(crate) const MARGIN_DEVIATIONS: f64 = 2.0;
+/// Standard deviations that planning and keeping leave room for, of what lasts (the phase at the
+/// stream's beginning: if that is wrong it is wrong for good) and of what later readings tell.
+/// Planning and keeping use the same: with a smaller margin for the growth than for what is
+/// uncertain now, the plan ends at an edge where keeping refuses at once (measured: twice the
+/// changes at half a sample of headroom). The tube's own reserve stands behind them, so more
+/// deviations only cost changes (`examples/hold_table`).
+pub(crate) const LASTING_DEVIATIONS: f64 = 2.25;
+pub(crate) const PASSING_DEVIATIONS: f64 = 2.0;
 /// Standard deviations that keeping an inward-moving phase leaves room for.
 pub(crate) const INWARD_DEVIATIONS: f64 = 2.5;
 /// The tube: the share of the headroom that planning may use.

@@ -25,8 +25,8 @@ pub(crate) struct SinkCount {
 enum Said {
     /// The count fell: the sink began anew.
     BeganAnew,
-    /// It goes with the estimate of the sink's clock.
-    AsEstimated,
+    /// It goes with the estimate of the sink's clock, to within so many deviations of this.
+    AsEstimated { deviation: f64 },
     /// It does not: the drift by the count, and the deviation of the two from each other.
     AtOdds { drift: f64, deviation: f64 },
 }
@@ -42,9 +42,22 @@ impl SinkCount {
         let counted = 2.0 * COUNTED_WITHIN_S * COUNTED_WITHIN_S;
         let deviation = (estimate.predict_variance(span_s) + counted).sqrt() / span_s;
         if (drift - estimate.drift).abs() <= AT_ODDS * deviation {
-            return Said::AsEstimated;
+            return Said::AsEstimated { deviation };
         }
         Said::AtOdds { drift, deviation }
+    }
+}
+
+impl ClockFault {
+    /// True if a count with this deviation would show the fault if it were still there: two that
+    /// follow each other closely tell nothing.
+    fn would_show(&self, deviation: f64) -> bool {
+        match self {
+            ClockFault::CountedOtherwise {
+                counted, estimated, ..
+            } => (counted - estimated).abs() > AT_ODDS * deviation,
+            _ => false,
+        }
     }
 }
 
@@ -96,12 +109,12 @@ impl Engine {
                     .transitions
                     .extend(self.clocks.set_fault(&sink, Some(fault)));
             }
-            Said::AsEstimated if matches!(fault, Some(ClockFault::CountedOtherwise { .. })) => {
+            Said::AsEstimated { deviation } if fault.is_some_and(|f| f.would_show(deviation)) => {
                 effects
                     .transitions
                     .extend(self.clocks.set_fault(&sink, None));
             }
-            Said::AtOdds { .. } | Said::AsEstimated => {}
+            Said::AtOdds { .. } | Said::AsEstimated { .. } => {}
         }
     }
 

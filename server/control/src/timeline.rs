@@ -6,8 +6,9 @@ use serde::{Deserialize, Serialize};
 
 use crate::HouseNs;
 
-/// Settings kept; a report of an older one is refused.
-pub(crate) const KEPT: usize = 8;
+/// Settings kept, and more only while they wait for their effect; a report of an older one is
+/// refused.
+pub(crate) const KEPT: usize = 4;
 
 /// One setting's place in the timeline.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
@@ -34,19 +35,10 @@ pub(crate) struct Stretch {
 #[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub(crate) struct Timeline {
     entries: Vec<Entry>,
+    /// Older ones are gone: the first that is kept tells only what ran before the second.
+    has_forgotten: bool,
     /// Settings below this number were for another stream. Their followers may still report them.
     counts_from: u64,
-}
-
-/// A correction of when a setting took effect: `after` instead of `before` between two instants.
-#[derive(Clone, Copy, Debug, PartialEq)]
-pub(crate) struct Correction {
-    /// Ratio assumed so far; none before the stream began.
-    pub(crate) assumed: Option<f64>,
-    /// Ratio that truly ran.
-    pub(crate) truly: Option<f64>,
-    pub(crate) from_ns: HouseNs,
-    pub(crate) to_ns: HouseNs,
 }
 
 /// A ratio as the nearest double.
@@ -57,8 +49,14 @@ pub(crate) fn as_double(ratio: &Ratio<u64>) -> f64 {
 impl Timeline {
     /// Adds a setting; its effect is not before that of the one before.
     pub(crate) fn push(&mut self, entry: Entry) {
-        if self.entries.len() == KEPT {
+        // What is in force when the entry is decided is kept, and what comes after it.
+        let is_past = |next: &Entry| next.effect_ns <= entry.decided_ns;
+        if self.entries.len() > KEPT && self.entries.get(1).is_some_and(is_past) {
             self.entries.remove(0);
+            self.has_forgotten = true;
+        }
+        if self.entries.is_empty() {
+            self.entries.reserve_exact(KEPT + 1);
         }
         self.entries.push(entry);
     }
@@ -119,45 +117,24 @@ impl Timeline {
 
     /// The setting with this number, if it is kept.
     pub(crate) fn entry(&self, epoch: u64, number: u64) -> Option<&Entry> {
-        self.entries
-            .iter()
-            .find(|entry| entry.number == number && entry.epoch == epoch)
+        let mut known = self.entries.iter().skip(usize::from(self.has_forgotten));
+        known.find(|entry| entry.number == number && entry.epoch == epoch)
     }
 
-    /// Moves the effect of a setting to where it truly was, but not past its neighbours'.
-    /// The correction concerns times up to `integrated_ns` only.
-    pub(crate) fn correct(
-        &mut self,
-        number: u64,
-        truly_ns: HouseNs,
-        integrated_ns: HouseNs,
-    ) -> Option<Correction> {
-        let index = self
-            .entries
-            .iter()
-            .position(|entry| entry.number == number && number >= self.counts_from)?;
+    /// Moves the effect of a setting to where it truly was, but not before the one before. Those
+    /// that were planned to follow it sooner cannot have: they follow at once, until they are
+    /// reported themselves. Gives the first instant that this concerns, if the setting counts.
+    pub(crate) fn correct(&mut self, number: u64, truly_ns: HouseNs) -> Option<HouseNs> {
+        let counts = |entry: &Entry| entry.number == number && number >= self.counts_from;
+        let index = self.entries.iter().position(counts)?;
         let previous = index.checked_sub(1).map(|i| self.entries[i]);
         let previous = previous.filter(|entry| entry.number >= self.counts_from);
-        let next_ns = self
-            .entries
-            .get(index + 1)
-            .map_or(HouseNs::MAX, |next| next.effect_ns);
         let earliest_ns = previous.map_or(HouseNs::MIN, |entry| entry.effect_ns);
-        let truly_ns = truly_ns.clamp(earliest_ns, next_ns);
-        let entry = &mut self.entries[index];
-        let assumed_ns = std::mem::replace(&mut entry.effect_ns, truly_ns);
-        let own = Some(as_double(&entry.ratio));
-        let before = previous.map(|entry| as_double(&entry.ratio));
-        let (assumed, truly) = if truly_ns > assumed_ns {
-            (own, before)
-        } else {
-            (before, own)
-        };
-        Some(Correction {
-            assumed,
-            truly,
-            from_ns: truly_ns.min(assumed_ns).min(integrated_ns),
-            to_ns: truly_ns.max(assumed_ns).min(integrated_ns),
-        })
+        let truly_ns = truly_ns.max(earliest_ns);
+        let assumed_ns = std::mem::replace(&mut self.entries[index].effect_ns, truly_ns);
+        for later in &mut self.entries[index + 1..] {
+            later.effect_ns = later.effect_ns.max(truly_ns);
+        }
+        Some(assumed_ns.min(truly_ns))
     }
 }

@@ -8,7 +8,7 @@ use crate::policy::realise::{
     Allowed, Way, allowed, error_of, nearest_single, nearest_virtual, own_error, realise,
 };
 use crate::policy::standing::Standing;
-use crate::policy::{HOLD_SHARE, Limits, MARGIN_DEVIATIONS};
+use crate::policy::{HOLD_SHARE, Limits};
 use crate::timeline::as_double;
 use crate::{CrossingDeclaration, CrossingState, Realisation, Realised};
 
@@ -199,17 +199,17 @@ impl View<'_> {
 
     /// True if the band of the phase error is in the tube now.
     pub(crate) fn is_in_tube(&self) -> bool {
-        let band = self.outlook.phase.abs() + MARGIN_DEVIATIONS * self.outlook.deviation(0.0);
+        let band = self.outlook.phase.abs() + self.outlook.margin(0.0);
         band <= self.limits(self.running_error).tube
     }
 
     /// True if uncertainty alone fills the tube: there is nothing to plan with.
     fn is_blind(&self, limits: &Limits) -> bool {
-        MARGIN_DEVIATIONS * self.outlook.deviation(0.0) > limits.tube
+        self.outlook.margin(0.0) > limits.tube
     }
 
     fn is_surely_out(&self, limits: &Limits) -> bool {
-        self.outlook.phase.abs() > MARGIN_DEVIATIONS * self.outlook.deviation(0.0) + limits.tube
+        self.outlook.phase.abs() > self.outlook.margin(0.0) + limits.tube
     }
 
     /// True if nothing can be vouched for, as uncertainty alone fills the tube, and nothing says
@@ -227,9 +227,9 @@ impl View<'_> {
     }
 
     fn why_not(&self, limits: &Limits) -> String {
-        let margin = MARGIN_DEVIATIONS * self.outlook.deviation(self.lead_s);
+        let margin = self.outlook.margin(self.lead_s);
         format!(
-            "the phase error is uncertain by {margin:.3} samples ({MARGIN_DEVIATIONS} deviations) \
+            "the phase error is uncertain by {margin:.3} samples \
              when a setting could take effect, and the tube is {:.3}",
             limits.tube
         )

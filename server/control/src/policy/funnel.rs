@@ -1,7 +1,7 @@
 //! The funnel: which velocities keep the phase error's band in the tube, for how long.
 
 use crate::policy::outlook::Outlook;
-use crate::policy::{Limits, MARGIN_DEVIATIONS, PLAN_HORIZON_S, RECOVERY_S};
+use crate::policy::{Limits, PLAN_HORIZON_S, RECOVERY_S};
 
 /// Each step of the hold is so much longer than the one before.
 const GROWTH: f64 = 1.02;
@@ -29,7 +29,7 @@ impl Entry {
     /// Under the ratio in force, which gives the phase error `velocity`.
     pub(crate) fn new(outlook: &Outlook<'_>, limits: &Limits, lead_s: f64, velocity: f64) -> Self {
         let phase = outlook.extrapolate(outlook.phase, velocity, lead_s);
-        let band = phase.abs() + MARGIN_DEVIATIONS * outlook.deviation(lead_s);
+        let band = phase.abs() + outlook.margin(lead_s);
         Entry {
             lead_s,
             phase,
@@ -60,7 +60,7 @@ pub(crate) fn funnel(
     while hold_s <= PLAN_HORIZON_S {
         let tau_s = lead_s + hold_s;
         let still_out = excess * (1.0 - hold_s / recovery_s).max(0.0);
-        let half_width = limits.tube + still_out - MARGIN_DEVIATIONS * outlook.deviation(tau_s);
+        let half_width = limits.tube + still_out - outlook.margin(tau_s);
         let centre = outlook.extrapolate(phase, 0.0, hold_s);
         low = low.max((-half_width - centre) / hold_s);
         high = high.min((half_width - centre) / hold_s);

@@ -1,7 +1,7 @@
 //! Whether the setting in force may stay.
 
 use crate::policy::outlook::Outlook;
-use crate::policy::{INWARD_DEVIATIONS, Limits, MARGIN_DEVIATIONS};
+use crate::policy::{INWARD_DEVIATIONS, Limits};
 
 /// True if the ratio that gives the phase error `velocity` may stay in force until the decision
 /// after next could have taken effect, `until_s` seconds from now:
@@ -15,7 +15,7 @@ pub(crate) fn may_stay(
 ) -> bool {
     let now = outlook.phase;
     let then = outlook.extrapolate(now, velocity, until_s);
-    if then.abs() + MARGIN_DEVIATIONS * outlook.deviation(until_s) <= limits.tube {
+    if then.abs() + outlook.margin(until_s) <= limits.tube {
         return true;
     }
     let inward = then * velocity < 0.0 && then.abs() < now.abs();

@@ -5,6 +5,7 @@ use ratewright_timing::Estimate;
 
 use crate::clocks::{PHASE_DRIFT_CORRELATION, Traced};
 use crate::ledger::Ledger;
+use crate::policy::{LASTING_DEVIATIONS, PASSING_DEVIATIONS};
 use crate::signs;
 use crate::target::Target;
 
@@ -20,6 +21,8 @@ pub(crate) struct Outlook<'a> {
     pub(crate) phase_variance: f64,
     /// Growth of the velocity, samples/s²: the target moves away under a held ratio.
     pub(crate) acceleration: f64,
+    /// The part of it that no later reading takes away.
+    lasting_variance: f64,
     clocks: [&'a Estimate; 2],
     /// Covariance of phase and velocity, samples²/s.
     covariance: f64,
@@ -46,6 +49,7 @@ impl<'a> Outlook<'a> {
             sink_hz,
             phase: ledger.phase_samples(),
             phase_variance: ledger.variance(),
+            lasting_variance: ledger.lasting_variance(),
             acceleration: -sink_hz * (clocks[1].drift_rate_per_s - clocks[0].drift_rate_per_s),
             clocks,
             covariance: covariance * sink_hz * sink_hz,
@@ -78,6 +82,15 @@ impl<'a> Outlook<'a> {
             .sum();
         let of_drifts = self.sink_hz * self.sink_hz * growth;
         (self.phase_variance + 2.0 * self.covariance * tau_s + of_drifts).sqrt()
+    }
+
+    /// What planning and keeping leave room for, `tau_s` seconds from now.
+    pub(crate) fn margin(&self, tau_s: f64) -> f64 {
+        let deviation = self.deviation(tau_s);
+        let passing = (deviation * deviation - self.lasting_variance).max(0.0);
+        let squares = LASTING_DEVIATIONS * LASTING_DEVIATIONS * self.lasting_variance
+            + PASSING_DEVIATIONS * PASSING_DEVIATIONS * passing;
+        squares.sqrt()
     }
 
     /// Standard deviation of the velocity now, samples/s.

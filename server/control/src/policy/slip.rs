@@ -6,14 +6,14 @@ use crate::policy::outlook::Outlook;
 /// Two-sided 95 % quantile of the normal distribution.
 const Z95: f64 = 1.959_963_984_540_054;
 /// First step of the search, seconds, and the factor from step to step.
-const STEPS: (f64, f64) = (0.01, 1.1);
+const STEPS: (f64, f64) = (0.01, 1.2);
 
 /// Seconds until the 95 % band of the phase error first leaves `room` (headroom less a cadence's
 /// own error), or `None` if that is not within [`SLIP_HORIZON_S`].
 ///
 /// The band τ seconds from `delay_s` on is `phase + velocity·τ + acceleration·τ²/2 ± 1.96·σ`,
 /// σ the deviation `delay_s + τ` seconds from now. The first step of a geometric grid (0.01 s,
-/// then a tenth longer each) at which it is out brackets the instant, which bisection refines to
+/// then a fifth longer each) at which it is out brackets the instant, which bisection refines to
 /// a part in 10⁶; an excursion within one step is not seen.
 pub(crate) fn seconds_to_slip(
     outlook: &Outlook<'_>,

@@ -4,7 +4,7 @@ use ratewright_ratio::{Bounds, target_from_f64};
 
 use crate::policy::choose::View;
 use crate::policy::realise::{allowed, bounds_for};
-use crate::policy::{MARGIN_DEVIATIONS, PLAN_HORIZON_S, RECOVERY_S};
+use crate::policy::{PLAN_HORIZON_S, RECOVERY_S};
 use crate::{CrossingState, Realisation};
 
 /// A state with its reason.
@@ -78,10 +78,10 @@ impl View<'_> {
             );
             return Standing::out_of_bounds(&reason, self.needed());
         }
-        let margin = MARGIN_DEVIATIONS * self.outlook.deviation(0.0);
+        let margin = self.outlook.margin(0.0);
         if margin > tube {
             return degraded(format!(
-                "the phase error is uncertain by {margin:.3} samples ({MARGIN_DEVIATIONS} deviations), \
+                "the phase error is uncertain by {margin:.3} samples, \
                  and the tube is {tube:.3}"
             ));
         }
