@@ -8,7 +8,7 @@ use crate::failure::Failure;
 use crate::out;
 use crate::out::say;
 use crate::server::{self, Server};
-use crate::show;
+use crate::{layout, names, show, terminal};
 
 /// Lists what operators did to a crossing, newest first
 #[derive(Debug, Args)]
@@ -28,7 +28,13 @@ pub(crate) struct Arguments {
 
 pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
     let client = arguments.server.connect().await?;
-    let acts = client.acts(&arguments.crossing, arguments.most).await?;
+    let acts = match client.acts(&arguments.crossing, arguments.most).await {
+        Ok(acts) => acts,
+        Err(error) => {
+            let wanted = std::slice::from_ref(&arguments.crossing);
+            return Err(names::crossings(&client, wanted, error).await);
+        }
+    };
     if arguments.json {
         let acts: Vec<_> = acts.iter().map(as_json).collect();
         return say!("{:#}", Value::from(acts));
@@ -41,7 +47,7 @@ pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
     let heading = ["when", "what", "by", "note"];
     let mut rows = vec![heading.map(str::to_owned).to_vec()];
     rows.extend(acts.iter().map(|act| row(act, now_ns)));
-    out::text(format_args!("{}", show::table(&rows)))
+    out::prose(&layout::fitted(&rows, terminal::width()))
 }
 
 fn row(act: &Act, now_ns: i64) -> Vec<String> {

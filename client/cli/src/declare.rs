@@ -4,7 +4,7 @@ use num_rational::Ratio;
 use ratewright_client::{Client, ClockDeclaration, Id, RefusalKind};
 
 use crate::failure::Failure;
-use crate::show;
+use crate::{names, show};
 
 /// Declares a clock unless it is there; one that is there must be the same.
 pub(crate) async fn ensure(
@@ -42,9 +42,15 @@ pub(crate) async fn ensure(
 pub(crate) async fn expect(client: &Client, id: &Id, advice: &str) -> Result<(), Failure> {
     match client.clock(id).await {
         Ok(_) => Ok(()),
-        Err(error) if error.is(RefusalKind::NotFound) => Err(Failure::Failed(format!(
-            "clock {id} is not declared; {advice}"
-        ))),
+        Err(error) if error.is(RefusalKind::NotFound) => {
+            let meant = match names::clocks_like(client, id).await {
+                Some(meant) => format!("{meant}; or "),
+                None => String::new(),
+            };
+            Err(Failure::Failed(format!(
+                "clock {id} is not declared; {meant}{advice}"
+            )))
+        }
         Err(error) => Err(error.into()),
     }
 }

@@ -4,9 +4,10 @@ use clap::Args;
 use serde_json::json;
 
 use crate::failure::Failure;
+use crate::out;
 use crate::out::say;
 use crate::server::{self, Server, SettingName};
-use crate::{json, show};
+use crate::{json, names, show};
 
 /// Tells why a setting was chosen
 #[derive(Debug, Args)]
@@ -25,7 +26,10 @@ pub(crate) struct Arguments {
 pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
     let client = arguments.server.connect().await?;
     let SettingName { crossing, number } = &arguments.setting;
-    let (setting, lines) = client.explain(crossing, *number).await?;
+    let (setting, lines) = match client.explain(crossing, *number).await {
+        Ok(explained) => explained,
+        Err(error) => return Err(names::crossings(&client, std::slice::from_ref(crossing), error).await),
+    };
     if arguments.json {
         say!(
             "{:#}",
@@ -34,14 +38,14 @@ pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
         return Ok(());
     }
     let runs = show::realised(&setting.realised);
-    say!(
-        "{} {}  {runs}  {}",
+    let mut text = format!(
+        "{} {}  {runs}  {}\n",
         setting.crossing,
         setting.number,
         show::offset(setting.residual)
-    )?;
+    );
     for line in lines {
-        say!("  {line}")?;
+        text += &format!("  {line}\n");
     }
-    Ok(())
+    out::prose(&text)
 }

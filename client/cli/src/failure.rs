@@ -47,8 +47,9 @@ impl From<CallError> for Failure {
     fn from(error: CallError) -> Self {
         match error {
             CallError::Unreachable { address, reason } => Self::Failed(format!(
-                "nobody answers at {address} ({reason}); start ratewrightd there, or name another \
-                 place with --server http://HOST:PORT"
+                "nobody answers at {address} ({reason}); start ratewrightd there, with \
+                 `ratewrightd run FILE` or, to try it, `ratewrightd sample`, or name another place \
+                 with --server http://HOST:PORT"
             )),
             other => Self::Failed(other.to_string()),
         }

@@ -1,12 +1,12 @@
 //! `ratewright pin`, `release` and `changeover`: the operator's hand.
 
 use clap::Args;
-use ratewright_client::{Crossing, Id};
+use ratewright_client::{CallError, Client, Crossing, Id};
 
 use crate::failure::Failure;
 use crate::out::say;
 use crate::server::{self, Server};
-use crate::{json, show};
+use crate::{json, names, show};
 
 /// Keeps a crossing as it runs, whatever is measured, until it is released
 ///
@@ -61,13 +61,15 @@ struct Act {
 
 pub(crate) async fn pin(Pin { crossing, act }: &Pin) -> Result<(), Failure> {
     let client = act.server.connect().await?;
-    let done = client.pin(crossing, &act.by, &act.note).await?;
+    let done = client.pin(crossing, &act.by, &act.note).await;
+    let done = known(&client, crossing, done).await?;
     act.print(&done, "is pinned")
 }
 
 pub(crate) async fn release(Release { crossing, act }: &Release) -> Result<(), Failure> {
     let client = act.server.connect().await?;
-    let done = client.release(crossing, &act.by, &act.note).await?;
+    let done = client.release(crossing, &act.by, &act.note).await;
+    let done = known(&client, crossing, done).await?;
     act.print(&done, "is released")
 }
 
@@ -81,8 +83,21 @@ pub(crate) async fn changeover(
     let client = act.server.connect().await?;
     let done = client
         .change_over(crossing, source, &act.by, &act.note)
-        .await?;
+        .await;
+    let done = known(&client, crossing, done).await?;
     act.print(&done, &format!("takes its stream from {source}"))
+}
+
+/// What was done, or a failure that knows the names of crossings.
+async fn known(
+    client: &Client,
+    crossing: &Id,
+    done: Result<Crossing, CallError>,
+) -> Result<Crossing, Failure> {
+    match done {
+        Ok(done) => Ok(done),
+        Err(error) => Err(names::crossings(client, std::slice::from_ref(crossing), error).await),
+    }
 }
 
 impl Act {

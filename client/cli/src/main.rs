@@ -10,20 +10,26 @@
 )]
 
 mod acts;
+mod completions;
 mod decimal;
 mod declare;
 mod explain;
 mod failure;
 mod hand;
 mod json;
+mod layout;
+mod manual;
+mod names;
 mod out;
 mod plan;
 mod probe;
+mod progress;
 mod rehearse;
 mod report;
 mod server;
 mod show;
 mod standing;
+mod terminal;
 mod watch;
 
 #[cfg(test)]
@@ -60,6 +66,8 @@ enum Command {
     Acts(acts::Arguments),
     Probe(probe::Arguments),
     Rehearse(rehearse::Arguments),
+    Completions(completions::Arguments),
+    Manual(manual::Arguments),
 }
 
 #[tokio::main]
@@ -76,12 +84,18 @@ async fn main() -> ExitCode {
         Command::Acts(arguments) => acts::run(&arguments).await,
         Command::Probe(arguments) => probe::run(&arguments).await,
         Command::Rehearse(arguments) => rehearse::run(&arguments),
+        Command::Completions(arguments) => completions::run(&arguments),
+        Command::Manual(arguments) => manual::run(&arguments),
     };
     match done {
         Ok(()) | Err(Failure::ReaderGone) => ExitCode::SUCCESS,
         Err(failure @ (Failure::Quiet | Failure::Slipped)) => ExitCode::from(failure.status()),
         Err(failure) => {
-            eprintln!("ratewright: {failure}");
+            let said = format!("ratewright: {failure}");
+            match terminal::error_width() {
+                Some(width) => eprint!("{}", terminal::folded(&said, width)),
+                None => eprintln!("{said}"),
+            }
             ExitCode::from(failure.status())
         }
     }

@@ -8,7 +8,7 @@ use crate::failure::Failure;
 use crate::out;
 use crate::out::say;
 use crate::server::Server;
-use crate::{json, show};
+use crate::{json, layout, show, terminal};
 
 /// Shows how every clock and every crossing stands
 #[derive(Debug, Args)]
@@ -38,20 +38,25 @@ pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
             .map(|&word| word.to_owned())
             .collect::<Vec<_>>()
     };
+    let width = terminal::width();
     let mut rows = vec![heading(&["clock", "nominal", "drift (95 %)", "state"])];
     rows.extend(clocks.iter().map(clock_row));
+<<<<<<< HEAD
     out::text(format_args!("{}", show::table(&rows)))?;
     for clock in &clocks {
         if let Some(fault) = &clock.fault {
             say!("  {} is at fault: {fault}", clock.declaration.id)?;
         }
     }
+=======
+    out::prose(&layout::fitted(&rows, width))?;
+>>>>>>> 9a75bb4 (ratewright: a watch in place, pictures of plans, completions, man pages and errors that know names)
     say!("")?;
     let mut rows = vec![heading(&[
         "crossing", "from", "to", "setting", "runs", "off by", "slips in", "state",
     ])];
     rows.extend(crossings.iter().map(crossing_row));
-    out::text(format_args!("{}", show::table(&rows)))?;
+    out::prose(&layout::fitted(&rows, width))?;
     Ok(())
 }
 

@@ -6,7 +6,9 @@ mod filter;
 mod findings;
 mod frames;
 mod limits;
+mod picture;
 mod question;
+mod sketch;
 mod text;
 
 use std::fmt;
@@ -22,6 +24,7 @@ use drift::Drift;
 use filter::FilterWish;
 use findings::Findings;
 use limits::Limits;
+use picture::PictureWish;
 use question::Question;
 
 /// Plans the ratio between two rates, without a daemon
@@ -60,6 +63,8 @@ pub(crate) struct Arguments {
     limits: Box<Limits>,
     #[command(flatten)]
     filter: FilterWish,
+    #[command(flatten)]
+    picture: PictureWish,
 }
 
 fn rate(text: &str) -> Result<Ratio<u64>, String> {
@@ -83,12 +88,12 @@ fn headroom(text: &str) -> Result<f64, String> {
 pub(crate) fn run(arguments: &Arguments) -> Result<(), Failure> {
     let question = Question::new(arguments)?;
     let findings = Findings::new(&question)?;
+    arguments.picture.draw(&question, &findings)?;
     if arguments.json {
-        say!("{:#}", document::document(&question, &findings))?;
+        say!("{:#}", document::document(&question, &findings))
     } else {
-        out::text(format_args!("{}", text::text(&question, &findings)))?;
+        out::prose(&text::text(&question, &findings))
     }
-    Ok(())
 }
 
 /// `n/d`, whole numbers too.

@@ -13,7 +13,8 @@ use super::filter::{self, Filter};
 use super::findings::{Findings, Width};
 use super::frames::{self, Frames};
 use super::question::Question;
-use crate::show;
+use super::sketch;
+use crate::{layout, show, terminal};
 use ratewright_ratio::allowed::{Allowed, Answer, Proof, ROUNDED, multiplied};
 
 /// Most frames that are listed; the shares of the period tell the rest.
@@ -296,12 +297,17 @@ fn show_bound(bound: Exact) -> String {
 
 fn ladder(out: &mut String, question: &Question, answer: &Answer) {
     out.push_str("\nladder    what a larger filter bank buys\n");
+    if let Some(sketch) = sketch::sketch(answer) {
+        out.push('\n');
+        out.push_str(&sketch);
+        out.push('\n');
+    }
     let mut heading = vec!["L/M", "off by", "headroom lasts"];
     heading.extend(question.filter.as_ref().map(|_| "coefficients"));
     heading.push("steps");
     let mut rows = vec![heading.into_iter().map(str::to_owned).collect()];
     rows.extend(answer.ladder.iter().map(|rung| row(question, rung)));
-    out.push_str(&show::table(&rows));
+    out.push_str(&layout::fitted(&rows, terminal::width()));
 }
 
 fn row(question: &Question, rung: &Rung) -> Vec<String> {
@@ -348,7 +354,7 @@ fn stages(out: &mut String, filter: &Filter, chains: &[Chain]) {
     ];
     let mut rows = vec![heading.map(str::to_owned).to_vec()];
     rows.extend(shown.into_iter().map(chain_row));
-    out.push_str(&show::table(&rows));
+    out.push_str(&layout::fitted(&rows, terminal::width()));
 }
 
 /// The chains, without those that cost nearly the same as one before, or more.

@@ -80,7 +80,7 @@ pub(crate) fn run(arguments: &Arguments) -> Result<(), Failure> {
     if arguments.json {
         say!("{:#}", document::document(&played))?;
     } else {
-        out::text(format_args!("{}", text::text(&played)))?;
+        out::prose(&text::text(&played))?;
     }
     if played.reports.iter().any(|report| report.slips() > 0) {
         return Err(Failure::Slipped);

@@ -1,15 +1,14 @@
 //! Playing a script with many seeds, on all cores, with a bar that shows how far it is.
 
-use std::io::IsTerminal;
 use std::sync::atomic::{AtomicBool, AtomicU32, AtomicU64, Ordering};
 use std::thread;
 use std::time::Duration;
 
-use indicatif::{ProgressBar, ProgressStyle};
 use ratewright_rehearsal::file::Script;
 use ratewright_rehearsal::{Report, Run, RunError};
 
 use crate::failure::Failure;
+use crate::progress;
 
 /// Played in one go between two looks at the others, s.
 const STRIDE_S: f64 = 600.0;
@@ -92,15 +91,10 @@ impl Work<'_> {
         self.script.days * 86_400.0
     }
 
-    /// Shows how far it is, if there is a terminal to show it on.
+    /// Shows how far it is.
     fn show(&self) {
-        if !std::io::stderr().is_terminal() {
-            return;
-        }
         let whole_s = (self.length_s() * f64::from(self.seeds)) as u64;
-        let bar = ProgressBar::new(whole_s);
-        let style = ProgressStyle::with_template("  {wide_bar} {percent} % played, {eta} to go");
-        bar.set_style(style.expect("the template is well formed"));
+        let bar = progress::bar(whole_s, "played");
         while !self.over.load(Ordering::Relaxed) {
             bar.set_position(self.played_s.load(Ordering::Relaxed));
             thread::park_timeout(Duration::from_millis(100));

@@ -8,16 +8,17 @@ use ratewright_timing::State;
 
 use super::Played;
 use super::spread::{Spread, least, most};
-use crate::show;
+use crate::{layout, show, terminal};
 
 const DAY_S: f64 = 86_400.0;
 
 /// Two tables and a last word.
 pub(super) fn text(played: &Played) -> String {
     let mut text = format!("{}\n\n", heading(played));
-    text += &show::table(&crossings(&played.reports));
+    let width = terminal::width();
+    text += &layout::fitted(&crossings(&played.reports), width);
     text.push('\n');
-    text += &show::table(&clocks(&played.reports));
+    text += &layout::fitted(&clocks(&played.reports), width);
     let _ = writeln!(text, "\n{}", verdict(&played.reports));
     if let Some(refused) = refused(&played.reports) {
         let _ = writeln!(text, "{refused}");

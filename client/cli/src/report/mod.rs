@@ -9,6 +9,7 @@ use std::io::Read;
 use std::path::{Path, PathBuf};
 
 use clap::{Args, ValueEnum};
+use indicatif::ProgressBar;
 use num_rational::Ratio;
 use ratewright_client::{
     Answer, Client, Id, Measurement, Promise, Reading, Receipts, Reference, ReportOptions,
@@ -20,6 +21,7 @@ use crate::declare;
 use crate::failure::Failure;
 use crate::out;
 use crate::out::say;
+use crate::progress;
 use crate::server::{self, Server};
 use columns::Columns;
 use summary::Summary;
@@ -130,12 +132,14 @@ fn reference(text: &str) -> Result<Reference, String> {
 /// A row of the file: a measurement, or what is wrong with it.
 struct Row {
     line: u64,
+    /// Where it ends in the file, bytes.
+    end_byte: u64,
     content: Result<(Option<u64>, Measurement), String>,
 }
 
 /// Sends the readings and prints what became of them.
 pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
-    let mut rows = open(arguments)?;
+    let (mut rows, length_bytes) = open(arguments)?;
     let client = arguments.server.connect().await?;
     declare_clocks(&client, arguments).await?;
     let promise = match arguments.receipt {
@@ -146,10 +150,15 @@ pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
         promise,
         ..ReportOptions::default()
     });
-    let receipts = tokio::spawn(take(receipts));
+    let bar = match length_bytes {
+        Some(bytes) => progress::bar(bytes, "sent"),
+        None => ProgressBar::hidden(),
+    };
+    let receipts = tokio::spawn(take(receipts, bar.clone()));
 
     let mut summary = Summary::default();
     while let Some(row) = rows.recv().await {
+        bar.set_position(row.end_byte);
         match row.content {
             Ok((sequence, measurement)) => {
                 let reading = Reading {
@@ -168,11 +177,9 @@ pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
         }
     }
     drop(reporter);
-    summary.receipts(
-        receipts
-            .await
-            .map_err(|error| Failure::Failed(error.to_string()))??,
-    );
+    let receipts = receipts.await;
+    bar.finish_and_clear();
+    summary.receipts(receipts.map_err(|error| Failure::Failed(error.to_string()))??);
     finish(&client, arguments, &summary).await
 }
 
@@ -205,13 +212,17 @@ async fn declare_clocks(client: &Client, arguments: &Arguments) -> Result<(), Fa
 }
 
 /// Takes receipts until the last; losses of contact are told as they happen.
-async fn take(mut receipts: Receipts) -> Result<Vec<ratewright_client::Receipt>, Failure> {
+async fn take(
+    mut receipts: Receipts,
+    bar: ProgressBar,
+) -> Result<Vec<ratewright_client::Receipt>, Failure> {
     let mut taken = Vec::new();
+    let say = |text: String| bar.suspend(|| eprintln!("ratewright: {text}"));
     while let Some(answer) = receipts.next().await? {
         match answer {
             Answer::Receipt(receipt) => taken.push(receipt),
-            Answer::Lost(loss) => eprintln!("ratewright: {loss}"),
-            Answer::Regained => eprintln!("ratewright: contact is back"),
+            Answer::Lost(loss) => say(loss.to_string()),
+            Answer::Regained => say("contact is back".to_owned()),
             _ => {}
         }
     }
@@ -223,7 +234,7 @@ async fn finish(client: &Client, arguments: &Arguments, summary: &Summary) -> Re
     if arguments.json {
         say!("{:#}", summary.json(&clock))?;
     } else {
-        out::text(format_args!("{}", summary.text(&clock)))?;
+        out::prose(&summary.text(&clock))?;
     }
     if summary.is_clean() {
         Ok(())
@@ -232,17 +243,21 @@ async fn finish(client: &Client, arguments: &Arguments, summary: &Summary) -> Re
     }
 }
 
-/// Opens the file, reads its heading, and starts reading rows.
-fn open(arguments: &Arguments) -> Result<mpsc::Receiver<Row>, Failure> {
+/// Opens the file, reads its heading, and starts reading rows. Tells its length in bytes, if it has one.
+fn open(arguments: &Arguments) -> Result<(mpsc::Receiver<Row>, Option<u64>), Failure> {
     let name = arguments
         .file
         .as_deref()
         .filter(|file| *file != Path::new("-"));
-    let input: Box<dyn Read + Send> = match name {
-        None => Box::new(std::io::stdin()),
-        Some(file) => Box::new(File::open(file).map_err(|error| {
-            Failure::Failed(format!("cannot open {}: {error}", file.display()))
-        })?),
+    let (input, length_bytes): (Box<dyn Read + Send>, _) = match name {
+        None => (Box::new(std::io::stdin()), None),
+        Some(file) => {
+            let input = File::open(file).map_err(|error| {
+                Failure::Failed(format!("cannot open {}: {error}", file.display()))
+            })?;
+            let about = input.metadata().ok().filter(std::fs::Metadata::is_file);
+            (Box::new(input), about.map(|about| about.len()))
+        }
     };
     let mut csv = csv::ReaderBuilder::new()
         .flexible(true)
@@ -256,5 +271,5 @@ fn open(arguments: &Arguments) -> Result<mpsc::Receiver<Row>, Failure> {
     let (sender, rows) = mpsc::channel(ROWS);
     // A thread of its own, because a read of standard input may never return.
     std::thread::spawn(move || rows::read(csv, &columns, &sender));
-    Ok(rows)
+    Ok((rows, length_bytes))
 }

@@ -12,16 +12,21 @@ use super::columns::Columns;
 pub(super) fn read(mut csv: Reader<impl Read>, columns: &Columns, rows: &mpsc::Sender<Row>) {
     let mut record = StringRecord::new();
     loop {
-        let row = match csv.read_record(&mut record) {
+        let (line, content) = match csv.read_record(&mut record) {
             Ok(false) => return,
-            Ok(true) => Row {
-                line: record.position().map_or(0, csv::Position::line),
-                content: columns.read(&record),
-            },
-            Err(error) => Row {
-                line: error.position().map_or(0, csv::Position::line),
-                content: Err(error.to_string()),
-            },
+            Ok(true) => (
+                record.position().map_or(0, csv::Position::line),
+                columns.read(&record),
+            ),
+            Err(error) => (
+                error.position().map_or(0, csv::Position::line),
+                Err(error.to_string()),
+            ),
+        };
+        let row = Row {
+            line,
+            end_byte: csv.position().byte(),
+            content,
         };
         if rows.blocking_send(row).is_err() {
             return;
