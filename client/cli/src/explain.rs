@@ -28,7 +28,9 @@ pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
     let SettingName { crossing, number } = &arguments.setting;
     let (setting, lines) = match client.explain(crossing, *number).await {
         Ok(explained) => explained,
-        Err(error) => return Err(names::crossings(&client, std::slice::from_ref(crossing), error).await),
+        Err(error) => {
+            return Err(names::crossings(&client, std::slice::from_ref(crossing), error).await);
+        }
     };
     if arguments.json {
         say!(

@@ -86,7 +86,13 @@ fn joined(names: &[&str]) -> String {
 mod tests {
     use super::*;
 
-    const NAMES: [&str; 5] = ["film", "hall-to-ferry", "hall-to-van", "news", "van-to-hall"];
+    const NAMES: [&str; 5] = [
+        "film",
+        "hall-to-ferry",
+        "hall-to-van",
+        "news",
+        "van-to-hall",
+    ];
 
     #[test]
     fn slips_of_the_finger_find_their_name() {

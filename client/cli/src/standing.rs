@@ -41,16 +41,15 @@ pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
     let width = terminal::width();
     let mut rows = vec![heading(&["clock", "nominal", "drift (95 %)", "state"])];
     rows.extend(clocks.iter().map(clock_row));
-<<<<<<< HEAD
-    out::text(format_args!("{}", show::table(&rows)))?;
+    out::prose(&layout::fitted(&rows, width))?;
     for clock in &clocks {
         if let Some(fault) = &clock.fault {
-            say!("  {} is at fault: {fault}", clock.declaration.id)?;
+            out::prose(&format!(
+                "  {} is at fault: {fault}\n",
+                clock.declaration.id
+            ))?;
         }
     }
-=======
-    out::prose(&layout::fitted(&rows, width))?;
->>>>>>> 9a75bb4 (ratewright: a watch in place, pictures of plans, completions, man pages and errors that know names)
     say!("")?;
     let mut rows = vec![heading(&[
         "crossing", "from", "to", "setting", "runs", "off by", "slips in", "state",

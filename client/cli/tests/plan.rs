@@ -126,6 +126,75 @@ fn wishes_are_as_approved() {
     check("frames.txt", &[&broadcast[..], &ntsc].concat());
 }
 
+/// Each picture is one of its own, says what it shows, and names the best ratio.
+#[test]
+fn pictures_are_drawn_into_files() {
+    let folder = tempfile::tempdir().expect("a folder");
+    let file = folder.path().join("plan.svg");
+    let path = file.to_str().expect("a path in UTF-8");
+    let rates = [
+        "plan",
+        "--from",
+        "44.1k",
+        "--to",
+        "48k",
+        "--from-drift",
+        "12.5±0.3",
+    ];
+    let mut drawn = Vec::new();
+    for (subject, title) in [
+        ("ladder", "The ladder: what a larger filter bank buys"),
+        ("fractions", "The fractions around the target"),
+    ] {
+        let wish = ["--picture", path, "--picture-of", subject];
+        let output = ratewright(&[&rates[..], &wish].concat());
+        assert!(output.status.success(), "{output:?}");
+        let picture = std::fs::read_to_string(&file).expect("it was drawn");
+        assert!(picture.starts_with("<?xml") && picture.ends_with("</svg>\n"));
+        assert!(picture.contains(title), "{subject}");
+        let best = document(&rates[1..])["best"].clone();
+        assert!(
+            picture.contains(&format!("{}/{}", best["l"], best["m"])),
+            "{subject}"
+        );
+        drawn.push(picture);
+    }
+    assert_ne!(drawn[0], drawn[1]);
+    let nowhere = ratewright(&[&rates[..], &["--picture", "no/such/folder/plan.svg"]].concat());
+    assert_eq!(nowhere.status.code(), Some(1));
+}
+
+/// Each line of a plan for people keeps within 100 columns, the picture within 80.
+#[test]
+fn the_ladder_is_drawn_within_80_columns() {
+    for more in [
+        &[
+            "--to-drift",
+            "0.000001",
+            "--max-l",
+            "9223372036854775807",
+            "--max-m",
+            "9223372036854775807",
+        ][..],
+        &["--max-l", "3", "--max-m", "3"],
+        &["--largest-prime", "7"],
+        &["--power-of-two-m"],
+    ] {
+        let output = ratewright(&[&["plan", "--from", "44.1k", "--to", "48k"], more].concat());
+        let printed = String::from_utf8(output.stdout).expect("UTF-8");
+        let picture: Vec<&str> = printed.lines().filter(|line| line.contains('│')).collect();
+        assert!(!picture.is_empty() && picture.len() <= 9, "{printed}");
+        for line in &picture {
+            assert!(line.chars().count() <= 80, "{line}");
+        }
+        assert_eq!(
+            printed.matches('■').count(),
+            1,
+            "one is the best: {printed}"
+        );
+    }
+}
+
 #[test]
 fn mistakes_say_what_to_type_instead() {
     check("no-sink.txt", &["plan", "--from", "44.1k"]);
@@ -163,6 +232,7 @@ fn mistakes_say_what_to_type_instead() {
         &one(&["--passband", "20k", "--attenuation", "100"]),
     );
     check("bad-phases.txt", &one(&["--phases", "0"]));
+    check("bad-picture.txt", &one(&["--picture", "plan.png"]));
     let rates = ["plan", "--from", "44.1k", "--to", "48k"];
     let with = |more: &[&'static str]| [&rates[..], more].concat();
     check(

@@ -201,9 +201,9 @@ fn mistakes_say_what_to_type_instead() {
             &["explain", "hall-to-van"],
             "",
             1,
-            "no crossings/hall-to-van",
+            "no other crossing is declared",
         ),
-        (&["watch", "nowhere"], "", 1, "never declared"),
+        (&["watch", "nowhere"], "", 1, "there is no crossing nowhere"),
         (
             &["standing", "--server", "http://127.0.0.1:1"],
             "",
@@ -340,4 +340,60 @@ fn an_operators_acts_are_done_and_listed() {
     let anonymous = run(&server, &["pin", "hall-to-van"], "");
     assert_eq!(anonymous.status.code(), Some(2));
     assert!(text(&anonymous.stderr).contains("--by"));
+}
+
+#[test]
+fn a_mistyped_name_is_answered_with_those_that_exist() {
+    let server = FakeServer::start();
+    for id in ["hall-to-van", "van-to-hall", "film"] {
+        server.facility.declare_crossing(id, 256, 256);
+    }
+    let good = "count,reference_ns\n48000,1\n";
+    run(&server, &["report", "desk", "--declare", "48k"], good);
+    for (arguments, said) in [
+        (
+            &["explain", "hal-to-van"][..],
+            "no crossing hal-to-van; meant may be hall-to-van",
+        ),
+        (
+            &["watch", "film", "van"],
+            "meant may be hall-to-van or van-to-hall",
+        ),
+        (
+            &["pin", "flim", "--by", "someone"],
+            "no crossing flim; meant may be film",
+        ),
+        (
+            &["acts", "gramophone"],
+            "there is film, hall-to-van or van-to-hall",
+        ),
+        (
+            &["report", "dsek"],
+            "clock dsek is not declared; meant may be desk; or add --declare RATE",
+        ),
+    ] {
+        let output = run(&server, arguments, good);
+        let errors = text(&output.stderr);
+        assert_eq!(output.status.code(), Some(1), "{arguments:?}: {errors}");
+        assert!(errors.contains(said), "{arguments:?}: {errors}");
+    }
+}
+
+/// Without a terminal there is no bar and no colour, whatever is asked for.
+#[test]
+fn nothing_is_drawn_where_there_is_no_terminal() {
+    let server = FakeServer::start();
+    let folder = tempfile::tempdir().expect("a folder");
+    let record = folder.path().join("record.csv");
+    let rows: String = (1..3_000)
+        .map(|second| format!("{},{second}000000000\n", 48_000 * second))
+        .collect();
+    std::fs::write(&record, format!("count,reference_ns\n{rows}")).expect("it is written");
+    let record = record.to_str().expect("a path in UTF-8");
+    let output = run(&server, &["report", "desk", record, "--declare", "48k"], "");
+    assert!(output.status.success(), "{}", text(&output.stderr));
+    assert_eq!(text(&output.stderr), "");
+    let printed = text(&output.stdout);
+    assert!(printed.contains("2999 sent, 2999 taken in"), "{printed}");
+    assert!(!printed.contains('\x1b'), "{printed}");
 }

@@ -188,7 +188,10 @@ fn fitted(table: &[[String; COLUMNS]], columns: usize) -> Vec<String> {
         }
         kept.retain(|&column| Some(column) != given_up);
     }
-    table.iter().map(|row| joined(row, &kept, &widths)).collect()
+    table
+        .iter()
+        .map(|row| joined(row, &kept, &widths))
+        .collect()
 }
 
 fn joined(row: &[String; COLUMNS], kept: &[usize], widths: &[usize; COLUMNS]) -> String {
@@ -230,7 +233,9 @@ mod tests {
         ] {
             server.facility.publish(setting);
         }
-        let client = Client::connect(&server.address()).await.expect("it listens");
+        let client = Client::connect(&server.address())
+            .await
+            .expect("it listens");
         let mut watch = client.watch(&[]);
         let mut board = Board::default();
         for _ in 0..3 {
