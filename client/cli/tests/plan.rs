@@ -176,7 +176,7 @@ fn the_ladder_is_drawn_within_80_columns() {
             "--max-m",
             "9223372036854775807",
         ][..],
-        &["--max-l", "3", "--max-m", "3"],
+        &["--max-l", "16", "--max-m", "16"],
         &["--largest-prime", "7"],
         &["--power-of-two-m"],
     ] {

@@ -364,7 +364,7 @@ fn a_mistyped_name_is_answered_with_those_that_exist() {
             "no crossing flim; meant may be film",
         ),
         (
-            &["acts", "gramophone"],
+            &["explain", "gramophone"],
             "there is film, hall-to-van or van-to-hall",
         ),
         (

@@ -198,15 +198,59 @@ fn decade(error: f64) -> i32 {
     error.log10().round() as i32
 }
 
-/// `10 %`, `100 ppm`, `1 ppb`, `0.001 ppb`.
+/// `10 %`, `100 ppm`, `1 ppb`, `0.001 ppb`, `1e-13`.
 fn power_of_ten(power: i32) -> String {
     let (unit_power, unit) = match power {
         -3.. => (-2, "%"),
         -6..=-4 => (-6, "ppm"),
-        _ => (-9, "ppb"),
+        -12..=-7 => (-9, "ppb"),
+        _ => return format!("1e{power}"),
     };
     match power - unit_power {
         places @ 0.. => format!("1{:0<1$} {unit}", "", places as usize),
         places => format!("0.{:0>1$} {unit}", "1", places.unsigned_abs() as usize),
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn powers_of_ten_have_the_units_of_offsets() {
+        for (power, said) in [
+            (1, "1000 %"),
+            (-1, "10 %"),
+            (-3, "0.1 %"),
+            (-4, "100 ppm"),
+            (-6, "1 ppm"),
+            (-7, "100 ppb"),
+            (-9, "1 ppb"),
+            (-12, "0.001 ppb"),
+            (-13, "1e-13"),
+        ] {
+            assert_eq!(power_of_ten(power), said);
+        }
+    }
+
+    /// The stair is what trying every ratio finds.
+    #[test]
+    fn the_stair_is_the_least_error_of_all_ratios_up_to_each_size() {
+        use ratewright_ratio::{Bounds, allowed::Allowed};
+        let target = Exact::new(10_007, 9_000);
+        let bounds = Bounds::new(90, 80).expect("bounds");
+        let answer = Allowed::Bounded(bounds).answer(&target);
+        let answer = answer.expect("there is a ratio");
+        let stair = Stair::new(&answer).expect("a stair");
+        for (column, &error) in stair.errors.iter().enumerate() {
+            let up_to = stair.size_up_to(column);
+            let all = (1..=up_to.min(90)).flat_map(|l| (1..=up_to.min(80)).map(move |m| (l, m)));
+            let errors = all.map(|(l, m)| residual(&Fraction::new_raw(l, m), &target).abs());
+            let least = errors.fold(f64::INFINITY, f64::min);
+            assert!(
+                (error - least).abs() <= 1e-12 * least,
+                "column {column}, up to {up_to}: {error} for {least}"
+            );
+        }
     }
 }

@@ -298,7 +298,6 @@ fn show_bound(bound: Exact) -> String {
 fn ladder(out: &mut String, question: &Question, answer: &Answer) {
     out.push_str("\nladder    what a larger filter bank buys\n");
     if let Some(sketch) = sketch::sketch(answer) {
-        out.push('\n');
         out.push_str(&sketch);
         out.push('\n');
     }

@@ -20,13 +20,12 @@ const HEADING: [&str; COLUMNS] = [
     "runs",
     "off by",
     "in effect",
-    "could slip",
     "freshness",
 ];
-const COLUMNS: usize = 7;
+const COLUMNS: usize = 6;
 const RUNS: usize = 2;
 /// Columns that are given up one by one where the terminal is narrow.
-const GIVEN_UP: [usize; 4] = [4, 5, 3, 1];
+const GIVEN_UP: [usize; 3] = [4, 3, 1];
 
 /// The newest of every crossing.
 #[derive(Debug, Default)]
@@ -131,16 +130,12 @@ fn plain(text: String) -> Line {
 
 fn cells(setting: &Setting, freshness: Freshness, now_ns: i64) -> [String; COLUMNS] {
     let until_s = |at_ns: i64| (at_ns - now_ns) as f64 / 1e9;
-    let slip = setting
-        .seconds_to_slip
-        .map(|seconds| until_s(setting.effect_ns) + seconds);
     [
         setting.crossing.to_string(),
         setting.number.to_string(),
         show::realised(&setting.realised),
         show::offset(setting.residual),
         when(until_s(setting.effect_ns)),
-        slip.map_or("not within a day".to_owned(), when),
         fresh(freshness, until_s(setting.expiry_ns)),
     ]
 }
