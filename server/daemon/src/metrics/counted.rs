@@ -65,6 +65,10 @@ pub fn install() {
     });
     describe();
     gauge!(BUILD, "version" => env!("CARGO_PKG_VERSION")).set(1.0);
+    // What may never happen is there all the same: the absence of a series says nothing.
+    gauge!(CONNECTIONS).increment(0.0);
+    counter!(SUPERSEDED).increment(0);
+    counter!(TURNED_AWAY).increment(0);
 }
 
 fn describe() {
