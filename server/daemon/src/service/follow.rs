@@ -1,10 +1,11 @@
 //! The two streams of settings: watch, and follow with the follower's reports.
 
+use futures_util::stream;
 use ratewright_proto::v1::{
     self, follow_settings_request::Message as Heard, follow_settings_response::Message as Said,
 };
 use tokio::sync::mpsc;
-use tokio_stream::wrappers::ReceiverStream;
+use tokio_stream::{StreamExt as _, wrappers::ReceiverStream};
 use tonic::{Status, Streaming};
 
 use super::{Access, Answers, Slot, feed::Feed, leave::Leave};
@@ -14,37 +15,63 @@ use crate::{
     scribe::Promise,
 };
 
-type Sender<T> = mpsc::Sender<Result<T, Status>>;
+/// What a follower is sent. Boxed: a channel has room for many from its beginning, and never uses it.
+type Answer = Box<Result<v1::FollowSettingsResponse, Status>>;
+type Sender = mpsc::Sender<Answer>;
 
-/// Starts a watch. One answer is on its way at most: what is made while a reader is slow
-/// replaces what was made before.
+/// A watch between two answers.
+struct Watching {
+    access: Access,
+    feed: Feed,
+    leave: Leave,
+    _slot: Slot,
+    /// It resumes, and is to hear at once that it is heard.
+    greets: bool,
+    ended: bool,
+}
+
+/// Starts a watch. The transport asks for the next answer when it has room for one, so that what is made
+/// while a reader is slow replaces what was made before. A watch has no task and no queue: there are many.
 pub(super) fn watch(
     access: Access,
-    mut feed: Feed,
+    feed: Feed,
     slot: Slot,
     leave: Leave,
 ) -> Answers<v1::WatchSettingsResponse> {
-    let (sender, answers) = mpsc::channel(1);
-    tokio::spawn(async move {
-        let _slot = slot;
-        if feed.resumes()
-            && greet(&sender, watched(None, access.house.now()))
-                .await
-                .is_err()
-        {
-            return;
+    let watching = Watching {
+        greets: feed.resumes(),
+        access,
+        feed,
+        leave,
+        _slot: slot,
+        ended: false,
+    };
+    Box::pin(stream::unfold(watching, |mut watching| async move {
+        let said = watching.next().await?;
+        Some((said, watching))
+    }))
+}
+
+impl Watching {
+    /// The next answer; none after an error. May be dropped while it waits.
+    async fn next(&mut self) -> Option<Result<v1::WatchSettingsResponse, Status>> {
+        if self.ended {
+            return None;
         }
-        loop {
-            tokio::select! {
-                sent = send_next(&access, &mut feed, &sender, watched) => {
-                    if sent.is_err() { return }
-                }
-                why = leave.due() => return say_goodbye(&sender, why).await,
-                () = sender.closed() => return,
+        if std::mem::take(&mut self.greets) {
+            return Some(Ok(watched(None, self.access.house.now())));
+        }
+        Some(tokio::select! {
+            setting = self.feed.next() => {
+                let setting = Some(setting_to_wire(&setting));
+                Ok(watched(setting, self.access.house.now()))
             }
-        }
-    });
-    Box::pin(ReceiverStream::new(answers))
+            why = self.leave.due() => {
+                self.ended = true;
+                Err(why.into())
+            }
+        })
+    }
 }
 
 fn watched(setting: Option<v1::Setting>, house_ns: i64) -> v1::WatchSettingsResponse {
@@ -72,7 +99,7 @@ pub(super) fn follow(
         let mut reporting = true;
         loop {
             tokio::select! {
-                sent = send_next(&access, &mut feed, &sender, followed) => {
+                sent = send_next(&access, &mut feed, &sender) => {
                     if sent.is_err() { return }
                 }
                 heard = reports.message(), if reporting => match heard {
@@ -81,14 +108,14 @@ pub(super) fn follow(
                     }
                     // The follower has no more to say, but still listens.
                     Ok(None) => reporting = false,
-                    Err(status) => return drop(sender.send(Err(status)).await),
+                    Err(status) => return drop(sender.send(Box::new(Err(status))).await),
                 },
                 why = leave.due() => return say_goodbye(&sender, why).await,
                 () = sender.closed() => return,
             }
         }
     });
-    Box::pin(ReceiverStream::new(answers))
+    Box::pin(ReceiverStream::new(answers).map(|answer| *answer))
 }
 
 fn followed(setting: Option<v1::Setting>, house_ns: i64) -> v1::FollowSettingsResponse {
@@ -99,22 +126,24 @@ fn followed(setting: Option<v1::Setting>, house_ns: i64) -> v1::FollowSettingsRe
 }
 
 /// Tells whoever resumes that it is heard, and the house time: there may be no setting to tell.
-async fn greet<T>(to: &Sender<T>, greeting: T) -> Result<(), mpsc::error::SendError<()>> {
-    to.reserve().await?.send(Ok(greeting));
+async fn greet(
+    to: &Sender,
+    greeting: v1::FollowSettingsResponse,
+) -> Result<(), mpsc::error::SendError<()>> {
+    to.reserve().await?.send(Box::new(Ok(greeting)));
     Ok(())
 }
 
 /// Waits for room first, so that the setting is the newest at the moment of sending.
-async fn send_next<T>(
+async fn send_next(
     access: &Access,
     feed: &mut Feed,
-    to: &Sender<T>,
-    wrap: impl Fn(Option<v1::Setting>, i64) -> T,
+    to: &Sender,
 ) -> Result<(), mpsc::error::SendError<()>> {
     let room = to.reserve().await?;
     let setting = feed.next().await;
     let setting = Some(setting_to_wire(&setting));
-    room.send(Ok(wrap(setting, access.house.now())));
+    room.send(Box::new(Ok(followed(setting, access.house.now()))));
     Ok(())
 }
 
@@ -122,12 +151,12 @@ async fn send_next<T>(
 async fn hear(
     access: &Access,
     heard: v1::FollowSettingsRequest,
-    to: &Sender<v1::FollowSettingsResponse>,
-) -> Result<(), mpsc::error::SendError<Result<v1::FollowSettingsResponse, Status>>> {
+    to: &Sender,
+) -> Result<(), mpsc::error::SendError<Answer>> {
     let violation = match take_in(access, heard).await {
         Ok(()) => return Ok(()),
         Err(Refused::Invalid(violations)) => violations.into_iter().next(),
-        Err(other) => return to.send(Err(other.into())).await,
+        Err(other) => return to.send(Box::new(Err(other.into()))).await,
     };
     let Some(Violation {
         field,
@@ -143,10 +172,10 @@ async fn hear(
         accepted,
     });
     let house_ns = access.house.now();
-    to.send(Ok(v1::FollowSettingsResponse {
+    to.send(Box::new(Ok(v1::FollowSettingsResponse {
         message: Some(refused),
         house_ns,
-    }))
+    })))
     .await
 }
 
@@ -172,7 +201,7 @@ async fn take_in(access: &Access, heard: v1::FollowSettingsRequest) -> Result<()
         .map_err(|refusal| report::refusal_by_engine(&event, refusal).into())
 }
 
-async fn say_goodbye<T>(to: &Sender<T>, why: Refused) {
+async fn say_goodbye(to: &Sender, why: Refused) {
     // Whoever has gone already needs no goodbye.
-    let _ = to.send(Err(why.into())).await;
+    let _ = to.send(Box::new(Err(why.into()))).await;
 }
