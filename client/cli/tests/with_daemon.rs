@@ -1,4 +1,5 @@
 //! The commands that talk to a daemon, against a fake one.
+#![allow(clippy::disallowed_methods, reason = "records are files")]
 
 #[path = "../../tests/fake_server/mod.rs"]
 mod fake_server;
