@@ -33,7 +33,7 @@ id = "host"
 id = "desk"
 rate = 48000
 host = "host"
-oscillator = { drift_ppm = 10 }
+truth = { drift_ppm = 10 }
 [[clock]]
 id = "house"
 rate = 48000

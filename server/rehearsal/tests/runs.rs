@@ -14,13 +14,13 @@ fn quiet(source_ppm: f64, more: &str) -> Script {
         r#"
         [[host]]
         id = "host"
-        oscillator = {{ {quiet} }}
+        truth = {{ {quiet} }}
         link = {{ jitter_us = 2 }}
         [[clock]]
         id = "desk"
         rate = 48000
         host = "host"
-        oscillator = {{ {quiet}, drift_ppm = {source_ppm} }}
+        truth = {{ {quiet}, drift_ppm = {source_ppm} }}
         [[clock]]
         id = "house"
         rate = 48000
@@ -223,7 +223,7 @@ id = "desk"
 rate = 48000
 host = "hosts"
 read = "ear"
-oscillator = { drift_ppm = "fast" }
+truth = { drift_ppm = "fast" }
 [[clock]]
 id = "house"
 rate = 48000
@@ -258,7 +258,7 @@ at_s = 5
         "5: host[0].link.speed is no key here",
         "9: clock[0].host is \"hosts\"; accepted: the id of a [[host]]",
         "10: clock[0].read is \"ear\"; accepted: \"counter\"",
-        "11: clock[0].oscillator.drift_ppm is \"fast\"; accepted: -10000 to 10000 ppm",
+        "11: clock[0].truth.drift_ppm is \"fast\"; accepted: -10000 to 10000 ppm",
         "19: crossing[0].sink is \"nowhere\"; accepted: the id of a [[clock]]",
         "20: crossing[0].follower.block_samples is 0; accepted: 1 to 1000000",
         "22: event[0].what is \"earthquake\"; accepted: \"link-outage\"",

@@ -1,4 +1,4 @@
-//! `[host.oscillator]` and `[clock.oscillator]`: what a clock truly does.
+//! `[host.truth]` and `[clock.truth]`: what a clock truly does.
 
 use core::f64::consts::TAU;
 
@@ -11,7 +11,7 @@ const DAY_S: f64 = 86_400.0;
 
 pub(super) fn oscillator(section: &Section<'_>) -> ClockModel {
     let mut model = ClockModel::crystal();
-    section.section("oscillator", |keys| model = read(keys));
+    section.section("truth", |keys| model = read(keys));
     model
 }
 
