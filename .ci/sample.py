@@ -116,18 +116,29 @@ def main():
 
 def same_on_page():
     """The page says of each clock which state it is in, and when those not locked will be."""
-    with urllib.request.urlopen(PAGE, timeout=5) as page:
-        html = page.read().decode()
-    table = html.split('id="clocks"')[1]
-    rows = [re.sub(r"<[^>]+>", " ", row) for row in table.split("<tr")]
-    for clock in standing()["clocks"]:
-        row = next((row for row in rows if f" {clock['clock']} " in row), None)
-        if row is None:
-            sys.exit(f"the page does not show {clock['clock']}")
-        if clock["estimate"]["state"] not in row:
-            sys.exit(f"the page does not say {clock['estimate']['state']}: {row}")
-        if clock["estimate"]["state"] == "acquiring" and not re.search("in about|cannot", row):
-            sys.exit(f"the page does not say when it will be locked: {row}")
+
+    def differing():
+        with urllib.request.urlopen(PAGE + "clocks", timeout=5) as page:
+            html = page.read().decode()
+        # A row begins with the clock's id.
+        rows = {row.split('"', 1)[0]: re.sub(r"<[^>]+>", " ", row) for row in html.split('id="clock-')[1:]}
+        for clock in standing()["clocks"]:
+            row = rows.get(clock["clock"])
+            if row is None:
+                return f"the page does not show {clock['clock']}"
+            if clock["estimate"]["state"] not in row:
+                return f"the page does not say {clock['estimate']['state']}: {row}"
+            if clock["estimate"]["state"] == "acquiring" and not re.search("in about|cannot", row):
+                return f"the page does not say when it will be locked: {row}"
+        return None
+
+    # A clock may change its state between the two looks.
+    fault = None
+    for _ in range(3):
+        fault = differing()
+        if fault is None:
+            return
+    sys.exit(fault)
 
 
 def settled_or_set():
