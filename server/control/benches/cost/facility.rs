@@ -14,7 +14,7 @@ pub(crate) const CROSSINGS_A_CLOCK: usize = 16;
 /// Readings until the clocks are locked and their noise is learned.
 const WARM_UP: usize = 400;
 /// Settings that a crossing has had when it is weighed: as many as its timeline keeps.
-const SETTINGS: usize = 8;
+const SETTINGS: usize = 5;
 /// Crossings are decided half a second after clocks are looked at.
 const HALF: i64 = SECOND / 2;
 
@@ -59,9 +59,9 @@ fn clock(id: &Id, hz: u64, exact: bool) -> Event {
 }
 
 impl Facility {
-    /// So many clocks that are read, and as many exact ones.
-    pub(crate) fn declare(count: usize) -> Self {
-        let mut facility = Facility {
+    /// Nothing is declared yet of so many clocks that will be read, and as many exact ones.
+    pub(crate) fn new(count: usize) -> Self {
+        Facility {
             engine: Engine::new(1),
             now: 0,
             readings: readings(),
@@ -69,13 +69,16 @@ impl Facility {
             sinks: (0..count).map(|i| id('s', i)).collect(),
             row: 0,
             turn: 0,
-        };
-        for i in 0..count {
-            let (source, sink) = (&facility.sources[i], &facility.sinks[i]);
-            let events = [clock(source, 44_100, false), clock(sink, 48_000, true)];
-            events.iter().for_each(|event| facility.apply(event));
         }
-        facility
+    }
+
+    /// Declares the clocks.
+    pub(crate) fn declare(&mut self) {
+        for i in 0..self.sources.len() {
+            let source = clock(&self.sources[i], 44_100, false);
+            let sink = clock(&self.sinks[i], 48_000, true);
+            [source, sink].iter().for_each(|event| self.apply(event));
+        }
     }
 
     fn apply(&mut self, event: &Event) {
