@@ -4,6 +4,12 @@
 //!
 //! A whole daemon with a store of its own is asked over HTTP, one request after the other on one
 //! connection, as it stands after its start: nothing is measured, so that every clock needs a look.
+#![allow(
+    clippy::disallowed_methods,
+    clippy::disallowed_types,
+    clippy::print_stdout,
+    reason = "it measures: it reads clocks, opens sockets and prints"
+)]
 
 use std::{
     error::Error,
