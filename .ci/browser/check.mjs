@@ -17,10 +17,14 @@ const [origin = "http://127.0.0.1:7421", folder = "artifacts"] = process.argv.sl
 const axe = fs.readFileSync(createRequire(import.meta.url).resolve("axe-core"), "utf8");
 fs.mkdirSync(folder, { recursive: true });
 
-const browser = await puppeteer.launch({ executablePath: "chromium", args: ["--no-sandbox"] });
+const browser = await puppeteer.launch({ executablePath: "/usr/bin/chromium", args: ["--no-sandbox"] });
 const page = await browser.newPage();
 const faults = [];
-page.on("console", (said) => said.type() === "error" && faults.push(`console: ${said.text()}`));
+page.on("console", (said) => {
+  // A question that cannot be planned is answered with a page and status 400, which the browser mentions.
+  const expected = said.text().includes("status of 400") && page.url().includes("nonsense");
+  if (said.type() === "error" && !expected) faults.push(`console: ${said.text()}`);
+});
 page.on("pageerror", (fault) => faults.push(`script: ${fault.message}`));
 page.on("request", (asked) => {
   const url = asked.url();
@@ -32,7 +36,8 @@ const phone = { width: 390, height: 844, isMobile: true, hasTouch: true };
 
 async function open(where) {
   const answer = await page.goto(origin + where, { waitUntil: "load" });
-  assert.ok(answer.status() === 200, `${where}: ${answer.status()}`);
+  const wanted = where.includes("nonsense") ? 400 : 200;
+  assert.equal(answer.status(), wanted, where);
   return where;
 }
 
@@ -96,8 +101,8 @@ async function planned() {
 // Tab through the front page: every link is reached, and it can be seen where one is.
 async function walkedByKeyboard() {
   await open("/");
-  await page.click("#hold");
-  await page.evaluate(() => document.activeElement.blur());
+  // Held still without a mouse, which would be where the keyboard begins.
+  await page.$eval("#hold", (hold) => hold.click());
   const reached = new Set();
   const seen = [];
   for (let i = 0; i < 400; i++) {
