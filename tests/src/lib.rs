@@ -1,11 +1,14 @@
 //! Whole-system tests and outside references.
 //!
-//! The tests stand in `tests/`; this library holds nothing but their shared footing.
+//! The tests stand in `tests/`, longer runs to look at in `examples/`; this library holds what they
+//! share.
 
 #![allow(
     clippy::disallowed_methods,
     reason = "whole systems are started and looked at from outside"
 )]
+
+pub mod chaos;
 
 use std::{
     path::{Path, PathBuf},

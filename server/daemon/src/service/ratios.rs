@@ -7,7 +7,10 @@ use tonic::{Request, Response, Status, Streaming};
 
 use super::{Access, Answers, feed, follow, leave::Leave, paging, plan, slots::Kind};
 use crate::{
-    convert::names::{self, SettingName},
+    convert::{
+        names::{self, SettingName},
+        setting::setting_to_wire,
+    },
     refused::{Refused, Violation},
     store::Recorded,
 };
@@ -31,9 +34,14 @@ impl RatioService for Ratios {
         &self,
         request: Request<v1::GetSettingRequest>,
     ) -> Result<Response<v1::Setting>, Status> {
-        Ok(Response::new(
-            self.recorded(&request.get_ref().name).await?.setting,
-        ))
+        let name = &request.get_ref().name;
+        let SettingName { crossing, numbered } = names::parse_setting("name", name)?;
+        // The newest is on the board. What is older, or of a crossing that is silent or gone, is looked up.
+        let newest = self.0.board.newest_setting(&crossing);
+        if let Some(newest) = newest.filter(|_| numbered.is_none()) {
+            return Ok(Response::new(setting_to_wire(&newest)));
+        }
+        Ok(Response::new(self.recorded(name).await?.setting))
     }
 
     async fn list_settings(
