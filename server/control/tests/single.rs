@@ -5,22 +5,7 @@ mod world;
 use num_rational::Ratio;
 use ratewright_control::{CrossingDeclaration, CrossingState, Realisation, Realised, Reason};
 use ratewright_ratio::Bounds;
-use ratewright_timing::sim::Delay;
-use world::{HOUR, SECOND, World, clock, crossing, crystal, id};
-
-fn desk_into_house(drift: f64, source_hz: u64, declaration: CrossingDeclaration) -> World {
-    let mut world = World::new();
-    world.add_exact("house", 48_000);
-    let delay = Delay::Normal { deviation_s: 1e-6 };
-    world.add(
-        clock("desk", source_hz),
-        crystal(drift, 1e-10),
-        delay,
-        SECOND,
-    );
-    world.cross(declaration);
-    world
-}
+use world::{HOUR, SECOND, World, crossing, desk_into_house, id};
 
 fn single(max: u64, headroom_samples: f64) -> CrossingDeclaration {
     let bounds = Bounds::new(max, max).expect("in range");

@@ -9,8 +9,7 @@ use ratewright_control::{
     explain,
 };
 use ratewright_ratio::{Bounds, Certificate, CertificateError, Lazy, target_from_f64};
-use ratewright_timing::sim::Delay;
-use world::{HOUR, SECOND, World, clock, crossing, crystal, id};
+use world::{HOUR, SECOND, World, crossing, desk_into_house, id};
 
 fn way(realisation: Realisation, bound: u64, headroom_samples: f64) -> CrossingDeclaration {
     CrossingDeclaration {
@@ -19,21 +18,6 @@ fn way(realisation: Realisation, bound: u64, headroom_samples: f64) -> CrossingD
         headroom_samples,
         ..crossing("x", "desk", "house")
     }
-}
-
-/// A desk that is read every second with 1 µs of noise, into an exact house of 48 kHz.
-fn desk(source_hz: u64, drift: f64, declaration: CrossingDeclaration) -> World {
-    let mut world = World::new();
-    world.add_exact("house", 48_000);
-    let delay = Delay::Normal { deviation_s: 1e-6 };
-    world.add(
-        clock("desk", source_hz),
-        crystal(drift, 1e-10),
-        delay,
-        SECOND,
-    );
-    world.cross(declaration);
-    world
 }
 
 fn status(world: &World) -> CrossingStatus {
@@ -67,7 +51,7 @@ fn holds(world: &mut World, headroom: f64) -> usize {
 #[test]
 fn stepping_holds_equal_rates_within_half_a_sample_for_hours() {
     for drift in [5e-6, -37.3e-6] {
-        let mut world = desk(48_000, drift, way(Realisation::Stepping, 1024, 0.5));
+        let mut world = desk_into_house(drift, 48_000, way(Realisation::Stepping, 1024, 0.5));
         let settings = holds(&mut world, 0.5);
         assert!(settings <= 50, "{settings} settings in five hours");
         let newest = status(&world).setting.expect("settings were made");
@@ -98,14 +82,14 @@ fn stepping_holds_equal_rates_within_half_a_sample_for_hours() {
 #[test]
 fn a_short_table_is_out_of_bounds_and_says_how_many_phases_would_do() {
     // Two phases: half a phase and half a phase carried over are half a sample.
-    let mut world = desk(48_000, 5e-6, way(Realisation::Stepping, 2, 0.5));
+    let mut world = desk_into_house(5e-6, 48_000, way(Realisation::Stepping, 2, 0.5));
     world.run_until(HOUR / 2);
     let now = status(&world);
     assert_eq!(now.state, CrossingState::OutOfBounds, "{}", now.reason);
     let needed = now.needed.expect("a longer table would do");
     assert_eq!(needed.max_l(), 3, "{}", now.reason);
     // Eight times as many samples as there are come out of no table of four phases.
-    let mut world = desk(6_000, 5e-6, way(Realisation::Stepping, 4, 4.0));
+    let mut world = desk_into_house(5e-6, 6_000, way(Realisation::Stepping, 4, 4.0));
     world.run_until(HOUR / 2);
     let now = status(&world);
     assert_eq!(now.state, CrossingState::OutOfBounds, "{}", now.reason);
@@ -131,7 +115,7 @@ fn exact_clocks_are_stepped_through_exactly() {
 
 #[test]
 fn lazy_switching_takes_few_changes_and_stays_within_its_swing() {
-    let mut world = desk(48_000, 37.3e-6, way(Realisation::Lazy, 1024, 16.0));
+    let mut world = desk_into_house(37.3e-6, 48_000, way(Realisation::Lazy, 1024, 16.0));
     let settings = holds(&mut world, 16.0);
     assert!(settings <= 20, "{settings} settings in five hours");
     let newest = status(&world).setting.expect("settings were made");
@@ -158,7 +142,7 @@ fn lazy_switching_takes_few_changes_and_stays_within_its_swing() {
 #[test]
 fn a_lazy_swing_is_at_least_what_the_pair_needs() {
     // A quarter of one sample is less than the half that a block beside 1/1 takes.
-    let mut world = desk(48_000, 37.3e-6, way(Realisation::Lazy, 1024, 1.0));
+    let mut world = desk_into_house(37.3e-6, 48_000, way(Realisation::Lazy, 1024, 1.0));
     world.run_until(HOUR);
     let newest = status(&world).setting.expect("settings were made");
     let Realised::Lazy {
@@ -174,7 +158,7 @@ fn a_lazy_swing_is_at_least_what_the_pair_needs() {
 
 #[test]
 fn a_setting_does_not_verify_for_another_table_or_with_another_proof() {
-    let mut world = desk(48_000, 5e-6, way(Realisation::Stepping, 1024, 0.5));
+    let mut world = desk_into_house(5e-6, 48_000, way(Realisation::Stepping, 1024, 0.5));
     world.run_until(60 * SECOND);
     let setting = status(&world).setting.expect("settings were made");
     let other = Bounds::new(512, 1024).expect("in range");
@@ -259,7 +243,7 @@ fn what_is_run_errs_by_no_more_than_the_tube_leaves_for_it() {
         (Realisation::Lazy, 1024, 16.0, 4.0013),
         (Realisation::Cadence, 1024, 4.0, 0.5013),
     ] {
-        let mut world = desk(48_000, 37.3e-6, way(realisation, bound, headroom));
+        let mut world = desk_into_house(37.3e-6, 48_000, way(realisation, bound, headroom));
         world.run_until(3 * HOUR);
         let settings = &world.tally("x").settings;
         assert!(settings.len() > 8, "{} settings", settings.len());
@@ -278,7 +262,7 @@ fn what_is_run_errs_by_no_more_than_the_tube_leaves_for_it() {
 #[test]
 fn a_single_ratio_keeps_what_a_running_error_left_to_it() {
     // A cadence beside 1/1 may be half a sample off when 1/1 takes over, and stay so.
-    let mut world = desk(48_000, 37.3e-6, way(Realisation::Cadence, 1024, 4.0));
+    let mut world = desk_into_house(37.3e-6, 48_000, way(Realisation::Cadence, 1024, 4.0));
     world.run_until(HOUR);
     let before = status(&world).phase_deviation_samples;
     let single = way(Realisation::Single, 1024, 4.0);

@@ -37,6 +37,21 @@ pub fn exact_clock(name: &str, hz: u64) -> ClockDeclaration {
     }
 }
 
+/// A desk that is read every second with 1 µs of noise, into an exact house of 48 kHz.
+pub fn desk_into_house(drift: f64, source_hz: u64, declaration: CrossingDeclaration) -> World {
+    let mut world = World::new();
+    world.add_exact("house", 48_000);
+    let delay = Delay::Normal { deviation_s: 1e-6 };
+    world.add(
+        clock("desk", source_hz),
+        crystal(drift, 1e-10),
+        delay,
+        SECOND,
+    );
+    world.cross(declaration);
+    world
+}
+
 pub fn crossing(name: &str, source: &str, sink: &str) -> CrossingDeclaration {
     let bounds = Bounds::new(1024, 1024).expect("in range");
     CrossingDeclaration {
