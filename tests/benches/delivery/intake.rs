@@ -20,9 +20,10 @@ const ROUNDS: usize = 7;
 const AHEAD: usize = 16;
 const NS_PER_S: i64 = 1_000_000_000;
 /// Readings are of times long past, because they come faster than time goes by: a day of them takes less
-/// than a second. Each round has its own stretch.
+/// than a second. Each round has its own stretch, and all of them end before now: readings ahead of house time are
+/// refused.
 const FROM_S: i64 = 1_700_000_000;
-const STRETCH_S: i64 = 2_000_000;
+const STRETCH_S: i64 = 1_000_000;
 
 /// No level of a receipt.
 const NO_RECEIPT: i32 = 99;
