@@ -216,7 +216,7 @@ impl LinkRecord {
     /// The link for people; whether it counts is for its clock to say.
     pub(crate) fn view(&self, now: HouseNs) -> LinkView {
         let history = self.link.history();
-        let in_house_time = |at_ns: i64| at_ns.saturating_sub(self.offset_ns);
+        let in_house_time = |at_ns: i64| at_ns.saturating_sub(self.ahead_ns());
         LinkView {
             reference: self.reference.clone(),
             probe: self.probe.clone(),
@@ -233,7 +233,16 @@ impl LinkRecord {
 
     /// The estimate at a house time, which is mapped to the reference's.
     pub(crate) fn estimate(&self, now: HouseNs) -> Estimate {
-        self.link.estimate(now.saturating_add(self.offset_ns))
+        self.link.estimate(now.saturating_add(self.ahead_ns()))
+    }
+
+    /// Reference time minus house time. A time of the house that comes late is still that time,
+    /// however long it was under way; one that has not come yet is of a scale that is ahead.
+    fn ahead_ns(&self) -> i64 {
+        match self.reference {
+            Reference::House => self.offset_ns.max(0),
+            Reference::Clock(_) => self.offset_ns,
+        }
     }
 }
 

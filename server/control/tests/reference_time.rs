@@ -138,6 +138,28 @@ fn a_stretch_sent_at_once_may_run_ahead_of_house_time() {
 }
 
 #[test]
+fn house_times_that_come_late_do_not_turn_the_clock_back() {
+    let mut desk = Desk::new(Reference::House);
+    desk.run(300, 0);
+    let before = desk.estimate().estimate;
+    // A minute of readings is kept back, and comes all at once.
+    let kept_back = 301..=360;
+    desk.now = 360 * SECOND;
+    for second in kept_back {
+        desk.read(counter(second * 1_000_005, second as i64 * SECOND))
+            .expect("late, but its own time has come");
+        let estimate = desk.estimate().estimate;
+        assert_eq!(estimate.as_of_ns, desk.now, "after second {second}");
+        // 5 ppm of a minute are 300 µs.
+        let gained_ns = estimate.phase_ns - before.phase_ns;
+        assert!(
+            (gained_ns - 300e3).abs() < 5e3,
+            "after second {second}: {gained_ns} ns"
+        );
+    }
+}
+
+#[test]
 fn a_wrong_house_time_within_the_allowance_is_as_if_it_had_not_come() {
     let mut desk = Desk::new(Reference::House);
     desk.run(300, 0);
