@@ -22,12 +22,8 @@ pub(crate) mod standing;
 /// deviations only cost changes (`examples/hold_table`).
 pub(crate) const LASTING_DEVIATIONS: f64 = 2.25;
 pub(crate) const PASSING_DEVIATIONS: f64 = 2.0;
-/// Standard deviations that keeping an inward-moving phase leaves room for.
-pub(crate) const INWARD_DEVIATIONS: f64 = 2.5;
 /// The tube: the share of the headroom that planning may use.
 pub(crate) const TUBE: f64 = 0.8;
-/// The share of the headroom within which a phase that moves inward is let be.
-pub(crate) const INWARD_TUBE: f64 = 0.9;
 /// Recovery may take at least so long, seconds.
 pub(crate) const RECOVERY_S: f64 = 120.0;
 /// How far ahead a hold is planned, seconds.
@@ -48,13 +44,16 @@ pub(crate) fn pitch_limit(declaration: &CrossingDeclaration, sink_hz: f64) -> f6
     declaration.pitch_limit_ppm * 1e-6 * sink_hz
 }
 
+/// Seconds that the recovery of so many samples may take.
+pub(crate) fn recovery_s(excess: f64, limits: &Limits) -> f64 {
+    RECOVERY_S.max(excess / (0.8 * limits.pitch))
+}
+
 /// The limits of the phase error that planning and keeping go by, sink samples and samples/s.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub(crate) struct Limits {
     /// The tube, less what is run errs by itself.
     pub(crate) tube: f64,
-    /// The wider tube for a phase that moves inward, less the same.
-    pub(crate) inward: f64,
     /// Velocity that recovery may have.
     pub(crate) pitch: f64,
 }
@@ -71,7 +70,6 @@ impl Limits {
         };
         Limits {
             tube: TUBE * headroom - error,
-            inward: INWARD_TUBE * headroom - error,
             pitch: pitch_limit(declaration, sink_hz),
         }
     }

@@ -245,12 +245,8 @@ impl CrossingRecord {
         let limits = view.limits(error);
         let block_s = block_inputs(&newest.realised) as f64 * view.outlook.target.value
             / view.outlook.sink_hz;
-        if may_stay(
-            view.outlook,
-            &limits,
-            view.velocity,
-            view.step_s + view.lead_s + block_s,
-        ) {
+        let until_s = view.step_s + view.lead_s + block_s;
+        if may_stay(view.outlook, &limits, view.velocity, until_s) {
             return Some(view.standing(view.velocity, error));
         }
         view.is_as_good(error)

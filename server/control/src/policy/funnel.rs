@@ -1,7 +1,7 @@
 //! The funnel: which velocities keep the phase error's band in the tube, for how long.
 
 use crate::policy::outlook::Outlook;
-use crate::policy::{Limits, PLAN_HORIZON_S, RECOVERY_S};
+use crate::policy::{Limits, PLAN_HORIZON_S, recovery_s};
 
 /// Each step of the hold is so much longer than the one before.
 const GROWTH: f64 = 1.02;
@@ -53,7 +53,7 @@ pub(crate) fn funnel(
         phase,
         excess,
     } = entry;
-    let recovery_s = RECOVERY_S.max(excess / (0.8 * limits.pitch));
+    let recovery_s = recovery_s(excess, limits);
     let (mut low, mut high) = (-limits.pitch, limits.pitch);
     let mut spans = Vec::new();
     let mut hold_s = step_s.min(2.0);
