@@ -6,12 +6,15 @@
 //!
 //! **Variance.** That of both passages, plus an offset's: what reports and blocks leave open, a
 //! random walk of [`WALK`], and what occupancy could not say better; and that of a running error
-//! which a single ratio has taken over (uniform within its bound: a third of its square).
+//! which a single ratio has taken over (uniform within its bound: a third of its square). Where a
+//! follower reports its level, less what that tells of the clocks' present phases
+//! ([`crate::heard`]).
 
 use serde::{Deserialize, Serialize};
 
 use crate::HouseNs;
 use crate::clocks::Traced;
+use crate::heard::{Heard, Moments};
 use crate::passage::Passage;
 use crate::signs::{phase_velocity, true_rate};
 use crate::timeline::{Entry, Stretch, Timeline};
@@ -41,8 +44,20 @@ pub(crate) struct Ledger {
     left_variance: f64,
     source: Passage,
     sink: Passage,
+    /// What levels have told of the clocks' present phases, if there were any.
+    heard: Option<Box<Heard>>,
     /// Occupancies in a row that were at odds with the account, and to which side.
     at_odds: i32,
+}
+
+/// What a follower has measured of its buffer.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub(crate) struct Level {
+    /// From the centre.
+    pub(crate) samples: f64,
+    pub(crate) variance: f64,
+    /// How long ago it was.
+    pub(crate) age_s: f64,
 }
 
 /// How an occupancy went in.
@@ -70,19 +85,39 @@ impl Ledger {
             left_variance: 0.0,
             source: Passage::begin(0),
             sink: Passage::begin(0),
+            heard: None,
             at_odds: 0,
         }
     }
 
     /// Phase error, sink samples.
     pub(crate) fn phase_samples(&self) -> f64 {
-        self.phase_samples
+        let heard = self.heard.as_ref();
+        self.phase_samples + heard.map_or(0.0, |heard| heard.phase)
     }
 
     /// Variance of the phase error, samples².
     pub(crate) fn variance(&self) -> f64 {
-        let passages = self.source.variance_ns2() + self.sink.variance_ns2();
-        self.offset_variance + self.left_variance + self.samples2(passages)
+        self.lasting_variance() + self.passing_variance()
+    }
+
+    /// The part of it that later readings take away, samples².
+    fn passing_variance(&self) -> f64 {
+        let passages = self.source.passing_variance_ns2() + self.sink.passing_variance_ns2();
+        let heard = self.heard.as_ref();
+        heard.map_or_else(|| self.samples2(passages), |heard| heard.left.phase)
+    }
+
+    /// What levels have told of the clocks' present phases.
+    pub(crate) fn heard(&self) -> Option<&Heard> {
+        self.heard.as_deref()
+    }
+
+    /// What was heard was of phases that count no more: it is part of the account from now on.
+    fn keep_heard(&mut self) {
+        if let Some(heard) = self.heard.take() {
+            self.phase_samples += heard.phase;
+        }
     }
 
     /// The part of it that no later reading takes away, samples².
@@ -115,12 +150,14 @@ impl Ledger {
         self.left_variance = 0.0;
         self.source = Passage::begin(now);
         self.sink = Passage::begin(now);
+        self.heard = None;
         self.at_odds = 0;
     }
 
     /// The stream comes from another source of the same nominal rate from `now` on, to which the
     /// account is advanced. It goes on, with what is uncertain of the source so far.
     pub(crate) fn hand_over(&mut self, now: HouseNs) {
+        self.keep_heard();
         self.source.hand_over(now);
     }
 
@@ -142,9 +179,13 @@ impl Ledger {
         if now <= at_ns {
             return;
         }
+        let legs = (self.source.begins_ns(), self.sink.begins_ns());
         // A revision of the past counts as gained just now: the ratios differ by some ppm at most.
         let source_ns = self.source.advance(at_ns, now, source);
         let sink_ns = self.sink.advance(at_ns, now, sink);
+        if legs != (self.source.begins_ns(), self.sink.begins_ns()) {
+            self.keep_heard();
+        }
         let whole_ns = (now - at_ns) as f64;
         for stretch in self.timeline.stretches(at_ns, now) {
             let part_ns = (stretch.to_ns - stretch.from_ns) as f64;
@@ -154,6 +195,10 @@ impl Ledger {
             self.phase_samples += (made - taken) * 1e-9;
         }
         self.offset_variance += WALK * whole_ns * 1e-9;
+        if let Some(heard) = &mut self.heard {
+            let moments = Moments::of(source, sink, self.sink_hz);
+            heard.advance(whole_ns * 1e-9, moments, Heard::in_gap(source, sink));
+        }
         self.at_ns = Some(now);
     }
 
@@ -169,11 +214,9 @@ impl Ledger {
     /// Growth of the phase error under a ratio, sink samples a second.
     pub(crate) fn velocity(&self, ratio: f64, source: &Traced, sink: &Traced) -> f64 {
         let source_hz = true_rate(self.source_hz, source.estimate.drift);
-        phase_velocity(
-            ratio,
-            source_hz,
-            true_rate(self.sink_hz, sink.estimate.drift),
-        )
+        let sink_hz = true_rate(self.sink_hz, sink.estimate.drift);
+        let heard = self.heard.as_ref().map_or(0.0, |heard| heard.velocity);
+        phase_velocity(ratio, source_hz, sink_hz) + heard
     }
 
     /// Adds a setting to the timeline.
@@ -211,23 +254,25 @@ impl Ledger {
         self.phase_samples += gained(&self.timeline) - gained(&before);
     }
 
-    /// A follower has measured its buffer: `level` samples, `age_s` seconds ago, with this
-    /// variance. The account must be advanced to now, at which φ grows with `velocity`.
+    /// A follower has measured its buffer. The account must be advanced to now, at which the
+    /// clocks' estimates are these. Nothing is levelled before the stream begins.
     ///
-    /// A scalar Kalman correction: with V the lasting variance and W that of the clocks' present
-    /// phases, the gain is V/(V + W + R), and V shrinks by one minus that.
+    /// A Kalman correction: with V the lasting variance, Q what is left of that of the clocks'
+    /// present phases, and R the level's, V is corrected with the gain V/(V + Q + R) and Q with
+    /// Q/(V + Q + R).
     pub(crate) fn level(
         &mut self,
-        level: f64,
-        variance: f64,
-        age_s: f64,
-        velocity: f64,
-    ) -> Levelled {
-        let innovation = level - (self.phase_samples - velocity * age_s);
-        let lasting = self.lasting_variance();
-        let whole = self.variance() + variance;
+        level: Level,
+        source: &Traced,
+        sink: &Traced,
+    ) -> Option<Levelled> {
+        let ratio = self.timeline.ratio_at(self.at_ns?)?;
+        let velocity = self.velocity(ratio, source, sink);
+        let innovation = level.samples - (self.phase_samples() - velocity * level.age_s);
+        let (lasting, passing) = (self.lasting_variance(), self.passing_variance());
+        let whole = lasting + passing + level.variance;
         if innovation.abs() > AT_ODDS * whole.sqrt() {
-            return self.at_odds(innovation, variance);
+            return Some(self.at_odds(innovation, level.variance));
         }
         let gain = lasting / whole;
         self.phase_samples += gain * innovation;
@@ -235,8 +280,11 @@ impl Ledger {
         self.left_variance *= 1.0 - gain;
         self.source.sharpen(1.0 - gain);
         self.sink.sharpen(1.0 - gain);
+        let begun = || Box::new(Heard::begin(Moments::of(source, sink, self.sink_hz)));
+        let heard = self.heard.get_or_insert_with(begun);
+        heard.correct(innovation, whole);
         self.at_odds = 0;
-        Levelled::Corrected
+        Some(Levelled::Corrected)
     }
 
     fn at_odds(&mut self, innovation: f64, variance: f64) -> Levelled {
@@ -377,6 +425,22 @@ mod tests {
         );
     }
 
+    /// A level measured now of an account that was advanced to `now` between a clock of 1 µs and a
+    /// still one.
+    fn levelled(
+        ledger: &mut Ledger,
+        samples: f64,
+        variance: f64,
+        now: HouseNs,
+    ) -> Option<Levelled> {
+        let level = Level {
+            samples,
+            variance,
+            age_s: 0.0,
+        };
+        ledger.level(level, &clock(now, 0.0, 0.0, 1000.0), &still(now))
+    }
+
     #[test]
     fn occupancy_weighs_by_the_variances() {
         let mut ledger = account();
@@ -386,14 +450,14 @@ mod tests {
         let (phase, variance) = (ledger.phase_samples(), ledger.variance());
         let lasting = variance - 0.048 * 0.048;
         let noise = 0.01;
-        assert_eq!(
-            ledger.level(phase + 0.1, noise, 0.0, 0.0),
-            Levelled::Corrected
-        );
-        let gain = lasting / (variance + noise);
+        let taken = levelled(&mut ledger, phase + 0.1, noise, now);
+        assert_eq!(taken, Some(Levelled::Corrected));
+        // What lasts and what passes are both corrected, each by its share.
+        let gain = variance / (variance + noise);
         assert!((ledger.phase_samples() - phase - gain * 0.1).abs() < 1e-12);
-        let left = ledger.variance() - 0.048 * 0.048;
-        assert!((left - (1.0 - gain) * lasting).abs() < 1e-12);
+        let left = |part: f64| part * (1.0 - part / (variance + noise));
+        assert!((ledger.lasting_variance() - left(lasting)).abs() < 1e-12);
+        assert!((ledger.variance() - left(lasting) - left(0.048 * 0.048)).abs() < 1e-12);
     }
 
     #[test]
@@ -401,24 +465,27 @@ mod tests {
         let mut ledger = account();
         ledger.advance(SECOND, &clock(SECOND, 0.0, 0.0, 1000.0), &still(SECOND));
         let phase = ledger.phase_samples();
-        // Ten seconds ago, at 0.5 samples a second, it was five samples lower: no news.
-        ledger.level(phase - 5.0, 0.01, 10.0, 0.5);
-        assert!((ledger.phase_samples() - phase).abs() < 1e-12);
+        // Ten seconds ago it was lower by what it has gained since: no news.
+        let gains = 44_100.0 * 160.0 / 147.0 * 1e-5;
+        let level = Level {
+            samples: phase - 10.0 * gains,
+            variance: 0.01,
+            age_s: 10.0,
+        };
+        ledger.level(level, &clock(SECOND, 1e-5, 0.0, 1000.0), &still(SECOND));
+        assert!((ledger.phase_samples() - phase).abs() < 1e-9);
     }
 
     #[test]
     fn three_levels_at_odds_mean_that_the_buffer_was_moved() {
         let mut ledger = account();
         ledger.advance(SECOND, &clock(SECOND, 0.0, 0.0, 1000.0), &still(SECOND));
-        assert_eq!(ledger.level(7.0, 0.01, 0.0, 0.0), Levelled::SetAside);
-        assert_eq!(
-            ledger.level(-7.0, 0.01, 0.0, 0.0),
-            Levelled::SetAside,
-            "another side"
-        );
-        assert_eq!(ledger.level(7.0, 0.01, 0.0, 0.0), Levelled::SetAside);
-        assert_eq!(ledger.level(7.0, 0.01, 0.0, 0.0), Levelled::SetAside);
-        assert_eq!(ledger.level(7.0, 0.01, 0.0, 0.0), Levelled::Moved);
+        let mut level = |samples: f64| levelled(&mut ledger, samples, 0.01, SECOND);
+        // One to the other side begins the count anew.
+        for samples in [7.0, -7.0, 7.0, 7.0] {
+            assert_eq!(level(samples), Some(Levelled::SetAside));
+        }
+        assert_eq!(level(7.0), Some(Levelled::Moved));
         assert!((ledger.phase_samples() - 7.0).abs() < 1e-12);
     }
 }

@@ -25,6 +25,7 @@ mod event;
 mod explain;
 mod fault;
 mod hand;
+mod heard;
 mod id;
 mod inspect;
 mod intake;
@@ -64,7 +65,7 @@ pub use status::{ClockEstimate, ClockFault, CrossingState, CrossingStatus, Pin};
 pub type HouseNs = i64;
 
 /// Version of the engine: the same journal replays to the same bytes within one version only.
-pub const ENGINE_VERSION: u32 = 2;
+pub const ENGINE_VERSION: u32 = 3;
 
 /// How far ahead a slip is forecast, seconds.
 pub const SLIP_HORIZON_S: f64 = 86_400.0;

@@ -149,6 +149,16 @@ impl Passage {
         self.lasting_variance_ns2() + self.phase_variance_ns2
     }
 
+    /// The part of the variance that later readings take away, ns².
+    pub(crate) fn passing_variance_ns2(&self) -> f64 {
+        self.phase_variance_ns2
+    }
+
+    /// Beginning of the open leg.
+    pub(crate) fn begins_ns(&self) -> HouseNs {
+        self.from_ns
+    }
+
     /// The part of the variance that later readings do not take away, ns².
     pub(crate) fn lasting_variance_ns2(&self) -> f64 {
         self.closed_variance_ns2 + self.entry_variance_ns2 + self.doubt_variance_ns2()

@@ -1,7 +1,7 @@
 //! What followers report: when a setting took effect, and how full the buffer is.
 
 use crate::engine::Engine;
-use crate::ledger::Levelled;
+use crate::ledger::{Level, Levelled};
 use crate::record::Ends;
 use crate::timeline::KEPT;
 use crate::{Effects, HouseNs, Id, Refusal, Transition};
@@ -108,16 +108,13 @@ impl Engine {
             .get_mut(crossing)
             .expect("its ends were found");
         record.ledger.advance(now, &ends.source, &ends.sink);
-        let Some(ratio) = record.ledger.timeline.ratio_at(now) else {
-            return Ok(());
+        let taken = Level {
+            samples: level,
+            variance: deviation * deviation,
+            age_s: (now - house_ns) as f64 * 1e-9,
         };
-        let velocity = record.ledger.velocity(ratio, &ends.source, &ends.sink);
-        let age_s = (now - house_ns) as f64 * 1e-9;
-        if record
-            .ledger
-            .level(level, deviation * deviation, age_s, velocity)
-            == Levelled::Moved
-        {
+        let levelled = record.ledger.level(taken, &ends.source, &ends.sink);
+        if levelled == Some(Levelled::Moved) {
             effects.transitions.push(Transition::Centred {
                 crossing: crossing.clone(),
                 phase_error_samples: record.ledger.phase_samples(),

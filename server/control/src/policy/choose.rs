@@ -71,6 +71,7 @@ pub(crate) fn choose(view: &View<'_>) -> Choice {
     let spans = funnel(view.outlook, &limits, entry, view.step_s);
     if let Some((span, allowed)) = view.longest(&spans)
         && let Some(way) = allowed.single(&view.declaration.bounds)
+        && !view.is_off()
     {
         return view.held(way, &allowed, span, entry);
     }
@@ -150,6 +151,12 @@ impl View<'_> {
         Choice::without_room(way, Standing::out_of_bounds(reason, needed))
     }
 
+    /// True if the running error of what is in force may fill the tube: a single ratio would keep it,
+    /// and what makes its ratio on average brings it within its own.
+    fn is_off(&self) -> bool {
+        self.running_error >= self.limits(0.0).tube
+    }
+
     /// What makes the wanted ratio on average, whose own error narrows the tube.
     fn on_average(&self) -> Choice {
         let View { declaration, .. } = self;
@@ -167,7 +174,11 @@ impl View<'_> {
                 let by_itself = allowed
                     .single(&declaration.bounds)
                     .filter(|_| declaration.realisation != Realisation::Stepping);
-                let way = by_itself.unwrap_or_else(|| realise(allowed.simplest, declaration));
+                let way = match by_itself {
+                    Some(_) if self.is_off() => realise(allowed.finer(), declaration),
+                    Some(way) => way,
+                    None => realise(allowed.simplest, declaration),
+                };
                 self.held(way, &allowed, span, entry)
             }
             None => self.least_bad(limits),

@@ -3,7 +3,8 @@
 use ratewright_ratio::Exact;
 use ratewright_timing::Estimate;
 
-use crate::clocks::{PHASE_DRIFT_CORRELATION, Traced};
+use crate::clocks::Traced;
+use crate::heard::Moments;
 use crate::ledger::Ledger;
 use crate::policy::{LASTING_DEVIATIONS, PASSING_DEVIATIONS};
 use crate::signs;
@@ -26,6 +27,10 @@ pub(crate) struct Outlook<'a> {
     clocks: [&'a Estimate; 2],
     /// Covariance of phase and velocity, samples²/s.
     covariance: f64,
+    /// What levels have told of the velocity, samples/s, and by how much they have made it more
+    /// certain, samples²/s².
+    heard_velocity: f64,
+    heard_variance: f64,
 }
 
 impl<'a> Outlook<'a> {
@@ -38,13 +43,8 @@ impl<'a> Outlook<'a> {
     ) -> Self {
         let clocks = [&source.estimate, &sink.estimate];
         let sink_hz = signs::true_rate(target.nominal_sink_hz, sink.estimate.drift);
-        let covariance = [source, sink]
-            .into_iter()
-            .filter(|clock| clock.measured)
-            .map(|Traced { estimate: e, .. }| {
-                PHASE_DRIFT_CORRELATION * e.deviation * e.phase_deviation_ns * 1e-9
-            })
-            .sum::<f64>();
+        let moments = Moments::of(source, sink, target.nominal_sink_hz);
+        let left = ledger.heard().map_or(moments, |heard| heard.left);
         Outlook {
             sink_hz,
             phase: ledger.phase_samples(),
@@ -52,19 +52,21 @@ impl<'a> Outlook<'a> {
             lasting_variance: ledger.lasting_variance(),
             acceleration: -sink_hz * (clocks[1].drift_rate_per_s - clocks[0].drift_rate_per_s),
             clocks,
-            covariance: covariance * sink_hz * sink_hz,
+            covariance: left.covariance,
+            heard_velocity: ledger.heard().map_or(0.0, |heard| heard.velocity),
+            heard_variance: moments.velocity - left.velocity,
             target,
         }
     }
 
     /// Velocity of the phase error under a ratio, samples/s.
     pub(crate) fn velocity(&self, ratio: f64) -> f64 {
-        self.sink_hz * signs::residual(ratio, self.target.value)
+        self.sink_hz * signs::residual(ratio, self.target.value) + self.heard_velocity
     }
 
     /// The ratio that gives the phase error a velocity, samples/s.
     pub(crate) fn ratio(&self, velocity: f64) -> f64 {
-        self.target.value * (1.0 + velocity / self.sink_hz)
+        self.target.value * (1.0 + (velocity - self.heard_velocity) / self.sink_hz)
     }
 
     /// Phase error in `tau_s` seconds, if it has `phase` at first and the velocity `velocity`.
@@ -81,7 +83,9 @@ impl<'a> Outlook<'a> {
             .map(|clock| clock.predict_variance(tau_s))
             .sum();
         let of_drifts = self.sink_hz * self.sink_hz * growth;
-        (self.phase_variance + 2.0 * self.covariance * tau_s + of_drifts).sqrt()
+        let of_velocity = (of_drifts - self.heard_variance * tau_s * tau_s).max(0.0);
+        let both = 2.0 * self.covariance * tau_s;
+        (self.phase_variance + both + of_velocity).max(0.0).sqrt()
     }
 
     /// What planning and keeping leave room for, `tau_s` seconds from now.
@@ -96,7 +100,8 @@ impl<'a> Outlook<'a> {
     /// Standard deviation of the velocity now, samples/s.
     pub(crate) fn velocity_deviation(&self) -> f64 {
         let variance: f64 = self.clocks.iter().map(|c| c.deviation * c.deviation).sum();
-        self.sink_hz * variance.sqrt()
+        let of_drifts = self.sink_hz * self.sink_hz * variance;
+        (of_drifts - self.heard_variance).max(0.0).sqrt()
     }
 
     /// The target, exactly.

@@ -75,6 +75,11 @@ impl Allowed {
         Bounds::new(*self.simplest.numer(), *self.simplest.denom()).ok()
     }
 
+    /// A fraction from the middle of it that no bounds of a resampler allow.
+    pub(crate) fn finer(&self) -> Fraction {
+        nearest_virtual((as_double(&self.low) + as_double(&self.high)) / 2.0)
+    }
+
     /// The simplest fraction itself, if the bounds allow it.
     pub(crate) fn single(&self, bounds: &Bounds) -> Option<Way> {
         bounds.allow(&self.simplest).then_some(Way {
