@@ -30,6 +30,9 @@ pub(crate) const RECOVERY_S: f64 = 120.0;
 pub(crate) const PLAN_HORIZON_S: f64 = 40_000.0;
 /// Of the longest possible hold, the share that is planned for, to the gain of simplicity.
 pub(crate) const HOLD_SHARE: f64 = 0.95;
+/// Of a velocity's standard deviation, the share that a ratio may be off without being any worse:
+/// it adds half a per cent to the uncertainty.
+pub(crate) const SAID_NOTHING: f64 = 0.1;
 /// Largest denominator of a virtual rate.
 pub(crate) const MAX_VIRTUAL: u64 = 1 << 31;
 /// The share of the headroom that the running error of lazy switching may take: each hold of one

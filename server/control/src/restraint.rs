@@ -134,7 +134,7 @@ impl CrossingRecord {
             return standing;
         }
         let reason = format!(
-            "the phase error of {:.3} samples is about to leave the tube",
+            "the phase error of {:.3} samples is about to leave what planning may use of the headroom",
             outlook.phase
         );
         Standing::new(CrossingState::Degraded, reason)

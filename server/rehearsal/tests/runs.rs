@@ -42,6 +42,26 @@ fn played(script: &Script, length_s: f64) -> Report {
     run.report()
 }
 
+/// A crossing that switches lazily spends a share of its headroom on the swing. It is begun with the
+/// ratio of the nominal rates, 12 ppm off, so the phase error runs outward while the clock is learned.
+#[test]
+fn lazy_switching_has_room_for_its_swing_from_the_beginning() {
+    for (bounds, seed) in [("512", 1), ("512", 2), ("1024", 3)] {
+        let more = format!(
+            r#"max_l = {bounds}
+            max_m = {bounds}
+            realisation = "lazy""#
+        );
+        let mut script = quiet(12.0, &more);
+        script.seed = seed;
+        let report = played(&script, 7_200.0);
+        let line = &report.crossings[0];
+        assert_eq!(line.slips, 0, "{line:?}");
+        assert!(line.worst_samples <= 48.0, "{line:?}");
+        assert!(line.settings < 30, "{line:?}");
+    }
+}
+
 #[test]
 fn the_same_seed_gives_the_same_report_however_it_is_stepped() {
     let Script { plan, seed, .. } = parse(EXAMPLE).unwrap();

@@ -5,10 +5,11 @@ use ratewright_ratio::Fraction;
 use crate::policy::funnel::{Entry, Span, funnel};
 use crate::policy::outlook::Outlook;
 use crate::policy::realise::{
-    Allowed, Way, allowed, error_of, nearest_single, nearest_virtual, own_error, realise,
+    Allowed, Way, allowed, error_of, full_swing, nearest_single, nearest_virtual, own_error,
+    realise,
 };
 use crate::policy::standing::Standing;
-use crate::policy::{HOLD_SHARE, Limits};
+use crate::policy::{HOLD_SHARE, Limits, SAID_NOTHING};
 use crate::timeline::as_double;
 use crate::{CrossingDeclaration, CrossingState, Realisation, Realised};
 
@@ -92,12 +93,42 @@ pub(crate) fn choose_nominal(view: &View<'_>, standing: Standing) -> Choice {
         (Ok(numer), Ok(denom)) => Fraction::new(numer, denom),
         _ => nearest_virtual(view.outlook.target.value),
     };
-    Choice::without_room(realise(wanted, view.declaration), standing)
+    Choice::without_room(view.realise(wanted), standing)
 }
 
 impl View<'_> {
+    /// The limits under what errs by up to `own_error` samples itself. A single ratio that lazy
+    /// switching may have to follow leaves room for its swing.
     pub(crate) fn limits(&self, own_error: f64) -> Limits {
-        Limits::new(self.declaration, own_error, self.outlook.sink_hz)
+        let to_come = match self.declaration.realisation {
+            Realisation::Lazy => full_swing(self.declaration),
+            _ => 0.0,
+        };
+        Limits::new(
+            self.declaration,
+            own_error.max(to_come),
+            self.outlook.sink_hz,
+        )
+    }
+
+    /// The limits if nothing that is run errs by itself.
+    pub(crate) fn bare_limits(&self) -> Limits {
+        Limits::new(self.declaration, 0.0, self.outlook.sink_hz)
+    }
+
+    /// What is wanted, as the resampler can make it.
+    fn realise(&self, wanted: Fraction) -> Way {
+        realise(wanted, self.declaration, self.swing())
+    }
+
+    /// How far lazy switching may swing: no farther than the headroom leaves beside the band of the
+    /// phase error when it begins.
+    fn swing(&self) -> f64 {
+        let full = full_swing(self.declaration);
+        let outlook = self.outlook;
+        let phase = outlook.extrapolate(outlook.phase, self.velocity, self.lead_s);
+        let band = phase.abs() + outlook.margin(self.lead_s);
+        full.min((self.declaration.headroom_samples - band).max(0.0))
     }
 
     fn allowed(&self, span: &Span) -> Option<Allowed> {
@@ -154,7 +185,7 @@ impl View<'_> {
     /// True if the running error of what is in force may fill the tube: a single ratio would keep it,
     /// and what makes its ratio on average brings it within its own.
     fn is_off(&self) -> bool {
-        self.running_error >= self.limits(0.0).tube
+        self.running_error >= self.bare_limits().tube
     }
 
     /// What makes the wanted ratio on average, whose own error narrows the tube.
@@ -163,7 +194,7 @@ impl View<'_> {
         let target = self.outlook.exact_target();
         let Some(error) = own_error(target, declaration) else {
             let reason = "the target is beyond every ratio within the bounds";
-            let way = realise(nearest_virtual(self.outlook.target.value), declaration);
+            let way = self.realise(nearest_virtual(self.outlook.target.value));
             return Choice::without_room(way, Standing::out_of_bounds(reason, self.needed()));
         };
         let limits = self.limits(error);
@@ -175,9 +206,9 @@ impl View<'_> {
                     .single(&declaration.bounds)
                     .filter(|_| declaration.realisation != Realisation::Stepping);
                 let way = match by_itself {
-                    Some(_) if self.is_off() => realise(allowed.finer(), declaration),
+                    Some(_) if self.is_off() => self.realise(allowed.finer()),
                     Some(way) => way,
-                    None => realise(allowed.simplest, declaration),
+                    None => self.realise(allowed.simplest),
                 };
                 self.held(way, &allowed, span, entry)
             }
@@ -189,13 +220,26 @@ impl View<'_> {
     fn least_bad(&self, limits: Limits) -> Choice {
         let entry = Entry::new(self.outlook, &limits, self.lead_s, self.velocity);
         let velocity = self.velocity_back(&limits, entry.phase);
-        let wanted = nearest_virtual(self.outlook.ratio(velocity));
+        let wanted = self.as_good_as(velocity);
         let standing = Standing::new(CrossingState::Degraded, self.why_not(&limits));
-        let choice = Choice::without_room(realise(wanted, self.declaration), standing);
+        let choice = Choice::without_room(self.realise(wanted), standing);
         Choice {
             recovers: true,
             ..choice
         }
+    }
+
+    /// The simplest ratio about the one that gives a velocity: what is finer than a small share of
+    /// what is uncertain of it says nothing. Not one that would be run by itself and keep an error
+    /// that fills the tube.
+    fn as_good_as(&self, velocity: f64) -> Fraction {
+        let room = SAID_NOTHING * self.outlook.velocity_deviation();
+        let [low, high] = [velocity - room, velocity + room].map(|v| self.outlook.ratio(v));
+        let keeps_error = |ratio: &Fraction| self.is_off() && self.declaration.bounds.allow(ratio);
+        allowed(low, high)
+            .map(|allowed| allowed.simplest)
+            .filter(|simplest| !keeps_error(simplest))
+            .unwrap_or_else(|| nearest_virtual(self.outlook.ratio(velocity)))
     }
 
     /// Velocity that brings a phase back in half a minute, as far as the pitch limit allows; none
@@ -240,9 +284,9 @@ impl View<'_> {
     fn why_not(&self, limits: &Limits) -> String {
         let margin = self.outlook.margin(self.lead_s);
         format!(
-            "the phase error is uncertain by {margin:.3} samples \
-             when a setting could take effect, and the tube is {:.3}",
-            limits.tube
+            "the phase error is uncertain by {margin:.3} samples when a setting could take effect, more than \
+             the {:.3} that planning may use of the headroom of {}",
+            limits.tube, self.declaration.headroom_samples
         )
     }
 }

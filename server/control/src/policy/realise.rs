@@ -107,13 +107,14 @@ impl Allowed {
 }
 
 /// A wanted fraction as the resampler of a crossing can best make it: by itself, on average, or by
-/// the nearest single ratio.
-pub(crate) fn realise(wanted: Fraction, declaration: &CrossingDeclaration) -> Way {
+/// the nearest single ratio. Lazy switching takes no more than `swing` samples of the room, if it
+/// can do with that.
+pub(crate) fn realise(wanted: Fraction, declaration: &CrossingDeclaration, swing: f64) -> Way {
     let bounds = &declaration.bounds;
     let on_average = match declaration.realisation {
         Realisation::Single => None,
         Realisation::Stepping => return stepping(wanted, bounds.max_l()),
-        Realisation::Cadence | Realisation::Lazy => in_turn(wanted, declaration),
+        Realisation::Cadence | Realisation::Lazy => in_turn(wanted, declaration, swing),
     };
     on_average.unwrap_or_else(|| nearest_single(wanted, bounds))
 }
@@ -129,7 +130,7 @@ pub(crate) fn nearest_single(wanted: Fraction, bounds: &Bounds) -> Way {
 }
 
 /// Two neighbouring ratios in turn, where no single one will do and there are two.
-fn in_turn(wanted: Fraction, declaration: &CrossingDeclaration) -> Option<Way> {
+fn in_turn(wanted: Fraction, declaration: &CrossingDeclaration, swing: f64) -> Option<Way> {
     let bounds = &declaration.bounds;
     if bounds.allow(&wanted) {
         return None;
@@ -138,7 +139,7 @@ fn in_turn(wanted: Fraction, declaration: &CrossingDeclaration) -> Option<Way> {
     let realised = match declaration.realisation {
         Realisation::Lazy => Realised::Lazy {
             cadence,
-            swing_samples: swing(declaration, pair_error(&cadence)),
+            swing_samples: swing.max(pair_error(&cadence)),
         },
         _ => Realised::Cadence(cadence),
     };
@@ -166,10 +167,9 @@ fn stepping(wanted: Fraction, phases: u64) -> Way {
     }
 }
 
-/// How far lazy switching may swing: a share of the headroom, but no less than what the balanced
-/// order of the two ratios needs.
-fn swing(declaration: &CrossingDeclaration, pair_error: f64) -> f64 {
-    (SWING_SHARE * declaration.headroom_samples).max(pair_error)
+/// How far lazy switching may swing where nothing is in its way.
+pub(crate) fn full_swing(declaration: &CrossingDeclaration) -> f64 {
+    SWING_SHARE * declaration.headroom_samples
 }
 
 /// How far what realises a ratio near the target may err at most, in output samples. 0 if nothing
@@ -183,9 +183,8 @@ pub(crate) fn own_error(target: &Exact, declaration: &CrossingDeclaration) -> Op
     match declaration.realisation {
         Realisation::Single => Some(0.0),
         Realisation::Cadence => cadence_error(target, bounds),
-        Realisation::Lazy => {
-            cadence_error(target, bounds).map(|error| swing(declaration, error) + CARRIED_SAMPLES)
-        }
+        Realisation::Lazy => cadence_error(target, bounds)
+            .map(|error| full_swing(declaration).max(error) + CARRIED_SAMPLES),
         Realisation::Stepping => {
             let (ratio, phases) = (double(target), bounds.max_l() as f64);
             (ratio <= phases).then_some(ratio / phases)
@@ -193,7 +192,7 @@ pub(crate) fn own_error(target: &Exact, declaration: &CrossingDeclaration) -> Op
     }
 }
 
-fn double(exact: &Exact) -> f64 {
+pub(crate) fn double(exact: &Exact) -> f64 {
     *exact.numer() as f64 / *exact.denom() as f64
 }
 

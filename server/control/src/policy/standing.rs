@@ -44,8 +44,8 @@ impl View<'_> {
     /// The smallest bounds within which what is run on average errs by less than the tube, at the
     /// target and as far from it as it takes to bring a phase error across the tube in time.
     pub(crate) fn needed(&self) -> Option<Bounds> {
-        let tube = self.limits(0.0).tube;
-        let back = (tube / RECOVERY_S).min(self.limits(0.0).pitch);
+        let tube = self.bare_limits().tube;
+        let back = (tube / RECOVERY_S).min(self.bare_limits().pitch);
         let at = |velocity: f64| {
             let target = target_from_f64(self.outlook.ratio(velocity)).ok()?;
             bounds_for(&target, self.declaration, tube)
@@ -66,11 +66,15 @@ impl View<'_> {
         let (phase, headroom) = (self.outlook.phase, self.declaration.headroom_samples);
         if phase.abs() > headroom {
             return degraded(format!(
-                "the phase error of {phase:.3} samples is outside the headroom of {headroom} \
-                 and on its way back"
+                "the phase error of {phase:.3} samples is outside the headroom of {headroom}{}",
+                if phase * velocity < 0.0 {
+                    " and on its way back"
+                } else {
+                    ""
+                }
             ));
         }
-        let tube = self.limits(0.0).tube;
+        let tube = self.bare_limits().tube;
         if own_error >= tube {
             let reason = format!(
                 "what can be run within the bounds errs by up to {own_error:.3} samples itself, \
@@ -78,11 +82,17 @@ impl View<'_> {
             );
             return Standing::out_of_bounds(&reason, self.needed());
         }
+        if phase.abs() + own_error > headroom {
+            return degraded(format!(
+                "the phase error of {phase:.3} samples and what is run, which errs by up to {own_error:.3} \
+                 itself, are more than the headroom of {headroom}"
+            ));
+        }
         let margin = self.outlook.margin(0.0);
         if margin > tube {
             return degraded(format!(
-                "the phase error is uncertain by {margin:.3} samples, \
-                 and the tube is {tube:.3}"
+                "the phase error is uncertain by {margin:.3} samples, more than the {tube:.3} that planning \
+                 may use of the headroom of {headroom}"
             ));
         }
         if let Some(standing) = self.dead_end(velocity) {
@@ -96,7 +106,7 @@ impl View<'_> {
     /// moves the phase error the other way, within the pitch limit, and that will be needed
     /// within what is planned for.
     fn dead_end(&self, velocity: f64) -> Option<Standing> {
-        let limits = self.limits(0.0);
+        let limits = self.bare_limits();
         let lasts = velocity.abs() * PLAN_HORIZON_S < limits.tube;
         if self.declaration.realisation != Realisation::Single || lasts {
             return None;
