@@ -95,6 +95,7 @@ impl CrossingRecord {
             ratio: setting.average(),
             decided_ns: setting.decided_ns,
             effect_ns: setting.effect_ns,
+            is_reported: false,
         });
         self.newest = Some(setting);
     }

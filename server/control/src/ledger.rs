@@ -352,6 +352,7 @@ mod tests {
             ratio,
             decided_ns: effect_ns,
             effect_ns,
+            is_reported: false,
         }
     }
 
@@ -423,6 +424,19 @@ mod tests {
             (run(8 * SECOND) - 17.0 * faster).abs() < 1e-6,
             "early: more of it"
         );
+    }
+
+    /// A player that was started again says that it runs what ran before.
+    #[test]
+    fn the_first_report_of_a_setting_stands() {
+        let mut ledger = account();
+        for now in [12, 900].map(|second| second * SECOND) {
+            let source = clock(now, 0.0, 0.0, 0.0);
+            ledger.advance(now, &source, &still(now));
+            ledger.applied(2, now, &source, &still(now));
+        }
+        let faster = 44_100.0 * (320.0 / 293.0 - 160.0 / 147.0);
+        assert!((ledger.phase_samples() - 888.0 * faster).abs() < 1e-6);
     }
 
     /// A level measured now of an account that was advanced to `now` between a clock of 1 µs and a

@@ -21,6 +21,8 @@ pub(crate) struct Entry {
     pub(crate) decided_ns: HouseNs,
     /// When it takes effect: as planned, then as reported.
     pub(crate) effect_ns: HouseNs,
+    /// True once that was reported.
+    pub(crate) is_reported: bool,
 }
 
 /// A stretch of time under one ratio.
@@ -124,9 +126,15 @@ impl Timeline {
     /// Moves the effect of a setting to where it truly was, but not before the one before. Those
     /// that were planned to follow it sooner cannot have: they follow at once, until they are
     /// reported themselves. Gives the first instant that this concerns, if the setting counts.
+    ///
+    /// The first report stands: another one comes from a player that was started again and took up
+    /// what ran before.
     pub(crate) fn correct(&mut self, number: u64, truly_ns: HouseNs) -> Option<HouseNs> {
         let counts = |entry: &Entry| entry.number == number && number >= self.counts_from;
         let index = self.entries.iter().position(counts)?;
+        if std::mem::replace(&mut self.entries[index].is_reported, true) {
+            return None;
+        }
         let previous = index.checked_sub(1).map(|i| self.entries[i]);
         let previous = previous.filter(|entry| entry.number >= self.counts_from);
         let earliest_ns = previous.map_or(HouseNs::MIN, |entry| entry.effect_ns);

@@ -19,6 +19,7 @@ struct Entry {
     number: u64,
     ratio: Fraction,
     effect_ns: i64,
+    is_reported: bool,
 }
 
 /// The other account.
@@ -53,15 +54,19 @@ impl Account {
                 number: setting.number,
                 ratio: setting.average(),
                 effect_ns: setting.effect_ns,
+                is_reported: false,
             });
         }
     }
 
     /// A setting took effect at another time, but not before the one before it, and those after
-    /// it not before it.
+    /// it not before it. Only the first report counts.
     fn applied(&mut self, number: u64, house_ns: i64) {
         let place = self.entries.iter().position(|entry| entry.number == number);
         let i = place.expect("the engine knew the setting");
+        if std::mem::replace(&mut self.entries[i].is_reported, true) {
+            return;
+        }
         let earliest_ns = i.checked_sub(1).map(|i| self.entries[i].effect_ns);
         let truly_ns = house_ns.max(earliest_ns.unwrap_or(i64::MIN));
         self.entries[i].effect_ns = truly_ns;
