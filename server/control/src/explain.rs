@@ -2,7 +2,7 @@
 
 use ratewright_ratio::{Certificate, Fraction};
 
-use crate::policy::realise::error_of;
+use crate::policy::{TUBE, realise::double};
 use crate::{CrossingDeclaration, Realised, Reason, SLIP_HORIZON_S, Setting};
 
 /// Tells what a setting does, why it was made, what it rests on and how long it is good for.
@@ -13,7 +13,7 @@ pub fn explain(setting: &Setting, crossing: &CrossingDeclaration) -> Vec<String>
         why(setting, crossing),
         target(setting, crossing),
         phase(setting, crossing),
-        choice(setting),
+        choice(setting, crossing),
         proof(setting, crossing),
         outlook(setting, crossing),
     ];
@@ -28,6 +28,13 @@ fn text(ratio: &Fraction) -> String {
     format!("{}/{}", ratio.numer(), ratio.denom())
 }
 
+fn blocks(count: u64) -> String {
+    match count {
+        1 => "1 block".to_owned(),
+        more => format!("{more} blocks"),
+    }
+}
+
 fn what(setting: &Setting) -> String {
     let Setting {
         epoch,
@@ -38,11 +45,11 @@ fn what(setting: &Setting) -> String {
     let does = match &setting.realised {
         Realised::Single(ratio) => format!("run at the ratio {}", text(ratio)),
         Realised::Cadence(cadence) => format!(
-            "alternate between {} ({} blocks) and {} ({} blocks), {} on average",
+            "alternate between {} ({}) and {} ({}), {} on average",
             text(&cadence.low()),
-            cadence.low_blocks(),
+            blocks(cadence.low_blocks()),
             text(&cadence.high()),
-            cadence.high_blocks(),
+            blocks(cadence.high_blocks()),
             text(&setting.wanted),
         ),
         Realised::Stepping(stepping) => {
@@ -66,19 +73,21 @@ fn what(setting: &Setting) -> String {
     };
     let lead_s = seconds(setting.effect_ns - setting.decided_ns);
     format!(
-        "Setting {epoch}/{number} of {crossing}: {does}, from {lead_s:.3} s after the decision on."
+        "Setting {epoch}-{number} of {crossing}: {does}, from {lead_s:.3} s after the decision on."
     )
 }
 
 fn why(setting: &Setting, crossing: &CrossingDeclaration) -> String {
     let why = match setting.reason {
         Reason::First => "the crossing was declared and needs a setting".to_owned(),
-        Reason::Evidence => {
-            "the setting before it would not have kept the phase error in the tube".to_owned()
-        }
-        Reason::Recovery => {
-            "the band of the phase error was out of the tube and had to be brought back".to_owned()
-        }
+        Reason::Evidence => format!(
+            "the setting before it would not have kept the phase error within {}",
+            usable(crossing)
+        ),
+        Reason::Recovery => format!(
+            "the phase error, with what is uncertain of it, was beyond {} and had to be brought back",
+            usable(crossing)
+        ),
         Reason::Declaration => "what it rests on was declared anew".to_owned(),
         Reason::Group => match &crossing.group {
             Some(group) => format!("another crossing of the group {group} changed"),
@@ -88,6 +97,15 @@ fn why(setting: &Setting, crossing: &CrossingDeclaration) -> String {
         Reason::Renewal => "nothing changed, and the one before it was due for review".to_owned(),
     };
     format!("It was made because {why}.")
+}
+
+/// The tube in words.
+fn usable(crossing: &CrossingDeclaration) -> String {
+    format!(
+        "the {:.0} % of the headroom of {} that planning uses",
+        TUBE * 100.0,
+        crossing.headroom_samples
+    )
 }
 
 fn target(setting: &Setting, crossing: &CrossingDeclaration) -> String {
@@ -115,13 +133,33 @@ fn phase(setting: &Setting, crossing: &CrossingDeclaration) -> String {
     let e = &setting.evidence;
     format!(
         "The phase error was {:+.4} ± {:.4} sink samples, of a headroom of {}; it is brought back by at most \
-         {} ppm of pitch. What is run errs by up to {:.4} samples itself.",
+         {} ppm of pitch.{}",
         e.phase_error_samples,
         e.phase_deviation_samples,
         crossing.headroom_samples,
         crossing.pitch_limit_ppm,
-        error_of(&setting.realised),
+        own_error(&setting.realised),
     )
+}
+
+fn own_error(realised: &Realised) -> String {
+    let bound = match realised {
+        Realised::Single(_) => return String::new(),
+        Realised::Cadence(cadence) => up(double(&cadence.error_bound())),
+        Realised::Stepping(stepping) => up(double(&stepping.error_bound())),
+        Realised::Lazy { swing_samples, .. } => swing_samples.to_string(),
+    };
+    format!(" What is run errs by up to {bound} samples itself.")
+}
+
+/// A bound on an error with three figures, rounded up.
+fn up(error: f64) -> String {
+    if error <= 0.0 {
+        return "0".to_owned();
+    }
+    let places = (2 - error.log10().floor() as i32).clamp(0, 9);
+    let scale = 10_f64.powi(places);
+    format!("{:.*}", places as usize, (error * scale).ceil() / scale)
 }
 
 fn floor(crossing: &CrossingDeclaration) -> Option<String> {
@@ -133,23 +171,28 @@ fn floor(crossing: &CrossingDeclaration) -> Option<String> {
     })
 }
 
-fn choice(setting: &Setting) -> String {
+fn choice(setting: &Setting, crossing: &CrossingDeclaration) -> String {
     let e = &setting.evidence;
     if e.allowed_low == e.allowed_high {
-        return format!(
-            "There was no room for choice: {} was wanted.",
-            text(&setting.wanted)
-        );
+        let wanted = text(&setting.wanted);
+        return if e.target_low == e.target_high {
+            format!("Both clocks are exact: {wanted} was wanted.")
+        } else {
+            format!("No range of ratios could be vouched for; {wanted} was the best guess.")
+        };
     }
     let (low, high) = (
         ppb(&e.allowed_low, e.target),
         ppb(&e.allowed_high, e.target),
     );
     format!(
-        "Ratios from {low:+.2} to {high:+.2} ppb of the target would hold for {:.0} s; {} is the simplest, \
-         or the nearest to it that the bounds allow.",
-        e.expected_hold_s,
-        text(&setting.wanted)
+        "Every ratio from {low:+.2} to {high:+.2} ppb off the target would hold for {}; {} is {}.",
+        span(e.expected_hold_s),
+        text(&setting.wanted),
+        match crossing.bounds.largest_prime() {
+            None => "the simplest of them",
+            Some(_) => "the simplest of them, or the nearest to that within the bounds",
+        }
     )
 }
 
@@ -186,18 +229,67 @@ fn proof(setting: &Setting, crossing: &CrossingDeclaration) -> String {
 
 fn outlook(setting: &Setting, crossing: &CrossingDeclaration) -> String {
     let slip = match setting.seconds_to_slip {
-        Some(seconds) => format!("could slip {seconds:.1} s after its effect"),
-        None => format!("does not slip within {:.0} h", SLIP_HORIZON_S / 3600.0),
+        Some(seconds) => format!("could slip {} after its effect", span(seconds)),
+        None => format!("does not slip within {}", span(SLIP_HORIZON_S)),
     };
     format!(
-        "It makes {:+.3} ppb too much and {slip}, if nothing is measured any more. It is looked at again \
-         by {:.0} s after its effect, and is good until {:.0} s after it.",
-        setting.residual * 1e9,
-        seconds(crossing.review_horizon_ns),
-        seconds(setting.expiry_ns - setting.effect_ns),
+        "It makes {} and {slip}, if it is left alone. It is looked at again as soon as the readings ask for \
+         it, by {} after its effect at the latest, and is good until {} after it.",
+        off(setting.residual * 1e9),
+        span(seconds(crossing.review_horizon_ns)),
+        span(seconds(setting.expiry_ns - setting.effect_ns)),
     )
+}
+
+/// What a residual means.
+fn off(ppb: f64) -> String {
+    let size = ppb.abs();
+    match ppb {
+        _ if size < 0.0005 => "the target to within 0.001 ppb".to_owned(),
+        ppb if ppb > 0.0 => format!("{size:.3} ppb too much"),
+        _ => format!("{size:.3} ppb too little"),
+    }
+}
+
+/// A time in the unit that suits it.
+fn span(seconds: f64) -> String {
+    let (value, unit) = match seconds {
+        s if s < 120.0 => (s, "s"),
+        s if s < 7_200.0 => (s / 60.0, "min"),
+        s if s < 172_800.0 => (s / 3_600.0, "h"),
+        s => (s / 86_400.0, "d"),
+    };
+    let text = format!("{value:.1}");
+    format!("{} {unit}", text.strip_suffix(".0").unwrap_or(&text))
 }
 
 fn seconds(ns: i64) -> f64 {
     ns as f64 * 1e-9
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn a_bound_is_rounded_up() {
+        let bounds = [0.000_636_54, 0.001_702_3, 0.5, 12.001_3, 1234.2, 0.0].map(up);
+        assert_eq!(
+            bounds,
+            ["0.000637", "0.00171", "0.500", "12.1", "1235", "0"]
+        );
+    }
+
+    #[test]
+    fn residuals_and_times_read_well() {
+        let said = [116.785, -116.785, -1e-5].map(off);
+        let expected = [
+            "116.785 ppb too much",
+            "116.785 ppb too little",
+            "the target to within 0.001 ppb",
+        ];
+        assert_eq!(said, expected);
+        let said = [0.0, 50.0, 442.0, 86_400.0, 172_800.0, 9.9e4].map(span);
+        assert_eq!(said, ["0 s", "50 s", "7.4 min", "24 h", "2 d", "27.5 h"]);
+    }
 }

@@ -62,7 +62,11 @@ impl Engine {
             phase_error_samples: outlook.phase,
             phase_deviation_samples: outlook.deviation(0.0),
             seconds_to_slip: slip,
-            seconds_vouched: record.vouched(&ends),
+            seconds_vouched: if record.pin.is_some() {
+                slip
+            } else {
+                record.vouched(&ends)
+            },
             source: record.source().clone(),
             pin: record.pin.as_deref().cloned(),
             needed: record.needed.as_deref().copied(),

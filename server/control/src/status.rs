@@ -46,7 +46,8 @@ pub struct CrossingStatus {
     /// if it does not within [`crate::SLIP_HORIZON_S`].
     pub seconds_to_slip: Option<f64>,
     /// Seconds until the phase error can no longer be kept within the headroom however it is set, if no
-    /// further reading comes: the 95 % band alone is as wide. Absent as above.
+    /// further reading comes: the 95 % band alone is as wide. While it is pinned nothing is set, so this is
+    /// [`CrossingStatus::seconds_to_slip`] then. Absent as above.
     pub seconds_vouched: Option<f64>,
     /// Clock of the source in use: the declared one or the backup.
     pub source: Id,

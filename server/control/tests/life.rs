@@ -383,12 +383,12 @@ fn a_setting_explains_itself_in_words_and_numbers() {
         .expect("settings were made");
     let text = explain(newest, declared).join("\n");
     for part in [
-        format!("Setting 1/{} of x:", newest.number),
-        "the setting before it would not have kept the phase error in the tube".into(),
+        format!("Setting 1-{} of x:", newest.number),
+        "the setting before it would not have kept the phase error within the 80 % of the headroom of 4 that".into(),
         "desk was +7.99".into(),
         "of a headroom of 4".into(),
         "Certificate: with L up to 1024 and M up to 1024 nothing lies between".into(),
-        "if nothing is measured any more".into(),
+        "if it is left alone".into(),
     ] {
         assert!(text.contains(&part), "{part:?} is missing in\n{text}");
     }
