@@ -93,7 +93,10 @@ impl Engine {
         let runs = timeline.begins_ns().is_some_and(|begins| begins <= now);
         let in_force = timeline.ratio_at(now).filter(|_| runs);
         let before = in_force.map_or(0.0, |ratio| outlook.velocity(ratio));
-        let then = outlook.velocity(as_double(&newest.average()));
+        let then = match timeline.unheeded() {
+            Some(_) => before,
+            None => outlook.velocity(as_double(&newest.average())),
+        };
         let until_effect_s = newest.effect_ns.saturating_sub(now).max(0) as f64 * 1e-9;
         let point = |after_s: f64| {
             let under_before = after_s.min(until_effect_s);

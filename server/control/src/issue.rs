@@ -119,7 +119,8 @@ impl CrossingRecord {
         }
     }
 
-    /// Seconds from a setting's effect (or from `now`, if that is later) to the slip it leads to.
+    /// Seconds from a setting's effect (or from `now`, if that is later) to the slip it leads to: or
+    /// that what runs instead leads to, if it is not heeded or may not be.
     pub(crate) fn slip_under(&self, setting: &Setting, now: HouseNs, ends: &Ends) -> Option<f64> {
         let outlook = self.outlook(ends);
         let timeline = &self.ledger.timeline;
@@ -133,8 +134,18 @@ impl CrossingRecord {
         let delay_s = if runs { lead_ns as f64 * 1e-9 } else { 0.0 };
         let phase = outlook.extrapolate(outlook.phase, velocity, delay_s);
         let room = self.declaration.headroom_samples - error_of(&setting.realised);
-        let velocity = outlook.velocity(as_double(&setting.average()));
-        seconds_to_slip(&outlook, room, (phase, velocity), delay_s)
+        let slip = |path| seconds_to_slip(&outlook, room, path, delay_s);
+        if timeline.unheeded().is_some() {
+            return slip((phase, velocity));
+        }
+        let unreported = self.unreported(ends);
+        let otherwise =
+            unreported.and_then(|(ratio, phase)| slip((phase, outlook.velocity(ratio))));
+        let planned = slip((phase, outlook.velocity(as_double(&setting.average()))));
+        match (planned, otherwise) {
+            (Some(planned), Some(otherwise)) => Some(planned.min(otherwise)),
+            (planned, otherwise) => planned.or(otherwise),
+        }
     }
 
     /// Seconds for which this account, which is advanced to now, can be vouched for without a further reading,

@@ -15,9 +15,10 @@ use serde::{Deserialize, Serialize};
 use crate::HouseNs;
 use crate::clocks::Traced;
 use crate::heard::{Heard, Moments};
+use crate::heed::{Contest, Verdict};
 use crate::passage::Passage;
 use crate::signs::{phase_velocity, true_rate};
-use crate::timeline::{Entry, Stretch, Timeline};
+use crate::timeline::{Entry, Rival, Stretch, Timeline, as_double};
 
 /// Growth of the offset's variance, samples² a second: 0.01 samples a day (own choice: block
 /// ends and the rounding of a follower's buffer).
@@ -46,6 +47,8 @@ pub(crate) struct Ledger {
     sink: Passage,
     /// What levels have told of the clocks' present phases, if there were any.
     heard: Option<Box<Heard>>,
+    /// What levels say of whether the newest setting runs, while that is open.
+    contest: Option<Box<Contest>>,
     /// Occupancies in a row that were at odds with the account, and to which side.
     at_odds: i32,
 }
@@ -69,6 +72,10 @@ pub(crate) enum Levelled {
     SetAside,
     /// It was one too many at odds: the account goes on from the level.
     Moved,
+    /// It has decided that the newest setting does not run.
+    NotHeeded,
+    /// It has decided that the newest setting, which did not run, now does.
+    TakenUp,
 }
 
 impl Ledger {
@@ -86,6 +93,7 @@ impl Ledger {
             source: Passage::begin(0),
             sink: Passage::begin(0),
             heard: None,
+            contest: None,
             at_odds: 0,
         }
     }
@@ -151,6 +159,7 @@ impl Ledger {
         self.source = Passage::begin(now);
         self.sink = Passage::begin(now);
         self.heard = None;
+        self.contest = None;
         self.at_odds = 0;
     }
 
@@ -219,9 +228,39 @@ impl Ledger {
         phase_velocity(ratio, source_hz, sink_hz) + heard
     }
 
+    /// How much faster the phase error would grow under the other of two ratios, samples/s.
+    fn velocity_apart(&self, rival: &Rival, source: &Traced, sink: &Traced) -> f64 {
+        self.velocity(rival.other, source, sink) - self.velocity(rival.runs, source, sink)
+    }
+
     /// Adds a setting to the timeline.
     pub(crate) fn set(&mut self, entry: Entry) {
+        if self.timeline.last_ratio() != Some(as_double(&entry.ratio)) {
+            self.contest = None;
+        }
         self.timeline.push(entry);
+    }
+
+    /// If the follower reports what it applies, and has not reported the newest setting `late_ns`
+    /// after its effect: the ratio that may still run, and the phase error that it would have made
+    /// by now, to which the account is advanced, sink samples.
+    pub(crate) fn unreported(
+        &self,
+        late_ns: i64,
+        source: &Traced,
+        sink: &Traced,
+    ) -> Option<(f64, f64)> {
+        let at_ns = self.at_ns.filter(|_| self.timeline.is_reported())?;
+        if self.timeline.unheeded().is_some() {
+            return None;
+        }
+        let rival = self.timeline.rival(at_ns)?;
+        let since_ns = rival.since_ns.max(self.centred_ns);
+        let more = self.velocity_apart(&rival, source, sink);
+        (at_ns - rival.since_ns >= late_ns).then(|| {
+            let seconds = (at_ns - since_ns) as f64 * 1e-9;
+            (rival.other, self.phase_samples() + more * seconds)
+        })
     }
 
     /// A follower has said when a setting truly took effect. The account must be advanced to now.
@@ -234,6 +273,7 @@ impl Ledger {
     ) {
         let (begun_ns, before) = (self.timeline.begins_ns(), self.timeline.clone());
         let from_ns = self.timeline.correct(number, truly_ns);
+        self.timeline.reported(number);
         let (Some(from_ns), Some(at_ns)) = (from_ns, self.at_ns) else {
             return;
         };
@@ -271,8 +311,14 @@ impl Ledger {
         let innovation = level.samples - (self.phase_samples() - velocity * level.age_s);
         let (lasting, passing) = (self.lasting_variance(), self.passing_variance());
         let whole = lasting + passing + level.variance;
+        if let Some(verdict) = self.contested(innovation, whole, source, sink) {
+            return Some(verdict);
+        }
         if innovation.abs() > AT_ODDS * whole.sqrt() {
             return Some(self.at_odds(innovation, level.variance));
+        }
+        if let Some(contest) = &mut self.contest {
+            contest.corrected((lasting + passing) / whole);
         }
         let gain = lasting / whole;
         self.phase_samples += gain * innovation;
@@ -285,6 +331,51 @@ impl Ledger {
         heard.correct(innovation, whole);
         self.at_odds = 0;
         Some(Levelled::Corrected)
+    }
+
+    /// Weighs a level in the contest of what runs, if there is one. Gives what it decides; the level
+    /// itself then corrects nothing.
+    fn contested(
+        &mut self,
+        innovation: f64,
+        whole: f64,
+        source: &Traced,
+        sink: &Traced,
+    ) -> Option<Levelled> {
+        let at_ns = self.at_ns?;
+        let is_unheeded = self.timeline.unheeded().is_some();
+        let Some(rival) = self.timeline.rival(at_ns) else {
+            self.contest = None;
+            return None;
+        };
+        let more = self.velocity_apart(&rival, source, sink);
+        let begun = || Box::new(Contest::begin(rival.since_ns.max(self.centred_ns)));
+        let contest = self.contest.get_or_insert_with(begun);
+        contest.advance(at_ns, more);
+        match contest.weigh(innovation, whole) {
+            Verdict::Other if is_unheeded => {
+                self.phase_samples += contest.apart;
+                self.timeline.take_up_newest(contest.since_ns);
+                self.contest = None;
+                Some(Levelled::TakenUp)
+            }
+            Verdict::Other => {
+                self.phase_samples += contest.apart;
+                self.timeline.give_up_newest();
+                self.contest = None;
+                Some(Levelled::NotHeeded)
+            }
+            Verdict::Kept if !is_unheeded => {
+                self.timeline.confirm_newest();
+                self.contest = None;
+                None
+            }
+            _ if is_unheeded && contest.is_idle() => {
+                **contest = Contest::begin(at_ns);
+                None
+            }
+            _ => None,
+        }
     }
 
     fn at_odds(&mut self, innovation: f64, variance: f64) -> Levelled {
@@ -303,6 +394,7 @@ impl Ledger {
         self.left_variance = 0.0;
         self.source.sharpen(0.0);
         self.sink.sharpen(0.0);
+        self.contest = None;
         self.at_odds = 0;
         Levelled::Moved
     }

@@ -182,12 +182,18 @@ impl CrossingRecord {
         if !(ends.source.measured && ends.sink.measured) {
             return self.wait(&view, ends);
         }
-        if self.forced.is_none()
-            && let Some(standing) = self.stays(&view)
-        {
-            return Judgement::Stay(standing);
+        let doubt = self.doubt(ends);
+        if self.forced.is_none() {
+            if let Some(doubt) = doubt.clone().filter(|_| self.waits_to_be_heeded(now)) {
+                return Judgement::Stay(doubt);
+            }
+            if let Some(standing) = self.stays(&view) {
+                return Judgement::Stay(doubt.unwrap_or(standing));
+            }
         }
-        self.change_to(choose(&view))
+        let mut choice = choose(&view);
+        choice.standing = doubt.unwrap_or(choice.standing);
+        self.change_to(choice)
     }
 
     /// Chooses anew whatever the setting in force is worth.

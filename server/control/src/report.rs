@@ -114,12 +114,15 @@ impl Engine {
             age_s: (now - house_ns) as f64 * 1e-9,
         };
         let levelled = record.ledger.level(taken, &ends.source, &ends.sink);
+        let is_news = matches!(levelled, Some(Levelled::NotHeeded | Levelled::TakenUp));
         if levelled == Some(Levelled::Moved) {
             effects.transitions.push(Transition::Centred {
                 crossing: crossing.clone(),
                 phase_error_samples: record.ledger.phase_samples(),
                 reason: format!("the follower's buffer stands at {level:.3} samples: it was moved"),
             });
+        }
+        if is_news || levelled == Some(Levelled::Moved) {
             let subject = record.subject();
             self.schedule.set(subject, now);
         }

@@ -127,6 +127,9 @@ impl CrossingRecord {
         if chosen.state == CrossingState::Waiting {
             return chosen;
         }
+        if let Some(doubt) = self.doubt(ends) {
+            return doubt;
+        }
         let outlook = self.outlook(ends);
         let view = self.view(now, &outlook, ends, lead_s);
         let standing = view.standing(view.velocity, view.running_error);

@@ -33,6 +33,17 @@ pub(crate) struct Stretch {
     pub(crate) to_ns: HouseNs,
 }
 
+/// Two ratios, either of which may run.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub(crate) struct Rival {
+    /// The one that is taken to run.
+    pub(crate) runs: f64,
+    /// The other: that of the newest setting, if it is not heeded, else the one before.
+    pub(crate) other: f64,
+    /// Since when the two accounts go apart.
+    pub(crate) since_ns: HouseNs,
+}
+
 /// The last settings, in the order of their effect; before the first that counts nothing runs.
 #[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub(crate) struct Timeline {
@@ -41,6 +52,12 @@ pub(crate) struct Timeline {
     has_forgotten: bool,
     /// Settings below this number were for another stream. Their followers may still report them.
     counts_from: u64,
+    /// Highest number of this stream that is known to run or to have run.
+    known: u64,
+    /// The follower reports what it applies.
+    is_reported: bool,
+    /// Settings from this number on are not run, though they should be; 0 if there are none.
+    unheeded_from: u64,
 }
 
 /// A ratio as the nearest double.
@@ -53,7 +70,10 @@ impl Timeline {
     pub(crate) fn push(&mut self, entry: Entry) {
         // What is in force when the entry is decided is kept, and what comes after it.
         let is_past = |next: &Entry| next.effect_ns <= entry.decided_ns;
-        if self.entries.len() > KEPT && self.entries.get(1).is_some_and(is_past) {
+        if self.entries.len() > KEPT && self.unheeded_from > 0 {
+            // What truly runs is kept; the one before this was never run, and is replaced.
+            self.entries.pop();
+        } else if self.entries.len() > KEPT && self.entries.get(1).is_some_and(is_past) {
             self.entries.remove(0);
             self.has_forgotten = true;
         }
@@ -66,14 +86,88 @@ impl Timeline {
     /// The stream begins anew with the setting of this number.
     pub(crate) fn begin_with(&mut self, number: u64) {
         self.counts_from = number;
+        (self.known, self.is_reported, self.unheeded_from) = (0, false, 0);
     }
 
-    /// The settings of this stream.
+    /// The settings of this stream, but those that are not heeded.
     fn counting(&self) -> &[Entry] {
-        let before = self
+        let below = |number: u64| self.entries.partition_point(|entry| entry.number < number);
+        let begin = below(self.counts_from);
+        match self.unheeded_from {
+            0 => &self.entries[begin..],
+            number => &self.entries[begin..below(number).max(begin)],
+        }
+    }
+
+    /// The newest setting, if it is not run though it should be.
+    pub(crate) fn unheeded(&self) -> Option<&Entry> {
+        self.entries.last().filter(|_| self.unheeded_from > 0)
+    }
+
+    /// What else may run at `now` than the account has it; `None` if that is certain.
+    pub(crate) fn rival(&self, now: HouseNs) -> Option<Rival> {
+        let newest = self
             .entries
-            .partition_point(|entry| entry.number < self.counts_from);
-        &self.entries[before..]
+            .last()
+            .filter(|newest| newest.effect_ns <= now)?;
+        let counting = self.counting();
+        let rival = |runs: &Entry, other: &Entry, since_ns| Rival {
+            runs: as_double(&runs.ratio),
+            other: as_double(&other.ratio),
+            since_ns,
+        };
+        if self.unheeded_from > 0 {
+            let runs = counting.last()?;
+            return (runs.ratio != newest.ratio).then(|| rival(runs, newest, now));
+        }
+        // Renewals go on with the ratio of the one that they renew.
+        let is_other = |entry: &Entry| entry.ratio != newest.ratio;
+        let before = counting.iter().rposition(is_other)?;
+        let first = &counting[before + 1];
+        (self.known < first.number).then(|| rival(newest, &counting[before], first.effect_ns))
+    }
+
+    /// True if the follower has reported settings of this stream, so that it is expected to go on.
+    pub(crate) fn is_reported(&self) -> bool {
+        self.is_reported
+    }
+
+    /// The follower has reported a setting.
+    pub(crate) fn reported(&mut self, number: u64) {
+        self.is_reported |= number >= self.counts_from;
+    }
+
+    /// The newest setting runs for certain.
+    pub(crate) fn confirm_newest(&mut self) {
+        self.known = self
+            .entries
+            .last()
+            .map_or(self.known, |newest| newest.number);
+    }
+
+    /// The newest setting is not run.
+    pub(crate) fn give_up_newest(&mut self) {
+        self.unheeded_from = self.entries.last().map_or(0, |newest| newest.number);
+    }
+
+    /// The newest setting is run since then.
+    pub(crate) fn take_up_newest(&mut self, since_ns: HouseNs) {
+        if let Some(number) = self.entries.last().map(|newest| newest.number) {
+            self.correct(number, since_ns);
+        }
+    }
+
+    /// The setting of this number is run after all; what was not heeded before it never ran.
+    fn take_up(&mut self, number: u64) {
+        if number >= self.counts_from {
+            self.known = self.known.max(number);
+        }
+        if self.unheeded_from > 0 && number >= self.unheeded_from {
+            let from = self.unheeded_from;
+            self.entries
+                .retain(|entry| !(from..number).contains(&entry.number));
+            self.unheeded_from = 0;
+        }
     }
 
     /// Effect of the newest setting.
@@ -84,6 +178,11 @@ impl Timeline {
     /// When the stream began, as far back as is kept.
     pub(crate) fn begins_ns(&self) -> Option<HouseNs> {
         self.counting().first().map(|entry| entry.effect_ns)
+    }
+
+    /// The ratio that runs after all changes.
+    pub(crate) fn last_ratio(&self) -> Option<f64> {
+        self.counting().last().map(|entry| as_double(&entry.ratio))
     }
 
     /// The ratio in force at an instant; the first one before it began.
@@ -130,6 +229,7 @@ impl Timeline {
     /// The first report stands: another one comes from a player that was started again and took up
     /// what ran before.
     pub(crate) fn correct(&mut self, number: u64, truly_ns: HouseNs) -> Option<HouseNs> {
+        self.take_up(number);
         let counts = |entry: &Entry| entry.number == number && number >= self.counts_from;
         let index = self.entries.iter().position(counts)?;
         if std::mem::replace(&mut self.entries[index].is_reported, true) {

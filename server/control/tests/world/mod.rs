@@ -130,6 +130,8 @@ struct Running {
     /// The follower is late by this, and reports or not.
     late_ns: i64,
     reports: bool,
+    /// It takes nothing it is sent.
+    is_deaf: bool,
     gauge: Option<Gauge>,
     phase: f64,
     tally: Tally,
@@ -270,6 +272,7 @@ impl World {
             coming: Vec::new(),
             late_ns: 0,
             reports: false,
+            is_deaf: false,
             gauge: None,
             phase: 0.0,
             tally: Tally::default(),
@@ -287,6 +290,12 @@ impl World {
             .get_mut(&id(name))
             .expect("the test has declared it");
         (running.late_ns, running.reports) = (late_ns, reports);
+    }
+
+    /// The follower of a crossing takes nothing any more, or again the newest setting.
+    pub fn deafen(&mut self, name: &str, is_deaf: bool) {
+        let running = self.running.get_mut(&id(name));
+        running.expect("the test has declared it").is_deaf = is_deaf;
     }
 
     /// The follower of a crossing reports its level every so often, with so much noise.
@@ -390,7 +399,8 @@ impl World {
     /// When a follower next takes a setting or measures its buffer.
     fn next_effect(&self) -> i64 {
         let coming = self.running.values().map(|r| {
-            let effect = r.coming.first().map_or(i64::MAX, |(at, _)| *at);
+            let hears = r.coming.first().filter(|_| !r.is_deaf);
+            let effect = hears.map_or(i64::MAX, |(at, _)| *at);
             effect.min(r.gauge.as_ref().map_or(i64::MAX, |gauge| gauge.next_ns))
         });
         coming.min().unwrap_or(i64::MAX)
@@ -418,12 +428,19 @@ impl World {
     fn take_effect(&mut self) {
         let mut reports = Vec::new();
         for running in self.running.values_mut() {
+            if running.is_deaf {
+                // Of what it does not hear only the newest will be there when it hears again.
+                let newest = running.coming.pop();
+                running.coming = newest.into_iter().collect();
+                continue;
+            }
             while running
                 .coming
                 .first()
                 .is_some_and(|(at, _)| *at <= self.now)
             {
-                let (house_ns, setting) = running.coming.remove(0);
+                let (planned_ns, setting) = running.coming.remove(0);
+                let house_ns = planned_ns.max(self.now);
                 running.ratio = Some(average(&setting));
                 running.cadence_error = match setting.realised {
                     Realised::Single(_) => 0.0,
