@@ -63,7 +63,17 @@ pub(crate) async fn pin(Pin { crossing, act }: &Pin) -> Result<(), Failure> {
     let client = act.server.connect().await?;
     let done = client.pin(crossing, &act.by, &act.note).await;
     let done = known(&client, crossing, done).await?;
-    act.print(&done, "is pinned")
+    act.print(&done, "is pinned")?;
+    if act.json {
+        return Ok(());
+    }
+    match done.status.seconds_to_slip {
+        Some(seconds) => say!(
+            "as it runs, its buffer may slip in {}",
+            show::duration(seconds)
+        ),
+        None => say!("as it runs, no slip of its buffer is in sight"),
+    }
 }
 
 pub(crate) async fn release(Release { crossing, act }: &Release) -> Result<(), Failure> {

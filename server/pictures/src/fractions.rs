@@ -68,7 +68,7 @@ impl Fractions {
         frame.draw(|chart| self.paint(chart, (from, to), &place))
     }
 
-    /// The residuals shown: the gap, or what holds, with as much again around it.
+    /// The residuals shown: the gap, or what holds, with a little more than as much again around it.
     fn window(&self) -> (f64, f64) {
         let ends = [self.gap, self.holding, self.interval]
             .into_iter()
@@ -79,7 +79,8 @@ impl Fractions {
             None => ends.chain(runs).fold((0.0, 0.0), wider),
         };
         let (low, high) = (seen.0.min(0.0), seen.1.max(0.0));
-        let room = 0.9 * (high - low).max(1e-12);
+        // Enough to see the fractions just beyond the gap, which next to 1/1 are as far apart as it is wide.
+        let room = 1.15 * (high - low).max(1e-12);
         (low - room, high + room)
     }
 

@@ -8,7 +8,7 @@ mod trace;
 
 use std::collections::{BTreeMap, VecDeque};
 
-use ratewright_control::{HouseNs, Id, Reason, Setting, Transition};
+use ratewright_control::{Act, HouseNs, Id, Reason, Setting, Transition};
 
 pub use trace::{Point, Span, Trace};
 
@@ -34,6 +34,8 @@ pub struct Happening {
 pub enum What {
     /// A state, or an account of phase error that began anew.
     Transition(Transition),
+    /// What an operator did.
+    Act(Act),
     /// A setting that is not a mere renewal.
     Setting {
         /// The crossing it is for.
@@ -62,6 +64,7 @@ impl Happening {
             What::Transition(
                 Transition::Crossing { crossing, .. } | Transition::Centred { crossing, .. },
             )
+            | What::Act(Act { crossing, .. })
             | What::Setting { crossing, .. } => Some(crossing),
             What::Transition(Transition::Clock { .. } | Transition::ClockFault { .. }) => None,
         }

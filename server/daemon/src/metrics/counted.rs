@@ -14,7 +14,7 @@ use ::metrics::{
 use metrics_exporter_prometheus::{Matcher, PrometheusBuilder, PrometheusHandle};
 use ratewright_control::{HouseNs, Reason, Setting, Transition};
 
-use super::{clock_state, crossing_state};
+use super::{CLOCK_STATES, CROSSING_STATES, clock_state, crossing_state};
 
 const READINGS: &str = "ratewright_readings_total";
 const SETTINGS: &str = "ratewright_settings_total";
@@ -41,6 +41,16 @@ const HOUSE_BUCKETS_S: [f64; 9] = [0.01, 0.05, 0.25, 1.0, 2.5, 5.0, 10.0, 30.0, 
 /// Commits between two compactions of the histogram's samples: nobody may be scraping.
 const COMMITS_AN_UPKEEP: u64 = 1024;
 
+const REASONS: [Reason; 7] = [
+    Reason::First,
+    Reason::Evidence,
+    Reason::Recovery,
+    Reason::Declaration,
+    Reason::Group,
+    Reason::Renewal,
+    Reason::ChangeOver,
+];
+
 static RECORDER: OnceLock<Option<PrometheusHandle>> = OnceLock::new();
 static PROCESS: LazyLock<metrics_process::Collector> = LazyLock::new(Default::default);
 
@@ -65,10 +75,29 @@ pub fn install() {
     });
     describe();
     gauge!(BUILD, "version" => env!("CARGO_PKG_VERSION")).set(1.0);
-    // What may never happen is there all the same: the absence of a series says nothing.
+    // What may never happen is there all the same: the absence of a series says nothing, and the first
+    // event of one that was absent is no increase.
     gauge!(CONNECTIONS).increment(0.0);
     counter!(SUPERSEDED).increment(0);
     counter!(TURNED_AWAY).increment(0);
+    for reason in REASONS {
+        counter!(SETTINGS, "reason" => reason_label(reason)).increment(0);
+    }
+    let of_clocks = CLOCK_STATES
+        .map(clock_state)
+        .into_iter()
+        .chain(["faulty", "sound"]);
+    let of_crossings = CROSSING_STATES
+        .map(crossing_state)
+        .into_iter()
+        .chain(["centred"]);
+    let kinds = of_clocks
+        .map(|to| ("clock", to))
+        .chain(of_crossings.map(|to| ("crossing", to)));
+    for (kind, to) in kinds {
+        counter!(TRANSITIONS, "kind" => kind, "to" => to).increment(0);
+    }
+    readings(0, 0);
 }
 
 fn describe() {
@@ -144,7 +173,11 @@ pub fn setting(setting: &Setting, newest_reading_ns: Option<HouseNs>) {
     if let Some(newest_ns) = newest_reading_ns {
         histogram!(EVIDENCE_AGE).record(seconds(setting.decided_ns - newest_ns));
     }
-    let reason = match setting.reason {
+    counter!(SETTINGS, "reason" => reason_label(setting.reason)).increment(1);
+}
+
+fn reason_label(reason: Reason) -> &'static str {
+    match reason {
         Reason::First => "first",
         Reason::Evidence => "evidence",
         Reason::Recovery => "recovery",
@@ -152,8 +185,7 @@ pub fn setting(setting: &Setting, newest_reading_ns: Option<HouseNs>) {
         Reason::Group => "group",
         Reason::Renewal => "renewal",
         Reason::ChangeOver => "changeover",
-    };
-    counter!(SETTINGS, "reason" => reason).increment(1);
+    }
 }
 
 /// A clock or a crossing changed its state.

@@ -22,6 +22,9 @@
 //! | `ratewright_clock_lock_expected_seconds` | `clock` | until it should lock; absent when locked or not foreseeable |
 //! | `ratewright_clock_readings_used_total` | `clock` | readings the estimate rests on |
 //! | `ratewright_clock_readings_set_aside_total` | `clock` | readings set aside as outliers |
+//! | `ratewright_clock_allan_deviation_ratio` | `clock`, `interval_seconds` | overlapping Allan deviation of the estimated phase, of clocks declared with `statistics`, at 10 s, 80 s, 640 s and so on as far as was seen |
+//! | `ratewright_clock_time_deviation_seconds` | `clock`, `interval_seconds` | time deviation, likewise |
+//! | `ratewright_clock_mtie_seconds` | `clock`, `interval_seconds` | maximum time interval error, likewise |
 //! | `ratewright_crossing_info` | `crossing`, `source`, `sink`, `group` | always 1; its clocks and its group |
 //! | `ratewright_crossing_state` | `crossing`, `state` | 1 for the state it is in, else 0: `waiting`, `holding`, `degraded`, `out_of_bounds` |
 //! | `ratewright_crossing_target_ratio` | `crossing` | true sink rate over true source rate |
@@ -30,7 +33,8 @@
 //! | `ratewright_crossing_phase_deviation_samples` | `crossing` | its standard deviation |
 //! | `ratewright_crossing_headroom_samples` | `crossing` | hard limit of the phase error, both ways |
 //! | `ratewright_crossing_slip_seconds` | `crossing` | until the 95 % band of the phase error leaves the headroom under the present setting; +Inf if that is not in sight |
-//! | `ratewright_crossing_vouched_seconds` | `crossing` | until it can no longer be kept within the headroom, however it is set, if no further reading comes; +Inf if that is not in sight |
+//! | `ratewright_crossing_vouched_seconds` | `crossing` | until it can no longer be kept within the headroom, however it is set, if no further reading comes (while it is pinned, as it is set); +Inf if that is not in sight |
+//! | `ratewright_crossing_pinned` | `crossing` | 1 while an operator has it pinned, else 0 |
 //! | `ratewright_crossing_unapplied_seconds` | `crossing` | since a setting should have taken effect that its follower has not applied; absent if none has reported since the start |
 //! | `ratewright_crossing_settings_total` | `crossing` | settings made since the crossing was declared |
 //! | `ratewright_readings_total` | `outcome` | readings answered since the start: `accepted`, `refused` |
@@ -59,7 +63,7 @@ pub use self::{
         applied, commit, connections, install, open_streams, readings, setting, store, superseded,
         transition, turned_away,
     },
-    shown::{MOST_SUBJECTS, render},
+    shown::{MOST_SUBJECTS, Steadiness, render, steadied},
 };
 
 const CLOCK_STATES: [State; 4] = [

@@ -7,11 +7,12 @@ use ratewright_control::{HouseNs, Id, Transition};
 use super::{
     Sources,
     frame::{Leaf, Place},
-    words,
+    hand, words,
 };
 use crate::{
     board::Board,
     chronicle::{Happening, What},
+    convert::hand::act_to_wire,
 };
 
 /// How far back "lately" goes: an hour.
@@ -110,6 +111,9 @@ fn told(what: &What) -> Markup {
         }) => html! {
             "crossing " (link("crossings", crossing)) ": centred anew at "
             (words::samples(*phase_error_samples)) " samples, " (reason)
+        },
+        What::Act(act) => html! {
+            "crossing " (link("crossings", &act.crossing)) ": " (hand::told(&act_to_wire(act)))
         },
         What::Setting {
             crossing,

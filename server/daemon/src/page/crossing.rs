@@ -12,7 +12,7 @@ use super::{
     figures::{self, AskedSpan},
     fractions,
     frame::{self, Leaf, Place},
-    settings, words,
+    hand, settings, words,
 };
 use crate::{
     board::{Board, CrossingView},
@@ -45,8 +45,12 @@ pub(super) async fn show(
         Ok(forecast) => forecast,
         Err(answer) => return answer,
     };
-    let recorded = match sources.history.settings(id, None, SETTINGS).await {
+    let recorded = match sources.history.settings(id.clone(), None, SETTINGS).await {
         Ok(recorded) => recorded,
+        Err(fault) => return settings::unreadable(&fault),
+    };
+    let acts = match sources.history.acts(id, None, hand::SHOWN).await {
+        Ok(acts) => acts,
         Err(fault) => return settings::unreadable(&fault),
     };
     let body = html! {
@@ -56,6 +60,7 @@ pub(super) async fn show(
         (phase(&sources.board, &view, forecast.as_ref(), &asked, now))
         (choice(&view))
         (history(&view, &recorded, now))
+        (hand::section(&acts, now))
         (declared(&view.declaration))
         section #changed aria-labelledby="changed-head" {
             h2 #changed-head { "Changed in the last hour" }

@@ -27,6 +27,7 @@ mod facility;
 mod figures;
 mod fractions;
 mod frame;
+mod hand;
 mod listing;
 mod plan;
 mod probes;
@@ -118,7 +119,14 @@ impl Sources {
 }
 
 async fn scrape(State(sources): State<Sources>) -> impl IntoResponse {
-    let text = metrics::render(&sources.board, sources.house.now());
+    let clocks = metrics::steadied(&sources.board);
+    let look = |engine: &Engine| -> Vec<metrics::Steadiness> {
+        let each = clocks.into_iter();
+        each.map(|id| (id.clone(), engine.stability(&id))).collect()
+    };
+    // While the engine cannot be asked, the rest is still there to be scraped.
+    let steadiness = sources.ask(look).await.unwrap_or_default();
+    let text = metrics::render(&sources.board, sources.house.now(), &steadiness);
     (
         [(
             header::CONTENT_TYPE,

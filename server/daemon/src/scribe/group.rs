@@ -78,6 +78,11 @@ impl Group {
             self.written.settings.push((setting.clone(), explanation));
         }
         effects.acts.iter().for_each(log_act);
+        let done = effects.acts.iter().map(|act| Happening {
+            at_ns: act.at_ns,
+            what: What::Act(act.clone()),
+        });
+        self.happenings.extend(done);
         self.written.acts.extend(effects.acts);
         self.written.events.push((now, event));
         Ok(())

@@ -221,7 +221,7 @@ pub(crate) fn violations(status: &Status) -> Vec<(String, String)> {
 
 /// What a counter of the daemon's metrics has come to; daemons of one process share them.
 pub(crate) fn counted(name: &str) -> u64 {
-    let text = ratewright_server::metrics::render(&Board::new(), 0);
+    let text = ratewright_server::metrics::render(&Board::new(), 0, &[]);
     let value = text
         .lines()
         .find_map(|line| line.strip_prefix(name)?.strip_prefix(' '));

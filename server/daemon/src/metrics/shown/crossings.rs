@@ -65,6 +65,11 @@ pub(super) fn write(
         &|v| Some(v.status.seconds_vouched.unwrap_or(f64::INFINITY)),
     );
     each(
+        "ratewright_crossing_pinned",
+        "1 while an operator has it pinned, else 0.",
+        &|v| Some(f64::from(u8::from(v.status.pin.is_some()))),
+    );
+    each(
         "ratewright_crossing_unapplied_seconds",
         "Since a setting should have taken effect that its follower has not applied.",
         &|v| unapplied_seconds(board, v, house_ns),

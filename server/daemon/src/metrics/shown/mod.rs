@@ -3,10 +3,12 @@
 mod clocks;
 mod crossings;
 mod facility;
+mod steadiness;
 mod text;
 
-use ratewright_control::HouseNs;
+use ratewright_control::{HouseNs, Id};
 
+pub use self::steadiness::Steadiness;
 use self::text::Text;
 use super::counted;
 use crate::board::Board;
@@ -17,8 +19,17 @@ const NS_PER_S: f64 = 1e9;
 /// facility reads the figures of the whole, which count everyone.
 pub const MOST_SUBJECTS: usize = 2_000;
 
-/// Everything there is to scrape: what was counted, and what `board` shows at `house_ns`.
-pub fn render(board: &Board, house_ns: HouseNs) -> String {
+/// The clocks whose stability figures are written: those with series of their own, if they are declared
+/// to have statistics.
+pub fn steadied(board: &Board) -> Vec<Id> {
+    let clocks = board.clocks(None, MOST_SUBJECTS);
+    let kept = clocks.iter().filter(|view| view.declaration.statistics);
+    kept.map(|view| view.declaration.id.clone()).collect()
+}
+
+/// Everything there is to scrape: what was counted, what `board` shows at `house_ns`, and how steady
+/// the clocks are.
+pub fn render(board: &Board, house_ns: HouseNs, steadiness: &[Steadiness]) -> String {
     let mut text = Text(counted::render());
     text.one(
         "ratewright_house_time_seconds",
@@ -30,6 +41,7 @@ pub fn render(board: &Board, house_ns: HouseNs) -> String {
     facility::write(&mut text, &clocks, &crossings);
     let shown = |all: usize| all.min(MOST_SUBJECTS);
     clocks::write(&mut text, &clocks[..shown(clocks.len())], house_ns);
+    steadiness::write(&mut text, steadiness);
     crossings::write(
         &mut text,
         board,

@@ -127,7 +127,7 @@ async fn every_setting_is_kept_and_explained() {
     let first = rig.page("/crossings/web/settings/1-1").await;
     place(
         from(&first, "explanation"),
-        "Setting 1/1 of web: run at the ratio",
+        "Setting 1-1 of web: run at the ratio",
     );
     place(from(&first, "times"), "In effect from");
     place(&rig.page("/crossings/web/settings?before=1-2").await, "1-1");
