@@ -80,13 +80,15 @@ type Row<'a> = (&'static str, Box<dyn FnMut() + 'a>);
 
 /// A round of blocks from a handle.
 fn blocks(mut pair: (Writer, Reader)) -> Box<dyn FnMut()> {
-    let mut sink_sample = 0u64;
+    let mut begun = 0u64;
     Box::new(move || {
+        let mut sink_sample = begun;
         for _ in 0..CALLS {
             let block = pair.1.next_block(sink_sample);
             sink_sample += block.outputs;
             use_up(block.l, block.m);
         }
+        begun = sink_sample;
     })
 }
 

@@ -58,7 +58,7 @@ impl Running {
     }
 
     /// The next block.
-    #[inline]
+    #[inline(always)]
     pub(crate) fn next_block(&mut self) -> Block {
         match &mut self.sequence {
             Sequence::Cadence(state) => Block::whole(state.next_block()),
