@@ -3,7 +3,7 @@
 use std::fmt;
 use std::sync::Arc;
 
-use serde::{Deserialize, Serialize};
+use serde::{Deserialize, Serialize, Serializer};
 use thiserror::Error;
 
 /// Name of a clock, a crossing or a group: 1 to 63 of `a`–`z`, `0`–`9` and `-`, the first a letter.
@@ -15,8 +15,8 @@ use thiserror::Error;
 /// assert!(Id::new("2-studio").is_err());
 /// # Ok::<(), ratewright_control::IdError>(())
 /// ```
-#[derive(Clone, Debug, PartialEq, Eq, PartialOrd, Ord, Hash, Serialize, Deserialize)]
-#[serde(try_from = "String", into = "String")]
+#[derive(Clone, Debug, PartialEq, Eq, PartialOrd, Ord, Hash, Deserialize)]
+#[serde(try_from = "String")]
 pub struct Id(Arc<str>);
 
 /// A name that is none.
@@ -58,16 +58,17 @@ impl fmt::Display for Id {
     }
 }
 
+/// Without a copy: every reading of a journal has a name or two.
+impl Serialize for Id {
+    fn serialize<S: Serializer>(&self, to: S) -> Result<S::Ok, S::Error> {
+        to.serialize_str(&self.0)
+    }
+}
+
 impl TryFrom<String> for Id {
     type Error = IdError;
 
     fn try_from(name: String) -> Result<Self, IdError> {
         Id::new(&name)
-    }
-}
-
-impl From<Id> for String {
-    fn from(id: Id) -> Self {
-        id.as_str().to_owned()
     }
 }
