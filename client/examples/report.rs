@@ -18,26 +18,24 @@ async fn main() -> Result<(), Box<dyn std::error::Error>> {
     let address = arguments.next().ok_or("which daemon?")?;
     let clock = Id::new(&arguments.next().ok_or("which clock?")?)?;
     let client = Client::connect(&address).await?;
-    let (mut reporter, mut receipts) = client.report(Default::default());
+    let (reporter, mut receipts) = client.report(Default::default());
 
     let start = Instant::now();
     for _ in 0..60 {
         // Latch the counter first, then read the reference at once.
         let count = start.elapsed().as_nanos() * RATE_HZ / 1_000_000_000;
         let now = SystemTime::now().duration_since(UNIX_EPOCH)?;
-        reporter
-            .report(Reading {
-                clock: clock.clone(),
-                reference: Reference::House,
-                probe: None,
-                sequence: None,
-                measurement: Measurement::Counter {
-                    count: u64::try_from(count)?,
-                    bits: 64,
-                    reference_ns: i64::try_from(now.as_nanos())?,
-                },
-            })
-            .await?;
+        reporter.report(Reading {
+            clock: clock.clone(),
+            reference: Reference::House,
+            probe: None,
+            sequence: None,
+            measurement: Measurement::Counter {
+                count: u64::try_from(count)?,
+                bits: 64,
+                reference_ns: i64::try_from(now.as_nanos())?,
+            },
+        })?;
         tokio::time::sleep(Duration::from_secs(1)).await;
     }
     drop(reporter);
@@ -48,6 +46,7 @@ async fn main() -> Result<(), Box<dyn std::error::Error>> {
                 receipt.accepted,
                 receipt.refused.len()
             ),
+            Answer::Dropped(readings) => println!("{} dropped", readings.end - readings.start),
             Answer::Lost(loss) => println!("{loss}"),
             _ => {}
         }

@@ -13,12 +13,13 @@ use tonic::Status;
 
 use crate::backoff::Backoff;
 use crate::batch::{Batch, Gatherer};
+use crate::line::{Entrance, line};
 use crate::{CallError, Client, Loss, Reading};
 
 /// Largest batch the contract allows, in readings.
 const LARGEST_BATCH: usize = 4096;
 
-/// Batches sent and not yet receipted; more wait in the reporter's buffer.
+/// Batches sent and not yet receipted; other readings wait in the reporter's buffer.
 const UNRECEIPTED: usize = 32;
 
 /// Answers that wait to be taken.
@@ -44,7 +45,8 @@ pub struct ReportOptions {
     pub batch_readings: usize,
     /// Longest time a reading waits for others to share its batch.
     pub linger: Duration,
-    /// Readings that wait, beyond those in unreceipted batches, before [`Reporter::report`] does.
+    /// Readings that may wait, beyond those in unreceipted batches: what bridges an outage. When there are
+    /// more, the oldest are dropped by [`Reporter::report`], while [`Reporter::report_when_room`] waits.
     pub buffer_readings: usize,
 }
 
@@ -67,17 +69,15 @@ impl Default for ReportOptions {
 /// ```no_run
 /// # async fn example(client: ratewright_client::Client) -> Result<(), Box<dyn std::error::Error>> {
 /// use ratewright_client::{Answer, Id, Measurement, Reading, Reference};
-/// let (mut reporter, mut receipts) = client.report(Default::default());
+/// let (reporter, mut receipts) = client.report(Default::default());
 /// let (count, bits, reference_ns) = (48_000, 32, 1_000_000_000);
-/// reporter
-///     .report(Reading {
-///         clock: Id::new("desk")?,
-///         reference: Reference::House,
-///         probe: None,
-///         sequence: None,
-///         measurement: Measurement::Counter { count, bits, reference_ns },
-///     })
-///     .await?;
+/// reporter.report(Reading {
+///     clock: Id::new("desk")?,
+///     reference: Reference::House,
+///     probe: None,
+///     sequence: None,
+///     measurement: Measurement::Counter { count, bits, reference_ns },
+/// })?;
 /// drop(reporter);
 /// while let Some(answer) = receipts.next().await? {
 ///     if let Answer::Receipt(receipt) = answer {
@@ -89,8 +89,7 @@ impl Default for ReportOptions {
 /// ```
 #[derive(Debug)]
 pub struct Reporter {
-    readings: mpsc::Sender<Reading>,
-    reported: u64,
+    line: Entrance,
 }
 
 /// The report stream has ended; [`Receipts::next`] says why.
@@ -99,15 +98,28 @@ pub struct Reporter {
 pub struct Closed;
 
 impl Reporter {
-    /// Hands a reading over and returns its place, counted from 0, by which receipts speak of it.
-    /// Waits while the buffer is full.
+    /// Hands over a reading that was just taken, and returns its place, counted from 0, by which receipts
+    /// speak of it. Never waits: when the buffer is full, after a long outage, the oldest reading in
+    /// it is dropped, which is counted and told by [`Answer::Dropped`].
     ///
     /// # Errors
     /// [`Closed`] if the daemon refused the stream.
-    pub async fn report(&mut self, reading: Reading) -> Result<u64, Closed> {
-        self.readings.send(reading).await.map_err(|_| Closed)?;
-        self.reported += 1;
-        Ok(self.reported - 1)
+    pub fn report(&self, reading: Reading) -> Result<u64, Closed> {
+        self.line.push(reading).map_err(|_| Closed)
+    }
+
+    /// Hands over a reading of a record, of which none is to be missed: waits while the buffer is full.
+    /// Otherwise as [`Reporter::report`].
+    ///
+    /// # Errors
+    /// [`Closed`] if the daemon refused the stream.
+    pub async fn report_when_room(&mut self, reading: Reading) -> Result<u64, Closed> {
+        self.line.push_when_room(reading).await.map_err(|_| Closed)
+    }
+
+    /// Readings that were dropped so far because the buffer was full.
+    pub fn dropped(&self) -> u64 {
+        self.line.dropped()
     }
 }
 
@@ -117,6 +129,9 @@ impl Reporter {
 pub enum Answer {
     /// The receipt of a batch.
     Receipt(Receipt),
+    /// These readings were dropped, unsent, because newer ones needed their room in the buffer. Told
+    /// when the ones after them are sent.
+    Dropped(Range<u64>),
     /// Contact was lost; batches without a receipt are sent again when it is back.
     Lost(Loss),
     /// Contact is back.
@@ -151,8 +166,8 @@ pub struct RefusedReadings {
     pub accepted: String,
 }
 
-/// Where receipts come out. Take them while reporting: when a few hundred wait, reporting waits
-/// too. Drop it if they don't matter.
+/// Where receipts come out. Take them while reporting: when a few hundred wait, nothing more is sent.
+/// Drop it if they don't matter.
 #[derive(Debug)]
 pub struct Receipts {
     answers: mpsc::Receiver<Result<Answer, CallError>>,
@@ -170,29 +185,25 @@ impl Receipts {
 
 /// Starts the task that sends.
 pub(crate) fn open(client: Client, options: ReportOptions) -> (Reporter, Receipts) {
-    let (readings, to_gather) = mpsc::channel(options.buffer_readings.max(1));
+    let (entrance, exit) = line(options.buffer_readings);
     let (answers, receipts) = mpsc::channel(ANSWERS);
     let level = match options.promise {
         Promise::Applied => v1::ReceiptLevel::Applied,
         Promise::Durable => v1::ReceiptLevel::Durable,
     };
-    let size = options.batch_readings.clamp(1, LARGEST_BATCH);
+    let largest = options.buffer_readings.clamp(1, LARGEST_BATCH);
+    let size = options.batch_readings.clamp(1, largest);
     let sender = Sender {
         client,
-        gatherer: Gatherer::new(to_gather, size, options.linger, level),
+        gatherer: Gatherer::new(exit, size, options.linger, level),
         unreceipted: VecDeque::new(),
+        taken: 0,
         answers,
         backoff: Backoff::default(),
         lost: false,
     };
     tokio::spawn(sender.run());
-    (
-        Reporter {
-            readings,
-            reported: 0,
-        },
-        Receipts { answers: receipts },
-    )
+    (Reporter { line: entrance }, Receipts { answers: receipts })
 }
 
 /// The task behind a reporter.
@@ -201,6 +212,8 @@ struct Sender {
     gatherer: Gatherer,
     /// Oldest first: receipts come in the order of their batches.
     unreceipted: VecDeque<Batch>,
+    /// Readings before this one were sent or dropped.
+    taken: u64,
     answers: mpsc::Sender<Result<Answer, CallError>>,
     backoff: Backoff,
     lost: bool,
@@ -242,8 +255,13 @@ impl Sender {
             tokio::select! {
                 batch = self.gatherer.next_batch(), if room => match (batch, &outbound) {
                     (Some(batch), Some(open)) => {
+                        let dropped = self.taken..batch.readings.start;
+                        self.taken = batch.readings.end;
                         let request = batch.request.clone();
                         self.unreceipted.push_back(batch);
+                        if !dropped.is_empty() {
+                            self.tell(Ok(Answer::Dropped(dropped))).await;
+                        }
                         // A closed channel is a broken stream, which the other branch will find.
                         let _ = open.send(request).await;
                     }

@@ -10,6 +10,7 @@ use ratewright_client::{
     Answer, Client, ClockDeclaration, Id, Measurement, Promise, Reading, Receipt, Receipts,
     Reference, RefusalKind, ReportOptions,
 };
+use ratewright_proto::v1::reading::Measurement as Wire;
 
 fn id(text: &str) -> Id {
     Id::new(text).expect("an id")
@@ -59,17 +60,14 @@ async fn rest(mut receipts: Receipts) -> Vec<Receipt> {
 async fn refusals_name_the_reading_and_the_field() {
     let server = FakeServer::start();
     let client = connected(&server).await;
-    let (mut reporter, receipts) = client.report(ReportOptions {
+    let (reporter, receipts) = client.report(ReportOptions {
         batch_readings: 4,
         promise: Promise::Applied,
         ..ReportOptions::default()
     });
     for second in 1..=10 {
         let clock = if second == 7 { "desk-gone" } else { "desk" };
-        let place = reporter
-            .report(reading(clock, second))
-            .await
-            .expect("it is open");
+        let place = reporter.report(reading(clock, second)).expect("it is open");
         assert_eq!(place, second.unsigned_abs() - 1);
     }
     drop(reporter);
@@ -100,14 +98,13 @@ async fn batches_without_a_receipt_are_sent_again_as_they_were() {
     let mut server = FakeServer::start();
     let client = connected(&server).await;
     server.facility.known().silent_batches = 3;
-    let (mut reporter, mut receipts) = client.report(ReportOptions {
+    let (reporter, mut receipts) = client.report(ReportOptions {
         batch_readings: 8,
         ..ReportOptions::default()
     });
     for second in 1..=24 {
         reporter
             .report(reading("desk", second))
-            .await
             .expect("it is open");
     }
     server
@@ -119,7 +116,6 @@ async fn batches_without_a_receipt_are_sent_again_as_they_were() {
     // Reported meanwhile: waits its turn behind what is sent again.
     reporter
         .report(reading("desk", 25))
-        .await
         .expect("there is room in the buffer");
     server.restart();
     drop(reporter);
@@ -146,47 +142,60 @@ async fn batches_without_a_receipt_are_sent_again_as_they_were() {
 }
 
 #[tokio::test]
-async fn the_buffer_is_bounded() {
+async fn through_an_outage_the_newest_readings_are_kept_and_the_dropped_ones_told() {
     let mut server = FakeServer::start();
     let client = connected(&server).await;
     let (mut reporter, mut receipts) = client.report(ReportOptions {
         buffer_readings: 10,
         ..ReportOptions::default()
     });
-    reporter
-        .report(reading("desk", 1))
-        .await
-        .expect("it is open");
+    reporter.report(reading("desk", 1)).expect("it is open");
     assert!(matches!(
         next(&mut receipts).await,
         Some(Answer::Receipt(_))
     ));
     server.crash();
     assert!(matches!(next(&mut receipts).await, Some(Answer::Lost(_))));
-    let mut reported = 0;
-    let filling = async {
-        for second in 2..100 {
-            reporter
-                .report(reading("desk", second))
-                .await
-                .expect("it is open");
-            reported += 1;
-        }
+    for second in 2..=100 {
+        let place = reporter.report(reading("desk", second));
+        assert_eq!(place, Ok(second.unsigned_abs() - 1), "it never waits");
+    }
+    assert_eq!(reporter.dropped(), 89);
+    // One that must not be dropped waits its turn.
+    let waits = reporter.report_when_room(reading("desk", 101));
+    let waits = tokio::time::timeout(Duration::from_millis(300), waits);
+    assert!(waits.await.is_err(), "there is no room");
+    assert_eq!(reporter.dropped(), 89);
+
+    server.restart();
+    let mut answers = Vec::new();
+    while !matches!(answers.last(), Some(Answer::Receipt(_))) {
+        answers.extend(next(&mut receipts).await);
+    }
+    let dropped = answers.iter().find_map(|answer| match answer {
+        Answer::Dropped(readings) => Some(readings.clone()),
+        _ => None,
+    });
+    assert_eq!(dropped, Some(1..90), "before the receipt of what follows");
+    let Some(Answer::Receipt(receipt)) = answers.last() else {
+        panic!("the loop ended with one");
     };
-    assert!(
-        tokio::time::timeout(Duration::from_millis(300), filling)
-            .await
-            .is_err(),
-        "it waits"
-    );
-    assert_eq!(reported, 10);
+    assert_eq!((receipt.readings.clone(), receipt.accepted), (90..100, 10));
+    let known = server.facility.known();
+    let sent = known.batches.iter().flat_map(|batch| &batch.readings);
+    let seconds = sent.map(|reading| match &reading.measurement {
+        Some(Wire::Counter(counter)) => counter.reference_ns / 1_000_000_000,
+        other => panic!("only counters were reported: {other:?}"),
+    });
+    let newest = std::iter::once(1).chain(91..=100);
+    assert!(seconds.eq(newest), "{:?}", known.batches);
 }
 
 #[tokio::test]
 async fn a_refused_stream_ends_with_its_reason() {
     let server = FakeServer::start();
     let client = connected(&server).await;
-    let (mut reporter, mut receipts) = client.report(ReportOptions::default());
+    let (reporter, mut receipts) = client.report(ReportOptions::default());
     let measurement = Measurement::Frequency {
         drift: 0.0,
         deviation: 0.0,
@@ -197,7 +206,6 @@ async fn a_refused_stream_ends_with_its_reason() {
             measurement,
             ..reading("desk", 1)
         })
-        .await
         .expect("it is open");
     let error = receipts
         .next()
@@ -205,5 +213,5 @@ async fn a_refused_stream_ends_with_its_reason() {
         .expect_err("the fake will not have it");
     assert!(error.is(RefusalKind::Denied), "{error}");
     assert!(receipts.next().await.expect("it has ended").is_none());
-    assert!(reporter.report(reading("desk", 2)).await.is_err());
+    assert!(reporter.report(reading("desk", 2)).is_err());
 }

@@ -72,7 +72,7 @@ async fn measure(client: &Client, arguments: &Arguments, clocks: &Clocks) -> Res
     for id in clocks.all() {
         declare::ensure(client, id, Ratio::from_integer(TICKS_HZ), false).await?;
     }
-    let (mut reporter, receipts) = client.report(Default::default());
+    let (reporter, receipts) = client.report(Default::default());
     let receipts = tokio::spawn(take(receipts));
     let end = arguments.duration.map(|duration| Instant::now() + duration);
     let mut ticks = tokio::time::interval(arguments.every);
@@ -85,7 +85,7 @@ async fn measure(client: &Client, arguments: &Arguments, clocks: &Clocks) -> Res
                 break;
             }
         }
-        look(client, clocks, &mut reporter).await?;
+        look(client, clocks, &reporter).await?;
     }
     drop(reporter);
     receipts
@@ -94,7 +94,7 @@ async fn measure(client: &Client, arguments: &Arguments, clocks: &Clocks) -> Res
 }
 
 /// One reading of each clock.
-async fn look(client: &Client, clocks: &Clocks, reporter: &mut Reporter) -> Result<(), Failure> {
+async fn look(client: &Client, clocks: &Clocks, reporter: &Reporter) -> Result<(), Failure> {
     let epoch_ns = clocks.epoch_ns;
     if let Some(raw) = &clocks.raw {
         let look = kernel::look();
@@ -103,13 +103,8 @@ async fn look(client: &Client, clocks: &Clocks, reporter: &mut Reporter) -> Resu
             bits: 64,
             reference_ns: look.system_ns + epoch_ns,
         };
-        reporter
-            .report(reading(
-                raw,
-                Reference::Clock(clocks.system.clone()),
-                counter,
-            ))
-            .await?;
+        let reference = Reference::Clock(clocks.system.clone());
+        reporter.report(reading(raw, reference, counter))?;
     }
     // An exchange that fails is a reading less: contact comes back, or the receipts say why.
     if let Ok(exchange) = client
@@ -117,9 +112,7 @@ async fn look(client: &Client, clocks: &Clocks, reporter: &mut Reporter) -> Resu
         .await
     {
         let exchange = Measurement::Exchange(exchange);
-        reporter
-            .report(reading(&clocks.system, Reference::House, exchange))
-            .await?;
+        reporter.report(reading(&clocks.system, Reference::House, exchange))?;
     }
     Ok(())
 }
@@ -151,6 +144,10 @@ async fn take(mut receipts: Receipts) -> Result<u64, Failure> {
                     eprintln!("ratewright: refused: {field} is {value}; accepted: {accepted}");
                 }
             }
+            Answer::Dropped(readings) => eprintln!(
+                "ratewright: {} readings were dropped: contact was lost for too long",
+                readings.end - readings.start
+            ),
             Answer::Lost(loss) => eprintln!("ratewright: {loss}"),
             Answer::Regained => eprintln!("ratewright: contact is back"),
             _ => {}

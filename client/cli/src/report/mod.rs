@@ -168,7 +168,7 @@ pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
                     sequence,
                     measurement,
                 };
-                if reporter.report(reading).await.is_err() {
+                if reporter.report_when_room(reading).await.is_err() {
                     break; // The receipts say why.
                 }
                 summary.sent(row.line);

@@ -38,7 +38,8 @@ async fn send(
     loop {
         beat.tick().await;
         for delivered in facility.until(house.now()) {
-            let sent = reporter.report(on_the_wire(&delivered.reading)).await;
+            let reading = on_the_wire(&delivered.reading);
+            let sent = reporter.report_when_room(reading).await;
             sent.map_err(|_| SampleError::Closed)?;
         }
     }
