@@ -13,7 +13,7 @@ use tonic::{Status, Streaming};
 use v1::follow_settings_response::Message;
 
 use crate::backoff::Backoff;
-use crate::cache::Cache;
+use crate::cache::{Cache, Moment, system_now_ns};
 use crate::follow::Outbound;
 use crate::hosts::Place;
 use crate::newest::Newest;
@@ -76,7 +76,8 @@ pub enum Freshness {
     Current,
     /// Without contact; the setting is within its expiry.
     Stale,
-    /// House time is past the setting's expiry.
+    /// House time is past the setting's expiry. Until the first contact, a setting that was kept on disk is
+    /// judged by this machine's system clock, unless that is behind the time at which it was kept.
     Expired,
 }
 
@@ -128,6 +129,8 @@ pub(crate) struct Feed {
     cache: Option<Cache>,
     /// Settings of the cache that were not handed on yet.
     cached: VecDeque<Setting>,
+    /// When the last of them was kept.
+    kept: Option<Moment>,
     bounds: BTreeMap<Id, Bounds>,
     newest: Newest,
     heard: Option<Heard>,
@@ -147,6 +150,7 @@ impl Feed {
             held: None,
             cache: None,
             cached: VecDeque::new(),
+            kept: None,
             bounds: BTreeMap::new(),
             newest: Newest::default(),
             heard: None,
@@ -158,10 +162,12 @@ impl Feed {
     pub(crate) fn keep_in(&mut self, folder: &Path) {
         let cache = Cache::new(folder);
         for crossing in &self.crossings {
-            if let Some((setting, bounds)) = cache.read(crossing) {
-                self.bounds.insert(crossing.clone(), bounds);
-                self.newest.handed_on(crossing, setting.number);
-                self.cached.push_back(setting);
+            if let Some(kept) = cache.read(crossing) {
+                self.bounds.insert(crossing.clone(), kept.bounds);
+                self.newest.handed_on(crossing, kept.setting.number);
+                self.cached.push_back(kept.setting);
+                let latest = self.kept.into_iter().chain([kept.moment]);
+                self.kept = latest.max_by_key(|moment| moment.house_ns);
             }
         }
         self.cache = Some(cache);
@@ -179,10 +185,9 @@ impl Feed {
     }
 
     pub(crate) fn freshness(&self, setting: &Setting) -> Freshness {
-        if self
-            .house_now_ns()
-            .is_some_and(|now_ns| now_ns > setting.expiry_ns)
-        {
+        let by_the_system = || self.kept?.house_ns_at(system_now_ns());
+        let now_ns = self.house_now_ns().or_else(by_the_system);
+        if now_ns.is_some_and(|now_ns| now_ns > setting.expiry_ns) {
             Freshness::Expired
         } else if self.inbound.is_none() {
             Freshness::Stale
@@ -329,10 +334,18 @@ impl Feed {
                 error,
             });
         }
-        if let (Some(cache), Some(bounds)) = (&self.cache, self.bounds.get(&setting.crossing)) {
+        if let (Some(cache), Some(bounds), Some(house_ns)) = (
+            &self.cache,
+            self.bounds.get(&setting.crossing),
+            self.house_now_ns(),
+        ) {
             let (cache, crossing) = (cache.clone(), setting.crossing.clone());
             let (wire, bounds) = (wire.clone(), *bounds);
-            let writing = spawn_blocking(move || cache.write(&crossing, &wire, &bounds));
+            let moment = Moment {
+                house_ns,
+                system_ns: system_now_ns(),
+            };
+            let writing = spawn_blocking(move || cache.write(&crossing, &wire, &bounds, moment));
             // A full or missing disk must not keep a setting from being run.
             let _ = writing.await;
         }

@@ -55,6 +55,7 @@ mod follow;
 mod hosts;
 mod house;
 mod id;
+mod line;
 mod newest;
 mod player;
 mod reading;

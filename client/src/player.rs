@@ -130,8 +130,8 @@ impl Client {
         let mut follow = self.follow(std::slice::from_ref(crossing));
         let mut initial = options.nominal;
         if let Some(folder) = &options.keep_in {
-            if let Some((setting, _)) = Cache::new(folder).read(crossing) {
-                initial = setting.realised;
+            if let Some(kept) = Cache::new(folder).read(crossing) {
+                initial = kept.setting.realised;
             }
             follow = follow.keep_in(folder);
         }
@@ -193,7 +193,8 @@ impl Player {
         }
     }
 
-    /// Whether the newest setting can still be relied on; `None` before the first.
+    /// Whether the newest setting can still be relied on; `None` before the first. A reader on its own knows
+    /// no house time before the first contact, and so cannot call what was kept expired; this can.
     pub fn freshness(&self) -> Option<Freshness> {
         let (_, newest) = self.settings.last_key_value()?;
         Some(self.follow.freshness(newest))

@@ -31,8 +31,8 @@ impl Watch {
     }
 
     /// Keeps the newest setting of each selected crossing in a folder, and begins with what is there:
-    /// verified anew, and [stale](Freshness::Stale) until there is contact. A selection of all
-    /// crossings begins with nothing.
+    /// verified anew, and [stale](Freshness::Stale) or [expired](Freshness::Expired) until there is contact.
+    /// A selection of all crossings begins with nothing.
     #[must_use]
     pub fn keep_in(mut self, folder: &Path) -> Self {
         self.feed.keep_in(folder);

@@ -154,6 +154,47 @@ async fn a_player_that_starts_alone_runs_what_was_kept() {
 }
 
 #[tokio::test]
+async fn what_was_kept_is_told_to_have_expired_without_any_daemon() {
+    let folder = tempfile::tempdir().expect("a folder");
+    let mut server = facility(1);
+    server.facility.publish(v1::Setting {
+        review_ns: HOUSE_NS + 100_000_000,
+        expiry_ns: HOUSE_NS + 400_000_000,
+        ..in_force(2)
+    });
+    let client = Client::connect(&server.address())
+        .await
+        .expect("it listens");
+    let mut watch = client.watch(&[id()]).keep_in(folder.path());
+    let kept = next_setting(&mut watch).await;
+    assert_eq!(kept.number.number, 2);
+    drop(watch);
+    server.crash();
+
+    let alone = Client::connect_later(&[&server.address()]).expect("an address");
+    let options = PlayerOptions {
+        keep_in: Some(folder.path().to_owned()),
+        ..PlayerOptions::new(48_000, 48_000)
+    };
+    tokio::time::sleep(Duration::from_millis(500)).await;
+    let watch = alone.watch(&[id()]).keep_in(folder.path());
+    assert_eq!(watch.freshness(&kept), Freshness::Expired);
+    let (mut player, _, _) = alone.play(&id(), options).expect("one ratio");
+    let first = next(&mut player).await;
+    assert!(
+        matches!(first, Playing::Heard(Update::Setting(_))),
+        "{first:?}"
+    );
+    assert_eq!(player.freshness(), Some(Freshness::Expired));
+    // It goes on being run, and is current again with the daemon, whose house time stands still.
+    server.restart();
+    while !matches!(next(&mut player).await, Playing::Heard(Update::Regained)) {}
+    server.facility.publish(in_force(3));
+    while !matches!(next(&mut player).await, Playing::Heard(Update::Setting(_))) {}
+    assert_eq!(player.freshness(), Some(Freshness::Current));
+}
+
+#[tokio::test]
 async fn when_one_daemon_goes_the_next_is_asked() {
     let (mut one, mut other) = (facility(1), facility(1));
     let addresses = [one.address(), other.address()];
