@@ -8,7 +8,7 @@
 //! | `listen.max_connections` | 1 to 1,000,000 | 10000 | gRPC connections open at once; one more is closed as it comes |
 //! | `listen.max_connection_age_s` | s, 0, or 1 to 2592000 | 0 | after this, within a tenth of it, a gRPC connection is told to go elsewhere; 0 for never |
 //! | `store.folder` | path | `ratewright-store` | where everything that must survive is kept |
-//! | `store.keep_settings` | 100 to 1,000,000,000 | 10000 | of each crossing as many settings are kept at least; older ones are dropped in small steps |
+//! | `store.keep_settings` | 100 to 1,000,000,000 | 10000 | of each crossing as many settings are kept at least, and as many acts at most; older ones are dropped |
 //! | `shutdown.grace_s` | s, 0 to 3600 | 10 | how long open streams and calls may last once the daemon drains |
 //! | `log.format` | `text`, `json` | `text` | lines for people, or an object a line |
 //! | `house.tai_minus_utc_s` | s, 0 to 100 | 37 | added to the system's UTC to begin house time |
@@ -68,7 +68,7 @@ pub struct Config {
     /// How old a gRPC connection gets, give or take a tenth, before it is told to go elsewhere.
     /// Default: as old as it wants.
     pub max_connection_age: Option<Duration>,
-    /// Settings of each crossing that are kept at least. Default 10,000.
+    /// Settings of each crossing that are kept at least, and acts on it at most. Default 10,000.
     pub keep_settings: u64,
     /// Clocks declared in the file.
     pub clocks: Vec<ClockDeclaration>,

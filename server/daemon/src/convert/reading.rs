@@ -1,6 +1,6 @@
 //! Readings in, receipts out.
 
-use ratewright_control::{Reading, Refusal};
+use ratewright_control::{Event, Id, Reading, Reference, Refusal};
 use ratewright_proto::v1::{self, reading::Measurement as Sent};
 use ratewright_timing::Measurement;
 
@@ -16,10 +16,54 @@ const UNNAMED_PROBE: &str = "unnamed";
 /// What of a batch can be given to the engine, and what was refused before.
 #[derive(Debug, Default)]
 pub(crate) struct Batch {
-    /// Readings with their index in the batch.
-    pub(crate) readings: Vec<(usize, Reading)>,
+    /// Readings.
+    pub(crate) events: Vec<Event>,
+    /// Of each of them its place in the batch.
+    pub(crate) places: Vec<Place>,
     /// Refused ones.
     pub(crate) refusals: Vec<v1::Refusal>,
+}
+
+/// Where a reading was in its batch, and the name of its measurement in the contract.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub(crate) struct Place {
+    pub(crate) index: usize,
+    pub(crate) kind: &'static str,
+}
+
+/// What the readings of a batch name over and over, so that it is looked at once.
+#[derive(Debug, Default)]
+struct Names {
+    clock: Last<Id>,
+    reference: Last<Reference>,
+    probe: Last<String>,
+}
+
+/// The last text, and what it means.
+#[derive(Debug)]
+struct Last<T>(Option<(String, T)>);
+
+impl<T> Default for Last<T> {
+    fn default() -> Self {
+        Self(None)
+    }
+}
+
+impl<T: Clone> Last<T> {
+    fn parse(
+        &mut self,
+        sent: String,
+        parse: impl FnOnce(&str) -> Result<T, Violation>,
+    ) -> Result<T, Violation> {
+        if let Some((text, parsed)) = &self.0
+            && *text == sent
+        {
+            return Ok(parsed.clone());
+        }
+        let parsed = parse(&sent)?;
+        self.0 = Some((sent, parsed.clone()));
+        Ok(parsed)
+    }
 }
 
 /// Takes a batch apart. One that is empty or too long is refused whole.
@@ -28,14 +72,23 @@ pub(crate) fn batch(sent: Vec<v1::Reading>) -> Batch {
         let accepted = format!("1 to {MAX_BATCH} readings");
         let whole = refusal_of_all(Violation::new("readings", sent.len(), accepted));
         return Batch {
-            readings: Vec::new(),
             refusals: vec![whole],
+            ..Batch::default()
         };
     }
-    let mut batch = Batch::default();
+    let mut batch = Batch {
+        events: Vec::with_capacity(sent.len()),
+        places: Vec::with_capacity(sent.len()),
+        refusals: Vec::new(),
+    };
+    let mut names = Names::default();
     for (index, sent) in sent.into_iter().enumerate() {
-        match reading(sent) {
-            Ok(reading) => batch.readings.push((index, reading)),
+        match reading(sent, &mut names) {
+            Ok(reading) => {
+                let kind = kind(&reading.measurement);
+                batch.places.push(Place { index, kind });
+                batch.events.push(Event::Reading(reading));
+            }
             Err(violation) => {
                 batch
                     .refusals
@@ -46,8 +99,8 @@ pub(crate) fn batch(sent: Vec<v1::Reading>) -> Batch {
     batch
 }
 
-/// What the engine refused of reading `index`, as the reporter knows its fields.
-pub(crate) fn refusal_by_engine(index: usize, kind: &str, refused: Refusal) -> v1::Refusal {
+/// What the engine refused of a reading, as the reporter knows its fields.
+pub(crate) fn refusal_by_engine(Place { index, kind }: Place, refused: Refusal) -> v1::Refusal {
     let violation = engine::violation(refused, |field| match field.strip_prefix("measurement.") {
         Some("kind") => "measurement".into(),
         Some(inner) => format!("{kind}.{inner}"),
@@ -82,7 +135,7 @@ fn at(index: usize) -> String {
 }
 
 /// Name of a measurement's field in the contract.
-pub(crate) fn kind(measurement: &Measurement) -> &'static str {
+fn kind(measurement: &Measurement) -> &'static str {
     match measurement {
         Measurement::Counter { .. } => "counter",
         Measurement::SenderReport { .. } => "sender_report",
@@ -91,15 +144,17 @@ pub(crate) fn kind(measurement: &Measurement) -> &'static str {
     }
 }
 
-fn reading(sent: v1::Reading) -> Result<Reading, Violation> {
-    let clock = names::parse_clock("clock", &sent.clock)?;
-    let reference = names::parse_reference("reference", &sent.reference)?;
-    let probe = if sent.probe.is_empty() {
-        UNNAMED_PROBE
-    } else {
-        &sent.probe
-    };
-    let probe = names::parse_id("probe", probe)?.to_string();
+fn reading(sent: v1::Reading, known: &mut Names) -> Result<Reading, Violation> {
+    let clock = known
+        .clock
+        .parse(sent.clock, |sent| names::parse_clock("clock", sent))?;
+    let reference = known.reference.parse(sent.reference, |sent| {
+        names::parse_reference("reference", sent)
+    })?;
+    let probe = known.probe.parse(sent.probe, |sent| match sent {
+        "" => Ok(UNNAMED_PROBE.to_owned()),
+        named => Ok(names::parse_id("probe", named)?.to_string()),
+    })?;
     let measurement = match sent.measurement {
         Some(Sent::Counter(counter)) => self::counter(counter)?,
         Some(Sent::Exchange(exchange)) => self::exchange(exchange)?,
@@ -257,7 +312,8 @@ mod tests {
     #[test]
     fn one_bad_reading_leaves_the_others() {
         let batch = batch(vec![drift(1e-6), drift(f64::NAN), drift(2e-6)]);
-        let kept: Vec<usize> = batch.readings.iter().map(|(index, _)| *index).collect();
+        assert_eq!(batch.events.len(), 2);
+        let kept: Vec<usize> = batch.places.iter().map(|place| place.index).collect();
         assert_eq!(kept, [0, 2]);
         assert_eq!(
             batch.refusals,
@@ -274,13 +330,41 @@ mod tests {
     fn too_many_and_none_are_refused_whole() {
         for count in [0, MAX_BATCH + 1] {
             let batch = batch(vec![drift(0.0); count]);
-            assert!(batch.readings.is_empty());
+            assert!(batch.events.is_empty());
             assert_eq!(batch.refusals.len(), 1);
             let refusal = &batch.refusals[0];
             assert_eq!((refusal.index, refusal.field.as_str()), (-1, "readings"));
             assert_eq!(refusal.value, count.to_string());
         }
-        assert_eq!(batch(vec![drift(0.0); MAX_BATCH]).readings.len(), MAX_BATCH);
+        assert_eq!(batch(vec![drift(0.0); MAX_BATCH]).events.len(), MAX_BATCH);
+    }
+
+    #[test]
+    fn names_that_change_within_a_batch_are_each_taken_as_sent() {
+        let named = |clock: &str, reference: &str, probe: &str| v1::Reading {
+            clock: clock.into(),
+            reference: reference.into(),
+            probe: probe.into(),
+            ..drift(0.0)
+        };
+        let rows = [
+            ("clocks/a", "house", "", "unnamed"),
+            ("clocks/a", "clocks/b", "", "unnamed"),
+            ("clocks/b", "house", "rack", "rack"),
+            ("clocks/b", "house", "rack", "rack"),
+            ("clocks/a", "house", "", "unnamed"),
+        ];
+        let sent = rows.map(|(clock, reference, probe, _)| named(clock, reference, probe));
+        for (event, row) in batch(sent.to_vec()).events.iter().zip(rows) {
+            let Event::Reading(reading) = event else {
+                panic!("nothing else is made of a batch: {event:?}");
+            };
+            let clock = names::clock(&reading.clock);
+            let reference = names::reference(&reading.reference);
+            let (_, _, _, probe) = row;
+            assert_eq!((clock.as_str(), reference.as_str()), (row.0, row.1));
+            assert_eq!(reading.probe, probe);
+        }
     }
 
     #[test]
@@ -345,10 +429,12 @@ mod tests {
             ),
         ];
         for (reading, field) in cases {
-            assert_eq!(super::reading(reading).unwrap_err().field, field);
+            let refused = super::reading(reading, &mut Names::default()).unwrap_err();
+            assert_eq!(refused.field, field);
         }
-        assert!(reading(counter(u64::MAX, 0)).is_ok());
-        assert!(reading(report(u64::from(u32::MAX), 0)).is_ok());
-        assert!(reading(report(1 << 32, 33)).is_ok());
+        let is_taken = |sent| reading(sent, &mut Names::default()).is_ok();
+        assert!(is_taken(counter(u64::MAX, 0)));
+        assert!(is_taken(report(u64::from(u32::MAX), 0)));
+        assert!(is_taken(report(1 << 32, 33)));
     }
 }

@@ -26,7 +26,7 @@ pub(super) struct Group {
 
 impl Group {
     pub(super) fn is_full(&self) -> bool {
-        self.written.events.len() >= FULL
+        self.written.len() >= FULL
     }
 
     /// Applies a command. One that asked for no more than that is answered here.
@@ -44,12 +44,9 @@ impl Group {
                 return;
             }
         };
-        let outcomes = events
-            .into_iter()
-            .map(|event| self.apply(engine, event, now))
-            .collect();
         let done = Done {
-            outcomes,
+            events: events.len(),
+            refused: self.apply(engine, events, now),
             house_ns: now,
         };
         match promise {
@@ -58,15 +55,37 @@ impl Group {
         }
     }
 
-    /// Applies one event, and keeps it and what came out for the store.
+    /// Applies events, and keeps them and what came out for the store. Gives those that were refused, by
+    /// their place, each with why.
     pub(super) fn apply(
         &mut self,
         engine: &mut Engine,
-        event: Event,
+        mut events: Vec<Event>,
+        now: HouseNs,
+    ) -> Vec<(usize, Refusal)> {
+        let mut refused = Vec::new();
+        let mut place = 0;
+        events.retain(|event| {
+            let taken = self.apply_one(engine, event, now);
+            let is_taken = taken.is_ok();
+            refused.extend(taken.err().map(|refusal| (place, refusal)));
+            place += 1;
+            is_taken
+        });
+        if !events.is_empty() {
+            self.written.events.push((now, events));
+        }
+        refused
+    }
+
+    fn apply_one(
+        &mut self,
+        engine: &mut Engine,
+        event: &Event,
         now: HouseNs,
     ) -> Result<(), Refusal> {
-        let effects = engine.apply(&event, now)?;
-        self.touched.note(engine, &event, &effects);
+        let effects = engine.apply(event, now)?;
+        self.touched.note(engine, event, &effects);
         effects.transitions.iter().for_each(log_transition);
         let happened = effects.transitions.into_iter().map(|transition| Happening {
             at_ns: now,
@@ -84,7 +103,6 @@ impl Group {
         });
         self.happenings.extend(done);
         self.written.acts.extend(effects.acts);
-        self.written.events.push((now, event));
         Ok(())
     }
 

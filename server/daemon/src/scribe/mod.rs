@@ -38,8 +38,10 @@ pub(crate) enum Promise {
 /// What became of a command.
 #[derive(Debug)]
 pub(crate) struct Done {
-    /// For each event whether it was taken, or why not.
-    pub(crate) outcomes: Vec<Result<(), Refusal>>,
+    /// Events that were handed in.
+    pub(crate) events: usize,
+    /// Those that were not taken, by their place, each with why not.
+    pub(crate) refused: Vec<(usize, Refusal)>,
     /// House time at which they were applied.
     pub(crate) house_ns: HouseNs,
 }
@@ -47,7 +49,8 @@ pub(crate) struct Done {
 impl Done {
     /// What became of the only event of a command.
     pub(crate) fn sole(self) -> Result<(), Refusal> {
-        self.outcomes.into_iter().next().unwrap_or(Ok(()))
+        let refused = self.refused.into_iter().next();
+        refused.map_or(Ok(()), |(_, refusal)| Err(refusal))
     }
 }
 
@@ -95,7 +98,7 @@ impl Desk {
     pub(crate) async fn declare(&self, declared: Declared) -> Result<usize, Refused> {
         let decide = Box::new(move |engine: &Engine| start::all_or_none(engine, &declared));
         let done = self.send(decide, Promise::Durable).await.answer().await?;
-        Ok(done.outcomes.len())
+        Ok(done.events)
     }
 
     /// Asks the engine something, between two events; the answer must not take long, for
@@ -122,7 +125,8 @@ impl Desk {
         std::thread::spawn(move || {
             while let Some(Message::Command(command)) = messages.blocking_recv() {
                 let outcome = (command.decide)(&engine).map(|_| Done {
-                    outcomes: Vec::new(),
+                    events: 0,
+                    refused: Vec::new(),
                     house_ns: 0,
                 });
                 let _ = command.answer.send(outcome);

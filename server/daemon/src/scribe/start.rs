@@ -58,10 +58,10 @@ pub(super) fn recover(
             let mut engine = replay(*engine, journal)?;
             if let Some(epoch) = new_epoch {
                 tracing::info!(epoch, "a new epoch begins; estimates and ledgers go on");
-                let open = Event::OpenEpoch { epoch };
-                group
-                    .apply(&mut engine, open, now)
-                    .map_err(RecoverFault::Replay)?;
+                let open = vec![Event::OpenEpoch { epoch }];
+                if let Some((_, refusal)) = group.apply(&mut engine, open, now).pop() {
+                    return Err(RecoverFault::Replay(refusal));
+                }
             }
             let configured = differing(&engine, declared);
             declare(&mut engine, &mut group, configured, now)?;
@@ -149,9 +149,9 @@ fn declare(
 ) -> Result<(), RecoverFault> {
     for event in declarations {
         let name = name_of(&event);
-        group
-            .apply(engine, event, now)
-            .map_err(|refusal| RecoverFault::Declaration { name, refusal })?;
+        if let Some((_, refusal)) = group.apply(engine, vec![event], now).pop() {
+            return Err(RecoverFault::Declaration { name, refusal });
+        }
     }
     Ok(())
 }

@@ -164,10 +164,10 @@ impl Room {
 
     fn tick_if_due(&mut self, group: &mut Group) {
         let now = self.house.now();
-        if self.engine.next_due().is_some_and(|due| due <= now)
-            && let Err(refusal) = group.apply(&mut self.engine, Event::Tick, now)
-        {
-            tracing::error!(%refusal, "the engine refused a tick");
+        if self.engine.next_due().is_some_and(|due| due <= now) {
+            for (_, refusal) in group.apply(&mut self.engine, vec![Event::Tick], now) {
+                tracing::error!(%refusal, "the engine refused a tick");
+            }
         }
     }
 
@@ -176,7 +176,7 @@ impl Room {
         if !group.written.is_empty() {
             let started = Instant::now();
             self.store.commit(&group.written)?;
-            metrics::commit(group.written.events.len(), started.elapsed());
+            metrics::commit(group.written.len(), started.elapsed());
         }
         let settings: Vec<_> = group
             .written

@@ -4,7 +4,8 @@
 //! to the next; the receipts follow in order as the scribe answers. At most [`AHEAD`] batches of
 //! a stream are on their way.
 
-use ratewright_control::Event;
+use std::pin::pin;
+
 use ratewright_proto::v1::{self, reading_service_server::ReadingService};
 use tokio::sync::mpsc;
 use tokio_stream::{StreamExt as _, wrappers::ReceiverStream};
@@ -12,7 +13,7 @@ use tonic::{Request, Response, Status, Streaming};
 
 use super::{Access, Answers, Slot, leave::Leave, slots::Kind};
 use crate::{
-    convert::reading::{self, Batch},
+    convert::reading::{self, Batch, Place},
     metrics,
     refused::Violation,
     scribe::{self, Promise},
@@ -67,11 +68,13 @@ async fn take_in(
     _slot: Slot,
     leave: Leave,
 ) {
+    let (mut due, mut gone) = (pin!(leave.due()), pin!(receipts.closed()));
     loop {
         let sent = tokio::select! {
+            biased;
+            () = &mut gone => return,
+            why = &mut due => Err(why.into()),
             sent = batches.message() => sent,
-            why = leave.due() => Err(why.into()),
-            () = receipts.closed() => return,
         };
         let waiting = match sent {
             Ok(Some(batch)) => Ok(hand_in(&access, batch).await),
@@ -91,13 +94,11 @@ async fn hand_in(access: &Access, sent: v1::ReportReadingsRequest) -> Waiting {
         Ok(_) => (Promise::Durable, v1::ReceiptLevel::Durable),
         Err(_) => return Waiting::refused_level(sent.batch, sent.receipt),
     };
-    let Batch { readings, refusals } = reading::batch(sent.readings);
-    let mut places = Vec::with_capacity(readings.len());
-    let mut events = Vec::with_capacity(readings.len());
-    for (index, reading) in readings {
-        places.push((index, reading::kind(&reading.measurement)));
-        events.push(Event::Reading(reading));
-    }
+    let Batch {
+        events,
+        places,
+        refusals,
+    } = reading::batch(sent.readings);
     let pending = if events.is_empty() {
         None
     } else {
@@ -116,8 +117,8 @@ async fn hand_in(access: &Access, sent: v1::ReportReadingsRequest) -> Waiting {
 struct Waiting {
     batch: u64,
     level: v1::ReceiptLevel,
-    /// Index in the batch and kind of measurement, for each reading that the scribe got.
-    places: Vec<(usize, &'static str)>,
+    /// Of each reading that the scribe got.
+    places: Vec<Place>,
     refusals: Vec<v1::Refusal>,
     /// Absent if the scribe got none.
     pending: Option<scribe::Pending>,
@@ -146,22 +147,18 @@ impl Waiting {
         if let Some(pending) = self.pending {
             let done = pending.answer().await?;
             house_ns = done.house_ns;
-            for ((index, kind), outcome) in self.places.into_iter().zip(done.outcomes) {
-                match outcome {
-                    Ok(()) => accepted += 1,
-                    Err(refusal) => {
-                        refusals.push(reading::refusal_by_engine(index, kind, refusal));
-                    }
-                }
+            accepted = done.events - done.refused.len();
+            for (place, refusal) in done.refused {
+                refusals.push(reading::refusal_by_engine(self.places[place], refusal));
             }
             refusals.sort_by_key(|refusal| refusal.index);
         }
-        metrics::readings(accepted as usize, refusals.len());
+        metrics::readings(accepted, refusals.len());
         let (batch, level) = (self.batch, self.level.into());
         Ok(v1::ReportReadingsResponse {
             batch,
             level,
-            accepted,
+            accepted: accepted as u64,
             refusals,
             house_ns,
         })

@@ -3,9 +3,9 @@
 //! | table | holds |
 //! | --- | --- |
 //! | `snapshot` | the engine as of one journal row, with its epoch and engine version |
-//! | `journal` | every event since, with the house time at which it was applied |
+//! | `journal` | every event since, with the house time at which it was applied; a row a transaction |
 //! | `settings` | the newest settings of each crossing, with their explanations, in the form of the contract |
-//! | `acts` | what operators did, in the form of the contract |
+//! | `acts` | what operators did last to each crossing, in the form of the contract |
 //! | `declarations` | clocks and crossings as they stand, in the form of the contract |
 //!
 //! A restart reads the snapshot and replays the journal: same events, same order, same bytes. The
@@ -31,13 +31,11 @@ pub(crate) use history::{History, Recorded};
 #[derive(Debug)]
 pub(crate) struct Store {
     db: Connection,
-    /// Sequence number of the newest journal row.
+    /// Number of the newest event of the journal.
     newest: i64,
-    /// Journal rows up to this one are gone.
-    trimmed: i64,
-    /// Settings of a crossing that are kept, at least.
+    /// Settings of a crossing that are kept, at least, and acts on it, at most.
     keep_settings: u64,
-    /// The snapshot speaks of this journal row.
+    /// The snapshot was taken after this event.
     snapshot: i64,
     /// Held for as long as the store is.
     _lock: lock::Lock,
@@ -90,8 +88,8 @@ pub enum Opening {
 /// What one transaction writes.
 #[derive(Debug, Default)]
 pub(crate) struct Group {
-    /// Events that the engine has taken, in order, each with its house time.
-    pub(crate) events: Vec<(HouseNs, Event)>,
+    /// Events that the engine has taken, in order: each list with the house time of all that is in it.
+    pub(crate) events: Vec<(HouseNs, Vec<Event>)>,
     /// Settings that came out, each with its explanation.
     pub(crate) settings: Vec<(Setting, Vec<String>)>,
     /// What operators did.
@@ -99,6 +97,11 @@ pub(crate) struct Group {
 }
 
 impl Group {
+    /// Number of its events.
+    pub(crate) fn len(&self) -> usize {
+        self.events.iter().map(|(_, events)| events.len()).sum()
+    }
+
     pub(crate) fn is_empty(&self) -> bool {
         self.events.is_empty() && self.settings.is_empty() && self.acts.is_empty()
     }

@@ -7,11 +7,13 @@ use ratewright_control::{ENGINE_VERSION, Event, HouseNs};
 use ratewright_proto::v1;
 use rusqlite::{Connection, OptionalExtension};
 
-use super::{Begin, History, Opened, Opening, Store, StoreError, database, lock::Lock};
+use super::{
+    Begin, History, Opened, Opening, Store, StoreError, database, lock::Lock, write::encode,
+};
 use crate::{convert, refused::Refused};
 
 /// Version of the tables below.
-const TABLES: i64 = 2;
+const TABLES: i64 = 3;
 
 const CREATE: &str = "
     CREATE TABLE snapshot (
@@ -51,7 +53,13 @@ const ACTS: &str = "
         act BLOB NOT NULL
     ) STRICT;
     CREATE INDEX acts_of_crossing ON acts (crossing, place);
-    PRAGMA user_version = 2;
+";
+
+/// What version 3 has otherwise: a row of the journal is a transaction's events, under the number and
+/// the house time of the last of them.
+const ROWS: &str = "
+    ALTER TABLE journal RENAME COLUMN event TO events;
+    PRAGMA user_version = 3;
 ";
 
 /// The row of the snapshot, but for the state.
@@ -100,13 +108,11 @@ impl Store {
         let snapshot = head.as_ref().map_or(0, |head| head.seq);
         let (newest, house_ns) = journalled.unwrap_or((0, 0));
         let floor_ns = head.map_or(0, |head| head.house_ns).max(house_ns);
-        let trimmed = oldest_row(&db)?.map_or(snapshot, |oldest| oldest - 1);
         let history = History::open(&database(folder))?;
         let newest = newest.max(snapshot);
         let store = Store {
             db,
             newest,
-            trimmed,
             keep_settings,
             snapshot,
             _lock: lock,
@@ -129,16 +135,40 @@ fn new_epoch(before: u64, house_now_ns: HouseNs) -> u64 {
 
 fn create_tables(db: &Connection, folder: &Path) -> Result<(), StoreError> {
     let found: i64 = db.pragma_query_value(None, "user_version", |row| row.get(0))?;
-    match found {
-        0 => Ok(db.execute_batch(&format!("BEGIN; {CREATE} {ACTS} COMMIT;"))?),
-        1 => Ok(db.execute_batch(&format!("BEGIN; {ACTS} COMMIT;"))?),
-        TABLES => Ok(()),
-        _ => Err(StoreError::Tables {
+    if !(0..=TABLES).contains(&found) {
+        return Err(StoreError::Tables {
             path: folder.to_path_buf(),
             found,
             known: TABLES,
-        }),
+        });
     }
+    let transaction = db.unchecked_transaction()?;
+    if found < 1 {
+        transaction.execute_batch(CREATE)?;
+    }
+    if found < 2 {
+        transaction.execute_batch(ACTS)?;
+    }
+    if found < 3 {
+        make_lists(&transaction)?;
+        transaction.execute_batch(ROWS)?;
+    }
+    Ok(transaction.commit()?)
+}
+
+/// Makes each event of a journal that has one in a row a list of one at its house time.
+fn make_lists(db: &Connection) -> Result<(), StoreError> {
+    let mut rows = db.prepare("SELECT seq, house_ns, event FROM journal")?;
+    let rows = rows.query_map([], |row| Ok((row.get(0)?, row.get(1)?, row.get(2)?)))?;
+    let mut update = db.prepare("UPDATE journal SET event = ? WHERE seq = ?")?;
+    for row in rows.collect::<Result<Vec<_>, _>>()? {
+        let (seq, house_ns, event): (i64, HouseNs, Vec<u8>) = row;
+        // A list is its length and its items, and a pair the one and the other.
+        let mut list = encode(&(1_usize, house_ns, 1_usize))?;
+        list.extend(event);
+        update.execute((list, seq))?;
+    }
+    Ok(())
 }
 
 fn begin(
@@ -183,22 +213,19 @@ fn newest_row(db: &Connection) -> Result<Option<(i64, HouseNs)>, StoreError> {
         .optional()?)
 }
 
-fn oldest_row(db: &Connection) -> Result<Option<i64>, StoreError> {
-    Ok(db.query_row("SELECT min(seq) FROM journal", [], |row| row.get(0))?)
-}
-
 fn read_state(db: &Connection, head: &Head, new_epoch: Option<u64>) -> Result<Begin, StoreError> {
     let state: Vec<u8> = db.query_row("SELECT state FROM snapshot", [], |row| row.get(0))?;
     let engine = postcard::from_bytes(&state)
         .map_err(|why| StoreError::Damaged("the engine's state", why.to_string()))?;
-    let mut rows = db.prepare("SELECT house_ns, event FROM journal WHERE seq > ? ORDER BY seq")?;
-    let rows = rows.query_map([head.seq], |row| Ok((row.get(0)?, row.get(1)?)))?;
+    let mut rows = db.prepare("SELECT events FROM journal WHERE seq > ? ORDER BY seq")?;
+    let rows = rows.query_map([head.seq], |row| row.get::<_, Vec<u8>>(0))?;
     let mut journal = Vec::new();
     for row in rows {
-        let (house_ns, event): (HouseNs, Vec<u8>) = row?;
-        let event = postcard::from_bytes(&event)
-            .map_err(|why| StoreError::Damaged("an event of the journal", why.to_string()))?;
-        journal.push((house_ns, event));
+        let lists: Vec<(HouseNs, Vec<Event>)> = postcard::from_bytes(&row?)
+            .map_err(|why| StoreError::Damaged("a row of the journal", why.to_string()))?;
+        for (house_ns, events) in lists {
+            journal.extend(events.into_iter().map(|event| (house_ns, event)));
+        }
     }
     Ok(Begin::Continue {
         engine: Box::new(engine),

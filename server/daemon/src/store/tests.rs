@@ -79,7 +79,7 @@ fn with_settings(numbers: std::ops::RangeInclusive<u64>) -> Group {
         .map(|number| (setting(number), why(number)))
         .collect();
     Group {
-        events: vec![(7, Event::Tick)],
+        events: vec![(7, vec![Event::Tick])],
         settings,
         ..Group::default()
     }
@@ -106,14 +106,15 @@ fn two_daemons_cannot_share_a_store() {
 fn what_was_committed_is_read_back_in_order() {
     let folder = folder();
     let mut opened = begun(&folder);
-    let events = vec![(10, clock("desk")), (10, Event::Tick), (25, clock("stage"))];
+    let at_once = vec![clock("desk"), Event::Tick];
     let group = Group {
-        events: events.clone(),
+        events: vec![(10, at_once), (25, vec![clock("stage")])],
         ..Group::default()
     };
     opened.store.commit(&group).unwrap();
     drop(opened);
     let opened = open(&folder);
+    let events = [(10, clock("desk")), (10, Event::Tick), (25, clock("stage"))];
     assert_eq!(journal(&opened), events);
     assert_eq!(opened.floor_ns, 25);
 }
@@ -122,22 +123,18 @@ fn what_was_committed_is_read_back_in_order() {
 fn a_snapshot_takes_the_place_of_the_journal_which_is_trimmed_in_steps() {
     let folder = folder();
     let mut opened = begun(&folder);
-    let ticks = (1..=5_000).map(|ns| (ns, Event::Tick)).collect();
-    opened
-        .store
-        .commit(&Group {
-            events: ticks,
-            ..Group::default()
-        })
-        .unwrap();
-    opened.store.write_snapshot(&Engine::new(1), 5_000).unwrap();
+    let ticks = |from: i64, to: i64| Group {
+        events: (from..=to).map(|ns| (ns, vec![Event::Tick])).collect(),
+        ..Group::default()
+    };
+    for end in 1..=3_000 {
+        opened.store.commit(&ticks(end, end)).unwrap();
+    }
+    opened.store.commit(&ticks(3_001, 7_000)).unwrap();
+    opened.store.write_snapshot(&Engine::new(1), 7_000).unwrap();
     let mut rows = Vec::new();
-    for ns in 5_001..=5_004 {
-        let group = Group {
-            events: vec![(ns, Event::Tick)],
-            ..Group::default()
-        };
-        opened.store.commit(&group).unwrap();
+    for ns in 7_001..=7_004 {
+        opened.store.commit(&ticks(ns, ns)).unwrap();
         let count = |row: &rusqlite::Row<'_>| row.get::<_, i64>(0);
         rows.push(
             opened
@@ -147,12 +144,13 @@ fn a_snapshot_takes_the_place_of_the_journal_which_is_trimmed_in_steps() {
                 .unwrap(),
         );
     }
-    assert_eq!(rows, [3_001, 1_002, 3, 4]);
+    // Two thousand short rows, the others, the long one, and nothing more.
+    assert_eq!(rows, [1_002, 3, 3, 4]);
     assert_eq!(opened.store.since_snapshot(), 4);
     drop(opened);
     let opened = open(&folder);
     let times: Vec<i64> = journal(&opened).iter().map(|(ns, _)| *ns).collect();
-    assert_eq!(times, [5_001, 5_002, 5_003, 5_004]);
+    assert_eq!(times, [7_001, 7_002, 7_003, 7_004]);
 }
 
 #[test]
@@ -211,9 +209,8 @@ fn another_engine_version_is_refused_and_told_what_to_do() {
     let folder = folder();
     let mut opened = begun(&folder);
     let events = vec![
-        (10, clock("desk")),
-        (11, clock("stage")),
-        (12, Event::DeleteClock(Id::new("stage").unwrap())),
+        (10, vec![clock("desk"), clock("stage")]),
+        (12, vec![Event::DeleteClock(Id::new("stage").unwrap())]),
     ];
     opened
         .store
@@ -270,7 +267,7 @@ fn two_restores_of_one_backup_open_different_epochs() {
 fn an_opened_epoch_is_remembered() {
     let folder = folder();
     let mut opened = begun(&folder);
-    let events = vec![(10, Event::OpenEpoch { epoch: 900 })];
+    let events = vec![(10, vec![Event::OpenEpoch { epoch: 900 }])];
     opened
         .store
         .commit(&Group {
@@ -305,7 +302,7 @@ fn tables_of_another_version_are_refused() {
             refused,
             StoreError::Tables {
                 found: 9,
-                known: 2,
+                known: 3,
                 ..
             }
         ),
@@ -386,16 +383,72 @@ async fn acts_go_back_page_by_page() {
     assert_eq!(page(last, 2).await.0, [1]);
 }
 
-/// A store of the first daemons has no acts yet.
-#[test]
-fn tables_of_version_1_are_brought_to_version_2() {
+#[tokio::test]
+async fn a_crossing_keeps_its_newest_acts() {
     let folder = folder();
-    let mut opened = begun(&folder);
-    opened.store.commit(&with_settings(1..=3)).unwrap();
-    let back = "DROP TABLE acts; PRAGMA user_version = 1;";
-    opened.store.db.execute_batch(back).unwrap();
-    drop(opened);
-    let mut opened = open(&folder);
-    assert_eq!(journal(&opened).len(), 1);
-    opened.store.commit(&with_acts(1..=1)).unwrap();
+    drop(begun(&folder));
+    let opened = Store::open(folder.path(), Opening::Continue, 0, 3).unwrap();
+    let (mut store, history) = (opened.store, opened.history);
+    let other = Act {
+        crossing: Id::new("another").unwrap(),
+        ..act(0)
+    };
+    let of_another = Group {
+        acts: vec![other],
+        ..Group::default()
+    };
+    for group in [
+        of_another,
+        with_acts(1..=2),
+        with_acts(3..=5),
+        with_acts(6..=6),
+    ] {
+        store.commit(&group).unwrap();
+    }
+    let kept = async |crossing| {
+        let found = history
+            .acts(Id::new(crossing).unwrap(), None, 9)
+            .await
+            .unwrap();
+        found.iter().map(|(_, act)| act.at_ns).collect::<Vec<_>>()
+    };
+    assert_eq!(kept("desk-to-stage").await, [6, 5, 4]);
+    assert_eq!(kept("another").await, [0]);
+}
+
+/// A store of the first daemons has no acts yet, and those before these had a row an event.
+#[test]
+fn older_tables_are_brought_to_these() {
+    let has_no_acts = "DROP TABLE acts; PRAGMA user_version = 1;";
+    for (version, back) in [(1, has_no_acts), (2, "PRAGMA user_version = 2;")] {
+        let folder = folder();
+        let mut opened = begun(&folder);
+        opened.store.commit(&with_settings(1..=3)).unwrap();
+        let events = [clock("desk"), Event::Tick];
+        for event in &events {
+            let row = (
+                opened.store.newest + 1,
+                9,
+                super::write::encode(event).unwrap(),
+            );
+            opened.store.newest += 1;
+            let insert = "INSERT INTO journal VALUES (?, ?, ?)";
+            opened.store.db.execute(insert, row).unwrap();
+        }
+        let of_before =
+            "DELETE FROM journal WHERE seq = 1; ALTER TABLE journal RENAME COLUMN events TO event;";
+        opened.store.db.execute_batch(of_before).unwrap();
+        opened.store.db.execute_batch(back).unwrap();
+        drop(opened);
+        let mut opened = open(&folder);
+        let found = journal(&opened);
+        assert_eq!(
+            found,
+            events.map(|event| (9, event)),
+            "of version {version}"
+        );
+        opened.store.commit(&with_acts(1..=1)).unwrap();
+        drop(opened);
+        assert_eq!(journal(&open(&folder)), found);
+    }
 }

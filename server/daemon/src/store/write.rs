@@ -1,14 +1,14 @@
 //! Writing: groups of events, snapshots, and the trimming of what a snapshot made needless.
 
 use prost::Message;
-use ratewright_control::{ENGINE_VERSION, Engine, Event, HouseNs, Setting};
+use ratewright_control::{Act, ENGINE_VERSION, Engine, Event, HouseNs, Setting};
 use rusqlite::{OptionalExtension as _, Transaction, params};
 
 use super::{Group, Store, StoreError};
 use crate::convert;
 
-/// Journal rows that one transaction trims at most: a large delete would hold up the group that
-/// waits behind it.
+/// Rows that one transaction trims at most, and events of the journal, unless the oldest row has more:
+/// a large delete would hold up the group that waits behind it.
 const TRIM_STEP: i64 = 2_000;
 /// Each so many settings of a crossing its oldest ones are trimmed: to find where they begin takes
 /// milliseconds.
@@ -20,18 +20,19 @@ impl Store {
     /// # Errors
     /// [`StoreError::Database`]; nothing of the group is written then.
     pub(crate) fn commit(&mut self, group: &Group) -> Result<(), StoreError> {
-        let trim_to = self.snapshot.min(self.trimmed + TRIM_STEP);
         let transaction = self.db.transaction()?;
-        write_group(&transaction, self.newest, group)?;
-        trim(&transaction, self.trimmed, trim_to)?;
+        let newest = write_group(&transaction, self.newest, group)?;
+        trim(&transaction, self.snapshot)?;
+        for act in &group.acts {
+            trim_acts(&transaction, act, self.keep_settings)?;
+        }
         for (setting, _) in &group.settings {
             if setting.number.is_multiple_of(LOOK_EVERY) {
                 trim_settings(&transaction, setting, self.keep_settings)?;
             }
         }
         transaction.commit()?;
-        self.newest += group.events.len() as i64;
-        self.trimmed = trim_to;
+        self.newest = newest;
         Ok(())
     }
 
@@ -53,11 +54,10 @@ impl Store {
             "INSERT OR REPLACE INTO snapshot VALUES (1, ?, ?, ?, ?, ?)",
             params![epoch, ENGINE_VERSION, self.newest, house_ns, state],
         )?;
-        write_group(&transaction, self.newest, group)?;
+        let newest = write_group(&transaction, self.newest, group)?;
         transaction.commit()?;
         self.snapshot = self.newest;
-        self.trimmed = self.newest;
-        self.newest += group.events.len() as i64;
+        self.newest = newest;
         Ok(())
     }
 
@@ -93,15 +93,19 @@ impl Store {
     }
 }
 
-fn encode<T: serde::Serialize>(value: &T) -> Result<Vec<u8>, StoreError> {
+pub(super) fn encode<T: serde::Serialize>(value: &T) -> Result<Vec<u8>, StoreError> {
     postcard::to_stdvec(value)
         .map_err(|why| StoreError::Damaged("a value to be written", why.to_string()))
 }
 
-fn write_group(to: &Transaction<'_>, newest: i64, group: &Group) -> Result<(), StoreError> {
-    let mut journal = to.prepare_cached("INSERT INTO journal VALUES (?, ?, ?)")?;
-    for (seq, (house_ns, event)) in (newest + 1..).zip(&group.events) {
-        journal.execute(params![seq, house_ns, encode(event)?])?;
+/// Gives the number of the newest event, which was `newest` before.
+fn write_group(to: &Transaction<'_>, newest: i64, group: &Group) -> Result<i64, StoreError> {
+    let newest = newest + group.len() as i64;
+    if let Some((house_ns, _)) = group.events.last() {
+        to.prepare_cached("INSERT INTO journal VALUES (?, ?, ?)")?
+            .execute(params![newest, house_ns, encode(&group.events)?])?;
+    }
+    for event in group.events.iter().flat_map(|(_, events)| events) {
         if let Event::OpenEpoch { epoch } = event {
             to.execute("UPDATE snapshot SET epoch = ?", [epoch])?;
         }
@@ -126,7 +130,7 @@ fn write_group(to: &Transaction<'_>, newest: i64, group: &Group) -> Result<(), S
         let wire = convert::hand::act_to_wire(act).encode_to_vec();
         acts.execute(params![act.crossing.to_string(), wire])?;
     }
-    Ok(())
+    Ok(newest)
 }
 
 fn write_declaration(to: &Transaction<'_>, event: &Event) -> Result<(), StoreError> {
@@ -155,11 +159,26 @@ fn write_declaration(to: &Transaction<'_>, event: &Event) -> Result<(), StoreErr
     Ok(())
 }
 
-fn trim(to: &Transaction<'_>, trimmed: i64, trim_to: i64) -> Result<(), StoreError> {
-    if trim_to > trimmed {
+/// Drops the oldest rows that the snapshot holds, which ends with one.
+fn trim(to: &Transaction<'_>, snapshot: i64) -> Result<(), StoreError> {
+    let oldest: Option<i64> = to
+        .prepare_cached("SELECT min(seq) FROM journal")?
+        .query_row([], |row| row.get(0))?;
+    if let Some(oldest) = oldest.filter(|&oldest| oldest <= snapshot) {
         to.prepare_cached("DELETE FROM journal WHERE seq <= ?")?
-            .execute([trim_to])?;
+            .execute([snapshot.min(oldest + TRIM_STEP - 1)])?;
     }
+    Ok(())
+}
+
+/// Drops acts on the crossing that are older than its `keep` newest.
+fn trim_acts(to: &Transaction<'_>, newest: &Act, keep: u64) -> Result<(), StoreError> {
+    to.prepare_cached(
+        "DELETE FROM acts WHERE crossing = ?1 AND place <= (
+             SELECT place FROM acts WHERE crossing = ?1
+             ORDER BY place DESC LIMIT 1 OFFSET ?2)",
+    )?
+    .execute(params![newest.crossing.to_string(), keep])?;
     Ok(())
 }
 
