@@ -9,7 +9,7 @@ use std::error::Error;
 
 use clap::Parser;
 use ratewright_tests::chaos::proxy::FATES;
-use ratewright_tests::chaos::storm::{Plan, rage};
+use ratewright_tests::chaos::storm::{Memory, Plan, rage};
 
 /// How great a storm.
 #[derive(Debug, Parser)]
@@ -21,7 +21,7 @@ struct Arguments {
     /// Crossings that the followers share.
     #[arg(long, default_value_t = 100)]
     crossings: usize,
-    /// Restarts of the daemon, by turns killed and drained.
+    /// Restarts of the daemon in the first half, by turns killed and drained.
     #[arg(long, default_value_t = 5)]
     restarts: u64,
     /// Seed of the network.
@@ -63,6 +63,15 @@ async fn main() -> Result<(), Box<dyn Error>> {
             memory.life,
             memory.changes,
             memory.resident_kib as f64 / 1_024.0
+        );
+    }
+    if let Some([tenth, half, all]) = outcome.last_life() {
+        let mib = |memory: Memory| memory.resident_kib as f64 / 1_024.0;
+        println!(
+            "daemon's memory in its last life: {:.1} MiB after a tenth of it, {:.1} after half, {:.1} at the end",
+            mib(tenth),
+            mib(half),
+            mib(all)
         );
     }
     for wrong in outcome.behind.iter().chain(&outcome.wrongs) {

@@ -1,7 +1,8 @@
 //! The bare service: the contract on the same transport settings, with handlers that do as good as nothing.
 //!
 //! A receipt that has to be durable waits until as many bytes as the daemon's journal takes for the batch
-//! are in the same kind of database, a row for each reading, committed in groups as they come.
+//! are in the same kind of database, committed in groups as they come: a row for each batch, or, where no
+//! level is asked for, a row for each reading. The daemon's journal has a row for each group.
 
 use std::{pin::Pin, sync::Arc};
 
@@ -14,15 +15,21 @@ use tokio::sync::{mpsc, oneshot, watch};
 use tokio_stream::{Stream, StreamExt as _, wrappers::ReceiverStream, wrappers::WatchStream};
 use tonic::{Request, Response, Status, Streaming, transport::Server};
 
-/// What the daemon's journal takes for an event on average, measured in a store of the sample facility.
-const JOURNAL_BYTES: usize = 55;
+/// What the daemon's journal takes for a reading of the load; the load compares.
+pub(crate) const JOURNAL_BYTES: usize = 41;
+/// The thread that writes has the name that the daemon's has.
+pub(crate) const WRITING: &str = "scribe";
 /// As the daemon's.
 const CONNECTION_WINDOW: u32 = 8 << 20;
 const STREAM_WINDOW: u32 = 1 << 20;
 
 type Answers<T> = Pin<Box<dyn Stream<Item = Result<T, Status>> + Send>>;
-/// Rows to be written, and who waits for them.
-type ToWrite = (usize, oneshot::Sender<()>);
+/// Rows to be written, with the bytes of each, and who waits for them.
+struct ToWrite {
+    rows: usize,
+    bytes: usize,
+    done: oneshot::Sender<()>,
+}
 
 struct Bare {
     newest: Arc<watch::Sender<v1::Setting>>,
@@ -37,7 +44,10 @@ pub(crate) async fn serve(folder: &str) {
     println!("{}", listener.local_addr().expect("it is bound"));
     let (writer, to_write) = std::sync::mpsc::channel();
     let path = format!("{folder}/bare.sqlite3");
-    std::thread::spawn(move || write(&path, &to_write));
+    std::thread::Builder::new()
+        .name(WRITING.into())
+        .spawn(move || write(&path, &to_write))
+        .expect("a thread");
     let newest = Arc::new(watch::Sender::new(setting(1)));
     let bare = |newest: &Arc<_>| Bare {
         newest: Arc::clone(newest),
@@ -63,7 +73,7 @@ fn write(path: &str, to_write: &std::sync::mpsc::Receiver<ToWrite>) {
          CREATE TABLE journal (seq INTEGER PRIMARY KEY, house_ns INTEGER NOT NULL, event BLOB NOT NULL) STRICT;",
     )
     .expect("a table");
-    let bytes = [7_u8; JOURNAL_BYTES];
+    let bytes = vec![7_u8; JOURNAL_BYTES * 4096];
     while let Ok(first) = to_write.recv() {
         let group: Vec<_> = std::iter::once(first).chain(to_write.try_iter()).collect();
         let transaction = db.transaction().expect("a transaction");
@@ -71,13 +81,16 @@ fn write(path: &str, to_write: &std::sync::mpsc::Receiver<ToWrite>) {
             let mut insert = transaction
                 .prepare_cached("INSERT INTO journal (house_ns, event) VALUES (?, ?)")
                 .expect("a statement");
-            for _ in 0..group.iter().map(|(rows, _)| rows).sum() {
-                insert.execute((1_i64, &bytes[..])).expect("a row");
+            for batch in &group {
+                for _ in 0..batch.rows {
+                    let row = (1_i64, &bytes[..batch.bytes]);
+                    insert.execute(row).expect("a row");
+                }
             }
         }
         transaction.commit().expect("a commit");
-        for (_, waiting) in group {
-            let _ = waiting.send(());
+        for batch in group {
+            let _ = batch.done.send(());
         }
     }
 }
@@ -197,14 +210,19 @@ impl ReadingService for Bare {
         let writer = self.writer.clone();
         tokio::spawn(async move {
             while let Ok(Some(batch)) = batches.message().await {
-                let rows = batch.readings.len();
-                let written = (batch.receipt == v1::ReceiptLevel::Durable as i32).then(|| {
+                let readings = batch.readings.len();
+                let row = match v1::ReceiptLevel::try_from(batch.receipt) {
+                    Ok(v1::ReceiptLevel::Durable) => Some((1, readings * JOURNAL_BYTES)),
+                    Ok(v1::ReceiptLevel::Unspecified) => Some((readings, JOURNAL_BYTES)),
+                    _ => None,
+                };
+                let written = row.map(|(rows, bytes)| {
                     let (done, written) = oneshot::channel();
-                    let _ = writer.send((rows, done));
+                    let _ = writer.send(ToWrite { rows, bytes, done });
                     written
                 });
                 if sender
-                    .send((batch.batch, rows as u64, written))
+                    .send((batch.batch, readings as u64, written))
                     .await
                     .is_err()
                 {

@@ -1,8 +1,9 @@
 //! Readings in batches of 64, on four streams of four connections, as fast as receipts let them.
 //!
 //! Where the time goes: a batch that asks for a receipt which does not exist is decoded and refused at the
-//! door, which is the transport alone. Repeated readings (by their number) are taken in without being
-//! estimated with, so that applied receipts of them add the way to the engine, and durable ones the store.
+//! door, which is the transport alone. Repeated readings (by their number) are taken in and written without
+//! being estimated with. The threads of both processes tell how long they ran meanwhile, which neither
+//! waiting nor the load's share of the machine moves.
 
 use std::time::{Duration, Instant};
 
@@ -11,7 +12,12 @@ use tokio::sync::mpsc;
 use tokio_stream::wrappers::ReceiverStream;
 use tonic::transport::Channel;
 
-use crate::{line, median, served::CLOCKS, side::Side};
+use crate::{
+    bare::JOURNAL_BYTES,
+    line, median,
+    served::CLOCKS,
+    side::{Ran, Side},
+};
 
 const BATCH: u64 = 64;
 const ROUND: Duration = Duration::from_secs(2);
@@ -36,6 +42,14 @@ struct Load {
     fresh: bool,
 }
 
+/// What came of the rounds of a load, for both sides.
+struct Measured {
+    /// Readings a second.
+    rates: [f64; 2],
+    /// Time that the threads ran, us a reading.
+    ran: [Ran; 2],
+}
+
 pub(crate) async fn compare(sides: [&Side; 2]) {
     let mut next_s = FROM_S;
     let mut repeated = async |receipt| {
@@ -49,22 +63,29 @@ pub(crate) async fn compare(sides: [&Side; 2]) {
     line(
         "readings, transport alone",
         "readings/s",
-        transport,
+        transport.rates,
         "wanted 0.8 or more",
     );
     let applied = repeated(v1::ReceiptLevel::Applied.into()).await;
     line(
         "readings, receipts applied, nothing to estimate",
         "readings/s",
-        applied,
-        "stated",
+        applied.rates,
+        "stated; ratewright writes them too",
     );
     let durable = repeated(v1::ReceiptLevel::Durable.into()).await;
     line(
         "readings, receipts durable, nothing to estimate",
         "readings/s",
-        durable,
-        "wanted 0.7 or more",
+        durable.rates,
+        "wanted 0.7 or more; bare writes a row a batch",
+    );
+    let in_rows = repeated(v1::ReceiptLevel::Unspecified.into()).await;
+    line(
+        "the same",
+        "readings/s",
+        in_rows.rates,
+        "bare writes a row a reading",
     );
     let fresh = Load {
         receipt: v1::ReceiptLevel::Durable.into(),
@@ -74,29 +95,74 @@ pub(crate) async fn compare(sides: [&Side; 2]) {
     line(
         "readings, receipts durable, estimated with",
         "readings/s",
-        whole,
+        whole.rates,
         "stated",
     );
-    let microseconds = |rate: f64| 1e6 / rate;
     println!(
-        "  of {:.2} us a reading: transport {:.2}, checks and the engine's door {:.2}, store {:.2}, estimate and \
-         policy {:.2}\n",
-        microseconds(whole[1]),
-        microseconds(transport[1]),
-        microseconds(applied[1]) - microseconds(transport[1]),
-        microseconds(durable[1]) - microseconds(applied[1]),
-        microseconds(whole[1]) - microseconds(durable[1]),
+        "  the journal takes {:.1} bytes a reading; bare writes {JOURNAL_BYTES}",
+        sides[1].journal_bytes()
+    );
+    tell_where([&transport, &durable, &whole]);
+}
+
+/// Where the time of a reading goes, of the server's threads alone.
+fn tell_where([transport, durable, whole]: [&Measured; 3]) {
+    println!(
+        "  time that the server's threads run, us a reading      bare: serving  writing  ratewright: serving  writing"
+    );
+    let rows = [
+        ("transport alone", transport),
+        ("receipts durable, nothing to estimate", durable),
+        ("receipts durable, estimated with", whole),
+    ];
+    for (
+        name,
+        Measured {
+            ran: [bare, ours], ..
+        },
+    ) in rows
+    {
+        println!(
+            "    {name:<52}{:>13.2}{:>9.2}{:>21.2}{:>9.2}",
+            bare.serving, bare.writing, ours.serving, ours.writing
+        );
+    }
+    let [alone, [bare, plain], [_, full]] = [transport.ran, durable.ran, whole.ran];
+    println!(
+        "  so of {:.2} us: transport {:.2}; checks, hand-over and receipts {:.2}; the bytes to the store, as bare \
+         {:.2}; the engine's door and the journal's form {:.2}; estimate and policy {:.2}\n",
+        full.serving + full.writing,
+        alone[1].serving,
+        plain.serving - alone[1].serving,
+        bare.writing,
+        plain.writing - bare.writing,
+        full.serving + full.writing - plain.serving - plain.writing,
     );
 }
 
-async fn both(sides: [&Side; 2], load: Load, next_s: &mut i64) -> [f64; 2] {
+async fn both(sides: [&Side; 2], load: Load, next_s: &mut i64) -> Measured {
     let mut rates = [Vec::new(), Vec::new()];
+    let mut ran = [Ran::default(); 2];
+    let mut readings = [0.0; 2];
     for _ in 0..ROUNDS {
-        for (side, rates) in sides.iter().zip(&mut rates) {
-            rates.push(round(side, load, next_s).await);
+        for (side, place) in sides.iter().zip(0..) {
+            let before = side.ran();
+            let rate = round(side, load, next_s).await;
+            let after = side.ran();
+            ran[place].writing += after.writing - before.writing;
+            ran[place].serving += after.serving - before.serving;
+            readings[place] += rate * ROUND.as_secs_f64();
+            rates[place].push(rate);
         }
     }
-    rates.map(median)
+    let a_reading = |place: usize| Ran {
+        writing: ran[place].writing * 1e6 / readings[place],
+        serving: ran[place].serving * 1e6 / readings[place],
+    };
+    Measured {
+        rates: rates.map(median),
+        ran: [a_reading(0), a_reading(1)],
+    }
 }
 
 async fn round(side: &Side, load: Load, next_s: &mut i64) -> f64 {

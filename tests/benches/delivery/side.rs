@@ -5,6 +5,7 @@ use std::{
     process::{Child, Command, Stdio},
 };
 
+use crate::bare::WRITING;
 use ratewright_proto::v1::{
     ratio_service_client::RatioServiceClient, reading_service_client::ReadingServiceClient,
 };
@@ -25,7 +26,16 @@ pub(crate) struct Side {
     pub(crate) kind: Kind,
     pub(crate) address: String,
     process: Child,
-    _folder: tempfile::TempDir,
+    folder: tempfile::TempDir,
+}
+
+/// Time that the threads of a process have run, s.
+#[derive(Clone, Copy, Debug, Default)]
+pub(crate) struct Ran {
+    /// The thread that writes to the store.
+    pub(crate) writing: f64,
+    /// All the others.
+    pub(crate) serving: f64,
 }
 
 impl Side {
@@ -49,7 +59,7 @@ impl Side {
             kind,
             address: address.trim().to_owned(),
             process,
-            _folder: folder,
+            folder,
         }
     }
 
@@ -70,6 +80,37 @@ impl Side {
 
     pub(crate) async fn readings(&self) -> ReadingServiceClient<Channel> {
         ReadingServiceClient::new(self.connect().await)
+    }
+
+    /// How long its threads have run.
+    pub(crate) fn ran(&self) -> Ran {
+        let mut ran = Ran::default();
+        let threads = format!("/proc/{}/task", self.process.id());
+        for thread in std::fs::read_dir(threads).expect("it runs, on Linux") {
+            let read = |file| {
+                let path = thread.as_ref().expect("a thread").path().join(file);
+                std::fs::read_to_string(path).unwrap_or_default()
+            };
+            let ns = read("schedstat");
+            let ns = ns.split_whitespace().next().and_then(|ns| ns.parse().ok());
+            // A thread may have ended meanwhile.
+            let seconds = ns.unwrap_or(0.0) * 1e-9;
+            match read("comm").trim() {
+                WRITING => ran.writing += seconds,
+                _ => ran.serving += seconds,
+            }
+        }
+        ran
+    }
+
+    /// Bytes that the daemon's journal takes for an event, on average over what it holds.
+    pub(crate) fn journal_bytes(&self) -> f64 {
+        let path = self.folder.path().join("ratewright.sqlite3");
+        let db = rusqlite::Connection::open(path).expect("the daemon's database");
+        let all = "SELECT CAST(sum(length(events)) AS REAL) / (max(seq) - (SELECT min(seq) FROM journal)) \
+                   FROM journal WHERE seq > (SELECT min(seq) FROM journal)";
+        db.query_row(all, [], |row| row.get(0))
+            .expect("a journal of several rows")
     }
 
     /// Memory of the process that is in use, bytes.

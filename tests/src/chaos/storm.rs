@@ -39,7 +39,7 @@ pub struct Plan {
     pub crossings: usize,
     /// Changes of settings, over all crossings.
     pub changes: u64,
-    /// Restarts of the daemon in between, by turns killed and drained.
+    /// Restarts of the daemon in the first half, by turns killed and drained.
     pub restarts: u64,
     /// Seed of the network.
     pub seed: u64,
@@ -97,6 +97,16 @@ pub struct Outcome {
     pub wrongs: Vec<String>,
     /// Memory of the daemon.
     pub memory: Vec<Memory>,
+}
+
+impl Outcome {
+    /// Memory of the daemon in its last life: after a tenth of the changes of it, a half, and all.
+    pub fn last_life(&self) -> Option<[Memory; 3]> {
+        let last = self.memory.last()?.life;
+        let of_last: Vec<_> = self.memory.iter().filter(|memory| memory.life == last).collect();
+        let at = |tenths: usize| *of_last[(of_last.len() - 1) * tenths / 10];
+        Some([at(1), at(5), at(10)])
+    }
 }
 
 /// Raises the storm, calls it off, and waits until all followers have heard the last word.
@@ -245,11 +255,13 @@ impl House {
     }
 
     /// Rounds in which every crossing is declared anew, each time with another headroom, which
-    /// makes a new setting; restarts evenly in between.
+    /// makes a new setting; restarts evenly over the first half of them. The second half is one life, in
+    /// which the daemon's memory must stay as it is.
     async fn change_all(&mut self, plan: &Plan, proxy: &Proxy) -> Result<(), StormError> {
         let rounds = plan.changes.div_ceil(plan.crossings as u64);
-        let restart_every = rounds / (plan.restarts + 1) + 1;
-        let look_every = (rounds / 20).max(1);
+        let restart_every = (rounds / 2 / plan.restarts.max(1)).max(1);
+        let last_restart = restart_every * plan.restarts;
+        let look_every = (rounds / 40).max(1);
         let mut stub = self.stub().await?;
         for round in 1..=rounds {
             let calls = Calls {
@@ -260,7 +272,7 @@ impl House {
             if round % look_every == 0 {
                 self.look()?;
             }
-            if round % restart_every == 0 {
+            if round % restart_every == 0 && round <= last_restart {
                 // Some changes are under way when it goes.
                 let under_way = Calls {
                     stub: stub.clone(),
