@@ -3,8 +3,8 @@
 use std::time::Duration;
 
 use ratewright_client::{
-    Answer, CallError, Client, Follow, Freshness, Id, Measurement, Reading, Receipts, Reference,
-    Setting, Update, Watch,
+    Answer, Client, Follow, Freshness, Id, Measurement, Reading, Receipts, Reference, Setting,
+    Update, Watch,
 };
 use ratewright_server::{
     Daemon,
@@ -37,14 +37,24 @@ fn id(text: &str) -> Id {
     Id::new(text).expect("an id")
 }
 
-async fn daemon(folder: &TempDir, max_connection_age: Option<Duration>) -> Daemon {
-    let config = Config {
+fn config(folder: &TempDir, max_connection_age: Option<Duration>) -> Config {
+    Config {
         store: folder.path().to_owned(),
         drain_grace: GRACE,
         max_connection_age,
         ..parse(FACILITY).expect("a configuration")
-    };
+    }
+}
+
+async fn daemon(config: Config) -> Daemon {
     Daemon::builder(config).start().await.expect("it starts")
+}
+
+/// Declares the crossing anew, which makes a new setting.
+async fn change(daemon: &Daemon, mut config: Config, headroom_samples: f64) {
+    config.crossings[0].headroom_samples = headroom_samples;
+    let changed = daemon.redeclare(config).await;
+    assert_eq!(changed.expect("a good declaration"), 1);
 }
 
 fn address(daemon: &Daemon) -> String {
@@ -104,33 +114,18 @@ fn reading(second: i64) -> Reading {
     }
 }
 
-/// Declares the crossing anew with the daemon in use, which makes a new setting there. A connection
-/// may get old under a call, which is then made again.
-async fn change(client: &Client, headroom_samples: f64) {
-    let mut line = loop {
-        match client.crossing(&id("line")).await {
-            Ok(line) => break line,
-            Err(error) => assert!(matches!(error, CallError::Unreachable { .. }), "{error}"),
-        }
-    };
-    line.declaration.headroom_samples = headroom_samples;
-    while let Err(error) = client.declare_crossing(&line.declaration).await {
-        assert!(matches!(error, CallError::Unreachable { .. }), "{error}");
-    }
-}
-
 #[tokio::test(flavor = "multi_thread")]
 async fn streams_of_a_daemon_that_drains_go_on_at_the_other() {
     let folders = [(); 2].map(|()| tempfile::tempdir().expect("a folder"));
-    let one = daemon(&folders[0], None).await;
-    let other = daemon(&folders[1], None).await;
+    let one = daemon(config(&folders[0], None)).await;
+    let other = daemon(config(&folders[1], None)).await;
     let addresses = [address(&one), address(&other)];
     let addresses = addresses.each_ref().map(String::as_str);
     let client = Client::connect_any(&addresses).await.expect("both serve");
-    let (used, spare) = if client.address() == addresses[0] {
-        (one, other)
+    let (used, spare, folder) = if client.address() == addresses[0] {
+        (one, other, &folders[1])
     } else {
-        (other, one)
+        (other, one, &folders[0])
     };
 
     let mut watch = client.watch(&[id("line")]);
@@ -157,8 +152,9 @@ async fn streams_of_a_daemon_that_drains_go_on_at_the_other() {
     assert_eq!(client.address(), address(&spare));
     assert_eq!(watch.freshness(&first), Freshness::Current);
 
-    // Every stream is at the other now, and so is every call.
-    change(&client, 24.0).await;
+    // Every stream goes on at the other, and so does every call.
+    assert!(client.crossing(&id("line")).await.is_ok());
+    change(&spare, config(folder, None), 24.0).await;
     let second = next_setting(&mut watch).await;
     assert!(second.number > first.number, "{second:?}");
     assert_eq!(next_followed(&mut follow).await.number, second.number);
@@ -179,7 +175,8 @@ async fn streams_of_a_daemon_that_drains_go_on_at_the_other() {
 #[tokio::test(flavor = "multi_thread")]
 async fn a_watch_outlives_its_connections() {
     let folder = tempfile::tempdir().expect("a folder");
-    let only = daemon(&folder, Some(Duration::from_secs(1))).await;
+    let config = config(&folder, Some(Duration::from_secs(1)));
+    let only = daemon(config.clone()).await;
     let client = Client::connect(&address(&only)).await.expect("it serves");
     let mut watch = client.watch(&[id("line")]);
     let mut newest = next_setting(&mut watch).await.number;
@@ -189,7 +186,7 @@ async fn a_watch_outlives_its_connections() {
         };
         assert!(loss.reason.contains("the connection is old"), "{loss}");
         while seen(&mut watch).await != Update::Regained {}
-        change(&client, headroom_samples).await;
+        change(&only, config.clone(), headroom_samples).await;
         let setting = next_setting(&mut watch).await;
         assert!(setting.number > newest, "{setting:?}");
         newest = setting.number;

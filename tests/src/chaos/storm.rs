@@ -103,7 +103,11 @@ impl Outcome {
     /// Memory of the daemon in its last life: after a tenth of the changes of it, a half, and all.
     pub fn last_life(&self) -> Option<[Memory; 3]> {
         let last = self.memory.last()?.life;
-        let of_last: Vec<_> = self.memory.iter().filter(|memory| memory.life == last).collect();
+        let of_last: Vec<_> = self
+            .memory
+            .iter()
+            .filter(|memory| memory.life == last)
+            .collect();
         let at = |tenths: usize| *of_last[(of_last.len() - 1) * tenths / 10];
         Some([at(1), at(5), at(10)])
     }
