@@ -186,11 +186,19 @@ async fn what_was_kept_is_told_to_have_expired_without_any_daemon() {
         "{first:?}"
     );
     assert_eq!(player.freshness(), Some(Freshness::Expired));
-    // It goes on being run, and is current again with the daemon, whose house time stands still.
-    server.restart();
-    while !matches!(next(&mut player).await, Playing::Heard(Update::Regained)) {}
+    // It goes on being run until the daemon, whose house time stands still, has another.
     server.facility.publish(in_force(3));
-    while !matches!(next(&mut player).await, Playing::Heard(Update::Setting(_))) {}
+    server.restart();
+    loop {
+        match next(&mut player).await {
+            Playing::Heard(Update::Setting(setting)) => {
+                assert_eq!(setting.number.number, 3);
+                break;
+            }
+            Playing::Heard(Update::Lost(_) | Update::Regained) => {}
+            other => panic!("nothing else happens: {other:?}"),
+        }
+    }
     assert_eq!(player.freshness(), Some(Freshness::Current));
 }
 
