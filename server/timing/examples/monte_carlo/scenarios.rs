@@ -367,6 +367,8 @@ fn congest(paths: &mut [PathModel; 2], duration_ns: i64, random: &mut Random) {
     for _ in 0..2 {
         let by_s = random.between(200e-6, 900e-6) * if random.chance(0.7) { 1.0 } else { -1.0 };
         let path = &mut paths[random.chance(0.5) as usize];
+        // Two of them leave some way to go.
+        let by_s = by_s.max(-0.45 * path.least_s);
         path.route_changes.push((at(random, 0.25), by_s));
     }
 }

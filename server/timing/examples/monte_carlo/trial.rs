@@ -31,7 +31,7 @@ pub(crate) struct Trial {
     /// Readings so far, lost ones left out.
     pub(crate) readings: u64,
     pub(crate) first_event_s: f64,
-    /// Events of the world and what the estimator called, s.
+    /// When events of the world can be seen, and when the estimator called some, s.
     pub(crate) events: Vec<f64>,
     pub(crate) calls: Vec<(f64, Event)>,
     /// A call within 600 readings after an event, and 600 s at least, is of that event, s.
@@ -55,7 +55,7 @@ pub(crate) fn run(scenario: &Scenario, seed: u64) -> Trial {
             .events
             .first()
             .map_or(f64::INFINITY, |&ns| ns as f64 / 1e9),
-        events: world.events.iter().map(|&ns| ns as f64 / 1e9).collect(),
+        events: world.events.iter().map(|&ns| seen_s(&world, ns)).collect(),
         calls: Vec::new(),
         call_window_s: 600.0 * scenario.interval_s.max(1.0),
     };
@@ -89,6 +89,12 @@ pub(crate) fn run(scenario: &Scenario, seed: u64) -> Trial {
         }
     }
     trial
+}
+
+/// When an event can be seen, s: at once, or at the end of the gap that it falls into.
+fn seen_s(world: &World, event_ns: i64) -> f64 {
+    let gap = world.gaps.iter().find(|gap| gap.holds(event_ns));
+    gap.map_or(event_ns, |gap| gap.to_ns) as f64 / 1e9
 }
 
 /// Clock minus reference as a user would compute it, s; the counter's wraps given for free.

@@ -58,8 +58,9 @@ pub enum Delay {
 }
 
 impl Delay {
-    /// Draws a delay, s. `memory` is the correlated normal variable, kept by the path.
-    pub(crate) fn draw(&self, random: &mut Random, memory: &mut f64) -> f64 {
+    /// Draws a delay, s, with queues longer by a factor. `memory` is the correlated normal
+    /// variable, kept by the path.
+    pub(crate) fn draw(&self, random: &mut Random, memory: &mut f64, longer: f64) -> f64 {
         match *self {
             Delay::None => 0.0,
             Delay::Normal { deviation_s } => deviation_s * random.normal(),
@@ -71,7 +72,7 @@ impl Delay {
             } => {
                 let mut delay = deviation_s * random.normal();
                 if random.chance(share) {
-                    delay += tail_s * random.exponential();
+                    delay += longer * tail_s * random.exponential();
                 }
                 if random.chance(outliers) {
                     delay += random.between(1e-3, 20e-3);
@@ -82,12 +83,15 @@ impl Delay {
                 shape,
                 scale_s,
                 deviation_s,
-            } => scale_s * random.gamma(shape) + deviation_s * random.normal(),
+            } => longer * scale_s * random.gamma(shape) + deviation_s * random.normal(),
             Delay::LogNormal {
                 median_s,
                 spread,
                 deviation_s,
-            } => median_s * libm::exp(spread * random.normal()) + deviation_s * random.normal(),
+            } => {
+                let queue = median_s * libm::exp(spread * random.normal());
+                longer * queue + deviation_s * random.normal()
+            }
             Delay::Lomax {
                 scale_s,
                 exponent,
@@ -98,7 +102,7 @@ impl Delay {
                 *memory = correlation * *memory + fresh;
                 let above = cdf(-*memory).max(1e-12);
                 let queue = scale_s * libm::expm1(-libm::log(above) / exponent);
-                queue + deviation_s * random.normal()
+                longer * queue + deviation_s * random.normal()
             }
         }
     }

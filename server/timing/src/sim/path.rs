@@ -72,17 +72,15 @@ impl Path {
 
     /// Delay of what enters at a true time, s; none when it is lost.
     pub fn delay_s(&mut self, at_ns: i64) -> Option<f64> {
-        let mut beyond = self.model.delay.draw(&mut self.random, &mut self.memory);
+        let congestions = self.model.congestions.iter();
+        let holding = congestions.filter(|(period, _)| period.holds(at_ns));
+        let longer = holding.fold(1.0, |worst: f64, (_, factor)| worst.max(*factor));
+        let delay = &self.model.delay;
+        let beyond = delay.draw(&mut self.random, &mut self.memory, longer);
         let lost = self.random.chance(self.model.loss);
         if lost || self.model.outages.iter().any(|outage| outage.holds(at_ns)) {
             return None;
         }
-        let congestions = self
-            .model
-            .congestions
-            .iter()
-            .filter(|(period, _)| period.holds(at_ns));
-        beyond *= congestions.fold(1.0, |worst: f64, (_, factor)| worst.max(*factor));
         let routes = self
             .model
             .route_changes
