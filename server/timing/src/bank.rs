@@ -238,6 +238,14 @@ impl Bank {
         xy / total
     }
 
+    /// Variance of the slope over the modes; those without one have none.
+    pub(crate) fn slope_variance(&self, m: &Mixture) -> f64 {
+        let weights = self.weights();
+        let square = |(slope, w): (&Slope, &f64)| w * (slope.dd + slope.d * slope.d);
+        let sum: f64 = self.slopes.iter().zip(&weights[WALKS..]).map(square).sum();
+        sum / weights.iter().sum::<f64>() - m.d * m.d
+    }
+
     /// Corrects all modes by one sight; `centre` is its detail at the mixture's mean.
     pub(crate) fn correct(&mut self, sight: &Sight, mixture: &Mixture, centre: &Detail) {
         let share = 1.0 / sight.thinning;

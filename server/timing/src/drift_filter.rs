@@ -6,7 +6,7 @@ use crate::bank::Bank;
 use crate::diagnosis::{Diagnosis, DriftDiagnosis, Wander};
 use crate::estimate::normal_half_width;
 use crate::filter::Setup;
-use crate::holdover::{Belief, Structure};
+use crate::holdover::Structure;
 use crate::mode::{Step, slope_reach};
 use crate::outcome::Outcome;
 use crate::predict::Prediction;
@@ -109,12 +109,7 @@ impl DriftFilter {
         }
         self.bank.correct_drift(y, self.claim * r, CLIP);
         let m = self.bank.mixture();
-        self.structure.take(Belief {
-            t_s,
-            y: m.y,
-            d: m.d,
-            yy: m.yy,
-        });
+        self.structure.take(t_s, &self.bank, &m);
         Outcome::Used
     }
 

@@ -5,7 +5,7 @@ use serde::{Deserialize, Serialize};
 use crate::bank::{Bank, JUMP, MODES, Mixture, PRIOR, Sight};
 use crate::direction::{Direction, Verdict};
 use crate::growth::Growth;
-use crate::holdover::{Belief, Structure};
+use crate::holdover::Structure;
 use crate::mode::{Step, Walk};
 use crate::outcome::{Event, Outcome};
 use crate::start::{FirstGuess, PhaseAt, Start, StartRow};
@@ -344,13 +344,7 @@ impl Filter {
 
     /// Upkeep that looks at the drift: structure function, average weights, dead modes.
     fn watch_drift(&mut self, mixture: &Mixture, dt: f64) {
-        let belief = Belief {
-            t_s: self.latest.t_s,
-            y: mixture.y,
-            d: mixture.d,
-            yy: mixture.yy,
-        };
-        self.structure.take(belief);
+        self.structure.take(self.latest.t_s, &self.bank, mixture);
         self.pace.since_average_s += dt as f32;
         if self.pace.since_average_s >= AVERAGE_STEP_S {
             self.average_weights();

@@ -2,6 +2,7 @@
 
 use serde::{Deserialize, Serialize};
 
+use crate::bank::{Bank, Mixture};
 use crate::growth::{Growth, LAGS_S, prior};
 use crate::mode::slope_reach;
 
@@ -12,10 +13,24 @@ const MEMORY: f64 = 16.0;
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
 pub(crate) struct Belief {
     pub(crate) t_s: f64,
-    /// Drift, ppm, its slope, ppm/s, and the drift's variance, ppm².
+    /// Drift, ppm, its slope, ppm/s, and their variances, ppm² and ppm²/s².
     pub(crate) y: f64,
     pub(crate) d: f64,
     pub(crate) yy: f64,
+    pub(crate) dd: f64,
+}
+
+impl Belief {
+    /// What a bank believes, whose mean is `mixture`.
+    pub(crate) fn of(t_s: f64, bank: &Bank, mixture: &Mixture) -> Self {
+        Belief {
+            t_s,
+            y: mixture.y,
+            d: mixture.d,
+            yy: mixture.yy,
+            dd: bank.slope_variance(mixture),
+        }
+    }
 }
 
 /// Mean square of the extrapolation error at each lag of [`LAGS_S`].
@@ -42,10 +57,11 @@ impl Structure {
     }
 
     /// Takes what is believed now; compares it with what was believed a lag ago.
-    pub(crate) fn take(&mut self, now: Belief) {
-        if now.t_s < self.due_s {
+    pub(crate) fn take(&mut self, t_s: f64, bank: &Bank, mixture: &Mixture) {
+        if t_s < self.due_s {
             return;
         }
+        let now = Belief::of(t_s, bank, mixture);
         for (k, lag) in LAGS_S.into_iter().enumerate() {
             let Some(past) = self.since[k] else {
                 self.begin(k, now);
@@ -79,7 +95,9 @@ impl Structure {
 
     /// Beliefs worse than what they are to measure would only measure themselves.
     fn begin(&mut self, k: usize, now: Belief) {
-        if now.yy < 4.0 * self.scale * prior(LAGS_S[k]) {
+        let reach = slope_reach(LAGS_S[k]);
+        let worst = now.yy.max(reach * reach * now.dd);
+        if worst < 4.0 * self.scale * prior(LAGS_S[k]) {
             self.since[k] = Some(now);
         }
     }

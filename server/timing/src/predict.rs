@@ -13,6 +13,8 @@ use crate::start::PhaseAt;
 pub(crate) fn widening(rows: u16) -> f64 {
     1.0 + 2.0 / f64::from(rows.max(1)).sqrt()
 }
+/// Time over which a slope wanders; after it, the day has it come back, s.
+const SLOPE_WANDERS_S: f64 = 3600.0;
 /// Modes of less weight do not count for the interval.
 const LEAST_WEIGHT: f64 = 1e-3;
 
@@ -69,11 +71,12 @@ impl Filter {
             }
             let walk = self.bank.walk(j);
             let noise = self.bank.noise(j);
-            let q3 = if ahead_s < 3600.0 { noise.q3 } else { 0.0 };
+            let slope_s = ahead_s.min(SLOPE_WANDERS_S);
             let (mut own, mut y) = (noise.walk.q2 * ahead_s, walk.y);
             let mut x = walk.x + ahead_s * walk.y;
             if let Some(s) = self.bank.slope(j) {
-                own += reach * (2.0 * s.yd + reach * s.dd) + q3 * ahead_s * ahead_s * ahead_s / 3.0;
+                own += reach * (2.0 * s.yd + reach * s.dd)
+                    + noise.q3 * slope_s * slope_s * slope_s / 3.0;
                 y += reach * s.d;
                 x += 0.5 * ahead_s * reach * s.d;
                 p.slope += weight * s.d;

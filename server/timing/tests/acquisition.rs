@@ -149,6 +149,28 @@ fn a_locked_estimate_is_as_good_as_it_says() {
     );
 }
 
+/// The drift of a plain crystal changes by tenths of a ppm in an hour, and slopes of the first
+/// minutes, when they were hardly known, are no evidence of more.
+#[test]
+fn the_interval_after_an_hour_without_readings_is_of_use() {
+    for seed in 0..8 {
+        let outage = Period {
+            from_ns: 10_800 * NS,
+            to_ns: 14_400 * NS,
+        };
+        let path = PathModel {
+            outages: vec![outage],
+            ..jitter(20e-6)
+        };
+        let mut world = World::new(seed, path);
+        world.feed(6 * NS, 14_394 * NS);
+        let e = world.link.estimate(world.at_ns);
+        let truth = world.clock.drift(world.at_ns);
+        assert!(e.low <= truth && truth <= e.high, "seed {seed}: {e:?}");
+        assert!(e.half_width() < 0.6e-6, "seed {seed}: {}", e.half_width());
+    }
+}
+
 #[test]
 fn a_gap_is_holdover_and_the_interval_only_grows() {
     let outage = Period {
