@@ -3,7 +3,8 @@
 use serde::{Deserialize, Serialize};
 
 use crate::learner::Learner;
-use crate::noise::{Detail, Noise, PackedNoise};
+use crate::noise::{Burst, Detail, Noise, PackedNoise};
+use crate::route::RouteEvidence;
 use crate::start::FirstGuess;
 
 /// One direction of a path. One-way links have one, two-way links two.
@@ -33,11 +34,18 @@ pub(crate) struct Direction {
 
 /// Agreeing outliers that are a step.
 const STEP_ROWS: u8 = 5;
-/// Rows that find the offset of a changed route.
-const SETTLING_ROWS: u8 = 8;
+/// Rows that find the offset of a changed route: until it is known well, what it is wrong by
+/// would move the clock.
+const SETTLING_ROWS: u8 = 32;
+/// Of these, rows within which the other direction of a stepped clock is found out too.
+const SAME_STEP_ROWS: u8 = 8;
+/// Rows for which an offset found anew is in doubt.
+const TENTATIVE_ROWS: u16 = 128;
 /// Chance that a row begins a burst, and that a row ends one.
 const BURST_BEGINS: f64 = 1.0 / 500.0;
 const BURST_ENDS: f64 = 1.0 / 40.0;
+/// Mean lateness in a burst against that outside.
+const BURST_SCALE: f64 = 6.0;
 
 /// What a row tells about events in its direction.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -59,14 +67,6 @@ struct Correlation {
     variance: f32,
     lagged: f32,
     last: f32,
-}
-
-#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
-struct RouteEvidence {
-    late: u16,
-    least: f32,
-    mean: f32,
-    hit_rate: f32,
 }
 
 impl Correlation {
@@ -101,12 +101,7 @@ impl Direction {
             information: (1.0 / (guess.noise.sigma * guess.noise.sigma)) as f32,
             agreeing: 0,
             least_outlier: 0.0,
-            route: RouteEvidence {
-                late: 0,
-                least: 0.0,
-                mean: 0.0,
-                hit_rate: 0.5,
-            },
+            route: RouteEvidence::default(),
             age: 0,
             settling: 0,
             burst: BURST_BEGINS as f32,
@@ -137,9 +132,29 @@ impl Direction {
     }
 
     /// The density to expect of the next row: queues come in bursts, in which late rows are no
-    /// evidence of anything else.
+    /// evidence of anything else, and an offset found anew is not sure yet.
     pub(crate) fn expected_noise(&self) -> Noise {
-        self.noise().in_burst(self.burst())
+        let noise = self.noise();
+        let sigma = libm::hypot(noise.sigma, self.offset_doubt(&noise));
+        let burst = Burst {
+            weight: self.burst(),
+            tau: BURST_SCALE * noise.mean_lateness(),
+        };
+        Noise { sigma, ..noise }.with_burst(burst)
+    }
+
+    /// Deviation of an offset found anew by so many rows, µs; nought when it is as good as any.
+    fn offset_doubt(&self, noise: &Noise) -> f64 {
+        if !self.is_tentative() {
+            return 0.0;
+        }
+        let scale = 1.0 + (BURST_SCALE - 1.0) * self.burst();
+        scale * noise.mean_lateness() / (f64::from(self.age) + 1.0).sqrt()
+    }
+
+    /// Whether the offset was found anew not long ago.
+    fn is_tentative(&self) -> bool {
+        self.age < TENTATIVE_ROWS && self.rows() > self.age + TENTATIVE_ROWS
     }
 
     /// Average information of a row, 1/µs².
@@ -147,11 +162,10 @@ impl Direction {
         f64::from(self.information)
     }
 
-    /// Two-state hidden Markov filter: calm, or a burst in which rows are of the second tail.
-    fn follow_burst(&mut self, noise: &Noise, detail: &Detail) {
-        let burst = self.burst();
-        let second = (1.0 - burst) * noise.weights[2] + burst;
-        let within = (detail.shares[2] * burst / second).clamp(0.0, 1.0);
+    /// Two-state hidden Markov filter: calm, or a burst. Outliers come in either.
+    fn follow_burst(&mut self, detail: &Detail) {
+        let outlying = detail.shares[3] + detail.shares[4];
+        let within = detail.shares[5] + outlying * self.burst();
         let next = within * (1.0 - BURST_ENDS) + (1.0 - within) * BURST_BEGINS;
         self.burst = next as f32;
     }
@@ -161,10 +175,16 @@ impl Direction {
         self.correlation.thinning(self.learner.rows())
     }
 
-    /// Distance to where the row would have the error's location, µs: a Newton step of its score.
+    /// Distance to where the row would have the error's location, µs: a Newton step of its
+    /// score, by the row's own variance while that is mostly the offset's.
     pub(crate) fn newton_step(&self, detail: &Detail) -> f64 {
         let spread = 3.0 * detail.variance.sqrt();
-        (-detail.score.first / self.information()).clamp(-spread, spread)
+        let information = if self.is_tentative() {
+            1.0 / detail.variance
+        } else {
+            self.information()
+        };
+        (-detail.score.first / information).clamp(-spread, spread)
     }
 
     /// The route of this direction alone has changed: its offset is to be found anew, from the
@@ -179,14 +199,15 @@ impl Direction {
         f64::from(self.burst)
     }
 
-    /// Whether the offset is being sought.
-    pub(crate) fn is_settling(&self) -> bool {
-        self.settling > 0
+    /// Whether the offset has only just begun to be sought.
+    pub(crate) fn has_just_changed(&self) -> bool {
+        self.settling > SETTLING_ROWS - SAME_STEP_ROWS
     }
 
     /// It was the clock that stepped: the offset stands as it is.
     pub(crate) fn stop_settling(&mut self) {
         self.settling = 0;
+        self.age = 0;
     }
 
     /// Takes a row to find the offset by, while that is sought; true when it was.
@@ -212,7 +233,7 @@ impl Direction {
         let noise = self.noise();
         let row = self.learner.rows().saturating_add(1);
         self.correlation.take(detail.score.first, row);
-        self.follow_burst(&noise, detail);
+        self.follow_burst(detail);
         let least = 0.02 / detail.variance;
         let old = self.information();
         let curved = old + (-detail.score.second - old) / 64.0;
@@ -227,13 +248,18 @@ impl Direction {
         moved
     }
 
-    /// Weighs a row of error `e` as evidence, and moves the offset when an event is certain.
+    /// Weighs a row of error `e` as evidence of events.
     pub(crate) fn judge(&mut self, e: f64, detail: &Detail, p: f64) -> Verdict {
-        let wide = if e < 0.0 { detail.shares[3] } else { 0.0 };
-        if detail.shares[4] + wide > 0.5 {
+        let early = if e < 0.0 { detail.shares[3] } else { 0.0 };
+        if detail.shares[4] + early > 0.5 {
             return self.outlying(e, p);
         }
-        self.agreeing = 0;
+        // Late rows in between do not speak against early ones.
+        self.agreeing = if self.least_outlier < 0.0 {
+            self.agreeing.saturating_sub(1)
+        } else {
+            0
+        };
         self.late(e)
     }
 
@@ -269,43 +295,32 @@ impl Direction {
         (STEP_ROWS - 2..STEP_ROWS).contains(&self.agreeing)
     }
 
-    /// Moves the offset by the step that the outliers agree on: the least late of them is
-    /// nearest to the error's location.
-    pub(crate) fn follow_step(&mut self) {
-        self.offset += self.sign() * (self.least_outlier + 0.5 * self.noise().sigma);
+    /// Moves the offset by the step that the outliers agree on, or by what a longer route shows:
+    /// the least late of the rows is nearest to the error's location. What looked like a burst
+    /// was none.
+    pub(crate) fn follow(&mut self, verdict: Verdict) {
+        let sigma = self.noise().sigma;
+        let moved = match verdict {
+            Verdict::Stepped => self.least_outlier + 0.5 * sigma,
+            Verdict::Rerouted => self.route.least_us() - sigma,
+            Verdict::Ordinary | Verdict::Outlier => return,
+        };
+        self.offset += self.sign() * moved;
         self.agreeing = 0;
-        self.route.late = 0;
+        self.route.forget();
+        self.burst = BURST_BEGINS as f32;
     }
 
-    /// Long runs of late rows: the least latency has grown by what the earliest of them shows.
+    /// Runs of late rows: the least latency may have grown by what the earliest of them shows.
     fn late(&mut self, e: f64) -> Verdict {
         let noise = self.noise();
-        let thinning = self.thinning();
-        let line = noise.sigma + 0.5 * noise.tau[0];
-        let route = &mut self.route;
-        let hit = e <= line;
-        route.hit_rate += (f32::from(u8::from(hit)) - route.hit_rate) / 256.0;
-        if hit {
-            route.late = 0;
-            return Verdict::Ordinary;
+        let hit = e <= noise.sigma + 0.5 * noise.tau[0];
+        self.route.take(e, hit);
+        let alike = self.thinning().min(3.0);
+        if !hit && self.route.is_certain(noise.mean_lateness(), alike) {
+            Verdict::Rerouted
+        } else {
+            Verdict::Ordinary
         }
-        if route.late == 0 {
-            (route.least, route.mean) = (e as f32, e as f32);
-        }
-        route.late = route.late.saturating_add(1);
-        route.least = route.least.min(e as f32);
-        route.mean += (e as f32 - route.mean) / f32::from(route.late);
-        // A longer route is as steady as the old one; a congested one is not.
-        let unsteady = f64::from(route.mean - route.least) / noise.mean_lateness();
-        let unsteady = unsteady.clamp(1.0, 2.0);
-        let hit_rate = f64::from(route.hit_rate).max(0.02);
-        let enough = 14.0 * thinning.min(3.0) * unsteady / hit_rate;
-        if route.late < 12 || f64::from(route.late) <= enough {
-            return Verdict::Ordinary;
-        }
-        let least = f64::from(route.least);
-        self.offset += self.sign() * (least - noise.sigma);
-        self.route.late = 0;
-        Verdict::Rerouted
     }
 }

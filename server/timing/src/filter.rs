@@ -72,6 +72,11 @@ struct Pace {
 /// Going out, lateness makes z smaller; coming back, larger.
 const TWO_WAY_SIGNS: [f64; 2] = [-1.0, 1.0];
 
+/// Whether both directions show the same move of the clock: late in one, early in the other.
+fn contrary([out, back]: [f64; 2]) -> bool {
+    out * back < 0.0 && (out + back).abs() < 0.5 * out.abs().max(back.abs())
+}
+
 fn signs(two_way: bool, setup: &Setup) -> [f64; 2] {
     if two_way {
         TWO_WAY_SIGNS
@@ -171,9 +176,10 @@ impl Filter {
         self.advance(dt, in_gap);
         let count = if self.pace.two_way { 2 } else { 1 };
         let mut verdicts = [Verdict::Ordinary; 2];
+        let mut errors = [0.0; 2];
         let mut newton = [None; 2];
         for c in 0..count {
-            (verdicts[c], newton[c]) = self.look(c, row.z[c]);
+            (verdicts[c], errors[c], newton[c]) = self.look(c, row.z[c]);
         }
         if let ([Verdict::Ordinary, Verdict::Ordinary], [Some(out), Some(back)]) =
             (verdicts, newton)
@@ -184,7 +190,7 @@ impl Filter {
         pace.rows_since_event = pace.rows_since_event.saturating_add(1);
         let outlying = verdicts[..count].contains(&Verdict::Outlier);
         pace.outlier_share += (f32::from(u8::from(outlying)) - pace.outlier_share) / 32.0;
-        let outcome = self.conclude(&verdicts[..count]);
+        let outcome = self.conclude(&verdicts[..count], errors);
         let mixture = self.note_latest();
         self.watch_drift(&mixture, dt);
         if self.jumped() {
@@ -251,9 +257,9 @@ impl Filter {
         }
     }
 
-    /// Weighs one direction's value into the bank; its verdict, and its Newton residual, µs,
-    /// unless it only sought its offset.
-    fn look(&mut self, c: usize, z: f64) -> (Verdict, Option<f64>) {
+    /// Weighs one direction's value into the bank; its verdict, its error, and its Newton
+    /// residual, µs, unless it only sought its offset.
+    fn look(&mut self, c: usize, z: f64) -> (Verdict, f64, Option<f64>) {
         let direction = &mut self.directions[c];
         let mixture = self.bank.mixture();
         let value = z - direction.offset;
@@ -265,7 +271,7 @@ impl Filter {
         };
         let detail = noise.detail(e, mixture.xx);
         if direction.seek_offset(&detail) {
-            return (Verdict::Ordinary, None);
+            return (Verdict::Ordinary, e, None);
         }
         let sight = Sight {
             value,
@@ -278,7 +284,7 @@ impl Filter {
         let verdict = direction.judge(e, &detail, mixture.xx);
         let moved = direction.learn(&detail, mixture.xx, f64::from(self.pace.least_sigma));
         self.bank.loosen(0.5 * moved * moved, 0.0);
-        (verdict, Some(residual))
+        (verdict, e, Some(residual))
     }
 
     /// The offsets of the directions are known only by their difference: it is learned from
@@ -295,22 +301,31 @@ impl Filter {
     }
 
     /// What the row's verdicts amount to; after a step of the clock itself the bank is loosened.
-    fn conclude(&mut self, verdicts: &[Verdict]) -> Outcome {
-        let stepped = |v: &Verdict| *v == Verdict::Stepped;
-        // The two directions of a stepped clock may be found out a row or a few apart.
-        if verdicts.iter().any(stepped) {
-            if self.pace.two_way && self.directions.iter().any(Direction::suspects_step) {
-                return Outcome::Outlier;
-            }
-            let found = self
-                .directions
-                .iter_mut()
-                .zip(verdicts)
-                .filter(|(_, v)| stepped(v));
-            found.for_each(|(direction, _)| direction.follow_step());
+    fn conclude(&mut self, verdicts: &[Verdict], errors: [f64; 2]) -> Outcome {
+        let changed = |v: &Verdict| matches!(v, Verdict::Stepped | Verdict::Rerouted);
+        let outlying = verdicts.contains(&Verdict::Outlier);
+        if !verdicts.iter().any(changed) {
+            return if outlying {
+                Outcome::Outlier
+            } else {
+                Outcome::Used
+            };
         }
-        let settling = self.pace.two_way && self.directions.iter().any(Direction::is_settling);
-        if verdicts.iter().all(stepped) || (settling && verdicts.iter().any(stepped)) {
+        let everywhere = verdicts.iter().all(changed);
+        // The two directions of a stepped clock may be found out a row or a few apart, and a
+        // clock whose drift has jumped leaves them contrary to each other.
+        let awaited = verdicts.contains(&Verdict::Stepped)
+            && self.directions.iter().any(Direction::suspects_step);
+        if self.pace.two_way && (awaited || (!everywhere && contrary(errors))) {
+            return Outcome::Outlier;
+        }
+        let just_changed =
+            self.pace.two_way && self.directions.iter().any(Direction::has_just_changed);
+        let stepped = verdicts.contains(&Verdict::Stepped);
+        for (direction, verdict) in self.directions.iter_mut().zip(verdicts) {
+            direction.follow(*verdict);
+        }
+        if (everywhere || just_changed) && stepped {
             self.directions
                 .iter_mut()
                 .for_each(Direction::stop_settling);
@@ -318,16 +333,8 @@ impl Filter {
             self.bank.loosen(0.25 * agreement * agreement, 0.05 * 0.05);
             return Outcome::Event(Event::PhaseStep);
         }
-        let changed = |v: &Verdict| matches!(v, Verdict::Stepped | Verdict::Rerouted);
-        if verdicts.iter().any(changed) {
-            self.settle_changed(verdicts.iter().map(changed));
-            return Outcome::Event(Event::RouteChange);
-        }
-        if verdicts.contains(&Verdict::Outlier) {
-            Outcome::Outlier
-        } else {
-            Outcome::Used
-        }
+        self.settle_changed(verdicts.iter().map(changed));
+        Outcome::Event(Event::RouteChange)
     }
 
     /// Where the other direction still measures the clock, the changed one finds its offset.

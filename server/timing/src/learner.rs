@@ -2,7 +2,7 @@
 
 use serde::{Deserialize, Serialize};
 
-use crate::noise::{Detail, Noise};
+use crate::noise::{Burst, Detail, Noise};
 
 /// Averages of what the parts of the density had to do with the errors so far.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
@@ -46,19 +46,22 @@ impl Learner {
 
     /// Takes one error's detail; true when it is time to [`Learner::refresh`].
     pub(crate) fn learn(&mut self, noise: &Noise, detail: &Detail) -> bool {
-        let gain = (1.0 / (f64::from(self.rows) + PRIOR_ROWS)).max(LEAST_GAIN);
+        // A row that belongs to a burst says nothing of the ordinary density.
+        let calm = (1.0 - detail.shares[5]).max(1e-9);
+        let gain = calm * (1.0 / (f64::from(self.rows) + PRIOR_ROWS)).max(LEAST_GAIN);
+        let shares = detail.shares.map(|share| share / calm);
         let noise_var = noise.sigma * noise.sigma;
         let r = noise_var / detail.variance;
         let mut square = 0.0;
         for (k, mean) in self.shares.iter_mut().enumerate() {
-            let share = detail.shares[k];
+            let share = shares[k];
             blend(mean, share, gain);
             square += share * (r * r * detail.normal_square[k] + noise_var * (1.0 - r));
         }
         for (k, mean) in self.excess.iter_mut().enumerate() {
-            blend(mean, detail.shares[k + 1] * detail.excess[k], gain);
+            blend(mean, shares[k + 1] * detail.excess[k], gain);
         }
-        blend(&mut self.flat, detail.shares[4], gain);
+        blend(&mut self.flat, shares[4], gain);
         blend(&mut self.normal_square, square, gain);
         self.rows = self.rows.saturating_add(1);
         self.until_refresh -= 1;
@@ -88,6 +91,7 @@ impl Learner {
             tau: [first, second],
             weights,
             flat: flat / sum,
+            burst: Burst::NONE,
         }
     }
 }
@@ -103,6 +107,7 @@ mod tests {
             tau: [9.0, 45.0],
             weights: [0.5, 0.37, 0.12],
             flat: 0.01,
+            burst: Burst::NONE,
         };
         let again = Learner::new(&noise).refresh(1e-4);
         assert!((again.sigma - noise.sigma).abs() < 1e-6);

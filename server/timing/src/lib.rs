@@ -124,6 +124,7 @@ mod normal;
 mod oscillator;
 mod outcome;
 mod predict;
+mod route;
 pub mod sim;
 pub mod stability;
 mod start;

@@ -2,8 +2,10 @@
 //!
 //! The error e has its tail to the right. With S² = σ² + P the variance of the normal part
 //! (P is the filter's own), the density is
-//! .98·[w₀N(0, S²) + w₁EMG(S, τ₁) + w₂EMG(S, τ₂)] + .02·(1 − w_F)·N(0, (4(σ + τ₁))² + P) + w_F·flat,
+//! .98·[w₀N(0, S²) + w₁EMG(S, τ₁) + w₂EMG(S, τ₂) + w_B·EMG(S, τ_B)] +
+//! .02·(1 − w_F)·N(0, (4(σ + τ₁))² + P) + w_F·flat,
 //! flat meaning 1 over 2 s, and EMG the exponentially modified normal: normal plus exponential.
+//! The part B is that of bursts of queueing, on two-way paths alone.
 //! With u = e/S − S/τ and h = φ(u)/Φ(u): ln g = −ln τ + S²/2τ² − e/τ + ln Φ(u),
 //! g′/g = h/S − 1/τ, (ln g)″ = −h(u + h)/S². Times in µs.
 
@@ -30,6 +32,25 @@ pub(crate) struct Noise {
     pub(crate) weights: [f64; 3],
     /// Weight of the flat part.
     pub(crate) flat: f64,
+    /// What a burst of queueing adds.
+    pub(crate) burst: Burst,
+}
+
+/// A third tail: that of a burst of queueing, in which every row is late.
+#[derive(Clone, Copy, Debug)]
+pub(crate) struct Burst {
+    /// Probability of being in one.
+    pub(crate) weight: f64,
+    /// Mean of the tail, µs.
+    pub(crate) tau: f64,
+}
+
+impl Burst {
+    /// No burst.
+    pub(crate) const NONE: Burst = Burst {
+        weight: 0.0,
+        tau: 1.0,
+    };
 }
 
 /// A density as it is kept between rows: σ, both τ, the weights of tails and flat part; that of
@@ -53,6 +74,7 @@ impl PackedNoise {
             tau: [short, long],
             weights: [1.0 - first - second - flat, first, second],
             flat,
+            burst: Burst::NONE,
         }
     }
 }
@@ -69,8 +91,8 @@ pub(crate) struct Score {
 #[derive(Clone, Copy, Debug)]
 pub(crate) struct Detail {
     pub(crate) score: Score,
-    /// Responsibilities of normal, first and second tail, wide, flat.
-    pub(crate) shares: [f64; 5],
+    /// Responsibilities of normal, first and second tail, wide, flat, burst.
+    pub(crate) shares: [f64; 6],
     /// Expected exponential part of either tail, µs.
     pub(crate) excess: [f64; 2],
     /// Expected square of the normal part (noise and filter together), µs²: normal, tails.
@@ -85,6 +107,14 @@ struct Tail {
     density: f64,
     ratio: f64,
     u: f64,
+}
+
+impl Tail {
+    const NONE: Tail = Tail {
+        density: 0.0,
+        ratio: 0.0,
+        u: 0.0,
+    };
 }
 
 #[inline]
@@ -125,12 +155,15 @@ impl Noise {
         self.sigma + self.weights[1] * self.tau[0] + self.weights[2] * self.tau[1]
     }
 
-    /// The density while the path is in a burst with the given probability: what it moves from
-    /// the other parts to the second tail.
-    pub(crate) fn in_burst(&self, probability: f64) -> Noise {
-        let [normal, first, second] = self.weights.map(|w| w * (1.0 - probability));
-        let weights = [normal, first, second + probability * (1.0 - self.flat)];
-        Noise { weights, ..*self }
+    /// The density while the path may be in a burst.
+    pub(crate) fn with_burst(&self, burst: Burst) -> Noise {
+        let calm = 1.0 - burst.weight;
+        Noise {
+            weights: self.weights.map(|w| w * calm),
+            flat: self.flat * calm,
+            burst,
+            ..*self
+        }
     }
 
     /// Log density and derivatives of error `e` seen by a state of phase variance `p`.
@@ -153,6 +186,12 @@ impl Noise {
             tail(e, s, self.tau[0], kernel),
             tail(e, s, self.tau[1], kernel),
         ];
+        let burst = if self.burst.weight > 0.0 {
+            tail(e, s, self.burst.tau, kernel)
+        } else {
+            Tail::NONE
+        };
+        let late = CORE * self.burst.weight * burst.density;
         let parts = [
             CORE * self.weights[0] * FRAC_1_SQRT_TAU / s * kernel,
             CORE * self.weights[1] * tails[0].density,
@@ -160,25 +199,28 @@ impl Noise {
             (1.0 - CORE) * (1.0 - self.flat) * FRAC_1_SQRT_TAU * wide_inverse.sqrt() * wide_kernel,
             self.flat * FLAT,
         ];
-        let total: f64 = parts.iter().sum();
+        let total = parts.iter().sum::<f64>() + late;
         let whole = 1.0 / total;
-        let shares = parts.map(|part| part * whole);
+        let [normal, first_tail, second_tail, wide, flat] = parts.map(|part| part * whole);
+        let shares = [normal, first_tail, second_tail, wide, flat, late * whole];
+        let steep = |t: &Tail, tau: f64| t.ratio / s - 1.0 / tau;
+        let bent = |t: &Tail| -t.ratio * (t.u + t.ratio) * inverse;
         let slope = [
             -e * inverse,
-            tails[0].ratio / s - 1.0 / self.tau[0],
-            tails[1].ratio / s - 1.0 / self.tau[1],
+            steep(&tails[0], self.tau[0]),
+            steep(&tails[1], self.tau[1]),
             -e * wide_inverse,
         ];
-        let curve = [
-            -inverse,
-            -tails[0].ratio * (tails[0].u + tails[0].ratio) * inverse,
-            -tails[1].ratio * (tails[1].u + tails[1].ratio) * inverse,
-            -wide_inverse,
-        ];
+        let curve = [-inverse, bent(&tails[0]), bent(&tails[1]), -wide_inverse];
         let (mut first, mut second) = (0.0, 0.0);
         for k in 0..4 {
             first += shares[k] * slope[k];
             second += shares[k] * (curve[k] + slope[k] * slope[k]);
+        }
+        if self.burst.weight > 0.0 {
+            let slope = steep(&burst, self.burst.tau);
+            first += shares[5] * slope;
+            second += shares[5] * (bent(&burst) + slope * slope);
         }
         let excess = tails.map(|t| s * (t.u + t.ratio));
         let square = |k: usize| {
@@ -237,32 +279,43 @@ mod tests {
         tau: [20.0, 110.0],
         weights: [0.6, 0.25, 0.14],
         flat: 0.01,
+        burst: Burst::NONE,
     };
 
     #[test]
     fn derivatives_agree_with_differences_of_the_log_density() {
-        for p in [0.0, 3.0, 400.0] {
-            for i in -400..900 {
-                let e = i as f64 * 0.5;
-                let h = 1e-3;
-                let (a, b, c) = (
-                    NOISE.score(e - h, p),
-                    NOISE.score(e, p),
-                    NOISE.score(e + h, p),
-                );
-                let first = (c.log - a.log) / (2.0 * h);
-                let second = (c.first - a.first) / (2.0 * h);
-                assert!(
-                    (b.first - first).abs() < 1e-5,
-                    "e {e} p {p}: {} {first}",
-                    b.first
-                );
-                assert!(
-                    (b.second - second).abs() < 1e-5,
-                    "e {e} p {p}: {} {second}",
-                    b.second
-                );
+        let congested = NOISE.with_burst(Burst {
+            weight: 0.3,
+            tau: 300.0,
+        });
+        for noise in [NOISE, congested] {
+            for p in [0.0, 3.0, 400.0] {
+                assert_derivatives(&noise, p);
             }
+        }
+    }
+
+    fn assert_derivatives(noise: &Noise, p: f64) {
+        for i in -400..900 {
+            let e = i as f64 * 0.5;
+            let h = 1e-3;
+            let (a, b, c) = (
+                noise.score(e - h, p),
+                noise.score(e, p),
+                noise.score(e + h, p),
+            );
+            let first = (c.log - a.log) / (2.0 * h);
+            let second = (c.first - a.first) / (2.0 * h);
+            assert!(
+                (b.first - first).abs() < 1e-5,
+                "e {e} p {p}: {} {first}",
+                b.first
+            );
+            assert!(
+                (b.second - second).abs() < 1e-5,
+                "e {e} p {p}: {} {second}",
+                b.second
+            );
         }
     }
 

@@ -2,7 +2,7 @@
 
 use serde::{Deserialize, Serialize};
 
-use crate::noise::Noise;
+use crate::noise::{Burst, Noise};
 use crate::normal::{Z95, t975};
 
 /// Rows gathered before the filter begins.
@@ -226,6 +226,7 @@ pub(crate) fn first_noise(low: f64, high: f64, least_us: f64) -> Noise {
         tau: [tau, (5.0 * tau).max(3.0 * sigma)],
         weights: [0.5, 0.37, 0.12],
         flat: 0.01,
+        burst: Burst::NONE,
     }
 }
 
