@@ -1,6 +1,8 @@
-//! Follows a crossing with a handle; a thread that sleeps stands for the sound device:
-//! `cargo run -p ratewright-client --example play -- stage-to-truck http://127.0.0.1:7420`.
-//! More addresses of the same facility may follow.
+//! Follows a crossing with a handle; a thread that sleeps stands for the sound device. `hall-programme`
+//! is a crossing of the sample facility; `ratewright standing` lists those of any other:
+//! `cargo run -p ratewright-client --example play -- hall-programme http://127.0.0.1:7420`.
+//! More addresses of the same facility may follow. The daemon believes what it reports: the crossing's
+//! account of phase error is then that of this thread.
 #![allow(clippy::print_stdout, reason = "an example prints")]
 #![allow(
     clippy::disallowed_methods,
@@ -21,6 +23,7 @@ async fn main() -> Result<(), Box<dyn std::error::Error>> {
     let options = PlayerOptions {
         trim: Some(Trim::new(5.0)?),
         keep_in: Some(std::env::temp_dir().join("ratewright-play")),
+        // Rates of the source and of the sink.
         ..PlayerOptions::new(48_000, 48_000)
     };
     let (mut player, reader, probe) = client.play(&Id::new(crossing)?, options)?;
@@ -50,6 +53,7 @@ fn device(mut reader: Reader, probe: &SinkProbe) {
         // A real one does this from another thread, where a send may take its time.
         probe.read(0, taken, Instant::now());
         while made < taken {
+            // `made` runs ahead of `taken` by less than this loop makes: the same counter.
             let block = reader.next_block(made);
             // ... make block.outputs outputs, each block.m phases of block.l after the last ...
             made += block.outputs;

@@ -1,14 +1,15 @@
-//! Reports this machine's monotonic clock as if it were a sound device's counter of samples:
-//! `cargo run -p ratewright-client --example report -- http://127.0.0.1:7420 my-clock`.
+//! Reports this machine's monotonic clock as if it were a sound device's counter of samples, against
+//! house time: `cargo run -p ratewright-client --example report -- http://127.0.0.1:7420 my-clock`, once
+//! `my-clock` of 48 kHz is declared.
 #![allow(clippy::print_stdout, reason = "an example prints")]
 #![allow(
     clippy::disallowed_methods,
     reason = "an example reads its arguments and the clock"
 )]
 
-use std::time::{Duration, Instant, SystemTime, UNIX_EPOCH};
+use std::time::{Duration, Instant};
 
-use ratewright_client::{Answer, Client, Id, Measurement, Reading, Reference};
+use ratewright_client::{Answer, CallError, Client, Id, Measurement, Reading, Reference};
 
 const RATE_HZ: u128 = 48_000;
 
@@ -22,9 +23,10 @@ async fn main() -> Result<(), Box<dyn std::error::Error>> {
 
     let start = Instant::now();
     for _ in 0..60 {
+        let ahead_ns = ahead_of_house_ns(&client, start).await?;
         // Latch the counter first, then read the reference at once.
         let count = start.elapsed().as_nanos() * RATE_HZ / 1_000_000_000;
-        let now = SystemTime::now().duration_since(UNIX_EPOCH)?;
+        let house_ns = local_ns(start) - ahead_ns;
         reporter.report(Reading {
             clock: clock.clone(),
             reference: Reference::House,
@@ -33,7 +35,7 @@ async fn main() -> Result<(), Box<dyn std::error::Error>> {
             measurement: Measurement::Counter {
                 count: u64::try_from(count)?,
                 bits: 64,
-                reference_ns: i64::try_from(now.as_nanos())?,
+                reference_ns: house_ns,
             },
         })?;
         tokio::time::sleep(Duration::from_secs(1)).await;
@@ -52,4 +54,21 @@ async fn main() -> Result<(), Box<dyn std::error::Error>> {
         }
     }
     Ok(())
+}
+
+/// This machine's own time: ns since the start.
+fn local_ns(start: Instant) -> i64 {
+    i64::try_from(start.elapsed().as_nanos()).unwrap_or(i64::MAX)
+}
+
+/// How far that is ahead of house time, ns, by the quickest of a few exchanges.
+async fn ahead_of_house_ns(client: &Client, start: Instant) -> Result<i64, CallError> {
+    let mut quickest = client.exchange_time(|| local_ns(start)).await?;
+    for _ in 1..4 {
+        let exchange = client.exchange_time(|| local_ns(start)).await?;
+        if exchange.round_trip_ns() < quickest.round_trip_ns() {
+            quickest = exchange;
+        }
+    }
+    Ok(quickest.ahead_ns())
 }

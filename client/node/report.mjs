@@ -54,7 +54,8 @@ await call(crossings, "CreateCrossing", {
   },
 });
 
-// House time, from an exchange: only differences matter to these readings.
+// House time, from an exchange: ns since 1970-01-01, TAI-like, so not Date.now(). The way here took a moment,
+// but only differences matter to these readings.
 const { t2Ns } = await call(readings, "ExchangeTime", { t1Ns: "0" });
 const begins = BigInt(t2Ns) - 120_000_000_000n;
 const batch = Array.from({ length: 120 }, (_, second) => ({

@@ -1,18 +1,20 @@
-"""Follows a crossing and reports what a follower reports, with grpcio and nothing of ratewright's own.
+"""Follows a crossing with grpcio and nothing of ratewright's own.
 
     pip install -r requirements.txt
-    python follow.py 127.0.0.1:7420 stage-to-truck
+    python follow.py 127.0.0.1:7420 film
 
-Each setting is printed as it comes. A real player runs it from the first block end at or after its effect
-instant, and says so; this one only waits for the instant. The mapping of house time to its own clock comes
-from the stream itself: each message carries the house time of its sending, so it is late by the way here.
-A player needs better: the two-way exchange of ReadingService. Certificates are not verified here; the Rust
-library does that.
+`film` is a crossing of the sample facility; a wrong name is answered with those that there are. Each setting
+is printed as it comes. A player runs it from the first block end at or after its effect instant, and says so
+with that block end's house time: `--says-applied` does, although nothing is run here. The daemon believes it,
+so use it only for a crossing that nobody else runs. A player would also report the level of its buffer
+(Occupancy), as measured. Certificates are not verified here; the Rust library does that.
 """
 
+import argparse
 import queue
 import sys
 import tempfile
+import threading
 import time
 from pathlib import Path
 
@@ -20,7 +22,8 @@ import grpc
 from grpc_tools import protoc
 
 PROTO = Path(__file__).resolve().parents[2] / "proto"
-MESSAGES = sys.argv[3:4]  # stop after so many settings; none: go on
+# Longer silence than this, in seconds, is a loss of contact: a daemon that hangs closes no connection.
+SILENCE_S = 5
 
 
 def generate():
@@ -35,7 +38,31 @@ def generate():
 
 
 generate()
-from ratewright.v1 import ratio_pb2, ratio_pb2_grpc  # noqa: E402
+from ratewright.v1 import crossing_pb2, crossing_pb2_grpc  # noqa: E402
+from ratewright.v1 import ratio_pb2, ratio_pb2_grpc, reading_pb2, reading_pb2_grpc  # noqa: E402
+
+
+def ahead_ns(readings):
+    """This machine's monotonic clock minus house time, ns, by the quickest of a few exchanges."""
+
+    def exchange():
+        request = reading_pb2.ExchangeTimeRequest(t1_ns=time.monotonic_ns())
+        answer = readings.ExchangeTime(request, timeout=SILENCE_S)
+        t4_ns = time.monotonic_ns()
+        there, back = answer.t1_ns - answer.t2_ns, t4_ns - answer.t3_ns
+        return (t4_ns - answer.t1_ns) - (answer.t3_ns - answer.t2_ns), (there + back) // 2
+
+    return min(exchange() for _ in range(4))[1]
+
+
+def until_silent(readings, call):
+    """Ends a call when the daemon no longer answers."""
+    while call.is_active():
+        time.sleep(SILENCE_S)
+        try:
+            ahead_ns(readings)
+        except grpc.RpcError:
+            call.cancel()
 
 
 def running(setting):
@@ -49,59 +76,72 @@ def running(setting):
     return f"{pair.low.l}/{pair.low.m} and {pair.high.l}/{pair.high.m} in turn ({kind})"
 
 
-def follow(stub, crossing, most):
+def follow(channel, wishes, known):
+    """Follows until the stream ends; `known` are the names of the settings heard, the newest last."""
+    ratios = ratio_pb2_grpc.RatioServiceStub(channel)
+    readings = reading_pb2_grpc.ReadingServiceStub(channel)
     said = queue.Queue()
-    select = ratio_pb2.WatchSettingsRequest(crossings=[f"crossings/{crossing}"])
+    select = ratio_pb2.WatchSettingsRequest(
+        crossings=[f"crossings/{wishes.crossing}"], newest_known=known[-1:]
+    )
     said.put(ratio_pb2.FollowSettingsRequest(select=select))
-    heard = 0
-    for answer in stub.FollowSettings(iter(said.get, None)):
-        if answer.WhichOneof("message") == "refused":
+    call = ratios.FollowSettings(iter(said.get, None))
+    threading.Thread(target=until_silent, args=(readings, call), daemon=True).start()
+    for answer in call:
+        kind = answer.WhichOneof("message")
+        if kind == "refused":
             refused = answer.refused
             print(f"refused: {refused.field} is {refused.value}: accepted is {refused.accepted}")
+        if kind != "setting":
             continue
         setting = answer.setting
-        print(f"{setting.name}: {running(setting)}, from house time {setting.effect_ns} ns", flush=True)
-        wait_ns = setting.effect_ns - answer.house_ns
-        time.sleep(max(wait_ns, 0) / 1e9)
-        house_ns = answer.house_ns + max(wait_ns, 0)
-        said.put(
-            ratio_pb2.FollowSettingsRequest(
-                applied=ratio_pb2.Applied(setting=setting.name, house_ns=house_ns)
-            )
-        )
-        said.put(
-            ratio_pb2.FollowSettingsRequest(
-                occupancy=ratio_pb2.Occupancy(
-                    crossing=setting.crossing,
-                    level_samples=0.0,
-                    deviation_samples=1.0,
-                    house_ns=house_ns,
-                )
-            )
-        )
-        heard += 1
-        if heard == most:
-            # Half-closed: what was said is still taken in before the stream ends.
+        reason = ratio_pb2.SettingReason.Name(setting.reason).removeprefix("SETTING_REASON_").lower()
+        print(f"{setting.name}: {running(setting)}, from house time {setting.effect_ns} ns ({reason})", flush=True)
+        known.append(setting.name)
+        if wishes.says_applied:
+            ahead = ahead_ns(readings)
+            time.sleep(max(setting.effect_ns + ahead - time.monotonic_ns(), 0) / 1e9)
+            applied = ratio_pb2.Applied(setting=setting.name, house_ns=time.monotonic_ns() - ahead)
+            said.put(ratio_pb2.FollowSettingsRequest(applied=applied))
+        if len(known) == wishes.settings:
+            # Half-closed: what was said is still taken in, and the stream goes on until it is cancelled.
             said.put(None)
             time.sleep(0.5)
+            call.cancel()
             return
+
+
+def crossings(channel):
+    listed = crossing_pb2_grpc.CrossingServiceStub(channel).ListCrossings(
+        crossing_pb2.ListCrossingsRequest(page_size=1000)
+    )
+    return ", ".join(crossing.name.removeprefix("crossings/") for crossing in listed.crossings)
 
 
 def main():
-    if len(sys.argv) < 3:
-        sys.exit("usage: follow.py HOST:PORT CROSSING [SETTINGS]")
-    most = int(MESSAGES[0]) if MESSAGES else None
+    parser = argparse.ArgumentParser(description="Follows a crossing.")
+    parser.add_argument("server", metavar="HOST:PORT")
+    parser.add_argument("crossing")
+    parser.add_argument("settings", nargs="?", type=int, help="stop after so many")
+    parser.add_argument("--says-applied", action="store_true", help="tell the daemon that each was applied")
+    wishes = parser.parse_args()
+    known = []
     while True:
-        try:
-            with grpc.insecure_channel(sys.argv[1]) as channel:
-                follow(ratio_pb2_grpc.RatioServiceStub(channel), sys.argv[2], most)
-            return
-        except grpc.RpcError as lost:
-            if lost.code() != grpc.StatusCode.UNAVAILABLE:
-                sys.exit(f"{lost.code().name}: {lost.details()}")
-            # A player goes on with what it runs, and comes back.
-            print("no contact; once more in a second", flush=True)
-            time.sleep(1)
+        with grpc.insecure_channel(wishes.server) as channel:
+            try:
+                return follow(channel, wishes, known)
+            except grpc.RpcError as lost:
+                if lost.code() == grpc.StatusCode.NOT_FOUND:
+                    sys.exit(f"{lost.details()}; there are: {crossings(channel)}")
+                if lost.code() not in (
+                    grpc.StatusCode.UNAVAILABLE,
+                    grpc.StatusCode.CANCELLED,
+                    grpc.StatusCode.DEADLINE_EXCEEDED,
+                ):
+                    sys.exit(f"{lost.code().name}: {lost.details()}")
+        # A player goes on with what it runs, and comes back.
+        print("no contact; once more in a second", flush=True)
+        time.sleep(1)
 
 
 main()

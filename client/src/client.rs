@@ -216,7 +216,8 @@ impl Client {
     }
 
     /// Exchanges timestamps with the daemon's house time. `clock_ns` reads the caller's clock, ns;
-    /// it is read last before sending and first after the answer.
+    /// it is read last before sending and first after the answer. House time at a reading of that
+    /// clock is the reading minus [`Exchange::ahead_ns`], good to half of [`Exchange::round_trip_ns`].
     ///
     /// # Errors
     /// See [`CallError`].

@@ -210,13 +210,15 @@ pub struct Crossing {
 /// How a crossing fares.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
 pub enum CrossingState {
-    /// A clock of it has not been measured yet.
+    /// A clock of it was never measured: it runs at the nominal ratio.
     Waiting,
-    /// The forecast keeps the phase error inside the headroom.
+    /// The phase error is kept within the headroom, as far as is known; also while a clock is in holdover.
+    /// Settings are changed in time, so a forecast slip under the present one alone does not end this.
     Holding,
-    /// The forecast leaves the headroom before the review, or a clock is in holdover.
+    /// The phase error cannot be vouched for: it is outside the headroom, or too uncertain, or what is run
+    /// errs by more than the headroom leaves.
     Degraded,
-    /// The bounds hold nothing that keeps the phase error inside the headroom.
+    /// No ratio within the bounds can hold it; the nearest is served.
     OutOfBounds,
 }
 

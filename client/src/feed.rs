@@ -17,7 +17,7 @@ use crate::cache::{Cache, Moment, system_now_ns};
 use crate::follow::Outbound;
 use crate::hosts::Place;
 use crate::newest::Newest;
-use crate::wire::crossing_name;
+use crate::wire::{crossing_name, crossing_of};
 use crate::{CallError, Client, Id, RefusalKind, Setting, VerifyError};
 
 /// What a watch or a follow yields.
@@ -46,6 +46,8 @@ pub enum Update {
         value: String,
         /// What would have been accepted.
         accepted: String,
+        /// The crossing that the report spoke of; `None` if the daemon does not say.
+        crossing: Option<Id>,
     },
 }
 
@@ -288,10 +290,13 @@ impl Feed {
                 field,
                 value,
                 accepted,
+                crossing,
+                report: _,
             }) => Some(Update::ReportRefused {
                 field,
                 value,
                 accepted,
+                crossing: crossing_of(&crossing),
             }),
             Message::Setting(wire) => {
                 let name = wire.name.clone();

@@ -22,7 +22,7 @@ const REPORTS: usize = 64;
 /// ```no_run
 /// # async fn example(client: ratewright_client::Client) -> Result<(), Box<dyn std::error::Error>> {
 /// use ratewright_client::{Id, Update};
-/// let mut follow = client.follow(&[Id::new("stage-to-truck")?]);
+/// let mut follow = client.follow(&[Id::new("film")?]);
 /// while let Update::Setting(setting) = follow.next().await? {
 ///     // ... run it from the first block end at or after setting.effect_ns, then:
 ///     let (block_end_ns, sink_sample) = (setting.effect_ns + 2_000, 48_000);

@@ -17,8 +17,14 @@
 //! certificate does not prove it, and none that is older than one handed on before.
 //!
 //! # Units and signs
-//! Times end in `_ns`; house time is the daemon's. Drifts and residuals are dimensionless, and a
-//! positive drift runs fast: true rate = nominal · (1 + drift).
+//! Times end in `_ns`. House time is the daemon's: ns since 1970-01-01 on a TAI-like scale, which is Unix
+//! time plus 37 s; [`Client::exchange_time`] compares any clock with it. Drifts and residuals are dimensionless, and a
+//! positive drift runs fast: true rate = nominal · (1 + drift). Rates are exact, as
+//! `num_rational::Ratio<u64>` in Hz, and ratios are [`Fraction`]s; both are re-exported here.
+//!
+//! # Depending on it
+//! It is on no registry. A program depends on it by path or by git, such as
+//! `ratewright-client = { path = "../ratewright/client" }`, and needs tokio.
 //!
 //! # Examples
 //! Hold a crossing at whatever the daemon decides:
@@ -26,7 +32,7 @@
 //! use ratewright_client::{Client, Id, Update};
 //! # async fn example() -> Result<(), Box<dyn std::error::Error>> {
 //! let client = Client::connect("http://127.0.0.1:7420").await?;
-//! let mut watch = client.watch(&[Id::new("stage-to-truck")?]);
+//! let mut watch = client.watch(&[Id::new("film")?]);
 //! loop {
 //!     match watch.next().await? {
 //!         Update::Setting(setting) => println!("{}: {}", setting.crossing, setting.wanted),
@@ -76,8 +82,10 @@ pub use facility::{
 pub use feed::{Freshness, Loss, Update};
 pub use follow::Follow;
 pub use id::{Id, IdError};
+pub use num_rational::Ratio;
 pub use player::{Player, PlayerOptions, Playing, SinkProbe};
 pub use ratewright_handle::{Applied, ArmError, Block, Reader, Realised, SettingNumber, Trim};
+pub use ratewright_ratio::{Bounds, Fraction};
 pub use reading::{Exchange, Measurement, Reading, Reference};
 pub use report::{
     Answer, Closed, Promise, Receipt, Receipts, RefusedReadings, ReportOptions, Reporter,

@@ -43,8 +43,10 @@ pub struct PlayerOptions {
 }
 
 impl PlayerOptions {
-    /// One ratio from a sink and a source rate, both in whole Hz and at least 1; levels good to half
-    /// a sample, no trim, nothing kept.
+    /// One ratio from a source and a sink rate, both in whole Hz and at least 1; levels good to half
+    /// a sample, no trim, nothing kept. Where a rate is no whole number, give `nominal` and `sink_hz`
+    /// beside it: `Realised::Single(Fraction::new(1001, 1000))` into 48 000 000/1001 Hz from 48 kHz less
+    /// 0.2 %.
     pub fn new(source_hz: u64, sink_hz: u64) -> Self {
         Self {
             nominal: Realised::Single(Fraction::new(sink_hz, source_hz)),
@@ -60,7 +62,9 @@ impl PlayerOptions {
 #[derive(Clone, Debug, PartialEq)]
 #[non_exhaustive]
 pub enum Playing {
-    /// What the follower heard. A setting has been armed already.
+    /// What the follower heard. A setting has been armed already, and takes effect at the first block
+    /// end at or after its instant: `lead_ns` of the crossing, 1 s by default, is the time there is to
+    /// make the filter of a new L.
     Heard(Update),
     /// The audio thread runs a setting, and the daemon was told.
     Applied(Applied),
@@ -93,7 +97,8 @@ impl SinkProbe {
     }
 }
 
-/// Follows one crossing and keeps an audio thread's [`Reader`] supplied.
+/// Follows one crossing and keeps an audio thread's [`Reader`] supplied. It tells the daemon what was
+/// applied and how full the buffer is; the clocks are measured by [`Reporter`](crate::Reporter)s, not by it.
 ///
 /// # Examples
 /// See `examples/play.rs`.

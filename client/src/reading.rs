@@ -3,6 +3,10 @@
 use crate::Id;
 
 /// One measurement of a clock against a reference.
+///
+/// Against [`Reference::House`] every time on the reference is **house time**: ns since 1970-01-01 on
+/// a TAI-like scale, 37 s ahead of Unix time. [`Client::exchange_time`](crate::Client::exchange_time)
+/// tells it; `examples/report.rs` shows how.
 #[derive(Clone, Debug, PartialEq)]
 pub struct Reading {
     /// The measured clock.
@@ -21,7 +25,8 @@ pub struct Reading {
 /// What a clock is read against.
 #[derive(Clone, Debug, PartialEq, Eq, PartialOrd, Ord)]
 pub enum Reference {
-    /// House time.
+    /// House time: ns since 1970-01-01, TAI-like; neither Unix time nor a time since the start of a
+    /// machine.
     House,
     /// Another clock, usually the reporter's host.
     Clock(Id),

@@ -81,13 +81,20 @@ async fn a_refused_report_leaves_the_stream_open() {
     follow
         .occupancy(&id("hall-to-van"), 0.25, 0.0, HOUSE_NS)
         .await;
-    let Update::ReportRefused { field, value, .. } = next(&mut follow).await else {
+    let Update::ReportRefused {
+        field,
+        value,
+        crossing,
+        ..
+    } = next(&mut follow).await
+    else {
         panic!("a deviation of 0 is refused");
     };
     assert_eq!(
         (field.as_str(), value.as_str()),
         ("occupancy.deviation_samples", "0")
     );
+    assert_eq!(crossing, Some(id("hall-to-van")));
     server
         .facility
         .publish(nearest_setting("hall-to-van", (1, 2), 1.0885, (256, 256)));

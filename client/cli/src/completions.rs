@@ -8,8 +8,13 @@ use crate::out;
 
 /// Prints the script by which a shell completes commands and options
 ///
-/// For bash, put it where completions are looked for:
-/// `ratewright completions bash > ~/.local/share/bash-completion/completions/ratewright`
+/// Put it where completions are looked for, such as
+///
+///   bash   ~/.local/share/bash-completion/completions/ratewright
+///   zsh    _ratewright in a folder of $fpath
+///   fish   ~/.config/fish/completions/ratewright.fish
+///
+/// once that folder is there (mkdir -p): `ratewright completions bash > FILE`
 #[derive(Debug, Args)]
 #[command(verbatim_doc_comment)]
 pub(crate) struct Arguments {

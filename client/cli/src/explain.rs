@@ -1,6 +1,7 @@
 //! `ratewright explain`: why a ratio was chosen.
 
 use clap::Args;
+use ratewright_client::Crossing;
 use serde_json::json;
 
 use crate::failure::Failure;
@@ -9,7 +10,7 @@ use crate::out::say;
 use crate::server::{self, Server, SettingName};
 use crate::{json, names, show};
 
-/// Tells why a setting was chosen
+/// Tells why a setting was chosen, and how its crossing stands now
 #[derive(Debug, Args)]
 pub(crate) struct Arguments {
     /// A crossing, for its newest setting, or CROSSING/EPOCH-NUMBER
@@ -49,5 +50,21 @@ pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
     for line in lines {
         text += &format!("  {line}\n");
     }
+    if number.is_none() {
+        text += &now(&client.crossing(crossing).await?);
+    }
     out::prose(&text)
+}
+
+/// How the crossing stands now; what stands above is of the decision.
+fn now(crossing: &Crossing) -> String {
+    let status = &crossing.status;
+    format!(
+        "now: {}; off by {}, phase error {}, slip if left alone: {}\n  {}\n",
+        show::crossing_state(crossing),
+        show::offset(status.residual),
+        show::phase(crossing),
+        show::left(status.seconds_to_slip),
+        status.reason,
+    )
 }

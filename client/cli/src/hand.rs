@@ -10,7 +10,8 @@ use crate::{json, names, show};
 
 /// Keeps a crossing as it runs, whatever is measured, until it is released
 ///
-/// Settings are renewed, so that followers do not expire, and the forecast goes on.
+/// Settings are renewed, so that followers do not expire, and the forecast goes on. Whatever runs is off
+/// by a little, so that the buffer slips sooner or later: when is told, and by `standing`.
 #[derive(Debug, Args)]
 pub(crate) struct Pin {
     /// The crossing

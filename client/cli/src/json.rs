@@ -95,6 +95,7 @@ pub(crate) fn setting(setting: &Setting) -> Value {
         "epoch": setting.number.epoch,
         "number": setting.number.number,
         "wanted": fraction(&setting.wanted),
+        "realisation": kind(&setting.realised),
         "realised": realised(&setting.realised),
         "residual_ppb": setting.residual * 1e9,
         "certificate": proof(&setting.proof),
@@ -108,6 +109,16 @@ pub(crate) fn setting(setting: &Setting) -> Value {
         "target_low": setting.evidence.target_low,
         "target_high": setting.evidence.target_high,
     })
+}
+
+/// As the realisation of a crossing is spelled.
+fn kind(realised: &Realised) -> &'static str {
+    match realised {
+        Realised::Single(_) => "single",
+        Realised::Cadence(_) => "cadence",
+        Realised::Stepping(_) => "stepping",
+        Realised::Lazy { .. } => "lazy",
+    }
 }
 
 fn realised(realised: &Realised) -> Value {

@@ -48,6 +48,26 @@ pub(crate) fn duration(seconds: f64) -> String {
     "for ever".to_owned()
 }
 
+/// A time that is left, in s, to the second: `8 min 37 s`; none is not within a day.
+pub(crate) fn left(seconds: Option<f64>) -> String {
+    let Some(seconds) = seconds else {
+        return "not within a day".to_owned();
+    };
+    match seconds.max(0.0).round() as u64 {
+        s @ 0..60 => format!("{s} s"),
+        s @ 60..3_600 => format!("{} min {:02} s", s / 60, s % 60),
+        s => format!("{} h {:02} min", s / 3_600, s % 3_600 / 60),
+    }
+}
+
+/// The phase error of a crossing in its headroom: `+12.3 of ±48`.
+pub(crate) fn phase(crossing: &Crossing) -> String {
+    format!(
+        "{:+.1} of ±{}",
+        crossing.status.phase_error_samples, crossing.declaration.headroom_samples
+    )
+}
+
 /// A rate: `44.1 kHz`, `60 Hz`, `48000000/1001 Hz`.
 pub(crate) fn rate(hz: Ratio<u64>) -> String {
     if !hz.is_integer() {

@@ -11,6 +11,10 @@ use crate::server::Server;
 use crate::{json, layout, show, terminal};
 
 /// Shows how every clock and every crossing stands
+///
+/// "Slip if left alone" is when a buffer would slip if nothing were set anew: a crossing that is holding
+/// gets another setting before. "Vouched for" is how long it can be kept from slipping, however it is
+/// set, if no further reading comes.
 #[derive(Debug, Args)]
 pub(crate) struct Arguments {
     /// Print JSON for a machine
@@ -52,7 +56,16 @@ pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
     }
     say!("")?;
     let mut rows = vec![heading(&[
-        "crossing", "from", "to", "setting", "runs", "off by", "slips in", "state",
+        "crossing",
+        "from",
+        "to",
+        "setting",
+        "runs",
+        "off by",
+        "phase error",
+        "slip if left alone",
+        "vouched for",
+        "state",
     ])];
     rows.extend(crossings.iter().map(crossing_row));
     out::prose(&layout::fitted(&rows, width))?;
@@ -87,9 +100,9 @@ fn crossing_row(crossing: &Crossing) -> Vec<String> {
         number,
         runs,
         off,
-        status
-            .seconds_to_slip
-            .map_or("not within a day".to_owned(), show::duration),
+        show::phase(crossing),
+        show::left(status.seconds_to_slip),
+        show::left(status.seconds_vouched),
         show::crossing_state(crossing),
     ]
 }

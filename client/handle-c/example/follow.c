@@ -21,12 +21,18 @@ static void done(int status) { must(status == RW_OK, rw_status_text(status)); }
 /* One second of 48 kHz, as fast as it goes. */
 static void *resample(void *argument) {
     rw_reader *reader = argument;
-    uint64_t sink_sample = 48000, inputs = 0;
+    uint64_t sink_sample = 48000, inputs = 0, phase = 0, phases = 0;
     while (sink_sample < 96000) {
         rw_block block = rw_reader_next_block(reader, sink_sample);
-        /* ... make block.outputs outputs, each block.m phases of block.l after the last ... */
+        if (phases != 0 && phases != block.l) phase = phase * block.l / phases;
+        phases = block.l;
+        for (uint64_t output = 0; output < block.outputs; output++) {
+            /* ... make one output with the filter of this phase ... */
+            phase += block.m;
+            inputs += phase / phases;
+            phase %= phases;
+        }
         sink_sample += block.outputs;
-        inputs += block.m * block.outputs / block.l;
         rw_reader_set_level(reader, 0.25);
     }
     printf("%" PRIu64 " inputs made %" PRIu64 " outputs\n", inputs, sink_sample - 48000);

@@ -12,7 +12,7 @@ use std::fmt::Debug;
 
 use thiserror::Error;
 
-pub(crate) use name::{clock_name, crossing_name, setting_name};
+pub(crate) use name::{clock_name, crossing_name, crossing_of, setting_name};
 
 /// A message from the daemon that breaks the contract.
 #[derive(Clone, Debug, PartialEq, Eq, Error)]

@@ -13,6 +13,11 @@ pub(crate) fn crossing_name(id: &Id) -> String {
     format!("crossings/{id}")
 }
 
+/// The crossing of a name, if it is one.
+pub(crate) fn crossing_of(name: &str) -> Option<Id> {
+    id_of("crossing", "crossings", name).ok()
+}
+
 /// `crossings/{id}/settings/{epoch}-{number}`, or `latest` in place of the number.
 pub(crate) fn setting_name(crossing: &Id, number: Option<SettingNumber>) -> String {
     match number {

@@ -281,6 +281,8 @@ impl RatioService for Facility {
                                     field: "occupancy.deviation_samples".to_owned(),
                                     value: occupancy.deviation_samples.to_string(),
                                     accepted: "above 0".to_owned(),
+                                    crossing: occupancy.crossing,
+                                    report: 1,
                                 })
                             }
                             _ => continue,

@@ -59,6 +59,7 @@ pub use event::{Event, Reading, Reference};
 pub use explain::explain;
 pub use id::{Id, IdError};
 pub use inspect::{LinkView, PhaseForecast, PhasePoint};
+pub use policy::SWING_SHARE;
 pub use refusal::{Refusal, RefusalKind};
 pub use setting::{Evidence, Realised, Reason, Setting};
 pub use status::{ClockEstimate, ClockFault, CrossingState, CrossingStatus, Pin};

@@ -38,7 +38,7 @@ pub(crate) const MAX_VIRTUAL: u64 = 1 << 31;
 /// The share of the headroom that the running error of lazy switching may take: each hold of one
 /// of the two ratios runs across it, so that a wider one switches less often but leaves less of
 /// the tube for what is uncertain.
-pub(crate) const SWING_SHARE: f64 = 0.25;
+pub const SWING_SHARE: f64 = 0.25;
 /// Error in output samples that a change from one pair of ratios to another carries over.
 pub(crate) const CARRIED_SAMPLES: f64 = 0.0013;
 

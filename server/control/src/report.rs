@@ -60,7 +60,7 @@ impl Engine {
             .expect("its ends were found");
         let Some(entry) = record.ledger.timeline.entry(epoch, number) else {
             let accepted = format!(
-                "one of the last {KEPT} settings, up to {}",
+                "one of the last {KEPT} settings of the crossing, the newest of which is number {}",
                 record.last_number
             );
             return Err(Refusal::not_found(

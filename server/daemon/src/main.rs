@@ -14,7 +14,7 @@ use std::{
     process::ExitCode,
 };
 
-use clap::{Parser, Subcommand};
+use clap::{CommandFactory as _, Parser, Subcommand};
 use ratewright_server::{
     Daemon, Failed, Opening, RecoverFault, StartFault,
     config::{self, Config, LogFormat},
@@ -29,6 +29,9 @@ const EX_IOERR: u8 = 74;
 const EX_CONFIG: u8 = 78;
 
 /// Keeps the sample rates of a facility's crossings right.
+///
+/// Exit status: 0 after a clean end; 69 an address cannot be served; 70 the program is at fault; 74 the store
+/// fails; 78 the configuration is at fault.
 #[derive(Parser)]
 #[command(name = "ratewrightd", version)]
 struct Arguments {
@@ -61,6 +64,11 @@ enum Command {
     Check {
         /// Configuration file (TOML).
         config: PathBuf,
+    },
+    /// Write the man pages, one for each command, into a folder.
+    Manual {
+        /// The folder; it is made if it is not there, such as ~/.local/share/man/man1.
+        folder: PathBuf,
     },
 }
 
@@ -95,7 +103,22 @@ fn main() -> ExitCode {
             }
             Err(faults) => at_fault(&faults),
         },
+        Command::Manual { folder } => match manual(&folder) {
+            Ok(()) => ExitCode::SUCCESS,
+            Err(fault) => {
+                eprintln!(
+                    "the man pages cannot be written to {}: {fault}",
+                    folder.display()
+                );
+                ExitCode::from(EX_IOERR)
+            }
+        },
     }
+}
+
+fn manual(folder: &Path) -> std::io::Result<()> {
+    std::fs::create_dir_all(folder)?;
+    clap_mangen::generate_to(Arguments::command(), folder)
 }
 
 fn at_fault(faults: &config::Faults) -> ExitCode {
@@ -127,6 +150,10 @@ async fn run(
     signals: Signals,
 ) -> ExitCode {
     start_log(config.log, "info");
+    if let Some(file) = &file {
+        let (clocks, crossings) = (config.clocks.len(), config.crossings.len());
+        tracing::info!(file = %file.display(), clocks, crossings, "configuration read");
+    }
     match Daemon::builder(config).opening(opening).start().await {
         Ok(daemon) => serve(daemon, signals, file, std::future::pending()).await,
         Err(fault) => not_started(&fault),
@@ -139,8 +166,8 @@ async fn run_sample(pace: f64, store: Option<PathBuf>, signals: Signals) -> Exit
         std::env::temp_dir().join(format!("ratewright-sample-{}", std::process::id()))
     });
     let config = sample::config(folder.clone());
-    // The summaries have the terminal to themselves, unless something is wrong.
-    start_log(config.log, "warn");
+    // The summaries have the terminal to themselves, unless something is wrong, or it ends.
+    start_log(config.log, "warn,ratewrightd=info");
     let code = match Daemon::builder(config).pace(pace).start().await {
         Ok(daemon) => {
             let played = sample::run(daemon.grpc(), daemon.people(), daemon.house());
@@ -202,11 +229,21 @@ async fn reload(daemon: &Daemon, file: Option<&Path>) {
         return tracing::warn!("there is no configuration file to read again");
     };
     match config::load(file) {
-        Ok(config) => match daemon.redeclare(config).await {
-            Ok(declared) => tracing::info!(declared, "declarations read again"),
-            Err(fault) => tracing::error!(%fault, "declarations stay as they were"),
-        },
-        Err(faults) => tracing::error!(%faults, "declarations stay as they were"),
+        Ok(config) => {
+            let file = file.display();
+            let (clocks, crossings) = (config.clocks.len(), config.crossings.len());
+            match daemon.redeclare(config).await {
+                Ok(changed) => {
+                    tracing::info!(%file, clocks, crossings, changed, "declarations read again");
+                }
+                Err(fault) => tracing::error!(%file, %fault, "declarations stay as they were"),
+            }
+        }
+        Err(faults) => {
+            for fault in faults.faults.iter() {
+                tracing::error!(file = %file.display(), line = fault.line, %fault, "declarations stay as they were");
+            }
+        }
     }
 }
 

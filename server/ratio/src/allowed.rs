@@ -6,11 +6,13 @@
 //! **Corner cases.** Where M is fixed or a power of two there is nothing to prove beyond rounding;
 //! where a part must be a multiple, the proof is that of the problem with the multiple divided out.
 
+use num_integer::Integer as _;
+
 use crate::plan::{Query, plan};
 use crate::{
-    Bounds, Cadence, Certificate, Exact, Fraction, Lazy, Multiple, MultipleBest, MultipleError,
-    Node, Region, RegionError, Rung, Stepping, best_for_m, best_in, best_multiple,
-    best_power_of_two, ladder, ladder_in, residual, target_from_f64,
+    Bounds, Cadence, Certificate, Exact, Fraction, Interval, Lazy, MAX_BOUND, Multiple,
+    MultipleBest, MultipleError, Node, Region, RegionError, Rung, Stepping, best_for_m, best_in,
+    best_multiple, best_power_of_two, ladder, ladder_in, residual, target_from_f64,
 };
 
 /// The ratios to choose from.
@@ -120,6 +122,56 @@ impl Allowed {
     }
 }
 
+impl Allowed {
+    /// The largest L of one table, where that is limited by itself.
+    pub fn max_l(&self) -> Option<u64> {
+        let max_l = match *self {
+            Self::Product { .. } | Self::Cost { .. } => return None,
+            Self::Bounded(bounds) | Self::Multiple(_, bounds) | Self::PowerOfTwoM(bounds) => {
+                bounds.max_l()
+            }
+            Self::FixedM { max_l, .. } => max_l,
+        };
+        (max_l < MAX_BOUND).then_some(max_l)
+    }
+
+    /// True if a ratio is one of these, in lowest terms or, where a part has to be a multiple or M is fixed, as
+    /// the smallest multiple of both parts that is.
+    ///
+    /// # Examples
+    /// ```
+    /// use ratewright_ratio::{Bounds, Fraction, Multiple, allowed::Allowed};
+    /// let bounds = Bounds::new(512, 640)?;
+    /// assert!(!Allowed::Bounded(bounds).allows(&Fraction::new(603, 554)));
+    /// assert!(Allowed::Multiple(Multiple::OfL(4), bounds).allows(&Fraction::new(3, 2)));
+    /// assert!(!Allowed::FixedM { m: 1000, max_l: 2000 }.allows(&Fraction::new(4, 3)));
+    /// # Ok::<(), ratewright_ratio::BoundsError>(())
+    /// ```
+    pub fn allows(&self, ratio: &Fraction) -> bool {
+        let (l, m) = (*ratio.numer(), *ratio.denom());
+        let times = |k: u64| Some(Fraction::new_raw(l.checked_mul(k)?, m.checked_mul(k)?));
+        let within = |bounds: &Bounds, k: u64| times(k).is_some_and(|ratio| bounds.allow(&ratio));
+        match *self {
+            Self::Bounded(bounds) => bounds.allow(ratio),
+            Self::Product { max_product } => {
+                Region::product(max_product).is_ok_and(|region| region.contains(l, m))
+            }
+            Self::Cost {
+                weight_l,
+                weight_m,
+                max_cost,
+            } => Region::weighted(weight_l, weight_m, max_cost)
+                .is_ok_and(|region| region.contains(l, m)),
+            Self::Multiple(Multiple::OfL(k), bounds) => within(&bounds, k / k.gcd(&l)),
+            Self::Multiple(Multiple::OfM(k), bounds) => within(&bounds, k / k.gcd(&m)),
+            Self::FixedM { m: fixed, max_l } => {
+                fixed.is_multiple_of(m) && l.checked_mul(fixed / m).is_some_and(|l| l <= max_l)
+            }
+            Self::PowerOfTwoM(bounds) => m.is_power_of_two() && bounds.allow(ratio),
+        }
+    }
+}
+
 impl Answer {
     /// The nearest allowed ratio that makes at most what is wanted. `None` if there is none, or if it is not the
     /// best one and the pair has too long a period to make a cadence.
@@ -152,22 +204,33 @@ impl Answer {
         }
     }
 
-    /// The cadence with as few changes as a swing of ±`swing_samples` output samples allows. `None` if there is
-    /// no cadence, or if no order of its blocks stays within the swing.
-    pub fn lazy(&self, swing_samples: f64) -> Option<Lazy> {
-        let swing = target_from_f64(swing_samples).ok()?;
-        Lazy::new(self.cadence?, &swing).ok()
+    /// The cadence with as few changes as a swing allows that takes `share` of the headroom, or as much as the
+    /// balanced order needs. `None` if there is no cadence, or if no order of its blocks stays within the headroom.
+    pub fn lazy(&self, headroom_samples: f64, share: f64) -> Option<Lazy> {
+        let cadence = self.cadence?;
+        let headroom = target_from_f64(headroom_samples).ok()?;
+        let swing = target_from_f64(share * headroom_samples).ok()?;
+        Lazy::new(cadence, &swing.max(cadence.error_bound()).min(headroom)).ok()
     }
 
-    /// Stepping beside a cadence of two filters, with as many phases as the two have together, if
-    /// that is off by less. None where M is the modulus of an accumulator: the cadence is that of
-    /// its two steps already.
-    pub fn stepping_of_equal_size(&self) -> Option<Stepping> {
+    /// The largest |residual| that what is run may have, if it is on average the target and the true target is
+    /// anywhere in an interval.
+    pub fn residual_at_worst(&self, interval: &Interval) -> f64 {
+        let value = |exact: &Exact| *exact.numer() as f64 / *exact.denom() as f64;
+        let at = |end: &Exact| (value(&self.target) / value(end) - 1.0).abs();
+        at(interval.lo()).max(at(interval.hi()))
+    }
+
+    /// Stepping beside a cadence of two filters, with as many phases as the two have together, but
+    /// no more than one table may have, if that is off by less. None where M is the modulus of an
+    /// accumulator: the cadence is that of its two steps already.
+    pub fn stepping_of_equal_size(&self, allowed: &Allowed) -> Option<Stepping> {
         if matches!(self.proof, Proof::Rounded) {
             return None;
         }
         let cadence = self.cadence.as_ref()?;
         let phases = cadence.low().numer().checked_add(*cadence.high().numer())?;
+        let phases = allowed.max_l().map_or(phases, |max_l| phases.min(max_l));
         let stepping = Stepping::new(&self.target, phases).ok()?;
         (stepping.error_bound() < cadence.error_bound()).then_some(stepping)
     }

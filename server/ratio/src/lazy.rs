@@ -130,6 +130,13 @@ impl Lazy {
         &self.cadence
     }
 
+    /// The swing, in output samples, exact: how far the error may be off, either way, in whole units of the cadence.
+    pub fn swing(&self) -> Exact {
+        let swing = self.cadence.signed_outputs(self.limit);
+        let part = |x: &i128| u128::try_from(*x).expect("the limit is not negative");
+        Exact::new(part(swing.numer()), part(swing.denom()))
+    }
+
     /// The expected number of changes a second, for a source rate in Hz (the theorem's estimate).
     pub fn switches_per_second(&self, source_rate_hz: f64) -> f64 {
         // One cycle of two holds: 2E/y low blocks and 2E/x high ones.

@@ -60,7 +60,7 @@
 //! 6. **Proof.** [`certificate`]: what a receiver checks.
 //! 7. **Two ratios in turn.** [`balance`]: the rule. [`cadence`]: at block ends. [`stepping`]: at any output.
 //!    [`lazy`]: with few changes. [`frames`]: samples a video frame.
-//! 8. **Filters.** [`kaiser`]: how long. [`stages`]: one or several.
+//! 8. **Filters.** [`kaiser`]: how long. [`stages`]: one or several. [`sideband`]: what errors in time sound like.
 //! 9. **Everything together.** [`plan`].
 //!
 //! # Signs
@@ -101,6 +101,7 @@ pub mod outward;
 pub mod plan;
 pub mod rate;
 pub mod region;
+pub mod sideband;
 pub mod simplest;
 pub mod smooth;
 pub mod smooth_table;

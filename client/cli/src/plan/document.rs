@@ -2,16 +2,17 @@
 
 use ratewright_ratio::stages::Chain;
 use ratewright_ratio::{
-    Bounds, Cadence, Certificate, Fraction, FrameCadence, Lazy, MAX_BOUND, Multiple, Rung,
+    Bounds, Cadence, Certificate, Exact, Fraction, FrameCadence, Lazy, MAX_BOUND, Multiple, Rung,
     Stepping, residual,
 };
 use serde_json::{Value, json};
 
 use super::Parts;
 use super::filter::{self, Filter};
-use super::findings::{Findings, Width};
+use super::findings::{Findings, Width, as_f64};
 use super::frames::{self, Frames, LISTED_FRAMES};
 use super::question::Question;
+use super::sound::{self, TONES_HZ};
 use ratewright_ratio::allowed::{Allowed, Answer, Proof, ROUNDED};
 
 /// The document. Ratios are numbers `l` and `m`; exact fractions of any size are texts `n/d`.
@@ -26,11 +27,11 @@ pub(crate) fn document(question: &Question, findings: &Findings) -> Value {
         "best": best(question, answer),
         "below": answer.below().map(|ratio| single(question, answer, &ratio)),
         "above": answer.above().map(|ratio| single(question, answer, &ratio)),
-        "interval": findings.width.as_ref().map(interval),
+        "interval": findings.width.as_ref().map(|width| interval(question, width)),
         "ladder": answer.ladder.iter().map(|rung| step(question, rung)).collect::<Vec<_>>(),
         "cadence": answer.cadence.as_ref().map(|pair| cadence(question, pair)),
-        "lazy": findings.lazy.as_ref().map(|lazy| lazy_cadence(question, lazy)),
-        "stepping": findings.stepping.as_ref().map(stepping),
+        "lazy": findings.lazy.as_ref().map(|lazy| lazy_cadence(question, findings, lazy)),
+        "stepping": findings.stepping.as_ref().map(|table| stepping(question, table)),
         "stages": stages.map(|(filter, chains)| stage_plan(filter, chains)),
         "frames": findings.frames.as_ref().map(frame_plan),
     })
@@ -122,12 +123,15 @@ fn uncertified(why: &str) -> Value {
     json!({ "below": null, "above": null, "uncertified": why })
 }
 
-fn interval(width: &Width) -> Value {
+fn interval(question: &Question, width: &Width) -> Value {
     json!({
         "low": Parts::from(&width.low).to_string(),
         "high": Parts::from(&width.high).to_string(),
         "simplest": width.simplest.as_ref().map(ratio),
-        "seconds_to_slip_at_worst": width.seconds_to_slip_at_worst,
+        "simplest_allowed": width.simplest.as_ref().map(|ratio| question.allowed.allows(ratio)),
+        "seconds_to_slip_at_worst": width.best_lasts_s,
+        "average_seconds_to_slip_at_worst": width.average_lasts_s,
+        "lazy_seconds_to_slip_at_worst": width.lazy_lasts_s,
     })
 }
 
@@ -160,29 +164,45 @@ fn cadence(question: &Question, cadence: &Cadence) -> Value {
     json!({
         "low": block(cadence.low(), cadence.low_blocks()),
         "high": block(cadence.high(), cadence.high_blocks()),
-        "error_bound_samples": *bound.numer() as f64 / *bound.denom() as f64,
+        "error_bound_samples": as_f64(&bound),
+        "sound": jitter(question, &bound),
+        "phases_of_both": cadence.low().numer() + cadence.high().numer(),
         "changes_per_second": question.source_rate_hz().map(|hz| cadence.switches_per_second(hz)),
     })
 }
 
 /// The two ratios are those of the cadence; the swing is what the error may be, either way.
-fn lazy_cadence(question: &Question, lazy: &Lazy) -> Value {
+fn lazy_cadence(question: &Question, findings: &Findings, lazy: &Lazy) -> Value {
     json!({
-        "swing_samples": question.headroom_samples,
+        "swing_samples": as_f64(&lazy.swing()),
+        "pitch_step_ppb": sound::pitch_step(findings).map(|step| step * 1e9),
         "changes_per_second": question.source_rate_hz().map(|hz| lazy.switches_per_second(hz)),
     })
 }
 
 /// The two advances are equal if one is exact.
-fn stepping(stepping: &Stepping) -> Value {
+fn stepping(question: &Question, stepping: &Stepping) -> Value {
     let (advance, longer_advance) = stepping.advances();
     let bound = stepping.error_bound();
     json!({
         "phases": stepping.phases(),
         "advance": advance,
         "longer_advance": longer_advance,
-        "error_bound_samples": *bound.numer() as f64 / *bound.denom() as f64,
+        "error_bound_samples": as_f64(&bound),
+        "sound": jitter(question, &bound),
     })
+}
+
+/// The time error and the sidebands that it makes on tones of 1 and 20 kHz, by narrowband phase
+/// modulation; null without rates.
+fn jitter(question: &Question, bound: &Exact) -> Option<Value> {
+    let jitter = sound::jitter(question, bound)?;
+    let tones = TONES_HZ.into_iter().zip(jitter.sidebands_db);
+    let sidebands = tones.map(|(hz, db)| json!({ "tone_hz": hz, "level_db": db }));
+    Some(json!({
+        "peak_seconds": jitter.peak_s,
+        "sidebands": sidebands.collect::<Vec<_>>(),
+    }))
 }
 
 fn stage_plan(filter: &Filter, chains: &[Chain]) -> Value {

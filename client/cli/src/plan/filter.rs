@@ -11,14 +11,17 @@ use crate::failure::Failure;
 /// For each of K stages A is 20·log₁₀ K dB more than was asked for.
 pub(crate) const ESTIMATE: &str = "Kaiser (1974), N = (A - 7.95) / (2.285 Δω) + 1";
 
+/// Attenuation where none is given, dB: that of the page's planner.
+const COMMON_DB: f64 = 100.0;
+
 /// Wishes that make stages of the best ratio; they need both rates.
 #[derive(Debug, Args)]
 #[command(next_help_heading = "Filter and stages")]
 pub(crate) struct FilterWish {
     /// Band to be passed, from 0 to this rate, such as 20k; shows the stages L/M can be made of
-    #[arg(long, value_name = "RATE", value_parser = super::rate, requires = "attenuation")]
+    #[arg(long, value_name = "RATE", value_parser = super::rate)]
     pub(crate) passband: Option<Ratio<u64>>,
-    /// Attenuation from half the smaller rate on, dB
+    /// Attenuation from half the smaller rate on, dB [default: 100]
     #[arg(long, value_name = "DB", requires = "passband")]
     pub(crate) attenuation: Option<f64>,
 }
@@ -35,8 +38,8 @@ pub(crate) struct Filter {
 impl FilterWish {
     /// The filter, if there is a wish, for a source and a sink rate.
     pub(crate) fn filter(&self, rates: Option<(Ratio<u64>, Ratio<u64>)>) -> Option<Filter> {
-        let ((passband, stopband_db), (source, sink)) =
-            self.passband.zip(self.attenuation).zip(rates)?;
+        let (passband, (source, sink)) = self.passband.zip(rates)?;
+        let stopband_db = self.attenuation.unwrap_or(COMMON_DB);
         let edge_hz = hertz(source.min(sink)) / 2.0;
         let passband_hz = hertz(passband);
         let spec = FilterSpec {

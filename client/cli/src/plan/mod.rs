@@ -9,6 +9,7 @@ mod limits;
 mod picture;
 mod question;
 mod sketch;
+mod sound;
 mod text;
 
 use std::fmt;

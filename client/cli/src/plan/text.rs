@@ -10,10 +10,11 @@ use ratewright_ratio::{
 
 use super::Parts;
 use super::filter::{self, Filter};
-use super::findings::{Findings, Width};
+use super::findings::{Findings, Width, as_f64};
 use super::frames::{self, Frames};
 use super::question::Question;
 use super::sketch;
+use super::sound;
 use crate::{layout, show, terminal};
 use ratewright_ratio::allowed::{Allowed, Answer, Proof, ROUNDED, multiplied};
 
@@ -32,9 +33,10 @@ pub(crate) fn text(question: &Question, findings: &Findings) -> String {
     line(&mut out, "proof", &proof(&answer.proof, &question.allowed));
     sides(&mut out, answer);
     if let Some(width) = &findings.width {
-        interval(&mut out, width);
+        interval(&mut out, question, width);
     }
     cadence(&mut out, question, findings);
+    sound(&mut out, question, findings);
     ladder(&mut out, question, answer);
     if let Some((filter, chains)) = question.filter.as_ref().zip(findings.chains.as_ref()) {
         stages(&mut out, filter, chains);
@@ -69,7 +71,14 @@ fn head(out: &mut String, question: &Question, answer: &Answer) {
         "target",
         &format!("{} = {value:.12}", Parts::from(&answer.target)),
     );
-    line(out, "bounds", &allowed(&question.allowed));
+    let bounds = match question.phases {
+        Some(phases) => format!(
+            "{}; one table of {phases} phases",
+            allowed(&question.allowed)
+        ),
+        None => allowed(&question.allowed),
+    };
+    line(out, "bounds", &bounds);
     out.push('\n');
 }
 
@@ -182,28 +191,43 @@ fn certified(certificate: &Certificate, multiple: Option<Multiple>) -> String {
     }
 }
 
-fn interval(out: &mut String, width: &Width) {
+fn interval(out: &mut String, question: &Question, width: &Width) {
     out.push('\n');
-    let value = |end: &ratewright_ratio::Exact| *end.numer() as f64 / *end.denom() as f64;
-    let (low, high) = (value(&width.low), value(&width.high));
+    let (low, high) = (as_f64(&width.low), as_f64(&width.high));
     line(
         out,
         "interval",
         &format!("the target is between {low:.12} and {high:.12}"),
     );
-    if let Some(seconds) = width.seconds_to_slip_at_worst {
-        let lasts = show::duration(seconds);
+    if let Some(lasts) = width.best_lasts_s.map(show::duration) {
+        let more = [
+            (width.average_lasts_s, "on average"),
+            (width.lazy_lasts_s, "lazy"),
+        ];
+        let more = more.into_iter().filter_map(|(seconds, how)| {
+            let seconds = seconds?;
+            Some(format!(", {} {how}", show::duration(seconds)))
+        });
+        let more: String = more.collect();
+        let until = "until the drifts are measured better";
         line(
             out,
             "",
-            &format!("at the worse end the headroom lasts {lasts} with the best ratio"),
+            &format!(
+                "at the worse end the headroom lasts {lasts} with the best ratio{more}, {until}"
+            ),
         );
     }
     if let Some(simplest) = &width.simplest {
+        let beyond = match question.allowed.allows(simplest) {
+            true => "",
+            false => ", which is beyond the bounds",
+        };
+        let simplest = Parts::from(simplest);
         line(
             out,
             "",
-            &format!("the simplest ratio inside is {}", Parts::from(simplest)),
+            &format!("the simplest ratio inside is {simplest}{beyond}"),
         );
     }
 }
@@ -232,6 +256,12 @@ fn cadence(out: &mut String, question: &Question, findings: &Findings) {
         "",
         &format!("and are never off by more than {samples} samples at a block's end"),
     );
+    let both = low.numer().saturating_add(*high.numer());
+    line(
+        out,
+        "",
+        &format!("both tables are in memory: {both} phases"),
+    );
     if let Some(source_hz) = question.source_rate_hz() {
         changes(out, question, cadence, findings.lazy.as_ref(), source_hz);
     }
@@ -257,8 +287,8 @@ fn changes(
     );
     let held = match lazy {
         Some(lazy) => format!(
-            "off by up to {}, the same two change every {}",
-            headroom(question),
+            "off by up to {} samples, as the daemon runs them, the same two change every {}",
+            show_bound(lazy.swing()),
             every(lazy.switches_per_second(source_hz))
         ),
         None => format!(
@@ -284,9 +314,36 @@ fn stepping(out: &mut String, stepping: &Stepping) {
     line(out, "stepping", &advances);
 }
 
+/// What the errors of averages are in time, and how loud that is.
+fn sound(out: &mut String, question: &Question, findings: &Findings) {
+    let cadence = findings.answer.cadence.as_ref().map(Cadence::error_bound);
+    let stepping = findings.stepping.as_ref().map(Stepping::error_bound);
+    let averages = [("cadence", cadence), ("stepping", stepping)];
+    let averages = averages.into_iter().filter_map(|(name, bound)| {
+        let jitter = sound::jitter(question, &bound.filter(|bound| *bound.numer() > 0)?)?;
+        let [low_db, high_db] = jitter.sidebands_db;
+        let peak = show::duration(jitter.peak_s);
+        Some(format!(
+            "{name:<9} {peak} at most: sidebands of {low_db:.0} dB at 1 kHz, {high_db:.0} dB at 20 kHz"
+        ))
+    });
+    let step = sound::pitch_step(findings).filter(|_| question.rates.is_some());
+    let lazy = step.map(|step| format!("{:<9} the pitch steps by {}", "lazy", show::offset(step)));
+    let lines: Vec<String> = averages.chain(lazy).collect();
+    if lines.is_empty() {
+        return;
+    }
+    out.push('\n');
+    let by = "by narrowband phase modulation: 20 log10(pi f tau) dB of a tone of f, at a time error of tau";
+    line(out, "sound", by);
+    for text in lines {
+        line(out, "", &text);
+    }
+}
+
 /// A bound in samples to three digits, never shown smaller than it is.
 fn show_bound(bound: Exact) -> String {
-    let samples = *bound.numer() as f64 / *bound.denom() as f64;
+    let samples = as_f64(&bound);
     let places = (2.0 - samples.log10().floor()).clamp(0.0, 30.0) as usize;
     let nearest = format!("{samples:.places$}");
     if nearest.parse().is_ok_and(|shown: f64| shown >= samples) {

@@ -1,6 +1,7 @@
 //! `ratewright report`: sending recorded or piped readings.
 
 mod columns;
+mod house;
 mod rows;
 mod summary;
 
@@ -42,6 +43,11 @@ const ROWS: usize = 4096;
 ///   media_timestamp,reference_ns     media timestamps of sender reports against their arrival
 ///   drift_ppm,deviation_ppm,reference_ns
 ///                                    drifts measured by other means, positive runs fast
+///
+/// Unless --reference names a clock, times on the reference are house time: nanoseconds since
+/// 1970-01-01 on the TAI scale, 37 s ahead of Unix time. In a shell on a host that keeps time:
+///
+///   echo $(( $(date +%s%N) + 37000000000 ))
 ///
 /// A column `sequence` (growing from 1) is used if there is one; other columns are left alone.
 /// With --count-column, --reference-column and --reference-unit a record of another make is read
@@ -157,10 +163,12 @@ pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
     let receipts = tokio::spawn(take(receipts, bar.clone()));
 
     let mut summary = Summary::default();
+    let mut newest_ns = None;
     while let Some(row) = rows.recv().await {
         bar.set_position(row.end_byte);
         match row.content {
             Ok((sequence, measurement)) => {
+                newest_ns = newest_ns.max(Some(house::reference_ns(&measurement)));
                 let reading = Reading {
                     clock: arguments.clock.clone(),
                     reference: arguments.reference.clone(),
@@ -180,6 +188,9 @@ pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
     let receipts = receipts.await;
     bar.finish_and_clear();
     summary.receipts(receipts.map_err(|error| Failure::Failed(error.to_string()))??);
+    if let (Reference::House, Some(newest_ns)) = (&arguments.reference, newest_ns) {
+        house::warn_if_far(&client, newest_ns).await;
+    }
     finish(&client, arguments, &summary).await
 }
 

@@ -151,9 +151,9 @@ fn fraction(field: &str, sent: &v1::Fraction) -> Result<Exact, Violation> {
 }
 
 /// `nominal · (1 + sink) / (1 + source)`, exact but for the drifts, which are taken in units of
-/// 2^-50 so that both share a denominator, which cancels.
+/// 10^-15, so that both share a denominator, which cancels, and decimals stay what they are.
 fn drifted(nominal: Exact, source: f64, sink: f64) -> Result<Exact, Violation> {
-    let units = |drift: f64| ((1.0 + drift) * (1_u64 << 50) as f64).round() as u128;
+    let units = |drift: f64| ((1.0 + drift) * 1e15).round() as u128;
     if source == 0.0 && sink == 0.0 {
         return Ok(nominal);
     }

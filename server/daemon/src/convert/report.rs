@@ -62,11 +62,21 @@ pub(crate) fn refusal_by_engine(event: &Event, refused: Refusal) -> Violation {
     } else {
         "occupancy"
     };
-    let violation = engine::violation(refused, |field| match (parent, field) {
+    let mut violation = engine::violation(refused, |field| match (parent, field) {
         // A setting's name carries the three on the wire.
         ("applied", "crossing" | "epoch" | "number") => "setting".into(),
         _ => field.into(),
     });
+    if let Event::Applied {
+        crossing,
+        epoch,
+        number,
+        ..
+    } = event
+        && violation.field == "setting"
+    {
+        violation.value = format!("crossings/{crossing}/settings/{epoch}-{number}");
+    }
     violation.below(parent)
 }
 

@@ -83,18 +83,29 @@ pub(super) fn list(
     }
 }
 
-/// A crossing that holds will get its next setting in time: only the others are worth a sentence.
+/// A crossing that holds will get its next setting in time: only the others are worth a sentence, and those
+/// that get none because they are pinned.
 fn trouble(view: &CrossingView) -> Option<Markup> {
-    let problem = match view.status.state {
+    let status = &view.status;
+    let pinned = status
+        .pin
+        .as_ref()
+        .filter(|_| status.seconds_to_slip.is_some());
+    let problem = match status.state {
         CrossingState::OutOfBounds => "cannot be held within its bounds",
         CrossingState::Degraded => "cannot be vouched for",
-        CrossingState::Waiting | CrossingState::Holding => return None,
+        CrossingState::Waiting | CrossingState::Holding => {
+            pinned?;
+            "runs on as it is"
+        }
     };
-    let slip = view.status.seconds_to_slip.map(words::span);
+    let beyond = status.phase_error_samples.abs() > view.declaration.headroom_samples;
     Some(html! {
         (crossings::link(view)) " " (problem)
-        @if let Some(slip) = slip { " and may slip in " (slip) }
-        ": " (view.status.reason) "."
+        @if beyond { " and is beyond its headroom" }
+        @else if let Some(seconds) = status.seconds_to_slip { " and may slip in " (words::span(seconds)) }
+        ": " (status.reason) "."
+        @if let Some(pin) = pinned { " It stays pinned until it is released, by " (pin.by) "." }
         @if let Some(needed) = &view.status.needed {
             " L up to " (needed.max_l()) " and M up to " (needed.max_m()) " would do."
         }

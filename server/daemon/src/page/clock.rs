@@ -14,7 +14,10 @@ use super::{
     frame::{self, Leaf, Place},
     probes, steadiness, words,
 };
-use crate::board::{Board, ClockView};
+use crate::{
+    board::{Board, ClockView},
+    chronicle::Span,
+};
 
 pub(super) async fn show(
     State(sources): State<Sources>,
@@ -112,7 +115,7 @@ fn figures(view: &ClockView, now: HouseNs) -> Markup {
 }
 
 fn drift(board: &Board, view: &ClockView, asked: &AskedSpan, now: HouseNs) -> Markup {
-    let span = asked.span();
+    let span = asked.span(&board.drift_history(&view.declaration.id, Span::Hours, now));
     let points = board.drift_history(&view.declaration.id, span, now);
     html! {
         section #drift aria-labelledby="drift-head" {
@@ -120,12 +123,12 @@ fn drift(board: &Board, view: &ClockView, asked: &AskedSpan, now: HouseNs) -> Ma
             @if view.declaration.exact {
                 p .calm { "This clock is house time itself: it cannot drift against it." }
             } @else {
-                (asked.choice())
+                (AskedSpan::choice(span))
                 @if points.len() < 2 {
                     p .calm { "Too little was measured in this time for a picture." }
                 } @else {
-                    (words::picture("drift-picture", &figures::drift(&points, &happened(board, view, now), span, now)))
-                    (words::picture("gained-picture", &figures::gained(&points, span, now)))
+                    (figures::course("drift-picture", &figures::drift(&points, &happened(board, view, now), span, now)))
+                    (figures::course("gained-picture", &figures::gained(&points, span, now)))
                 }
             }
         }

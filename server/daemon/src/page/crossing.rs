@@ -16,6 +16,7 @@ use super::{
 };
 use crate::{
     board::{Board, CrossingView},
+    chronicle::Span,
     convert::setting::setting_to_wire,
     store::Recorded,
 };
@@ -36,7 +37,8 @@ pub(super) async fn show(
     };
     let now = sources.house.now();
     let id = view.declaration.id.clone();
-    let after_s = figures::ahead_s(asked.span());
+    let span = asked.span(&sources.board.phase_history(&id, Span::Hours, now));
+    let after_s = figures::ahead_s(span);
     let of = id.clone();
     let forecast = match sources
         .ask(move |engine| engine.phase_forecast(&of, now, &after_s))
@@ -57,7 +59,7 @@ pub(super) async fn show(
         (head(&view))
         (besides(&view, now))
         (figures(&view, now))
-        (phase(&sources.board, &view, forecast.as_ref(), &asked, now))
+        (phase(&sources.board, &view, forecast.as_ref(), span, now))
         (choice(&view))
         (history(&view, &recorded, now))
         (hand::section(&acts, now))
@@ -185,10 +187,9 @@ fn phase(
     board: &Board,
     view: &CrossingView,
     forecast: Option<&PhaseForecast>,
-    asked: &AskedSpan,
+    span: Span,
     now: HouseNs,
 ) -> Markup {
-    let span = asked.span();
     let points = board.phase_history(&view.declaration.id, span, now);
     let headroom = view.declaration.headroom_samples;
     let drawn = figures::phase(
@@ -201,8 +202,8 @@ fn phase(
     html! {
         section #phase aria-labelledby="phase-head" {
             h2 #phase-head { "Phase error" }
-            (asked.choice())
-            (words::picture("phase-picture", &drawn))
+            (AskedSpan::choice(span))
+            (figures::course("phase-picture", &drawn))
         }
     }
 }

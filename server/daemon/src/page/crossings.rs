@@ -15,6 +15,8 @@ pub(super) fn urgency(view: &CrossingView) -> (u8, u32, Id) {
         CrossingState::OutOfBounds => 0,
         CrossingState::Degraded => 1,
         CrossingState::Waiting => 2,
+        // It gets no other setting in time.
+        CrossingState::Holding if view.status.pin.is_some() => 2,
         CrossingState::Holding => 3,
     };
     let slip = view
@@ -41,7 +43,7 @@ pub(super) fn table(views: &[Arc<CrossingView>]) -> Markup {
     html! {
         table role="table" {
             caption {
-                "The worst first. The residual is what runs over what it should be, minus one, in \
+                "The worst first: by state, then by the time to a slip if left alone. The residual is what runs over what it should be, minus one, in \
                  parts per billion. The phase error is in samples of the sink; it slips when it leaves the \
                  headroom, which the line shows from end to end, and the last column says when that would be if \
                  nothing were set anew."
@@ -76,6 +78,7 @@ fn row(view: &CrossingView) -> Markup {
                 span .state { (state) }
                 // What holds needs no reasons.
                 @if status.state != CrossingState::Holding { span .aside { (status.reason) } }
+                @if let Some(pin) = &status.pin { span .aside { "pinned by " (pin.by) } }
             }
             td role="cell" data-head="Runs" { (runs(status.setting.as_ref())) }
             td role="cell" data-head="Residual, ppb" .number {

@@ -5,6 +5,7 @@ use ratewright_control::{HouseNs, PhaseForecast};
 use ratewright_pictures::{Banded, Course, Picture, Stretch};
 use serde::Deserialize;
 
+use super::words;
 use crate::chronicle::{Happening, Point, Span};
 
 const S: f64 = 1e-9;
@@ -18,6 +19,9 @@ pub(super) struct AskedSpan {
     span: String,
 }
 
+/// Points of the two hours, one a minute, of which fewer hardly show.
+const SPLINTER: usize = 15;
+
 const SPANS: [(Span, &str, &str); 3] = [
     (Span::Minutes, "minutes", "10 minutes"),
     (Span::Hours, "hours", "2 hours"),
@@ -25,15 +29,19 @@ const SPANS: [(Span, &str, &str); 3] = [
 ];
 
 impl AskedSpan {
-    /// The span; anything that is none counts as the usual one.
-    pub(super) fn span(&self) -> Span {
+    /// The span; anything that is none counts as the usual one, or as the shortest where `hours`, what is
+    /// remembered of the last two, would be a splinter of that.
+    pub(super) fn span(&self, hours: &[Point]) -> Span {
         let named = SPANS.iter().find(|(_, value, _)| *value == self.span);
-        named.map_or_else(Span::default, |(span, ..)| *span)
+        match named {
+            Some((span, ..)) => *span,
+            None if hours.len() < SPLINTER => Span::Minutes,
+            None => Span::default(),
+        }
     }
 
     /// Links to the same page with the other spans.
-    pub(super) fn choice(&self) -> Markup {
-        let chosen = self.span();
+    pub(super) fn choice(chosen: Span) -> Markup {
         html! {
             nav #spans .choice aria-label="Time shown" {
                 @for (span, value, name) in SPANS {
@@ -170,6 +178,11 @@ pub(super) fn phase(
         happenings_s: happened.iter().map(|h| h.at_ns as f64 * S).collect(),
     }
     .draw()
+}
+
+/// A picture over time, which opens where now is.
+pub(super) fn course(id: &str, drawn: &Picture) -> Markup {
+    html! { div .ends-now { (words::picture(id, drawn)) } }
 }
 
 fn banded(point: &Point, in_unit: impl Fn(f64) -> f64) -> Banded {

@@ -224,7 +224,7 @@ impl<'a> Choice<'a> {
         };
         Some(html! {
             (way) ": on average exactly " span .figure { (text(wanted)) }
-            ", and never off by more than " (words::small(bound)) " output samples."
+            ", and never off by more than " (words::at_most(bound)) " output samples."
         })
     }
 

@@ -68,6 +68,11 @@ async function renew() {
   }
 }
 
+// Where a picture of time is wider than the screen, it opens at its end, where now is.
+for (const { firstElementChild: picture } of document.querySelectorAll(".ends-now")) {
+  picture.scrollLeft = picture.scrollWidth;
+}
+
 hold.hidden = false;
 hold.addEventListener("click", () => {
   held = !held;

@@ -49,11 +49,24 @@ pub(super) fn parts(part: f64) -> String {
 pub(super) fn shares(low: u64, high: u64) -> String {
     match low.saturating_add(high) {
         0..=1_000_000 => format!("{low} and {high} blocks of them"),
-        all => format!(
-            "{:.2} and {:.2} of every 100 blocks",
-            100.0 * low as f64 / all as f64,
-            100.0 * high as f64 / all as f64
-        ),
+        all => {
+            let (fewer, which) = if low < high {
+                (low, "first")
+            } else {
+                (high, "second")
+            };
+            // Where one is rare, percents would say that it never runs.
+            let one_in = all as f64 / fewer.max(1) as f64;
+            if one_in >= 100.0 {
+                format!("the {which} in 1 of {one_in:.0} blocks")
+            } else {
+                format!(
+                    "{:.2} and {:.2} of every 100 blocks",
+                    100.0 * low as f64 / all as f64,
+                    100.0 * high as f64 / all as f64
+                )
+            }
+        }
     }
 }
 
@@ -64,6 +77,18 @@ pub(super) fn small(value: f64) -> String {
     }
     let places = (2.0 - value.abs().log10().floor()).clamp(0.0, 12.0) as usize;
     format!("{value:.places$}")
+}
+
+/// A bound of an error, to three figures or a little more: never shown smaller than it is.
+pub(super) fn at_most(bound: f64) -> String {
+    let nearest = small(bound);
+    if !bound.is_finite() || nearest.parse().is_ok_and(|shown: f64| shown >= bound) {
+        return nearest;
+    }
+    let places = nearest
+        .split_once('.')
+        .map_or(0, |(_, places)| places.len());
+    format!("{:.places$}", bound + 10_f64.powi(-(places as i32)))
 }
 
 /// A short time with the unit that keeps it short.
@@ -147,7 +172,7 @@ pub(super) fn why(reason: Reason) -> &'static str {
     match reason {
         Reason::First => "the crossing was declared",
         Reason::Evidence => "the one before no longer fitted what is measured",
-        Reason::Recovery => "to bring the phase error back",
+        Reason::Recovery => "the phase error had to come back",
         Reason::Declaration => "a declaration changed",
         Reason::Group => "its group changed",
         Reason::ChangeOver => "the stream comes from another source",
@@ -315,6 +340,29 @@ mod tests {
         for (hz, expected) in cases {
             assert_eq!(rate(hz), expected);
         }
+    }
+
+    #[test]
+    fn a_bound_is_never_shown_smaller() {
+        let shown = [0.001_702_3, 0.001_062_9, 0.5, 12.0, 0.0].map(at_most);
+        assert_eq!(shown, ["0.00171", "0.00107", "0.500", "12.0", "0"]);
+    }
+
+    #[test]
+    fn what_is_rare_is_told_as_one_in_many() {
+        assert_eq!(shares(3, 4), "3 and 4 blocks of them");
+        assert_eq!(
+            shares(1_000_000, 3_000_000),
+            "25.00 and 75.00 of every 100 blocks"
+        );
+        assert_eq!(
+            shares(35_000, 1_999_375_000),
+            "the first in 1 of 57126 blocks"
+        );
+        assert_eq!(
+            shares(1_999_375_000, 35_000),
+            "the second in 1 of 57126 blocks"
+        );
     }
 
     #[test]

@@ -33,7 +33,7 @@ pub(super) async fn forever(client: &Client, house: HouseClock) -> Result<(), Sa
                     armed.insert(setting.crossing.clone(), (end_ns, setting));
                 }
                 Update::Refused { name, error } => tracing::warn!(name, %error, "a player refused a setting"),
-                Update::ReportRefused { field, value, accepted } => {
+                Update::ReportRefused { field, value, accepted, .. } => {
                     tracing::warn!(field, value, accepted, "the daemon refused a player's report");
                 }
                 Update::Lost(loss) => tracing::warn!(%loss, "the players lost contact"),

@@ -48,6 +48,14 @@ impl Feed {
         }
     }
 
+    /// True if a crossing is of the selection.
+    pub(super) fn selects(&self, crossing: &Id) -> bool {
+        match &self.selection {
+            Selection::All => true,
+            Selection::Named(named) => named.contains(crossing),
+        }
+    }
+
     /// True if the watcher goes on from settings that it has already.
     pub(super) fn resumes(&self) -> bool {
         !self.known.is_empty()

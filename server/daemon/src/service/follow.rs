@@ -1,6 +1,7 @@
 //! The two streams of settings: watch, and follow with the follower's reports.
 
 use futures_util::stream;
+use ratewright_control::Event;
 use ratewright_proto::v1::{
     self, follow_settings_request::Message as Heard, follow_settings_response::Message as Said,
 };
@@ -97,6 +98,7 @@ pub(super) fn follow(
             return;
         }
         let mut reporting = true;
+        let mut heard_reports = 0;
         loop {
             tokio::select! {
                 sent = send_next(&access, &mut feed, &sender) => {
@@ -104,7 +106,9 @@ pub(super) fn follow(
                 }
                 heard = reports.message(), if reporting => match heard {
                     Ok(Some(heard)) => {
-                        if hear(&access, heard, &sender).await.is_err() { return }
+                        heard_reports += 1;
+                        let report = Report { nth: heard_reports, said: heard.message };
+                        if hear(&access, &feed, report, &sender).await.is_err() { return }
                     }
                     // The follower has no more to say, but still listens.
                     Ok(None) => reporting = false,
@@ -147,13 +151,68 @@ async fn send_next(
     Ok(())
 }
 
+/// What a follower said after its selection.
+struct Report {
+    /// Which it was, from 1.
+    nth: u64,
+    said: Option<Heard>,
+}
+
+impl Report {
+    /// The crossing that it names, as it was sent; empty if it names none.
+    fn crossing(&self) -> &str {
+        match &self.said {
+            Some(Heard::Applied(applied)) => {
+                let parent = applied.setting.split_once("/settings/");
+                parent.map_or("", |(crossing, _)| crossing)
+            }
+            Some(Heard::Occupancy(occupancy)) => &occupancy.crossing,
+            Some(Heard::Select(_)) | None => "",
+        }
+    }
+
+    /// The event that it is, if the stream's selection has its crossing.
+    fn event(&self, feed: &Feed) -> Result<Event, Refused> {
+        let (event, field, value) = match &self.said {
+            Some(Heard::Applied(applied)) => (
+                report::applied(applied)?,
+                "applied.setting",
+                &applied.setting,
+            ),
+            Some(Heard::Occupancy(occupancy)) => (
+                report::occupancy(occupancy)?,
+                "occupancy.crossing",
+                &occupancy.crossing,
+            ),
+            Some(Heard::Select(_)) => {
+                let accepted = "applied or occupancy: only the first message selects";
+                return Err(Violation::new("message", "select", accepted).into());
+            }
+            None => {
+                return Err(Violation::new("message", "absent", "applied or occupancy").into());
+            }
+        };
+        match &event {
+            Event::Applied { crossing, .. } | Event::Occupancy { crossing, .. }
+                if !feed.selects(crossing) =>
+            {
+                let accepted =
+                    "a crossing that this stream selected: who does not run it has no word on it";
+                Err(Violation::new(field, value, accepted).into())
+            }
+            _ => Ok(event),
+        }
+    }
+}
+
 /// Takes a report in; one that is refused is answered, and the stream goes on.
 async fn hear(
     access: &Access,
-    heard: v1::FollowSettingsRequest,
+    feed: &Feed,
+    report: Report,
     to: &Sender,
 ) -> Result<(), mpsc::error::SendError<Answer>> {
-    let violation = match take_in(access, heard).await {
+    let violation = match take_in(access, feed, &report).await {
         Ok(()) => return Ok(()),
         Err(Refused::Invalid(violations)) => violations.into_iter().next(),
         Err(other) => return to.send(Box::new(Err(other.into()))).await,
@@ -170,6 +229,8 @@ async fn hear(
         field,
         value,
         accepted,
+        crossing: report.crossing().to_owned(),
+        report: report.nth,
     });
     let house_ns = access.house.now();
     to.send(Box::new(Ok(v1::FollowSettingsResponse {
@@ -179,18 +240,8 @@ async fn hear(
     .await
 }
 
-async fn take_in(access: &Access, heard: v1::FollowSettingsRequest) -> Result<(), Refused> {
-    let event = match heard.message {
-        Some(Heard::Applied(applied)) => report::applied(&applied)?,
-        Some(Heard::Occupancy(occupancy)) => report::occupancy(&occupancy)?,
-        Some(Heard::Select(_)) => {
-            let accepted = "applied or occupancy: only the first message selects";
-            return Err(Violation::new("message", "select", accepted).into());
-        }
-        None => {
-            return Err(Violation::new("message", "absent", "applied or occupancy").into());
-        }
-    };
+async fn take_in(access: &Access, feed: &Feed, report: &Report) -> Result<(), Refused> {
+    let event = report.event(feed)?;
     let done = access
         .desk
         .hand_in(vec![event.clone()], Promise::Durable)

@@ -223,6 +223,11 @@ async fn a_follower_reports_and_a_bad_report_leaves_the_stream_open() {
         panic!("a wrong number is refused")
     };
     assert_eq!(refusal.field, "applied.setting");
+    assert_eq!(refusal.value, "crossings/desk-to-stage/settings/1-99");
+    assert_eq!(
+        (refusal.crossing.as_str(), refusal.report),
+        ("crossings/desk-to-stage", 1)
+    );
 
     let level = v1::Occupancy {
         crossing: setting.crossing.clone(),
@@ -244,6 +249,53 @@ async fn a_follower_reports_and_a_bad_report_leaves_the_stream_open() {
         panic!("the stream goes on")
     };
     assert_eq!(setting.number, 2);
+}
+
+#[tokio::test]
+async fn a_follower_has_no_word_on_a_crossing_that_it_did_not_select() {
+    let mut facility = Facility::start().await;
+    facility.clients.declare_pair().await;
+    let clients = &mut facility.clients;
+    clients
+        .declare_crossing("stage-to-desk", "stage", "desk")
+        .await
+        .unwrap();
+    let crossing = "crossings/stage-to-desk".to_owned();
+    let mut follow = Follow::start(&mut facility.clients).await;
+    let Hear::Setting(selected) = follow.hear().await else {
+        panic!("the newest setting comes first")
+    };
+    let house_ns = selected.effect_ns;
+    let reports = [
+        Say::Occupancy(v1::Occupancy {
+            crossing: crossing.clone(),
+            level_samples: 1.0,
+            deviation_samples: 0.5,
+            house_ns,
+        }),
+        Say::Applied(v1::Applied {
+            setting: format!("{crossing}/settings/1-1"),
+            house_ns,
+            sink_sample: 0,
+        }),
+    ];
+    for ((report, field), nth) in reports
+        .into_iter()
+        .zip(["occupancy.crossing", "applied.setting"])
+        .zip(1..)
+    {
+        follow.say(report).await;
+        let Hear::Refused(refusal) = follow.hear().await else {
+            panic!("another's report is refused")
+        };
+        assert_eq!(refusal.field, field);
+        assert_eq!((refusal.crossing, refusal.report), (crossing.clone(), nth));
+        assert!(
+            refusal.accepted.contains("selected"),
+            "{}",
+            refusal.accepted
+        );
+    }
 }
 
 #[tokio::test]

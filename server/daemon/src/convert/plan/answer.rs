@@ -1,8 +1,10 @@
 //! A question's answer as it is sent.
 
+use ratewright_control::SWING_SHARE;
 use ratewright_proto::v1;
 use ratewright_ratio::{
-    Fraction, FrameCadence, MultipleBest, Rung, Stepping, SteppingError, filter_coefficients,
+    Cadence, Exact, Fraction, FrameCadence, Lazy, MultipleBest, Rung, Stepping, SteppingError,
+    filter_coefficients,
     plan::seconds_to_slip,
     residual, simplest,
     stages::{Chain, Stage, StageError, front},
@@ -27,7 +29,8 @@ pub(crate) fn answer(question: &Question) -> Result<v1::PlanRatioResponse, Refus
     let stepping = stepping(question, &found)?;
     let simplest = question.interval.as_ref().and_then(simplest);
     let frames = question.frames.as_ref();
-    let lazy = found.lazy(question.headroom_samples);
+    let lazy = found.lazy(question.headroom_samples, SWING_SHARE);
+    let at_worst = AtWorst::new(question, &found, lazy.as_ref(), stepping.as_ref());
     let source_hz = question.source_rate_hz();
     let on_side = |ratio: Fraction| candidate(question, &ratio, residual(&ratio, &found.target));
     Ok(v1::PlanRatioResponse {
@@ -51,7 +54,7 @@ pub(crate) fn answer(question: &Question) -> Result<v1::PlanRatioResponse, Refus
         above: found.above().map(on_side),
         lazy: lazy.map(|lazy| v1::Lazy {
             cadence: Some(setting::cadence_to_wire(lazy.cadence())),
-            swing_samples: question.headroom_samples,
+            swing_samples: double(&lazy.swing()),
         }),
         cadence_changes_per_second: source_hz
             .zip(found.cadence)
@@ -59,7 +62,52 @@ pub(crate) fn answer(question: &Question) -> Result<v1::PlanRatioResponse, Refus
         lazy_changes_per_second: source_hz
             .zip(lazy)
             .map(|(hz, lazy)| lazy.switches_per_second(hz)),
+        seconds_to_slip_at_worst: at_worst.best_s,
+        average_seconds_to_slip_at_worst: at_worst.average_s,
+        lazy_seconds_to_slip_at_worst: at_worst.lazy_s,
+        simplest_allowed: simplest
+            .is_some_and(|simplest| question.allowed.allows(&simplest.fraction)),
     })
+}
+
+/// Seconds that the headroom lasts where the drifts are at the worse ends of their intervals.
+#[derive(Default)]
+struct AtWorst {
+    best_s: Option<f64>,
+    average_s: Option<f64>,
+    lazy_s: Option<f64>,
+}
+
+impl AtWorst {
+    fn new(
+        question: &Question,
+        found: &Answer,
+        lazy: Option<&Lazy>,
+        stepping: Option<&Stepping>,
+    ) -> Self {
+        let Some(interval) = &question.interval else {
+            return Self::default();
+        };
+        let headroom = question.headroom_samples;
+        let on_average = found.residual_at_worst(interval);
+        let average_lasts = |own: f64| {
+            let left = (headroom - own).max(0.0);
+            seconds_to_slip(on_average, left, question.sink_rate_hz)
+        };
+        let ends = [interval.lo(), interval.hi()];
+        let best = ends.map(|end| residual(&found.best, end).abs());
+        let cadence = found.cadence.as_ref().map(Cadence::error_bound);
+        let average = cadence.or(stepping.map(Stepping::error_bound));
+        Self {
+            best_s: seconds_to_slip(best[0].max(best[1]), headroom, question.sink_rate_hz),
+            average_s: average.and_then(|own| average_lasts(double(&own))),
+            lazy_s: lazy.and_then(|lazy| average_lasts(double(&lazy.swing()))),
+        }
+    }
+}
+
+fn double(exact: &Exact) -> f64 {
+    *exact.numer() as f64 / *exact.denom() as f64
 }
 
 fn certificate(found: &Answer) -> v1::Certificate {
@@ -136,7 +184,7 @@ fn stepping(question: &Question, found: &Answer) -> Result<Option<Stepping>, Vio
             }
         });
     }
-    Ok(found.stepping_of_equal_size())
+    Ok(found.stepping_of_equal_size(&question.allowed))
 }
 
 fn chains(filter: &Filter, ratio: &Fraction) -> Result<Vec<Chain>, Violation> {

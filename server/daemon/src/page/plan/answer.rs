@@ -3,7 +3,7 @@
 use maud::{Markup, html};
 use ratewright_pictures::{Fractions, Neighbour, Turns, ladder};
 use ratewright_proto::v1::{self, certificate::Proof};
-use ratewright_ratio::{Bounds, Cadence, Exact, Fraction, residual};
+use ratewright_ratio::{Bounds, Cadence, Exact, Fraction, residual, sideband::level_db};
 
 use super::tables;
 use crate::page::{fractions, words};
@@ -51,7 +51,7 @@ impl Answer {
                 (tables::ladder(&self.plan.ladder))
             }
             (self.cadence())
-            (tables::stepping(self.plan.stepping.as_ref()))
+            (tables::stepping(self.plan.stepping.as_ref(), &self.stepping_sound()))
             @if self.request.filter.is_some() { (tables::chains(&self.plan.chains, self.ratio)) }
             (tables::frames(&self.plan))
         }
@@ -71,6 +71,9 @@ impl Answer {
         };
         let lasts = html! {
             @match self.best.seconds_to_slip { Some(s) => (words::span(s)), None => "for ever" }
+            @if let Some(s) = self.plan.seconds_to_slip_at_worst {
+                span .aside { (words::span(s)) " where the drifts are at the worse end" }
+            }
         };
         html! {
             section #nearest aria-labelledby="nearest-head" {
@@ -86,7 +89,8 @@ impl Answer {
                 @if let Some(simplest) = &self.plan.simplest {
                     p #simplest {
                         "The simplest ratio within what is known of the drifts is "
-                        span .figure { (simplest.numerator) "/" (simplest.denominator) } "."
+                        span .figure { (simplest.numerator) "/" (simplest.denominator) }
+                        @if !self.plan.simplest_allowed { ", which is beyond the bounds" } "."
                     }
                 }
             }
@@ -166,9 +170,79 @@ impl Answer {
                     span .figure { (low) } " and " span .figure { (high) } ", "
                     (words::shares(cadence.low_blocks, cadence.high_blocks))
                     ", average the target exactly, and are never off by more than "
-                    (words::small(cadence.error_bound_samples)) " output samples at a block's end."
+                    (words::at_most(cadence.error_bound_samples)) " output samples at a block's end"
+                    @if let Some(changes) = self.plan.cadence_changes_per_second {
+                        ", changing every " (words::seconds(1.0 / changes))
+                    }
+                    ". Both tables are in memory: " (turns_phases(cadence)) " phases."
                 }
+                (self.sound(cadence.error_bound_samples))
+                (self.at_worst("an average", self.plan.average_seconds_to_slip_at_worst))
                 (words::picture("turns-picture", &turns.draw()))
+                (self.lazy())
+            }
+        }
+    }
+
+    /// The same two ratios as a crossing with lazy switching runs them.
+    fn lazy(&self) -> Markup {
+        let Some(lazy) = &self.plan.lazy else {
+            return html! {};
+        };
+        html! {
+            h3 #lazy { "Each held as long as may be (lazy)" }
+            p {
+                "The same two, off by up to " (words::at_most(lazy.swing_samples))
+                " output samples, a quarter of the headroom, as a crossing runs them"
+                @if let Some(changes) = self.plan.lazy_changes_per_second {
+                    ", changing every " (words::span(1.0 / changes))
+                }
+                @if let Some(step) = lazy.cadence.as_ref().and_then(|pair| self.pitch_step(pair)) {
+                    "; the pitch then steps by " (words::parts(step))
+                }
+                "."
+            }
+            (self.at_worst("lazy switching", self.plan.lazy_seconds_to_slip_at_worst))
+        }
+    }
+
+    fn pitch_step(&self, pair: &v1::Cadence) -> Option<f64> {
+        let off = |ratio: v1::Ratio| residual(&fraction(ratio), &self.target);
+        Some(off(pair.high?) - off(pair.low?))
+    }
+
+    fn at_worst(&self, what: &str, lasts_s: Option<f64>) -> Markup {
+        html! {
+            @if let Some(seconds) = lasts_s {
+                p {
+                    "Where the drifts are at the worse end of what is known, the headroom lasts "
+                    (words::span(seconds)) " with " (what) ", until they are measured better."
+                }
+            }
+        }
+    }
+
+    fn stepping_sound(&self) -> Markup {
+        let bound = self
+            .plan
+            .stepping
+            .as_ref()
+            .map(|table| table.error_bound_samples);
+        html! { @if let Some(bound) = bound { (self.sound(bound)) } }
+    }
+
+    /// What an error in output samples is in time, and how loud.
+    fn sound(&self, error_samples: f64) -> Markup {
+        let Some(sink) = self.request.sink_rate.filter(|_| error_samples > 0.0) else {
+            return html! {};
+        };
+        let peak_s = error_samples * sink.denominator as f64 / sink.numerator as f64;
+        let level = |tone_hz| format!("{:.0}", level_db(peak_s, tone_hz)).replace('-', "\u{2212}");
+        html! {
+            p {
+                "That is " (words::seconds(peak_s)) " at most, and makes sidebands of "
+                (level(1_000.0)) " dB on a tone of 1 kHz and of " (level(20_000.0)) " dB on one of 20 kHz "
+                span .aside.inline { "(narrowband phase modulation, 20 log\u{2081}\u{2080} \u{3c0}f\u{3c4} dB of the tone)" } "."
             }
         }
     }
@@ -190,6 +264,12 @@ impl Answer {
             ratios: [text(low), text(high)],
         })
     }
+}
+
+/// Phases of the filters of both ratios.
+fn turns_phases(cadence: &v1::Cadence) -> u64 {
+    let l = |ratio: &Option<v1::Ratio>| ratio.as_ref().map_or(0, |ratio| ratio.l);
+    l(&cadence.low).saturating_add(l(&cadence.high))
 }
 
 /// As it is: where a part has to be a multiple, common factors stay.

@@ -50,7 +50,7 @@ fn rung_row(rung: &v1::Candidate, filtered: bool) -> Markup {
     }
 }
 
-pub(super) fn stepping(stepping: Option<&v1::Stepping>) -> Markup {
+pub(super) fn stepping(stepping: Option<&v1::Stepping>, sound: &Markup) -> Markup {
     html! {
         @if let Some(stepping) = stepping {
             section #stepping aria-labelledby="stepping-head" {
@@ -61,9 +61,10 @@ pub(super) fn stepping(stepping: Option<&v1::Stepping>) -> Markup {
                     } @else {
                         (stepping.phases) " phases, advancing by " (stepping.advance) " or "
                         (stepping.longer_advance) " at each output: never off by more than "
-                        (words::small(stepping.error_bound_samples)) " output samples."
+                        (words::at_most(stepping.error_bound_samples)) " output samples."
                     }
                 }
+                (sound)
             }
         }
     }

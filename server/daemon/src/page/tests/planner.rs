@@ -48,6 +48,29 @@ async fn a_drift_brings_the_gap_two_ratios_and_the_simplest_within_it() {
     place(from(&page, "frames-answer"), "1920");
 }
 
+/// 44.1 kHz into 48 kHz at +12 ppm: 160/147 · 1.000012 in lowest terms is 500006/459375.
+#[tokio::test]
+async fn what_the_bounds_leave_and_what_it_costs_is_told() {
+    let path = "/plan?from=44.1k&to=48k&to_drift=12&to_width=1&max_l=512&max_m=640&headroom=48";
+    let page = rig().page(path).await;
+    place(from(&page, "nearest"), "500006/459375");
+    // 160 + 443 = 603 is above the 512 that the bounds leave, as are 603 phases of one table.
+    place(from(&page, "simplest"), "603/554");
+    place(from(&page, "simplest"), "which is beyond the bounds");
+    place(from(&page, "stepping"), "512 phases");
+    place(from(&page, "stepping"), "never off by more than 0.00107");
+    place(
+        from(&page, "cadence"),
+        "Both tables are in memory: 603 phases",
+    );
+    place(from(&page, "cadence"), "never off by more than 0.00171");
+    // 48 samples at 1 ppm of 48 kHz are 1000 s.
+    place(from(&page, "cadence"), "16 min 40 s with an average");
+    place(from(&page, "lazy"), "off by up to 12.0 output samples");
+    // 0.0017 / 48000 s: 20 log10(pi * 20e3 * 35.5e-9) = -53.
+    place(from(&page, "cadence"), "\u{2212}53 dB");
+}
+
 #[tokio::test]
 async fn faults_are_told_beside_their_fields_all_at_once() {
     let path = "/plan?from=fast&to=48k&max_l=-3&from_drift=20000&headroom=x";
