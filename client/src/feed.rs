@@ -18,7 +18,7 @@ use crate::follow::Outbound;
 use crate::hosts::Place;
 use crate::newest::Newest;
 use crate::wire::{crossing_name, crossing_of};
-use crate::{CallError, Client, Id, RefusalKind, Setting, VerifyError};
+use crate::{CallError, Client, Id, RefusalKind, Setting, SettingNumber, VerifyError};
 
 /// What a watch or a follow yields.
 #[derive(Clone, Debug, PartialEq)]
@@ -32,6 +32,14 @@ pub enum Update {
         name: String,
         /// What does not hold.
         error: VerifyError,
+    },
+    /// A setting that is older than one heard before, and was passed over. The daemon's store was lost, and
+    /// it has to be started once with a new epoch; or one of several daemons lags behind.
+    Older {
+        /// Its name.
+        name: String,
+        /// The newest heard.
+        newest: SettingNumber,
     },
     /// Contact was lost. Settings stay in force, and are [stale](Freshness::Stale) until
     /// [`Update::Regained`].
@@ -305,8 +313,7 @@ impl Feed {
                         self.held = Some((setting, wire));
                         None
                     }
-                    // The same again after a reconnection, or something that overtook.
-                    Ok(_) => None,
+                    Ok(setting) => self.older(name, &setting),
                     Err(error) => Some(Update::Refused {
                         name,
                         error: error.into(),
@@ -314,6 +321,12 @@ impl Feed {
                 }
             }
         }
+    }
+
+    /// What to say of a setting that is not newer; nothing if it is the same again.
+    fn older(&self, name: String, setting: &Setting) -> Option<Update> {
+        let newest = self.newest.of(&setting.crossing)?;
+        (setting.number < newest).then_some(Update::Older { name, newest })
     }
 
     /// Verifies a setting against the crossing's bounds, which may have been declared anew since

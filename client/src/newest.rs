@@ -15,6 +15,11 @@ impl Newest {
         self.0.get(crossing).is_none_or(|newest| number > *newest)
     }
 
+    /// The newest handed on for a crossing.
+    pub(crate) fn of(&self, crossing: &Id) -> Option<SettingNumber> {
+        self.0.get(crossing).copied()
+    }
+
     /// The names of the settings handed on, from which a stream may be resumed.
     pub(crate) fn names(&self) -> Vec<String> {
         let name =

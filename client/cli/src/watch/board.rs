@@ -44,6 +44,12 @@ pub(super) struct Line {
     pub(super) freshness: Option<Freshness>,
 }
 
+/// The crossing of a setting's name, or what stands for it.
+fn crossing_of(name: &str) -> String {
+    let of = name.trim_start_matches("crossings/");
+    of.split('/').next().unwrap_or(of).to_owned()
+}
+
 impl Board {
     /// Takes in what was heard.
     pub(super) fn take(&mut self, update: Update) {
@@ -53,10 +59,14 @@ impl Board {
                 self.settings.insert(setting.crossing.clone(), setting);
             }
             Update::Refused { name, error } => {
-                let of = name.trim_start_matches("crossings/");
-                let of = of.split('/').next().unwrap_or(of).to_owned();
+                self.refused.insert(
+                    crossing_of(&name),
+                    format!("{name} must not be run: {error}"),
+                );
+            }
+            Update::Older { name, newest } => {
                 self.refused
-                    .insert(of, format!("{name} must not be run: {error}"));
+                    .insert(crossing_of(&name), super::passed_over(&name, newest));
             }
             Update::Lost(loss) => self.lost = Some(format!("{loss}; settings stay in force")),
             Update::Regained => self.lost = None,

@@ -33,6 +33,10 @@ fn print(update: Update, watch: &Watch, as_json: bool) -> Result<(), Failure> {
             say!("{refused}")
         }
         Update::Refused { name, error } => say!("{name} must not be run: {error}"),
+        Update::Older { name, newest } => {
+            eprintln!("ratewright: {}", super::passed_over(&name, newest));
+            Ok(())
+        }
         Update::Lost(loss) => {
             eprintln!("ratewright: {loss}; settings stay in force");
             Ok(())

@@ -6,7 +6,7 @@ mod live;
 
 use clap::Args;
 use console::Term;
-use ratewright_client::Id;
+use ratewright_client::{Id, SettingNumber};
 
 use crate::failure::Failure;
 use crate::names;
@@ -44,6 +44,14 @@ pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
         Ended::Refused(error) => Err(names::crossings(&client, &arguments.crossings, error).await),
         Ended::Unseen(failure) => Err(failure),
     }
+}
+
+/// What to say of a setting that is older than one heard before.
+fn passed_over(name: &str, newest: SettingNumber) -> String {
+    format!(
+        "{name} is older than {newest}, which was heard before, and is passed over; if the daemon's store was \
+         lost, start it once with `run --new-epoch`"
+    )
 }
 
 /// Why watching ended.
