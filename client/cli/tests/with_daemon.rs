@@ -387,7 +387,7 @@ fn nothing_is_drawn_where_there_is_no_terminal() {
     let folder = tempfile::tempdir().expect("a folder");
     let record = folder.path().join("record.csv");
     let rows: String = (1..3_000)
-        .map(|second| format!("{},{second}000000000\n", 48_000 * second))
+        .map(|second| format!("{},{}000000000\n", 48_000 * second, 1_799_997_000 + second))
         .collect();
     std::fs::write(&record, format!("count,reference_ns\n{rows}")).expect("it is written");
     let record = record.to_str().expect("a path in UTF-8");
