@@ -122,7 +122,7 @@ fn a_breach_waits_for_the_floor_and_no_longer() {
     };
     // Other bounds make for a change at once, though under a floor of its own it would be early.
     world.apply(Event::DeclareCrossing(declared(1024, floor_ns)));
-    let effects = world.apply(Event::DeclareCrossing(declared(1000, floor_ns)));
+    let effects = world.apply(Event::DeclareCrossing(declared(900, floor_ns)));
     let before = effects.settings.last().expect("other bounds").clone();
     assert_eq!(before.reason, Reason::Declaration);
     // 2 ppm are 0.096 samples a second: within some seconds another setting is due.

@@ -147,7 +147,8 @@ fn a_clock_that_goes_off_by_200_ppm_is_followed_and_disturbs_nobody() {
                 what: Disturbance::DriftJump(200e-6),
             });
         }
-        let mut world = desk(model, PathModel::new(fine()), 1000.0);
+        // What is gained until the jump is found, 400 samples, comes on top of what is planned.
+        let mut world = desk(model, PathModel::new(fine()), 2000.0);
         world.add(
             latched("wall", 96_000),
             crystal(-21e-6, 1e-10),
@@ -160,7 +161,7 @@ fn a_clock_that_goes_off_by_200_ppm_is_followed_and_disturbs_nobody() {
     };
     let world = run(true);
     assert!(
-        world.tally("x").worst <= 1000.0,
+        world.tally("x").worst <= 2000.0,
         "worst {}",
         world.tally("x").worst
     );

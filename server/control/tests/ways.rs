@@ -244,7 +244,7 @@ fn what_is_run_errs_by_no_more_than_the_tube_leaves_for_it() {
         (Realisation::Cadence, 1024, 4.0, 0.5013),
     ] {
         let mut world = desk_into_house(37.3e-6, 48_000, way(realisation, bound, headroom));
-        world.run_until(3 * HOUR);
+        world.run_until(5 * HOUR);
         let settings = &world.tally("x").settings;
         assert!(settings.len() > 8, "{} settings", settings.len());
         let largest = largest_running_error(settings, 4_000);
