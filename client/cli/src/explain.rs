@@ -42,7 +42,7 @@ pub(crate) async fn run(arguments: &Arguments) -> Result<(), Failure> {
     }
     let runs = show::realised(&setting.realised);
     let mut text = format!(
-        "{} {}  {runs}  {}\n",
+        "{} {}  {runs}  {} when it was decided\n",
         setting.crossing,
         setting.number,
         show::offset(setting.residual)

@@ -256,6 +256,14 @@ fn cadence(out: &mut String, question: &Question, findings: &Findings) {
         "",
         &format!("and are never off by more than {samples} samples at a block's end"),
     );
+    if let Some(source_hz) = question.source_rate_hz() {
+        let every = show::duration(1.0 / cadence.switches_per_second(source_hz));
+        line(
+            out,
+            "",
+            &format!("in the order that keeps so close, which changes every {every}"),
+        );
+    }
     // The two steps of an accumulator go through the same table.
     if !matches!(findings.answer.proof, Proof::Rounded) {
         let both = low.numer().saturating_add(*high.numer());
@@ -266,36 +274,23 @@ fn cadence(out: &mut String, question: &Question, findings: &Findings) {
         );
     }
     if let Some(source_hz) = question.source_rate_hz() {
-        changes(out, question, cadence, findings.lazy.as_ref(), source_hz);
+        lazy(out, question, findings.lazy.as_ref(), source_hz);
     }
     if let Some(stepping) = &findings.stepping {
         self::stepping(out, stepping);
     }
 }
 
-/// How often the ratio changes: in the order with the least error, and in the one with the fewest changes.
-fn changes(
-    out: &mut String,
-    question: &Question,
-    cadence: &Cadence,
-    lazy: Option<&Lazy>,
-    source_hz: f64,
-) {
-    let every = |per_second: f64| show::duration(1.0 / per_second);
-    let balanced = every(cadence.switches_per_second(source_hz));
-    line(
-        out,
-        "",
-        &format!("in the order that keeps so close, which changes every {balanced}"),
-    );
+/// The same two ratios in the order with the fewest changes.
+fn lazy(out: &mut String, question: &Question, lazy: Option<&Lazy>, source_hz: f64) {
     let held = match lazy {
         Some(lazy) => format!(
             "off by up to {} samples, as the daemon runs them, the same two change every {}",
             show_bound(lazy.swing()),
-            every(lazy.switches_per_second(source_hz))
+            show::duration(1.0 / lazy.switches_per_second(source_hz))
         ),
         None => format!(
-            "none: a headroom of {} is less than that",
+            "none: a headroom of {} is less than the cadence's own error",
             headroom(question)
         ),
     };

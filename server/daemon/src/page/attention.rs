@@ -87,17 +87,12 @@ pub(super) fn list(
 /// that get none because they are pinned.
 fn trouble(view: &CrossingView) -> Option<Markup> {
     let status = &view.status;
-    let pinned = status
-        .pin
-        .as_ref()
-        .filter(|_| status.seconds_to_slip.is_some());
+    let pinned = status.pin.is_some() && status.seconds_to_slip.is_some();
     let problem = match status.state {
         CrossingState::OutOfBounds => "cannot be held within its bounds",
         CrossingState::Degraded => "cannot be vouched for",
-        CrossingState::Waiting | CrossingState::Holding => {
-            pinned?;
-            "runs on as it is"
-        }
+        CrossingState::Waiting | CrossingState::Holding if pinned => "runs on as it is",
+        CrossingState::Waiting | CrossingState::Holding => return None,
     };
     let beyond = status.phase_error_samples.abs() > view.declaration.headroom_samples;
     Some(html! {
@@ -105,7 +100,7 @@ fn trouble(view: &CrossingView) -> Option<Markup> {
         @if beyond { " and is beyond its headroom" }
         @else if let Some(seconds) = status.seconds_to_slip { " and may slip in " (words::span(seconds)) }
         ": " (status.reason) "."
-        @if let Some(pin) = pinned { " It stays pinned until it is released, by " (pin.by) "." }
+        @if pinned { " It stays so until it is released." }
         @if let Some(needed) = &view.status.needed {
             " L up to " (needed.max_l()) " and M up to " (needed.max_m()) " would do."
         }

@@ -318,20 +318,20 @@ fn both_sides_and_the_changes_of_a_pair_are_told() {
         sink_drift: 5e-6,
         max_l: 512,
         max_m: 512,
-        headroom_samples: 4.0,
+        headroom_samples: 16.0,
         ..Default::default()
     };
     let found = answer(&question(sent).unwrap()).unwrap();
     let side = |side: &Option<v1::Candidate>| side.as_ref().unwrap().ratio.unwrap();
     assert_eq!(side(&found.below), v1::Ratio { l: 1, m: 1 });
     assert_eq!(side(&found.above), v1::Ratio { l: 512, m: 511 });
-    // 1/1 takes 2 · 1 samples across the swing at 5 ppm of 48 kHz; 512/511 brings back one
+    // 1/1 takes 2 · 4 samples across the swing at 5 ppm of 48 kHz; 512/511 brings back one
     // sample a block, in a moment.
     let lazy = found.lazy.unwrap();
     // A quarter of the headroom, in whole units of the cadence.
-    assert!(lazy.swing_samples <= 1.0 && lazy.swing_samples > 0.99);
+    assert!(lazy.swing_samples <= 4.0 && lazy.swing_samples > 3.99);
     assert_eq!(lazy.cadence, found.cadence);
-    let cycle_s = 2.0 / (48_000.0 * 5e-6);
+    let cycle_s = 8.0 / (48_000.0 * 5e-6);
     let per_second = found.lazy_changes_per_second.unwrap();
     assert!(
         (per_second * cycle_s / 2.0 - 1.0).abs() < 0.01,
