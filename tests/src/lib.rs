@@ -60,7 +60,7 @@ pub fn dependencies(package: &str) -> Vec<String> {
 }
 
 /// A binary of the workspace. `cargo test --workspace` has built it before any test runs; where
-/// it is missing (this package tested alone) it is built now.
+/// it is missing or older than its sources (this package tested alone) it is built now.
 ///
 /// # Panics
 /// If it does not build.
@@ -72,7 +72,7 @@ pub fn binary(package: &str, name: &str) -> PathBuf {
         .nth(2)
         .expect("tests lie in a folder of the build");
     let path = built.join(name);
-    if !path.exists() {
+    if !is_fresh(&path) {
         let mut build = Command::new(env!("CARGO"));
         build.current_dir(workspace()).args(["build", "--quiet"]);
         build.args(["--package", package, "--bin", name]);
@@ -83,4 +83,22 @@ pub fn binary(package: &str, name: &str) -> PathBuf {
         assert!(status.success(), "{name} does not build");
     }
     path
+}
+
+/// Whether a binary is there, made of nothing but this workspace's sources and what was generated
+/// from them, and none of those has changed since: cargo notes them beside it.
+fn is_fresh(binary: &Path) -> bool {
+    let changed = |file: &Path| file.metadata().and_then(|file| file.modified()).ok();
+    let notes = std::fs::read_to_string(binary.with_extension("d")).unwrap_or_default();
+    let (Some(built), Some((_, sources))) = (changed(binary), notes.split_once(": ")) else {
+        return false;
+    };
+    let (ours, generated) = (workspace(), binary.ancestors().nth(2));
+    // A space within a name is written with a backslash before it.
+    let sources = sources.replace("\\ ", "\0");
+    sources.split_whitespace().all(|source| {
+        let source = PathBuf::from(source.replace('\0', " "));
+        let is_here = source.starts_with(&ours) || generated.is_some_and(|g| source.starts_with(g));
+        is_here && changed(&source).is_some_and(|changed| changed <= built)
+    })
 }
