@@ -9,6 +9,7 @@
 )]
 
 pub mod chaos;
+pub mod sound;
 
 use std::{
     path::{Path, PathBuf},
