@@ -23,6 +23,25 @@
 //! - Lazy switching swings by E samples either way, up and down straight, within tens of seconds: its
 //!   two nearest lines, some hundredths of Hz from the tone, have about 8 E f/(π f_sink), and what is far
 //!   from the tone falls with the square of the distance.
+//!
+//! # Figures
+//! `cargo run --release -p ratewright-tests --example sound -- 6` printed this, seed 1, at 100 house seconds a
+//! second: 44.1 kHz to 48 kHz, L and M up to 1024, six hours of stream with half a sample of headroom,
+//! which cannot put the average frequency off by more than 0.965 ppb. Readings come in real time, so
+//! that no two runs are the same. Both tones have the same frequency error. The spectrum is that of the
+//! setting in the middle of the stream; what is nearer to the tone than 0.046 Hz is not told from it.
+//!
+//! | way | FIFO from its centre | phase error | settings | average off by | fitted | 1 kHz: worst spur | 19 kHz: worst spur | 19 kHz: from 20 Hz on |
+//! | --- | --- | --- | --- | --- | --- | --- | --- | --- |
+//! | cadence | −1 to 0 | −0.335 to 0.335 | 65 | 0.202 ppb | 0.075 ppb | −78.8 dB at 2.0 Hz | −53.2 dB at 2.0 Hz | −76.7 dB |
+//! | stepping | −1 to 0 | −0.340 to 0.347 | 66 | 0.177 ppb | 0.024 ppb | −93.1 dB at 8.1 kHz | −67.5 dB at 1.9 kHz | −67.5 dB |
+//! | lazy | −1 to 0 | −0.323 to 0.322 | 63 | 0.093 ppb | 0.088 ppb | −47.6 dB at 0.05 Hz | −23.3 dB at 0.05 Hz | −108.3 dB |
+//!
+//! Every setting took effect at the first block end at or after its instant. In another run, whose
+//! spectrum was taken over 350 s, the worst line of lazy switching was 0.040 Hz from the tone, with
+//! −45.7 dB at 1 kHz and −19.2 dB at 19 kHz. That run counts for nothing else: its players, behind on a
+//! busy machine, held up the readings for as much as an hour of house time, as they no longer can, and
+//! the phase error went to 8.6 samples.
 
 pub mod performance;
 pub mod player;

@@ -27,6 +27,10 @@ const BEAT: Duration = Duration::from_millis(10);
 /// House time between two readings of a clock.
 const READING_NS: i64 = 1_000_000_000;
 
+/// Slots that a player plays at most between two rounds of the reporter, 10 s: who has fallen behind
+/// catches up without keeping readings back.
+const MOST_SLOTS: usize = 100;
+
 /// Standard deviation of a reading, ns.
 const NOISE_NS: f64 = 1_000.0;
 
@@ -240,9 +244,9 @@ impl Stage {
     async fn play_on(&mut self) -> Result<(), PerformanceError> {
         for seat in &mut self.seats {
             let known = self.world.slot_at(seat.known_ns);
-            let target = seat
-                .end_slot(&self.world, self.programme.stream_s)
-                .min(known);
+            let end = seat.end_slot(&self.world, self.programme.stream_s);
+            let most = seat.slot(&self.world).saturating_add(MOST_SLOTS);
+            let target = known.min(end).min(most);
             // Two seconds more: filters look ahead.
             self.world.extend_to(target + 20);
             let (programme, filter) = (self.programme, seat.filter);

@@ -49,13 +49,23 @@ impl Seat {
         self.newest().is_some()
     }
 
-    /// The slot in which a stream of so many seconds ends; none yet before its first setting.
-    pub(super) fn end_slot(&self, world: &World, stream_s: u32) -> usize {
+    /// The slot in which the stream begins; none yet before its first setting.
+    fn first_slot(&self, world: &World) -> Option<usize> {
         let armed = self.settings.first().map(|(setting, _)| setting);
-        let first = armed.or(self.ahead.front());
-        first.map_or(usize::MAX, |first| {
-            world.slot_at(first.effect_ns) + stream_s as usize * 10
-        })
+        let first = armed.or(self.ahead.front())?;
+        Some(world.slot_at(first.effect_ns))
+    }
+
+    /// The slot in which a stream of so many seconds ends.
+    pub(super) fn end_slot(&self, world: &World, stream_s: u32) -> usize {
+        let first = self.first_slot(world);
+        first.map_or(usize::MAX, |first| first + stream_s as usize * 10)
+    }
+
+    /// The slot up to whose beginning it has played.
+    pub(super) fn slot(&self, world: &World) -> usize {
+        let played = self.player.as_ref().map(Player::slot);
+        played.or(self.first_slot(world)).unwrap_or(0)
     }
 
     /// Plays on to a slot; settings are armed when their decision comes.
