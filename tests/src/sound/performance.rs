@@ -163,7 +163,7 @@ impl Stage {
         while self.next_reading_ns <= now_ns {
             for clock in ["source", "sink"] {
                 let reading = self.reading(clock);
-                let sent = self.reporter.report(reading).await;
+                let sent = self.reporter.report_when_room(reading).await;
                 sent.map_err(|closed| PerformanceError::Unexpected(closed.to_string()))?;
             }
             self.next_reading_ns += READING_NS;
@@ -232,6 +232,7 @@ impl Stage {
                 field,
                 value,
                 accepted,
+                ..
             } => {
                 let refused = format!("{field} {value}, accepted is {accepted}");
                 self.refused.push(refused);
