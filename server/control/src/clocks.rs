@@ -6,6 +6,7 @@ use ratewright_timing::{Estimate, State, compose, exact};
 use serde::{Deserialize, Serialize};
 
 use crate::link::{Lineage, LinkRecord, Reads, Restart};
+use crate::schedule::NEVER;
 use crate::statistics::Statistics;
 use crate::{ClockDeclaration, ClockEstimate, ClockFault, HouseNs, Id, Reference};
 
@@ -29,7 +30,9 @@ pub(crate) struct ClockRecord {
     pub(crate) declaration: ClockDeclaration,
     pub(crate) links: Vec<LinkRecord>,
     /// The link whose estimate counts.
-    chosen: usize,
+    chosen: u32,
+    /// When it is looked at next.
+    pub(crate) due_ns: HouseNs,
     /// State that was last told.
     pub(crate) state: State,
     /// What is wrong with it.
@@ -73,6 +76,7 @@ impl ClockRecord {
             declaration,
             links: Vec::new(),
             chosen: 0,
+            due_ns: NEVER,
             state,
             fault: None,
             statistics: None,
@@ -83,7 +87,7 @@ impl ClockRecord {
 
     /// True if the estimate rests on this link.
     pub(crate) fn counts(&self, link: usize) -> bool {
-        link == self.chosen
+        link == self.chosen as usize
     }
 
     /// What is believed before anything is measured.
@@ -176,14 +180,14 @@ impl Clocks {
                     .map_or(f64::INFINITY, |t| t.estimate.half_width())
             })
             .collect();
-        let chosen = record.chosen;
+        let chosen = record.chosen as usize;
         let narrowest =
             (0..widths.len()).fold(
                 chosen,
                 |best, i| if widths[i] < widths[best] { i } else { best },
             );
         if widths[narrowest] < CHANGE_OF_LINK * widths[chosen] {
-            self.records.get_mut(id).expect("it was found above").chosen = narrowest;
+            self.records.get_mut(id).expect("it was found above").chosen = narrowest as u32;
         }
     }
 
@@ -205,7 +209,7 @@ impl Clocks {
         }
         let by_chosen = record
             .links
-            .get(record.chosen)
+            .get(record.chosen as usize)
             .and_then(|link| self.by_link(link, now, depth));
         Some(by_chosen.unwrap_or_else(|| Traced {
             estimate: record.prior(now),
@@ -224,7 +228,7 @@ impl Clocks {
                 estimate: own,
                 lineage: Lineage::of(link.lineage),
                 measured: true,
-                restart: link.restart,
+                restart: link.restart.as_deref().copied(),
                 settled: link.is_settled(),
             });
         };
@@ -233,7 +237,7 @@ impl Clocks {
             estimate: compose(&own, &host.estimate),
             lineage: host.lineage.then(link.lineage),
             measured: host.measured,
-            restart: host.restart.max(link.restart),
+            restart: host.restart.max(link.restart.as_deref().copied()),
             settled: host.settled && link.is_settled(),
         })
     }
@@ -246,7 +250,7 @@ impl Clocks {
             ..
         } = self.estimate(id, now)?;
         let record = self.records.get(id)?;
-        let link = record.links.get(record.chosen);
+        let link = record.links.get(record.chosen as usize);
         if let Some(link) = link {
             // People ask when and how often this clock was read, not its reference.
             let own = link.estimate(now);

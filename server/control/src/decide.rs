@@ -8,7 +8,7 @@ use crate::restraint::Restraint;
 use crate::schedule::Subject;
 use crate::statistics::kept;
 use crate::timeline::Timeline;
-use crate::{Effects, HouseNs, Id, Reason, Transition};
+use crate::{CrossingState, Effects, HouseNs, Id, Reason, Transition};
 use ratewright_timing::State;
 
 /// A clock is looked at so often until it is locked, and afterwards, ns.
@@ -56,8 +56,7 @@ impl Engine {
             State::Locked | State::Holdover => CLOCK_STEPS_NS.1,
             State::FreeRunning | State::Acquiring => CLOCK_STEPS_NS.0,
         };
-        self.schedule
-            .set(Subject::Clock(id.clone()), now.saturating_add(step_ns));
+        self.due(Subject::Clock(id.clone()), now.saturating_add(step_ns));
     }
 
     /// Decides a crossing that belongs to no group.
@@ -73,13 +72,12 @@ impl Engine {
         self.restrain(&mut member, restraint.as_ref(), now, lead_ns);
         let ends = self.settle(member, now, now.saturating_add(lead_ns), effects);
         let step_ns = self.step_ns(id, now, lead_ns, &ends);
-        self.schedule
-            .set(Subject::Crossing(id.clone()), now.saturating_add(step_ns));
+        self.due(Subject::Crossing(id.clone()), now.saturating_add(step_ns));
     }
 
     /// Decides the crossings of a group: if one changes, all get a setting with the same effect.
     pub(crate) fn decide_group(&mut self, id: &Id, now: HouseNs, effects: &mut Effects) {
-        let Some(ids) = self.groups.get(id).cloned() else {
+        let Some(ids) = self.groups.get(id).map(|group| group.members.clone()) else {
             return;
         };
         let leads = ids
@@ -116,8 +114,7 @@ impl Engine {
             step_ns = Some(step_ns.map_or(own_ns, |least_ns: i64| least_ns.min(own_ns)));
         }
         if let Some(step_ns) = step_ns {
-            self.schedule
-                .set(Subject::Group(id.clone()), now.saturating_add(step_ns));
+            self.due(Subject::Group(id.clone()), now.saturating_add(step_ns));
         }
     }
 
@@ -230,11 +227,8 @@ impl Engine {
         let standing = match judgement {
             Judgement::Pending => return ends,
             Judgement::Stay(standing) => {
-                if let Some(due) = record
-                    .newest
-                    .clone()
-                    .filter(|newest| newest.review_ns <= now)
-                {
+                let due = record.newest.as_ref().filter(|n| n.review_ns <= now);
+                if let Some(due) = due.map(|newest| newest.setting(&id)) {
                     effects.settings.push(record.renew(&due, stamp, &ends));
                 }
                 standing
@@ -262,7 +256,8 @@ impl crate::record::CrossingRecord {
         } = standing;
         let from = std::mem::replace(&mut self.state, to);
         self.needed = needed.map(Box::new);
-        self.reason.clone_from(&reason);
+        let is_plain = to == CrossingState::Holding && reason == self.holds();
+        self.reason = (!is_plain).then(|| reason.as_str().into());
         let crossing = self.id().clone();
         (from != to).then_some(Transition::Crossing {
             crossing,

@@ -2,7 +2,7 @@
 
 use crate::engine::Engine;
 use crate::record::CrossingRecord;
-use crate::schedule::Subject;
+use crate::schedule::{Group, NEVER, Subject};
 use crate::{
     ClockDeclaration, ClockFault, CrossingDeclaration, Effects, HouseNs, Id, Reason, Refusal,
 };
@@ -23,8 +23,7 @@ impl Engine {
             return Ok(());
         }
         // What was measured was another clock.
-        self.schedule
-            .set(Subject::Clock(declaration.id.clone()), now);
+        self.due(Subject::Clock(declaration.id.clone()), now);
         let users: Vec<Id> = self.users(&declaration.id).cloned().collect();
         for crossing in users {
             self.rates_changed(&crossing, &declaration.id, now, effects);
@@ -94,8 +93,9 @@ impl Engine {
                 format!("a clock that nothing uses, but clock {clock} is measured against it");
             return Err(Refusal::precondition("clock", id, accepted));
         }
+        self.schedule
+            .remove(Subject::Clock(id.clone()), record.due_ns);
         self.clocks.delete(id);
-        self.schedule.remove(&Subject::Clock(id.clone()));
         Ok(())
     }
 
@@ -129,6 +129,7 @@ impl Engine {
             Some(old) => {
                 if declaration.asks_for_another_setting_than(&old) {
                     self.check_unpinned(&declaration.id)?;
+                    self.check_group_unpinned(&declaration.id, declaration.group.as_ref())?;
                 }
                 self.detach(&old);
                 self.redeclare(&old, declaration, now, effects);
@@ -147,7 +148,7 @@ impl Engine {
         let Some(group) = &declaration.group else {
             return Ok(());
         };
-        let Some(members) = self.groups.get(group) else {
+        let Some(Group { members, .. }) = self.groups.get(group) else {
             return Ok(());
         };
         if members.len() < MAX_GROUP || members.contains(&declaration.id) {
@@ -201,9 +202,10 @@ impl Engine {
             self.groups
                 .entry(group.clone())
                 .or_default()
+                .members
                 .insert(declaration.id.clone());
         }
-        self.schedule.set(subject_of(declaration), now);
+        self.due(subject_of(declaration), now);
     }
 
     fn detach(&mut self, declaration: &CrossingDeclaration) {
@@ -212,16 +214,18 @@ impl Engine {
                 clock.crossings.remove(&declaration.id);
             }
         }
-        let Some(group) = &declaration.group else {
-            self.schedule
-                .remove(&Subject::Crossing(declaration.id.clone()));
+        let Some(id) = &declaration.group else {
+            let held = self.crossings.get(&declaration.id);
+            let due_ns = held.map_or(NEVER, |record| record.due_ns);
+            self.schedule.remove(subject_of(declaration), due_ns);
             return;
         };
-        let members = self.groups.entry(group.clone()).or_default();
-        members.remove(&declaration.id);
-        if members.is_empty() {
-            self.groups.remove(group);
-            self.schedule.remove(&Subject::Group(group.clone()));
+        let group = self.groups.entry(id.clone()).or_default();
+        group.members.remove(&declaration.id);
+        if group.members.is_empty() {
+            let due_ns = group.due_ns;
+            self.groups.remove(id);
+            self.schedule.remove(subject_of(declaration), due_ns);
         }
     }
 
@@ -230,16 +234,19 @@ impl Engine {
         id: &Id,
         effects: &mut Effects,
     ) -> Result<(), Refusal> {
-        let Some(record) = self.crossings.remove(id) else {
+        let Some(declaration) = self.crossings.get(id).map(|r| r.declaration.clone()) else {
             return Err(Refusal::not_found(
                 "crossing",
                 id,
                 "a crossing that was declared",
             ));
         };
-        self.numbers_gone = self.numbers_gone.max(record.last_number);
+        self.detach(&declaration);
+        if let Some(record) = self.crossings.remove(id) {
+            self.numbers_gone = self.numbers_gone.max(record.last_number);
+        }
         // Its follower counts no more, so nothing would ever take that back.
-        let sink = &record.declaration.sink;
+        let sink = &declaration.sink;
         let fault = self
             .clocks
             .get(sink)
@@ -249,7 +256,6 @@ impl Engine {
                 .transitions
                 .extend(self.clocks.set_fault(sink, None));
         }
-        self.detach(&record.declaration);
         Ok(())
     }
 }

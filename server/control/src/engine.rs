@@ -1,6 +1,6 @@
 //! The engine and its one door.
 
-use std::collections::{BTreeMap, BTreeSet};
+use std::collections::BTreeMap;
 
 use ratewright_timing::Outcome;
 use serde::{Deserialize, Serialize};
@@ -8,7 +8,7 @@ use serde::{Deserialize, Serialize};
 use crate::clocks::Clocks;
 use crate::hand::Hand;
 use crate::record::CrossingRecord;
-use crate::schedule::{Schedule, Subject};
+use crate::schedule::{Group, Schedule, Subject};
 use crate::sink_count::SinkCount;
 use crate::{Effects, Event, HouseNs, Id, Reading, Refusal};
 
@@ -28,7 +28,7 @@ pub struct Engine {
     pub(crate) clocks: Clocks,
     /// Boxed, as a map's nodes are half empty.
     pub(crate) crossings: BTreeMap<Id, Box<CrossingRecord>>,
-    pub(crate) groups: BTreeMap<Id, BTreeSet<Id>>,
+    pub(crate) groups: BTreeMap<Id, Group>,
     pub(crate) schedule: Schedule,
 }
 
@@ -131,8 +131,7 @@ impl Engine {
     fn read(&mut self, reading: &Reading, now: HouseNs) -> Result<Outcome, Refusal> {
         let (outcome, is_first) = self.clocks.observe(reading, now)?;
         if is_first || matches!(outcome, Outcome::Event(_)) {
-            self.schedule
-                .set(Subject::Clock(reading.clock.clone()), now);
+            self.due(Subject::Clock(reading.clock.clone()), now);
             self.hurry_users(&reading.clock, now);
         }
         Ok(outcome)
@@ -140,14 +139,10 @@ impl Engine {
 
     /// The crossings of a clock are due at once.
     pub(crate) fn hurry_users(&mut self, clock: &Id, now: HouseNs) {
-        for crossing in self
-            .clocks
-            .get(clock)
-            .map_or(&BTreeSet::new(), |record| &record.crossings)
-        {
-            if let Some(record) = self.crossings.get(crossing) {
-                self.schedule.set(record.subject(), now);
-            }
+        let users = self.clocks.get(clock).map(|record| &record.crossings);
+        let users: Vec<Id> = users.into_iter().flatten().cloned().collect();
+        for crossing in &users {
+            self.due_crossing(crossing, now);
         }
     }
 

@@ -56,6 +56,8 @@ impl Engine {
             let accepted = format!("a crossing that is not pinned, but {} has", pin.by);
             return Err(Refusal::precondition("crossing", id, accepted));
         }
+        self.check_decided(id)?;
+        let record = self.declared(id)?;
         record.pin = Some(Box::new(Pin {
             by: hand.by.to_owned(),
             since_ns: now,
@@ -146,15 +148,45 @@ impl Engine {
         let Some(record) = self.crossings.get(id) else {
             return Ok(());
         };
-        let group = record.declaration.group.as_ref();
-        let members = group.and_then(|group| self.groups.get(group));
-        let mut all = members.into_iter().flatten().chain([id]);
-        let pinned = all.find_map(|id| Some((id, self.crossings.get(id)?.pin.as_ref()?)));
+        self.check_group_unpinned(id, record.declaration.group.as_ref())
+    }
+
+    /// The same for a crossing as a member of a group, in which it need not be yet.
+    pub(crate) fn check_group_unpinned(&self, id: &Id, group: Option<&Id>) -> Result<(), Refusal> {
+        let pinned = self
+            .together(id, group)
+            .find_map(|id| Some((id, self.crossings.get(id)?.pin.as_ref()?)));
         match pinned {
             Some((member, pin)) => {
                 let accepted = format!(
                     "a crossing that is free, but {member} is pinned by {}: release it first",
                     pin.by
+                );
+                Err(Refusal::precondition("crossing", id, accepted))
+            }
+            None => Ok(()),
+        }
+    }
+
+    /// A crossing with the members of a group.
+    fn together<'a>(&'a self, id: &'a Id, group: Option<&Id>) -> impl Iterator<Item = &'a Id> {
+        let members = group.and_then(|group| Some(&self.groups.get(group)?.members));
+        members.into_iter().flatten().chain([id])
+    }
+
+    /// Refuses a pin while what was declared, or another source, is still to be decided: it would
+    /// keep what must not stay.
+    fn check_decided(&self, id: &Id) -> Result<(), Refusal> {
+        let Some(record) = self.crossings.get(id) else {
+            return Ok(());
+        };
+        let group = record.declaration.group.as_ref();
+        let is_due = |id: &Id| self.crossings.get(id).is_some_and(|r| r.forced.is_some());
+        match self.together(id, group).find(|id| is_due(id)) {
+            Some(member) => {
+                let accepted = format!(
+                    "a crossing that is decided, but {member} waits for its setting under way: try again once \
+                     that is in effect"
                 );
                 Err(Refusal::precondition("crossing", id, accepted))
             }
@@ -171,9 +203,7 @@ impl Engine {
     /// Keeps an act, and has the crossing looked at.
     fn acted(&mut self, id: &Id, act: Act, now: HouseNs, effects: &mut Effects) {
         effects.acts.push(act);
-        if let Some(record) = self.crossings.get(id) {
-            self.schedule.set(record.subject(), now);
-        }
+        self.due_crossing(id, now);
     }
 
     /// The account of a crossing begins anew between the clocks that it has now: with the next

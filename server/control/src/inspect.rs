@@ -4,7 +4,6 @@
 use ratewright_timing::{Diagnosis, Estimate, Event, EventCounts};
 
 use crate::engine::Engine;
-use crate::policy::realise::error_of;
 use crate::timeline::as_double;
 use crate::{HouseNs, Id, Reference};
 
@@ -108,7 +107,7 @@ impl Engine {
             }
         };
         Some(PhaseForecast {
-            room_samples: record.declaration.headroom_samples - error_of(&newest.realised),
+            room_samples: record.declaration.headroom_samples - newest.error(),
             points: after_s.iter().map(|&after_s| point(after_s)).collect(),
         })
     }

@@ -1,7 +1,8 @@
 //! Issuing settings: a choice becomes a numbered decision with its evidence.
 
-use ratewright_ratio::residual;
+use ratewright_ratio::{Fraction, residual};
 
+use crate::newest::Newest;
 use crate::policy::choose::Choice;
 use crate::policy::realise::{Way, error_of};
 use crate::policy::slip::{seconds_to_slip, seconds_vouched};
@@ -53,7 +54,9 @@ impl CrossingRecord {
             evidence: self.evidence(&choice, ends),
         };
         setting.residual = residual(&setting.average(), &ends.target.exact);
-        setting.seconds_to_slip = self.slip_under(&setting, stamp.decided_ns, ends);
+        let path = (setting.effect_ns, setting.average());
+        let room = self.declaration.headroom_samples - error_of(&setting.realised);
+        setting.seconds_to_slip = self.slip_under(path, room, stamp.decided_ns, ends);
         self.take(setting.clone());
         setting
     }
@@ -75,18 +78,19 @@ impl CrossingRecord {
     }
 
     fn take(&mut self, setting: Setting) {
-        let before = self.newest.as_ref().map(Setting::average);
+        let before = self.newest.as_ref().map(Newest::average);
         let is_single = |realised: &Realised| matches!(realised, Realised::Single(_));
         if !is_single(&setting.realised) {
             self.ledger.leave_error(0.0);
         } else if self.running_error() > 0.0 {
             self.ledger.leave_error(self.running_error());
         }
-        if self.newest.as_ref().map(|newest| newest.realised) != Some(setting.realised) {
+        if self.newest.as_ref().map(Newest::realised) != Some(setting.realised) {
             self.changed_ns = setting.effect_ns;
         }
-        self.changes_made += u64::from(before.is_some_and(|before| before != setting.average()));
-        self.settings_made += 1;
+        let is_change = before.is_some_and(|before| before != setting.average());
+        self.changes_made = self.changes_made.saturating_add(u32::from(is_change));
+        self.settings_made = self.settings_made.saturating_add(1);
         self.last_number = setting.number;
         self.forced = None;
         self.ledger.set(timeline::Entry {
@@ -97,7 +101,11 @@ impl CrossingRecord {
             effect_ns: setting.effect_ns,
             is_reported: false,
         });
-        self.newest = Some(setting);
+        self.newest = Some(Newest::of(&setting));
+        debug_assert_eq!(
+            self.newest.as_ref().map(|n| n.setting(self.id())),
+            Some(setting)
+        );
     }
 
     fn evidence(&self, choice: &Choice, ends: &Ends) -> Evidence {
@@ -119,9 +127,15 @@ impl CrossingRecord {
         }
     }
 
-    /// Seconds from a setting's effect (or from `now`, if that is later) to the slip it leads to: or
+    /// Seconds from the effect of a setting with this average (or from `now`, if that is later) to the slip it leads to: or
     /// that what runs instead leads to, if it is not heeded or may not be.
-    pub(crate) fn slip_under(&self, setting: &Setting, now: HouseNs, ends: &Ends) -> Option<f64> {
+    pub(crate) fn slip_under(
+        &self,
+        (effect_ns, average): (HouseNs, Fraction),
+        room: f64,
+        now: HouseNs,
+        ends: &Ends,
+    ) -> Option<f64> {
         let outlook = self.outlook(ends);
         let timeline = &self.ledger.timeline;
         // Before the stream begins nothing gains, and nothing becomes uncertain.
@@ -130,10 +144,9 @@ impl CrossingRecord {
             .is_some_and(|begins_ns| begins_ns <= now);
         let in_force = timeline.ratio_at(now).filter(|_| runs);
         let velocity = in_force.map_or(0.0, |ratio| outlook.velocity(ratio));
-        let lead_ns = setting.effect_ns.saturating_sub(now).max(0);
+        let lead_ns = effect_ns.saturating_sub(now).max(0);
         let delay_s = if runs { lead_ns as f64 * 1e-9 } else { 0.0 };
         let phase = outlook.extrapolate(outlook.phase, velocity, delay_s);
-        let room = self.declaration.headroom_samples - error_of(&setting.realised);
         let slip = |path| seconds_to_slip(&outlook, room, path, delay_s);
         if timeline.unheeded().is_some() {
             return slip((phase, velocity));
@@ -141,7 +154,7 @@ impl CrossingRecord {
         let unreported = self.unreported(ends);
         let otherwise =
             unreported.and_then(|(ratio, phase)| slip((phase, outlook.velocity(ratio))));
-        let planned = slip((phase, outlook.velocity(as_double(&setting.average()))));
+        let planned = slip((phase, outlook.velocity(as_double(&average))));
         match (planned, otherwise) {
             (Some(planned), Some(otherwise)) => Some(planned.min(otherwise)),
             (planned, otherwise) => planned.or(otherwise),

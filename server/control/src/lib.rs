@@ -34,6 +34,7 @@ mod intake;
 mod issue;
 mod ledger;
 mod link;
+mod newest;
 mod passage;
 mod policy;
 mod query;

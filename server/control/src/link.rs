@@ -40,7 +40,7 @@ pub(crate) struct LinkRecord {
     /// Readings taken since then, as far as they are counted.
     rows: u16,
     /// How the phase began anew, if it did.
-    pub(crate) restart: Option<Restart>,
+    pub(crate) restart: Option<Box<Restart>>,
     /// House time of the last reading that fitted.
     fitted_ns: HouseNs,
     /// House time of the first one after it that did not.
@@ -171,10 +171,10 @@ impl LinkRecord {
             self.lineage = next_lineage;
             self.rows = 0;
             let unfit_ns = self.unfit_ns.unwrap_or(now);
-            self.restart = Some(Restart {
+            self.restart = Some(Box::new(Restart {
                 fitted_ns: self.fitted_ns,
                 unfit_ns,
-            });
+            }));
         }
         self.rows = self.rows.saturating_add(1);
         if outcome == Outcome::Outlier {

@@ -46,7 +46,7 @@ pub(crate) struct Passage {
     /// Drift at the last advance.
     drift: f64,
     /// What is not known of the beginning of the open leg.
-    doubt: Option<Doubt>,
+    doubt: Option<Box<Doubt>>,
 }
 
 /// The drift changed somewhere within a span, from this one to that of the open leg.
@@ -119,9 +119,11 @@ impl Passage {
         let taken_back_ns = self.drift * (at_ns - end_ns) as f64;
         *self = Passage {
             closed_variance_ns2: self.variance_ns2(),
-            doubt: restart.map(|restart| Doubt {
-                drift: self.drift,
-                span_ns: (restart.unfit_ns - restart.fitted_ns) as f64,
+            doubt: restart.map(|restart| {
+                Box::new(Doubt {
+                    drift: self.drift,
+                    span_ns: (restart.unfit_ns - restart.fitted_ns) as f64,
+                })
             }),
             ..Passage::begin(end_ns)
         };
@@ -138,7 +140,7 @@ impl Passage {
 
     /// Variance of a change of drift at an unknown instant within a span: uniform, ns².
     fn doubt_variance_ns2(&self) -> f64 {
-        self.doubt.map_or(0.0, |doubt| {
+        self.doubt.as_deref().map_or(0.0, |doubt| {
             let most_ns = (self.drift - doubt.drift) * doubt.span_ns;
             most_ns * most_ns / 3.0
         })

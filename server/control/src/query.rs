@@ -46,12 +46,14 @@ impl Engine {
         let outlook = record.outlook(&ends);
         let slip = record.newest.as_ref().and_then(|newest| {
             let until_effect_ns = newest.effect_ns.saturating_sub(now).max(0);
-            let after_effect_s = record.slip_under(newest, now, &ends)?;
+            let path = (newest.effect_ns, newest.average());
+            let room = record.declaration.headroom_samples - newest.error();
+            let after_effect_s = record.slip_under(path, room, now, &ends)?;
             Some(until_effect_ns as f64 * 1e-9 + after_effect_s)
         });
         Some(CrossingStatus {
             state: record.state,
-            reason: record.reason.clone(),
+            reason: record.why(),
             target: ends.target.value,
             target_low: ends.target.low,
             target_high: ends.target.high,
@@ -70,9 +72,9 @@ impl Engine {
             source: record.source().clone(),
             pin: record.pin.as_deref().cloned(),
             needed: record.needed.as_deref().copied(),
-            settings_made: record.settings_made,
-            changes_made: record.changes_made,
-            setting: record.newest.clone(),
+            settings_made: record.settings_made.into(),
+            changes_made: record.changes_made.into(),
+            setting: record.newest.as_ref().map(|newest| newest.setting(id)),
         })
     }
 }

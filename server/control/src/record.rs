@@ -6,17 +6,17 @@ use serde::{Deserialize, Serialize};
 
 use crate::clocks::Traced;
 use crate::ledger::Ledger;
+use crate::newest::Newest;
 use crate::policy::choose::{Choice, View, choose, choose_nominal};
 use crate::policy::keep::may_stay;
 use crate::policy::outlook::Outlook;
-use crate::policy::realise::{block_inputs, error_of};
-use crate::policy::standing::Standing;
+use crate::policy::standing::{Standing, holds};
 use crate::policy::{TUBE, pitch_limit};
+use crate::schedule::NEVER;
 use crate::sink_count::SinkCount;
 use crate::target::Target;
 use crate::{
-    ClockDeclaration, CrossingDeclaration, CrossingState, HouseNs, Id, Pin, Reason, Setting,
-    Transition,
+    ClockDeclaration, CrossingDeclaration, CrossingState, HouseNs, Id, Pin, Reason, Transition,
 };
 
 /// A phase error that would take longer than this to bring back, seconds, is not brought back:
@@ -33,12 +33,13 @@ const SHORT_HOLD_S: f64 = 100.0;
 pub(crate) struct CrossingRecord {
     pub(crate) declaration: CrossingDeclaration,
     pub(crate) ledger: Ledger,
-    pub(crate) newest: Option<Setting>,
+    pub(crate) newest: Option<Newest>,
     pub(crate) last_number: u64,
-    pub(crate) settings_made: u64,
-    pub(crate) changes_made: u64,
+    pub(crate) settings_made: u32,
+    pub(crate) changes_made: u32,
     pub(crate) state: CrossingState,
-    pub(crate) reason: String,
+    /// Why it is in that state, where the state does not say it all.
+    pub(crate) reason: Option<Box<str>>,
     /// Smallest bounds that would do, while it is out of bounds.
     pub(crate) needed: Option<Box<Bounds>>,
     /// Who pinned it, if it is pinned.
@@ -49,6 +50,8 @@ pub(crate) struct CrossingRecord {
     pub(crate) on_backup: bool,
     /// When what is run was changed last: the effect of that setting.
     pub(crate) changed_ns: HouseNs,
+    /// When it is decided next, if it belongs to no group.
+    pub(crate) due_ns: HouseNs,
     /// A reason to decide anew at the next opportunity.
     pub(crate) forced: Option<Reason>,
 }
@@ -100,18 +103,31 @@ impl CrossingRecord {
             settings_made: 0,
             changes_made: 0,
             state: CrossingState::Waiting,
-            reason: "declared".to_owned(),
+            reason: Some("declared".into()),
             needed: None,
             pin: None,
             sink_count: None,
             on_backup: false,
             changed_ns: HouseNs::MIN,
+            due_ns: NEVER,
             forced: Some(Reason::First),
         }
     }
 
     pub(crate) fn id(&self) -> &Id {
         &self.declaration.id
+    }
+
+    /// What is said of it if there is nothing else to say.
+    pub(crate) fn holds(&self) -> String {
+        holds(&self.declaration)
+    }
+
+    /// Why it is in its state.
+    pub(crate) fn why(&self) -> String {
+        self.reason
+            .as_deref()
+            .map_or_else(|| self.holds(), str::to_owned)
     }
 
     /// Clock of the source that the stream comes from.
@@ -241,7 +257,7 @@ impl CrossingRecord {
     /// What the running error of the newest setting may be off by, samples.
     pub(crate) fn running_error(&self) -> f64 {
         let newest = self.newest.as_ref();
-        newest.map_or(0.0, |newest| error_of(&newest.realised))
+        newest.map_or(0.0, Newest::error)
     }
 
     /// The state in which the setting in force may stay, if it may.
@@ -249,8 +265,8 @@ impl CrossingRecord {
         let newest = self.newest.as_ref()?;
         let error = view.running_error;
         let limits = view.limits(error);
-        let block_s = block_inputs(&newest.realised) as f64 * view.outlook.target.value
-            / view.outlook.sink_hz;
+        let block_s =
+            newest.block_inputs() as f64 * view.outlook.target.value / view.outlook.sink_hz;
         let until_s = view.step_s + view.lead_s + block_s;
         if may_stay(view.outlook, &limits, view.velocity, until_s) {
             return Some(view.standing(view.velocity, error));
@@ -269,7 +285,7 @@ impl CrossingRecord {
         if self
             .newest
             .as_ref()
-            .is_some_and(|newest| newest.realised == choice.way.realised)
+            .is_some_and(|newest| newest.realised() == choice.way.realised)
         {
             return Judgement::Stay(choice.standing);
         }

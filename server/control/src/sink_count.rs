@@ -123,7 +123,7 @@ impl Engine {
         let transition = self.centre_anew(id, now, reason);
         let record = self.crossings.get_mut(id)?;
         record.sink_count = count;
-        self.schedule.set(record.subject(), now);
+        self.due_crossing(id, now);
         transition
     }
 }

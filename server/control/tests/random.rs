@@ -56,12 +56,21 @@ fn declared_crossing() -> impl Strategy<Value = Event> {
                 bounds.with_largest_prime(prime).expect("in range")
             })
         });
+    const REALISATIONS: [Realisation; 4] = [
+        Realisation::Single,
+        Realisation::Cadence,
+        Realisation::Stepping,
+        Realisation::Lazy,
+    ];
     let shape = (
         0.05..50.0,
-        any::<bool>(),
+        proptest::sample::select(&REALISATIONS[..]),
         proptest::option::of(Just(id("g"))),
+        proptest::option::of(name(&CLOCKS)),
+        proptest::bool::weighted(0.2),
     );
-    let times = (0..5 * SECOND, 10 * SECOND..1000 * SECOND);
+    let floor = prop_oneof![2 => Just(0), 1 => 0..100 * SECOND];
+    let times = (0..5 * SECOND, 10 * SECOND..1000 * SECOND, floor);
     (
         name(&CROSSINGS),
         name(&CLOCKS),
@@ -76,14 +85,9 @@ fn declared_crossing() -> impl Strategy<Value = Event> {
                 source,
                 sink,
                 bounds,
-                (headroom_samples, single, group),
-                (lead_ns, review_horizon_ns),
+                (headroom_samples, realisation, group, backup, silent),
+                (lead_ns, review_horizon_ns, least_hold_ns),
             )| {
-                let realisation = if single {
-                    Realisation::Single
-                } else {
-                    Realisation::Cadence
-                };
                 Event::DeclareCrossing(CrossingDeclaration {
                     id,
                     source,
@@ -94,6 +98,9 @@ fn declared_crossing() -> impl Strategy<Value = Event> {
                     group,
                     lead_ns,
                     review_horizon_ns,
+                    least_hold_ns,
+                    backup,
+                    silent,
                     ..crossing("x", "a", "b")
                 })
             },
@@ -140,15 +147,16 @@ fn report() -> impl Strategy<Value = Event> {
         1..40_u64,
         any::<i64>(),
         0..3000_i64,
+        prop_oneof![Just(0), 1..200_000_000_u64],
     )
-        .prop_map(|(crossing, epoch, number, wild, second)| {
+        .prop_map(|(crossing, epoch, number, wild, second, sink_sample)| {
             let house_ns = if wild % 4 == 0 { wild } else { second * SECOND };
             Event::Applied {
                 crossing,
                 epoch,
                 number,
                 house_ns,
-                sink_sample: 0,
+                sink_sample,
             }
         });
     let level = (name(&CROSSINGS), -100.0..100.0, 0.001..10.0, 0..3000_i64).prop_map(
@@ -162,13 +170,55 @@ fn report() -> impl Strategy<Value = Event> {
     prop_oneof![applied, level]
 }
 
+/// The operator's hand; now and then one without a name.
+fn hand() -> impl Strategy<Value = Event> {
+    let by = prop_oneof![9 => Just("night shift".to_owned()), 1 => Just(String::new())];
+    (name(&CROSSINGS), name(&CLOCKS), by, 0..3_u8).prop_map(|(crossing, source, by, what)| {
+        let note = String::new();
+        match what {
+            0 => Event::Pin { crossing, by, note },
+            1 => Event::Release { crossing, by, note },
+            _ => Event::ChangeOver {
+                crossing,
+                source,
+                by,
+                note,
+            },
+        }
+    })
+}
+
+/// A report of one of the crossing's first settings, or a level, not long after the begin.
+fn early_report() -> impl Strategy<Value = Event> {
+    let applied = (name(&CROSSINGS), 1..6_u64, 0..120_i64, 1..10_000_000_u64).prop_map(
+        |(crossing, number, second, sink_sample)| Event::Applied {
+            crossing,
+            epoch: 1,
+            number,
+            house_ns: second * SECOND,
+            sink_sample,
+        },
+    );
+    let level = (name(&CROSSINGS), -5.0..5.0, 0.001..0.1, 0..120_i64).prop_map(
+        |(crossing, level_samples, deviation_samples, second)| Event::Occupancy {
+            crossing,
+            level_samples,
+            deviation_samples,
+            house_ns: second * SECOND,
+        },
+    );
+    prop_oneof![1 => applied, 2 => level]
+}
+
 /// An event, with the seconds since the one before (now and then backwards, or years).
 fn step() -> impl Strategy<Value = (Event, i64)> {
     let event = prop_oneof![
         3 => declared_clock(),
         4 => declared_crossing(),
         6 => reading(),
-        3 => report(),
+        2 => report(),
+        4 => early_report(),
+        2 => hand(),
         1 => name(&CLOCKS).prop_map(Event::DeleteClock),
         1 => name(&CROSSINGS).prop_map(Event::DeleteCrossing),
         1 => (1..4_u64).prop_map(|epoch| Event::OpenEpoch { epoch }),

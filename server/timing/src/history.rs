@@ -42,8 +42,8 @@ pub struct EventCounts {
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct History {
     state: State,
-    changes: u64,
-    last: [Option<Transition>; KEPT],
+    /// Oldest first. Most links change their state twice or three times.
+    last: Vec<Transition>,
     /// How often each event was found.
     pub events: EventCounts,
     /// The last event with its reference time, ns.
@@ -54,8 +54,7 @@ impl Default for History {
     fn default() -> Self {
         History {
             state: State::FreeRunning,
-            changes: 0,
-            last: [None; KEPT],
+            last: Vec::new(),
             events: EventCounts::default(),
             last_event: None,
         }
@@ -65,9 +64,7 @@ impl Default for History {
 impl History {
     /// The last changes of state, at most eight, oldest first.
     pub fn transitions(&self) -> impl Iterator<Item = &Transition> {
-        let oldest = self.changes as usize % KEPT;
-        let (new, old) = self.last.split_at(oldest);
-        old.iter().chain(new).flatten()
+        self.last.iter()
     }
 
     pub(crate) fn note_state(
@@ -89,8 +86,11 @@ impl History {
             half_width,
             rows_used,
         };
-        self.last[self.changes as usize % KEPT] = Some(transition);
-        self.changes += 1;
+        if self.last.len() == KEPT {
+            self.last.remove(0);
+        }
+        self.last.reserve_exact(1);
+        self.last.push(transition);
         self.state = to;
     }
 

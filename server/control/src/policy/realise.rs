@@ -139,7 +139,7 @@ fn in_turn(wanted: Fraction, declaration: &CrossingDeclaration, swing: f64) -> O
     let realised = match declaration.realisation {
         Realisation::Lazy => Realised::Lazy {
             cadence,
-            swing_samples: swing.max(pair_error(&cadence)),
+            swing_samples: swing.max(pair_error(&cadence.low(), &cadence.high())),
         },
         _ => Realised::Cadence(cadence),
     };
@@ -200,15 +200,14 @@ pub(crate) fn double(exact: &Exact) -> f64 {
 /// bounds enclose it.
 fn cadence_error(target: &Exact, bounds: &Bounds) -> Option<f64> {
     match Cadence::new(target, bounds) {
-        Ok(cadence) => Some(pair_error(&cadence)),
+        Ok(cadence) => Some(pair_error(&cadence.low(), &cadence.high())),
         Err(ratewright_ratio::CadenceError::SingleRatio { .. }) => Some(0.0),
         Err(_) => None,
     }
 }
 
-/// The same for a given cadence.
-fn pair_error(cadence: &Cadence) -> f64 {
-    let (low, high) = (cadence.low(), cadence.high());
+/// The same for two given ratios.
+pub(crate) fn pair_error(low: &Fraction, high: &Fraction) -> f64 {
     let (a, b) = (u128::from(*low.numer()), u128::from(*low.denom()));
     let (c, d) = (u128::from(*high.numer()), u128::from(*high.denom()));
     // Both products are below 2^126: bounds are below 2^63.
@@ -220,21 +219,9 @@ fn pair_error(cadence: &Cadence) -> f64 {
 pub(crate) fn error_of(realised: &Realised) -> f64 {
     match realised {
         Realised::Single(_) => 0.0,
-        Realised::Cadence(cadence) => pair_error(cadence),
+        Realised::Cadence(cadence) => pair_error(&cadence.low(), &cadence.high()),
         Realised::Stepping(stepping) => double(&stepping.wanted()) / stepping.phases() as f64,
         Realised::Lazy { swing_samples, .. } => swing_samples + CARRIED_SAMPLES,
-    }
-}
-
-/// Input samples of the longest block of what is in force: it may change at block ends only. A
-/// table of phases may change at any output.
-pub(crate) fn block_inputs(realised: &Realised) -> u64 {
-    match realised {
-        Realised::Single(ratio) => *ratio.denom(),
-        Realised::Stepping(_) => 1,
-        Realised::Cadence(cadence) | Realised::Lazy { cadence, .. } => {
-            *cadence.low().denom().max(cadence.high().denom())
-        }
     }
 }
 

@@ -5,7 +5,7 @@ use ratewright_ratio::{Bounds, target_from_f64};
 use crate::policy::choose::View;
 use crate::policy::realise::{allowed, bounds_for};
 use crate::policy::{PLAN_HORIZON_S, RECOVERY_S};
-use crate::{CrossingState, Realisation};
+use crate::{CrossingDeclaration, CrossingState, Realisation};
 
 /// A state with its reason.
 #[derive(Clone, Debug, PartialEq)]
@@ -38,6 +38,12 @@ impl Standing {
             needed,
         }
     }
+}
+
+/// What is said of a crossing of which there is nothing else to say.
+pub(crate) fn holds(declaration: &CrossingDeclaration) -> String {
+    let headroom = declaration.headroom_samples;
+    format!("the phase error stays within the headroom of {headroom} samples")
 }
 
 impl View<'_> {
@@ -98,7 +104,7 @@ impl View<'_> {
         if let Some(standing) = self.dead_end(velocity) {
             return standing;
         }
-        let reason = format!("the phase error stays within the headroom of {headroom} samples");
+        let reason = holds(self.declaration);
         Standing::new(CrossingState::Holding, reason)
     }
 
