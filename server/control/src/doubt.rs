@@ -1,4 +1,5 @@
-//! What becomes of a crossing whose follower does not heed its settings, or may not.
+//! What becomes of a crossing whose follower does not heed its settings, or may not, or whose levels
+//! speak against its readings.
 
 use crate::CrossingState;
 use crate::HouseNs;
@@ -11,8 +12,17 @@ use crate::record::{CrossingRecord, Ends};
 pub(crate) const REPORTED_WITHIN_NS: i64 = 30_000_000_000;
 
 impl CrossingRecord {
-    /// Why it is not certain, at the account's last advance, that the newest setting runs.
+    /// Why it is not certain, at the account's last advance, that all is as the readings and the
+    /// newest setting say.
     pub(crate) fn doubt(&self, ends: &Ends) -> Option<Standing> {
+        if let Some(heard) = self.ledger.heard().filter(|heard| heard.is_contradicted) {
+            let ppm = 1e6 * heard.velocity / ends.target.nominal_sink_hz;
+            let reason = format!(
+                "the follower's levels speak against the readings of its clocks, by {ppm:+.3} ppm: they \
+                 alone are believed"
+            );
+            return Some(Standing::new(CrossingState::Degraded, reason));
+        }
         let newest = self.newest.as_ref()?;
         let name = format!("setting {}/{}", newest.epoch, newest.number);
         let timeline = &self.ledger.timeline;

@@ -104,6 +104,13 @@ impl Moments {
     }
 }
 
+/// Random walk of a velocity that only levels tell, samples²/s³ at 48 kHz: 10⁻⁸/√s, a poor crystal
+/// (own choice).
+const CONTRADICTED_WALK: f64 = 2.3e-7;
+/// The readings are believed again once what levels teach of the velocity is as near to them as so
+/// many standard deviations.
+const BELIEVED: f64 = 2.0;
+
 /// What levels have told, as of the account's last advance.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub(crate) struct Heard {
@@ -117,6 +124,8 @@ pub(crate) struct Heard {
     pub(crate) velocity: f64,
     /// Random walk of the velocity in this gap, samples²/s³.
     walk: f64,
+    /// Levels speak against the readings: they alone are believed.
+    pub(crate) is_contradicted: bool,
 }
 
 impl Heard {
@@ -128,7 +137,35 @@ impl Heard {
             phase: 0.0,
             velocity: 0.0,
             walk: 0.0,
+            is_contradicted: false,
         }
+    }
+
+    /// Levels show that the velocity is off by so much, and the phase by so much; each by this
+    /// variance, in so many seconds.
+    pub(crate) fn contradict(&mut self, phase: f64, velocity: f64, variance: f64, seconds: f64) {
+        self.phase += phase;
+        self.velocity += velocity;
+        self.left = Moments {
+            phase: variance,
+            covariance: variance / seconds,
+            velocity: 2.0 * variance / (seconds * seconds),
+        };
+        self.walk = CONTRADICTED_WALK;
+        self.is_contradicted = true;
+    }
+
+    /// What is left when the phase begins anew: that the readings are not to be believed.
+    pub(crate) fn centred(mut self: Box<Self>) -> Option<Box<Self>> {
+        self.phase = 0.0;
+        (self.left.phase, self.left.covariance) = (0.0, 0.0);
+        Some(self).filter(|heard| heard.is_contradicted)
+    }
+
+    /// True if what levels teach of the velocity is no news.
+    fn is_no_news(&self) -> bool {
+        let variance = self.left.velocity + self.moments.velocity;
+        self.velocity * self.velocity <= BELIEVED * BELIEVED * variance
     }
 
     /// Goes on by so many seconds, after which the moments are these; `in_gap` if one of the clocks is
@@ -137,6 +174,11 @@ impl Heard {
         let before = self.moments.after(seconds);
         let left = self.left.after(seconds);
         self.phase += self.velocity * seconds;
+        if self.is_contradicted {
+            self.left = left.and_walk(self.walk, seconds);
+            self.moments = moments;
+            return;
+        }
         self.left = if moments.phase < before.phase && !in_gap {
             let kept = moments.phase / before.phase;
             self.phase *= kept;
@@ -164,6 +206,10 @@ impl Heard {
             covariance: left.covariance - of_phase * left.covariance,
             velocity: left.velocity - of_velocity * left.covariance,
         };
+        if self.is_contradicted && self.is_no_news() {
+            self.is_contradicted = false;
+            self.left = self.left.within(&self.moments);
+        }
     }
 
     /// Whether a clock of the two is not read now.

@@ -56,6 +56,16 @@ impl Contest {
         self.at_ns = now;
     }
 
+    /// For what may have begun at any time since the last level: when it would have, to foretell a
+    /// level as well as it can that is off by `innovation` from the account that is kept.
+    pub(crate) fn align(&mut self, innovation: f64, velocity: f64) {
+        if self.evidence == 0.0 && velocity != 0.0 {
+            let aligned = innovation.clamp(self.apart.min(0.0), self.apart.max(0.0));
+            self.since_ns = self.at_ns - (aligned / velocity * 1e9) as i64;
+            self.apart = aligned;
+        }
+    }
+
     /// Weighs a level, which was off by `innovation` of variance `whole` from the account that is
     /// kept.
     pub(crate) fn weigh(&mut self, innovation: f64, whole: f64) -> Verdict {

@@ -10,23 +10,23 @@
 //! follower reports its level, less what that tells of the clocks' present phases
 //! ([`crate::heard`]).
 
+mod levels;
+
 use serde::{Deserialize, Serialize};
 
 use crate::HouseNs;
 use crate::clocks::Traced;
 use crate::heard::{Heard, Moments};
-use crate::heed::{Contest, Verdict};
+use crate::heed::Contest;
 use crate::passage::Passage;
 use crate::signs::{phase_velocity, true_rate};
 use crate::timeline::{Entry, Rival, Stretch, Timeline, as_double};
+use levels::AtOdds;
+pub(crate) use levels::{Level, Levelled};
 
 /// Growth of the offset's variance, samples² a second: 0.01 samples a day (own choice: block
 /// ends and the rounding of a follower's buffer).
 const WALK: f64 = 1e-9;
-/// An occupancy further off than so many standard deviations is at odds with the account.
-const AT_ODDS: f64 = 5.0;
-/// So many in a row mean that the buffer was moved.
-const AT_ODDS_IN_A_ROW: u32 = 3;
 
 /// The account of one crossing.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
@@ -49,33 +49,8 @@ pub(crate) struct Ledger {
     heard: Option<Box<Heard>>,
     /// What levels say of whether the newest setting runs, while that is open.
     contest: Option<Box<Contest>>,
-    /// Occupancies in a row that were at odds with the account, and to which side.
-    at_odds: i32,
-}
-
-/// What a follower has measured of its buffer.
-#[derive(Clone, Copy, Debug, PartialEq)]
-pub(crate) struct Level {
-    /// From the centre.
-    pub(crate) samples: f64,
-    pub(crate) variance: f64,
-    /// How long ago it was.
-    pub(crate) age_s: f64,
-}
-
-/// How an occupancy went in.
-#[derive(Clone, Copy, Debug, PartialEq)]
-pub(crate) enum Levelled {
-    /// It corrected the account.
-    Corrected,
-    /// It was at odds with it, and was set aside.
-    SetAside,
-    /// It was one too many at odds: the account goes on from the level.
-    Moved,
-    /// It has decided that the newest setting does not run.
-    NotHeeded,
-    /// It has decided that the newest setting, which did not run, now does.
-    TakenUp,
+    /// Levels in a row that were at odds with the account to one side, if there were any.
+    at_odds: Option<Box<AtOdds>>,
 }
 
 impl Ledger {
@@ -94,7 +69,7 @@ impl Ledger {
             sink: Passage::begin(0),
             heard: None,
             contest: None,
-            at_odds: 0,
+            at_odds: None,
         }
     }
 
@@ -158,9 +133,9 @@ impl Ledger {
         self.left_variance = 0.0;
         self.source = Passage::begin(now);
         self.sink = Passage::begin(now);
-        self.heard = None;
+        self.heard = self.heard.take().and_then(Heard::centred);
         self.contest = None;
-        self.at_odds = 0;
+        self.at_odds = None;
     }
 
     /// The stream comes from another source of the same nominal rate from `now` on, to which the
@@ -174,6 +149,7 @@ impl Ledger {
     /// is to come, or else now.
     pub(crate) fn begin_anew(&mut self, now: HouseNs, hz: (f64, f64), with: Option<u64>) {
         (self.source_hz, self.sink_hz) = hz;
+        self.heard = None;
         if let Some(number) = with {
             self.timeline.begin_with(number);
         }
@@ -293,111 +269,6 @@ impl Ledger {
         };
         self.phase_samples += gained(&self.timeline) - gained(&before);
     }
-
-    /// A follower has measured its buffer. The account must be advanced to now, at which the
-    /// clocks' estimates are these. Nothing is levelled before the stream begins.
-    ///
-    /// A Kalman correction: with V the lasting variance, Q what is left of that of the clocks'
-    /// present phases, and R the level's, V is corrected with the gain V/(V + Q + R) and Q with
-    /// Q/(V + Q + R).
-    pub(crate) fn level(
-        &mut self,
-        level: Level,
-        source: &Traced,
-        sink: &Traced,
-    ) -> Option<Levelled> {
-        let ratio = self.timeline.ratio_at(self.at_ns?)?;
-        let velocity = self.velocity(ratio, source, sink);
-        let innovation = level.samples - (self.phase_samples() - velocity * level.age_s);
-        let (lasting, passing) = (self.lasting_variance(), self.passing_variance());
-        let whole = lasting + passing + level.variance;
-        if let Some(verdict) = self.contested(innovation, whole, source, sink) {
-            return Some(verdict);
-        }
-        if innovation.abs() > AT_ODDS * whole.sqrt() {
-            return Some(self.at_odds(innovation, level.variance));
-        }
-        if let Some(contest) = &mut self.contest {
-            contest.corrected((lasting + passing) / whole);
-        }
-        let gain = lasting / whole;
-        self.phase_samples += gain * innovation;
-        self.offset_variance *= 1.0 - gain;
-        self.left_variance *= 1.0 - gain;
-        self.source.sharpen(1.0 - gain);
-        self.sink.sharpen(1.0 - gain);
-        let begun = || Box::new(Heard::begin(Moments::of(source, sink, self.sink_hz)));
-        let heard = self.heard.get_or_insert_with(begun);
-        heard.correct(innovation, whole);
-        self.at_odds = 0;
-        Some(Levelled::Corrected)
-    }
-
-    /// Weighs a level in the contest of what runs, if there is one. Gives what it decides; the level
-    /// itself then corrects nothing.
-    fn contested(
-        &mut self,
-        innovation: f64,
-        whole: f64,
-        source: &Traced,
-        sink: &Traced,
-    ) -> Option<Levelled> {
-        let at_ns = self.at_ns?;
-        let is_unheeded = self.timeline.unheeded().is_some();
-        let Some(rival) = self.timeline.rival(at_ns) else {
-            self.contest = None;
-            return None;
-        };
-        let more = self.velocity_apart(&rival, source, sink);
-        let begun = || Box::new(Contest::begin(rival.since_ns.max(self.centred_ns)));
-        let contest = self.contest.get_or_insert_with(begun);
-        contest.advance(at_ns, more);
-        match contest.weigh(innovation, whole) {
-            Verdict::Other if is_unheeded => {
-                self.phase_samples += contest.apart;
-                self.timeline.take_up_newest(contest.since_ns);
-                self.contest = None;
-                Some(Levelled::TakenUp)
-            }
-            Verdict::Other => {
-                self.phase_samples += contest.apart;
-                self.timeline.give_up_newest();
-                self.contest = None;
-                Some(Levelled::NotHeeded)
-            }
-            Verdict::Kept if !is_unheeded => {
-                self.timeline.confirm_newest();
-                self.contest = None;
-                None
-            }
-            _ if is_unheeded && contest.is_idle() => {
-                **contest = Contest::begin(at_ns);
-                None
-            }
-            _ => None,
-        }
-    }
-
-    fn at_odds(&mut self, innovation: f64, variance: f64) -> Levelled {
-        let side = if innovation > 0.0 { 1 } else { -1 };
-        self.at_odds = if self.at_odds.signum() == side {
-            self.at_odds + side
-        } else {
-            side
-        };
-        if self.at_odds.unsigned_abs() < AT_ODDS_IN_A_ROW {
-            return Levelled::SetAside;
-        }
-        self.centred_ns = self.at_ns.unwrap_or(self.centred_ns);
-        self.phase_samples += innovation;
-        self.offset_variance = variance;
-        self.left_variance = 0.0;
-        self.source.sharpen(0.0);
-        self.sink.sharpen(0.0);
-        self.contest = None;
-        self.at_odds = 0;
-        Levelled::Moved
-    }
 }
 
 #[cfg(test)]
@@ -408,10 +279,10 @@ mod tests {
     use super::*;
     use crate::link::Lineage;
 
-    const SECOND: i64 = 1_000_000_000;
+    pub(super) const SECOND: i64 = 1_000_000_000;
 
     /// A measured clock of this drift and phase, with so much uncertainty of the phase.
-    fn clock(now: i64, drift: f64, phase_ns: f64, phase_deviation_ns: f64) -> Traced {
+    pub(super) fn clock(now: i64, drift: f64, phase_ns: f64, phase_deviation_ns: f64) -> Traced {
         let estimate = ratewright_timing::Estimate {
             drift,
             phase_ns,
@@ -427,7 +298,7 @@ mod tests {
         }
     }
 
-    fn still(now: i64) -> Traced {
+    pub(super) fn still(now: i64) -> Traced {
         Traced {
             estimate: exact(now),
             lineage: Lineage::default(),
@@ -449,7 +320,7 @@ mod tests {
     }
 
     /// An account that began at 0 with 160/147, and got 320/293 at 10 s.
-    fn account() -> Ledger {
+    pub(super) fn account() -> Ledger {
         let mut ledger = Ledger::new(44_100.0, 48_000.0);
         ledger.set(entry(1, Ratio::new(160, 147), 0));
         ledger.set(entry(2, Ratio::new(320, 293), 10 * SECOND));
@@ -529,69 +400,5 @@ mod tests {
         }
         let faster = 44_100.0 * (320.0 / 293.0 - 160.0 / 147.0);
         assert!((ledger.phase_samples() - 888.0 * faster).abs() < 1e-6);
-    }
-
-    /// A level measured now of an account that was advanced to `now` between a clock of 1 µs and a
-    /// still one.
-    fn levelled(
-        ledger: &mut Ledger,
-        samples: f64,
-        variance: f64,
-        now: HouseNs,
-    ) -> Option<Levelled> {
-        let level = Level {
-            samples,
-            variance,
-            age_s: 0.0,
-        };
-        ledger.level(level, &clock(now, 0.0, 0.0, 1000.0), &still(now))
-    }
-
-    #[test]
-    fn occupancy_weighs_by_the_variances() {
-        let mut ledger = account();
-        let now = SECOND;
-        // 1 µs of 48 kHz are 0.048 samples: at the entry and now.
-        ledger.advance(now, &clock(now, 0.0, 0.0, 1000.0), &still(now));
-        let (phase, variance) = (ledger.phase_samples(), ledger.variance());
-        let lasting = variance - 0.048 * 0.048;
-        let noise = 0.01;
-        let taken = levelled(&mut ledger, phase + 0.1, noise, now);
-        assert_eq!(taken, Some(Levelled::Corrected));
-        // What lasts and what passes are both corrected, each by its share.
-        let gain = variance / (variance + noise);
-        assert!((ledger.phase_samples() - phase - gain * 0.1).abs() < 1e-12);
-        let left = |part: f64| part * (1.0 - part / (variance + noise));
-        assert!((ledger.lasting_variance() - left(lasting)).abs() < 1e-12);
-        assert!((ledger.variance() - left(lasting) - left(0.048 * 0.048)).abs() < 1e-12);
-    }
-
-    #[test]
-    fn an_old_level_is_carried_on_to_now() {
-        let mut ledger = account();
-        ledger.advance(SECOND, &clock(SECOND, 0.0, 0.0, 1000.0), &still(SECOND));
-        let phase = ledger.phase_samples();
-        // Ten seconds ago it was lower by what it has gained since: no news.
-        let gains = 44_100.0 * 160.0 / 147.0 * 1e-5;
-        let level = Level {
-            samples: phase - 10.0 * gains,
-            variance: 0.01,
-            age_s: 10.0,
-        };
-        ledger.level(level, &clock(SECOND, 1e-5, 0.0, 1000.0), &still(SECOND));
-        assert!((ledger.phase_samples() - phase).abs() < 1e-9);
-    }
-
-    #[test]
-    fn three_levels_at_odds_mean_that_the_buffer_was_moved() {
-        let mut ledger = account();
-        ledger.advance(SECOND, &clock(SECOND, 0.0, 0.0, 1000.0), &still(SECOND));
-        let mut level = |samples: f64| levelled(&mut ledger, samples, 0.01, SECOND);
-        // One to the other side begins the count anew.
-        for samples in [7.0, -7.0, 7.0, 7.0] {
-            assert_eq!(level(samples), Some(Levelled::SetAside));
-        }
-        assert_eq!(level(7.0), Some(Levelled::Moved));
-        assert!((ledger.phase_samples() - 7.0).abs() < 1e-12);
     }
 }

@@ -114,7 +114,10 @@ impl Engine {
             age_s: (now - house_ns) as f64 * 1e-9,
         };
         let levelled = record.ledger.level(taken, &ends.source, &ends.sink);
-        let is_news = matches!(levelled, Some(Levelled::NotHeeded | Levelled::TakenUp));
+        let is_news = !matches!(
+            levelled,
+            None | Some(Levelled::Corrected | Levelled::SetAside)
+        );
         if levelled == Some(Levelled::Moved) {
             effects.transitions.push(Transition::Centred {
                 crossing: crossing.clone(),
@@ -122,9 +125,8 @@ impl Engine {
                 reason: format!("the follower's buffer stands at {level:.3} samples: it was moved"),
             });
         }
-        if is_news || levelled == Some(Levelled::Moved) {
-            let subject = record.subject();
-            self.schedule.set(subject, now);
+        if is_news {
+            self.due_crossing(crossing, now);
         }
         Ok(())
     }

@@ -153,7 +153,8 @@ impl Timeline {
     /// The newest setting is run since then.
     pub(crate) fn take_up_newest(&mut self, since_ns: HouseNs) {
         if let Some(number) = self.entries.last().map(|newest| newest.number) {
-            self.correct(number, since_ns);
+            self.take_up(number);
+            self.move_effect(self.entries.len() - 1, since_ns);
         }
     }
 
@@ -235,6 +236,11 @@ impl Timeline {
         if std::mem::replace(&mut self.entries[index].is_reported, true) {
             return None;
         }
+        Some(self.move_effect(index, truly_ns))
+    }
+
+    /// Moves the effect of the setting at a place; gives the first instant that this concerns.
+    fn move_effect(&mut self, index: usize, truly_ns: HouseNs) -> HouseNs {
         let previous = index.checked_sub(1).map(|i| self.entries[i]);
         let previous = previous.filter(|entry| entry.number >= self.counts_from);
         let earliest_ns = previous.map_or(HouseNs::MIN, |entry| entry.effect_ns);
@@ -243,6 +249,6 @@ impl Timeline {
         for later in &mut self.entries[index + 1..] {
             later.effect_ns = later.effect_ns.max(truly_ns);
         }
-        Some(assumed_ns.min(truly_ns))
+        assumed_ns.min(truly_ns)
     }
 }

@@ -71,11 +71,19 @@ pub fn crystal(drift: f64, walk_per_root_s: f64) -> ClockModel {
     }
 }
 
-/// A clock with the path by which it is read.
+/// One that reads a clock.
+struct Probe {
+    name: String,
+    path: Path,
+    /// From this time on it says that the clock runs by so much faster than it does.
+    lie: (i64, f64),
+}
+
+/// A clock with those that read it.
 struct Device {
     declaration: ClockDeclaration,
     truth: Clock,
-    path: Path,
+    probes: Vec<Probe>,
     period_ns: i64,
     next_ns: i64,
     sequence: u64,
@@ -90,11 +98,14 @@ struct Device {
 impl Device {
     /// A counter latched at its last tick, with the time of that tick read late by the path: the
     /// noise is that of the path alone, without a tick's quantisation.
-    fn measure(&mut self, now: i64) -> Option<Measurement> {
+    fn measure(&mut self, probe: usize, now: i64) -> Option<Measurement> {
         let hz = self.hz();
-        let shown = now as f64 * 1e-9 * hz + self.gained_s * hz;
+        let probe = &mut self.probes[probe];
+        let (from_ns, drift) = probe.lie;
+        let lied_s = drift * (now - from_ns).max(0) as f64 * 1e-9;
+        let shown = now as f64 * 1e-9 * hz + (self.gained_s + lied_s) * hz;
         let count = shown.floor();
-        let late_s = self.path.delay_s(now)? - (shown - count) / hz;
+        let late_s = probe.path.delay_s(now)? - (shown - count) / hz;
         let reference_ns = now + (late_s * 1e9).round() as i64;
         Some(Measurement::Counter {
             count: (count - self.base) as u64,
@@ -234,11 +245,31 @@ impl World {
             gained_s: truth.phase_s(self.now),
             base: 0.0,
             truth,
-            path: Path::new(path, seed + 1),
+            probes: vec![Probe {
+                name: "rack".to_owned(),
+                path: Path::new(path, seed + 1),
+                lie: (i64::MAX, 0.0),
+            }],
             period_ns,
             sequence: 0,
             silence: (i64::MAX, i64::MAX),
         });
+    }
+
+    /// Another one reads the clock as well.
+    pub fn add_probe(&mut self, name: &str, probe: &str, path: PathModel, seed: u64) {
+        let device = self.device(name);
+        self.devices[device].probes.push(Probe {
+            name: probe.to_owned(),
+            path: Path::new(path, seed),
+            lie: (i64::MAX, 0.0),
+        });
+    }
+
+    /// From now on the first that reads the clock says that it runs by so much faster than it does.
+    pub fn lie(&mut self, name: &str, drift: f64) {
+        let device = self.device(name);
+        self.devices[device].probes[0].lie = (self.now, drift);
     }
 
     pub fn silence(&mut self, name: &str, from_ns: i64, to_ns: i64) {
@@ -400,7 +431,7 @@ impl World {
     fn next_effect(&self) -> i64 {
         let coming = self.running.values().map(|r| {
             let hears = r.coming.first().filter(|_| !r.is_deaf);
-            let effect = hears.map_or(i64::MAX, |(at, _)| *at);
+            let effect = hears.map_or(i64::MAX, |(at, _)| self.now.max(*at));
             effect.min(r.gauge.as_ref().map_or(i64::MAX, |gauge| gauge.next_ns))
         });
         coming.min().unwrap_or(i64::MAX)
@@ -476,17 +507,19 @@ impl World {
             device.next_ns += device.period_ns;
             device.sequence += 1;
             let silent = (device.silence.0..device.silence.1).contains(&now);
-            let measured = device.measure(now);
-            let Some(measurement) = measured.filter(|_| !silent) else {
-                continue;
-            };
-            readings.push(Event::Reading(Reading {
-                clock: device.declaration.id.clone(),
-                reference: Reference::House,
-                probe: "rack".to_owned(),
-                sequence: device.sequence,
-                measurement,
-            }));
+            for probe in 0..device.probes.len() {
+                let measured = device.measure(probe, now);
+                let Some(measurement) = measured.filter(|_| !silent) else {
+                    continue;
+                };
+                readings.push(Event::Reading(Reading {
+                    clock: device.declaration.id.clone(),
+                    reference: Reference::House,
+                    probe: device.probes[probe].name.clone(),
+                    sequence: device.sequence,
+                    measurement,
+                }));
+            }
         }
         for reading in readings {
             self.apply(reading);
