@@ -42,8 +42,8 @@ pub struct EventCounts {
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct History {
     state: State,
-    /// Oldest first. Most links change their state twice or three times.
-    last: Vec<Transition>,
+    changes: u64,
+    last: [Option<Transition>; KEPT],
     /// How often each event was found.
     pub events: EventCounts,
     /// The last event with its reference time, ns.
@@ -54,7 +54,8 @@ impl Default for History {
     fn default() -> Self {
         History {
             state: State::FreeRunning,
-            last: Vec::new(),
+            changes: 0,
+            last: [None; KEPT],
             events: EventCounts::default(),
             last_event: None,
         }
@@ -64,7 +65,9 @@ impl Default for History {
 impl History {
     /// The last changes of state, at most eight, oldest first.
     pub fn transitions(&self) -> impl Iterator<Item = &Transition> {
-        self.last.iter()
+        let oldest = self.changes as usize % KEPT;
+        let (new, old) = self.last.split_at(oldest);
+        old.iter().chain(new).flatten()
     }
 
     pub(crate) fn note_state(
@@ -86,11 +89,8 @@ impl History {
             half_width,
             rows_used,
         };
-        if self.last.len() == KEPT {
-            self.last.remove(0);
-        }
-        self.last.reserve_exact(1);
-        self.last.push(transition);
+        self.last[self.changes as usize % KEPT] = Some(transition);
+        self.changes += 1;
         self.state = to;
     }
 
