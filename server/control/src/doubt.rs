@@ -24,7 +24,7 @@ impl CrossingRecord {
             return Some(Standing::new(CrossingState::Degraded, reason));
         }
         let newest = self.newest.as_ref()?;
-        let name = format!("setting {}/{}", newest.epoch, newest.number);
+        let name = format!("setting {}-{}", newest.epoch, newest.number);
         let timeline = &self.ledger.timeline;
         let reason = if timeline.unheeded().is_some() {
             let phase = self.ledger.phase_samples();

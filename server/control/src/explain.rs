@@ -154,12 +154,11 @@ fn own_error(realised: &Realised) -> String {
 
 /// A bound on an error with three figures, rounded up.
 fn up(error: f64) -> String {
-    if error <= 0.0 {
-        return "0".to_owned();
+    let (mut places, mut scale) = (0, 1.0);
+    while error > 0.0 && error * scale < 100.0 && places < 9 {
+        (places, scale) = (places + 1, scale * 10.0);
     }
-    let places = (2 - error.log10().floor() as i32).clamp(0, 9);
-    let scale = 10_f64.powi(places);
-    format!("{:.*}", places as usize, (error * scale).ceil() / scale)
+    format!("{:.places$}", (error * scale).ceil() / scale)
 }
 
 fn floor(crossing: &CrossingDeclaration) -> Option<String> {
