@@ -14,6 +14,7 @@ pub mod sound;
 use std::{
     path::{Path, PathBuf},
     process::Command,
+    time::SystemTime,
 };
 
 /// Root of the workspace.
@@ -35,18 +36,18 @@ pub fn workspace() -> PathBuf {
 /// If cargo cannot tell.
 #[must_use]
 pub fn dependencies(package: &str) -> Vec<String> {
+    let tree = tree(package);
+    tree.lines()
+        .filter_map(|line| line.split_whitespace().next().map(str::to_owned))
+        .collect()
+}
+
+/// A package a line: its name, its version, and its folder in brackets if it is one of ours.
+fn tree(package: &str) -> String {
     let output = Command::new(env!("CARGO"))
         .current_dir(workspace())
-        .args([
-            "tree",
-            "--package",
-            package,
-            "--edges",
-            "normal",
-            "--prefix",
-            "none",
-        ])
-        .args(["--format", "{p}", "--offline"])
+        .args(["tree", "--package", package, "--edges", "normal"])
+        .args(["--prefix", "none", "--format", "{p}", "--offline"])
         .output()
         .expect("cargo runs, since it runs this test");
     assert!(
@@ -54,10 +55,7 @@ pub fn dependencies(package: &str) -> Vec<String> {
         "{}",
         String::from_utf8_lossy(&output.stderr)
     );
-    String::from_utf8_lossy(&output.stdout)
-        .lines()
-        .filter_map(|line| line.split_whitespace().next().map(str::to_owned))
-        .collect()
+    String::from_utf8_lossy(&output.stdout).into_owned()
 }
 
 /// A binary of the workspace. `cargo test --workspace` has built it before any test runs; where
@@ -73,7 +71,7 @@ pub fn binary(package: &str, name: &str) -> PathBuf {
         .nth(2)
         .expect("tests lie in a folder of the build");
     let path = built.join(name);
-    if !is_fresh(&path) {
+    if !is_fresh(&path, package) {
         let mut build = Command::new(env!("CARGO"));
         build.current_dir(workspace()).args(["build", "--quiet"]);
         build.args(["--package", package, "--bin", name]);
@@ -86,20 +84,33 @@ pub fn binary(package: &str, name: &str) -> PathBuf {
     path
 }
 
-/// Whether a binary is there, made of nothing but this workspace's sources and what was generated
-/// from them, and none of those has changed since: cargo notes them beside it.
-fn is_fresh(binary: &Path) -> bool {
-    let changed = |file: &Path| file.metadata().and_then(|file| file.modified()).ok();
-    let notes = std::fs::read_to_string(binary.with_extension("d")).unwrap_or_default();
-    let (Some(built), Some((_, sources))) = (changed(binary), notes.split_once(": ")) else {
+/// Whether a binary is there, and no source of ours that it is made of has changed since.
+fn is_fresh(binary: &Path, package: &str) -> bool {
+    let Some(built) = changed(binary) else {
         return false;
     };
-    let (ours, generated) = (workspace(), binary.ancestors().nth(2));
-    // A space within a name is written with a backslash before it.
-    let sources = sources.replace("\\ ", "\0");
-    sources.split_whitespace().all(|source| {
-        let source = PathBuf::from(source.replace('\0', " "));
-        let is_here = source.starts_with(&ours) || generated.is_some_and(|g| source.starts_with(g));
-        is_here && changed(&source).is_some_and(|changed| changed <= built)
-    })
+    let tree = tree(package);
+    let ours = tree
+        .lines()
+        .filter_map(|line| line.split_once(" (/")?.1.split(')').next());
+    ours.map(|folder| Path::new("/").join(folder))
+        .flat_map(|folder| {
+            ["src", "build.rs", "Cargo.toml", "ratewright"].map(|of| folder.join(of))
+        })
+        .all(|source| newest(&source).is_none_or(|changed| changed <= built))
+}
+
+fn changed(file: &Path) -> Option<SystemTime> {
+    file.metadata().and_then(|file| file.modified()).ok()
+}
+
+/// When a file, or any within a folder, was last changed.
+fn newest(path: &Path) -> Option<SystemTime> {
+    match std::fs::read_dir(path) {
+        Ok(entries) => entries
+            .flatten()
+            .filter_map(|entry| newest(&entry.path()))
+            .max(),
+        Err(_) => changed(path),
+    }
 }
